@@ -1,0 +1,106 @@
+"""Conditions, interlocks and alarms as declared; their running state lives in ``rigd.logic.protect``."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from enum import IntEnum, StrEnum
+
+from rigd.model.orders import Stop
+
+
+class ConditionKind(StrEnum):
+    """How a tag (or the rig itself) is compared. ``limit`` is in the tag's unit unless said otherwise."""
+
+    HIGH = "high"  # value > limit
+    LOW = "low"  # value < limit
+    RATE = "rate"  # least-squares slope over window_ns > limit [unit/s]
+    DEVIATION = "deviation"  # |value - reference tag| > limit
+    EQUALS = "equals"  # value == limit (discrete)
+    DIFFERS = "differs"  # value != limit (discrete)
+    MISMATCH = "mismatch"  # feedback of a unit is not what it was told, for longer than its travel time
+    BAD = "bad"  # quality of the tag is bad, whatever the cause
+    LINK = "link"  # device named in ``tag`` not online
+    POWER_CYCLED = "power cycled"  # device named in ``tag`` restarted or changed its identity
+    FAULT = "fault"  # the daemon's own fault named in ``tag`` (scan late, conduct error, journal, suspended)
+
+
+@dataclass(frozen=True, slots=True)
+class Condition:
+    """One comparison. Once true it stays true until the value is back by ``deadband``."""
+
+    kind: ConditionKind
+    tag: str
+    limit: float = 0.0
+    deadband: float = 0.0
+    reference: str = ""
+    window_ns: int = 0
+
+
+class OnBad(StrEnum):
+    """Policy for a bad channel (reference table ``voting``): T counts it as a vote to trip, N leaves it out."""
+
+    TRIP = "trip"
+    IGNORE = "ignore"
+
+
+class Armed(StrEnum):
+    """When an interlock counts. Absolute limits are armed always; process rules only while something moves."""
+
+    ALWAYS = "always"
+    RUNNING = "running"
+
+
+@dataclass(frozen=True, slots=True)
+class Interlock:
+    """``votes`` of the ``causes`` for ``on_delay_ns`` trip it; it latches and orders ``stop``.
+
+    ``consequence`` says what it prevents, ``response`` what the person should do, ``basis`` where the limit comes from.
+    ``rating`` (house unit of the causes, 0 = none) is the weakest part that it protects.
+    """
+
+    id: str
+    title: str
+    causes: tuple[Condition, ...]
+    stop: Stop
+    votes: int = 1
+    on_bad: OnBad = OnBad.TRIP
+    on_delay_ns: int = 0
+    clear_delay_ns: int = 1_000_000_000
+    armed: Armed = Armed.ALWAYS
+    consequence: str = ""
+    response: str = ""
+    basis: str = ""
+    rating: float = 0.0
+    built_in: bool = False
+
+    @property
+    def architecture(self) -> str:
+        """Voting in the usual notation, e.g. ``1oo2``."""
+        return f"{self.votes}oo{len(self.causes)}"
+
+
+class Priority(IntEnum):
+    """1 is the most urgent; see safety notes in DEVELOPERS.md for what each means."""
+
+    HIGHEST = 1
+    HIGH = 2
+    MEDIUM = 3
+    LOW = 4
+
+
+@dataclass(frozen=True, slots=True)
+class Alarm:
+    """A condition that needs a person. An alarm without ``action`` is an event and is refused by the loader."""
+
+    id: str
+    title: str
+    condition: Condition
+    priority: Priority
+    action: str
+    cause: str = ""
+    consequence: str = ""
+    on_delay_ns: int = 0
+    off_delay_ns: int = 0
+    latching: bool = False
+    needs_acknowledge: bool = True
+    hold: bool = False

@@ -1,0 +1,93 @@
+"""A rig that is not there: how shells and servers reach the simulated one, without knowing physics."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import dataclass
+from typing import Protocol
+
+from rigd.model.orders import Action
+from rigd.model.rig import RigDefinition
+from rigd.model.samples import Reading, Spectrum
+
+
+@dataclass(frozen=True, slots=True)
+class FaultSpec:
+    """One fault to inject: a kind from ``fault_kinds``, what it hits, when [s of process time], how long, how much."""
+
+    kind: str
+    target: str
+    onset_s: float = 0.0
+    duration_s: float = float("inf")
+    magnitude: float = 1.0
+
+
+@dataclass(frozen=True, slots=True)
+class FaultKind:
+    """A kind of fault: what ``target`` and ``magnitude`` mean, and which signals it moves."""
+
+    kind: str
+    title: str
+    target: str
+    magnitude: str
+    signals: str
+    hazards: tuple[str, ...] = ()
+
+
+class Plant(Protocol):
+    """The simulated rig in its own time, which starts at 0 ns and only moves by ``advance``."""
+
+    def advance(self, to_ns: int) -> None:
+        """Move the physics to ``to_ns``; a time in the past is refused with ``ValueError``."""
+
+    def tell(self, unit: str, action: Action, value: float) -> str:
+        """Give a command to a unit at the present time; returns "" or the device's refusal."""
+
+    def read(self, device: str, channels: Sequence[str]) -> Sequence[Reading]:
+        """What the instruments of this device would show now, noise and lag included."""
+
+    def spectrum(self, device: str) -> Spectrum:
+        """The last finished spectrum of a cell's device."""
+
+    def inject(self, fault: FaultSpec) -> None:
+        """Add a fault; onset is in plant time. ``ConfigError`` for an unknown kind or target."""
+
+    def clear(self, kind: str, target: str) -> None:
+        """End all faults of this kind on this target now."""
+
+    def truth(self) -> Mapping[str, float]:
+        """True state for checkers: "pressure:<part>" [bar], "temperature:<part>" [degC], "flow:<line>" [mL/min],
+        "volume:<vessel>" [mL], "conversion:<part>", "level:<pump>", "peak-pressure:<part>" [bar since the start]."""
+
+
+@dataclass(frozen=True, slots=True)
+class PlantMaker:
+    """What the entry point group ``rigd.plants`` must resolve to. ``make(rig, seed)``."""
+
+    name: str
+    make: Callable[[RigDefinition, int], Plant]
+    fault_kinds: Callable[[], Sequence[FaultKind]]
+
+
+@dataclass(frozen=True, slots=True)
+class SimulatorOptions:
+    """How to serve a plant: ``transport`` is "pty" or "tcp"; ``folder`` is where the meeting file is written.
+
+    The server writes ``<folder>/ports.json``: {"rig", "pid", "pace", "ports": {link id: port or URL}}, after all
+    ports are open, and removes it at the end. It listens for control lines (faults) on ``<folder>/sim.sock``.
+    """
+
+    folder: str
+    pace: float = 1.0
+    transport: str = "pty"
+    seed: int = 1
+    faults: tuple[FaultSpec, ...] = ()
+    quiet: bool = False
+
+
+@dataclass(frozen=True, slots=True)
+class SimulatorMaker:
+    """What the entry point group ``rigd.simulators`` must resolve to. ``serve`` runs until stopped by a signal."""
+
+    name: str
+    serve: Callable[[RigDefinition, SimulatorOptions], int]
