@@ -12,7 +12,8 @@ class Action(StrEnum):
 
     DELIVER = "deliver"  # pump [mL/min]: deliver at this rate, from rest or as a change of rate
     STOP = "stop"  # pump: stop now
-    REFILL = "refill"  # pump [mL]: draw from the inlet until this much is ready
+    FILL = "fill"  # pump [mL]: draw from the inlet until this much is in the filling syringe
+    SWAP = "swap"  # pump with two syringes: change over to the other one now
     MOVE = "move"  # valve [index of position]
     SET_TEMPERATURE = "set temperature"  # chiller [degC]
     CIRCULATE = "circulate"  # chiller [1 or 0]: circulation pump (and thermostat) on or off
