@@ -14,8 +14,8 @@ from rigd.model.samples import Quality, Sample
 class Verdict:
     """What protect says this scan.
 
-    ``permit`` is False while any interlock is tripped or not yet reset after the start. ``quench_active`` tells that the
-    flush of a quench is under way; ``stop_done`` that the stop in force has reached its end state (confirmed).
+    ``permit`` is False while any interlock is tripped or not yet reset after the start. ``quench_active`` tells that
+    the flush of a quench is under way; ``stop_done`` that the stop in force has reached its end state (confirmed).
     ``first_out`` is the interlock that tripped first, "" without one. ``hold_wanted`` names an alarm or interlock that
     asks for a hold, "" if none.
     """
