@@ -1,0 +1,82 @@
+"""Plug-ins by entry point: driver families, plants and simulators. Errors name the package that is to blame."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping
+from functools import cache
+from importlib.metadata import EntryPoint, entry_points
+from typing import TypeVar
+
+from rigd.model.errors import PluginError
+from rigd.ports.driver import CONTRACT, DriverFamily
+from rigd.ports.plant import PlantMaker, SimulatorMaker
+
+T = TypeVar("T")
+
+DRIVERS, PLANTS, SIMULATORS = "rigd.drivers", "rigd.plants", "rigd.simulators"
+
+
+def driver_family(name: str) -> DriverFamily:
+    """The family registered as ``name``; ``PluginError`` when it is missing, broken or of another contract."""
+    family = _load(DRIVERS, name, DriverFamily)
+    if family.contract != CONTRACT:
+        raise PluginError(
+            f"driver {name!r} ({_origin(DRIVERS, name)}) is written for driver contract {family.contract}, this rigd has "
+            f"contract {CONTRACT}; install a matching version"
+        )
+    return family
+
+
+def plant_maker(name: str = "simulated") -> PlantMaker:
+    """The simulated plant registered as ``name``."""
+    return _load(PLANTS, name, PlantMaker)
+
+
+def simulator_maker(name: str = "simulated") -> SimulatorMaker:
+    """The simulator registered as ``name``."""
+    return _load(SIMULATORS, name, SimulatorMaker)
+
+
+class InstalledFamilies(Mapping[str, DriverFamily]):
+    """All driver families by name; each is loaded when it is first asked for, so that a broken stranger's package does
+    not stop a rig that does not use it."""
+
+    def __getitem__(self, name: str) -> DriverFamily:
+        if name not in _entries(DRIVERS):
+            raise KeyError(name)
+        return driver_family(name)
+
+    def __iter__(self) -> Iterator[str]:
+        return iter(_entries(DRIVERS))
+
+    def __len__(self) -> int:
+        return len(_entries(DRIVERS))
+
+
+@cache
+def _entries(group: str) -> dict[str, EntryPoint]:
+    return {entry.name: entry for entry in sorted(entry_points(group=group), key=lambda entry: entry.name)}
+
+
+def _origin(group: str, name: str) -> str:
+    entry = _entries(group)[name]
+    package = entry.dist.name if entry.dist is not None else "unknown package"
+    return f"package {package}, {entry.value}"
+
+
+def _load(group: str, name: str, kind: type[T]) -> T:
+    entry = _entries(group).get(name)
+    if entry is None:
+        known = ", ".join(_entries(group)) or "none"
+        raise PluginError(f"no plug-in {name!r} in group {group} (installed: {known}); install the package that has it")
+    try:
+        thing = entry.load()
+    except Exception as error:  # a stranger's package may fail in any way while it is imported  # noqa: BLE001
+        reason = f"{type(error).__name__}: {error}"
+        raise PluginError(f"plug-in {name!r} ({_origin(group, name)}) cannot be loaded: {reason}") from error
+    if not isinstance(thing, kind):
+        raise PluginError(
+            f"plug-in {name!r} ({_origin(group, name)}) is a {type(thing).__name__}, not a {kind.__name__} as group "
+            f"{group} asks for"
+        )
+    return thing
