@@ -1,0 +1,249 @@
+"""The dry shell: plant and core in virtual time, in one plain loop. No bytes, no tasks, no waiting.
+
+House rules of this file. Time jumps from one due thing to the next: a poll, a request, the core's own wake time. At
+each stop the plant is brought up to date, what is due is read, the core decides once, and its orders reach the plant in
+the same instant; their outcomes are part of the next intake. Equal inputs give equal runs: nothing here depends on the
+wall, on hashing or on set order.
+"""
+
+from __future__ import annotations
+
+import hashlib
+import heapq
+import json
+from collections.abc import Callable, Iterable, Mapping, Sequence
+from dataclasses import dataclass, field
+from typing import Any
+
+from rigd.logic.program import Program
+
+from rigd.logic import scan
+from rigd.model.devices import DeviceIdentity, DeviceSpec, DeviceStatus, LinkState
+from rigd.model.events import Event
+from rigd.model.intake import Intake
+from rigd.model.orders import Order, Outcome, Request, Result, Verb
+from rigd.model.samples import Quality, QualityCause, Reading, Sample, Spectrum
+from rigd.ports.journal import Journal
+from rigd.ports.plant import Plant
+
+SIMULATED = DeviceIdentity(maker="rigd", model="simulated", serial_no="0", simulated=True)
+LONGEST_NS = 14 * 86_400 * 1_000_000_000
+"""A dry run that is not over after two weeks of its own time is ended and said to be endless."""
+
+Derive = Callable[[Spectrum], Sequence[Reading]]
+"""Turns a spectrum into readings of the derived channels of its device."""
+
+
+@dataclass(frozen=True, slots=True)
+class DryOptions:
+    """Who acts as the person, what else is asked and when, and when to give up (process time)."""
+
+    requests: tuple[Request, ...] = ()
+    signer: str = "dry run"
+    limit_ns: int = LONGEST_NS
+    linger_ns: int = 2_000_000_000
+
+
+@dataclass(slots=True)
+class DryResult:
+    """What came out; ``digest`` is the SHA-256 over all orders and events in their order."""
+
+    outcome: str
+    exit_code: int
+    text: str
+    digest: str
+    end_ns: int
+    state: scan.CoreState
+    events: list[Event]
+    peak: dict[str, float]
+    scans: int
+
+
+@dataclass(slots=True)
+class _Poll:
+    device: DeviceSpec
+    channels: tuple[str, ...]
+    tags: Mapping[str, str]
+    period_ns: int
+    spectrum: bool = False
+
+
+@dataclass(slots=True)
+class _Tape:
+    """Digest, peaks and events while the run goes on."""
+
+    hash: Any = field(default_factory=hashlib.sha256)
+    peak: dict[str, float] = field(default_factory=dict)
+    events: list[Event] = field(default_factory=list)
+
+    def samples(self, samples: Iterable[Sample]) -> None:
+        for sample in samples:
+            if sample.quality is Quality.GOOD and sample.value > self.peak.get(sample.tag, float("-inf")):
+                self.peak[sample.tag] = sample.value
+
+    def decided(self, orders: Sequence[Order], events: Sequence[Event]) -> None:
+        for order in orders:
+            self._line([order.number, order.unit, order.action, order.value, int(order.authority), order.t_ns])
+        for event in events:
+            self._line([event.kind, event.subject, event.t_ns, event.text, dict(sorted(event.fields.items()))])
+            self.events.append(event)
+
+    def _line(self, values: Sequence[object]) -> None:
+        self.hash.update(json.dumps(values, ensure_ascii=False, separators=(",", ":")).encode())
+
+
+def polls_of(devices: Iterable[DeviceSpec], derived: Mapping[str, Derive]) -> list[_Poll]:
+    """One poll per device and period; a device in ``derived`` is read as a spectrum."""
+    polls: list[_Poll] = []
+    for device in devices:
+        periods = sorted({channel.period_ns for channel in device.channels})
+        for period in periods:
+            of_period = [channel for channel in device.channels if channel.period_ns == period]
+            polls.append(
+                _Poll(
+                    device,
+                    tuple(channel.channel for channel in of_period),
+                    {channel.channel: channel.tag for channel in of_period},
+                    period,
+                    device.id in derived,
+                )
+            )
+    return polls
+
+
+def first_requests(program: Program, signer: str) -> tuple[Request, ...]:
+    """What a person does at the start: reset, sign every item, start."""
+    steps = [(Verb.RESET, "*"), (Verb.CONFIRM, "*"), (Verb.START, "")]
+    if program.recipe is None:
+        steps = steps[:1]
+    return tuple(
+        Request(f"person-{i}", verb, signer, (2 + i) * 1_000_000_000, target) for i, (verb, target) in enumerate(steps)
+    )
+
+
+class DryShell:
+    """Runs one program on one plant. ``watch`` is called once per simulated second with the time and the state."""
+
+    def __init__(
+        self,
+        program: Program,
+        plant: Plant,
+        derived: Mapping[str, Derive] | None = None,
+        journal: Journal | None = None,
+        watch: Callable[[int, scan.CoreState], None] | None = None,
+    ) -> None:
+        self._program = program
+        self._plant = plant
+        self._derived = derived or {}
+        self._journal = journal
+        self._watch = watch
+        self._polls = polls_of(program.rig.devices, self._derived)
+        self._queue: list[tuple[int, int, object]] = []
+        self._sequence = 0
+        self._device_of = {device.unit: device.id for device in program.rig.devices if device.unit}
+        self._watch_ns = 0
+        self._scans = 0
+
+    def run(self, options: DryOptions = DryOptions()) -> DryResult:
+        """Run until the core says that the run is over (plus ``linger_ns``), or ``limit_ns`` has passed."""
+        tape = _Tape()
+        state = scan.initial(self._program, 0)
+        for request in (*first_requests(self._program, options.signer), *options.requests):
+            self._at(request.t_ns, request)
+        for poll in self._polls:
+            self._at(0, poll)
+        outcomes: tuple[Outcome, ...] = ()
+        links = tuple(DeviceStatus(d.id, LinkState.ONLINE, 0, identity=SIMULATED) for d in self._program.rig.devices)
+        wake_ns, end, end_ns = 0, None, options.limit_ns
+        now_ns = 0
+        while True:
+            due_ns = self._queue[0][0] if self._queue else options.limit_ns
+            now_ns = min(max(now_ns, min(due_ns, wake_ns)), end_ns)
+            self._plant.advance(now_ns)
+            samples, requests = self._due(now_ns)
+            intake = Intake(samples=samples, outcomes=outcomes, links=links, requests=requests)
+            links = ()
+            step = self._decide(state, intake, now_ns)
+            state, wake_ns = step.state, max(step.wake_ns, now_ns + 1_000_000)
+            tape.samples(samples)
+            tape.decided(step.orders, step.events)
+            outcomes = tuple(self._carry_out(order, now_ns) for order in step.orders)
+            if outcomes:
+                wake_ns = min(wake_ns, now_ns + 50_000_000)
+            if end is None and (end := scan.run_end(self._program, state)) is not None:
+                end_ns = min(end_ns, now_ns + options.linger_ns)
+            if now_ns >= end_ns:
+                break
+        return self._result(end, tape, state, now_ns)
+
+    def _at(self, t_ns: int, thing: object) -> None:
+        self._sequence += 1
+        heapq.heappush(self._queue, (t_ns, self._sequence, thing))
+
+    def _due(self, now_ns: int) -> tuple[tuple[Sample, ...], tuple[Request, ...]]:
+        samples: list[Sample] = []
+        requests: list[Request] = []
+        while self._queue and self._queue[0][0] <= now_ns:
+            t_ns, _, thing = heapq.heappop(self._queue)
+            if isinstance(thing, _Poll):
+                samples.extend(self._read(thing, now_ns))
+                self._at(t_ns + thing.period_ns, thing)
+            elif isinstance(thing, Request):
+                requests.append(thing)
+        return tuple(samples), tuple(requests)
+
+    def _read(self, poll: _Poll, now_ns: int) -> Iterable[Sample]:
+        if poll.spectrum:
+            spectrum = self._plant.spectrum(poll.device.id)
+            if not spectrum.absorbance:
+                return
+            if self._journal is not None:
+                self._journal.spectrum(spectrum)
+            readings = self._derived[poll.device.id](spectrum)
+        else:
+            readings = self._plant.read(poll.device.id, poll.channels)
+        for reading in readings:
+            tag = poll.tags.get(reading.channel)
+            if tag is not None:
+                yield sample_of(reading, tag, now_ns)
+
+    def _decide(self, state: scan.CoreState, intake: Intake, now_ns: int) -> scan.Step:
+        self._scans += 1
+        if self._journal is not None:
+            self._journal.scan(self._scans, now_ns, "", intake)
+        step = scan.scan(self._program, state, intake, now_ns)
+        if self._journal is not None:
+            self._journal.decided(self._scans, step.orders, step.events)
+        if self._watch is not None and now_ns >= self._watch_ns:
+            self._watch(now_ns, step.state)
+            self._watch_ns = now_ns + 1_000_000_000
+        return step
+
+    def _carry_out(self, order: Order, now_ns: int) -> Outcome:
+        refusal = self._plant.tell(order.unit, order.action, order.value)
+        result = Result.REFUSED if refusal else Result.DONE
+        return Outcome(order.number, order.unit, order.action, result, now_ns, refusal)
+
+    def _result(self, end: scan.RunEnd | None, tape: _Tape, state: scan.CoreState, now_ns: int) -> DryResult:
+        if end is None:
+            end = scan.RunEnd(
+                "stopped", 1, f"The recipe was not over after {now_ns / 3.6e12:.1f} h and was ended here."
+            )
+        return DryResult(
+            end.outcome,
+            end.exit_code,
+            end.text,
+            tape.hash.hexdigest(),
+            now_ns,
+            state,
+            tape.events,
+            tape.peak,
+            self._scans,
+        )
+
+
+def sample_of(reading: Reading, tag: str, t_ns: int) -> Sample:
+    """A reading under its tag; a fault that the device itself told makes it bad."""
+    if reading.fault:
+        return Sample(tag, reading.value, t_ns, Quality.BAD, QualityCause.SENSOR_FAULT, reading.raw)
+    return Sample(tag, reading.value, t_ns, raw=reading.raw)
