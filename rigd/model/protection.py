@@ -26,7 +26,11 @@ class ConditionKind(StrEnum):
 
 @dataclass(frozen=True, slots=True)
 class Condition:
-    """One comparison. Once true it stays true until the value is back by ``deadband``."""
+    """One comparison. Once true it stays true until the value is back by ``deadband``.
+
+    ``settling_ns`` (DEVIATION only): not counted for this long after the reference moved. ``window_ns`` is for RATE; a
+    negative RATE limit means falling faster than that.
+    """
 
     kind: ConditionKind
     tag: str
@@ -34,6 +38,7 @@ class Condition:
     deadband: float = 0.0
     reference: str = ""
     window_ns: int = 0
+    settling_ns: int = 0
 
 
 class OnBad(StrEnum):
