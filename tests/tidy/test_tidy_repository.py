@@ -64,8 +64,8 @@ def test_public_names_are_documented(path: Path) -> None:
 BANNED = {
     r"(?<![\w.])/(?:work|farm|root|home)/": "a path of one machine",
     r"pythonhosted|registry\.npmjs|deb\.debian\.org|pypi\.org/simple": "a registry's host name",
-    r"\bemergency[- ]stop\b(?!.{0,80}\b(?:hardware|hard-wired|switch|wired|removes|contact)\b)": "a software stop is a 'stop'",
-    r"\b(?:fail-safe|safety-rated|SIL ?[1-4])\b(?!.{0,60}\b(?:no|not|none|never)\b)": "a claim that is not ours to make",
+    r"\bemergency[- ]stop\b": "a software stop is a 'stop'",
+    r"\b(?:fail-safe|safety-rated|SIL ?[1-4])\b": "a claim that is not ours to make",
     r"\.\./shared": "the repository stands alone",
     r"(?i)\bfollow-up session\b|\bAI assistant\b|\blanguage model\b": "how it was made is not part of it",
 }
@@ -90,7 +90,7 @@ def test_test_files_have_names_of_their_own() -> None:
 def test_top_level_holds_what_was_agreed() -> None:
     allowed = {
         "README.md", "DEVELOPERS.md", "LICENSE", "Makefile", "pyproject.toml", "requirements.lock", ".gitignore",
-        ".ci", "rigd", "drivers", "sim", "tests", "configs", "docs",
+        ".ci", "rigd", "drivers", "sim", "tests", "configs", ".readme",
     }  # fmt: skip
     found = {relative(path).split("/")[0] for path in tracked("")}
     assert found <= allowed, found - allowed
