@@ -90,7 +90,9 @@ class DeviceSpec:
     """One device on one link. ``unit`` is the rig part that it drives or "" for a pure instrument.
 
     ``options`` are the keys of the device's own table in the rig file, checked by its driver; ``facts`` are plain
-    numbers and lists about the unit that the driver needs (bores, positions), made by the rig compiler.
+    numbers and lists about the unit that the driver needs, made by the rig compiler: always ``retries`` (of the link);
+    for a pump ``syringes``, ``bore_mm``, ``stroke_mL``; for a valve ``positions`` (names in order) and ``rest``
+    (name); for a sensor module ``spans`` (channel -> (low, high)). A driver skips a check whose fact is missing.
     """
 
     id: str
