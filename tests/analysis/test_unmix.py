@@ -52,9 +52,7 @@ def test_lorentzian_is_half_high_at_half_its_width():
 
 
 @settings(max_examples=60, deadline=None)
-@given(
-    st.floats(0.01, 2.0), st.floats(0.01, 2.0), st.floats(0.5, 18.0), st.floats(-0.2, 0.2), st.floats(-1e-4, 1e-4)
-)
+@given(st.floats(0.01, 2.0), st.floats(0.01, 2.0), st.floats(0.5, 18.0), st.floats(-0.2, 0.2), st.floats(-1e-4, 1e-4))
 def test_concentrations_come_back_through_any_straight_baseline(acid, ester, ethanol, offset, slope):
     grid = GRID["start_per_cm"] + GRID["step_per_cm"] * np.arange(GRID["points"])
     result = unmixer().solve(mixture(acid=acid, ester=ester, ethanol=ethanol) + offset + slope * grid)
