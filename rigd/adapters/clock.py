@@ -38,7 +38,7 @@ class PacedClock:
 
     async def sleep_until(self, t_ns: int) -> None:
         """Return at or after ``t_ns`` of process time."""
-        while (left_ns := t_ns - self.now_ns()) > 0:
+        while (left_ns := t_ns - self.now_ns()) > 0:  # noqa: ASYNC110 - sleep may return early
             await asyncio.sleep(left_ns / self.pace / NS)
 
 

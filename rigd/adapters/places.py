@@ -1,8 +1,8 @@
 """Where things meet on this computer: the runtime folder, running daemons, served simulators, run folders.
 
-The runtime folder is ``$RIGD_RUNTIME``, else ``$XDG_RUNTIME_DIR/rigd``, else ``/tmp/rigd-<uid>``; it belongs to the user
-alone (mode 0700). In it: ``<rig>/ports.json`` of a simulator, ``<rig>/run-<pid>.json`` and ``<rig>/door-<pid>.sock`` of a
-daemon, and ``locks/``.
+The runtime folder is ``$RIGD_RUNTIME``, else ``$XDG_RUNTIME_DIR/rigd``, else ``/tmp/rigd-<uid>``; it belongs to the
+user alone (mode 0700). In it: ``<rig>/ports.json`` of a simulator, ``<rig>/run-<pid>.json`` and
+``<rig>/door-<pid>.sock`` of a daemon, and ``locks/``.
 """
 
 from __future__ import annotations

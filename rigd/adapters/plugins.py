@@ -21,8 +21,8 @@ def driver_family(name: str) -> DriverFamily:
     family = _load(DRIVERS, name, DriverFamily)
     if family.contract != CONTRACT:
         raise PluginError(
-            f"driver {name!r} ({_origin(DRIVERS, name)}) is written for driver contract {family.contract}, this rigd has "
-            f"contract {CONTRACT}; install a matching version"
+            f"driver {name!r} ({_origin(DRIVERS, name)}) is written for driver contract {family.contract}, this rigd "
+            f"has contract {CONTRACT}; install a matching version"
         )
     return family
 
@@ -71,7 +71,7 @@ def _load(group: str, name: str, kind: type[T]) -> T:
         raise PluginError(f"no plug-in {name!r} in group {group} (installed: {known}); install the package that has it")
     try:
         thing = entry.load()
-    except Exception as error:  # a stranger's package may fail in any way while it is imported  # noqa: BLE001
+    except Exception as error:  # a stranger's package may fail in any way while it is imported
         reason = f"{type(error).__name__}: {error}"
         raise PluginError(f"plug-in {name!r} ({_origin(group, name)}) cannot be loaded: {reason}") from error
     if not isinstance(thing, kind):

@@ -1,8 +1,8 @@
 """One daemon per port: locks in the runtime folder, keyed by the resolved port.
 
-A lock is an advisory file lock (flock) that the kernel drops with the last process that holds the descriptor, so nothing
-stale ever blocks a port. The file's text names the holder. The descriptors are handed on to the guard and to control:
-the port stays locked until both are gone.
+A lock is an advisory file lock (flock) that the kernel drops with the last process that holds the descriptor, so
+nothing stale ever blocks a port. The file's text names the holder. The descriptors are handed on to the guard and to
+control: the port stays locked until both are gone.
 """
 
 from __future__ import annotations

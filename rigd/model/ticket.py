@@ -1,8 +1,8 @@
 """Run permission: what control must show its parent so that it goes on living.
 
-A ticket names a scan and proves that the scan went through its stages in the right order (``STAGES``), each exactly once,
-after the scan before it. The proof is a running CRC-32 over the stage names: not a secret, only something that a loop
-which skips, repeats or reorders its work does not produce by accident. Both sides compute it with the code below.
+A ticket names a scan and proves that the scan went through its stages in the right order (``STAGES``), each exactly
+once, after the scan before it. The proof is a running CRC-32 over the stage names: not a secret, only something that a
+loop which skips, repeats or reorders its work does not produce by accident. Both sides compute it with the code below.
 """
 
 from __future__ import annotations

@@ -1,0 +1,208 @@
+"""Reading a run journal, also while it is being written, also after ``kill -9``; never changes it."""
+
+from __future__ import annotations
+
+import json
+import sqlite3
+from collections.abc import Iterable, Iterator
+from dataclasses import dataclass
+from itertools import groupby
+from operator import itemgetter
+from pathlib import Path
+from types import TracebackType
+from typing import Any, Self
+
+from rigd.adapters import journal_schema as schema
+from rigd.model.errors import JournalError
+from rigd.model.events import Event, EventKind
+from rigd.model.intake import Intake
+from rigd.model.orders import Order
+from rigd.model.samples import Spectrum
+
+
+@dataclass(frozen=True, slots=True)
+class TagInfo:
+    """A tag as the journal describes it."""
+
+    id: str
+    title: str
+    kind: str
+    measures: str
+    unit: str
+    low: float
+    high: float
+    labels: tuple[str, ...]
+
+
+@dataclass(frozen=True, slots=True)
+class ScanRecord:
+    """One scan: what went in and what came out."""
+
+    number: int
+    now_ns: int
+    utc: str
+    intake: Intake
+    orders: tuple[Order, ...]
+    events: tuple[Event, ...]
+
+
+@dataclass(frozen=True, slots=True)
+class Series:
+    """All samples of a tag in order: process time [ns], value (NaN where there was none), quality (0 good to 2 bad)."""
+
+    t_ns: list[int]
+    values: list[float]
+    quality: list[int]
+
+
+class JournalReader:
+    """A run by its folder or its ``run.sqlite``. Use as a context manager. Raises ``JournalError`` with one
+    sentence."""
+
+    def __init__(self, path: Path) -> None:
+        first = path / "run.sqlite" if path.is_dir() else path
+        if not first.is_file():
+            raise JournalError(f"there is no journal {first}")
+        self.path = first
+        self._segments = [_open(segment) for segment in _segments(first)]
+        try:
+            self.meta = self._meta()
+            self.tags = {row[1]: _tag_info(row) for row in self._rows("SELECT * FROM tags ORDER BY id")}
+            self._names: dict[int, str] = dict(self._segments[0].execute("SELECT id, tag FROM tags"))
+        except (sqlite3.Error, ValueError) as error:
+            self.close()
+            raise JournalError(f"{first} is not a run journal that can be read: {error}") from error
+
+    def __enter__(self) -> Self:
+        return self
+
+    def __exit__(self, kind: type[BaseException] | None, error: BaseException | None, at: TracebackType | None) -> None:
+        self.close()
+
+    def close(self) -> None:
+        """Give the files back."""
+        for segment in self._segments:
+            segment.close()
+
+    def scans(self) -> Iterator[ScanRecord]:
+        """All scans in order. A scan that was recorded twice, around a failure of the disk, comes once."""
+        last = 0
+        for segment in self._segments:
+            for record in self._segment_scans(segment):
+                if record.number > last:
+                    last = record.number
+                    yield record
+
+    def events(self, *kinds: EventKind) -> list[Event]:
+        """All events, or those of some kinds, in order."""
+        wanted = f" WHERE kind IN ({', '.join('?' * len(kinds))})" if kinds else ""
+        sql = f"SELECT kind, subject, t_ns, text, fields FROM events{wanted} ORDER BY rowid"
+        return [schema.event_of(*row) for row in self._rows(sql, [kind.value for kind in kinds])]
+
+    def orders(self) -> list[Order]:
+        """All orders in order."""
+        sql = "SELECT number, unit, action, value, authority, source, t_ns FROM orders ORDER BY rowid"
+        return [schema.order_of(*row) for row in self._rows(sql)]
+
+    def series(self, tag: str) -> Series:
+        """All samples of one tag; an empty series for a tag without any; ``KeyError`` for an unknown tag."""
+        numbers = [number for number, name in self._names.items() if name == tag]
+        if not numbers:
+            raise KeyError(tag)
+        rows = list(self._rows("SELECT t_ns, value, quality FROM samples WHERE tag = ? ORDER BY rowid", numbers))
+        values = [float("nan") if row[1] is None else row[1] for row in rows]
+        return Series([row[0] for row in rows], values, [row[2] for row in rows])
+
+    def spectra(self) -> Iterator[Spectrum]:
+        """All raw spectra in order."""
+        for row in self._rows("SELECT * FROM spectra ORDER BY rowid"):
+            yield schema.spectrum_of(*row)
+
+    def clock(self) -> list[tuple[int, str]]:
+        """(process time [ns], UTC) of every scan."""
+        return list(self._rows("SELECT now_ns, utc FROM scans ORDER BY number"))
+
+    def _meta(self) -> dict[str, str]:
+        meta: dict[str, str] = {}
+        for segment in self._segments:
+            meta.update(segment.execute("SELECT key, value FROM meta"))
+        found = meta.get("schema", "none")
+        if found != str(schema.SCHEMA):
+            raise ValueError(f"its schema is version {found}, this program reads version {schema.SCHEMA}")
+        return meta
+
+    def _rows(self, sql: str, values: Iterable[Any] = ()) -> Iterator[Any]:
+        values = tuple(values)
+        try:
+            for segment in self._segments:
+                yield from segment.execute(sql, values)
+        except sqlite3.DatabaseError as error:
+            raise JournalError(f"{self.path} is damaged: {error}") from error
+
+    def _segment_scans(self, segment: sqlite3.Connection) -> Iterator[ScanRecord]:
+        samples = _Grouped(segment, "SELECT scan, tag, t_ns, value, quality, cause, raw FROM samples ORDER BY rowid")
+        inputs = _Grouped(segment, "SELECT scan, kind, body FROM inputs ORDER BY rowid")
+        orders = _Grouped(
+            segment, "SELECT scan, number, unit, action, value, authority, source, t_ns FROM orders ORDER BY rowid"
+        )
+        events = _Grouped(segment, "SELECT scan, kind, subject, t_ns, text, fields FROM events ORDER BY rowid")
+        try:
+            for number, now_ns, utc in segment.execute("SELECT number, now_ns, utc FROM scans ORDER BY number"):
+                intake = schema.intake_of(
+                    tuple(schema.sample_of(self._names[row[1]], *row[2:]) for row in samples.of(number)),
+                    [(row[1], row[2]) for row in inputs.of(number)],
+                )
+                yield ScanRecord(
+                    number,
+                    now_ns,
+                    utc,
+                    intake,
+                    tuple(schema.order_of(*row[1:]) for row in orders.of(number)),
+                    tuple(schema.event_of(*row[1:]) for row in events.of(number)),
+                )
+        except (sqlite3.DatabaseError, ValueError, KeyError) as error:
+            raise JournalError(f"{self.path} is damaged: {error}") from error
+
+
+class _Grouped:
+    """Walks rows that are in scan order, handing out those of one scan at a time."""
+
+    def __init__(self, connection: sqlite3.Connection, sql: str) -> None:
+        self._groups = groupby(connection.execute(sql), key=itemgetter(0))
+        self._next: tuple[int, list[Any]] | None = self._advance()
+
+    def of(self, scan: int) -> list[Any]:
+        while self._next is not None and self._next[0] < scan:
+            self._next = self._advance()
+        if self._next is None or self._next[0] != scan:
+            return []
+        rows = self._next[1]
+        self._next = self._advance()
+        return rows
+
+    def _advance(self) -> tuple[int, list[Any]] | None:
+        group = next(self._groups, None)
+        return None if group is None else (group[0], list(group[1]))
+
+
+def _segments(first: Path) -> list[Path]:
+    later = sorted(first.parent.glob(f"{first.stem}.*{first.suffix}"), key=lambda path: (len(path.name), path.name))
+    return [first, *later]
+
+
+def _open(path: Path) -> sqlite3.Connection:
+    """Read-only; when the folder cannot be written either (an archive), without the write-ahead log's side files."""
+    failure: sqlite3.Error | None = None
+    for query in ("mode=ro", "immutable=1"):
+        try:
+            connection = sqlite3.connect(f"{path.absolute().as_uri()}?{query}", uri=True)
+            connection.execute("SELECT count(*) FROM sqlite_master").fetchone()
+            return connection
+        except sqlite3.Error as error:
+            failure = error
+    raise JournalError(f"{path} cannot be opened as a run journal: {failure}") from failure
+
+
+def _tag_info(row: tuple[Any, ...]) -> TagInfo:
+    _, tag, title, kind, measures, unit, low, high, labels = row
+    return TagInfo(tag, title, kind, measures, unit, low, high, tuple(json.loads(labels)))
