@@ -52,6 +52,9 @@ HOUSE: dict[str, str] = {
     "absorbance": "AU",
     "heat conductance": "W/K",
     "absorptivity": "L/(mol cm)",
+    "compressibility": "1/bar",
+    "site density": "mmol/g",
+    "adsorption constant": "L/mol",
 }
 
 _PSI_BAR = 0.45359237 * 9.80665 / 0.0254**2 / 1e5
@@ -123,6 +126,10 @@ _TABLE: tuple[Unit, ...] = (
     Unit("mAU", "absorbance", 1e-3),
     Unit("W/K", "heat conductance", 1.0),
     Unit("L/(mol cm)", "absorptivity", 1.0),
+    Unit("1/bar", "compressibility", 1.0),
+    Unit("mmol/g", "site density", 1.0),
+    Unit("mol/kg", "site density", 1.0),
+    Unit("L/mol", "adsorption constant", 1.0),
 )
 
 UNITS: dict[str, Unit] = {unit.symbol: unit for unit in _TABLE}
