@@ -56,18 +56,23 @@ class Front:
         self._simulated = False
         self._run_id = ""
         self._next_snapshot_s = 0.0
+        self._last_event = 0
 
     async def run(self, messages: AsyncIterator[Mapping[str, Any]]) -> None:
-        """Tell the world what comes through the door."""
+        """Tell the world what comes through the door; a door that closes without a last word is itself an alert."""
         tasks = [
             asyncio.create_task(self._post(sender, box), name=f"alerts[{sender.channel.name}]")
             for sender, box in self._letters
         ]
         if self._publisher:
             tasks.append(asyncio.create_task(self._publisher.run(), name="broker"))
+        ended = False
         try:
             async for message in messages:
+                ended = ended or message.get("say") == "end"
                 self.hear(message)
+            if not ended:
+                self.hear(self._gone())
         finally:
             await self._last_words()
             for task in tasks:
@@ -94,6 +99,7 @@ class Front:
 
     def _event(self, message: Mapping[str, Any]) -> None:
         event = {"run": self._run_id, **{key: value for key, value in message.items() if key != "say"}}
+        self._last_event = int(event["n"])
         alert = alert_of(event, self._rig, self._simulated)
         if self._topics:
             if alert:
@@ -103,6 +109,12 @@ class Front:
             for sender, box in self._letters:
                 if alert.priority <= sender.channel.priority_at_least:
                     box.put(_Letter(alert))
+
+    def _gone(self) -> Mapping[str, Any]:
+        text = "The control process ended without a last word. The guard sends every pump its stop; go and look at the rig."
+        fields = {"did": "the guard took the ports over", "do": "check that every pump has stopped"}
+        number = self._last_event + 1
+        return {"say": "event", "n": number, "kind": "fault", "subject": "control", "text": text, "fields": fields}
 
     async def _post(self, sender: Sender, box: Outbox[_Letter]) -> None:
         failures = 0

@@ -43,6 +43,7 @@ class Door:
 
     def __init__(self) -> None:
         self.queue: asyncio.Queue[dict[str, Any] | None] = asyncio.Queue()
+        self.silent = False  # True: ends without a last word, as a killed daemon does
 
     async def messages(self) -> AsyncIterator[dict[str, Any]]:
         while (message := await self.queue.get()) is not None:
@@ -57,6 +58,8 @@ async def front(outside: Outside) -> AsyncIterator[Door]:
     try:
         yield door
     finally:
+        if not door.silent:
+            door.queue.put_nowait({"say": "end", "outcome": "done", "exit": 0})
         door.queue.put_nowait(None)
         await asyncio.wait_for(task, 20)
 
@@ -217,6 +220,16 @@ async def test_low_priorities_stay_away_from_a_channel_for_high_ones() -> None:
             door.queue.put_nowait(trip(2))
             await until(lambda: len(hook.posts) == 1, 5)
         assert [post["title"].split()[-1] for post in hook.posts] == ["T2"]
+
+
+async def test_a_door_that_closes_without_a_last_word_is_an_alert() -> None:
+    with web_hook() as hook:
+        channel = AlertChannel("hook", f"json://127.0.0.1:{hook.port}/", priority_at_least=2)
+        async with front(Outside(channels=(channel,))) as door:
+            door.queue.put_nowait(SNAPSHOT)
+            door.silent = True
+        assert len(hook.posts) == 1
+        assert "check that every pump has stopped" in hook.posts[0]["message"]
 
 
 def test_unknown_channel_url_is_told() -> None:
