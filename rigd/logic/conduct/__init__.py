@@ -1,0 +1,1 @@
+"""The half that runs the recipe."""
