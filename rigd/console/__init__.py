@@ -1,1 +1,1 @@
-"""The command line and the terminal views: the only room that prints."""
+"""The command line and the terminal views: the only room that prints. It decides nothing about the rig."""
