@@ -1,0 +1,165 @@
+"""When is a noisy signal steady? Two tests that must agree, sample by sample.
+
+The ratio test of Cao & Rhinehart, J. Process Control 5 (1995) 363-374, vetoes: two estimates of the variance, one of
+which a trend inflates. The equivalence test (two one-sided t-tests on the slope of a window) proves: steady only when
+the change projected over what is still to come is *shown* to be below a tolerance. Not rejecting a trend proves
+nothing. A signal that does not move at all is frozen and never steady. Weak point of the ratio: autocorrelated noise
+raises it, so it errs towards waiting.
+"""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass, replace
+
+from rigd.logic.student import t_quantile
+
+RATIO_LIMIT = 1.44
+"""95 % point of the ratio under white noise for the filter factors below (J. Process Control 7 (1997) 149-152)."""
+
+CONFIDENCE = 0.95
+"""Of each of the two one-sided tests."""
+
+
+@dataclass(frozen=True, slots=True)
+class RatioFilter:
+    """Recursive state of the ratio test; ``step`` needs only + and *, so it also takes arrays of replicates."""
+
+    filtered: float
+    previous: float
+    nu2: float = 0.0
+    delta2: float = 0.0
+
+    @property
+    def ratio(self) -> float | None:
+        """About 1 for steady white noise; ``None`` when the signal did not move."""
+        return (2.0 - LAMBDA_1) * self.nu2 / self.delta2 if self.delta2 > 0 else None
+
+
+LAMBDA_1, LAMBDA_2, LAMBDA_3 = 0.2, 0.1, 0.1
+"""Filter factors that the authors recommend by default."""
+
+
+def ratio_start(value: float) -> RatioFilter:
+    """The filter at its first sample."""
+    return RatioFilter(value, value)
+
+
+def ratio_step(
+    filter_: RatioFilter, value: float, lambdas: tuple[float, float, float] = (LAMBDA_1, LAMBDA_2, LAMBDA_3)
+) -> RatioFilter:
+    """Take one sample. The order matters: ``nu2`` uses the filtered value from before this sample."""
+    l1, l2, l3 = lambdas
+    return RatioFilter(
+        filtered=l1 * value + (1 - l1) * filter_.filtered,
+        previous=value,
+        nu2=l2 * (value - filter_.filtered) ** 2 + (1 - l2) * filter_.nu2,
+        delta2=l3 * (value - filter_.previous) ** 2 + (1 - l3) * filter_.delta2,
+    )
+
+
+@dataclass(frozen=True, slots=True)
+class Trend:
+    """Least-squares line through a window: ``slope`` and its standard error [unit/s], mean, number of values."""
+
+    slope: float
+    error: float
+    mean: float
+    count: int
+
+    @property
+    def significant(self) -> bool:
+        """True when a two-sided t-test at 5 % rejects "no trend" (Kelly & Hedengren 2013)."""
+        return self.count > 2 and abs(self.slope) > t_quantile(0.975, self.count - 2) * self.error
+
+    def change_below(self, tolerance: float, horizon_s: float) -> bool:
+        """True when the change over ``horizon_s`` is shown to be below ``tolerance``, up and down."""
+        if self.count < 3:
+            return False
+        reach = abs(self.slope) + t_quantile(CONFIDENCE, self.count - 2) * self.error
+        return reach * horizon_s < tolerance
+
+
+def trend(window: tuple[tuple[float, float], ...]) -> Trend:
+    """The line through (seconds, value) pairs; of fewer than three the error is infinite."""
+    n = len(window)
+    if n < 3:
+        return Trend(0.0, math.inf, sum(v for _, v in window) / n if n else math.nan, n)
+    mean_t, mean = sum(t for t, _ in window) / n, sum(v for _, v in window) / n
+    spread = sum((t - mean_t) ** 2 for t, _ in window)
+    slope = sum((t - mean_t) * (v - mean) for t, v in window) / spread
+    residual = sum((v - mean - slope * (t - mean_t)) ** 2 for t, v in window)
+    return Trend(slope, math.sqrt(residual / (n - 2) / spread), mean, n)
+
+
+@dataclass(frozen=True, slots=True)
+class SettleRule:
+    """``tolerance`` [tag unit] over ``horizon_s``; ``window`` blocks of ``block`` samples; ``persistence`` in a row."""
+
+    tolerance: float
+    horizon_s: float
+    window: int
+    persistence: int
+    block: int = 1
+
+
+@dataclass(frozen=True, slots=True)
+class Settler:
+    """Streaming state. ``verdict`` says why it is not steady: "few", "frozen", "moving", "unproven", or "steady"."""
+
+    ratio: RatioFilter | None = None
+    raw: tuple[float, ...] = ()
+    started_ns: int = 0
+    pending: tuple[tuple[float, float], ...] = ()
+    blocks: tuple[tuple[float, float], ...] = ()
+    run: int = 0
+    count: int = 0
+    verdict: str = "few"
+
+    @property
+    def trend(self) -> Trend:
+        """The line through the present window of blocks."""
+        return trend(self.blocks)
+
+
+def settle_step(settler: Settler, rule: SettleRule, t_ns: int, value: float) -> Settler:
+    """Take one good sample; judge whenever a block is complete."""
+    started_ns = settler.started_ns or t_ns
+    ratio = ratio_start(value) if settler.ratio is None else ratio_step(settler.ratio, value)
+    pending = (*settler.pending, ((t_ns - started_ns) / 1e9, value))
+    settler = replace(
+        settler,
+        ratio=ratio,
+        raw=(*settler.raw, value)[-max(rule.window, 3) :],
+        started_ns=started_ns,
+        pending=pending,
+        count=settler.count + 1,
+    )
+    return settler if len(pending) < rule.block else _judge(_closed(settler, rule), rule)
+
+
+def is_steady(settler: Settler, rule: SettleRule) -> bool:
+    """True after ``persistence`` accepted blocks in a row."""
+    return settler.run >= rule.persistence
+
+
+def _closed(settler: Settler, rule: SettleRule) -> Settler:
+    n = len(settler.pending)
+    block = (sum(t for t, _ in settler.pending) / n, sum(v for _, v in settler.pending) / n)
+    return replace(settler, pending=(), blocks=(*settler.blocks, block)[-rule.window :])
+
+
+def _judge(settler: Settler, rule: SettleRule) -> Settler:
+    verdict = _verdict(settler, rule)
+    return replace(settler, verdict=verdict, run=settler.run + 1 if verdict == "steady" else 0)
+
+
+def _verdict(settler: Settler, rule: SettleRule) -> str:
+    if len(settler.blocks) < rule.window:
+        return "few"
+    if min(settler.raw) == max(settler.raw):
+        return "frozen"
+    ratio = settler.ratio.ratio if settler.ratio else None
+    if ratio is None or ratio > RATIO_LIMIT:
+        return "moving"
+    return "steady" if settler.trend.change_below(rule.tolerance, rule.horizon_s) else "unproven"
