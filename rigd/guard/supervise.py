@@ -1,0 +1,194 @@
+"""Start control, watch its tickets, end it when they fail, and see to it that the rig stops.
+
+House rules. (1) Control has permission as long as its tickets come in time (not late, not early) and prove their scans
+(``rigd.model.ticket``). (2) Control may end by itself only after it has said so: ``D <exit code> <sentence>``. (3) In
+every other case it is killed first, so that it cannot send anything after the last wills. (4) Signals are control's
+business: the first asks for an orderly stop, the second for a cut; the guard only hands them on. (5) A closed terminal
+(SIGHUP) ends nothing: the run goes on and is reached through its door.
+
+The pipe that control reads nothing from (``RIGD_LIFE_FD``) tells it, by its end, that the guard is gone.
+"""
+
+from __future__ import annotations
+
+import contextlib
+import json
+import os
+import select
+import signal
+import subprocess
+import sys
+import time
+from pathlib import Path
+from typing import Any
+
+from rigd.guard.wills import Log, send_wills
+from rigd.model.ticket import Ticket, after_scan, read_ticket
+
+SCANS_PER_TICKET_MAX = 100_000
+CLOCK_SKEW_NS = 100_000_000
+FAREWELL_S = 10.0
+
+
+class Window:
+    """Judges tickets: ``first_s`` to the first one, then between ``early_s`` and ``late_s`` from one to the next."""
+
+    def __init__(self, first_s: float, early_s: float, late_s: float) -> None:
+        self._early_ns, self._late_ns = int(early_s * 1e9), int(late_s * 1e9)
+        self._last = Ticket(0, 0, 0)
+        self.deadline_ns = time.monotonic_ns() + int(first_s * 1e9)
+
+    def judge(self, ticket: Ticket, now_ns: int) -> str:
+        """ "" for a good ticket, else what is wrong with it."""
+        last, self._last = self._last, ticket
+        if not 0 < ticket.scan - last.scan <= SCANS_PER_TICKET_MAX:
+            return f"its ticket for scan {ticket.scan} does not follow scan {last.scan}"
+        proof = last.proof
+        for scan in range(last.scan + 1, ticket.scan + 1):
+            proof = after_scan(proof, scan)
+        if proof != ticket.proof:
+            return f"its ticket for scan {ticket.scan} does not prove the order of its work"
+        if ticket.stamp_ns > now_ns + CLOCK_SKEW_NS:
+            return "its ticket comes from the future"
+        if last.scan and ticket.stamp_ns - last.stamp_ns < self._early_ns:
+            return f"its ticket came {(ticket.stamp_ns - last.stamp_ns) / 1e6:.0f} ms after the one before, too early"
+        self.deadline_ns = ticket.stamp_ns + self._late_ns
+        return ""
+
+
+class Guard:
+    """One run: ``watch`` until control has ended or has to be ended."""
+
+    def __init__(self, plan_path: str) -> None:
+        self.plan: dict[str, Any] = json.loads(Path(plan_path).read_text(encoding="utf-8"))
+        self.folder = Path(self.plan["folder"])
+        self.log = Log(self.folder / "guard.log")
+        self.signals = 0
+        self.end: tuple[int, str] | None = None
+        self.wrong = ""
+        self._window = Window(self.plan["first_s"], self.plan["early_s"], self.plan["late_s"])
+        self._buffer = b""
+        self.control, self._tickets, self._life = self._start_control(plan_path)
+        self.helpers: list[subprocess.Popen[bytes]] = []
+        for command in self.plan["helpers"]:
+            with contextlib.suppress(OSError):
+                self.helpers.append(self._start(command))
+        for number in (signal.SIGINT, signal.SIGTERM):
+            signal.signal(number, self._signal)
+        signal.signal(signal.SIGHUP, signal.SIG_IGN)
+
+    def watch(self) -> None:
+        """Returns when control said its end (``end``), or with the reason why it may not go on (``wrong``)."""
+        while self.end is None and not self.wrong:
+            left_s = (self._window.deadline_ns - time.monotonic_ns()) / 1e9
+            if select.select([self._tickets], [], [], max(0.0, left_s))[0]:
+                self._read()
+            elif time.monotonic_ns() >= self._window.deadline_ns:
+                self.wrong = "gave no sign of life in time"
+
+    def finish_control(self) -> None:
+        """Wait a little for a control that said its end, kill any other."""
+        if self.end is not None and not self.wrong:
+            with contextlib.suppress(subprocess.TimeoutExpired):
+                self.control.wait(FAREWELL_S)
+        with contextlib.suppress(ProcessLookupError):
+            self.control.kill()
+        self.log.write(f"control ended with status {self.control.wait()}")
+
+    def finish_helpers(self) -> None:
+        """Let the front send what it has, and the progress display clear its line; then end them."""
+        deadline_s = time.monotonic() + FAREWELL_S
+        for helper in self.helpers:
+            with contextlib.suppress(subprocess.TimeoutExpired):
+                helper.wait(max(0.1, deadline_s - time.monotonic()))
+            if helper.poll() is None:
+                helper.terminate()
+            with contextlib.suppress(subprocess.TimeoutExpired):
+                helper.wait(2.0)
+            helper.kill()
+            helper.wait()
+
+    def _start_control(self, plan_path: str) -> tuple[subprocess.Popen[bytes], int, int]:
+        life_read, life_write = os.pipe()
+        tickets_read, tickets_write = os.pipe()
+        given = {"RIGD_LIFE_FD": str(life_read), "RIGD_TICKET_FD": str(tickets_write)}
+        with (self.folder / "control.log").open("ab") as output:
+            control = subprocess.Popen(
+                [*self.plan["control"], plan_path],
+                stdin=subprocess.DEVNULL,
+                stdout=output,
+                stderr=output,
+                start_new_session=True,
+                pass_fds=(life_read, tickets_write, *self.plan["locks"]),
+                env={**os.environ, **given},
+            )
+        os.close(life_read)
+        os.close(tickets_write)
+        return control, tickets_read, life_write
+
+    def _start(self, command: dict[str, Any]) -> subprocess.Popen[bytes]:
+        """A helper whose life or death changes nothing here."""
+        with (self.folder / f"{command['name']}.log").open("ab") as output:
+            stderr = None if command["shown"] else output
+            return subprocess.Popen(
+                command["argv"], stdin=subprocess.DEVNULL, stdout=output, stderr=stderr, start_new_session=True
+            )
+
+    def _signal(self, number: int, _frame: object) -> None:
+        self.signals += 1
+        with contextlib.suppress(ProcessLookupError):
+            self.control.send_signal(number)
+
+    def _read(self) -> None:
+        data = os.read(self._tickets, 65536)
+        if not data:
+            self.wrong = "ended without a word"
+            return
+        *lines, self._buffer = (self._buffer + data).split(b"\n")
+        for line in lines:
+            self._hear(line)
+
+    def _hear(self, line: bytes) -> None:
+        if line.startswith(b"D "):
+            _, code, sentence = line.decode(errors="replace").split(" ", 2)
+            self.end = (int(code), sentence)
+        elif ticket := read_ticket(line):
+            self.wrong = self.wrong or self._window.judge(ticket, time.monotonic_ns())
+        else:
+            self.wrong = self.wrong or f"said something that is no ticket ({line[:40]!r})"
+
+
+def guard(plan_path: str) -> int:
+    """Guard one run; returns the exit code of the daemon: control's own, or 1 when the guard had to stop the rig."""
+    one = Guard(plan_path)
+    one.watch()
+    one.finish_control()
+    code, sentence = one.end if one.end is not None and not one.wrong else _take_over(one)
+    _say(sentence)
+    one.finish_helpers()
+    for path in one.plan["cleanup"]:
+        Path(path).unlink(missing_ok=True)
+    if one.plan["after"]:
+        subprocess.run(one.plan["after"], check=False)
+    return code
+
+
+def _take_over(one: Guard) -> tuple[int, str]:
+    began = time.monotonic()
+    _say(f"control {one.wrong}; the guard has ended it and is stopping the rig")
+    one.log.write(f"control {one.wrong}")
+    already = one.signals
+    devices = send_wills(one.plan["wills"], one.log, lambda: one.signals - already >= 2)
+    loose = [device for device, state in devices.items() if not state["confirmed"]]
+    report = {"why": f"control {one.wrong}", "devices": devices, "seconds": round(time.monotonic() - began, 3)}
+    with contextlib.suppress(OSError):  # a full disk changes nothing about the rig
+        (one.folder / "guard.json").write_text(json.dumps(report, indent=1) + "\n", encoding="utf-8")
+    if loose:
+        return 1, f"NOT CONFIRMED as stopped: {', '.join(loose)}. Stop them by hand now; see {one.folder}/guard.log"
+    return 1, f"the guard stopped the rig and every device confirmed it, because control {one.wrong}; see {one.folder}"
+
+
+def _say(sentence: str) -> None:
+    if sentence:
+        with contextlib.suppress(OSError):  # the terminal may be gone
+            print(f"rigd: {sentence}", file=sys.stderr, flush=True)  # noqa: T201 - the guard has no console room

@@ -1,0 +1,52 @@
+"""What is read from which device and how often, and how a reading becomes a sample."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterable, Mapping
+from dataclasses import dataclass
+
+from rigd.model.devices import DeviceSpec
+from rigd.model.samples import Quality, QualityCause, Reading, Sample
+
+
+@dataclass(frozen=True, slots=True)
+class Poll:
+    """Channels of one device that are read together; ``tags`` maps channel to tag. ``spectrum``: read a spectrum and
+    derive the channels from it."""
+
+    device: str
+    channels: tuple[str, ...]
+    tags: Mapping[str, str]
+    period_ns: int
+    spectrum: bool = False
+
+
+def polls_of(device: DeviceSpec, spectral: bool = False) -> tuple[Poll, ...]:
+    """One poll per period, shortest first. A spectral device is read twice per period: its own clock is not ours."""
+    polls = []
+    for period_ns in sorted({channel.period_ns for channel in device.channels}):
+        tags = {channel.channel: channel.tag for channel in device.channels if channel.period_ns == period_ns}
+        polls.append(Poll(device.id, tuple(tags), tags, period_ns // 2 if spectral else period_ns, spectral))
+    return tuple(polls)
+
+
+def samples_of(poll: Poll, readings: Iterable[Reading], t_ns: int) -> list[Sample]:
+    """Samples of the readings that have a tag, acquired at ``t_ns``."""
+    return [
+        sample_of(reading, poll.tags[reading.channel], t_ns) for reading in readings if reading.channel in poll.tags
+    ]
+
+
+def sample_of(reading: Reading, tag: str, t_ns: int) -> Sample:
+    """A reading under its tag; a fault that the device itself told, or a value that is no number, makes it bad."""
+    if reading.fault:
+        return Sample(tag, reading.value, t_ns, Quality.BAD, QualityCause.SENSOR_FAULT, reading.raw)
+    if math.isnan(reading.value):
+        return Sample(tag, reading.value, t_ns, Quality.BAD, QualityCause.NOT_A_NUMBER, reading.raw)
+    return Sample(tag, reading.value, t_ns, raw=reading.raw)
+
+
+def next_due_ns(start_ns: int, period_ns: int, now_ns: int) -> int:
+    """The first ``start + k * period`` after ``now``: missed turns are left out, never made up for in a burst."""
+    return start_ns + ((now_ns - start_ns) // period_ns + 1) * period_ns

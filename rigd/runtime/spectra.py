@@ -1,0 +1,60 @@
+"""Spectra become derived readings here, outside the core: so that a replay needs no numerics (decision 1)."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from typing import TYPE_CHECKING
+
+from rigd.model.chemistry import Chemistry
+from rigd.model.rig import Cell, RigDefinition
+from rigd.model.samples import Reading, Spectrum
+
+if TYPE_CHECKING:
+    from rigd.analysis.unmix import Unmixer
+
+CONVERSION, RESIDUAL = "conversion", "residual"
+
+
+class CellReader:
+    """Un-mixes the spectra of one cell. ``channels`` maps what is wanted (a species, ``conversion`` or ``residual``) to
+    the device channel that carries it. Calling it with a spectrum gives the readings."""
+
+    def __init__(self, cell: Cell, chemistry: Chemistry, channels: Mapping[str, str]) -> None:
+        self._cell, self._chemistry, self._channels = cell, chemistry, channels
+        self._species = [one.id for one in chemistry.species if one.bands and one.id in channels]
+        self._unmixer: Unmixer | None = None
+        self._grid: tuple[float, float, int] = (0.0, 0.0, 0)
+
+    def __call__(self, spectrum: Spectrum) -> Sequence[Reading]:
+        """Readings of all wanted channels; with the words of the trouble as ``fault`` when there are none to be had."""
+        try:
+            result = self._unmixer_for(spectrum).solve(spectrum.absorbance)
+        except ValueError as error:
+            return [Reading(channel, float("nan"), fault=str(error)) for channel in self._channels.values()]
+        found = {**result.concentrations, CONVERSION: result.conversion, RESIDUAL: result.residual_AU}
+        return [Reading(channel, found[name]) for name, channel in self._channels.items() if name in found]
+
+    def _unmixer_for(self, spectrum: Spectrum) -> Unmixer:
+        grid = (spectrum.start_per_cm, spectrum.step_per_cm, len(spectrum.absorbance))
+        if self._unmixer is None or grid != self._grid:
+            from rigd.analysis.unmix import Unmixer  # brings numpy, which a rig without a cell does not need
+
+            self._grid = grid
+            self._unmixer = Unmixer(self._chemistry, self._species, *grid, self._cell.path_um)
+        return self._unmixer
+
+
+def cell_readers(rig: RigDefinition) -> dict[str, CellReader]:
+    """Device id -> reader, for every cell of the rig that has a device."""
+    devices = {device.id: device for device in rig.devices}
+    readers = {}
+    for cell in rig.cells:
+        if cell.device in devices:
+            head = f"{cell.id}."
+            channels = {
+                channel.tag.removeprefix(head): channel.channel
+                for channel in devices[cell.device].channels
+                if channel.tag.startswith(head)
+            }
+            readers[cell.device] = CellReader(cell, rig.chemistry, channels)
+    return readers
