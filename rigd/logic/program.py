@@ -6,15 +6,22 @@ nothing.
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, replace
+from typing import TypeVar
 
 from rigd.logic.flow_path import FlowPath, SupplyLine, flow_path
+from rigd.logic.protect import conditions
+from rigd.logic.protect.conditions import Watch
+from rigd.logic.protect.signals import Gate, gate
 from rigd.model.devices import DeviceSpec
 from rigd.model.orders import Stop
 from rigd.model.protection import Alarm, Condition, ConditionKind, Interlock, Priority
 from rigd.model.recipe import Recipe
 from rigd.model.rig import Chiller, Liquid, LiquidRole, Pump, RigDefinition, Tag, TagKind, Valve
+
+K = TypeVar("K")
+V = TypeVar("V")
 
 SECOND_NS = 1_000_000_000
 
@@ -62,7 +69,9 @@ class Program:
     ``interlocks`` and ``alarms`` are the rig's with the built-in ones that it lacks. ``feedback`` maps (unit, channel)
     to the tag that carries it; ``stale_ns`` holds every tag that must be renewed, and the age at which it is bad.
     ``supply`` maps a pump to {valve position: line from a vessel}; ``drain`` maps an outlet position ("" without an
-    outlet valve) to the vessel behind it, "" when closed.
+    outlet valve) to the vessel behind it, "" when closed. ``tags_of`` lists the tags of a device, ``carries`` is the
+    inverse of ``feedback``. The rest serves protect: ``watches`` are all conditions, found by tag (``watching``), by
+    device or fault (``untagged``) or by interlock or alarm (``causes``); ``ringed`` tags keep their recent past.
     """
 
     rig: RigDefinition
@@ -83,6 +92,14 @@ class Program:
     feedback: Mapping[tuple[str, str], str]
     supply: Mapping[str, Mapping[str, SupplyLine]]
     drain: Mapping[str, str]
+    tags_of: Mapping[str, tuple[str, ...]]
+    carries: Mapping[str, tuple[str, str]]
+    gates: Mapping[str, Gate]
+    watches: tuple[Watch, ...]
+    watching: Mapping[str, tuple[Watch, ...]]
+    untagged: Mapping[tuple[ConditionKind, str], tuple[Watch, ...]]
+    causes: Mapping[str, tuple[Watch, ...]]
+    ringed: frozenset[str]
 
     def is_solvent(self, liquid: str) -> bool:
         """True for a declared solvent; an unknown liquid counts as reagent."""
@@ -97,13 +114,16 @@ def compile_program(rig: RigDefinition, recipe: Recipe, options: RunOptions | No
     tags = {tag.id: tag for tag in rig.tags}
     parts: tuple[Pump | Valve | Chiller, ...] = (*rig.pumps, *rig.valves, *rig.chillers)
     units = {part.id: part.device for part in parts if part.device}
+    feedback = _feedback(rig, tags)
+    interlocks, alarms = _with_built_in(rig.interlocks), _with_built_in_alarms(rig.alarms)
+    watches = conditions.watches(interlocks, alarms, lambda condition: _watched_tag(condition, tags, feedback))
     return Program(
         rig=rig,
         recipe=recipe,
         options=options,
         path=path,
-        interlocks=_with_built_in(rig.interlocks),
-        alarms=_with_built_in_alarms(rig.alarms),
+        interlocks=interlocks,
+        alarms=alarms,
         tags=tags,
         stale_ns={tag.id: max(tag.stale_ns, options.stale_floor_ns) for tag in rig.tags if tag.device},
         liquids={liquid.id: liquid for liquid in rig.liquids},
@@ -113,9 +133,41 @@ def compile_program(rig: RigDefinition, recipe: Recipe, options: RunOptions | No
         devices={device.id: device for device in rig.devices},
         device_of=units,
         unit_of={device: unit for unit, device in units.items()},
-        feedback=_feedback(rig, tags),
+        feedback=feedback,
         supply=_supply(path),
         drain=_drain(rig, path),
+        tags_of=_grouped((tag.device, tag.id) for tag in rig.tags if tag.device),
+        carries={tag: key for key, tag in feedback.items()},
+        gates={tag.id: gate(tag) for tag in rig.tags},
+        watches=watches,
+        watching=_grouped((tag, watch) for watch in watches for tag in _looks_at(watch)),
+        untagged=_grouped(((w.condition.kind, w.condition.tag), w) for w in watches if not w.tag),
+        causes=_grouped((watch.owner, watch) for watch in watches),
+        ringed=frozenset(watch.tag for watch in watches if watch.tag),
+    )
+
+
+def _grouped(pairs: Iterable[tuple[K, V]]) -> dict[K, tuple[V, ...]]:
+    groups: dict[K, tuple[V, ...]] = {}
+    for key, value in pairs:
+        groups[key] = (*groups.get(key, ()), value)
+    return groups
+
+
+def _looks_at(watch: Watch) -> tuple[str, ...]:
+    """The tags whose samples make a condition be evaluated anew."""
+    return tuple(tag for tag in dict.fromkeys((watch.tag, watch.condition.reference)) if tag)
+
+
+def _watched_tag(condition: Condition, tags: Mapping[str, Tag], feedback: Mapping[tuple[str, str], str]) -> str:
+    """The tag a condition looks at; a mismatch may name its unit, and then looks at what that unit reports."""
+    if condition.kind in conditions.UNTAGGED:
+        return ""
+    if condition.tag in tags:
+        return condition.tag
+    channels = ("position", "setpoint", "flow")
+    return next(
+        (feedback[condition.tag, name] for name in channels if (condition.tag, name) in feedback), condition.tag
     )
 
 

@@ -1,0 +1,204 @@
+"""What went from which vessel to which, counted from the pumps' own counters and the valves' reported positions.
+
+Drawn: the rise of (active syringe + standby syringe + delivered), from the vessel behind the feed valve's position.
+Delivered: the rise of the counter, to the vessel behind the outlet valve's position. Nothing is taken from what was
+ordered. A valve on its way counts as where it was last seen.
+Also kept: whether each syringe can hold anything but solvent. It holds solvent when it was filled from empty by an
+order given after the feed valve had reported solvent, and the valve has stayed there. Not known is reagent.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Mapping
+from dataclasses import dataclass, field, replace
+from enum import StrEnum
+from typing import TYPE_CHECKING
+
+from rigd.logic.arbitration import Aspect, Memory
+from rigd.logic.flow_path import SupplyLine
+from rigd.model.orders import Action
+from rigd.model.samples import Quality, Sample
+
+if TYPE_CHECKING:
+    from rigd.logic.program import Program
+
+QUANTUM_mL = 0.005
+"""Counters are read with three decimals; what moves less has not moved."""
+
+EMPTY_FRACTION = 0.02
+"""A syringe with less than this part of its stroke left counts as empty."""
+
+RESTART_mL = 0.05
+"""A delivered counter that falls by more belongs to a pump that restarted."""
+
+
+class Content(StrEnum):
+    """What a syringe may hold."""
+
+    EMPTY = "empty"
+    SOLVENT = "solvent"
+    REAGENT = "reagent"  # or not known
+
+
+@dataclass(frozen=True, slots=True)
+class Count:
+    """One pump's counters as last read, and the high-water mark of its total [mL]."""
+
+    level_mL: float
+    standby_mL: float
+    delivered_mL: float
+    total_mL: float
+    active: Content
+    standby: Content
+
+
+@dataclass(frozen=True, slots=True)
+class Source:
+    """Where a pump draws from: the line now (``None``: not known), since when, and the last one known."""
+
+    line: SupplyLine | None
+    since_ns: int
+    last: SupplyLine | None
+
+
+@dataclass(frozen=True, slots=True)
+class Ledger:
+    """Volumes [mL]: in each vessel, drawn of each liquid, delivered by each pump since the start."""
+
+    vessels: Mapping[str, float]
+    used: Mapping[str, float] = field(default_factory=dict)
+    delivered: Mapping[str, float] = field(default_factory=dict)
+    counts: Mapping[str, Count] = field(default_factory=dict)
+    sources: Mapping[str, Source] = field(default_factory=dict)
+    outlet: str = ""
+
+
+def initial(program: Program) -> Ledger:
+    """Vessels as declared, nothing drawn, syringes unknown."""
+    vessels = {vessel.id: vessel.content_mL for vessel in program.rig.vessels}
+    fixed = {feed.pump: program.supply[feed.pump].get("") for feed in program.path.feeds if not feed.valve}
+    sources = {pump: Source(line, 0, line) for pump, line in fixed.items()}
+    return Ledger(vessels, sources=sources, outlet="" if program.path.outlet_valve else program.drain.get("", ""))
+
+
+def update(
+    program: Program,
+    ledger: Ledger,
+    memory: Memory,
+    samples: Mapping[str, Sample],
+    taken: Iterable[str],
+    now_ns: int,
+) -> tuple[Ledger, dict[str, Sample]]:
+    """Count on with new samples; returns the volume samples of the vessels that changed."""
+    after, moved = ledger, False
+    for tag in taken:
+        unit, channel = program.carries.get(tag, ("", ""))
+        if channel == "delivered":
+            counted = _count(program, after, memory, samples, unit)
+            moved = moved or counted.vessels is not after.vessels
+            after = counted
+        elif channel == "position":
+            after = _switch(program, after, unit, samples[tag])
+    if not moved:
+        return after, {}
+    changed = (v for v, volume in after.vessels.items() if volume != ledger.vessels[v])
+    named = ((f"{vessel}.volume", after.vessels[vessel]) for vessel in changed)
+    return after, {tag: Sample(tag, volume, now_ns) for tag, volume in named if tag in program.tags}
+
+
+def volumes(program: Program, ledger: Ledger, now_ns: int) -> tuple[Sample, ...]:
+    """The volume samples of all vessels."""
+    tags = ((f"{vessel}.volume", volume) for vessel, volume in ledger.vessels.items())
+    return tuple(Sample(tag, volume, now_ns) for tag, volume in tags if tag in program.tags)
+
+
+def _switch(program: Program, ledger: Ledger, valve: str, sample: Sample) -> Ledger:
+    """Follow a valve: what the pumps behind it draw, or where the outlet leads."""
+    if valve == program.path.outlet_valve:
+        position = _position(program, valve, sample)
+        vessel = program.drain.get(position, "")
+        return ledger if not position or vessel == ledger.outlet else replace(ledger, outlet=vessel)
+    sources = {}
+    for feed in program.path.feeds:
+        if feed.valve == valve:
+            line = program.supply[feed.pump].get(_position(program, valve, sample))
+            held = ledger.sources.get(feed.pump)
+            if held is None or held.line is not line:
+                sources[feed.pump] = Source(line, sample.t_ns, line or (held.last if held else None))
+    return replace(ledger, sources={**ledger.sources, **sources}) if sources else ledger
+
+
+def _position(program: Program, valve: str, sample: Sample) -> str:
+    """Name of the position that a valve reports, "" when it is on its way, lost or not to be believed."""
+    positions = program.valves[valve].positions
+    index = int(sample.value) if sample.quality is not Quality.BAD else -1
+    return positions[index] if 0 <= index < len(positions) else ""
+
+
+def _count(program: Program, ledger: Ledger, memory: Memory, samples: Mapping[str, Sample], pump: str) -> Ledger:
+    read = [_value(program, samples, pump, channel) for channel in ("level", "standby", "delivered")]
+    level, standby, delivered = read
+    if level is None or delivered is None:
+        return ledger
+    standby = standby or 0.0
+    before = ledger.counts.get(pump)
+    if before is None or delivered < before.delivered_mL - RESTART_mL:
+        fresh = Count(level, standby, delivered, level + standby + delivered, Content.REAGENT, Content.REAGENT)
+        return replace(ledger, counts={**ledger.counts, pump: _emptied(program, pump, fresh)})
+    total = level + standby + delivered
+    drawn = total - before.total_mL if total - before.total_mL > QUANTUM_mL else 0.0
+    out = max(0.0, delivered - before.delivered_mL)
+    count = _contents(program, pump, before, level, standby, _drawn(program, ledger, memory, pump))
+    count = replace(count, delivered_mL=max(delivered, before.delivered_mL), total_mL=before.total_mL + drawn)
+    counted = replace(ledger, counts={**ledger.counts, pump: count})
+    held = ledger.sources.get(pump)
+    return _book(counted, pump, held.last if held else None, drawn, out) if drawn or out else counted
+
+
+def _value(program: Program, samples: Mapping[str, Sample], pump: str, channel: str) -> float | None:
+    sample = samples.get(program.feedback.get((pump, channel), ""))
+    return None if sample is None or sample.quality is Quality.BAD else sample.value
+
+
+def _book(ledger: Ledger, pump: str, line: SupplyLine | None, drawn: float, out: float) -> Ledger:
+    vessels, used = dict(ledger.vessels), dict(ledger.used)
+    if line is not None and drawn:
+        vessels[line.vessel] = vessels.get(line.vessel, 0.0) - drawn
+        used[line.liquid] = used.get(line.liquid, 0.0) + drawn
+    if ledger.outlet:
+        vessels[ledger.outlet] = vessels.get(ledger.outlet, 0.0) + out
+    delivered = {**ledger.delivered, pump: ledger.delivered.get(pump, 0.0) + out}
+    return replace(ledger, vessels=vessels, used=used, delivered=delivered)
+
+
+def _contents(program: Program, pump: str, before: Count, level: float, standby: float, drawn: Content) -> Count:
+    """What the syringes may hold after the move from the last counters to these."""
+    active, other = before.active, before.standby
+    if standby < before.standby_mL - QUANTUM_mL:  # only a change-over takes liquid from the standby syringe
+        active, other = other, active
+    elif standby > before.standby_mL + QUANTUM_mL:
+        other = _mixed(other, drawn)
+    elif level > before.level_mL + QUANTUM_mL:
+        active = _mixed(active, drawn)
+    after = replace(before, level_mL=level, standby_mL=standby, active=active, standby=other)
+    return _emptied(program, pump, after)
+
+
+def _drawn(program: Program, ledger: Ledger, memory: Memory, pump: str) -> Content:
+    """What a filling that goes on now draws: solvent only if the valve reported solvent before it was ordered."""
+    held, told = ledger.sources.get(pump), memory.told.get((pump, Aspect.ONCE))
+    if held is None or held.line is None or told is None:
+        return Content.REAGENT
+    ordered_there = told.order.action is Action.FILL and told.order.t_ns >= held.since_ns
+    return Content.SOLVENT if ordered_there and program.is_solvent(held.line.liquid) else Content.REAGENT
+
+
+def _mixed(held: Content, drawn: Content) -> Content:
+    return drawn if held in (Content.EMPTY, drawn) else Content.REAGENT
+
+
+def _emptied(program: Program, pump: str, count: Count) -> Count:
+    nothing_mL = EMPTY_FRACTION * program.pumps[pump].stroke_mL
+    active = Content.EMPTY if count.level_mL <= nothing_mL else count.active
+    standby = Content.EMPTY if count.standby_mL <= nothing_mL else count.standby
+    return replace(count, active=active, standby=standby)
