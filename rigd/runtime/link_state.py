@@ -21,6 +21,7 @@ _TRANSITIONS: list[Any] = [
     # trigger, from, to
     ["bring_up", LinkState.CLOSED, LinkState.OPENING],
     ["bring_up", LinkState.FAILED, LinkState.OPENING],
+    ["bring_up", LinkState.OPENING, None],
     ["arrive", LinkState.OPENING, LinkState.ONLINE],
     ["answer", LinkState.DEGRADED, LinkState.ONLINE],
     ["degrade", LinkState.ONLINE, LinkState.DEGRADED],
