@@ -13,9 +13,7 @@ from rigd.model.devices import DeviceIdentity, DeviceSpec
 from rigd.model.errors import (
     DeviceProtocolError,
     DeviceRefused,
-    LinkClosed,
     LinkTimeout,
-    RigError,
     WrongDevice,
 )
 from rigd.ports.link import Line
@@ -43,6 +41,7 @@ class Conversation:
         self._number = 0
         self._polls = 0
         self._fault = False
+        self._restarted = False
 
     async def ask(self, line: Line, words: Words, decode: Callable[[Words], T], *, timeout_s: float | None = None) -> T:
         """A question; repeated with a new number when no answer came or the device was busy."""
@@ -92,6 +91,7 @@ class Conversation:
     async def settle_in(self, line: Line, silence_s: float | None) -> bool:
         """Set and read back the communication time-out; True when the device restarted since it was last prepared."""
         restarted = (await self._look(line)).restarted
+        self._restarted = False
         if silence_s is not None:
             await self.order(line, common.silence_words(silence_s))
             in_force_s = await self.ask(line, common.SILENCE, common.silence)
@@ -108,16 +108,19 @@ class Conversation:
     async def watch(self, line: Line) -> str:
         """Every so many polls look at the flags; the device's fault in words, or "".
 
-        Raises ``LinkClosed`` when the device has restarted: it must be identified and prepared anew.
+        Raises ``DeviceProtocolError`` from the moment when a restart was seen until the device is prepared again.
         """
         self._polls += 1
-        if self._polls % FLAGS_EVERY == 0 and (await self._look(line)).restarted:
+        if self._polls % FLAGS_EVERY == 0:
+            self._restarted |= (await self._look(line)).restarted
+        if self._restarted:
             raise self.restarted()
         return "the device reports a fault" if self._fault else ""
 
-    def restarted(self) -> RigError:
-        """What to raise when a poll shows that the device has restarted."""
-        return LinkClosed(f"{self.device} has restarted and lost its settings")
+    def restarted(self) -> DeviceProtocolError:
+        """Note that a poll showed a restart; to be raised."""
+        self._restarted = True
+        return DeviceProtocolError(f"{self.device}: has restarted and lost its settings")
 
     async def _look(self, line: Line) -> common.Flags:
         flags = await self.ask(line, common.FLAGS, common.flags)

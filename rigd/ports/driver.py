@@ -18,7 +18,8 @@ class Driver(Protocol):
     """One device. Owns no port, no clock and no task: each call gets the line it may use.
 
     A call is one or a few exchanges; the runtime repeats polls, reconnects, and never overlaps two calls on one link.
-    Every method may raise ``LinkError``, ``ProtocolError``, ``DeviceRefused`` and nothing else.
+    Every method may raise ``LinkError``, ``ProtocolError``, ``DeviceRefused`` and nothing else; ``identify`` and
+    ``prepare`` also ``WrongDevice``. A poll that shows a restart raises ``DeviceProtocolError`` until ``prepare``.
     """
 
     async def identify(self, line: Line) -> DeviceIdentity:
@@ -47,7 +48,7 @@ class SpectrumSource(Protocol):
     """What an IR-cell driver offers besides ``Driver``."""
 
     async def spectrum(self, line: Line) -> Spectrum:
-        """The latest finished spectrum (``t_ns`` 0: the runtime stamps it)."""
+        """The latest finished spectrum (``t_ns`` 0: the runtime stamps it); without points before the first one."""
 
 
 @dataclass(frozen=True, slots=True)

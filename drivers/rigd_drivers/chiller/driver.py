@@ -10,7 +10,7 @@ from collections.abc import Callable, Sequence
 from typing import TypeVar
 
 from rigd.model.devices import CHILLER_CHANNELS, DeviceIdentity, DeviceSpec, LastWill, LinkSpec
-from rigd.model.errors import DeviceProtocolError, DeviceRefused, LinkClosed, LinkTimeout, LocalProtocolError
+from rigd.model.errors import DeviceProtocolError, DeviceRefused, LinkTimeout, LocalProtocolError
 from rigd.model.orders import Action, Order
 from rigd.model.samples import Reading
 from rigd.ports.driver import CONTRACT, DriverFamily
@@ -73,7 +73,7 @@ class Chiller:
                 raise LocalProtocolError(f"a chiller has no channel {channel!r}; it has {', '.join(CHILLER_CHANNELS)}")
         status = await self._ask(line, "STATUS", wire.status)
         if status.restarted:
-            raise LinkClosed(f"{self._spec.id} has restarted and lost its set-point")
+            raise DeviceProtocolError(f"{self._spec.id}: has restarted and lost its set-point")
         return [
             Reading(channel, await self._value(line, channel), fault=status.trouble if channel == "circulating" else "")
             for channel in channels

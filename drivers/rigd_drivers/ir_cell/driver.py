@@ -32,6 +32,7 @@ class IrCell:
         self._talk = Conversation(spec)
         self._grid: wire.Grid | None = None
         self._count = 0
+        self._taken = wire.NONE_YET
 
     async def identify(self, line: Line) -> DeviceIdentity:
         """Model and serial number."""
@@ -41,7 +42,7 @@ class IrCell:
         """Learn the grid."""
         restarted = await self._talk.settle_in(line, None)
         self._grid = await self._talk.ask(line, wire.GRID, wire.grid)
-        self._count = 0
+        self._count, self._taken = 0, wire.NONE_YET
         if restarted:
             await self._talk.seen(line)
         return restarted
@@ -57,16 +58,23 @@ class IrCell:
         return [Reading(channel, float(count), count, fault) for channel in channels]
 
     async def spectrum(self, line: Line) -> Spectrum:
-        """The last finished spectrum; ``DeviceRefused`` before the first."""
+        """The last finished spectrum; without points before the first; the same again while nothing new is finished.
+
+        Asks for the count first: 30 bytes instead of a thousand when there is nothing new.
+        """
         grid = self._grid
         if grid is None:
             grid = self._grid = await self._talk.ask(line, wire.GRID, wire.grid)
-        points = grid.points
+        points, count = grid.points, await self._talk.ask(line, wire.COUNT, wire.count)
+        self._notice(count)
+        if count == self._taken.count:
+            return self._spectrum(grid, self._taken)
         finished = await self._talk.ask(
             line, wire.SPECTRUM, lambda words: wire.spectrum(words, points), timeout_s=SPECTRUM_TIMEOUT_S
         )
         self._notice(finished.count)
-        return Spectrum(self._spec.id, 0, grid.start_per_cm, grid.step_per_cm, finished.absorbance)
+        self._taken = finished
+        return self._spectrum(grid, finished)
 
     async def execute(self, line: Line, order: Order) -> None:
         """There is nothing to order."""
@@ -75,6 +83,9 @@ class IrCell:
     def last_will(self, link: LinkSpec) -> LastWill:
         """Nothing moves, nothing to stop."""
         return LastWill(self._spec.id, link, ())
+
+    def _spectrum(self, grid: wire.Grid, finished: wire.Finished) -> Spectrum:
+        return Spectrum(self._spec.id, 0, grid.start_per_cm, grid.step_per_cm, finished.absorbance)
 
     def _notice(self, count: int) -> None:
         if count < self._count:

@@ -11,8 +11,6 @@ from rigd_drivers.bracket import REPLY_MAX, Words, named, number, whole
 MODEL = "FC1"
 GRID, COUNT, SPECTRUM = ("grid?",), ("count?",), ("spectrum?",)
 POINTS_MAX = REPLY_MAX // 4
-BITS_PER_BYTE = 10
-"""8 data bits, start and stop bit."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -32,6 +30,9 @@ class Finished:
     count: int
     age_s: float
     absorbance: tuple[float, ...]
+
+
+NONE_YET = Finished(0, 0.0, ())
 
 
 def grid(words: Words) -> Grid:
