@@ -111,7 +111,7 @@ class Front:
                     box.put(_Letter(alert))
 
     def _gone(self) -> Mapping[str, Any]:
-        text = "The control process ended without a last word. The guard sends every pump its stop; go and look at the rig."
+        text = "The control process ended without a last word. The guard sends every pump its stop; go and look."
         fields = {"did": "the guard took the ports over", "do": "check that every pump has stopped"}
         number = self._last_event + 1
         return {"say": "event", "n": number, "kind": "fault", "subject": "control", "text": text, "fields": fields}
