@@ -5,19 +5,23 @@ from __future__ import annotations
 import io
 import math
 import re
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
+from functools import wraps
 from itertools import pairwise
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING, Any, TypeVar
 
 import numpy as np
 from numpy.typing import NDArray
 
+from rigd.model.events import EventKind
 from rigd.report.data import PhaseSpan, PointRow, RunData, Trace
 from rigd.report.kinetic_fit import KineticsResult
 
 if TYPE_CHECKING:
     from matplotlib.axes import Axes
     from matplotlib.figure import Figure
+
+Draw = TypeVar("Draw", bound=Callable[..., str])
 
 COLOURS = ("#1b5e8c", "#b8560f", "#3a7d44", "#7b4b94", "#8a6d1f", "#a33b52")
 INK, PALE = "#22303a", "#d9dee2"
@@ -44,6 +48,20 @@ _STYLE: Any = {
 }
 
 
+def _styled(draw: Draw) -> Draw:
+    """Draw with the page's style, whatever the user's own settings are."""
+
+    @wraps(draw)
+    def styled(*arguments: Any) -> str:
+        import matplotlib
+
+        with matplotlib.rc_context(_STYLE):
+            return draw(*arguments)
+
+    return styled  # type: ignore[return-value]
+
+
+@_styled
 def conversion_figure(run: RunData, kinetics: KineticsResult) -> str:
     """Conversion against residence time and against flow, one colour per temperature, with the fitted curves."""
     figure, (left, right) = _figure(1, 2, (10.2, 4.1))
@@ -67,6 +85,7 @@ def conversion_figure(run: RunData, kinetics: KineticsResult) -> str:
     return _svg(figure)
 
 
+@_styled
 def timeline_figure(run: RunData) -> str:
     """Flow, pressure, temperature and conversion over time, phases shaded, trips marked."""
     panels = [(what, run.measured(what)) for what in ("flow", "pressure", "temperature", "fraction")]
@@ -77,13 +96,16 @@ def timeline_figure(run: RunData) -> str:
         axes = rows[index][0]
         _shade(axes, run.phases, scale, run.duration_s, names=index == 0)
         for number, trace in enumerate(traces):
-            _line(axes, trace, COLOURS[number % len(COLOURS)], scale)
+            _line(axes, trace, number, scale)
         _limits(axes, run, traces)
         _trips(axes, run, scale)
         axes.set_ylabel(f"{_TITLES[what]} / {_unit(what, traces)}")
         axes.grid(visible=False, axis="x")
-        if len(traces) > 1 or what == "temperature":
-            axes.legend(loc="upper left", fontsize=8, ncols=min(len(traces), 5), borderaxespad=0.2)
+        if what in ("flow", "pressure"):
+            axes.set_ylim(bottom=0)
+        if what == "fraction":
+            _collections(axes, run.points, scale)
+        axes.legend(loc="upper left", bbox_to_anchor=(1.0, 1.0), fontsize=8, handlelength=1.2)
     rows[-1][0].set_xlabel(f"time since the start / {unit}")
     rows[-1][0].set_xlim(0, max(run.duration_s, 1.0) / scale)
     _mark_simulated(figure, run.simulated)
@@ -139,7 +161,7 @@ def _curves(left: Axes, right: Axes, kinetics: KineticsResult, temperature: floa
     left.plot(tau / 60.0, height, color=colour, linewidth=1.5, label=label)
     volume_mL = float(np.median([p.residence_time_s * p.total_mL_min / 60.0 for p in points]))
     flows = np.array([p.total_mL_min for p in points])
-    wanted = np.linspace(0.85 * flows.min(), 1.08 * flows.max(), 150)
+    wanted = np.linspace(0.9 * flows.min(), 1.08 * flows.max(), 150)
     right.plot(wanted, np.interp(60.0 * volume_mL / wanted, tau, height), color=colour, linewidth=1.5)
 
 
@@ -166,11 +188,15 @@ def _ceiling(points: Sequence[PointRow]) -> float:
     return min(105.0, 10.0 * math.ceil((highest + 8.0) / 10.0)) if math.isfinite(highest) else 105.0
 
 
-def _line(axes: Axes, trace: Trace, colour: str, scale: float) -> None:
+def _line(axes: Axes, trace: Trace, number: int, scale: float) -> None:
+    """Second, fourth ... lines are dashed: equal flows lie on each other."""
     factor = 100.0 if trace.measures == "fraction" else 1.0
     t_s, value = thinned(trace.t_s, trace.value * factor)
-    style = "steps-post" if trace.measures == "flow" else "default"
-    axes.plot(t_s / scale, value, color=colour, linewidth=1.1, drawstyle=style, label=trace.tag)
+    axes.plot(
+        t_s / scale, value, color=COLOURS[number % len(COLOURS)], linewidth=1.1, label=trace.tag,
+        linestyle=(0, (4, 2.5)) if number % 2 else "-",
+        drawstyle="steps-post" if trace.measures == "flow" else "default",
+    )  # fmt: skip
 
 
 def _unit(what: str, traces: Sequence[Trace]) -> str:
@@ -226,17 +252,21 @@ def _limits(axes: Axes, run: RunData, traces: Sequence[Trace]) -> None:
     }
     for limit in sorted(limits):
         if 0 < limit <= 2.5 * max(top, 0.1):
-            axes.axhline(limit, color="#a33b52", linewidth=0.9, linestyle=(0, (5, 3)))
-            axes.annotate(
-                "trip limit", (1.0, limit), xycoords=("axes fraction", "data"), fontsize=7.5, color="#a33b52",
-                ha="right", va="bottom",
-            )  # fmt: skip
+            axes.axhline(limit, color="#a33b52", linewidth=0.9, linestyle=(0, (5, 3)), label="trip limit")
+
+
+def _collections(axes: Axes, points: Sequence[PointRow], scale: float) -> None:
+    """Bars at the foot of the panel: when a fraction went into the flask."""
+    spans = [(p.collect_start_s / scale, p.collect_end_s / scale) for p in points if math.isfinite(p.collect_end_s)]
+    for index, (start, end) in enumerate(spans):
+        label = "collected" if index == 0 else None
+        axes.axvspan(start, end, ymin=0.0, ymax=0.045, color="#3a7d44", linewidth=0, zorder=4, label=label)
 
 
 def _trips(axes: Axes, run: RunData, scale: float) -> None:
-    for event in run.events:
-        if event.kind == "trip":
-            axes.axvline(event.t_ns / 1e9 / scale, color="#a3122f", linewidth=1.4)
+    trips = [event for event in run.events if event.kind is EventKind.TRIP]
+    for index, event in enumerate(trips):
+        axes.axvline(event.t_ns / 1e9 / scale, color="#a3122f", linewidth=1.4, label="trip" if index == 0 else None)
 
 
 def _mark_simulated(figure: Figure, simulated: bool) -> None:
@@ -248,20 +278,15 @@ def _mark_simulated(figure: Figure, simulated: bool) -> None:
 
 
 def _figure(rows: int, columns: int, size: tuple[float, float], **options: Any) -> tuple[Figure, Any]:
-    import matplotlib
     from matplotlib.figure import Figure
 
-    with matplotlib.rc_context(_STYLE):
-        figure = Figure(figsize=size, layout="constrained")
-        return figure, figure.subplots(rows, columns, **options)
+    figure = Figure(figsize=size, layout="constrained")
+    return figure, figure.subplots(rows, columns, **options)
 
 
 def _svg(figure: Figure) -> str:
-    import matplotlib
-
     buffer = io.StringIO()
-    with matplotlib.rc_context(_STYLE):
-        figure.savefig(buffer, format="svg", metadata={"Date": None, "Creator": None})
+    figure.savefig(buffer, format="svg", metadata={"Date": None, "Creator": None})
     text = buffer.getvalue()
     body = text[text.index("<svg") :]
     return re.sub(r'<svg [^>]*?(viewBox="[^"]*")[^>]*>', rf'<svg {_NAMESPACES} \1 role="img">', body, count=1)

@@ -1,0 +1,86 @@
+"""Puts a run together from its journal: traces, phases, points, what was used."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from pathlib import Path
+
+import numpy as np
+
+from rigd.adapters.journal_reader import JournalReader, Series, TagInfo
+from rigd.model.events import Event, EventKind
+from rigd.model.recipe import Recipe
+from rigd.model.rig import RigDefinition
+from rigd.model.samples import Quality
+from rigd.report.data import PhaseSpan, RunData, Trace
+from rigd.report.points import point_rows
+from rigd.report.usage import used_mL
+
+UNFINISHED = "no end recorded"
+"""Outcome of a run whose journal was never closed: the computer or the daemon died."""
+
+
+def read_run(folder: Path, rig: RigDefinition | None = None, recipe: Recipe | None = None) -> RunData:
+    """Read the journal in ``folder``. ``rig`` and ``recipe`` are those the run was made with, where they can still be
+    read. Raises ``JournalError``."""
+    with JournalReader(folder) as journal:
+        meta, clock, events = dict(journal.meta), journal.clock(), tuple(journal.events())
+        traces = {tag: _trace(info, journal.series(tag)) for tag, info in journal.tags.items()}
+    end_s = clock[-1][0] / 1e9 if clock else 0.0
+    phases = phase_spans(events, end_s)
+    return RunData(
+        id=meta.get("run", folder.name),
+        folder=str(folder),
+        title=rig.title if rig else meta.get("rig", ""),
+        recipe_title=recipe.title if recipe else meta.get("recipe", ""),
+        simulated=meta.get("simulated", "").lower() in ("yes", "true", "1", "simulated"),
+        pace=float(meta.get("pace", "1") or 1),
+        outcome=meta.get("outcome", UNFINISHED),
+        outcome_text=_last_words(events),
+        started_utc=clock[0][1] if clock else "",
+        ended_utc=clock[-1][1] if clock else "",
+        duration_s=end_s,
+        traces=traces,
+        phases=phases,
+        points=point_rows(events, traces, rig, recipe),
+        events=events,
+        used_mL=used_mL(rig, traces) if rig else {},
+        facts=meta,
+        rig=rig,
+        recipe=recipe,
+    )
+
+
+def phase_spans(events: Sequence[Event], end_s: float) -> tuple[PhaseSpan, ...]:
+    """Spans between PHASE events; the last one lasts until ``end_s``."""
+    starts = [event for event in events if event.kind is EventKind.PHASE]
+    ends = [event.t_ns / 1e9 for event in starts[1:]] + [end_s]
+    return tuple(
+        PhaseSpan(
+            event.subject,
+            str(event.fields.get("label", "") or event.subject),
+            str(event.fields.get("point", "")),
+            event.t_ns / 1e9,
+            end,
+        )
+        for event, end in zip(starts, ends, strict=True)
+    )
+
+
+def _trace(info: TagInfo, series: Series) -> Trace:
+    value = np.asarray(series.values, dtype=np.float64)
+    if value.size:
+        value = np.where(np.asarray(series.quality) == int(Quality.BAD), np.nan, value)
+    t_s = np.asarray(series.t_ns, dtype=np.float64) / 1e9
+    return Trace(info.id, info.title, info.measures, info.unit, t_s, value)
+
+
+def _last_words(events: Sequence[Event]) -> str:
+    """The sentence of the last change of the run state."""
+    spoken = [event.text for event in events if event.kind is EventKind.RUN_STATE]
+    return spoken[-1] if spoken else ""
+
+
+def known_names(meta: Mapping[str, str]) -> str:
+    """Rig and recipe as the journal names them."""
+    return " / ".join(part for part in (meta.get("rig", ""), meta.get("recipe", "")) if part)

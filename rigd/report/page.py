@@ -1,0 +1,252 @@
+"""The report as one HTML file that needs nothing else: no script, no link out, figures inside."""
+
+from __future__ import annotations
+
+import math
+from pathlib import Path
+from typing import Any
+
+from jinja2 import Environment, PackageLoader, StrictUndefined
+from markupsafe import Markup
+
+from rigd import __version__
+from rigd.model.events import Event, EventKind
+from rigd.model.protection import ConditionKind
+from rigd.report.collect import UNFINISHED
+from rigd.report.data import PointRow, RunData, Trace
+from rigd.report.figures import conversion_figure, timeline_figure, with_error
+from rigd.report.kinetic_fit import Kinetics, kinetics_of
+from rigd.report.words import (
+    CAUTIONS,
+    clock,
+    duration,
+    first_out,
+    number,
+    of_kind,
+    outcome_words,
+    percent,
+    points_words,
+)
+
+FILE_NAME = "report.html"
+
+_TOLD = (
+    EventKind.TRIP, EventKind.ALARM, EventKind.STOP, EventKind.REQUEST, EventKind.DEVICE, EventKind.FAULT,
+    EventKind.MEASUREMENT, EventKind.NOTE, EventKind.RUN_STATE,
+)  # fmt: skip
+
+
+def write_page(run: RunData, target: Path | None = None) -> Path:
+    """Write the page beside the journal (or to ``target``) and return its path."""
+    path = target or Path(run.folder) / FILE_NAME
+    path.write_text(render_page(run), encoding="utf-8")
+    return path
+
+
+def render_page(run: RunData) -> str:
+    """The page as text."""
+    environment = Environment(
+        loader=PackageLoader("rigd.report"), autoescape=True, undefined=StrictUndefined, trim_blocks=True
+    )
+    return environment.get_template("report.html.j2").render(_context(run))
+
+
+def _context(run: RunData) -> dict[str, Any]:
+    kinetics = kinetics_of(run)
+    trips = of_kind(run, EventKind.TRIP)
+    first = first_out(trips)
+    return {
+        "run": _head(run),
+        "outcome": outcome_words(run),
+        "points_words": points_words(run),
+        "chemistry": run.rig.chemistry.name if run.rig else "",
+        "trips": [_trip(event, event is first) for event in trips],
+        "conversion_svg": Markup(conversion_figure(run, kinetics)) if _any_conversion(run) else "",
+        "timeline_svg": Markup(timeline_figure(run)),
+        "residence_note": _residence_note(run),
+        "fits": [_fit(fit) for fit in kinetics.fits],
+        "remarks": kinetics.remarks,
+        "points": [_point(point) for point in run.points],
+        "peaks": [_peak(run, trace) for what in ("pressure", "temperature") for trace in run.measured(what)],
+        "used": _used(run),
+        "happened": [_event(event) for event in of_kind(run, *_TOLD)],
+        "all_events": [_event(event) for event in run.events],
+        "signed": _signed(run),
+        "sheet": _sheet(run),
+        "permit": _permit(run),
+        "provenance": _provenance(run),
+        "cautions": CAUTIONS,
+    }
+
+
+def _any_conversion(run: RunData) -> bool:
+    return any(math.isfinite(point.conversion) for point in run.points)
+
+
+def _head(run: RunData) -> dict[str, Any]:
+    return {
+        "id": run.id,
+        "title": run.title or "Unnamed rig",
+        "recipe_title": run.recipe_title,
+        "simulated": run.simulated,
+        "pace": run.pace,
+        "outcome": run.outcome,
+        "outcome_text": run.outcome_text,
+        "outcome_known": run.outcome != UNFINISHED,
+        "started": _utc(run.started_utc),
+        "ended": _utc(run.ended_utc),
+        "duration": duration(run.duration_s),
+    }
+
+
+def _utc(text: str) -> str:
+    return text[:19].replace("T", " ") or "–"
+
+
+def _trip(event: Event, first: bool) -> dict[str, Any]:
+    told = {key: str(event.fields.get(key, "")) for key in ("did", "do")}
+    return {"subject": event.subject, "first": first, "t": clock(event.t_ns / 1e9), "text": event.text, **told}
+
+
+def _event(event: Event) -> dict[str, str]:
+    when = clock(event.t_ns / 1e9)
+    return {"t": when, "kind": event.kind.value, "subject": event.subject, "text": event.text}
+
+
+def _fit(fit: Kinetics) -> dict[str, Any]:
+    feed = f"{fit.feed.reactant:.3g} mol/L"
+    if fit.feed.partner:
+        feed += f" + {fit.feed.partner:.3g} mol/L"
+    law = fit.fit.law.value + (f", K = {fit.fit.equilibrium_constant:g}" if fit.fit.equilibrium_constant else "")
+    return {
+        "temperature": f"{fit.temperature_degC:g}",
+        "law": law,
+        "k": with_error(fit.fit.k, fit.fit.k_error),
+        "unit": fit.fit.unit,
+        "feed": feed,
+        "residual": f"{100 * fit.fit.residual_sd:.2f} %",
+        "points": fit.fit.points,
+    }
+
+
+def _point(point: PointRow) -> dict[str, Any]:
+    window = (
+        f"{clock(point.collect_start_s)} – {clock(point.collect_end_s)}" if math.isfinite(point.collect_end_s) else ""
+    )
+    return {
+        "id": point.id,
+        "kind": point.kind,
+        "flows": [f"{pump} {flow:.3g}" for pump, flow in point.flows_mL_min.items()],
+        "total": f"{point.total_mL_min:.3g}",
+        "temperature": f"{point.temperature_degC:g}",
+        "residence": duration(point.residence_time_s),
+        "settled": point.settled,
+        "settle": duration(point.settle_s),
+        "conversion": percent(point.conversion, point.conversion_sd),
+        "readings": point.readings or "–",
+        "collected": number(point.collected_mL),
+        "window": window,
+        "status": point.status,
+    }
+
+
+def _residence_note(run: RunData) -> str:
+    if run.rig is None:
+        return ""
+    from rigd.logic.flow_path import flow_path
+
+    path = flow_path(run.rig)
+    return (
+        f"Residence time is the liquid volume of the packed column, {path.column_mL:.2f} mL"
+        f" (of it {path.interstitial_mL:.2f} mL between the beads, the rest inside them), over the total flow."
+    )
+
+
+def _peak(run: RunData, trace: Trace) -> dict[str, str]:
+    limits, rating = [], 0.0
+    if run.rig is not None:
+        limits = [
+            cause.limit
+            for lock in run.rig.interlocks
+            for cause in lock.causes
+            if cause.kind is ConditionKind.HIGH and cause.tag == trace.tag
+        ]
+        rating = next((tag.rating for tag in run.rig.tags if tag.id == trace.tag), 0.0)
+    unit = trace.unit.replace("deg", "°")
+    return {
+        "tag": trace.tag,
+        "title": trace.title,
+        "highest": f"{number(trace.peak)} {unit}",
+        "limit": f"{min(limits):g} {unit}" if limits else "–",
+        "rating": f"{rating:g} {unit}" if rating else "–",
+    }
+
+
+def _used(run: RunData) -> list[dict[str, str]]:
+    if run.rig is None:
+        return []
+    there = {liquid.id: 0.0 for liquid in run.rig.liquids}
+    for vessel in run.rig.vessels:
+        if vessel.liquid:
+            there[vessel.liquid] = there.get(vessel.liquid, 0.0) + vessel.content_mL
+    return [
+        {
+            "name": liquid.name,
+            "role": liquid.role.value,
+            "drawn": number(run.used_mL.get(liquid.id, math.nan), 1),
+            "content": number(there[liquid.id], 0),
+        }
+        for liquid in run.rig.liquids
+    ]
+
+
+def _signed(run: RunData) -> list[dict[str, str]]:
+    texts = {item.id: item.text for item in run.recipe.checklist} if run.recipe else {}
+    return [
+        {
+            "t": clock(event.t_ns / 1e9),
+            "id": event.subject,
+            "who": str(event.fields.get("who", "")),
+            "text": texts.get(event.subject, event.text),
+        }
+        for event in of_kind(run, EventKind.PROMPT)
+        if event.fields.get("status") == "confirmed"
+    ]
+
+
+def _sheet(run: RunData) -> list[tuple[str, str]]:
+    sheet = run.recipe.sheet if run.recipe else None
+    if sheet is None:
+        return []
+    return [
+        ("signed by", sheet.signed_by),
+        ("safe when it stands still", "yes" if sheet.stagnation_safe else "no"),
+        ("flush volumes needed", f"{sheet.flush_volumes:g}"),
+        ("safe temperature", f"{sheet.safe_degC:g} °C"),
+        ("highest temperature allowed", f"{sheet.limit_degC:g} °C"),
+        ("highest pressure allowed", f"{sheet.limit_bar:g} bar"),
+        ("adiabatic rise", f"{sheet.adiabatic_rise_K:g} K"),
+        ("gas evolution", "yes" if sheet.gas_evolution else "no"),
+    ]
+
+
+def _permit(run: RunData) -> list[tuple[str, str]]:
+    permit = run.recipe.permit if run.recipe else None
+    if permit is None:
+        return []
+    return [
+        ("approved by", permit.approved_by),
+        ("number", permit.number),
+        ("contacts", ", ".join(permit.contacts)),
+        ("valid until", permit.end_utc),
+    ]
+
+
+def _provenance(run: RunData) -> list[tuple[str, str]]:
+    long = {key for key, value in run.facts.items() if len(value) > 200 or "\n" in value}
+    rows = [("written by", f"rigd {__version__}"), ("journal", str(Path(run.folder) / "run.sqlite"))]
+    if run.rig is not None and run.rig.digest:
+        rows.append(("rig digest (SHA-256)", run.rig.digest))
+    if run.recipe is not None and run.recipe.digest:
+        rows.append(("recipe digest (SHA-256)", run.recipe.digest))
+    return rows + [(key, value) for key, value in sorted(run.facts.items()) if key not in long]

@@ -1,0 +1,86 @@
+"""The report in the terminal: outcome, points, rate constants, trips, what was used."""
+
+from __future__ import annotations
+
+from rich import box
+from rich.console import Group, RenderableType
+from rich.panel import Panel
+from rich.table import Table
+from rich.text import Text
+
+from rigd.model.events import EventKind
+from rigd.report.data import RunData
+from rigd.report.figures import with_error
+from rigd.report.kinetic_fit import kinetics_of
+from rigd.report.words import (
+    clock,
+    duration,
+    first_out,
+    flow_words,
+    number,
+    of_kind,
+    outcome_words,
+    percent,
+    points_words,
+)
+
+_COLOURS = {"done": "green", "tripped": "red", "refused": "red"}
+
+
+def summary(run: RunData) -> RenderableType:
+    """What a person wants to know at the end of a run, in one screen."""
+    parts: list[RenderableType] = [_head(run)]
+    trips = of_kind(run, EventKind.TRIP)
+    first = first_out(trips)
+    for event in trips:
+        mark = " (first-out)" if event is first else ""
+        parts.append(Text.assemble((f"{event.subject}{mark} at {clock(event.t_ns / 1e9)}: ", "bold red"), event.text))
+    if run.points:
+        parts.append(_points(run))
+    kinetics = kinetics_of(run)
+    for fit in kinetics.fits:
+        k = with_error(fit.fit.k, fit.fit.k_error)
+        parts.append(Text(f"k({fit.temperature_degC:g} °C) = {k} {fit.fit.unit}   {fit.fit.law.value}", style="bold"))
+    parts += [Text(remark, style="dim") for remark in kinetics.remarks]
+    if run.used_mL:
+        used = ", ".join(f"{number(volume, 1)} mL {liquid}" for liquid, volume in run.used_mL.items())
+        parts.append(Text(f"used: {used}"))
+    return Group(*parts)
+
+
+def _head(run: RunData) -> Panel:
+    colour = _COLOURS.get(run.outcome, "yellow")
+    body = Text.assemble(
+        (outcome_words(run), f"bold {colour}"),
+        f"  {points_words(run)} in {duration(run.duration_s)}",
+        (f"\n{run.outcome_text}" if run.outcome_text else ""),
+    )
+    mark = " SIMULATED " if run.simulated else None
+    return Panel(
+        body,
+        title=Text(f"{run.title}: {run.recipe_title}", style="bold"),
+        title_align="left",
+        subtitle=Text(mark, style="bold white on red") if mark else None,
+        border_style=colour,
+        box=box.ROUNDED,
+    )
+
+
+def _points(run: RunData) -> Table:
+    table = Table(box=box.SIMPLE_HEAD, pad_edge=False)
+    table.add_column("point")
+    table.add_column("flows mL/min")
+    for heading in ("T °C", "residence", "steady after", "conversion %", "collected mL"):
+        table.add_column(heading, justify="right")
+    for point in run.points:
+        steady = duration(point.settle_s) if point.settled else Text("not steady", style="yellow")
+        table.add_row(
+            point.id if point.kind == "point" else f"{point.id} ({point.kind})",
+            flow_words(dict(point.flows_mL_min)),
+            f"{point.temperature_degC:g}",
+            duration(point.residence_time_s),
+            steady,
+            percent(point.conversion, point.conversion_sd),
+            number(point.collected_mL),
+        )
+    return table

@@ -1,0 +1,92 @@
+"""Numbers and names as people read them, the same on the page and in the terminal."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+
+from rigd.model.events import Event, EventKind
+from rigd.report.data import RunData
+
+OUTCOMES = {
+    "done": "Done",
+    "tripped": "Tripped",
+    "stopped": "Stopped early",
+    "refused": "Refused",
+}
+
+CAUTIONS = (
+    "rigd is not a safety function and claims no safety integrity; it can fail at the moment it is needed.",
+    "Every rig needs a mechanical relief device, a hard-wired switch that takes the power from pumps and heaters.",
+    "Heaters need an over-temperature cut-out of their own. This report proves none of these devices.",
+    "Limits in the example files are examples: commission with solvent, prove each interlock with a real stimulus.",
+    "The hazards of the chemistry are for a competent person to judge; local rules for unattended work apply first.",
+    "What no sensor shows, no software detects.",
+)
+
+
+def duration(seconds: float) -> str:
+    """``7 h 42 min``, ``12 min 05 s``, ``31 s``; a dash for what is not known.
+
+    >>> duration(725), duration(27720), duration(31.4)
+    ('12 min 05 s', '7 h 42 min', '31 s')
+    """
+    if not math.isfinite(seconds):
+        return "–"
+    whole = round(seconds)
+    hours, minutes = whole // 3600, whole % 3600 // 60
+    if hours:
+        return f"{hours} h {minutes:02d} min"
+    return f"{minutes} min {whole % 60:02d} s" if minutes else f"{whole} s"
+
+
+def clock(seconds: float) -> str:
+    """Process time as ``h:mm:ss``.
+
+    >>> clock(3725.2)
+    '1:02:05'
+    """
+    if not math.isfinite(seconds):
+        return "–"
+    whole = int(seconds)
+    return f"{whole // 3600}:{whole % 3600 // 60:02d}:{whole % 60:02d}"
+
+
+def number(value: float, digits: int = 2) -> str:
+    """Fixed decimals; a dash for NaN."""
+    return f"{value:.{digits}f}" if math.isfinite(value) else "–"
+
+
+def percent(value: float, scatter: float = math.nan) -> str:
+    """``63.4 ± 0.5`` of a fraction and its standard deviation, in per cent (the sign is in the heading)."""
+    if not math.isfinite(value):
+        return "–"
+    return f"{100 * value:.1f}" + (f" ± {100 * scatter:.1f}" if math.isfinite(scatter) else "")
+
+
+def outcome_words(run: RunData) -> str:
+    """The outcome as a heading."""
+    return OUTCOMES.get(run.outcome, run.outcome.capitalize())
+
+
+def points_words(run: RunData) -> str:
+    """``5 of 6 points collected``."""
+    collected = sum(point.status == "collected" for point in run.points)
+    planned = len(run.recipe.points) if run.recipe else len(run.points)
+    return f"{collected} of {planned} points collected"
+
+
+def of_kind(run: RunData, *kinds: EventKind) -> list[Event]:
+    """Events of some kinds, in order."""
+    return [event for event in run.events if event.kind in kinds]
+
+
+def first_out(trips: Sequence[Event]) -> Event | None:
+    """The trip that came first, as the interlocks recorded it; the earliest when none is marked."""
+    marked = [event for event in trips if event.fields.get("first_out") in (True, event.subject)]
+    return next(iter(marked or trips), None)
+
+
+def flow_words(flows_mL_min: dict[str, float]) -> str:
+    """``PU-A 0.40 + PU-B 0.40``."""
+    return " + ".join(f"{pump} {flow:.3g}" for pump, flow in flows_mL_min.items())
