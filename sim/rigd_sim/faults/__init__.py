@@ -1,0 +1,5 @@
+"""Kinds of fault and what each does to the plant's levers. Knows the plant, no bytes and no devices' protocols."""
+
+from rigd_sim.faults.registry import EFFECTS, fault_kinds, make_plant
+
+__all__ = ["EFFECTS", "fault_kinds", "make_plant"]

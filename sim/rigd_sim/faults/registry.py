@@ -1,0 +1,23 @@
+"""All kinds in one table, in the order in which they are listed."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+
+from rigd.model.rig import RigDefinition
+from rigd.ports.plant import FaultKind, Plant
+from rigd_sim.faults import wetted
+from rigd_sim.plant import RigPlant
+from rigd_sim.plant.ailments import FaultEffect
+
+EFFECTS: Mapping[str, FaultEffect] = {effect.kind.kind: effect for effect in wetted.EFFECTS}
+
+
+def fault_kinds() -> Sequence[FaultKind]:
+    """Every kind of fault that a plant can be given."""
+    return tuple(effect.kind for effect in EFFECTS.values())
+
+
+def make_plant(rig: RigDefinition, seed: int) -> Plant:
+    """The simulated plant of a rig, with all fault kinds."""
+    return RigPlant(rig, seed, EFFECTS)

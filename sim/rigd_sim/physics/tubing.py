@@ -1,0 +1,42 @@
+"""Laminar flow and dispersion in round tubes. SI."""
+
+from __future__ import annotations
+
+import math
+
+
+def area(diameter: float) -> float:
+    """Cross-section [m2]."""
+    return math.pi * diameter**2 / 4.0
+
+
+def resistance(viscosity: float, length: float, diameter: float) -> float:
+    """Hagen-Poiseuille: dP/Q = 128 mu L / (pi d^4) [Pa s/m3]; Re < 2000, entrance length 0.06 Re d neglected."""
+    return 128.0 * viscosity * length / (math.pi * diameter**4)
+
+
+def reynolds(density: float, velocity: float, diameter: float, viscosity: float) -> float:
+    """rho u d / mu."""
+    return density * velocity * diameter / viscosity
+
+
+def taylor_aris(diffusivity: float, velocity: float, diameter: float) -> float:
+    """Dispersion coefficient K = D (1 + Pe^2/192), Pe = u d / D [m2/s].
+
+    G. I. Taylor, Proc. R. Soc. A 219 (1953) 186; R. Aris, Proc. R. Soc. A 235 (1956) 67. Valid when
+    ``development`` >= 0.8; see there.
+    """
+    peclet = velocity * diameter / diffusivity
+    return diffusivity * (1.0 + peclet**2 / 192.0)
+
+
+def development(diffusivity: float, residence_time: float, diameter: float) -> float:
+    """D tau / R^2: from about 0.8 the one-dimensional description holds (V. Ananthakrishnan, W. N. Gill, A. J. Barduhn,
+    AIChE J. 11 (1965) 1063-1072, from memory); below about 0.01 pure convection does.
+    """
+    return diffusivity * residence_time / (diameter / 2.0) ** 2
+
+
+def pure_convection_step(theta: float) -> float:
+    """F(theta) of laminar flow without diffusion: 1 - 1/(4 theta^2) for theta > 1/2."""
+    return 0.0 if theta <= 0.5 else 1.0 - 0.25 / theta**2

@@ -1,0 +1,289 @@
+"""What is in the rig: arrays of compositions, temperatures and activities, and the step that moves them on.
+
+Columns of every composition: species [mol/m3], then one volume fraction per property set (solvent), then gas (volume
+fraction). Amounts and volumes are kept to rounding whatever the flows do.
+"""
+
+from __future__ import annotations
+
+import math
+
+import numpy as np
+
+from rigd.model.chemistry import RateLaw, Reaction, ReactionPlace
+from rigd.model.rig import Column, RigDefinition
+from rigd_sim.physics.compiled import Floats
+from rigd_sim.physics.constants import GAS_CONSTANT_J_MOL_K, ZERO_CELSIUS_K
+from rigd_sim.physics.packing_transfer import bead_rate, chung_wen
+from rigd_sim.physics.properties import SOLVENTS, Solvent
+from rigd_sim.physics.reaction import LHHW, POWER, REVERSIBLE
+from rigd_sim.physics.transport import transport_step
+from rigd_sim.physics.tubing import area, taylor_aris
+from rigd_sim.plant.layout import Layout
+
+LAWS = {RateLaw.POWER: POWER, RateLaw.REVERSIBLE: REVERSIBLE, RateLaw.LHHW: LHHW}
+DEFAULT_DIFFUSIVITY = 1e-9
+BEAD_DIFFUSION_SHARE = 0.2
+"""Diffusion inside a swollen gel bead is 0.1 to 0.3 of the free one (common practice, no source)."""
+PARTS_MAX = 24
+SUPPLY_COARSENESS = 8.0
+EMPTY_M3 = 1e-9
+
+
+class Kinetics:
+    """The chemistry sheet as arrays in mol, m3, s, K."""
+
+    def __init__(self, rig: RigDefinition, columns: int) -> None:
+        chemistry = rig.chemistry
+        species = [s.id for s in chemistry.species]
+        reactions = chemistry.reactions
+        shape = (len(reactions), len(species))
+        self.nu, self.orders, self.reverse, self.adsorption = (np.zeros(shape) for _ in range(4))
+        for j, reaction in enumerate(reactions):
+            for table, target, factor in (
+                (reaction.stoichiometry, self.nu, 1.0),
+                (reaction.orders, self.orders, 1.0),
+                (reaction.reverse_orders, self.reverse, 1.0),
+                (reaction.adsorption_L_mol, self.adsorption, 1e-3),
+            ):
+                for name, value in table.items():
+                    target[j, species.index(name)] = value * factor
+        self.k_ref = np.array([_rate_constant(r) for r in reactions])
+        self.t_ref = np.array([r.reference_degC + ZERO_CELSIUS_K for r in reactions])
+        self.ea_over_r = np.array([r.activation_energy_kJ_mol * 1e3 / GAS_CONSTANT_J_MOL_K for r in reactions])
+        self.law = np.array([LAWS[r.law] for r in reactions], dtype=np.int64)
+        self.on_bed = np.array([r.place is ReactionPlace.CATALYST for r in reactions], dtype=np.int64)
+        self.equilibrium = np.array([_equilibrium(r) for r in reactions])
+        self.heat = np.array([r.heat_kJ_mol * 1e3 for r in reactions])
+        self.decay_per_s = np.array([r.deactivation_per_h / 3600.0 for r in reactions])
+        self.per_gram = [r.per_gram for r in reactions]
+        self.in_tubes = bool((self.on_bed == 0).any()) if reactions else False
+        self.count = len(reactions)
+        self.columns = columns
+
+
+def _rate_constant(reaction: Reaction) -> float:
+    """From mol/L to mol/m3: r [mol/(m3 s)] = 1000 k prod (c/1000)^n."""
+    return float(reaction.rate_constant * 1000.0 ** (1.0 - sum(reaction.orders.values())))
+
+
+def _equilibrium(reaction: Reaction) -> float:
+    """Equilibrium constant in powers of mol/m3, so that forward and reverse terms keep their ratio."""
+    power = sum(reaction.reverse_orders.values()) - sum(reaction.orders.values())
+    return float(reaction.equilibrium_constant * 1000.0**power)
+
+
+class Bed:
+    """One column's places: index of its edge, first place, heat and exchange figures."""
+
+    def __init__(self, column: Column, edge: int, start: int, cells: int) -> None:
+        self.column, self.edge, self.start, self.cells = column, edge, start, cells
+        bore, length = column.bore_mm * 1e-3, column.length_mm * 1e-3
+        packing = column.packing
+        self.section, self.length = area(bore), length
+        self.empty_volume = self.section * length
+        self.bead_liquid = self.empty_volume * (1.0 - packing.voidage) * packing.bead_liquid_fraction
+        polymer = self.empty_volume * (1.0 - packing.voidage) * (1.0 - packing.bead_liquid_fraction)
+        self.solid_J_K = polymer * 1.5e6 + column.wall_conductance_W_K * 2.0  # polymer, and the inner glass wall
+        self.wet = 0.0
+        self.swollen = 0.0
+        self.voidage = packing.voidage
+
+
+class Contents:
+    """All liquid and its heat. ``node_volume``, ``cells`` and so on are shared with the compiled kernels."""
+
+    def __init__(self, rig: RigDefinition, layout: Layout) -> None:
+        self.layout = layout
+        self.species = [s.id for s in rig.chemistry.species]
+        self.solvents = sorted({liquid.properties for liquid in rig.liquids})
+        self.n_species = len(self.species)
+        self.width = self.n_species + len(self.solvents) + 1
+        self.gas = self.width - 1
+        self.kinetics = Kinetics(rig, self.width)
+        self.room_K = rig.simulation.ambient_degC + ZERO_CELSIUS_K
+        self.diffusivity = max((s.diffusivity_m2_s for s in rig.chemistry.species), default=DEFAULT_DIFFUSIVITY)
+        self._make_edges()
+        self._make_nodes(rig)
+        self._make_beds()
+
+    def _make_edges(self) -> None:
+        edges = self.layout.edges
+        self.ea = np.array([e.a for e in edges], dtype=np.int64)
+        self.eb = np.array([e.b for e in edges], dtype=np.int64)
+        self.cell_count = np.array([e.cells for e in edges], dtype=np.int64)
+        slots = np.where(self.cell_count > 0, self.cell_count + 1, 0)
+        self.cell_start = np.concatenate(([0], np.cumsum(slots)[:-1])).astype(np.int64)
+        self.cell_volume = np.array([e.volume / e.cells if e.cells else 0.0 for e in edges])
+        self.fill = np.zeros(len(edges))
+        self.cells = np.zeros((int(slots.sum()), self.width))
+        self.exchange = np.zeros(len(edges))
+        self.pending = np.zeros(len(edges))
+        coarse = np.array([SUPPLY_COARSENESS if e.supply else 1.0 for e in edges])
+        with np.errstate(divide="ignore"):
+            self.per_cell = np.where(self.cell_count > 0, 1.0 / (self.cell_volume * coarse), 0.0)
+
+    def _make_nodes(self, rig: RigDefinition) -> None:
+        nodes = self.layout.nodes
+        self.node_volume = np.array([n.volume for n in nodes])
+        self.endless = np.array([n.endless for n in nodes], dtype=np.int64)
+        solvent = self.composition(rig, next(q.id for q in rig.liquids if q.role == "solvent"))
+        self.node_c = np.tile(solvent, (len(nodes), 1))
+        self.cells[:] = solvent
+        self.hidden: dict[str, Floats] = {}
+        for vessel in rig.vessels:
+            if vessel.liquid:
+                self.node_c[self.layout.node_index[vessel.id]] = self.composition(rig, vessel.liquid)
+        air = np.zeros(self.width)
+        air[self.gas] = 1.0
+        self.node_c[self.layout.node_index["air"]] = air
+
+    def composition(self, rig: RigDefinition, liquid_id: str) -> Floats:
+        """The row of a declared liquid."""
+        liquid = next(q for q in rig.liquids if q.id == liquid_id)
+        row = np.zeros(self.width)
+        for name, value in liquid.composition_mol_L.items():
+            row[self.species.index(name)] = value * 1e3
+        row[self.n_species + self.solvents.index(liquid.properties)] = 1.0
+        return row
+
+    def _make_beds(self) -> None:
+        self.beds: dict[str, Bed] = {}
+        start = 0
+        for column in self.layout.columns.values():
+            edge = self.layout.edge_index[column.id]
+            cells = self.layout.edges[edge].cells
+            self.beds[column.id] = Bed(column, edge, start, cells)
+            start += cells
+        beds = list(self.beds.values())
+        self.bed_edge = np.array([b.edge for b in beds], dtype=np.int64)
+        self.place_start = np.array([b.start for b in beds], dtype=np.int64)
+        self.beads = np.tile(self.cells[0], (start, 1)) if start else np.zeros((0, self.width))
+        self.bead_volume = np.array([b.bead_liquid / b.cells for b in beds])
+        radius = [b.column.packing.bead_diameter_mm * 0.5e-3 for b in beds]
+        self.bead_rate = np.array([bead_rate(BEAD_DIFFUSION_SHARE * self.diffusivity, r) for r in radius])
+        self.temperature = np.full(start, self.room_K)
+        self.released = np.zeros(start)
+        self.turnover = np.zeros(start)
+        self.activity = np.ones((start, self.kinetics.count))
+        self.base_activity = np.ones((start, self.kinetics.count))
+        for bed in beds:
+            self._rest_activity(bed)
+
+    def _rest_activity(self, bed: Bed) -> None:
+        """Fresh packing: 1 where it is a catalyst, its mass per interstitial litre where a rate is per gram."""
+        packing = bed.column.packing
+        rows = slice(bed.start, bed.start + bed.cells)
+        grams_per_L = packing.mass_g / (self.layout.edges[bed.edge].volume * 1e3)
+        for j in range(self.kinetics.count):
+            if self.kinetics.on_bed[j]:
+                factor = grams_per_L if self.kinetics.per_gram[j] else 1.0
+                self.base_activity[rows, j] = factor if packing.catalyst else 0.0
+        self.activity[rows] = self.base_activity[rows]
+
+    def solvent_of(self, row: Floats) -> dict[str, float]:
+        """Volume fractions of the property sets in a composition, gas left out."""
+        return {
+            s: float(row[self.n_species + i]) for i, s in enumerate(self.solvents) if row[self.n_species + i] > 1e-9
+        }
+
+    def fluid(self) -> Solvent:
+        """The property set that stands for densities and heat capacities (the first declared)."""
+        return SOLVENTS[self.solvents[0]]
+
+    def disperse(self, flow: Floats) -> None:
+        """Set the dispersion coefficients from the flows [m3/s] of the last step."""
+        fluid = self.fluid()
+        rho, mu = fluid.density(self.room_K), fluid.viscosity(self.room_K)
+        for e, edge in enumerate(self.layout.edges):
+            if edge.cells == 0:
+                continue
+            section = edge.volume / edge.length
+            velocity = abs(flow[e]) / section
+            if edge.kind == "column":
+                bed = self.beds[edge.id]
+                diameter = bed.column.packing.bead_diameter_mm * 1e-3
+                superficial = abs(flow[e]) / bed.section
+                coefficient = chung_wen(rho * superficial * diameter / mu, mu, rho) + 0.7 * self.diffusivity
+            else:
+                coefficient = taylor_aris(self.diffusivity, velocity, edge.diameter)
+            self.exchange[e] = coefficient * section / (edge.length / edge.cells)
+
+    def advance(self, dt: float) -> None:
+        """Carry the pending volumes through, react and disperse over ``dt``; pending is then zero."""
+        k = self.kinetics
+        parts = int(min(max(math.ceil(float(np.max(np.abs(self.pending) * self.per_cell))), 1), PARTS_MAX))
+        transport_step(
+            dt, parts, self.node_volume, self.node_c, self.endless, self.ea, self.eb, self.cell_count, self.cell_start,
+            self.cell_volume, self.fill, self.cells, self.pending, self.exchange, self.bed_edge, self.place_start,
+            self.beads, self.bead_volume, self.bead_rate, self.temperature, self.activity, self.released,
+            self.turnover, self.room_K, k.nu, k.k_ref, k.t_ref, k.ea_over_r, k.on_bed, k.law, k.orders, k.reverse,
+            k.equilibrium, k.adsorption, k.heat, k.in_tubes,
+        )  # fmt: skip
+        self.pending[:] = 0.0
+
+    def age(self, dt: float) -> None:
+        """First-order loss of activity with time, while wet: da/dt = -kd a (O. Levenspiel, ch. 21)."""
+        for j in range(self.kinetics.count):
+            decay = self.kinetics.decay_per_s[j]
+            if decay and self.kinetics.on_bed[j]:
+                keep = math.exp(-decay * dt)
+                self.base_activity[:, j] *= keep
+                self.activity[:, j] *= keep
+
+    def poison(self, factors: dict[str, float]) -> None:
+        """Set the activity of whole columns to a share of what ageing has left (faults)."""
+        self.activity[:] = self.base_activity
+        for name, factor in factors.items():
+            bed = self.beds[name]
+            rows = slice(bed.start, bed.start + bed.cells)
+            self.activity[rows] *= np.where(self.kinetics.on_bed == 1, factor, 1.0)
+
+    def admit_air(self) -> None:
+        """Let air into bottles that the pending volumes would draw below empty."""
+        for vessel in self.layout.vessels:
+            i = self.layout.node_index[vessel]
+            wanted = float(self.pending[self.ea == i].sum())
+            short = wanted + EMPTY_M3 - self.node_volume[i]
+            if wanted > 0.0 and short > 0.0:
+                held = self.node_volume[i]
+                self.node_c[i] *= held / (held + short)
+                self.node_c[i, self.gas] += short / (held + short)
+                self.node_volume[i] = held + short
+
+    def hide(self, vessel: str, hidden: bool) -> None:
+        """A bottle whose dip tube draws air (``hidden``), or again its liquid."""
+        i = self.layout.node_index[vessel]
+        if hidden and vessel not in self.hidden:
+            self.hidden[vessel] = self.node_c[i].copy()
+            self.node_c[i] = self.node_c[self.layout.node_index["air"]]
+            self.endless[i] = 1
+        elif not hidden and vessel in self.hidden:
+            self.node_c[i] = self.hidden.pop(vessel)
+            self.endless[i] = 0
+
+    def liquid_volume(self, node: int) -> float:
+        """Liquid in a node [m3], gas left out."""
+        return float(self.node_volume[node] * (1.0 - self.node_c[node, self.gas]))
+
+    def totals(self) -> Floats:
+        """Total of every column over the whole rig (volume-weighted), then the total volume: what must be conserved."""
+        result = np.zeros(self.width + 1)
+        finite = self.endless == 0
+        weight = self.node_volume[finite]
+        result[:-1] += weight @ self.node_c[finite]
+        for vessel, composition in self.hidden.items():
+            held = self.node_volume[self.layout.node_index[vessel]]
+            result[:-1] += held * composition
+            result[-1] += held
+        result[-1] += weight.sum()
+        for e in np.flatnonzero(self.cell_count):
+            n, s, v = int(self.cell_count[e]), int(self.cell_start[e]), self.cell_volume[e]
+            held = np.full(n + 1, v)
+            held[0], held[n] = self.fill[e], v - self.fill[e]
+            result[:-1] += held @ self.cells[s : s + n + 1]
+            result[-1] += held.sum()
+        for b, bed in enumerate(self.beds.values()):
+            result[:-1] += self.bead_volume[b] * self.beads[bed.start : bed.start + bed.cells].sum(axis=0)
+            result[-1] += self.bead_volume[b] * bed.cells
+        return result

@@ -1,0 +1,174 @@
+"""Pressures and flows of the rig: conductances from geometry, liquid and valves, then the network solver."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from rigd_sim.physics.constants import ATMOSPHERE_PA, BAR_PA
+from rigd_sim.physics.gel_bed import relax, settled
+from rigd_sim.physics.network import advance_pressures
+from rigd_sim.physics.packed_bed import ergun_gradient, pressed_voidage
+from rigd_sim.physics.properties import SOLVENTS, mixture_viscosity
+from rigd_sim.physics.tubing import resistance
+from rigd_sim.plant.contents import Bed, Contents
+from rigd_sim.plant.layout import Layout
+from rigd_sim.plant.levers import Levers
+
+GAS_NEAR = 1e-4  # gas volume fraction from which a node counts its gas
+SMALLEST_VELOCITY = 1e-9
+
+
+@dataclass(slots=True)
+class GelState:
+    """Swelling of one bed: ratio now, settled dry volume [m3], solvent ratio that the packing was declared in."""
+
+    ratio: float
+    dry_volume: float
+    passed: float = 0.0
+
+
+class Flows:
+    """Hydraulic arrays and their step. Edge volumes go to ``contents.pending``."""
+
+    def __init__(self, layout: Layout, contents: Contents, truth: dict[str, float]) -> None:
+        self.layout, self.contents = layout, contents
+        nodes, passive = layout.nodes, layout.passive
+        self.hydraulic = [i for i, n in enumerate(nodes) if n.hydraulic]
+        self.rank = {i: r for r, i in enumerate(self.hydraulic)}
+        size = len(self.hydraulic)
+        self.pressure = np.zeros(size)
+        self.peak = np.zeros(size)
+        self.source = np.zeros(size)
+        self.rest_compliance = np.array([nodes[i].compliance for i in self.hydraulic])
+        self.compliance = self.rest_compliance.copy()
+        self.ground = np.array([nodes[i].ground for i in self.hydraulic], dtype=np.int64)
+        edges = layout.edges[:passive]
+        self.ea = np.array([self.rank[e.a] for e in edges], dtype=np.int64)
+        self.eb = np.array([self.rank[e.b] for e in edges], dtype=np.int64)
+        self.crack = np.array([e.crack for e in edges])
+        self.is_open = np.zeros(passive, dtype=np.int64)
+        self.base = np.array([e.conductance for e in edges])
+        self.gate = np.ones(passive)
+        self.conductance = np.zeros(passive)
+        self.volume = np.zeros(passive)
+        self.flow = np.zeros(len(layout.edges))
+        self.step = 0.05
+        self.sensor_node = np.zeros(0, dtype=np.int64)
+        self.sensor_lag = np.zeros(0)
+        self.sensor_value = np.zeros(0)
+        self.gels = {b.column.id: self._gel(b, truth) for b in contents.beds.values()}
+        self.update_liquid()
+
+    def _gel(self, bed: Bed, truth: dict[str, float]) -> GelState:
+        """Packed swollen (default) or dry (``truth`` "COL.packed_dry" = 1), with ``COL.headspace`` of free volume."""
+        room = 1.0 - truth.get(f"{bed.column.id}.headspace", 0.0)
+        full = bed.column.packing.swelling
+        dry = bed.empty_volume * room
+        return GelState(1.0, dry if truth.get(f"{bed.column.id}.packed_dry", 0.0) else dry / full)
+
+    def watch(self, nodes: list[int], lags_s: list[float]) -> None:
+        """Let the solver follow these nodes (layout indices) as lagged pressure sensors."""
+        self.sensor_node = np.array([self.rank[i] for i in nodes], dtype=np.int64)
+        self.sensor_lag = np.array(lags_s, dtype=float)
+        self.sensor_value = np.zeros(len(nodes))
+
+    def shown_bar(self, slot: int) -> float:
+        """Lagged pressure of a watched node [bar]."""
+        return float(self.sensor_value[slot]) / BAR_PA
+
+    def update_liquid(self) -> None:
+        """Conductances of lines and beds from the liquid in them; call after each transport step."""
+        contents = self.contents
+        for e, edge in enumerate(self.layout.edges[: self.layout.passive]):
+            if edge.kind == "line":
+                self.base[e] = 1.0 / resistance(self._viscosity(e, contents.room_K), edge.length, edge.diameter)
+            elif edge.kind == "column":
+                self.base[e] = self._bed_conductance(e, contents.beds[edge.id])
+
+    def _viscosity(self, e: int, t_K: float) -> float:
+        contents = self.contents
+        if len(contents.solvents) == 1:
+            return SOLVENTS[contents.solvents[0]].viscosity(t_K)
+        n, s = int(contents.cell_count[e]), int(contents.cell_start[e])
+        mean = contents.cells[s : s + n + 1].mean(axis=0)
+        return mixture_viscosity(contents.solvent_of(mean) or {contents.solvents[0]: 1.0}, t_K)
+
+    def _bed_conductance(self, e: int, bed: Bed) -> float:
+        packing = bed.column.packing
+        gel = self.gels[bed.column.id]
+        t_mean = float(self.contents.temperature[bed.start : bed.start + bed.cells].mean())
+        mu = self._viscosity(e, t_mean)
+        rho = self.contents.fluid().density(t_mean)
+        shape = settled(
+            gel.ratio, packing.swelling, gel.dry_volume, bed.empty_volume, bed.length, packing.voidage,
+            packing.bead_diameter_mm * 1e-3,
+        )  # fmt: skip
+        drop = self.pressure[self.ea[e]] - self.pressure[self.eb[e]] if self.conductance[e] else 0.0
+        voidage = pressed_voidage(shape.voidage, packing.compressibility_per_bar / BAR_PA, drop)
+        velocity = max(abs(self.flow[e]) / bed.section, SMALLEST_VELOCITY)
+        bed.voidage = voidage
+        gradient = ergun_gradient(mu, rho, velocity, shape.bead_diameter, voidage)
+        return float(velocity * bed.section / (gradient * shape.length))
+
+    def swell(self, dt: float) -> None:
+        """Swelling goes on where liquid has reached the bed, towards the ratio of the solvent in it."""
+        contents = self.contents
+        for bed in contents.beds.values():
+            gel, packing = self.gels[bed.column.id], bed.column.packing
+            gel.passed += abs(float(self.flow[bed.edge])) * dt
+            if gel.passed < 0.5 * self.layout.edges[bed.edge].volume:
+                continue
+            target = packing.swelling
+            if len(contents.solvents) > 1:
+                inside = contents.solvent_of(contents.beads[bed.start : bed.start + bed.cells].mean(axis=0))
+                total = sum(inside.values()) or 1.0
+                reference = SOLVENTS[contents.solvents[0]].swelling_mL_g
+                target *= sum(f * SOLVENTS[s].swelling_mL_g for s, f in inside.items()) / total / reference
+            gel.ratio = relax(gel.ratio, max(target, 1.0), dt, packing.swell_s)
+
+    def apply(self, levers: Levers) -> None:
+        """Combine geometry, valve gates and faults into the conductances of the next step."""
+        np.multiply(self.base, self.gate, out=self.conductance)
+        for e, factor in levers.flow_factor.items():
+            if e < self.layout.passive:
+                self.conductance[e] *= factor
+        for node, conductance in levers.leak.items():
+            if node in self.layout.leak_edge:
+                self.conductance[self.layout.leak_edge[node]] = conductance
+        self._gas_compliance()
+
+    def _gas_compliance(self) -> None:
+        """Gas in a node adds V/P to its compliance."""
+        contents = self.contents
+        self.compliance[:] = self.rest_compliance
+        if not contents.cells[:, contents.gas].any() and not contents.node_c[:-1, contents.gas].any():
+            return
+        for e, edge in enumerate(self.layout.edges):
+            if edge.cells:
+                n, s = edge.cells, int(contents.cell_start[e])
+                volume = contents.cell_volume[e] * float(contents.cells[s : s + n + 1, contents.gas].sum())
+                for end in (edge.a, edge.b):
+                    r = self.rank[end]
+                    self.compliance[r] += 0.5 * volume / max(self.pressure[r] + ATMOSPHERE_PA, 1e4)
+        for i, r in self.rank.items():
+            held = contents.node_c[i, contents.gas] * contents.node_volume[i]
+            if held > 0.0 and not self.ground[r]:
+                self.compliance[r] += held / max(self.pressure[r] + ATMOSPHERE_PA, 1e4)
+
+    def advance(self, h: float) -> None:
+        """Move the pressures on by ``h`` seconds with the present sources; volumes are added up for the transport."""
+        self.volume[:] = 0.0
+        self.step = advance_pressures(
+            h, self.pressure, self.compliance, self.source, self.ground, self.ea, self.eb, self.conductance, self.crack,
+            self.is_open, self.volume, self.peak, self.sensor_node, self.sensor_lag, self.sensor_value, self.step,
+        )  # fmt: skip
+        passive = self.layout.passive
+        self.contents.pending[:passive] += self.volume
+        self.flow[:passive] = self.volume / h
+
+    def add(self, edge: int, volume: float, h: float) -> None:
+        """A displacement by a syringe: known volume through an edge."""
+        self.contents.pending[edge] += volume
+        self.flow[edge] = volume / h

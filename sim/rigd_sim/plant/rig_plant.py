@@ -1,0 +1,326 @@
+"""The simulated rig: one object behind the port ``rigd.ports.plant.Plant``.
+
+Time is integer nanoseconds and moves only by ``advance``. Pressures are integrated in every call; liquid, reaction
+and heat are
+carried on in steps of at most one second, cut where a valve, a syringe or a fault changes something, never by the
+caller's dt.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping, Sequence
+
+from rigd.model.devices import PumpState
+from rigd.model.orders import Action
+from rigd.model.rig import RigDefinition
+from rigd.model.samples import Reading, Spectrum
+from rigd.ports.plant import FaultSpec
+from rigd_sim.physics.constants import ATMOSPHERE_PA, ML_M3, ML_MIN_M3_S, ZERO_CELSIUS_K
+from rigd_sim.plant.ailments import Ailments, FaultEffect
+from rigd_sim.plant.bath_unit import BathUnit
+from rigd_sim.plant.contents import Contents
+from rigd_sim.plant.flows import Flows
+from rigd_sim.plant.infrared import InfraredUnit
+from rigd_sim.plant.instruments import Instruments, Sensor
+from rigd_sim.plant.layout import build_layout
+from rigd_sim.plant.levers import BathLever, CellLever, DeviceFaults, Levers, PumpLever, SensorLever, ValveLever
+from rigd_sim.plant.places import make_sensors
+from rigd_sim.plant.pump_unit import PumpUnit
+from rigd_sim.plant.thermal import Thermal
+from rigd_sim.plant.truth import true_state
+from rigd_sim.plant.valve_unit import ValveUnit
+
+NS = 1_000_000_000
+CHEMISTRY_NS = NS
+
+_PUMP, _VALVE, _BATH, _SENSOR, _CELL = PumpLever(), ValveLever(), BathLever(), SensorLever(), CellLever()
+_NO_FAULTS = DeviceFaults()
+
+
+class RigPlant:
+    """The simulated rig. ``effects`` are the fault kinds that it understands (``rigd_sim.faults`` has them)."""
+
+    def __init__(self, rig: RigDefinition, seed: int, effects: Mapping[str, FaultEffect] | None = None) -> None:
+        self.rig = rig
+        self.now_ns = 0
+        self.layout = build_layout(rig)
+        self.contents = Contents(rig, self.layout)
+        self.flows = Flows(self.layout, self.contents, dict(rig.simulation.truth))
+        self.pumps = {p.id: PumpUnit(p) for p in self.layout.pumps.values()}
+        self.valves = {v.id: ValveUnit(v) for v in rig.valves}
+        self.baths = {c.id: BathUnit(c, self.contents.room_K) for c in rig.chillers}
+        self.thermal = Thermal(rig, self.contents, self.baths)
+        self.infrared = {c.device: InfraredUnit(c, rig.chemistry, seed + n) for n, c in enumerate(rig.cells)}
+        self.instruments = Instruments(rig, seed)
+        make_sensors(self)
+        self.ailments = Ailments(rig, self.layout, effects or {})
+        self.levers = Levers()
+        self._units = {d.id: d.unit for d in rig.devices}
+        self._chemistry_ns = min([CHEMISTRY_NS, *(c.period_ns for c in rig.cells)])
+        self._carried_ns = 0
+        self._headspace: dict[str, float] = {}
+        self.initial = self.contents.totals()
+        self._regate()
+
+    # time ---------------------------------------------------------------------------------------------------------
+
+    def advance(self, to_ns: int) -> None:
+        """Move the physics to ``to_ns``; ``ValueError`` for a time in the past."""
+        if to_ns < self.now_ns:
+            raise ValueError(f"the plant is at {self.now_ns} ns and cannot go back to {to_ns} ns")
+        while self.now_ns < to_ns:
+            grid = (self._carried_ns // self._chemistry_ns + 1) * self._chemistry_ns
+            event = self._next_event_s()
+            step = min(to_ns, grid) - self.now_ns
+            if event * NS < step:
+                step = max(1, math.ceil(event * NS))
+            self._hydraulics(step / NS)
+            self.now_ns += step
+            self._events()
+            if self.now_ns >= grid:
+                self._chemistry()
+
+    def _next_event_s(self) -> float:
+        """Seconds until a pump, a valve or a fault changes by itself."""
+        now = self.now_ns / NS
+        nearest = self.ailments.next_change(now)
+        for pump in self.pumps.values():
+            if pump.moving or pump.filling >= 0:
+                nearest = min(nearest, pump.next_event())
+        for valve in self.valves.values():
+            if valve.position != valve.target:
+                nearest = min(nearest, valve.next_event(now))
+        return nearest
+
+    def _hydraulics(self, h: float) -> None:
+        flows, layout = self.flows, self.layout
+        flows.source[:] = 0.0
+        for name, pump in self.pumps.items():
+            if not pump.moving and pump.filling < 0:
+                continue
+            stroke = pump.stroke(h, self.levers.pumps.get(name, _PUMP))
+            edges = layout.syringes[name]
+            if pump.moving:
+                self._displace(edges[stroke.active].deliver, edges[stroke.active].node, stroke.delivered, h, 1.0)
+            if stroke.drawn:
+                self._displace(edges[stroke.filling].draw, edges[stroke.filling].node, stroke.drawn, h, -1.0)
+        for node, rate in self.levers.air.items():
+            flows.add(layout.air_edge[node], rate * h, h)
+            flows.source[flows.rank[node]] += rate
+        flows.advance(h)
+
+    def _displace(self, edge: int, syringe: int, volume: float, h: float, sign: float) -> None:
+        """A syringe moves ``volume`` [m3] out (+1) or in (-1); never more out than it truly holds."""
+        held = self.contents.node_volume[syringe] + self._pending_into(syringe)
+        volume = min(volume, held) if sign > 0.0 else volume
+        ends = self.layout.edges[edge]
+        node = ends.b if sign > 0.0 else ends.a
+        self.flows.add(edge, volume, h)
+        self.flows.source[self.flows.rank[node]] += sign * volume / h
+
+    def _pending_into(self, node: int) -> float:
+        contents = self.contents
+        return sum(
+            float(contents.pending[e]) * (1.0 if self.layout.edges[e].b == node else -1.0)
+            for pair in self.layout.syringes.values()
+            for s in pair
+            if s.node == node
+            for e in (s.deliver, s.draw)
+        )
+
+    def _events(self) -> None:
+        """What changes by itself at the end of a step."""
+        now = self.now_ns / NS
+        for name, pump in self.pumps.items():
+            if pump.moving or pump.filling >= 0:
+                node = self.flows.rank[self.layout.node_index[f"{name}.out"]]
+                lever = self.levers.pumps.get(name, _PUMP)
+                before = pump.active
+                pump.settle(float(self.flows.pressure[node]), lever)
+                if pump.active != before:
+                    self._carry()
+        moving = [v for v in self.valves.values() if v.position != v.target]
+        if moving:
+            self._carry()
+            for valve in moving:
+                valve.settle(now)
+            self._regate()
+        if self.ailments.next_change(now - 2e-9) <= 3e-9:
+            self._carry()
+            self._refresh_levers()
+
+    # liquid, heat, reaction ---------------------------------------------------------------------------------------
+
+    def _carry(self) -> None:
+        """Carry pending volumes, reactions and heat to the present time."""
+        dt = (self.now_ns - self._carried_ns) / NS
+        if dt <= 0.0:
+            return
+        self._carried_ns = self.now_ns
+        contents = self.contents
+        mean_flow = contents.pending / dt
+        self.flows.flow[:] = mean_flow
+        contents.admit_air()
+        contents.disperse(mean_flow)
+        contents.advance(dt)
+        self.thermal.advance(dt, mean_flow, self.levers)
+        self.flows.swell(dt)
+        contents.age(dt)
+        self._close_flasks()
+        for unit in self.infrared.values():
+            row = contents.node_c[self.layout.node_index[unit.cell.id]]
+            lever = self.levers.cells.get(unit.cell.id, _CELL)
+            unit.expose(row, float(row[contents.gas]), dt, self.now_ns, lever)
+        self.instruments.advance(dt)
+
+    def _chemistry(self) -> None:
+        """A regular step: carry everything on, then refresh what depends on it."""
+        self._carry()
+        self.flows.update_liquid()
+        if self.ailments.active(self.now_ns / NS):
+            self._refresh_levers()
+        else:
+            self.flows.apply(self.levers)
+
+    def _close_flasks(self) -> None:
+        """Headspace gas of closed vessels (isothermal ideal gas): p V stays what it was when they were closed."""
+        for name, gas in self._headspace.items():
+            i = self.layout.node_index[name]
+            room = max(self.layout.vessels[name].capacity_mL * ML_M3 - self.contents.node_volume[i], 1e-9)
+            r = self.flows.rank[i]
+            self.flows.pressure[r] = gas / room - ATMOSPHERE_PA
+            self.flows.rest_compliance[r] = room / (gas / room)
+
+    def _regate(self) -> None:
+        """Open and shut the lines at valve ports."""
+        now = self.now_ns / NS
+        for e, edge in enumerate(self.layout.edges[: self.layout.passive]):
+            factor = 1.0
+            for valve, port in edge.gates:
+                unit = self.valves[valve]
+                if unit.spec.index(port) != unit.open_port(now):
+                    factor *= self.levers.valves.get(valve, _VALVE).cross
+            self.flows.gate[e] = factor
+        self.flows.apply(self.levers)
+
+    def _refresh_levers(self) -> None:
+        """Rebuild the settings of all faults in force and let every part see them."""
+        self.levers = self.ailments.levers(self.now_ns / NS)
+        for name, vessel in self.layout.vessels.items():
+            self.contents.hide(name, name in self.levers.bottle_empty)
+            self._shut(name, vessel.capacity_mL * ML_M3, name in self.levers.closed or not vessel.vented)
+        self.contents.poison(self.levers.activity)
+        self._regate()
+
+    def _shut(self, name: str, capacity: float, closed: bool) -> None:
+        i = self.layout.node_index[name]
+        r = self.flows.rank[i]
+        if closed and name not in self._headspace:
+            room = self.levers.closed.get(name, 0.0) or capacity - float(self.contents.node_volume[i])
+            self._headspace[name] = ATMOSPHERE_PA * max(room, 1e-9)
+            self.flows.ground[r] = 0
+        elif not closed and name in self._headspace:
+            del self._headspace[name]
+            self.flows.ground[r] = 1
+            self.flows.pressure[r] = 0.0
+        self._close_flasks()
+
+    # the port -----------------------------------------------------------------------------------------------------
+
+    def tell(self, unit: str, action: Action, value: float) -> str:
+        """Give a command to a unit at the present time; "" or the device's reason to refuse."""
+        if unit in self.pumps:
+            self._carry()
+            return self.pumps[unit].tell(action, value, self.levers.pumps.get(unit, _PUMP))
+        if unit in self.valves and action is Action.MOVE:
+            self._carry()
+            answer = self.valves[unit].tell(value, self.now_ns / NS, self.levers.valves.get(unit, _VALVE))
+            self._regate()
+            return answer
+        if unit in self.baths:
+            return self.baths[unit].tell(action, value)
+        return "word"
+
+    def read(self, device: str, channels: Sequence[str]) -> Sequence[Reading]:
+        """What the instruments of this device show now."""
+        unit = self._units.get(device, "")
+        if unit in self.pumps:
+            return [Reading(c, self._pump_channel(unit, c)) for c in channels]
+        if unit in self.valves:
+            lever = self.levers.valves.get(unit, _VALVE)
+            return [Reading(c, float(self.valves[unit].feedback(self.now_ns / NS, lever))) for c in channels]
+        if unit in self.baths:
+            return [Reading(c, self._bath_channel(unit, c)) for c in channels]
+        if device in self.infrared:
+            return [Reading(c, float(self.infrared[device].count)) for c in channels]
+        sensors = self.instruments.by_device.get(device, {})
+        return [self._sensor(sensors, c) for c in channels]
+
+    def _sensor(self, sensors: Mapping[str, Sensor], channel: str) -> Reading:
+        sensor = sensors.get(channel)
+        if sensor is None:
+            return Reading(channel, math.nan, 0, "OPEN")
+        value = self.flows.shown_bar(sensor.slot) if sensor.slot >= 0 else sensor.shown
+        lever = self.levers.sensors.get(sensor.tag.id, _SENSOR)
+        return sensor.read(value, self.instruments.noise, lever, self.contents.room_K - ZERO_CELSIUS_K)
+
+    def _pump_channel(self, unit: str, channel: str) -> float:
+        pump = self.pumps[unit]
+        if channel == "flow":
+            return pump.rate / ML_MIN_M3_S if pump.moving else 0.0
+        if channel == "level":
+            return pump.counted[pump.active] / ML_M3
+        if channel == "standby":
+            return pump.counted[pump.standby()] / ML_M3 if pump.spec.syringes > 1 else 0.0
+        if channel == "delivered":
+            return pump.delivered / ML_M3
+        return float(pump.state) if channel == "state" else math.nan
+
+    def _bath_channel(self, unit: str, channel: str) -> float:
+        bath = self.baths[unit]
+        lever = self.levers.baths.get(unit, _BATH)
+        if channel == "bath":
+            noise = 0.01 * self.instruments.noise.normal()
+            return round(bath.bath_K - ZERO_CELSIUS_K + noise, 2)
+        if channel == "setpoint":
+            return bath.setpoint_degC
+        if channel == "circulating":
+            return float(bath.running and (lever.status_lies or not lever.pump_dead))
+        return math.nan
+
+    def spectrum(self, device: str) -> Spectrum:
+        """The last finished spectrum; ``LookupError`` before the first one or for a device that is no cell."""
+        unit = self.infrared[device]
+        found = unit.spectrum(self.levers.cells.get(unit.cell.id, _CELL))
+        if found is None:
+            raise LookupError(f"{device} has not finished a spectrum yet")
+        return found
+
+    def spectra_finished(self, device: str) -> int:
+        """How many spectra a cell's device has finished since the start."""
+        return self.infrared[device].count
+
+    def inject(self, fault: FaultSpec) -> None:
+        """Add a fault; ``ConfigError`` for an unknown kind or target."""
+        self._carry()
+        self.ailments.inject(fault)
+        self._refresh_levers()
+
+    def clear(self, kind: str, target: str) -> None:
+        """End all faults of this kind on this target now."""
+        self._carry()
+        self.ailments.clear(kind, target)
+        self._refresh_levers()
+
+    def device_faults(self, device: str) -> DeviceFaults:
+        """What a byte server must do wrong for this device now."""
+        return self.levers.devices.get(device, _NO_FAULTS)
+
+    def truth(self) -> Mapping[str, float]:
+        """True state for checkers; keys as in the port."""
+        return true_state(self)
+
+    def stopped(self) -> bool:
+        """True when no pump delivers or fills."""
+        return all(p.state is not PumpState.DELIVERING and p.filling < 0 for p in self.pumps.values())
