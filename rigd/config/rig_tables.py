@@ -1,0 +1,242 @@
+"""The parts of a rig file: liquids, vessels, valves, pumps, tees, columns, cells, regulators, chillers, lines."""
+
+from __future__ import annotations
+
+from typing import Annotated
+
+from pydantic import Field
+
+from rigd.config.quantity import (
+    Duration,
+    Flow,
+    Fraction,
+    Length,
+    Mass,
+    Pressure,
+    Quantity,
+    Temperature,
+    Volume,
+    VolumeOrNone,
+)
+from rigd.config.table import Flag, Id, Name, Number, Table, Text, ns
+from rigd.model.rig import (
+    Cell,
+    Chiller,
+    Column,
+    End,
+    Line,
+    Liquid,
+    LiquidRole,
+    Packing,
+    Pump,
+    Regulator,
+    Tee,
+    Valve,
+    Vessel,
+    VesselRole,
+)
+
+EndText = Annotated[str, Field(pattern=r"^[A-Za-z][A-Za-z0-9_-]*(\.[A-Za-z0-9_-]+)?$")]
+"""One end of a line: a part, or a valve and its position: ``V-A.solvent``."""
+Concentration = Annotated[float, Quantity("amount concentration", "not negative")]
+
+
+def end_of(text: str) -> End:
+    """``"V-A.solvent"`` as an end."""
+    part, _, port = text.partition(".")
+    return End(part, port)
+
+
+class LiquidTable(Table):
+    """What a bottle holds. ``properties`` names the property set (density, viscosity, heat) of its main solvent."""
+
+    id: Id
+    name: Text
+    role: LiquidRole
+    properties: Name
+    composition: Annotated[dict[Name, Concentration], Field(min_length=1)]
+
+    def value(self) -> Liquid:
+        return Liquid(self.id, self.name, self.role, self.properties, self.composition)
+
+
+class VesselTable(Table):
+    """A bottle, flask or waste; one that supplies names its liquid and content."""
+
+    id: Id
+    role: VesselRole
+    capacity: Volume
+    content: VolumeOrNone = 0.0
+    liquid: str = ""
+    vented: Flag = True
+
+    def value(self) -> Vessel:
+        return Vessel(self.id, self.role, self.capacity, self.content, self.liquid, self.vented)
+
+
+class ValveTable(Table):
+    """A selector valve. Without ``device`` a person turns it. ``rest`` is its position without power or orders."""
+
+    id: Id
+    device: str = ""
+    positions: Annotated[tuple[Annotated[str, Field(pattern=r"^[A-Za-z0-9_-]+$")], ...], Field(min_length=2)]
+    rest: str
+    travel_time: Duration
+    rating: Pressure
+
+    def value(self) -> Valve:
+        return Valve(self.id, self.device, self.positions, self.rest, self.travel_time, self.rating)
+
+
+class PumpTable(Table):
+    """A syringe pump with one or two syringes. ``rating`` is its weakest wetted part."""
+
+    id: Id
+    device: Id
+    syringes: Annotated[int, Field(strict=True, ge=1, le=2)]
+    bore: Length
+    stroke_volume: Volume
+    dead_volume: VolumeOrNone = 0.05
+    rate_min: Flow
+    rate_max: Flow
+    refill_rate: Flow
+    rating: Pressure
+    compliance: Annotated[float, Quantity("compliance", "positive")] = 0.01
+    screw_pitch: Length = 1.0
+
+    def value(self) -> Pump:
+        return Pump(
+            id=self.id,
+            device=self.device,
+            syringes=self.syringes,
+            bore_mm=self.bore,
+            stroke_mL=self.stroke_volume,
+            rate_min_mL_min=self.rate_min,
+            rate_max_mL_min=self.rate_max,
+            refill_rate_mL_min=self.refill_rate,
+            rating_bar=self.rating,
+            dead_mL=self.dead_volume,
+            compliance_mL_bar=self.compliance,
+            screw_pitch_mm=self.screw_pitch,
+        )
+
+
+class TeeTable(Table):
+    """A mixing tee, or any small volume where lines join."""
+
+    id: Id
+    volume: Volume
+    rating: Pressure
+
+    def value(self) -> Tee:
+        return Tee(self.id, self.volume, self.rating)
+
+
+class PackingTable(Table):
+    """What is in a column. ``voidage`` is of the swollen bed; ``bead_liquid`` the liquid fraction inside beads."""
+
+    name: Text
+    catalyst: Flag
+    bead_diameter: Length
+    voidage: Annotated[Fraction, Field(gt=0, lt=1)]
+    bead_liquid: Annotated[Fraction, Field(lt=1)] = 0.0
+    mass: Mass = 0.0
+    swelling: Annotated[Fraction, Field(ge=1, le=20)] = 1.0
+    swell_time: Duration = 300.0
+    compressibility: Annotated[float, Quantity("compressibility", "not negative")] = 0.0
+    active_sites: Annotated[float, Quantity("site density", "not negative")] = 0.0
+
+    def value(self) -> Packing:
+        return Packing(
+            name=self.name,
+            catalyst=self.catalyst,
+            bead_diameter_mm=self.bead_diameter,
+            voidage=self.voidage,
+            bead_liquid_fraction=self.bead_liquid,
+            mass_g=self.mass,
+            swelling=self.swelling,
+            swell_s=self.swell_time,
+            compressibility_per_bar=self.compressibility,
+            active_sites_mmol_g=self.active_sites,
+        )
+
+
+class ColumnTable(Table):
+    """A packed column, jacketed by the chiller ``jacket`` ("" = at room temperature)."""
+
+    id: Id
+    bore: Length
+    length: Length
+    rating: Pressure
+    packing: PackingTable
+    jacket: str = ""
+    wall_conductance: Annotated[float, Quantity("heat conductance", "positive")] = 0.5
+
+    def value(self) -> Column:
+        packing = self.packing.value()
+        return Column(self.id, self.bore, self.length, self.rating, packing, self.jacket, self.wall_conductance)
+
+
+class CellTable(Table):
+    """An in-line IR flow cell; ``period`` is the time of one spectrum."""
+
+    id: Id
+    device: Id
+    volume: Volume
+    path_length: Length
+    rating: Pressure
+    period: Duration
+
+    def value(self) -> Cell:
+        return Cell(self.id, self.device, self.volume, self.path_length * 1000.0, self.rating, ns(self.period))
+
+
+class RegulatorTable(Table):
+    """A back-pressure regulator in a line."""
+
+    id: Id
+    set_pressure: Pressure
+    rating: Pressure
+
+    def value(self) -> Regulator:
+        return Regulator(self.id, self.set_pressure, self.rating)
+
+
+class ChillerTable(Table):
+    """A circulating bath. ``safe_temperature`` is where it goes when the rig is stopped."""
+
+    id: Id
+    device: Id
+    range: tuple[Temperature, Temperature]
+    safe_temperature: Temperature
+    bath_volume: Volume = 3000.0
+    heating: Annotated[float, Quantity("power", "not negative")] = 1000.0
+    cooling: Annotated[float, Quantity("power", "not negative")] = 400.0
+
+    def value(self) -> Chiller:
+        low, high = self.range
+        return Chiller(
+            self.id, self.device, low, high, self.safe_temperature, self.bath_volume, self.heating, self.cooling
+        )
+
+
+class LineTable(Table):
+    """A tube, in the direction of flow: from a part to a part."""
+
+    id: Id
+    from_: EndText = Field(alias="from")
+    to: EndText
+    bore: Length
+    length: Length
+    rating: Pressure
+
+    def value(self) -> Line:
+        return Line(self.id, end_of(self.from_), end_of(self.to), self.bore, self.length, self.rating)
+
+
+class SimulationTable(Table):
+    """What only the simulator reads: ``truth`` holds where the true rig differs, e.g. ``"COL.voidage" = 0.385``."""
+
+    seed: Annotated[int, Field(strict=True, ge=0)] = 1
+    ambient: Temperature = 22.0
+    truth: dict[str, Number] = Field(default_factory=dict)

@@ -1,0 +1,270 @@
+"""Sensors, interlocks, alarms, links, devices and who is told: the tables of a rig file that are not hardware."""
+
+from __future__ import annotations
+
+from typing import Annotated, Any, Literal
+
+from pydantic import ConfigDict, Field, ValidationInfo, field_validator, model_validator
+from pydantic_core import PydanticCustomError
+
+from rigd.config.quantity import Delay, Duration, Quantity, Written, read_quantity
+from rigd.config.table import Flag, Id, IfMissing, Table, Text, Whole, ns
+from rigd.model.devices import LinkSpec
+from rigd.model.protection import Armed, OnBad
+from rigd.model.rig import AlertChannel, MqttSpec
+
+DIMENSION_OF = {"pressure": "pressure", "temperature": "temperature", "flow": "flow", "volume": "volume", "state": ""}
+"""What a sensor may measure, and the dimension of its value ("" = a state with labels)."""
+
+COMPARISONS = ("above", "below", "equals", "differs_from", "rate_above")
+
+EndOrPart = Annotated[str, Field(pattern=r"^[A-Za-z][A-Za-z0-9_-]*(\.[a-z]+)?$")]
+TagText = Annotated[str, Field(min_length=1, max_length=120)]
+
+
+class SensorTable(Table):
+    """One input of an instrument, read as the tag ``tag``. States have ``labels`` (value 0, 1, ...) and no span."""
+
+    tag: Id
+    title: Text
+    measures: Literal["pressure", "temperature", "flow", "volume", "state"]
+    at: EndOrPart
+    span: tuple[Written, Written] | None = None
+    labels: tuple[Text, ...] = ()
+    device: Id
+    channel: Text
+    period: Duration | None = None
+    stale_after: Duration | None = None
+    noise: Written | None = None
+    lag: Delay = 0.0
+
+    @field_validator("span")
+    @classmethod
+    def _span_in_unit(cls, span: tuple[str, str] | None, info: ValidationInfo) -> tuple[str, str] | None:
+        dimension = DIMENSION_OF.get(info.data.get("measures", ""), "")
+        if span and dimension:
+            low, high = (read_quantity(end, dimension) for end in span)
+            if low >= high:
+                text = f"the span runs from {span[0]!r} to {span[1]!r}; the lower end comes first"
+                raise PydanticCustomError("value-out-of-range", "{text}", {"text": text})
+        return span
+
+    @field_validator("noise")
+    @classmethod
+    def _noise_in_unit(cls, noise: str | None, info: ValidationInfo) -> str | None:
+        dimension = DIMENSION_OF.get(info.data.get("measures", ""), "")
+        if noise and dimension:
+            read_quantity(noise, difference(dimension), "not negative")
+        return noise
+
+    @model_validator(mode="after")
+    def _span_or_labels(self) -> SensorTable:
+        if self.measures == "state" and (self.span or len(self.labels) < 2):
+            text = "a sensor of a state needs 'labels' (two or more, first for value 0) and no 'span'"
+            raise PydanticCustomError("span-or-labels", "{text}", {"text": text})
+        if self.measures != "state" and (self.labels or not self.span):
+            text = f"a sensor of {self.measures} needs 'span' (lowest and highest value) and no 'labels'"
+            raise PydanticCustomError("span-or-labels", "{text}", {"text": text})
+        return self
+
+    @property
+    def limits(self) -> tuple[float, float]:
+        """Span in house units; of a state, its first and last value."""
+        if self.span is None:
+            return 0.0, float(len(self.labels) - 1)
+        dimension = DIMENSION_OF[self.measures]
+        return read_quantity(self.span[0], dimension), read_quantity(self.span[1], dimension)
+
+    @property
+    def noise_house(self) -> float:
+        """One standard deviation in house units; 0 when not given."""
+        if self.noise is None or self.measures == "state":
+            return 0.0
+        return read_quantity(self.noise, difference(DIMENSION_OF[self.measures]))
+
+
+def difference(dimension: str) -> str:
+    """The dimension of a difference of two values: only temperatures have one of their own."""
+    return "temperature difference" if dimension == "temperature" else dimension
+
+
+def _one_comparison(schema: dict[str, Any]) -> None:
+    schema["oneOf"] = [{"required": [name]} for name in COMPARISONS]
+    schema["dependentRequired"] = {"differs_from": ["by"], "by": ["differs_from"], "window": ["rate_above"]}
+
+
+class ConditionTable(Table):
+    """A tag and exactly one comparison: above, below, equals, differs_from (with by), rate_above (with window)."""
+
+    model_config = ConfigDict(json_schema_extra=_one_comparison)
+
+    tag: TagText
+    above: Written | None = None
+    below: Written | None = None
+    equals: Text | Whole | None = None
+    differs_from: TagText | None = None
+    by: Written | None = None
+    rate_above: Written | None = None
+    window: Duration | None = None
+    deadband: Written | None = None
+
+    @model_validator(mode="after")
+    def _one(self) -> ConditionTable:
+        given = [name for name in COMPARISONS if getattr(self, name) is not None]
+        text = ""
+        if len(given) != 1:
+            found = " and ".join(given) or "none"
+            text = f"found {found}; a condition needs exactly one of {', '.join(COMPARISONS)}"
+        elif (self.by is None) == (self.differs_from is not None):
+            text = "'differs_from' and 'by' belong together: {tag, differs_from = another tag, by = how much}"
+        elif self.window is not None and self.rate_above is None:
+            text = "'window' belongs to 'rate_above' only"
+        if text:
+            raise PydanticCustomError("condition-wrong", "{text}", {"text": text})
+        return self
+
+
+class InterlockTable(Table):
+    """A rule that stops the rig and latches until a person resets it."""
+
+    id: Id
+    title: Text
+    trip_when: Annotated[tuple[ConditionTable, ...], Field(min_length=1)]
+    vote: Annotated[str, Field(pattern=r"^[1-9][0-9]?oo[1-9][0-9]?$")] | None = None
+    on_bad: OnBad = OnBad.TRIP
+    delay: Delay = 0.0
+    clear_delay: Delay = 1.0
+    settling: Delay = 0.0
+    stop: Literal["cut", "quench", "hold"]
+    armed: Armed = Armed.ALWAYS
+    consequence: Annotated[Text, IfMissing("key-missing", "say what would happen without this interlock")]
+    response: Annotated[Text, IfMissing("key-missing", "say what the person should do after the trip")]
+    basis: Text
+
+
+class AlarmTable(Table):
+    """A condition that needs a person; ``action`` says what to do."""
+
+    id: Id
+    title: Text
+    when: ConditionTable
+    on_delay: Delay = 0.0
+    off_delay: Delay = 0.0
+    priority: Literal["highest", "high", "medium", "low"]
+    action: Annotated[
+        Text,
+        IfMissing("alarm-without-action", "say what the person should do; if there is nothing to do, remove the alarm"),
+    ]
+    cause: str = ""
+    consequence: str = ""
+    latching: Flag = False
+    acknowledge: Flag = True
+    hold: Flag = False
+
+
+class LinkTable(Table):
+    """A port: a path, a URL such as ``socket://host:port``, or the word ``simulated``."""
+
+    id: Id
+    port: Text
+    baud: Annotated[float, Quantity("baud", "positive")] = 115200.0
+    data_bits: Annotated[int, Field(strict=True, ge=5, le=8)] = 8
+    parity: Literal["none", "even", "odd"] = "none"
+    stop_bits: Annotated[float, Field(strict=True, ge=1, le=2, multiple_of=0.5)] = 1.0
+    reply_timeout: Duration = 0.3
+    retries: Annotated[int, Field(strict=True, ge=0, le=20)] = 2
+
+    def value(self) -> LinkSpec:
+        return LinkSpec(
+            id=self.id,
+            port=self.port,
+            baud=round(self.baud),
+            data_bits=self.data_bits,
+            parity=self.parity,
+            stop_bits=self.stop_bits,
+            reply_timeout_s=self.reply_timeout,
+            retries=self.retries,
+        )
+
+
+DEEPEST_OPTION = 6
+
+
+def _depth(value: object) -> int:
+    """How many containers lie in each other."""
+    depth, layer = 0, [value]
+    while layer:
+        layer = [item for holder in layer if isinstance(holder, (dict, list)) for item in _items(holder)]
+        depth += 1
+    return depth
+
+
+def _items(holder: dict[str, object] | list[object]) -> list[object]:
+    return list(holder.values()) if isinstance(holder, dict) else holder
+
+
+class DeviceTable(Table):
+    """An instrument or actuator on a link. ``options`` are for its driver and checked by it."""
+
+    id: Id
+    driver: Text
+    dialect: str = ""
+    link: Id
+    address: str = ""
+    period: Duration = 1.0
+    stale_after: Duration | None = None
+    serial_no: str = ""
+    options: dict[str, Any] = Field(default_factory=dict)
+
+    @field_validator("options")
+    @classmethod
+    def _flat_enough(cls, options: dict[str, Any]) -> dict[str, Any]:
+        if _depth(options) > DEEPEST_OPTION:
+            text = f"options are nested more than {DEEPEST_OPTION} levels deep"
+            raise PydanticCustomError("value-out-of-range", "{text}", {"text": text})
+        return options
+
+    @property
+    def period_ns(self) -> int:
+        """How often its channels are read."""
+        return ns(self.period)
+
+    @property
+    def stale_ns(self) -> int:
+        """When its values are too old; five periods unless the file says so."""
+        return ns(5 * self.period if self.stale_after is None else self.stale_after)
+
+
+class MqttTable(Table):
+    """A broker for telemetry. The password is read from the environment variable ``password_env``."""
+
+    host: Text
+    port: Annotated[int, Field(strict=True, ge=1, le=65535)] = 1883
+    prefix: Annotated[str, Field(pattern=r"^[A-Za-z0-9_-]+(/[A-Za-z0-9_-]+)*$")] = "rigd"
+    username: str = ""
+    password_env: str = ""
+    keepalive: Annotated[float, Quantity("time", "positive"), Field(ge=1, le=3600)] = 10.0
+
+    def value(self) -> MqttSpec:
+        return MqttSpec(self.host, self.port, self.prefix, self.username, self.password_env, round(self.keepalive))
+
+
+class AlertTable(Table):
+    """Where alerts go: a URL of the notification library, or a plain webhook."""
+
+    name: Id
+    url: Annotated[str, Field(pattern=r"^[A-Za-z][A-Za-z0-9+.-]*://\S+$")]
+    priority_at_least: Literal["highest", "high", "medium", "low"] = "high"
+
+    def value(self) -> AlertChannel:
+        return AlertChannel(self.name, self.url, PRIORITIES[self.priority_at_least])
+
+
+PRIORITIES = {"highest": 1, "high": 2, "medium": 3, "low": 4}
+
+
+class OutsideTable(Table):
+    """Who is told: broker and alert channels."""
+
+    mqtt: MqttTable | None = None
+    alerts: tuple[AlertTable, ...] = ()
