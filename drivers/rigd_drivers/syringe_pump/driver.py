@@ -43,6 +43,11 @@ class SyringePump:
 
     async def poll(self, line: Line, channels: Sequence[str]) -> Sequence[Reading]:
         """All channels from one status; a counter that fell means that the pump has restarted."""
+        for channel in channels:
+            if channel not in PUMP_CHANNELS:
+                raise LocalProtocolError(
+                    f"a syringe pump has no channel {channel!r}; it has {', '.join(PUMP_CHANNELS)}"
+                )
         now = await self._talk.ask(line, wire.STATUS, wire.status)
         if now.delivered_mL < self._delivered_mL:
             raise self._talk.restarted()
@@ -55,7 +60,7 @@ class SyringePump:
             "delivered": Reading("delivered", now.delivered_mL),
             "state": Reading("state", float(now.state), fault=fault),
         }
-        return [_known(values, channel) for channel in channels]
+        return [values[channel] for channel in channels]
 
     async def execute(self, line: Line, order: Order) -> None:
         """One order, confirmed by the pump's ``ok``."""
@@ -82,12 +87,6 @@ class SyringePump:
                 f"{self._spec.id}: the pump has {'; '.join(wrong)}; every flow would be wrong. Mount the right "
                 "syringes, set them at the pump, or correct the rig file"
             )
-
-
-def _known(values: dict[str, Reading], channel: str) -> Reading:
-    if channel not in values:
-        raise LocalProtocolError(f"a syringe pump has no channel {channel!r}; it has {', '.join(values)}")
-    return values[channel]
 
 
 FAMILY = DriverFamily(
