@@ -13,7 +13,7 @@ import json
 import math
 import os
 from collections import deque
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Mapping, Sequence
 from pathlib import Path
 from typing import Any
 
@@ -63,7 +63,7 @@ class DoorServer:
         finally:
             os.umask(old)
 
-    def tell(self, events: tuple[Event, ...] | list[Event]) -> None:
+    def tell(self, events: Sequence[Event]) -> None:
         """Hand events to all subscribers and answers to those who asked; never waits."""
         for event in events:
             self._count += 1

@@ -13,7 +13,7 @@ from rigd.ports.driver import Driver, SpectrumSource
 from rigd.ports.link import Line
 from rigd.runtime.core_inbox import CoreInbox
 from rigd.runtime.link_state import LinkStatus
-from rigd.runtime.polls import Poll, next_due_ns, polls_of, samples_of
+from rigd.runtime.polls import Poll, next_due_ns, samples_of
 
 Derive = Callable[[Spectrum], Sequence[Reading]]
 NS = 1_000_000_000
@@ -29,13 +29,19 @@ class Device:
     """
 
     def __init__(
-        self, spec: DeviceSpec, driver: Driver, core: CoreInbox, clock: Clock, derive: Derive | None = None
+        self,
+        spec: DeviceSpec,
+        driver: Driver,
+        polls: Sequence[Poll],
+        core: CoreInbox,
+        clock: Clock,
+        derive: Derive | None = None,
     ) -> None:
         self.spec, self._driver, self._core, self._clock, self._derive = spec, driver, core, clock, derive
         self.link = LinkStatus()
         self.identity: DeviceIdentity | None = None
         self.detail = "not reached yet"
-        self.polls = polls_of(spec, spectral=derive is not None)
+        self.polls = tuple(polls)
         self.due_ns = [0] * len(self.polls)
         self.retry_wall_ns = 0
         self.spectrum_taken: Callable[[Spectrum], None] = lambda spectrum: None

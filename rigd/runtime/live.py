@@ -21,6 +21,7 @@ from rigd.runtime.device import Device
 from rigd.runtime.line import Trace
 from rigd.runtime.link_owner import LinkOwner, OpenLink
 from rigd.runtime.permission import Permission, watch_life
+from rigd.runtime.polls import polls_of
 from rigd.runtime.scan_loop import ScanLoop
 from rigd.runtime.spectra import cell_readers
 from rigd.runtime.vigil import Vigil
@@ -77,7 +78,8 @@ class Live:
         self.inbox = CoreInbox(prompt_tags(given.program))
         derive = cell_readers(rig)
         self.devices = [
-            Device(spec, given.drivers[spec.id], self.inbox, given.clock, derive.get(spec.id)) for spec in rig.devices
+            Device(spec, given.drivers[spec.id], polls_of(rig, spec), self.inbox, given.clock, derive.get(spec.id))
+            for spec in rig.devices
         ]
         for device in self.devices:
             device.spectrum_taken = given.journal.spectrum

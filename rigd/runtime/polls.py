@@ -7,6 +7,7 @@ from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
 
 from rigd.model.devices import DeviceSpec
+from rigd.model.rig import Cell, RigDefinition
 from rigd.model.samples import Quality, QualityCause, Reading, Sample
 
 
@@ -22,13 +23,21 @@ class Poll:
     spectrum: bool = False
 
 
-def polls_of(device: DeviceSpec, spectral: bool = False) -> tuple[Poll, ...]:
-    """One poll per period, shortest first. A spectral device is read twice per period: its own clock is not ours."""
+def polls_of(rig: RigDefinition, device: DeviceSpec) -> tuple[Poll, ...]:
+    """One poll per period, shortest first, then the spectra of the cells that the device reads."""
     polls = []
     for period_ns in sorted({channel.period_ns for channel in device.channels}):
         tags = {channel.channel: channel.tag for channel in device.channels if channel.period_ns == period_ns}
-        polls.append(Poll(device.id, tuple(tags), tags, period_ns // 2 if spectral else period_ns, spectral))
-    return tuple(polls)
+        polls.append(Poll(device.id, tuple(tags), tags, period_ns))
+    return (*polls, *(spectral_poll(rig, cell) for cell in rig.cells if cell.device == device.id))
+
+
+def spectral_poll(rig: RigDefinition, cell: Cell) -> Poll:
+    """The poll of a cell; its channels are what is derived: species, ``conversion``, ``residual``. Twice per spectrum,
+    because the instrument's clock is not ours."""
+    head = f"{cell.id}."
+    tags = {tag.id.removeprefix(head): tag.id for tag in rig.tags if tag.id.startswith(head) and not tag.channel}
+    return Poll(cell.device, tuple(tags), tags, cell.period_ns // 2, spectrum=True)
 
 
 def samples_of(poll: Poll, readings: Iterable[Reading], t_ns: int) -> list[Sample]:

@@ -2,12 +2,13 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Sequence
 from typing import TYPE_CHECKING
 
 from rigd.model.chemistry import Chemistry
 from rigd.model.rig import Cell, RigDefinition
 from rigd.model.samples import Reading, Spectrum
+from rigd.runtime.polls import spectral_poll
 
 if TYPE_CHECKING:
     from rigd.analysis.unmix import Unmixer
@@ -16,10 +17,10 @@ CONVERSION, RESIDUAL = "conversion", "residual"
 
 
 class CellReader:
-    """Un-mixes the spectra of one cell. ``channels`` maps what is wanted (a species, ``conversion`` or ``residual``) to
-    the device channel that carries it. Calling it with a spectrum gives the readings."""
+    """Un-mixes the spectra of one cell. ``channels`` is what is wanted: species, ``conversion``, ``residual``. Calling
+    it with a spectrum gives the readings."""
 
-    def __init__(self, cell: Cell, chemistry: Chemistry, channels: Mapping[str, str]) -> None:
+    def __init__(self, cell: Cell, chemistry: Chemistry, channels: Sequence[str]) -> None:
         self._cell, self._chemistry, self._channels = cell, chemistry, channels
         self._species = [one.id for one in chemistry.species if one.bands and one.id in channels]
         self._unmixer: Unmixer | None = None
@@ -30,9 +31,9 @@ class CellReader:
         try:
             result = self._unmixer_for(spectrum).solve(spectrum.absorbance)
         except ValueError as error:
-            return [Reading(channel, float("nan"), fault=str(error)) for channel in self._channels.values()]
+            return [Reading(channel, float("nan"), fault=str(error)) for channel in self._channels]
         found = {**result.concentrations, CONVERSION: result.conversion, RESIDUAL: result.residual_AU}
-        return [Reading(channel, found[name]) for name, channel in self._channels.items() if name in found]
+        return [Reading(channel, found[channel]) for channel in self._channels if channel in found]
 
     def _unmixer_for(self, spectrum: Spectrum) -> Unmixer:
         grid = (spectrum.start_per_cm, spectrum.step_per_cm, len(spectrum.absorbance))
@@ -46,15 +47,8 @@ class CellReader:
 
 def cell_readers(rig: RigDefinition) -> dict[str, CellReader]:
     """Device id -> reader, for every cell of the rig that has a device."""
-    devices = {device.id: device for device in rig.devices}
-    readers = {}
-    for cell in rig.cells:
-        if cell.device in devices:
-            head = f"{cell.id}."
-            channels = {
-                channel.tag.removeprefix(head): channel.channel
-                for channel in devices[cell.device].channels
-                if channel.tag.startswith(head)
-            }
-            readers[cell.device] = CellReader(cell, rig.chemistry, channels)
-    return readers
+    return {
+        cell.device: CellReader(cell, rig.chemistry, spectral_poll(rig, cell).channels)
+        for cell in rig.cells
+        if cell.device
+    }

@@ -13,7 +13,7 @@ import pytest
 from fakes.word_device import WordDevice, WordDriver, serve, spec
 
 from rigd.adapters.memory_link import MemoryLink, memory_pair
-from rigd.model.devices import LinkSpec, LinkState
+from rigd.model.devices import DeviceSpec, LinkSpec, LinkState
 from rigd.model.errors import LinkClosed
 from rigd.model.intake import Intake
 from rigd.model.orders import Action, Authority, Order, Result
@@ -21,9 +21,15 @@ from rigd.ports.link import Link
 from rigd.runtime.core_inbox import CoreInbox
 from rigd.runtime.device import Device
 from rigd.runtime.link_owner import LinkOwner
+from rigd.runtime.polls import Poll
 from rigd.runtime.virtual_time import LoopClock, VirtualLoop
 
 LINK = LinkSpec("bus", "memory", reply_timeout_s=0.3)
+
+
+def polls(one: DeviceSpec) -> list[Poll]:
+    (channel,) = one.channels
+    return [Poll(one.id, (channel.channel,), {channel.channel: channel.tag}, channel.period_ns)]
 
 
 class Bench:
@@ -35,7 +41,7 @@ class Bench:
         self.core = CoreInbox(frozenset())
         self.clock = LoopClock()
         specs = [spec(device.name, serial_no=serial_no) for device in devices]
-        self.devices = [Device(one, WordDriver(one), self.core, self.clock) for one in specs]
+        self.devices = [Device(one, WordDriver(one), polls(one), self.core, self.clock) for one in specs]
         self.owner = LinkOwner(LINK, self.devices, self.open, self.core, self.clock, self.clock.now_ns)
         self.near: MemoryLink | None = None
         self.group: asyncio.TaskGroup

@@ -1,0 +1,48 @@
+"""The folder of one run: ``runs/<UTC stamp>-<recipe>/`` with frozen copies of the files that a person wrote.
+
+The copies are called ``rig.toml``, ``chemistry.toml`` and ``recipe.toml`` and load by themselves: the rig's line that
+names the chemistry file is made to name the copy. Nothing else is changed, and the digest of a rig leaves that
+line out.
+"""
+
+from __future__ import annotations
+
+import re
+import tomllib
+from datetime import UTC, datetime
+from pathlib import Path
+
+from rigd.model.errors import RigError
+
+RIG, CHEMISTRY, RECIPE = "rig.toml", "chemistry.toml", "recipe.toml"
+_CHEMISTRY_LINE = re.compile(r"^(\s*chemistry\s*=).*$", re.MULTILINE)
+
+
+def make_run_folder(runs: Path, recipe_name: str) -> Path:
+    """A new folder for a run that starts now; ``RigError`` when it cannot be made."""
+    stamp = datetime.now(UTC).strftime("%Y%m%dT%H%M%SZ")
+    for suffix in ("", *(f"-{number}" for number in range(2, 100))):
+        folder = runs / f"{stamp}-{recipe_name}{suffix}"
+        try:
+            folder.mkdir(parents=True)
+        except FileExistsError:
+            continue
+        except OSError as error:
+            raise RigError(f"cannot make the run folder {folder}: {error.strerror}") from error
+        return folder.resolve()
+    raise RigError(f"there are a hundred runs called {stamp}-{recipe_name} already; wait a second")
+
+
+def freeze_files(folder: Path, rig_path: Path, recipe_path: Path) -> None:
+    """Copy rig, chemistry and recipe into the run folder so that the copies load by themselves."""
+    try:
+        rig_text = rig_path.read_text(encoding="utf-8")
+        chemistry = rig_path.parent / tomllib.loads(rig_text)["chemistry"]
+        (folder / CHEMISTRY).write_bytes(chemistry.read_bytes())
+        (folder / RECIPE).write_bytes(recipe_path.read_bytes())
+        frozen, lines = _CHEMISTRY_LINE.subn(rf'\1 "{CHEMISTRY}"', rig_text, count=1)
+        if lines != 1:
+            raise RigError(f'{rig_path}: write the chemistry file on a line of its own, as chemistry = "..."')
+        (folder / RIG).write_text(frozen, encoding="utf-8")
+    except OSError as error:
+        raise RigError(f"cannot copy the files of the run to {folder}: {error.strerror}") from error

@@ -1,0 +1,343 @@
+"""Puts concrete parts together: the only place that knows them all.
+
+``start_run`` turns ``rigd run`` into the guard of a run, the guard starts ``control_main``, and that builds the live
+shell. ``dry_run`` and ``serve_simulator`` build the other two ways to move a rig.
+"""
+
+from __future__ import annotations
+
+import asyncio
+import contextlib
+import gc
+import json
+import logging
+import os
+import platform
+import sys
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import dataclass, field, replace
+from pathlib import Path
+from typing import Any, NoReturn
+
+from rigd import __version__
+from rigd.adapters import run_folder
+from rigd.adapters.clock import PacedClock, boot_id, suspended_ns, wall_ns
+from rigd.adapters.door_server import DoorServer
+from rigd.adapters.journal_sqlite import SqliteJournal
+from rigd.adapters.open_link import open_link
+from rigd.adapters.places import SIMULATED, Daemon, announce, door_path, rig_folder, simulated_ports, write_json
+from rigd.adapters.plugins import driver_family, plant_maker, simulator_maker
+from rigd.adapters.port_lock import lock_ports, unlock
+from rigd.config import load_pair, load_rig
+from rigd.logic.program import Program, RunOptions, compile_program
+from rigd.logic.scan import CoreState, RunEnd
+from rigd.model.devices import LastWill, LinkSpec
+from rigd.model.errors import JournalError, LinkError, RigError
+from rigd.model.recipe import Recipe
+from rigd.model.rig import RigDefinition
+from rigd.ports.driver import Driver
+from rigd.ports.plant import FaultSpec, Plant, SimulatorOptions
+from rigd.runtime.dry import DryOptions, DryResult, DryShell
+from rigd.runtime.live import Live, Surroundings
+from rigd.runtime.permission import Permission
+from rigd.runtime.spectra import cell_readers
+
+FIRST_TICKET_S, EARLY_S, LATE_S = 30.0, 0.04, 1.0
+"""The guard's window: until the first ticket, then at least and at most between two [wall]."""
+PACED_FLOOR_S = 0.5
+"""Wall time that a sample may age and a valve may travel in a paced run, whatever the files say (decision 5)."""
+
+
+@dataclass(frozen=True, slots=True)
+class RunSettings:
+    """How to run. ``signer``: the person in whose name it starts ("": a simulated rig starts itself, a real one waits).
+
+    ``progress`` is a command that shows progress on stderr, ``after`` one that runs at the end; both get the run folder
+    in place of the word ``{folder}``. ``trace`` names links whose bytes are recorded. ``collected`` are points of an
+    earlier, stopped run that need not be collected again.
+    """
+
+    pace: float = 1.0
+    signer: str = ""
+    runs: Path = Path("runs")
+    collected: tuple[str, ...] = ()
+    unattended: bool = False
+    trace: tuple[str, ...] = ()
+    progress: tuple[str, ...] = ()
+    after: tuple[str, ...] = ()
+
+
+def start_run(rig_path: Path, recipe_path: Path, settings: RunSettings = RunSettings()) -> NoReturn:
+    """Become the guard of a new run. Returns only by raising: ``ConfigError``, ``PluginError``, ``LinkError`` or
+    ``RigError``, before anything was opened or moved."""
+    plan = prepare_run(rig_path, recipe_path, settings)
+    sys.stdout.flush()
+    sys.stderr.flush()
+    os.execv(sys.executable, [sys.executable, "-m", "rigd.guard", str(plan)])
+
+
+def prepare_run(rig_path: Path, recipe_path: Path, settings: RunSettings) -> Path:
+    """Check everything, lock the ports, make the run folder; returns the guard's plan. The locks stay with this process
+    and are inherited by the guard that it becomes."""
+    pair = load_pair(rig_path, recipe_path)
+    assert pair.recipe is not None
+    rig, recipe = pair.rig, pair.recipe
+    drivers = make_drivers(rig)
+    compile_program(rig, recipe)
+    links = resolve_ports(rig, str(rig_path), settings.pace)
+    folder = run_folder.make_run_folder(settings.runs, recipe.name)
+    locks = lock_ports((link.port for link in links), rig=rig.name, folder=str(folder), pid=os.getpid())
+    try:
+        run_folder.freeze_files(folder, rig_path, recipe_path)
+        door = door_path(rig.name, os.getpid())
+        announced = announce(Daemon(os.getpid(), rig.name, folder.name, str(folder), str(door)))
+        plan = _plan(rig, recipe, settings, folder, links, drivers, locks)
+        write_json(folder / "plan.json", {**plan, "door": str(door), "cleanup": [str(announced), str(door)]})
+    except BaseException:
+        unlock(locks)
+        raise
+    for lock in locks:
+        os.set_inheritable(lock, True)
+    return folder / "plan.json"
+
+
+def make_drivers(rig: RigDefinition) -> dict[str, Driver]:
+    """A driver per device; ``PluginError`` for a missing one, ``ConfigError`` for options that it does not take."""
+    return {device.id: driver_family(device.driver).make(device) for device in rig.devices}
+
+
+def resolve_ports(rig: RigDefinition, rig_path: str, pace: float) -> tuple[LinkSpec, ...]:
+    """The links with their real ports. ``LinkError`` when the simulator is needed and not there, ``RigError`` for
+    a pace
+    other than 1 on real ports."""
+    real = [link for link in rig.links if link.port != SIMULATED]
+    if pace != 1 and real:
+        port = f"link {real[0].id!r} has the real port {real[0].port!r}"
+        raise RigError(f"pace {pace:g} needs a simulated rig, but {port}; leave --pace out")
+    if len(real) == len(rig.links):
+        return rig.links
+    served = simulated_ports(rig.name, rig_path, pace)
+    missing = [link.id for link in rig.links if link.port == SIMULATED and link.id not in served]
+    if missing:
+        raise LinkError(f"the simulator serves no link {missing[0]!r}; was it started with another rig file?")
+    return tuple(replace(link, port=served[link.id]) if link.port == SIMULATED else link for link in rig.links)
+
+
+def last_wills(rig: RigDefinition, drivers: Mapping[str, Driver], links: Sequence[LinkSpec]) -> list[LastWill]:
+    """What stops each device, pumps first, then valves, then baths; devices that move nothing are left out."""
+    ranks = [{part.device for part in parts} for parts in (rig.pumps, rig.valves, rig.chillers)]
+    rank = {device: number for number, devices in enumerate(ranks) for device in devices}
+    by_id = {link.id: link for link in links}
+    wills = [drivers[device.id].last_will(by_id[device.link]) for device in rig.devices]
+    wills = [will for will in wills if will.frames]
+    return sorted(wills, key=lambda will: rank.get(will.device, len(ranks)))
+
+
+def control_main(plan_path: str) -> int:
+    """The control process: run what the plan says, return the exit code. Anything that is not a ``RigError`` goes
+    up, with
+    no last word to the guard, which then stops the rig."""
+    logging.basicConfig(level=logging.INFO, format="%(asctime)s %(name)s %(message)s", stream=sys.stderr)
+    os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
+    sys.setswitchinterval(0.0005)  # a thread must not hold the loop back for the stock 5 ms
+    plan = json.loads(Path(plan_path).read_text(encoding="utf-8"))
+    try:
+        end = asyncio.run(_control(plan))
+    except RigError as error:
+        end = RunEnd("refused", 2, f"could not start: {error}")
+        Permission(_descriptor("RIGD_TICKET_FD"), wall_ns).say_end(end.exit_code, end.text)
+    return end.exit_code
+
+
+async def _control(plan: dict[str, Any]) -> RunEnd:
+    folder = Path(plan["folder"])
+    pair = load_pair(folder / run_folder.RIG, folder / run_folder.RECIPE)
+    assert pair.recipe is not None
+    if (pair.rig.digest, pair.recipe.digest) != (plan["rig_digest"], plan["recipe_digest"]):
+        raise RigError(f"the copies in {folder} are not the files that were checked; start again")
+    links = tuple(replace(link, port=plan["ports"][link.id]) for link in pair.rig.links)
+    program = compile_program(pair.rig, pair.recipe, _run_options(plan))
+    clock = PacedClock(plan["pace"])
+    journal = SqliteJournal(folder / "run.sqlite", _facts(plan, folder, clock), pair.rig.tags)
+    live = Live(
+        Surroundings(
+            program,
+            links,
+            make_drivers(pair.rig),
+            open_link,
+            journal,
+            clock,
+            wall_ns,
+            suspended_ns,
+            signer=plan["signer"],
+            ticket_fd=_descriptor("RIGD_TICKET_FD"),
+            life_fd=_descriptor("RIGD_LIFE_FD"),
+            trace_links=frozenset(plan["trace"]),
+            handle_signals=True,
+        )
+    )
+    return await _live(live, plan, clock, journal)
+
+
+async def _live(live: Live, plan: dict[str, Any], clock: PacedClock, journal: SqliteJournal) -> RunEnd:
+    names = ("run", "folder", "rig", "recipe", "simulated", "pace", "pid")
+    run = {"id" if name == "run" else name: plan[name] for name in names}
+    door = DoorServer(
+        Path(plan["door"]),
+        live.submit,
+        lambda: {"run": run, "utc": clock.utc(), **live.loop.snapshot()},
+        clock.now_ns,
+    )
+    await door.open()
+    live.tell, live.refresh = door.tell, door.refresh
+    gc.collect()
+    gc.freeze()  # what is there now stays: the collector need not look at it during scans
+    end = await live.run()
+    live.say_end(end)
+    await door.close(end.outcome, end.exit_code)
+    try:
+        await asyncio.to_thread(journal.close, end.outcome)
+    except JournalError:
+        logging.getLogger(__name__).exception("the journal was not ended cleanly")
+    return end
+
+
+def _plan(
+    rig: RigDefinition,
+    recipe: Recipe,
+    settings: RunSettings,
+    folder: Path,
+    links: Sequence[LinkSpec],
+    drivers: Mapping[str, Driver],
+    locks: Sequence[int],
+) -> dict[str, Any]:
+    python = [sys.executable, "-m"]
+    helpers = []
+    if rig.outside.mqtt is not None or rig.outside.channels:
+        helpers.append(_helper("front", [*python, "rigd.front", str(folder / "plan.json")], shown=False))
+    if settings.progress:
+        helpers.append(_helper("progress", _with_folder(settings.progress, folder), shown=True))
+    return {
+        "run": folder.name,
+        "folder": str(folder),
+        "pid": os.getpid(),
+        "rig": rig.name,
+        "recipe": recipe.name,
+        "rig_digest": rig.digest,
+        "recipe_digest": recipe.digest,
+        "simulated": all(link.port == SIMULATED for link in rig.links),
+        "pace": settings.pace,
+        "signer": settings.signer,
+        "unattended": settings.unattended,
+        "collected": list(settings.collected),
+        "trace": list(settings.trace),
+        "ports": {link.id: link.port for link in links},
+        "locks": list(locks),
+        "control": [*python, "rigd.app", "control"],
+        "helpers": helpers,
+        "after": _with_folder(settings.after, folder),
+        "first_s": FIRST_TICKET_S,
+        "early_s": EARLY_S,
+        "late_s": max(LATE_S, 5e-9 * rig.scan_ns),
+        "wills": [_will_facts(will) for will in last_wills(rig, drivers, links)],
+    }
+
+
+def _helper(name: str, argv: list[str], shown: bool) -> dict[str, Any]:
+    return {"name": name, "argv": argv, "shown": shown}
+
+
+def _with_folder(command: Sequence[str], folder: Path) -> list[str]:
+    return [word.replace("{folder}", str(folder)) for word in command]
+
+
+def _will_facts(will: LastWill) -> dict[str, Any]:
+    def frames(some: Sequence[Any]) -> list[dict[str, Any]]:
+        return [
+            {"request": one.request.hex(), "good_reply": one.good_reply.hex(), "timeout_s": one.reply_timeout_s}
+            for one in some
+        ]
+
+    link = will.link
+    port = {"port": link.port, "baud": link.baud, "data_bits": link.data_bits, "parity": link.parity}
+    return {
+        "device": will.device,
+        **port,
+        "stop_bits": link.stop_bits,
+        "frames": frames(will.frames),
+        "check": frames(will.check),
+    }
+
+
+def _run_options(plan: Mapping[str, Any]) -> RunOptions:
+    floor_ns = int(PACED_FLOOR_S * plan["pace"] * 1e9) if plan["pace"] != 1 else 0
+    return RunOptions(tuple(plan["collected"]), bool(plan["unattended"]), floor_ns, floor_ns)
+
+
+def _facts(plan: Mapping[str, Any], folder: Path, clock: PacedClock) -> dict[str, str]:
+    """What the journal holds about the run itself."""
+    told = ("run", "rig", "recipe", "rig_digest", "recipe_digest", "signer")
+    facts = {name: str(plan[name]) for name in told}
+    facts |= {name: json.dumps(plan[name]) for name in ("pace", "simulated", "unattended", "collected", "ports")}
+    for name in (run_folder.RIG, run_folder.CHEMISTRY, run_folder.RECIPE):
+        with contextlib.suppress(OSError):
+            facts[name] = (folder / name).read_text(encoding="utf-8")
+    computer = f"{platform.platform()}, Python {platform.python_version()}"
+    started = {"started_utc": clock.utc(), "origin_monotonic_ns": str(clock.origin_ns), "boot_id": boot_id()}
+    return {**facts, **started, "version": __version__, "computer": computer}
+
+
+def _descriptor(name: str) -> int:
+    return int(os.environ.get(name, "-1"))
+
+
+@dataclass(frozen=True, slots=True)
+class DryRun:
+    """A rehearsal that is over: what was run, on what, and what came out."""
+
+    program: Program
+    plant: Plant
+    result: DryResult
+
+
+@dataclass(frozen=True, slots=True)
+class DrySettings:
+    """``seed`` 0 takes the rig file's; ``faults`` are injected before the start; ``watch`` is called each second."""
+
+    seed: int = 0
+    faults: tuple[FaultSpec, ...] = ()
+    journal: Path | None = None
+    watch: Callable[[int, CoreState], None] | None = None
+    options: DryOptions = field(default_factory=DryOptions)
+
+
+def dry_run(rig_path: Path, recipe_path: Path, settings: DrySettings = DrySettings()) -> DryRun:
+    """Rehearse a recipe on the simulated plant in virtual time. Raises ``ConfigError`` or ``PluginError``."""
+    pair = load_pair(rig_path, recipe_path)
+    assert pair.recipe is not None
+    program = compile_program(pair.rig, pair.recipe)
+    plant = plant_maker().make(pair.rig, settings.seed or pair.rig.simulation.seed)
+    for fault in settings.faults:
+        plant.inject(fault)
+    journal = None
+    if settings.journal is not None:
+        facts = {"rig": pair.rig.name, "recipe": pair.recipe.name, "simulated": "true", "version": __version__}
+        journal = SqliteJournal(settings.journal, facts, pair.rig.tags)
+    result = DryShell(program, plant, cell_readers(pair.rig), journal, settings.watch).run(settings.options)
+    if journal is not None:
+        journal.close(result.outcome)
+    return DryRun(program, plant, result)
+
+
+def serve_simulator(
+    rig_path: Path, pace: float = 1.0, transport: str = "pty", seed: int = 0, faults: tuple[FaultSpec, ...] = ()
+) -> int:
+    """Serve the simulated rig until a signal; returns the exit code."""
+    rig = load_rig(rig_path)
+    folder = str(rig_folder(rig.name))
+    options = SimulatorOptions(folder, pace, transport, seed or rig.simulation.seed, faults)
+    return simulator_maker().serve(rig, options)
+
+
+if __name__ == "__main__":
+    sys.exit(control_main(sys.argv[2]))
