@@ -26,6 +26,11 @@ if TYPE_CHECKING:
 DEGRADED_NS = 30 * 60 * 1_000_000_000
 """How long an attended rig may run on a voting that has lost a channel (proposal; no source)."""
 
+REQUESTS = ("STOP-REQUEST", "CUT-REQUEST")
+"""A wish to stop ends the run even before the first reset; other causes at the start-up are no first-out."""
+
+NOTHING_TO_RESET = "there is nothing to reset"
+
 
 @dataclass(frozen=True, slots=True)
 class Bypass:
@@ -248,7 +253,11 @@ def _number(changes: list[Change], before: Interlocks) -> tuple[list[Change], in
     count, first_out = before.count, before.first_out
     numbered = []
     for change in changes:
-        if change.causes and change.after is LatchState.TRIPPED_ACTIVE and before.released:
+        if (
+            change.causes
+            and change.after is LatchState.TRIPPED_ACTIVE
+            and (before.released or change.interlock.id in REQUESTS)
+        ):
             count += 1
             change = replace(change, number=count)
             first_out = first_out or change.interlock.id
@@ -262,7 +271,7 @@ def reset(
     """Reset one interlock, or all for "*"; all or nothing. Returns the refusal, "" when granted."""
     chosen = [i for i in program.interlocks if target in ("*", i.id) and not interlocks.states[i.id].latch.permits]
     if not chosen:
-        return interlocks, [], "there is nothing to reset"
+        return interlocks, [], NOTHING_TO_RESET
     if not who:
         return interlocks, [], "a reset needs the name of the person who resets"
     refusals = [_reset_refusal(program, i, interlocks, conditions) for i in chosen]

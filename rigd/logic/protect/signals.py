@@ -148,8 +148,9 @@ def link(program: Program, signals: Signals, statuses: Iterable[DeviceStatus]) -
     latest: dict[str, DeviceStatus] = {}
     for status in statuses:
         latest[status.device] = devices[status.device] = status
-        if status.identity is not None:
-            identities.setdefault(status.device, status.identity)
+        spec, identity = program.devices.get(status.device), status.identity
+        if identity is not None and (spec is None or spec.serial_no in ("", identity.serial_no)):
+            identities.setdefault(status.device, identity)
     samples = dict(signals.samples)
     lost: dict[str, Sample] = {}
     for device, status in latest.items():
