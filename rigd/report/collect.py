@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Sequence
 from pathlib import Path
 
 import numpy as np
@@ -15,6 +15,7 @@ from rigd.model.samples import Quality
 from rigd.report.data import PhaseSpan, RunData, Trace
 from rigd.report.points import point_rows
 from rigd.report.usage import used_mL
+from rigd.report.words import simulated
 
 UNFINISHED = "no end recorded"
 """Outcome of a run whose journal was never closed: the computer or the daemon died."""
@@ -33,7 +34,7 @@ def read_run(folder: Path, rig: RigDefinition | None = None, recipe: Recipe | No
         folder=str(folder),
         title=rig.title if rig else meta.get("rig", ""),
         recipe_title=recipe.title if recipe else meta.get("recipe", ""),
-        simulated=meta.get("simulated", "").lower() in ("yes", "true", "1", "simulated"),
+        simulated=simulated(meta),
         pace=float(meta.get("pace", "1") or 1),
         outcome=meta.get("outcome", UNFINISHED),
         outcome_text=_last_words(events),
@@ -79,8 +80,3 @@ def _last_words(events: Sequence[Event]) -> str:
     """The sentence of the last change of the run state."""
     spoken = [event.text for event in events if event.kind is EventKind.RUN_STATE]
     return spoken[-1] if spoken else ""
-
-
-def known_names(meta: Mapping[str, str]) -> str:
-    """Rig and recipe as the journal names them."""
-    return " / ".join(part for part in (meta.get("rig", ""), meta.get("recipe", "")) if part)

@@ -68,6 +68,7 @@ class PointRow:
     collected_mL: float
     collect_start_s: float
     collect_end_s: float
+    selectivity: float = float("nan")
 
     @property
     def total_mL_min(self) -> float:

@@ -26,6 +26,7 @@ from rigd.report.words import (
     outcome_words,
     percent,
     points_words,
+    utc,
 )
 
 FILE_NAME = "report.html"
@@ -93,14 +94,10 @@ def _head(run: RunData) -> dict[str, Any]:
         "outcome": run.outcome,
         "outcome_text": run.outcome_text,
         "outcome_known": run.outcome != UNFINISHED,
-        "started": _utc(run.started_utc),
-        "ended": _utc(run.ended_utc),
+        "started": utc(run.started_utc),
+        "ended": utc(run.ended_utc),
         "duration": duration(run.duration_s),
     }
-
-
-def _utc(text: str) -> str:
-    return text[:19].replace("T", " ") or "–"
 
 
 def _trip(event: Event, first: bool) -> dict[str, Any]:

@@ -55,6 +55,7 @@ def _row(
         collected_mL=_number(facts, "collected_mL"),
         collect_start_s=start_s,
         collect_end_s=end_s,
+        selectivity=_number(facts, "selectivity"),
     )
 
 

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 
 from rigd.model.events import Event, EventKind
 from rigd.report.data import RunData
@@ -50,6 +50,16 @@ def clock(seconds: float) -> str:
         return "–"
     whole = int(seconds)
     return f"{whole // 3600}:{whole % 3600 // 60:02d}:{whole % 60:02d}"
+
+
+def utc(text: str) -> str:
+    """A wall time to the second, without its offset (the heading says UTC)."""
+    return text[:19].replace("T", " ") or "–"
+
+
+def simulated(facts: Mapping[str, str]) -> bool:
+    """What the journal's facts say about it."""
+    return facts.get("simulated", "").lower() in ("yes", "true", "1", "simulated")
 
 
 def number(value: float, digits: int = 2) -> str:

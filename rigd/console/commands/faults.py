@@ -20,9 +20,9 @@ def faults(output: Output) -> None:
     from rich import box
     from rich.table import Table
 
-    from rigd.adapters.plugins import plant_maker
+    from rigd.adapters.plugins import simulator_maker
 
-    kinds = plant_maker().fault_kinds()
+    kinds = simulator_maker().fault_kinds()
     output.document({"faults": [asdict(kind) for kind in kinds]})
     table = Table(box=box.SIMPLE_HEAD, pad_edge=False)
     for heading in ("kind", "what happens", "target", "magnitude", "shows in"):

@@ -1,0 +1,21 @@
+"""``rigd schema``: the JSON Schemas of the files that people write."""
+
+from __future__ import annotations
+
+import click
+
+from rigd.console.output import Output, json_option
+
+KINDS = ("rig", "recipe", "chemistry")
+
+
+@click.command()
+@click.argument("kind", type=click.Choice(KINDS))
+@json_option
+@click.pass_obj
+def schema(output: Output, kind: str) -> None:
+    """Print the JSON Schema of a rig, recipe or chemistry file; editors complete and check with it."""
+    from rigd.config import schema as schemas
+
+    output.json = True
+    output.document(getattr(schemas, f"{kind}_schema")())
