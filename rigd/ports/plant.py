@@ -85,9 +85,39 @@ class SimulatorOptions:
     quiet: bool = False
 
 
+class EmulatedLine(Protocol):
+    """One link with its emulated devices, without a port: bytes in, bytes and their delays out.
+
+    ``now_s`` is process time and never falls; the plant must have been advanced to it. Delays are wall seconds.
+    """
+
+    def feed(self, data: bytes, now_s: float) -> Sequence[tuple[float, bytes]]:
+        """Take any bytes from the master; return what the devices send back, and when."""
+
+    def tick(self, now_s: float) -> Sequence[tuple[float, bytes]]:
+        """Let time pass (time-outs, restarts): to be called at least every 50 ms of wall time."""
+
+    def inject(self, fault: FaultSpec) -> None:
+        """Add a fault of the line or of a device on it. ``ConfigError`` for an unknown kind or target."""
+
+    def clear(self, kind: str, target: str) -> None:
+        """End all faults of this kind on this target now."""
+
+
+def _no_lines(rig: RigDefinition, plant: Plant, pace: float, seed: int) -> Mapping[str, EmulatedLine]:
+    return {}
+
+
 @dataclass(frozen=True, slots=True)
 class SimulatorMaker:
-    """What the entry point group ``rigd.simulators`` must resolve to. ``serve`` runs until stopped by a signal."""
+    """What the entry point group ``rigd.simulators`` must resolve to.
+
+    ``serve`` runs until stopped by a signal; it returns the exit code and says on stderr why when it is not 0.
+    ``lines`` gives the emulated lines by link id over a plant, for a shell that brings its own ports and time.
+    ``fault_kinds`` are the plant's kinds and those of lines and devices, which only exist where there are bytes.
+    """
 
     name: str
     serve: Callable[[RigDefinition, SimulatorOptions], int]
+    lines: Callable[[RigDefinition, Plant, float, int], Mapping[str, EmulatedLine]] = _no_lines
+    fault_kinds: Callable[[], Sequence[FaultKind]] = tuple

@@ -10,7 +10,7 @@ from rigd.model.rig import Cell, Chiller, Pump, Tag, TagKind, Valve
 from rigd.model.samples import Reading
 from rigd_sim.emulators.chiller import CirculatingChiller
 from rigd_sim.emulators.device import BracketDevice
-from rigd_sim.emulators.ir_cell import IrCell
+from rigd_sim.emulators.ir_cell import Grid, IrCell
 from rigd_sim.emulators.lines import BracketLine, EmulatedLine, PlainLine
 from rigd_sim.emulators.selector_valve import SelectorValve
 from rigd_sim.emulators.sensor_module import SensorModule
@@ -120,7 +120,7 @@ def ir_line(given: dict[str, str] | None = None, serial_no: str = "") -> Master:
     grid = float(facts.get("from", 860)), float(facts.get("step", 4))
     plant = PlainPlant(points=int(facts.get("n", 5)), start_per_cm=grid[0], step_per_cm=grid[1], period_ns=every_ns)
     cell = Cell("IR", "ir", 0.04, 25.0, 20.0, every_ns)
-    device: BracketDevice = IrCell(spec("ir", "ir-cell", "41", "", serial_no), plant, cell)
+    device: BracketDevice = IrCell(spec("ir", "ir-cell", "41", "", serial_no), plant, cell, Grid(plant.points, *grid))
     return Master(BracketLine(LINK, [device]), plant)
 
 

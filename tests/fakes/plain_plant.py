@@ -182,6 +182,8 @@ class PlainPlant:
     def spectrum(self, device: str) -> Spectrum:
         """A spectrum that tells its own number: point i is i times 1e-4 plus a tenth of the count."""
         done_ns = self.now_ns // self.period_ns * self.period_ns
+        if done_ns == 0:
+            raise LookupError(device)
         count = done_ns / self.period_ns
         data = tuple(i * 1e-4 + count * 0.1 for i in range(self.points))
         return Spectrum(device, done_ns, self.start_per_cm, self.step_per_cm, data)

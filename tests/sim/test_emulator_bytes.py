@@ -13,8 +13,8 @@ from rigd_sim.emulators.bracket import REQUEST_MAX_BYTES, RequestReader, crc16, 
 ADDRESSES = {"syringe_pump": "11", "selector_valve": "21", "sensor_module": "31", "ir_cell": "41"}
 
 VOCABULARY = """
-who? flags? seen silence silence? bores? rate stop fill swap status? to at? positions? read? span? grid? count? spectrum?
-1 0 -1 1e5 nan inf 0.25 5.000 99999999999999999999 p1 t9 = ? . + - ٣ ² SET RUN BATH ID STATUS CLEAR
+who? flags? seen silence silence? bores? rate stop fill swap status? to at? positions? read? span? grid? count?
+spectrum? 1 0 -1 1e5 nan inf 0.25 5.000 99999999999999999999 p1 t9 = ? . + - ٣ ² SET RUN BATH ID STATUS CLEAR
 """
 WORDS = st.sampled_from(VOCABULARY.split())
 WORD_LISTS = st.lists(WORDS | st.text(max_size=12), max_size=6)

@@ -9,13 +9,16 @@ from rigd.model.rig import RigDefinition
 from rigd.ports.plant import Plant
 from rigd_sim.emulators.chiller import CirculatingChiller
 from rigd_sim.emulators.device import BracketDevice
-from rigd_sim.emulators.ir_cell import IrCell
+from rigd_sim.emulators.ir_cell import Grid, IrCell
 from rigd_sim.emulators.lines import BracketLine, EmulatedLine, PlainLine
 from rigd_sim.emulators.selector_valve import SelectorValve
 from rigd_sim.emulators.sensor_module import SensorModule
 from rigd_sim.emulators.syringe_pump import SyringePump
+from rigd_sim.plant import infrared
 
 PLAIN_DRIVER, PLAIN_DIALECT, BRACKET_DIALECT = "chiller", "plain", "bracket"
+
+GRID = Grid(infrared.POINTS, infrared.START_PER_CM, infrared.STEP_PER_CM)
 
 
 def emulated_lines(rig: RigDefinition, plant: Plant, pace: float = 1.0, seed: int = 1) -> dict[str, EmulatedLine]:
@@ -51,7 +54,7 @@ def _bracket_device(rig: RigDefinition, plant: Plant, spec: DeviceSpec, pace: fl
     if spec.driver == "selector-valve":
         return SelectorValve(spec, plant, next(part for part in rig.valves if part.device == spec.id), pace)
     if spec.driver == "ir-cell":
-        return IrCell(spec, plant, next(part for part in rig.cells if part.device == spec.id), pace)
+        return IrCell(spec, plant, next(part for part in rig.cells if part.device == spec.id), GRID, pace)
     return SensorModule(spec, plant, [tag for tag in rig.tags if tag.device == spec.id], pace)
 
 

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Callable, Mapping, Sequence
+from dataclasses import dataclass
 
 from rigd.model.devices import DeviceSpec
 from rigd.model.rig import Cell
@@ -16,6 +17,15 @@ AU_PER_COUNT = 1e-4
 _LOW, _HIGH = -0x8000, 0x7FFF
 
 
+@dataclass(frozen=True, slots=True)
+class Grid:
+    """Wavenumbers of a spectrum: how many, the first and the step [1/cm]."""
+
+    points: int
+    start_per_cm: float
+    step_per_cm: float
+
+
 class IrCell(BracketDevice):
     """A spectrometer that measures without being asked, one spectrum per period.
 
@@ -25,11 +35,11 @@ class IrCell(BracketDevice):
     model = "FC1"
     commands = frozenset({"silence"})
 
-    def __init__(self, spec: DeviceSpec, plant: Plant, cell: Cell, pace: float = 1.0) -> None:
+    def __init__(self, spec: DeviceSpec, plant: Plant, cell: Cell, grid: Grid, pace: float = 1.0) -> None:
         super().__init__(spec, plant, pace)
         self._period_ns = cell.period_ns
-        self._grid = plant.spectrum(spec.id)
-        self._since_ns = self._grid.t_ns
+        self._grid = grid
+        self._since_ns = 0
         self._shown: tuple[int, str] = (-1, "")
 
     @property
@@ -42,25 +52,31 @@ class IrCell(BracketDevice):
         super().power_cycle(now_s, off_s)
         self._since_ns = round((now_s + off_s) * 1e9)
 
-    def _count(self, spectrum: Spectrum) -> int:
-        return max(0, (spectrum.t_ns - self._since_ns) // self._period_ns)
+    def _last(self) -> Spectrum | None:
+        try:
+            return self.plant.spectrum(self.spec.id)
+        except LookupError:
+            return None
+
+    def _count(self, spectrum: Spectrum | None) -> int:
+        return max(0, (spectrum.t_ns - self._since_ns) // self._period_ns) if spectrum else 0
 
     def _grid_words(self, words: Sequence[str]) -> str:
         if words:
             return NO_ARGUMENTS
         grid = self._grid
         span = f"from={fixed(grid.start_per_cm, 1)} step={fixed(grid.step_per_cm, 1)}"
-        return f"ok n={len(grid.absorbance)} {span} every={fixed(self._period_ns / 1e9, 1)}"
+        return f"ok n={grid.points} {span} every={fixed(self._period_ns / 1e9, 1)}"
 
     def _count_words(self, words: Sequence[str]) -> str:
-        return NO_ARGUMENTS if words else f"ok count={self._count(self.plant.spectrum(self.spec.id))}"
+        return NO_ARGUMENTS if words else f"ok count={self._count(self._last())}"
 
     def _data_words(self, words: Sequence[str]) -> str:
         if words:
             return NO_ARGUMENTS
-        spectrum = self.plant.spectrum(self.spec.id)
+        spectrum = self._last()
         count = self._count(spectrum)
-        if count == 0:
+        if spectrum is None or count == 0:
             return "no state none finished yet"
         age_s = max(0.0, self.now_s - spectrum.t_ns / 1e9)
         return f"ok count={count} age={fixed(age_s, 1)} data={self._data(spectrum)}"
