@@ -1,0 +1,48 @@
+"""``python -m rigd.front plan.json``: the front process of one run, started by the guard."""
+
+from __future__ import annotations
+
+import asyncio
+import json
+import logging
+import signal
+import sys
+import time
+from pathlib import Path
+
+from rigd.adapters import run_folder
+from rigd.adapters.alert_channels import AppriseSender
+from rigd.adapters.door_client import SocketDoor
+from rigd.config import load_rig
+from rigd.front.service import Front
+
+DOOR_WAIT_S = 30.0
+
+
+def door_opens(path: Path) -> bool:
+    """Wait until the daemon's door is there; False when it is not in ``DOOR_WAIT_S``."""
+    deadline_s = time.monotonic() + DOOR_WAIT_S
+    while not path.exists():
+        if time.monotonic() > deadline_s:
+            return False
+        time.sleep(0.05)
+    return True
+
+
+def main(plan_path: str) -> int:
+    """Tell the world about the run that the plan describes; returns when its door has closed."""
+    logging.basicConfig(level=logging.WARNING, format="%(asctime)s %(name)s %(message)s", stream=sys.stderr)
+    signal.signal(signal.SIGINT, signal.SIG_IGN)  # the guard tells when it is over: the door closes
+    signal.signal(signal.SIGTERM, signal.SIG_IGN)
+    plan = json.loads(Path(plan_path).read_text(encoding="utf-8"))
+    rig = load_rig(Path(plan["folder"]) / run_folder.RIG)
+    senders = [AppriseSender(channel) for channel in rig.outside.channels]
+    door = Path(plan["door"])
+    if not door_opens(door):
+        return 1
+    asyncio.run(Front(rig.name, rig.outside, senders).run(SocketDoor(door).messages()))
+    return 0
+
+
+if __name__ == "__main__":
+    sys.exit(main(sys.argv[1]))
