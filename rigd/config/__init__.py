@@ -4,7 +4,7 @@ Reads files and nothing else; never prints, opens no device, and decides nothing
 """
 
 from rigd.config.load import Pair, load_pair, load_recipe, load_rig, read_rig
-from rigd.config.schema import chemistry_schema, recipe_schema, rig_schema
+from rigd.config.schema import chemistry_schema, recipe_schema, rig_schema, schema_files
 
 __all__ = [
     "Pair",
@@ -15,4 +15,5 @@ __all__ = [
     "read_rig",
     "recipe_schema",
     "rig_schema",
+    "schema_files",
 ]

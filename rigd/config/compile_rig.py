@@ -1,4 +1,4 @@
-"""Checked tables -> ``RigDefinition``; made of what parsed so that the checks see as much of the rig as is there."""
+"""Checked tables -> ``RigDefinition``, made of what parsed so that the checks see as much of the rig as is there."""
 
 from __future__ import annotations
 

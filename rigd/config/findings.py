@@ -45,11 +45,12 @@ class Findings:
 
 
 def key_text(source: Source, path: Path) -> str:
-    """A path as people read it: ``pumps[PU-A].bore``; an item without an id is counted from 1: ``pumps[2].bore``."""
+    """A path as people read it: ``pumps[PU-A].bore``; items without an id count from 1: ``trip_when[2]``."""
     text = ""
     for depth, step in enumerate(path):
         if isinstance(step, int):
-            text += f"[{_item_name(source.value_at(path[: depth + 1])) or step + 1}]"
+            name = _item_name(source.value_at(path[: depth + 1])) if depth == 1 else ""
+            text += f"[{name or step + 1}]"
         else:
             text += f".{step}" if text else step
     return text

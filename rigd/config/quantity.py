@@ -88,6 +88,10 @@ def _error(code: str, message: str) -> PydanticCustomError:
     return PydanticCustomError(code, "{text}", {"text": message})
 
 
+HOUSE_UNIT = "x-house-unit"
+"""Mark of a quantity in a schema while it is made: its default is a number of this unit."""
+
+
 @dataclass(frozen=True, slots=True)
 class Quantity:
     """Annotation of a ``float`` field that is written with a unit of ``dimension`` and meets ``sign``."""
@@ -101,7 +105,7 @@ class Quantity:
         )
 
     def __get_pydantic_json_schema__(self, schema: CoreSchema, handler: GetJsonSchemaHandler) -> JsonSchemaValue:
-        text = {"type": "string", "pattern": pattern(self.dimension, self.sign)}
+        text = {"type": "string", "pattern": pattern(self.dimension, self.sign), HOUSE_UNIT: HOUSE[self.dimension]}
         hint = f"{self.dimension}: {_allowed(self.dimension)}"
         if self.dimension != "fraction":
             return {**text, "description": hint}

@@ -7,7 +7,7 @@ from typing import Annotated, Any, Literal
 from pydantic import ConfigDict, Field, ValidationInfo, field_validator, model_validator
 from pydantic_core import PydanticCustomError
 
-from rigd.config.quantity import Delay, Duration, Quantity, Written, read_quantity
+from rigd.config.quantity import Delay, Duration, Quantity, Written, pattern, read_quantity
 from rigd.config.table import Flag, Id, IfMissing, Table, Text, Whole, ns
 from rigd.model.devices import LinkSpec
 from rigd.model.protection import Armed, OnBad
@@ -22,8 +22,31 @@ EndOrPart = Annotated[str, Field(pattern=r"^[A-Za-z][A-Za-z0-9_-]*(\.[a-z]+)?$")
 TagText = Annotated[str, Field(min_length=1, max_length=120)]
 
 
+def difference(dimension: str) -> str:
+    """The dimension of a difference of two values: only temperatures have one of their own."""
+    return "temperature difference" if dimension == "temperature" else dimension
+
+
+def _span_by_kind(schema: dict[str, Any]) -> None:
+    """What is measured decides the units of span and noise; a state has labels instead."""
+    schema["allOf"] = [
+        {"if": {"properties": {"measures": {"const": measures}}}, "then": _span_rule(dimension)}
+        for measures, dimension in DIMENSION_OF.items()
+    ]
+
+
+def _span_rule(dimension: str) -> dict[str, Any]:
+    if not dimension:
+        return {"required": ["labels"], "properties": {"labels": {"minItems": 2}, "span": False}}
+    span = {"items": {"pattern": pattern(dimension)}}
+    noise = {"pattern": pattern(difference(dimension), "not negative")}
+    return {"required": ["span"], "properties": {"labels": {"maxItems": 0}, "span": span, "noise": noise}}
+
+
 class SensorTable(Table):
     """One input of an instrument, read as the tag ``tag``. States have ``labels`` (value 0, 1, ...) and no span."""
+
+    model_config = ConfigDict(json_schema_extra=_span_by_kind)
 
     tag: Id
     title: Text
@@ -81,11 +104,6 @@ class SensorTable(Table):
         if self.noise is None or self.measures == "state":
             return 0.0
         return read_quantity(self.noise, difference(DIMENSION_OF[self.measures]))
-
-
-def difference(dimension: str) -> str:
-    """The dimension of a difference of two values: only temperatures have one of their own."""
-    return "temperature difference" if dimension == "temperature" else dimension
 
 
 def _one_comparison(schema: dict[str, Any]) -> None:

@@ -5,10 +5,12 @@ The schemas say what the structure is; what it must mean (references, limits, vo
 
 from __future__ import annotations
 
+import json
 from typing import Any
 
 from rigd.config.chemistry_tables import ChemistryFile
 from rigd.config.files import RecipeFile, RigFile
+from rigd.config.quantity import HOUSE_UNIT
 from rigd.config.table import Table
 
 DRAFT = "https://json-schema.org/draft/2020-12/schema"
@@ -31,6 +33,12 @@ def chemistry_schema() -> Schema:
     return _schema(ChemistryFile, "chemistry file")
 
 
+def schema_files() -> dict[str, str]:
+    """File name -> text of the schemas as they are shipped in configs/schema."""
+    schemas = {"rig": rig_schema(), "recipe": recipe_schema(), "chemistry": chemistry_schema()}
+    return {f"{name}.schema.json": json.dumps(schema, indent=1) + "\n" for name, schema in schemas.items()}
+
+
 def _schema(model: type[Table], title: str) -> Schema:
     made = _plain(model.model_json_schema(by_alias=True, mode="validation"))
     return {"$schema": DRAFT, **made, "title": title}
@@ -51,6 +59,9 @@ def _plain(node: Any) -> Any:
             plain = {**kinds[0], **plain}
         else:
             plain["anyOf"] = kinds
+    unit = plain.pop(HOUSE_UNIT, None)
+    if unit is not None and isinstance(plain.get("default"), float):
+        plain["default"] = f"{plain['default']:g} {unit}"  # as a person writes it
     if "patternProperties" in plain:
         plain.setdefault("additionalProperties", False)
     return plain

@@ -96,8 +96,9 @@ def _ordered(sweep: SweepTable, conditions: list[Condition], chance: random.Rand
 def _block(
     sweep: SweepTable, ordered: Sequence[Condition], temperature: float, kind: PointKind, made: list[Point]
 ) -> None:
-    """The points of one temperature, with returns to its first point and blanks in between."""
+    """The points of one temperature, with returns to its first point and, at the fastest flows, blanks in between."""
     first: Point | None = None
+    fastest = max(ordered, key=lambda condition: sum(condition.flows_mL_min.values()))
     numbered = sum(1 for point in made if point.of == "" and point.id.startswith("P"))
     blanks = sum(1 for point in made if point.id.startswith("blank-"))
     returns = 0
@@ -112,4 +113,4 @@ def _block(
             )
         if sweep.blank_every and count % sweep.blank_every == 0:
             blanks += 1
-            made.append(Point(f"blank-{blanks}", PointKind.BLANK, condition.flows_mL_min, temperature))
+            made.append(Point(f"blank-{blanks}", PointKind.BLANK, fastest.flows_mL_min, temperature))

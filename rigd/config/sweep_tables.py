@@ -80,7 +80,7 @@ class SweepTable(Table):
     """Points by flows, by total flow, or by residence time; temperatures are the outer loop, ratios the next.
 
     ``return_every = n`` repeats the first point of a temperature after every n points; ``blank_every = n`` puts a
-    solvent blank there. ``order`` holds within a temperature.
+    solvent blank at the fastest flows there. ``order`` holds within a temperature.
     """
 
     model_config = ConfigDict(json_schema_extra=_one_form)

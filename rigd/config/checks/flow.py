@@ -8,6 +8,10 @@ from rigd.logic.flow_path import FlowPathError, flow_path
 from rigd.model.rig import LiquidRole, Pump, Valve, Vessel, VesselRole
 
 
+_DANGLING = {"part-without-outlet", "part-without-inlet", "line-end-unknown"}
+"""Findings after which nobody needs to be told that the liquid cannot reach the waste."""
+
+
 def check_flow(context: RigContext) -> None:
     """Rest positions, sources and outlets; needs all lines and parts to be there."""
     for valve in context.rig.valves:
@@ -19,7 +23,8 @@ def check_flow(context: RigContext) -> None:
         return
     for pump in context.rig.pumps:
         _sources(context, pump)
-        _outlets(context, pump)
+        if not _DANGLING & {problem.code for problem in context.found.problems}:
+            _outlets(context, pump)
     if not context.found.failed:
         try:
             flow_path(context.rig)
