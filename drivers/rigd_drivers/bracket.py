@@ -26,7 +26,7 @@ OWN_NUMBERS = 0xF0
 
 _WORD = re.compile(r"[!-'*-z|~]+")  # printable ASCII without blank, ( ) { }
 _REPLY = re.compile(rb"\((\d\d)([0-9A-F]{2}) ([ -'*-z|~]+)\)([0-9A-F]{4})\r?")
-_NUMBER = re.compile(r"-?\d{1,9}(?:\.\d{1,9})?")
+_NUMBER = re.compile(r"-?[0-9]{1,9}(?:\.[0-9]{1,9})?")
 
 Words = Sequence[str]
 

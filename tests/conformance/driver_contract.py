@@ -220,8 +220,8 @@ class DriverContract:
         async def work() -> None:
             def hook(data: bytes) -> Iterator[tuple[float, bytes]]:
                 start = 0
-                for cut in [*cuts, len(data)]:
-                    yield 0.0, data[start : start + cut]
+                for turn, cut in enumerate([*cuts, len(data)]):
+                    yield turn * 1e-5, data[start : start + cut]
                     start += cut
 
             async with bench(self.case, hook) as one, bench(self.case) as other:
