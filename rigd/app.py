@@ -138,6 +138,7 @@ def control_main(plan_path: str) -> int:
     up, with
     no last word to the guard, which then stops the rig."""
     logging.basicConfig(level=logging.INFO, format="%(asctime)s %(name)s %(message)s", stream=sys.stderr)
+    logging.getLogger("transitions").setLevel(logging.WARNING)
     os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
     sys.setswitchinterval(0.0005)  # a thread must not hold the loop back for the stock 5 ms
     plan = json.loads(Path(plan_path).read_text(encoding="utf-8"))
