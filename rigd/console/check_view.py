@@ -1,0 +1,96 @@
+"""The findings of ``rigd check`` for people: problems, the plan, cause and effect with response times."""
+
+from __future__ import annotations
+
+from rich import box
+from rich.console import RenderableType
+from rich.table import Table
+from rich.text import Text
+
+from rigd.console.checking import Checked
+from rigd.console.output import Output
+from rigd.console.trouble import print_problems
+from rigd.logic.response import Response
+from rigd.model.protection import Condition, ConditionKind, Interlock
+from rigd.model.rig import RigDefinition
+
+STOP_STYLES = {"CUT": "red", "QUENCH": "yellow", "HOLD": "cyan"}
+
+
+def show_check(output: Output, found: Checked) -> None:
+    """Print all of it, the verdict last."""
+    output.say(Text.assemble((found.rig.title, "bold"), f"  ({found.rig.name})"))
+    if found.recipe is not None:
+        output.say(Text.assemble((found.recipe.title, "bold"), f"  ({found.recipe.name})"))
+    output.say("")
+    output.say(cause_and_effect(found.rig, found.responses))
+    output.say(_footnote(found))
+    if found.problems:
+        output.say("")
+        print_problems(output.people, found.problems)
+    verdict = ("fit to run", "bold green") if found.fit else ("NOT fit to run", "bold red")
+    output.say(Text.assemble("\n", verdict))
+
+
+def cause_and_effect(rig: RigDefinition, times: tuple[Response, ...]) -> RenderableType:
+    """Every interlock of the rig file: what trips it, what it does, how fast, against how much time there is."""
+    known = {response.interlock: response for response in times}
+    table = Table(
+        box=box.SIMPLE_HEAD, pad_edge=False, title="cause and effect", title_justify="left", title_style="bold"
+    )
+    table.add_column("interlock", overflow="fold")
+    table.add_column("trips when", overflow="fold")
+    table.add_column("vote")
+    table.add_column("does")
+    table.add_column("answers in", justify="right")
+    table.add_column("time there is", justify="right")
+    table.add_column("margin", justify="right")
+    for lock in rig.interlocks:
+        if not lock.built_in:
+            table.add_row(*_row(rig, lock, known.get(lock.id)))
+    return table
+
+
+def _row(rig: RigDefinition, lock: Interlock, response: Response | None) -> list[RenderableType]:
+    stop = lock.stop.name
+    cells: list[RenderableType] = [lock.id, "\n".join(condition_words(rig, cause) for cause in lock.causes)]
+    cells += [lock.architecture, Text(stop.lower(), style=STOP_STYLES.get(stop, ""))]
+    if response is None:
+        return [*cells, "–", "–", "–"]
+    cells.append(f"{response.budget.total_s:.2f} s")
+    if response.margin is None:
+        return [*cells, "not known", "–"]
+    style = "green" if response.fit else "bold red"
+    return [*cells, f"{response.safety_s:.2f} s", Text(f"{response.margin:.2f}", style=style)]
+
+
+def condition_words(rig: RigDefinition, cause: Condition) -> str:
+    """A condition as people say it: ``PT-1 above 8 bar``."""
+    unit = next((tag.unit for tag in rig.tags if tag.id == cause.tag), "")
+    limit = f"{cause.limit:g} {unit}".strip()
+    words = {
+        ConditionKind.HIGH: f"above {limit}",
+        ConditionKind.LOW: f"below {limit}",
+        ConditionKind.RATE: f"rises faster than {limit}/s",
+        ConditionKind.DEVIATION: f"away from {cause.reference} by {limit.replace('degC', 'K')}",
+        ConditionKind.EQUALS: f"is {limit}",
+        ConditionKind.DIFFERS: f"is not {limit}",
+        ConditionKind.MISMATCH: "not where it was told to be",
+        ConditionKind.BAD: "cannot be believed",
+        ConditionKind.LINK: "does not answer",
+        ConditionKind.POWER_CYCLED: "restarted or is another device",
+        ConditionKind.FAULT: "failed",
+    }
+    return f"{cause.tag} {words[cause.kind]}"
+
+
+def _footnote(found: Checked) -> Text:
+    built_in = sum(lock.built_in for lock in found.rig.interlocks)
+    compliance = sum(pump.compliance_mL_bar for pump in found.rig.pumps)
+    words = (
+        f"{built_in} built-in interlocks besides (links, stalls, valves, restarts, faults of the daemon).",
+        "Time there is: from the limit to the weakest rating with everything blocked, at",
+        f"{found.flow_max_mL_min:g} mL/min and {compliance:g} mL/bar as declared; at most half may be used, so the",
+        "margin must be at least 1. This bounds the design and promises nothing: the relief device comes first.",
+    )
+    return Text(" ".join(words), style="dim")

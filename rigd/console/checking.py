@@ -1,0 +1,77 @@
+"""What ``rigd check`` finds out: files, drivers, plan, and response times, as one value."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from pathlib import Path
+
+from rigd.adapters.plugins import driver_family
+from rigd.config.load import load_pair
+from rigd.console.trouble import problem_facts
+from rigd.logic.response import Response, largest_flow_mL_min, responses
+from rigd.model.problems import Problem, Severity
+from rigd.model.recipe import Recipe
+from rigd.model.rig import RigDefinition
+
+
+@dataclass(frozen=True, slots=True)
+class Checked:
+    """The findings. ``plan`` is ``None`` without a recipe."""
+
+    rig: RigDefinition
+    recipe: Recipe | None
+    problems: tuple[Problem, ...]
+    responses: tuple[Response, ...]
+    flow_max_mL_min: float
+
+    @property
+    def fit(self) -> bool:
+        """No error among the problems."""
+        return all(problem.severity is not Severity.ERROR for problem in self.problems)
+
+    def facts(self) -> dict[str, object]:
+        """The keys that ``check --json`` promises."""
+        return {
+            "fit": self.fit,
+            "rig": self.rig.name,
+            "recipe": self.recipe.name if self.recipe else None,
+            "digests": {"rig": self.rig.digest, "recipe": self.recipe.digest if self.recipe else None},
+            "problems": [problem_facts(problem) for problem in self.problems],
+            "interlocks": [response_facts(response) for response in self.responses],
+        }
+
+
+def check_files(rig_path: Path, recipe_path: Path | None) -> Checked:
+    """Load, make the drivers, plan, compare response times. Raises ``ConfigError`` or ``PluginError``."""
+    pair = load_pair(rig_path, recipe_path)
+    for device in pair.rig.devices:
+        driver_family(device.driver).make(device)
+    found = responses(pair.rig, pair.recipe)
+    problems = [*pair.warnings, *(_too_slow(response, str(rig_path)) for response in found if not response.fit)]
+    return Checked(pair.rig, pair.recipe, tuple(problems), found, largest_flow_mL_min(pair.rig, pair.recipe))
+
+
+def response_facts(response: Response) -> Mapping[str, object]:
+    """One interlock; ``margin`` is half the process safety time over the response time, fit from 1 up."""
+    return {
+        "id": response.interlock,
+        "stop": response.stop.name.lower(),
+        "response_time_s": round(response.budget.total_s, 4),
+        "process_safety_time_s": response.safety_s,
+        "margin": response.margin,
+        "flow_max_mL_min": response.flow_max_mL_min,
+    }
+
+
+def _too_slow(response: Response, rig_path: str) -> Problem:
+    """A recipe that an interlock cannot answer in time is not fit to run."""
+    assert response.safety_s is not None
+    return Problem(
+        "response-slow",
+        f"{response.interlock} answers in {response.budget.total_s:.2f} s, but at the largest flow only"
+        f" {response.safety_s:.2f} s pass between its limit and the rating; at most half of that may be used",
+        f"keep every total flow below {response.flow_max_mL_min:.3g} mL/min, or lower the limit, or poll faster",
+        file=rig_path,
+        key=f"interlocks[{response.interlock}]",
+    )

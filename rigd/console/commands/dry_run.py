@@ -1,0 +1,59 @@
+"""``rigd dry-run``: rehearse a recipe on the simulated rig in virtual time."""
+
+from __future__ import annotations
+
+import time
+from pathlib import Path
+
+import click
+
+from rigd.console.fault_words import FORM, parse_fault
+from rigd.console.output import Output, json_option
+
+
+@click.command(name="dry-run")
+@click.argument("rig", type=click.Path(path_type=Path))
+@click.argument("recipe", type=click.Path(path_type=Path))
+@click.option("--seed", type=click.IntRange(min=1), default=None, help="Seed of noise; the rig file's if not given.")
+@click.option("--fault", "faults", multiple=True, metavar="FAULT", help=f"Inject a fault: {FORM}. May be repeated.")
+@click.option("--out", type=click.Path(path_type=Path, file_okay=False), help="Keep journal and report in this folder.")
+@json_option
+@click.pass_obj
+def dry_run(
+    output: Output, rig: Path, recipe: Path, seed: int | None, faults: tuple[str, ...], out: Path | None
+) -> int:
+    """Rehearse RECIPE on the simulated RIG, much faster than the clock.
+
+    Exit 0: done. 1: tripped, or did not finish. 2: a file is wrong.
+    """
+    specs = tuple(parse_fault(text) for text in faults)
+    from rigd.app import DrySettings
+    from rigd.app import dry_run as rehearse
+    from rigd.console.rehearsal import dry_facts, rehearsed, show_progress
+    from rigd.report.summary import summary
+
+    began = time.monotonic()
+    journal = _journal(out) if out is not None else None
+    with show_progress(output) as watch:
+        done = rehearse(rig, recipe, DrySettings(seed=seed or 0, faults=specs, journal=journal, watch=watch))
+    wall_s = time.monotonic() - began
+    data = rehearsed(done, out)
+    output.document(dry_facts(done, data, seed or 0, wall_s))
+    output.say(summary(data))
+    output.say(
+        f"[dim]{done.result.end_ns / 1e9 / max(wall_s, 1e-9):.0f} × real time, digest {done.result.digest[:16]}[/]"
+    )
+    if out is not None:
+        from rigd.report.page import write_page
+
+        output.say(f"report: {write_page(data)}")
+    return done.result.exit_code
+
+
+def _journal(out: Path) -> Path:
+    """Where the journal goes; ``UsageError`` when there is one already."""
+    out.mkdir(parents=True, exist_ok=True)
+    path = out / "run.sqlite"
+    if path.exists():
+        raise click.UsageError(f"--out: {out} holds a run already; name another folder")
+    return path

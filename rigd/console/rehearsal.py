@@ -1,0 +1,95 @@
+"""A dry run as data for the summary, the report and ``--json``."""
+
+from __future__ import annotations
+
+import contextlib
+from collections.abc import Callable, Iterator
+from pathlib import Path
+from typing import Any
+
+from rigd.app import DryRun
+from rigd.console.output import Output
+from rigd.console.watch_view import left_words
+from rigd.logic import scan
+from rigd.report.collect import phase_spans, read_run
+from rigd.report.data import RunData
+from rigd.report.facts import alarm_facts, point_facts, trip_facts
+from rigd.report.points import point_rows
+
+Watch = Callable[[int, scan.CoreState], None]
+
+
+def rehearsed(done: DryRun, folder: Path | None) -> RunData:
+    """The run as the report sees it: from its journal when one was kept, else from its events (no curves)."""
+    result, program = done.result, done.program
+    if folder is not None:
+        return read_run(folder, program.rig, program.recipe)
+    end_s = result.end_ns / 1e9
+    events = tuple(result.events)
+    return RunData(
+        id="dry run",
+        folder="",
+        title=program.rig.title,
+        recipe_title=program.recipe.title,
+        simulated=True,
+        pace=1.0,
+        outcome=result.outcome,
+        outcome_text=result.text,
+        started_utc="",
+        ended_utc="",
+        duration_s=end_s,
+        traces={},
+        phases=phase_spans(events, end_s),
+        points=point_rows(events, {}, program.rig, program.recipe),
+        events=events,
+        used_mL=used_mL(done),
+        rig=program.rig,
+        recipe=program.recipe,
+    )
+
+
+def used_mL(done: DryRun) -> dict[str, float]:
+    """mL of each liquid as the core's own ledger has it at the end."""
+    shown = scan.snapshot(done.program, done.result.state, done.result.end_ns)
+    used = shown.get("used_mL")
+    return {str(name): float(volume) for name, volume in used.items()} if isinstance(used, dict) else {}
+
+
+def dry_facts(done: DryRun, data: RunData, seed: int, wall_s: float) -> dict[str, object]:
+    """The keys that ``dry-run --json`` promises."""
+    result = done.result
+    return {
+        "outcome": result.outcome,
+        "text": result.text,
+        "simulated": True,
+        "seed": seed or done.program.rig.simulation.seed,
+        "digest": result.digest,
+        "duration_s": result.end_ns / 1e9,
+        "wall_s": wall_s,
+        "points": [point_facts(point) for point in data.points],
+        "peak": dict(result.peak),
+        "used_mL": used_mL(done),
+        "trips": trip_facts(result.events),
+        "alarms": alarm_facts(result.events),
+        "scans": result.scans,
+    }
+
+
+@contextlib.contextmanager
+def show_progress(output: Output) -> Iterator[Watch | None]:
+    """A line with phase and process time while the rehearsal goes on, on a terminal only."""
+    if not output.errors.is_terminal:
+        yield None
+        return
+    with output.errors.status("rehearsing ...") as status:
+
+        def watch(now_ns: int, state: scan.CoreState) -> None:
+            if now_ns // 1_000_000_000 % 30 == 0:
+                status.update(f"rehearsing: {left_words(now_ns / 1e9)} of process time{_phase(state)}")
+
+        yield watch
+
+
+def _phase(state: Any) -> str:
+    phase = getattr(getattr(state, "conduct", None), "phase", None)
+    return f", {phase}" if isinstance(phase, str) else ""
