@@ -1,7 +1,7 @@
 """Puts concrete parts together: the only place that knows them all.
 
 ``start_run`` turns ``rigd run`` into the guard of a run, the guard starts ``control_main``, and that builds the live
-shell. ``dry_run`` and ``serve_simulator`` build the other two ways to move a rig.
+shell. ``dry_run`` builds the rehearsal.
 """
 
 from __future__ import annotations
@@ -25,18 +25,19 @@ from rigd.adapters.clock import PacedClock, boot_id, suspended_ns, wall_ns
 from rigd.adapters.door_server import DoorServer
 from rigd.adapters.journal_sqlite import SqliteJournal
 from rigd.adapters.open_link import open_link
-from rigd.adapters.places import SIMULATED, Daemon, announce, door_path, rig_folder, simulated_ports, write_json
-from rigd.adapters.plugins import driver_family, plant_maker, simulator_maker
+from rigd.adapters.places import SIMULATED, Daemon, announce, door_path, simulated_ports, write_json
+from rigd.adapters.plugins import driver_family, plant_maker
 from rigd.adapters.port_lock import lock_ports, unlock
-from rigd.config import load_pair, load_rig
+from rigd.config import load_pair
 from rigd.logic.program import Program, RunOptions, compile_program
-from rigd.logic.scan import CoreState, RunEnd
+from rigd.logic.run_end import RunEnd
+from rigd.logic.scan import CoreState
 from rigd.model.devices import LastWill, LinkSpec
 from rigd.model.errors import JournalError, LinkError, RigError
 from rigd.model.recipe import Recipe
 from rigd.model.rig import RigDefinition
 from rigd.ports.driver import Driver
-from rigd.ports.plant import FaultSpec, Plant, SimulatorOptions
+from rigd.ports.plant import FaultSpec, Plant
 from rigd.runtime.dry import DryOptions, DryResult, DryShell
 from rigd.runtime.live import Live, Surroundings
 from rigd.runtime.permission import Permission
@@ -328,16 +329,6 @@ def dry_run(rig_path: Path, recipe_path: Path, settings: DrySettings = DrySettin
     if journal is not None:
         journal.close(result.outcome)
     return DryRun(program, plant, result)
-
-
-def serve_simulator(
-    rig_path: Path, pace: float = 1.0, transport: str = "pty", seed: int = 0, faults: tuple[FaultSpec, ...] = ()
-) -> int:
-    """Serve the simulated rig until a signal; returns the exit code."""
-    rig = load_rig(rig_path)
-    folder = str(rig_folder(rig.name))
-    options = SimulatorOptions(folder, pace, transport, seed or rig.simulation.seed, faults)
-    return simulator_maker().serve(rig, options)
 
 
 if __name__ == "__main__":

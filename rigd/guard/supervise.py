@@ -3,10 +3,9 @@
 House rules. (1) Control has permission as long as its tickets come in time (not late, not early) and prove their scans
 (``rigd.model.ticket``). (2) Control may end by itself only after it has said so: ``D <exit code> <sentence>``. (3) In
 every other case it is killed first, so that it cannot send anything after the last wills. (4) Signals are control's
-business: the first asks for an orderly stop, the second for a cut; the guard only hands them on. (5) A closed terminal
-(SIGHUP) ends nothing: the run goes on and is reached through its door.
-
-The pipe that control reads nothing from (``RIGD_LIFE_FD``) tells it, by its end, that the guard is gone.
+business (first: orderly stop, second: cut); the guard hands them on. (5) A closed terminal (SIGHUP) ends nothing.
+(6) The
+pipe of ``RIGD_LIFE_FD``, from which control reads nothing, tells it by its end that the guard is gone.
 """
 
 from __future__ import annotations
@@ -23,37 +22,9 @@ from pathlib import Path
 from typing import Any
 
 from rigd.guard.wills import Log, send_wills
-from rigd.model.ticket import Ticket, after_scan, read_ticket
+from rigd.model.ticket import Window, read_ticket
 
-SCANS_PER_TICKET_MAX = 100_000
-CLOCK_SKEW_NS = 100_000_000
-FAREWELL_S = 10.0
-
-
-class Window:
-    """Judges tickets: ``first_s`` to the first one, then between ``early_s`` and ``late_s`` from one to the next."""
-
-    def __init__(self, first_s: float, early_s: float, late_s: float) -> None:
-        self._early_ns, self._late_ns = int(early_s * 1e9), int(late_s * 1e9)
-        self._last = Ticket(0, 0, 0)
-        self.deadline_ns = time.monotonic_ns() + int(first_s * 1e9)
-
-    def judge(self, ticket: Ticket, now_ns: int) -> str:
-        """ "" for a good ticket, else what is wrong with it."""
-        last, self._last = self._last, ticket
-        if not 0 < ticket.scan - last.scan <= SCANS_PER_TICKET_MAX:
-            return f"its ticket for scan {ticket.scan} does not follow scan {last.scan}"
-        proof = last.proof
-        for scan in range(last.scan + 1, ticket.scan + 1):
-            proof = after_scan(proof, scan)
-        if proof != ticket.proof:
-            return f"its ticket for scan {ticket.scan} does not prove the order of its work"
-        if ticket.stamp_ns > now_ns + CLOCK_SKEW_NS:
-            return "its ticket comes from the future"
-        if last.scan and ticket.stamp_ns - last.stamp_ns < self._early_ns:
-            return f"its ticket came {(ticket.stamp_ns - last.stamp_ns) / 1e6:.0f} ms after the one before, too early"
-        self.deadline_ns = ticket.stamp_ns + self._late_ns
-        return ""
+FAREWELL_S = 15.0
 
 
 class Guard:
@@ -64,18 +35,19 @@ class Guard:
         self.folder = Path(self.plan["folder"])
         self.log = Log(self.folder / "guard.log")
         self.signals = 0
+        self.control: subprocess.Popen[bytes] | None = None
+        for number in (signal.SIGINT, signal.SIGTERM):
+            signal.signal(number, self._signal)
+        signal.signal(signal.SIGHUP, signal.SIG_IGN)
         self.end: tuple[int, str] | None = None
         self.wrong = ""
-        self._window = Window(self.plan["first_s"], self.plan["early_s"], self.plan["late_s"])
+        self._window = Window(self.plan["first_s"], self.plan["early_s"], self.plan["late_s"], time.monotonic_ns())
         self._buffer = b""
         self.control, self._tickets, self._life = self._start_control(plan_path)
         self.helpers: list[subprocess.Popen[bytes]] = []
         for command in self.plan["helpers"]:
             with contextlib.suppress(OSError):
                 self.helpers.append(self._start(command))
-        for number in (signal.SIGINT, signal.SIGTERM):
-            signal.signal(number, self._signal)
-        signal.signal(signal.SIGHUP, signal.SIG_IGN)
 
     def watch(self) -> None:
         """Returns when control said its end (``end``), or with the reason why it may not go on (``wrong``)."""
@@ -88,11 +60,11 @@ class Guard:
 
     def finish_control(self) -> None:
         """Wait a little for a control that said its end, kill any other."""
+        assert self.control is not None
         if self.end is not None and not self.wrong:
             with contextlib.suppress(subprocess.TimeoutExpired):
                 self.control.wait(FAREWELL_S)
-        with contextlib.suppress(ProcessLookupError):
-            self.control.kill()
+        self.control.kill()
         self.log.write(f"control ended with status {self.control.wait()}")
 
     def finish_helpers(self) -> None:
@@ -136,7 +108,7 @@ class Guard:
 
     def _signal(self, number: int, _frame: object) -> None:
         self.signals += 1
-        with contextlib.suppress(ProcessLookupError):
+        if self.control is not None:
             self.control.send_signal(number)
 
     def _read(self) -> None:
@@ -189,6 +161,5 @@ def _take_over(one: Guard) -> tuple[int, str]:
 
 
 def _say(sentence: str) -> None:
-    if sentence:
-        with contextlib.suppress(OSError):  # the terminal may be gone
-            print(f"rigd: {sentence}", file=sys.stderr, flush=True)  # noqa: T201 - the guard has no console room
+    with contextlib.suppress(OSError):  # the terminal may be gone
+        print(f"rigd: {sentence}", file=sys.stderr, flush=True)  # noqa: T201 - the guard has no console room

@@ -13,9 +13,7 @@ from typing import Any
 import serial
 
 PAUSE_S = (0.1, 0.2, 0.5, 1.0, 2.0)
-LOG_LINES = 400
-"""Lines in full; from then on only every hundredth, so that a night of trying fills no disk."""
-
+LOG_LINES = 400  # in full; from then on only every hundredth, so that a night of trying fills no disk
 PARITY = {"none": serial.PARITY_NONE, "even": serial.PARITY_EVEN, "odd": serial.PARITY_ODD}
 
 
@@ -41,8 +39,9 @@ def send_wills(wills: list[dict[str, Any]], log: Log, give_up: Callable[[], bool
         will["device"]: {"confirmed": False, "attempts": 0, "detail": ""} for will in wills
     }
     ports: dict[str, serial.Serial] = {}
-    turn = 0
+    turn = -1
     while True:
+        turn += 1
         for will in wills:
             state = states[will["device"]]
             if not state["confirmed"]:
@@ -53,7 +52,6 @@ def send_wills(wills: list[dict[str, Any]], log: Log, give_up: Callable[[], bool
         if give_up() or all(state["confirmed"] for state in states.values()):
             break
         time.sleep(PAUSE_S[min(turn, len(PAUSE_S) - 1)])
-        turn += 1
     for port in ports.values():
         with contextlib.suppress(OSError):
             port.close()

@@ -9,7 +9,7 @@ from collections.abc import Sequence
 from dataclasses import dataclass, field
 from itertools import count
 
-from rigd.logic.scan import RunEnd
+from rigd.logic.run_end import RunEnd
 from rigd.model.events import Event, EventKind
 from rigd.model.orders import Request, Verb
 from rigd.ports.clock import Clock

@@ -8,7 +8,7 @@ from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field
 
 from rigd.logic.program import Program
-from rigd.logic.scan import RunEnd
+from rigd.logic.run_end import RunEnd
 from rigd.model.devices import LinkSpec
 from rigd.model.events import Event
 from rigd.model.orders import Request, Verb

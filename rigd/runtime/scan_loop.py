@@ -12,6 +12,7 @@ from collections.abc import Callable, Mapping, Sequence
 
 from rigd.logic import scan as core
 from rigd.logic.program import Program
+from rigd.logic.run_end import RunEnd
 from rigd.model.events import Event
 from rigd.model.orders import Order, Result
 from rigd.ports.clock import Clock
@@ -56,9 +57,9 @@ class ScanLoop:
         """The core's own view of the rig now."""
         return core.snapshot(self._program, self._state, self._clock.now_ns())
 
-    async def run(self) -> core.RunEnd:
+    async def run(self) -> RunEnd:
         """Scan until the run is over and its aftermath is recorded."""
-        end: core.RunEnd | None = None
+        end: RunEnd | None = None
         last_ns = last_s = 0.0
         loop = asyncio.get_running_loop()
         while end is None or self._clock.now_ns() < last_ns or loop.time() < last_s:

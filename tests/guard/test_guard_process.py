@@ -19,8 +19,7 @@ from typing import Any
 
 import pytest
 
-from rigd.guard.supervise import Window
-from rigd.model.ticket import STAGES, Ticket, after_scan, mark, read_ticket
+from rigd.model.ticket import STAGES, Ticket, Window, after_scan, mark, read_ticket
 
 FAKE_CONTROL = """
 import os, signal, sys, time
@@ -260,15 +259,15 @@ def chain(count: int) -> list[int]:
 
 def test_a_ticket_covers_the_scans_before_it_and_any_other_order_of_stages_fails() -> None:
     proofs = chain(10)
-    window = Window(5.0, 0.05, 1.0)
     now_ns = time.monotonic_ns()
+    window = Window(5.0, 0.05, 1.0, now_ns)
     assert window.judge(Ticket(1, now_ns, proofs[1]), now_ns) == ""
     assert window.judge(Ticket(10, now_ns + 60_000_000, proofs[10]), now_ns + 60_000_000) == ""
     for left_out in STAGES:
         proof = proofs[1]
         for stage in STAGES:
             proof = proof if stage == left_out else mark(proof, 2, stage)
-        other = Window(5.0, 0.05, 1.0)
+        other = Window(5.0, 0.05, 1.0, now_ns)
         assert other.judge(Ticket(1, now_ns, proofs[1]), now_ns) == ""
         assert "prove" in other.judge(Ticket(2, now_ns + 100_000_000, proof), now_ns + 100_000_000)
 
@@ -279,7 +278,7 @@ def test_repeated_old_and_future_tickets_fail() -> None:
         (Ticket(2, now_ns + 100_000_000, proofs[2]), "does not follow"),
         (Ticket(3, now_ns + 10_000_000_000, proofs[3]), "future"),
     ):
-        window = Window(5.0, 0.05, 1.0)
+        window = Window(5.0, 0.05, 1.0, now_ns)
         assert window.judge(Ticket(2, now_ns, proofs[2]), now_ns) == ""
         assert words in window.judge(ticket, now_ns + 100_000_000)
 
