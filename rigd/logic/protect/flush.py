@@ -18,7 +18,7 @@ from rigd.logic.demand import OneShot, PumpDemand
 from rigd.logic.protect.ledger import Content, Count, Ledger
 from rigd.logic.protect.signals import Signals, is_online
 from rigd.model.devices import VALVE_LOST, PumpState
-from rigd.model.orders import Action
+from rigd.model.orders import Action, Result
 from rigd.model.rig import Pump
 from rigd.model.samples import Quality
 
@@ -33,8 +33,11 @@ FILL_SLACK_NS = 5_000_000_000
 RESERVE_S = 5.0
 """A pump whose other syringe holds reagent stops when its solvent lasts for less than this."""
 
-TOLERANCE = 0.02
-"""Part of the stroke by which a filling may fall short and still be complete."""
+REFUSED_NS = 1_000_000_000
+"""A one-shot that the pump refused is asked for again, as a new one, after this time."""
+
+SHORT_mL = 0.01
+"""By how much a filling may fall short and still be complete; counters are read with three decimals."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -166,8 +169,12 @@ def _pump(scene: Scene, flush: Flush, pump: Pump, count: Count) -> PumpDemand | 
 
 def _is_last(flush: Flush, pump: Pump, count: Count) -> bool:
     """True when the next thing out of the pump could be reagent."""
-    reserve_mL = flush.rates[pump.id] * RESERVE_S / 60.0
+    reserve_mL = _reserve_mL(flush, pump)
     return pump.syringes == 2 and count.standby is Content.REAGENT and count.level_mL < reserve_mL
+
+
+def _reserve_mL(flush: Flush, pump: Pump) -> float:
+    return flush.rates[pump.id] * RESERVE_S / 60.0
 
 
 def _to_fill_mL(scene: Scene, flush: Flush, pump: Pump, count: Count, flows: bool) -> float:
@@ -176,21 +183,23 @@ def _to_fill_mL(scene: Scene, flush: Flush, pump: Pump, count: Count, flows: boo
     short = left - (count.level_mL if flows else 0.0)
     if _filling_syringe(pump, count) is not Content.EMPTY or (flows and short <= 0):
         return 0.0
-    volume = min(pump.stroke_mL, max(short, 0.1 * pump.stroke_mL))
+    volume = min(pump.stroke_mL, max(short + 2 * _reserve_mL(flush, pump), 0.1 * pump.stroke_mL))
     return volume if _has_solvent(scene.program, scene.ledger, pump, volume) else 0.0
 
 
 def _is_over(scene: Scene, pump: Pump, count: Count, given: OneShot) -> bool:
-    """True when a filling or change-over has been seen in the counters, or should have been long ago."""
+    """True when a filling or change-over shows in the counters, was refused, or should be long done."""
     told = scene.memory.told.get((pump.id, Aspect.ONCE))
     if told is None or told.ticket != given.ticket:
         return False
+    if told.result is Result.REFUSED and scene.now_ns >= told.answered_ns + REFUSED_NS:
+        return True
     if given.action is Action.SWAP:
         return count.active is Content.SOLVENT
     slack_ns = FILL_SLACK_NS + scene.program.options.stale_floor_ns
     if scene.now_ns > told.order.t_ns + int(120e9 * given.value / pump.refill_rate_mL_min) + slack_ns:
         return True
-    enough_mL = given.value - TOLERANCE * pump.stroke_mL
+    enough_mL = given.value - SHORT_mL
     if pump.syringes == 2:
         return count.standby_mL >= enough_mL
     state = scene.signals.samples.get(scene.program.feedback.get((pump.id, "state"), ""))
