@@ -3,19 +3,25 @@
     C_i dP_i/dt = q_i - sum_e Q_e,     Q_e = G_e (P_a - P_b)           (tube, bed: G = 1/resistance)
                                        Q_e = G_e (P_a - P_b - crack)   (check valve, back-pressure regulator: never < 0)
 
-Integrated by the two-stage, stiffly accurate, L-stable diagonally implicit Runge-Kutta method with gamma = 1 -
-1/sqrt(2)
-(R. Alexander, SIAM J. Numer. Anal. 14 (1977) 1006-1021). Stages and volumes use the same flows, so liquid is
-conserved to
-rounding at any step; the step is halved until the two stages agree to the tolerance. A dead-headed pump gives exactly
-dP/dt = Q/C. Any coherent units; the plant uses Pa, m3, s.
+Integrated by the two-stage, stiffly accurate, L-stable diagonally implicit Runge-Kutta method with gamma =
+1 - 1/sqrt(2) (R. Alexander, SIAM J. Numer. Anal. 14 (1977) 1006-1021). Stages and volumes use the same flows, so liquid
+is conserved to rounding at any step; the step is shortened until the two stages agree to the tolerance. A dead-headed
+pump gives exactly dP/dt = Q/C. Any coherent units; the plant uses Pa, m3, s.
+
+Tables instead of many arrays keep the just-in-time compiler quick. Rows of ``node``: see ``PRESSURE`` .. ``BASE``; of
+``edge``: ``CONDUCTANCE`` .. ``VOLUME``; of ``link`` (integers): ``FROM`` .. ``TRIED``.
 """
 
 from __future__ import annotations
 
 import numpy as np
 
-from rigd_sim.physics.compiled import Floats, Ints, compiled
+from rigd_sim.physics.compiled import Floats, Ints, compiled, inner
+
+PRESSURE, COMPLIANCE, SOURCE, PEAK, CAPACITY, BASE, FIRST, SECOND, NODE_ROWS = 0, 1, 2, 3, 4, 5, 6, 7, 8
+CONDUCTANCE, CRACK, VOLUME, EDGE_ROWS = 0, 1, 2, 3
+FROM, TO, OPEN, OPEN_FIRST, OPEN_SECOND, LINK_ROWS = 0, 1, 2, 3, 4, 5
+LAG, SHOWN, SENSOR_ROWS = 0, 1, 2
 
 GAMMA = 1.0 - 0.5**0.5
 TOLERANCE_PA = 100.0
@@ -23,184 +29,152 @@ TOLERANCE_RELATIVE = 5e-4
 SMALLEST_STEP_S = 1e-4
 
 
-@compiled
-def _assemble(
-    matrix: Floats,
-    ea: Ints,
-    eb: Ints,
-    conductance: Floats,
-    crack: Floats,
-    is_open: Ints,
-    capacity: Floats,
-    ground: Ints,
-) -> None:
-    """Fill the stage matrix C/(gamma h) + L; a ground node keeps its pressure."""
-    nodes = capacity.shape[0]
+@inner
+def _assemble(matrix: Floats, node: Floats, edge: Floats, link: Ints, ground: Ints, state: int, out: int) -> None:
+    """Fill the stage matrix C/(gamma h) + L and the right side in row ``out``; a ground node keeps its pressure."""
+    nodes = ground.shape[0]
     for i in range(nodes):
         for j in range(nodes):
             matrix[i, j] = 0.0
-        matrix[i, i] = 1.0 if ground[i] else capacity[i]
-    for e in range(ea.shape[0]):
-        g = conductance[e]
-        if g == 0.0 or (crack[e] >= 0.0 and not is_open[e]):
+        if ground[i]:
+            matrix[i, i] = 1.0
+            node[out, i] = node[PRESSURE, i]
+        else:
+            matrix[i, i] = node[CAPACITY, i]
+            node[out, i] = node[CAPACITY, i] * node[BASE, i] + node[SOURCE, i]
+    for e in range(edge.shape[1]):
+        g = edge[CONDUCTANCE, e]
+        crack = edge[CRACK, e]
+        if g == 0.0 or (crack >= 0.0 and not link[state, e]):
             continue
-        a, b = ea[e], eb[e]
+        a = link[FROM, e]
+        b = link[TO, e]
+        push = g * crack if crack > 0.0 else 0.0
         if not ground[a]:
             matrix[a, a] += g
             matrix[a, b] -= g
+            node[out, a] += push
         if not ground[b]:
             matrix[b, b] += g
             matrix[b, a] -= g
+            node[out, b] -= push
 
 
-@compiled
-def _factor(matrix: Floats) -> None:
-    """LU in place without pivoting: the matrix is diagonally dominant by construction."""
+@inner
+def _solve(matrix: Floats, node: Floats, out: int) -> None:
+    """Gaussian elimination in place without pivoting: the matrix is diagonally dominant by construction."""
     n = matrix.shape[0]
     for k in range(n):
         pivot = 1.0 / matrix[k, k]
         for i in range(k + 1, n):
-            if matrix[i, k] != 0.0:
-                factor = matrix[i, k] * pivot
-                matrix[i, k] = factor
+            factor = matrix[i, k] * pivot
+            if factor != 0.0:
                 for j in range(k + 1, n):
-                    if matrix[k, j] != 0.0:
-                        matrix[i, j] -= factor * matrix[k, j]
-
-
-@compiled
-def _substitute(matrix: Floats, x: Floats) -> None:
-    """Solve in place with the factors of ``_factor``."""
-    n = matrix.shape[0]
-    for i in range(n):
-        for j in range(i):
-            x[i] -= matrix[i, j] * x[j]
+                    matrix[i, j] -= factor * matrix[k, j]
+                node[out, i] -= factor * node[out, k]
     for i in range(n - 1, -1, -1):
         for j in range(i + 1, n):
-            x[i] -= matrix[i, j] * x[j]
-        x[i] /= matrix[i, i]
+            node[out, i] -= matrix[i, j] * node[out, j]
+        node[out, i] /= matrix[i, i]
 
 
-@compiled
-def _flow(e: int, p: Floats, ea: Ints, eb: Ints, conductance: Floats, crack: Floats, is_open: Ints) -> float:
-    """Flow through edge ``e`` at pressures ``p``, in the linear branch that was assumed."""
-    drop = p[ea[e]] - p[eb[e]]
-    if crack[e] >= 0.0:
-        return float(conductance[e] * (drop - crack[e])) if is_open[e] else 0.0
-    return float(conductance[e] * drop)
-
-
-@compiled
-def _stage(
-    base: Floats,
-    out: Floats,
-    matrix: Floats,
-    capacity: Floats,
-    source: Floats,
-    ea: Ints,
-    eb: Ints,
-    conductance: Floats,
-    crack: Floats,
-    is_open: Ints,
-    ground: Ints,
-) -> None:
+@inner
+def _stage(matrix: Floats, node: Floats, edge: Floats, link: Ints, ground: Ints, state: int, out: int) -> None:
     """One implicit stage; valves that open or shut by pressure are iterated until their state fits the answer."""
     for _ in range(6):
-        _assemble(matrix, ea, eb, conductance, crack, is_open, capacity, ground)
-        _factor(matrix)
-        for i in range(base.shape[0]):
-            out[i] = base[i] if ground[i] else capacity[i] * base[i] + source[i]
-        for e in range(ea.shape[0]):
-            if crack[e] > 0.0 and is_open[e]:
-                if not ground[ea[e]]:
-                    out[ea[e]] += conductance[e] * crack[e]
-                if not ground[eb[e]]:
-                    out[eb[e]] -= conductance[e] * crack[e]
-        _substitute(matrix, out)
-        changed = False
-        for e in range(ea.shape[0]):
-            if crack[e] >= 0.0:
-                wanted = 1 if out[ea[e]] - out[eb[e]] > crack[e] else 0
-                if wanted != is_open[e]:
-                    is_open[e] = wanted
-                    changed = True
+        _assemble(matrix, node, edge, link, ground, state, out)
+        _solve(matrix, node, out)
+        changed = 0
+        for e in range(edge.shape[1]):
+            if edge[CRACK, e] >= 0.0:
+                wanted = 1 if node[out, link[FROM, e]] - node[out, link[TO, e]] > edge[CRACK, e] else 0
+                if wanted != link[state, e]:
+                    link[state, e] = wanted
+                    changed = 1
         if not changed:
             return
 
 
-@compiled
-def _lag(p0: float, p1: float, y: float, h: float, lag: float) -> float:
-    """First-order instrument after ``h`` on a straight line from p0 to p1 (exact)."""
-    if lag <= 0.0:
-        return p1
-    slope = (p1 - p0) / h
-    return float(p1 - slope * lag + (y - p0 + slope * lag) * np.exp(-h / lag))
+@inner
+def _flow(node: Floats, edge: Floats, link: Ints, e: int, row: int, state: int) -> float:
+    """Flow through edge ``e`` at the pressures of ``row``, in the linear branch that was assumed."""
+    drop = node[row, link[FROM, e]] - node[row, link[TO, e]]
+    if edge[CRACK, e] >= 0.0:
+        drop = drop - edge[CRACK, e] if link[state, e] else 0.0
+    return float(edge[CONDUCTANCE, e] * drop)
+
+
+@inner
+def _accept(node: Floats, edge: Floats, link: Ints, sensor: Floats, sensor_node: Ints, h: float) -> None:
+    """Book the volumes of a step of ``h``, let sensors follow (exact on a straight line), take the new pressures."""
+    for e in range(edge.shape[1]):
+        first = _flow(node, edge, link, e, FIRST, OPEN_FIRST)
+        second = _flow(node, edge, link, e, SECOND, OPEN_SECOND)
+        edge[VOLUME, e] += h * ((1.0 - GAMMA) * first + GAMMA * second)
+        link[OPEN, e] = link[OPEN_SECOND, e]
+    for s in range(sensor_node.shape[0]):
+        p0 = node[PRESSURE, sensor_node[s]]
+        p1 = node[SECOND, sensor_node[s]]
+        lag = sensor[LAG, s]
+        behind = (p1 - p0) / h * lag
+        keep = np.exp(-h / lag) if lag > 0.0 else 0.0
+        sensor[SHOWN, s] = p1 - behind + (sensor[SHOWN, s] - p0 + behind) * keep
+    for i in range(node.shape[1]):
+        p = node[SECOND, i]
+        node[PRESSURE, i] = p
+        if p > node[PEAK, i]:
+            node[PEAK, i] = p
 
 
 @compiled
 def advance_pressures(
     h_total: float,
-    pressure: Floats,
-    compliance: Floats,
-    source: Floats,
-    ground: Ints,
-    ea: Ints,
-    eb: Ints,
-    conductance: Floats,
-    crack: Floats,
-    is_open: Ints,
-    volume: Floats,
-    peak: Floats,
-    sensor_node: Ints,
-    sensor_lag: Floats,
-    sensor_value: Floats,
     h_start: float,
+    node: Floats,
+    edge: Floats,
+    link: Ints,
+    ground: Ints,
+    sensor: Floats,
+    sensor_node: Ints,
+    matrix: Floats,
 ) -> float:
-    """Advance all pressures by ``h_total`` and add the volume that passed each edge to ``volume``.
+    """Advance all pressures by ``h_total`` and add the volume that passed each edge to its ``VOLUME`` row.
 
-    ``peak`` keeps the highest pressure of each node, ``sensor_value`` the lagged readings. Returns the last internal
-    step as a first guess for the next call.
+    ``PEAK`` keeps the highest pressure of each node, ``SHOWN`` the lagged readings. Returns the last internal step as a
+    first guess for the next call.
     """
-    n = pressure.shape[0]
-    matrix = np.empty((n, n))
-    capacity = np.empty(n)
-    base = np.empty(n)
-    stage_1 = np.empty(n)
-    stage_2 = np.empty(n)
-    open_1 = np.empty_like(is_open)
-    open_2 = np.empty_like(is_open)
+    n = node.shape[1]
     left = h_total
-    h = min(h_start, h_total)
+    h = h_start if h_start < h_total else h_total
     while left > 0.0:
         if h > left * (1.0 - 1e-9):
             h = left
+        for e in range(edge.shape[1]):
+            link[OPEN_FIRST, e] = link[OPEN, e]
         for i in range(n):
-            capacity[i] = compliance[i] / (GAMMA * h)
-        open_1[:] = is_open
-        _stage(pressure, stage_1, matrix, capacity, source, ea, eb, conductance, crack, open_1, ground)
+            node[CAPACITY, i] = node[COMPLIANCE, i] / (GAMMA * h)
+            node[BASE, i] = node[PRESSURE, i]
+        _stage(matrix, node, edge, link, ground, OPEN_FIRST, FIRST)
+        for e in range(edge.shape[1]):
+            link[OPEN_SECOND, e] = link[OPEN_FIRST, e]
         for i in range(n):
-            base[i] = pressure[i] + (1.0 - GAMMA) / GAMMA * (stage_1[i] - pressure[i])
-        open_2[:] = open_1
-        _stage(base, stage_2, matrix, capacity, source, ea, eb, conductance, crack, open_2, ground)
-        worst = 0.0
+            p = node[PRESSURE, i]
+            node[BASE, i] = p + (1.0 - GAMMA) / GAMMA * (node[FIRST, i] - p)
+        _stage(matrix, node, edge, link, ground, OPEN_SECOND, SECOND)
+        worst = 1e-3
         for i in range(n):
             # difference of the two slopes, scaled to a pressure: the leading error term of a first-order step
-            gap = abs((stage_2[i] - base[i]) - (stage_1[i] - pressure[i]))
-            worst = max(worst, 0.3 * gap / (TOLERANCE_PA + TOLERANCE_RELATIVE * abs(stage_2[i])))
+            gap = 0.3 * abs((node[SECOND, i] - node[BASE, i]) - (node[FIRST, i] - node[PRESSURE, i]))
+            error = gap / (TOLERANCE_PA + TOLERANCE_RELATIVE * abs(node[SECOND, i]))
+            if error > worst:
+                worst = error
+        scale = 0.8 / np.sqrt(worst)
         if worst > 1.0 and h > SMALLEST_STEP_S:
-            h = max(SMALLEST_STEP_S, h * max(0.2, 0.8 / np.sqrt(worst)))
+            h *= scale if scale > 0.2 else 0.2
+            if h < SMALLEST_STEP_S:
+                h = SMALLEST_STEP_S
             continue
-        for e in range(ea.shape[0]):
-            first = _flow(e, stage_1, ea, eb, conductance, crack, open_1)
-            second = _flow(e, stage_2, ea, eb, conductance, crack, open_2)
-            volume[e] += h * ((1.0 - GAMMA) * first + GAMMA * second)
-        for s in range(sensor_node.shape[0]):
-            i = sensor_node[s]
-            sensor_value[s] = _lag(pressure[i], stage_2[i], sensor_value[s], h, sensor_lag[s])
-        for i in range(n):
-            pressure[i] = stage_2[i]
-            peak[i] = max(peak[i], stage_2[i])
-        is_open[:] = open_2
+        _accept(node, edge, link, sensor, sensor_node, h)
         left -= h
-        h = h * min(4.0, 0.8 / np.sqrt(worst + 1e-3))
+        h *= scale if scale < 4.0 else 4.0
     return h

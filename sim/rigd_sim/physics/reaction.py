@@ -14,24 +14,27 @@ as many parts as that needs up to ``PARTS_MAX``; an extent never takes more than
 
 from __future__ import annotations
 
-import numpy as np
-
-from rigd_sim.physics.compiled import Floats, Ints, compiled
+from rigd_sim.physics.compiled import Floats, inner
 
 POWER, REVERSIBLE, LHHW = 0, 1, 2
 STIFF = 0.5
 PARTS_MAX = 400
+TRACE = 1e-3
+
+K_REF, T_REF, EA_OVER_R, HEAT, EQUILIBRIUM, LAW, ON_BED, HEAD = 0, 1, 2, 3, 4, 5, 6, 7
+"""Columns of the reaction table ``kin`` (one row per reaction); after ``HEAD`` follow four blocks as wide as the
+species: stoichiometry, orders, reverse orders, adsorption constants."""
 
 
-@compiled
-def _product(c: Floats, orders: Floats) -> float:
-    """prod c_i^n_i, with nothing below zero; whole powers without ``pow``."""
+@inner
+def _product(c: Floats, i: int, kin: Floats, r: int, at: int, species: int) -> float:
+    """prod c^n with the orders in the block of ``kin`` that begins at ``at``; nothing below zero."""
     result = 1.0
-    for i in range(orders.shape[0]):
-        n = orders[i]
+    for j in range(species):
+        n = kin[r, at + j]
         if n == 0.0:
             continue
-        x = max(c[i], 0.0)
+        x = c[i, j] if c[i, j] > 0.0 else 0.0
         if n == 1.0:
             result *= x
         elif n == 2.0:
@@ -41,121 +44,80 @@ def _product(c: Floats, orders: Floats) -> float:
     return result
 
 
-@compiled
-def rate(
-    c: Floats, k: float, law: int, orders: Floats, reverse: Floats, equilibrium: float, adsorption: Floats
-) -> float:
-    """Rate of one reaction [mol/(m3 s)] with rate constant ``k`` at temperature (and activity)."""
-    r = _product(c, orders)
-    if law != POWER and equilibrium > 0.0:
-        r -= _product(c, reverse) / equilibrium
-    if law == LHHW:
-        below = 1.0
-        for i in range(adsorption.shape[0]):
-            below += adsorption[i] * max(c[i], 0.0)
-        r /= below * below
-    return k * r
+@inner
+def rates(c: Floats, i: int, kin: Floats, species: int, work: Floats, out: int) -> None:
+    """Rates [mol/(m3 s)] of all reactions in row ``i`` with the constants in ``work[5]``, to row ``out`` of ``work``."""
+    for r in range(kin.shape[0]):
+        k = work[5, r]
+        value = 0.0
+        if k != 0.0:
+            value = _product(c, i, kin, r, HEAD + species, species)
+            if kin[r, LAW] != POWER and kin[r, EQUILIBRIUM] > 0.0:
+                value -= _product(c, i, kin, r, HEAD + 2 * species, species) / kin[r, EQUILIBRIUM]
+            if kin[r, LAW] == LHHW:
+                below = 1.0
+                for j in range(species):
+                    below += kin[r, HEAD + 3 * species + j] * (c[i, j] if c[i, j] > 0.0 else 0.0)
+                value /= below * below
+        work[out, r] = k * value
 
 
-@compiled
-def _rates(
-    c: Floats,
-    k: Floats,
-    law: Ints,
-    orders: Floats,
-    reverse: Floats,
-    equilibrium: Floats,
-    adsorption: Floats,
-    out: Floats,
-) -> None:
-    for j in range(k.shape[0]):
-        out[j] = 0.0
-        if k[j] != 0.0:
-            out[j] = rate(c, k[j], law[j], orders[j], reverse[j], equilibrium[j], adsorption[j])
+@inner
+def _shift(c: Floats, i: int, kin: Floats, species: int, work: Floats, row: int, factor: float) -> None:
+    """work[4] = c[i] + factor * nu^T work[row], species columns only."""
+    for j in range(species):
+        value = c[i, j]
+        for r in range(kin.shape[0]):
+            value += factor * kin[r, HEAD + j] * work[row, r]
+        work[4, j] = value
 
 
-@compiled
-def _shift(c: Floats, nu: Floats, extent: Floats, factor: float, out: Floats) -> None:
-    """out = c + factor * nu^T extent, species columns only."""
-    for i in range(c.shape[0]):
-        out[i] = c[i]
-    for j in range(extent.shape[0]):
-        if extent[j] != 0.0:
-            for i in range(nu.shape[1]):
-                out[i] += factor * nu[j, i] * extent[j]
-
-
-@compiled
-def _sensitivity(
-    c: Floats,
-    nu: Floats,
-    k: Floats,
-    law: Ints,
-    orders: Floats,
-    reverse: Floats,
-    equilibrium: Floats,
-    adsorption: Floats,
-) -> float:
+@inner
+def _sensitivity(c: Floats, i: int, kin: Floats, species: int, work: Floats) -> float:
     """Upper estimate of the fastest relaxation rate [1/s]: sum |dr/dc| |nu| for power laws."""
     fastest = 0.0
-    for j in range(k.shape[0]):
-        if k[j] == 0.0:
+    for r in range(kin.shape[0]):
+        k = work[5, r]
+        if k == 0.0:
             continue
-        forward = k[j] * _product(c, orders[j])
+        forward = k * _product(c, i, kin, r, HEAD + species, species)
         backward = 0.0
-        if law[j] != POWER and equilibrium[j] > 0.0:
-            backward = k[j] * _product(c, reverse[j]) / equilibrium[j]
-        for i in range(nu.shape[1]):
-            x = max(c[i], 1e-3)
-            fastest += abs(nu[j, i]) * (orders[j, i] * forward + reverse[j, i] * backward) / x
+        if kin[r, LAW] != POWER and kin[r, EQUILIBRIUM] > 0.0:
+            backward = k * _product(c, i, kin, r, HEAD + 2 * species, species) / kin[r, EQUILIBRIUM]
+        for j in range(species):
+            x = c[i, j] if c[i, j] > TRACE else TRACE
+            slope = kin[r, HEAD + species + j] * forward + kin[r, HEAD + 2 * species + j] * backward
+            fastest += abs(kin[r, HEAD + j]) * slope / x
     return fastest
 
 
-@compiled
-def react(
-    c: Floats,
-    dt: float,
-    nu: Floats,
-    k: Floats,
-    law: Ints,
-    orders: Floats,
-    reverse: Floats,
-    equilibrium: Floats,
-    adsorption: Floats,
-    extent: Floats,
-    work: Floats,
-) -> None:
-    """Advance one portion by ``dt``; ``c`` is updated, ``extent`` [mol/m3] per reaction is what happened.
+@inner
+def react(c: Floats, i: int, dt: float, kin: Floats, species: int, work: Floats) -> None:
+    """Advance row ``i`` of ``c`` by ``dt`` with the rate constants in ``work[5]``.
 
-    ``work`` is scratch of shape (6, max(columns, reactions)).
+    ``work`` has 7 rows as wide as columns or reactions; row 6 comes back with the extent [mol/m3] of each reaction.
     """
-    reactions = k.shape[0]
-    for j in range(reactions):
-        extent[j] = 0.0
-    stiffness = dt * _sensitivity(c, nu, k, law, orders, reverse, equilibrium, adsorption)
+    count = kin.shape[0]
+    for r in range(count):
+        work[6, r] = 0.0
+    stiffness = dt * _sensitivity(c, i, kin, species, work)
     if stiffness == 0.0:
         return
-    parts = int(min(max(np.ceil(stiffness / STIFF), 1.0), PARTS_MAX))
+    parts = int(stiffness / STIFF) + 1
+    if parts > PARTS_MAX:
+        parts = PARTS_MAX
     h = dt / parts
-    trial = work[4, : c.shape[0]]
-    k1, k2 = work[0, :reactions], work[1, :reactions]
-    k3, k4 = work[2, :reactions], work[3, :reactions]
     for _ in range(parts):
-        _rates(c, k, law, orders, reverse, equilibrium, adsorption, k1)
-        _shift(c, nu, k1, 0.5 * h, trial)
-        _rates(trial, k, law, orders, reverse, equilibrium, adsorption, k2)
-        _shift(c, nu, k2, 0.5 * h, trial)
-        _rates(trial, k, law, orders, reverse, equilibrium, adsorption, k3)
-        _shift(c, nu, k3, h, trial)
-        _rates(trial, k, law, orders, reverse, equilibrium, adsorption, k4)
-        for j in range(reactions):
-            step = h * (k1[j] + 2.0 * k2[j] + 2.0 * k3[j] + k4[j]) / 6.0
-            for i in range(nu.shape[1]):
-                used = -nu[j, i] * step
-                if used > c[i] > 0.0:
-                    step *= c[i] / used
-                elif used > 0.0 and c[i] <= 0.0:
-                    step = 0.0
-            extent[j] += step
-            for i in range(nu.shape[1]):
-                c[i] += nu[j, i] * step
+        for stage in range(4):
+            factor = 0.0 if stage == 0 else (h if stage == 3 else 0.5 * h)
+            _shift(c, i, kin, species, work, stage - 1 if stage > 0 else 0, factor)
+            rates(work, 4, kin, species, work, stage)
+        for r in range(count):
+            step = h * (work[0, r] + 2.0 * work[1, r] + 2.0 * work[2, r] + work[3, r]) / 6.0
+            for j in range(species):
+                used = -kin[r, HEAD + j] * step
+                if used > 0.0 and used > c[i, j]:
+                    step *= c[i, j] / used if c[i, j] > 0.0 else 0.0
+            work[6, r] += step
+            for j in range(species):
+                c[i, j] += kin[r, HEAD + j] * step

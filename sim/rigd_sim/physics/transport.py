@@ -9,215 +9,172 @@ from __future__ import annotations
 import numpy as np
 
 from rigd_sim.physics.bed import exchange_beads, react_bed
-from rigd_sim.physics.compiled import Floats, Ints, compiled
+from rigd_sim.physics.compiled import Floats, Ints, compiled, inner
 from rigd_sim.physics.conveyor import disperse, mix, push_backward, push_forward
-from rigd_sim.physics.reaction import react
+from rigd_sim.physics.reaction import EA_OVER_R, K_REF, ON_BED, T_REF, react
+
+FROM, TO, CELLS, START, LINK_ROWS = 0, 1, 2, 3, 4
+"""Rows of ``link`` (integers): end nodes, cells, first slot of each edge."""
+CELL_VOLUME, FILL, MOVED, EXCHANGE, EDGE_ROWS = 0, 1, 2, 3, 4
+"""Rows of ``edge``: cell volume, fill of the first slot [m3], volume to move [m3], D A / dx [m3/s]."""
+HELD, INFLOW, OUTFLOW, NODE_ROWS = 0, 1, 2, 3
+"""Rows of ``node``: volume [m3] and, for one step, what enters and leaves."""
+ENDLESS, WAITING, DONE, MARK_ROWS = 0, 1, 2, 3
+"""Rows of ``mark`` (integers): composition never changes; inflows not yet known; handled."""
+EDGE, PLACE = 0, 1
+"""Rows of ``bed`` (integers): edge of the column, its first place."""
 
 
-@compiled
-def _next_node(waiting: Ints, done: Ints) -> int:
+@inner
+def _next_node(mark: Ints) -> int:
     """The first node whose inflows are all there, else the one that waits for fewest."""
     best = -1
-    for i in range(waiting.shape[0]):
-        if not done[i] and (best < 0 or waiting[i] < waiting[best]):
+    for i in range(mark.shape[1]):
+        if not mark[DONE, i] and (best < 0 or mark[WAITING, i] < mark[WAITING, best]):
             best = i
-            if waiting[i] == 0:
+            if mark[WAITING, i] == 0:
                 return best
     return best
 
 
-@compiled
-def _pass(
-    e: int,
-    volume: float,
-    cell_count: Ints,
-    cell_start: Ints,
-    cell_volume: Floats,
-    fill: Floats,
-    cells: Floats,
-    inlet: Floats,
-    passed: Floats,
-) -> None:
-    """Push ``volume`` of composition ``inlet`` through edge ``e``; ``passed`` is the amount that came out."""
-    n, s = cell_count[e], cell_start[e]
-    size = abs(volume)
-    for k in range(passed.shape[0]):
-        passed[k] = size * inlet[k] if n == 0 else 0.0
-    if n == 0:
-        return
-    row = cells[s : s + n + 1]
-    if volume > 0.0:
-        fill[e] = push_forward(row, n, cell_volume[e], fill[e], size, inlet, passed)
-    else:
-        fill[e] = push_backward(row, n, cell_volume[e], fill[e], size, inlet, passed)
+@inner
+def _pass(e: int, moved: float, link: Ints, edge: Floats, cells: Floats, work: Floats) -> None:
+    """Push ``moved`` of composition ``work[0]`` through edge ``e``; ``work[1]`` is the amount that came out."""
+    n = link[CELLS, e]
+    s = link[START, e]
+    size = abs(moved)
+    for k in range(cells.shape[1]):
+        work[1, k] = size * work[0, k] if n == 0 else 0.0
+    if n > 0 and moved > 0.0:
+        edge[FILL, e] = push_forward(cells, s, n, edge[CELL_VOLUME, e], edge[FILL, e], size, work)
+    elif n > 0:
+        edge[FILL, e] = push_backward(cells, s, n, edge[CELL_VOLUME, e], edge[FILL, e], size, work)
 
 
-@compiled
-def _merge(node: int, size: float, passed: Floats, node_volume: Floats, node_c: Floats) -> None:
-    """Add an inflow to a node that was already handled (a loop)."""
-    held = node_volume[node]
-    node_volume[node] = held + size
-    for k in range(passed.shape[0]):
-        node_c[node, k] = (held * node_c[node, k] + passed[k]) / (held + size)
+@inner
+def _receive(i: int, size: float, node: Floats, node_c: Floats, mark: Ints, amount: Floats, work: Floats) -> None:
+    """Credit ``work[1]`` to a node; one that was already handled (a loop) takes it in at once."""
+    mark[WAITING, i] -= 1
+    if not mark[DONE, i]:
+        node[INFLOW, i] += size
+        for k in range(node_c.shape[1]):
+            amount[i, k] += work[1, k]
+    elif not mark[ENDLESS, i]:
+        held = node[HELD, i]
+        node[HELD, i] = held + size
+        for k in range(node_c.shape[1]):
+            node_c[i, k] = (held * node_c[i, k] + work[1, k]) / (held + size)
 
 
-@compiled
+@inner
+def _announce(share: float, link: Ints, edge: Floats, node: Floats, mark: Ints, amount: Floats) -> None:
+    """Count for every node what will leave it and how many inflows it waits for."""
+    for i in range(node.shape[1]):
+        node[INFLOW, i] = 0.0
+        node[OUTFLOW, i] = 0.0
+        mark[WAITING, i] = 0
+        mark[DONE, i] = 0
+        for k in range(amount.shape[1]):
+            amount[i, k] = 0.0
+    for e in range(edge.shape[1]):
+        if edge[MOVED, e] > 0.0:
+            node[OUTFLOW, link[FROM, e]] += share * edge[MOVED, e]
+            mark[WAITING, link[TO, e]] += 1
+        elif edge[MOVED, e] < 0.0:
+            node[OUTFLOW, link[TO, e]] -= share * edge[MOVED, e]
+            mark[WAITING, link[FROM, e]] += 1
+
+
+@inner
 def move(
-    node_volume: Floats,
-    node_c: Floats,
-    endless: Ints,
-    ea: Ints,
-    eb: Ints,
-    cell_count: Ints,
-    cell_start: Ints,
-    cell_volume: Floats,
-    fill: Floats,
+    share: float,
+    link: Ints,
+    edge: Floats,
     cells: Floats,
-    moved: Floats,
-) -> None:
-    """Move ``moved[e]`` [m3] through each edge (negative: from b to a). ``endless`` nodes never change."""
-    nodes, width = node_c.shape
-    edges = ea.shape[0]
-    v_in = np.zeros(nodes)
-    v_out = np.zeros(nodes)
-    amount = np.zeros((nodes, width))
-    waiting = np.zeros(nodes, dtype=np.int64)
-    done = np.zeros(nodes, dtype=np.int64)
-    out = np.zeros(width)
-    passed = np.zeros(width)
-    for e in range(edges):
-        if moved[e] != 0.0:
-            source, sink = (ea[e], eb[e]) if moved[e] > 0.0 else (eb[e], ea[e])
-            v_out[source] += abs(moved[e])
-            waiting[sink] += 1
-    for _ in range(nodes):
-        i = _next_node(waiting, done)
-        done[i] = 1
-        if endless[i]:
-            out[:] = node_c[i]
-        elif v_in[i] != 0.0 or v_out[i] != 0.0:
-            node_volume[i] = mix(node_volume[i], node_c[i], v_in[i], amount[i], v_out[i], out)
-        if v_out[i] == 0.0:
-            continue
-        for e in range(edges):
-            volume = moved[e]
-            if volume == 0.0 or (ea[e] if volume > 0.0 else eb[e]) != i:
-                continue
-            sink = eb[e] if volume > 0.0 else ea[e]
-            size = abs(volume)
-            _pass(e, volume, cell_count, cell_start, cell_volume, fill, cells, out, passed)
-            waiting[sink] -= 1
-            if done[sink] and not endless[sink]:
-                _merge(sink, size, passed, node_volume, node_c)
-                continue
-            v_in[sink] += size
-            for k in range(width):
-                amount[sink, k] += passed[k]
-
-
-@compiled
-def _react_everywhere(
-    cells: Floats,
+    node: Floats,
     node_c: Floats,
-    beads: Floats,
-    dt: float,
-    t: float,
-    nu: Floats,
-    k_ref: Floats,
-    t_ref: Floats,
-    ea_over_r: Floats,
-    on_bed: Ints,
-    law: Ints,
-    orders: Floats,
-    reverse: Floats,
-    equilibrium: Floats,
-    adsorption: Floats,
+    mark: Ints,
+    amount: Floats,
     work: Floats,
 ) -> None:
-    """Reactions that need no packing, in tubes, nodes and beads at room temperature ``t``."""
-    reactions = k_ref.shape[0]
-    k = np.empty(reactions)
-    extent = np.empty(reactions)
-    for r in range(reactions):
-        k[r] = 0.0 if on_bed[r] else k_ref[r] * np.exp(-ea_over_r[r] * (1.0 / t - 1.0 / t_ref[r]))
-    for i in range(cells.shape[0]):
-        react(cells[i], dt, nu, k, law, orders, reverse, equilibrium, adsorption, extent, work)
-    for i in range(node_c.shape[0]):
-        react(node_c[i], dt, nu, k, law, orders, reverse, equilibrium, adsorption, extent, work)
-    for i in range(beads.shape[0]):
-        react(beads[i], dt, nu, k, law, orders, reverse, equilibrium, adsorption, extent, work)
+    """Move ``share`` of every edge's volume (negative: from b to a). ``amount`` and ``work`` are scratch."""
+    _announce(share, link, edge, node, mark, amount)
+    for _ in range(node.shape[1]):
+        i = _next_node(mark)
+        mark[DONE, i] = 1
+        if mark[ENDLESS, i]:
+            for k in range(node_c.shape[1]):
+                work[0, k] = node_c[i, k]
+        elif node[INFLOW, i] != 0.0 or node[OUTFLOW, i] != 0.0:
+            mix(i, node, node_c, amount, work)
+        if node[OUTFLOW, i] == 0.0:
+            continue
+        for e in range(edge.shape[1]):
+            moved = share * edge[MOVED, e]
+            if moved > 0.0 and link[FROM, e] == i:
+                _pass(e, moved, link, edge, cells, work)
+                _receive(link[TO, e], moved, node, node_c, mark, amount, work)
+            elif moved < 0.0 and link[TO, e] == i:
+                _pass(e, moved, link, edge, cells, work)
+                _receive(link[FROM, e], -moved, node, node_c, mark, amount, work)
+
+
+@inner
+def _react_rows(rows: Floats, dt: float, t: float, kin: Floats, species: int, work: Floats) -> None:
+    """Reactions that need no packing, in every row at the temperature ``t``."""
+    for i in range(rows.shape[0]):
+        for r in range(kin.shape[0]):
+            k = kin[r, K_REF] * np.exp(-kin[r, EA_OVER_R] * (1.0 / t - 1.0 / kin[r, T_REF]))
+            work[5, r] = 0.0 if kin[r, ON_BED] != 0.0 else k
+        react(rows, i, dt, kin, species, work)
 
 
 @compiled
 def transport_step(
     dt: float,
     parts: int,
-    node_volume: Floats,
-    node_c: Floats,
-    endless: Ints,
-    ea: Ints,
-    eb: Ints,
-    cell_count: Ints,
-    cell_start: Ints,
-    cell_volume: Floats,
-    fill: Floats,
+    link: Ints,
+    edge: Floats,
     cells: Floats,
-    volume: Floats,
-    exchange: Floats,
-    bed_edge: Ints,
-    place_start: Ints,
+    node: Floats,
+    node_c: Floats,
+    mark: Ints,
+    bed: Ints,
+    bed_rate: Floats,
     beads: Floats,
-    bead_volume: Floats,
-    bead_rate: Floats,
-    temperature: Floats,
+    place: Floats,
     activity: Floats,
-    released: Floats,
-    turnover: Floats,
+    kin: Floats,
+    species: int,
+    in_tubes: int,
     room: float,
-    nu: Floats,
-    k_ref: Floats,
-    t_ref: Floats,
-    ea_over_r: Floats,
-    on_bed: Ints,
-    law: Ints,
-    orders: Floats,
-    reverse: Floats,
-    equilibrium: Floats,
-    adsorption: Floats,
-    heat: Floats,
-    in_tubes: bool,
+    amount: Floats,
+    work: Floats,
 ) -> None:
-    """Carry ``volume`` [m3] through the edges in ``parts`` equal parts, with dispersion, beads and reactions.
+    """Carry the edges' volumes through in ``parts`` equal parts, with dispersion, beads and reactions.
 
-    ``exchange`` = D A / dx [m3/s] per edge. Reactions act on what is in the bed after each part; a portion that
-    enters gains what a portion that leaves lacks, so the contact time is right to second order.
+    Reactions act on what is in the bed after each part; a portion that enters gains what a portion that leaves lacks,
+    so the contact time is right to second order. ``bed_rate`` rows: bead liquid per place [m3], exchange [1/s].
+    ``amount`` and ``work`` (8 rows as wide as columns, reactions or slots) are scratch.
     """
     part = dt / parts
-    edges = ea.shape[0]
-    moved = np.empty(edges)
-    width = cells.shape[1]
-    work = np.empty((6, max(max(width, k_ref.shape[0]), cells.shape[0] + 1)))
-    for e in range(edges):
-        moved[e] = volume[e] / parts
     for _ in range(parts):
-        move(node_volume, node_c, endless, ea, eb, cell_count, cell_start, cell_volume, fill, cells, moved)
-        for e in range(edges):
-            n, s = cell_count[e], cell_start[e]
-            if n > 0 and exchange[e] > 0.0:
-                disperse(cells[s : s + n + 1], n, cell_volume[e], fill[e], exchange[e] * part, work[5])
-        for b in range(bed_edge.shape[0]):
-            e, p = bed_edge[b], place_start[b]
-            n, s = cell_count[e], cell_start[e]
-            bed = cells[s : s + n + 1]
-            exchange_beads(bed, beads[p : p + n], n, cell_volume[e], fill[e], bead_volume[b], bead_rate[b] * part)
-            if k_ref.shape[0] > 0:
+        move(1.0 / parts, link, edge, cells, node, node_c, mark, amount, work)
+        for e in range(edge.shape[1]):
+            if edge[EXCHANGE, e] > 0.0:
+                disperse(
+                    cells, link[START, e], link[CELLS, e], edge[CELL_VOLUME, e], edge[FILL, e], edge[EXCHANGE, e] * part,
+                    work,
+                )  # fmt: skip
+        for b in range(bed.shape[1]):
+            e = bed[EDGE, b]
+            s, n, v = link[START, e], link[CELLS, e], edge[CELL_VOLUME, e]
+            exchange_beads(cells, s, n, v, edge[FILL, e], beads, bed[PLACE, b], bed_rate[0, b], bed_rate[1, b] * part)
+            if kin.shape[0] > 0:
                 react_bed(
-                    bed, n, cell_volume[e], fill[e], part, temperature[p : p + n], activity[p : p + n],
-                    nu, k_ref, t_ref, ea_over_r, on_bed, law, orders, reverse, equilibrium, adsorption, heat,
-                    released[p : p + n], turnover[p : p + n], work,
+                    cells, s, n, v, edge[FILL, e], part, bed[PLACE, b], place, activity, kin, species, work
                 )  # fmt: skip
         if in_tubes:
-            _react_everywhere(
-                cells, node_c, beads, part, room, nu, k_ref, t_ref, ea_over_r, on_bed, law, orders, reverse,
-                equilibrium, adsorption, work,
-            )  # fmt: skip
+            _react_rows(cells, part, room, kin, species, work)
+            _react_rows(node_c, part, room, kin, species, work)
+            _react_rows(beads, part, room, kin, species, work)

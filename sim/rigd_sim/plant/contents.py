@@ -12,12 +12,25 @@ import numpy as np
 
 from rigd.model.chemistry import RateLaw, Reaction, ReactionPlace
 from rigd.model.rig import Column, RigDefinition
+from rigd_sim.physics.bed import PLACE_ROWS, RELEASED, TEMPERATURE, TURNOVER
 from rigd_sim.physics.compiled import Floats
 from rigd_sim.physics.constants import GAS_CONSTANT_J_MOL_K, ZERO_CELSIUS_K
 from rigd_sim.physics.packing_transfer import bead_rate, chung_wen
 from rigd_sim.physics.properties import SOLVENTS, Solvent
-from rigd_sim.physics.reaction import LHHW, POWER, REVERSIBLE
-from rigd_sim.physics.transport import transport_step
+from rigd_sim.physics.reaction import (
+    EA_OVER_R,
+    EQUILIBRIUM,
+    HEAD,
+    HEAT,
+    K_REF,
+    LAW,
+    LHHW,
+    ON_BED,
+    POWER,
+    REVERSIBLE,
+    T_REF,
+)
+from rigd_sim.physics.transport import EDGE_ROWS, LINK_ROWS, MARK_ROWS, NODE_ROWS, transport_step
 from rigd_sim.physics.tubing import area, taylor_aris
 from rigd_sim.plant.layout import Layout
 
@@ -27,39 +40,34 @@ BEAD_DIFFUSION_SHARE = 0.2
 """Diffusion inside a swollen gel bead is 0.1 to 0.3 of the free one (common practice, no source)."""
 PARTS_MAX = 24
 SUPPLY_COARSENESS = 8.0
+ADSORPTION_BLOCK = 3
 EMPTY_M3 = 1e-9
 
 
 class Kinetics:
-    """The chemistry sheet as arrays in mol, m3, s, K."""
+    """The chemistry sheet as one table in mol, m3, s, K (columns: ``rigd_sim.physics.reaction``)."""
 
-    def __init__(self, rig: RigDefinition, columns: int) -> None:
+    def __init__(self, rig: RigDefinition) -> None:
         chemistry = rig.chemistry
         species = [s.id for s in chemistry.species]
-        reactions = chemistry.reactions
-        shape = (len(reactions), len(species))
-        self.nu, self.orders, self.reverse, self.adsorption = (np.zeros(shape) for _ in range(4))
-        for j, reaction in enumerate(reactions):
-            for table, target, factor in (
-                (reaction.stoichiometry, self.nu, 1.0),
-                (reaction.orders, self.orders, 1.0),
-                (reaction.reverse_orders, self.reverse, 1.0),
-                (reaction.adsorption_L_mol, self.adsorption, 1e-3),
-            ):
+        self.species = len(species)
+        self.count = len(chemistry.reactions)
+        self.table = np.zeros((self.count, HEAD + 4 * self.species))
+        for r, reaction in enumerate(chemistry.reactions):
+            row = self.table[r]
+            row[K_REF], row[T_REF] = _rate_constant(reaction), reaction.reference_degC + ZERO_CELSIUS_K
+            row[EA_OVER_R] = reaction.activation_energy_kJ_mol * 1e3 / GAS_CONSTANT_J_MOL_K
+            row[HEAT], row[EQUILIBRIUM] = reaction.heat_kJ_mol * 1e3, _equilibrium(reaction)
+            row[LAW], row[ON_BED] = LAWS[reaction.law], reaction.place is ReactionPlace.CATALYST
+            blocks = (reaction.stoichiometry, reaction.orders, reaction.reverse_orders, reaction.adsorption_L_mol)
+            for block, table in enumerate(blocks):
                 for name, value in table.items():
-                    target[j, species.index(name)] = value * factor
-        self.k_ref = np.array([_rate_constant(r) for r in reactions])
-        self.t_ref = np.array([r.reference_degC + ZERO_CELSIUS_K for r in reactions])
-        self.ea_over_r = np.array([r.activation_energy_kJ_mol * 1e3 / GAS_CONSTANT_J_MOL_K for r in reactions])
-        self.law = np.array([LAWS[r.law] for r in reactions], dtype=np.int64)
-        self.on_bed = np.array([r.place is ReactionPlace.CATALYST for r in reactions], dtype=np.int64)
-        self.equilibrium = np.array([_equilibrium(r) for r in reactions])
-        self.heat = np.array([r.heat_kJ_mol * 1e3 for r in reactions])
-        self.decay_per_s = np.array([r.deactivation_per_h / 3600.0 for r in reactions])
-        self.per_gram = [r.per_gram for r in reactions]
-        self.in_tubes = bool((self.on_bed == 0).any()) if reactions else False
-        self.count = len(reactions)
-        self.columns = columns
+                    column = HEAD + block * self.species + species.index(name)
+                    row[column] = value * (1e-3 if block == ADSORPTION_BLOCK else 1.0)
+        self.on_bed = self.table[:, ON_BED] != 0.0
+        self.decay_per_s = np.array([r.deactivation_per_h / 3600.0 for r in chemistry.reactions])
+        self.per_gram = [r.per_gram for r in chemistry.reactions]
+        self.in_tubes = int(not self.on_bed.all())
 
 
 def _rate_constant(reaction: Reaction) -> float:
@@ -100,33 +108,40 @@ class Contents:
         self.n_species = len(self.species)
         self.width = self.n_species + len(self.solvents) + 1
         self.gas = self.width - 1
-        self.kinetics = Kinetics(rig, self.width)
+        self.kinetics = Kinetics(rig)
         self.room_K = rig.simulation.ambient_degC + ZERO_CELSIUS_K
         self.diffusivity = max((s.diffusivity_m2_s for s in rig.chemistry.species), default=DEFAULT_DIFFUSIVITY)
         self._make_edges()
         self._make_nodes(rig)
         self._make_beds()
+        wide = max(self.width, self.kinetics.count, int(self.cell_count.max()) + 1)
+        self._scratch = (np.zeros((len(layout.nodes), self.width)), np.zeros((8, wide)))
 
     def _make_edges(self) -> None:
+        """Tables of the transport kernel; the attributes are views into them."""
         edges = self.layout.edges
-        self.ea = np.array([e.a for e in edges], dtype=np.int64)
-        self.eb = np.array([e.b for e in edges], dtype=np.int64)
-        self.cell_count = np.array([e.cells for e in edges], dtype=np.int64)
+        self.link = np.zeros((LINK_ROWS, len(edges)), dtype=np.int64)
+        self.edge = np.zeros((EDGE_ROWS, len(edges)))
+        self.ea, self.eb, self.cell_count, self.cell_start = self.link
+        self.cell_volume, self.fill, self.pending, self.exchange = self.edge
+        self.ea[:], self.eb[:] = [e.a for e in edges], [e.b for e in edges]
+        self.cell_count[:] = [e.cells for e in edges]
         slots = np.where(self.cell_count > 0, self.cell_count + 1, 0)
-        self.cell_start = np.concatenate(([0], np.cumsum(slots)[:-1])).astype(np.int64)
-        self.cell_volume = np.array([e.volume / e.cells if e.cells else 0.0 for e in edges])
-        self.fill = np.zeros(len(edges))
+        self.cell_start[1:] = np.cumsum(slots)[:-1]
+        self.cell_volume[:] = [e.volume / e.cells if e.cells else 0.0 for e in edges]
         self.cells = np.zeros((int(slots.sum()), self.width))
-        self.exchange = np.zeros(len(edges))
-        self.pending = np.zeros(len(edges))
         coarse = np.array([SUPPLY_COARSENESS if e.supply else 1.0 for e in edges])
-        with np.errstate(divide="ignore"):
-            self.per_cell = np.where(self.cell_count > 0, 1.0 / (self.cell_volume * coarse), 0.0)
+        self.per_cell = np.zeros(len(edges))
+        has_cells = self.cell_count > 0
+        self.per_cell[has_cells] = 1.0 / (self.cell_volume[has_cells] * coarse[has_cells])
 
     def _make_nodes(self, rig: RigDefinition) -> None:
         nodes = self.layout.nodes
-        self.node_volume = np.array([n.volume for n in nodes])
-        self.endless = np.array([n.endless for n in nodes], dtype=np.int64)
+        self.node = np.zeros((NODE_ROWS, len(nodes)))
+        self.mark = np.zeros((MARK_ROWS, len(nodes)), dtype=np.int64)
+        self.node_volume, self.endless = self.node[0], self.mark[0]
+        self.node_volume[:] = [n.volume for n in nodes]
+        self.endless[:] = [n.endless for n in nodes]
         solvent = self.composition(rig, next(q.id for q in rig.liquids if q.role == "solvent"))
         self.node_c = np.tile(solvent, (len(nodes), 1))
         self.cells[:] = solvent
@@ -156,15 +171,19 @@ class Contents:
             self.beds[column.id] = Bed(column, edge, start, cells)
             start += cells
         beds = list(self.beds.values())
-        self.bed_edge = np.array([b.edge for b in beds], dtype=np.int64)
-        self.place_start = np.array([b.start for b in beds], dtype=np.int64)
+        self.bed = np.array([[b.edge for b in beds], [b.start for b in beds]], dtype=np.int64)
         self.beads = np.tile(self.cells[0], (start, 1)) if start else np.zeros((0, self.width))
-        self.bead_volume = np.array([b.bead_liquid / b.cells for b in beds])
         radius = [b.column.packing.bead_diameter_mm * 0.5e-3 for b in beds]
-        self.bead_rate = np.array([bead_rate(BEAD_DIFFUSION_SHARE * self.diffusivity, r) for r in radius])
-        self.temperature = np.full(start, self.room_K)
-        self.released = np.zeros(start)
-        self.turnover = np.zeros(start)
+        rates = [bead_rate(BEAD_DIFFUSION_SHARE * self.diffusivity, r) for r in radius]
+        self.bed_rate = np.array([[b.bead_liquid / b.cells for b in beds], rates], dtype=float)
+        self.bead_volume = self.bed_rate[0]
+        self.place = np.zeros((PLACE_ROWS, start))
+        self.temperature, self.released, self.turnover = (
+            self.place[TEMPERATURE],
+            self.place[RELEASED],
+            self.place[TURNOVER],
+        )
+        self.temperature[:] = self.room_K
         self.activity = np.ones((start, self.kinetics.count))
         self.base_activity = np.ones((start, self.kinetics.count))
         for bed in beds:
@@ -214,11 +233,8 @@ class Contents:
         k = self.kinetics
         parts = int(min(max(math.ceil(float(np.max(np.abs(self.pending) * self.per_cell))), 1), PARTS_MAX))
         transport_step(
-            dt, parts, self.node_volume, self.node_c, self.endless, self.ea, self.eb, self.cell_count, self.cell_start,
-            self.cell_volume, self.fill, self.cells, self.pending, self.exchange, self.bed_edge, self.place_start,
-            self.beads, self.bead_volume, self.bead_rate, self.temperature, self.activity, self.released,
-            self.turnover, self.room_K, k.nu, k.k_ref, k.t_ref, k.ea_over_r, k.on_bed, k.law, k.orders, k.reverse,
-            k.equilibrium, k.adsorption, k.heat, k.in_tubes,
+            dt, parts, self.link, self.edge, self.cells, self.node, self.node_c, self.mark, self.bed, self.bed_rate,
+            self.beads, self.place, self.activity, k.table, k.species, k.in_tubes, self.room_K, *self._scratch,
         )  # fmt: skip
         self.pending[:] = 0.0
 
@@ -237,7 +253,7 @@ class Contents:
         for name, factor in factors.items():
             bed = self.beds[name]
             rows = slice(bed.start, bed.start + bed.cells)
-            self.activity[rows] *= np.where(self.kinetics.on_bed == 1, factor, 1.0)
+            self.activity[rows] *= np.where(self.kinetics.on_bed, factor, 1.0)
 
     def admit_air(self) -> None:
         """Let air into bottles that the pending volumes would draw below empty."""

@@ -8,7 +8,7 @@ import numpy as np
 
 from rigd_sim.physics.constants import ATMOSPHERE_PA, BAR_PA
 from rigd_sim.physics.gel_bed import relax, settled
-from rigd_sim.physics.network import advance_pressures
+from rigd_sim.physics.network import EDGE_ROWS, LAG, LINK_ROWS, NODE_ROWS, PEAK, SENSOR_ROWS, SHOWN, advance_pressures
 from rigd_sim.physics.packed_bed import ergun_gradient, pressed_voidage
 from rigd_sim.physics.properties import SOLVENTS, mixture_viscosity
 from rigd_sim.physics.tubing import resistance
@@ -34,32 +34,36 @@ class Flows:
 
     def __init__(self, layout: Layout, contents: Contents, truth: dict[str, float]) -> None:
         self.layout, self.contents = layout, contents
-        nodes, passive = layout.nodes, layout.passive
-        self.hydraulic = [i for i, n in enumerate(nodes) if n.hydraulic]
+        self.hydraulic = [i for i, n in enumerate(layout.nodes) if n.hydraulic]
         self.rank = {i: r for r, i in enumerate(self.hydraulic)}
-        size = len(self.hydraulic)
-        self.pressure = np.zeros(size)
-        self.peak = np.zeros(size)
-        self.source = np.zeros(size)
-        self.rest_compliance = np.array([nodes[i].compliance for i in self.hydraulic])
-        self.compliance = self.rest_compliance.copy()
-        self.ground = np.array([nodes[i].ground for i in self.hydraulic], dtype=np.int64)
-        edges = layout.edges[:passive]
-        self.ea = np.array([self.rank[e.a] for e in edges], dtype=np.int64)
-        self.eb = np.array([self.rank[e.b] for e in edges], dtype=np.int64)
-        self.crack = np.array([e.crack for e in edges])
-        self.is_open = np.zeros(passive, dtype=np.int64)
-        self.base = np.array([e.conductance for e in edges])
-        self.gate = np.ones(passive)
-        self.conductance = np.zeros(passive)
-        self.volume = np.zeros(passive)
-        self.flow = np.zeros(len(layout.edges))
-        self.step = 0.05
-        self.sensor_node = np.zeros(0, dtype=np.int64)
-        self.sensor_lag = np.zeros(0)
-        self.sensor_value = np.zeros(0)
+        self._make_nodes(layout)
+        self._make_edges(layout)
+        self.watch([], [])
         self.gels = {b.column.id: self._gel(b, truth) for b in contents.beds.values()}
         self.update_liquid()
+
+    def _make_nodes(self, layout: Layout) -> None:
+        """Table of the network solver; the attributes are views into it."""
+        size = len(self.hydraulic)
+        self.node = np.zeros((NODE_ROWS, size))
+        self.pressure, self.compliance, self.source, self.peak = self.node[: PEAK + 1]
+        self.rest_compliance = np.array([layout.nodes[i].compliance for i in self.hydraulic])
+        self.compliance[:] = self.rest_compliance
+        self.ground = np.array([layout.nodes[i].ground for i in self.hydraulic], dtype=np.int64)
+        self._matrix = np.zeros((size, size))
+
+    def _make_edges(self, layout: Layout) -> None:
+        edges = layout.edges[: layout.passive]
+        self.link = np.zeros((LINK_ROWS, len(edges)), dtype=np.int64)
+        self.edge = np.zeros((EDGE_ROWS, len(edges)))
+        self.ea, self.eb = self.link[:2]
+        self.conductance, self.crack, self.volume = self.edge
+        self.ea[:], self.eb[:] = [self.rank[e.a] for e in edges], [self.rank[e.b] for e in edges]
+        self.crack[:] = [e.crack for e in edges]
+        self.base = np.array([e.conductance for e in edges])
+        self.gate = np.ones(len(edges))
+        self.flow = np.zeros(len(layout.edges))
+        self.step = 0.05
 
     def _gel(self, bed: Bed, truth: dict[str, float]) -> GelState:
         """Packed swollen (default) or dry (``truth`` "COL.packed_dry" = 1), with ``COL.headspace`` of free volume."""
@@ -71,12 +75,12 @@ class Flows:
     def watch(self, nodes: list[int], lags_s: list[float]) -> None:
         """Let the solver follow these nodes (layout indices) as lagged pressure sensors."""
         self.sensor_node = np.array([self.rank[i] for i in nodes], dtype=np.int64)
-        self.sensor_lag = np.array(lags_s, dtype=float)
-        self.sensor_value = np.zeros(len(nodes))
+        self.sensor = np.zeros((SENSOR_ROWS, len(nodes)))
+        self.sensor[LAG] = lags_s
 
     def shown_bar(self, slot: int) -> float:
         """Lagged pressure of a watched node [bar]."""
-        return float(self.sensor_value[slot]) / BAR_PA
+        return float(self.sensor[SHOWN, slot]) / BAR_PA
 
     def update_liquid(self) -> None:
         """Conductances of lines and beds from the liquid in them; call after each transport step."""
@@ -161,9 +165,8 @@ class Flows:
         """Move the pressures on by ``h`` seconds with the present sources; volumes are added up for the transport."""
         self.volume[:] = 0.0
         self.step = advance_pressures(
-            h, self.pressure, self.compliance, self.source, self.ground, self.ea, self.eb, self.conductance, self.crack,
-            self.is_open, self.volume, self.peak, self.sensor_node, self.sensor_lag, self.sensor_value, self.step,
-        )  # fmt: skip
+            h, self.step, self.node, self.edge, self.link, self.ground, self.sensor, self.sensor_node, self._matrix
+        )
         passive = self.layout.passive
         self.contents.pending[:passive] += self.volume
         self.flow[:passive] = self.volume / h

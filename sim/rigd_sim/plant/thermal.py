@@ -36,7 +36,7 @@ class Thermal:
         for column, chiller in self.jacket_of.items():
             baths[chiller].jackets[column] = contents.room_K
         self.book = HeatBook()
-        self._work = np.empty((3, max([b.cells for b in contents.beds.values()], default=1)))
+        self._work = np.empty((2, max([b.cells for b in contents.beds.values()], default=1)))
 
     def jacket(self, column: str) -> float:
         """Jacket temperature of a column [K]; the room's if it has none."""
@@ -72,8 +72,8 @@ class Thermal:
         t = contents.temperature[rows]
         wall = bed.column.wall_conductance_W_K / bed.cells
         given = heat_bed(
-            t, dt, self.capacity(bed), stream, room, BED_CONDUCTIVITY_W_M_K * bed.section / (bed.length / bed.cells),
-            wall, self.jacket(bed.column.id), END_LOSS_W_K, room, released, self._work,
+            contents.place, bed.start, bed.cells, dt, self.capacity(bed), stream, room, BED_CONDUCTIVITY_W_M_K * bed.section / (bed.length/ bed.cells),
+            wall, self.jacket(bed.column.id), END_LOSS_W_K, room, self._work,
         )  # fmt: skip
         outlet = t[-1] if stream >= 0.0 else t[0]
         self.book.stream += abs(stream) * (room - float(outlet)) * dt
