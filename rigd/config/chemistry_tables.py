@@ -49,7 +49,7 @@ class ReactionTable(Table):
     place: ReactionPlace
     stoichiometry: Annotated[dict[Name, Number], Field(min_length=1)]
     rate_constant: Annotated[
-        str, Field(max_length=60, pattern=r"^\s*\+?(?:\d+\.?\d*|\.\d+)(?:[eE][-+]?\d{1,2})?(?:\s*[^\s0-9.eE].*)?$")
+        str, Field(max_length=60, pattern=r"^\s*\+?(?:\d+\.?\d*|\.\d+)(?:[eE][-+]?\d{1,2})?(?:(?:\s|[^\s0-9.eE]).*)?$")
     ]
     reference_temperature: Temperature
     activation_energy: Annotated[float, Quantity("molar energy", "not negative")]

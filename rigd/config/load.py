@@ -25,7 +25,7 @@ from rigd.config.digest import digest_of
 from rigd.config.files import RecipeFile, RigFile
 from rigd.config.findings import Findings
 from rigd.config.source import read_source
-from rigd.config.structure import read_tables
+from rigd.config.structure import declared, read_tables
 from rigd.config.sweep import expand
 from rigd.logic.flow_path import FlowPath, FlowPathError, flow_path
 from rigd.model.chemistry import Chemistry
@@ -93,31 +93,38 @@ def read_rig(path: FilePath) -> Read:
     if unread or not _right_kind(found, "rigd-rig-1"):
         return Read(_nothing(), found.sorted_by_line)
     file = read_tables(RigFile, source, found)
-    chemistry, chemistry_found = _chemistry(file, Path(path), found)
-    digest = digest_of(file, *chemistry, without=frozenset({"chemistry"})) if not found.failed else ""
-    drafted = compile_rig(file, _chemistry_value(chemistry), found, digest)
-    context = RigContext(file, drafted.rig, drafted.sides, found)
+    chemistry = _chemistry(file, Path(path), found)
+    digest = digest_of(file, *chemistry.tables, without=frozenset({"chemistry"})) if not found.failed else ""
+    drafted = compile_rig(file, _chemistry_value(chemistry.tables), found, digest)
+    context = RigContext(file, drafted.rig, drafted.sides, chemistry.species, found)
     for check in (check_identity, check_parts, check_lines, check_devices, check_limits, check_flow):
         check(context)
-    return Read(drafted.rig, (*found.sorted_by_line, *chemistry_found))
+    return Read(drafted.rig, (*found.sorted_by_line, *chemistry.problems))
 
 
-def _chemistry(file: RigFile, rig_path: Path, found: Findings) -> tuple[tuple[ChemistryFile, ...], tuple[Problem, ...]]:
-    """The chemistry tables (none when unreadable) and the findings about them."""
+class _ReadChemistry(NamedTuple):
+    """The chemistry file (none when unreadable), the species it declares, and the findings about it."""
+
+    tables: tuple[ChemistryFile, ...] = ()
+    species: frozenset[str] = frozenset()
+    problems: tuple[Problem, ...] = ()
+
+
+def _chemistry(file: RigFile, rig_path: Path, found: Findings) -> _ReadChemistry:
     if not file.chemistry:
-        return (), ()
+        return _ReadChemistry()
     path = rig_path.parent / file.chemistry
     source, unread = read_source(path)
     if unread and not source.text and unread[0].code.startswith("file-"):
         message = f"the chemistry file {str(path)!r}: {unread[0].message}"
         found.error(f"chemistry-{unread[0].code}", ("chemistry",), message, "give its path relative to the rig file")
-        return (), ()
+        return _ReadChemistry()
     chemistry_found = Findings(source, unread)
     if unread or not _right_kind(chemistry_found, "rigd-chemistry-1"):
-        return (), chemistry_found.sorted_by_line
+        return _ReadChemistry(problems=chemistry_found.sorted_by_line)
     table = read_tables(ChemistryFile, source, chemistry_found)
     check_chemistry(table, chemistry_found)
-    return (table,), chemistry_found.sorted_by_line
+    return _ReadChemistry((table,), declared(source, "species"), chemistry_found.sorted_by_line)
 
 
 def _chemistry_value(tables: tuple[ChemistryFile, ...]) -> Chemistry:
@@ -164,7 +171,7 @@ def _path_of(rig: RigDefinition) -> FlowPath | None:
 
 
 def _points(file: RecipeFile, path: FlowPath | None) -> tuple[Point, ...]:
-    if file.sweep is None or path is None:
+    if file.sweep is None or path is None or (file.sweep.residence_time is not None and path.column_mL <= 0):
         return ()
     return expand(file.sweep, path, solvent_only=file.switchover is None)
 

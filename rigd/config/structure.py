@@ -113,10 +113,9 @@ def _good_rows(item: type[Table], key: str, rows: Iterable[object]) -> Iterable[
 def _item_table(field: FieldInfo) -> type[Table] | None:
     """The table class of a list of tables, ``None`` for any other field."""
     arguments = get_args(field.annotation)
-    if len(arguments) == 2 and arguments[1] is Ellipsis and issubclass(arguments[0], Table):
-        found: type[Table] = arguments[0]
-        return found
-    return None
+    many = len(arguments) == 2 and arguments[1] is Ellipsis
+    item = arguments[0] if many else None
+    return item if isinstance(item, type) and issubclass(item, Table) else None
 
 
 def declared(source: Source, section: str, key: str = "id") -> frozenset[str]:

@@ -18,11 +18,12 @@ PART_SECTIONS = ("vessels", "valves", "pumps", "tees", "columns", "cells", "regu
 
 @dataclass(frozen=True)
 class RigContext:
-    """A rig file, the rig made of it as far as it parsed, and the findings so far."""
+    """A rig file, the rig made of it as far as it parsed, the species that exist, and the findings so far."""
 
     file: RigFile
     rig: RigDefinition
     sides: tuple[PressureSide, ...]
+    species: frozenset[str]
     found: Findings
     _places: dict[tuple[str, str], Path] = field(default_factory=dict)
 

@@ -7,7 +7,6 @@ from rigd.config.findings import listed, nearest
 from rigd.logic.flow_path import FlowPathError, flow_path
 from rigd.model.rig import LiquidRole, Pump, Valve, Vessel, VesselRole
 
-
 _DANGLING = {"part-without-outlet", "part-without-inlet", "line-end-unknown"}
 """Findings after which nobody needs to be told that the liquid cannot reach the waste."""
 

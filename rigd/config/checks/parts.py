@@ -44,11 +44,11 @@ def _vessels(context: RigContext) -> None:
                 "liquid-unused", context.at("liquids", liquid.id, "id"), message, "remove it, or use it"
             )
         for species in liquid.composition_mol_L:
-            ids = context.rig.chemistry.species_by_id()
-            if ids and species not in ids:
-                message = f"the chemistry has no species {species!r}{nearest(species, ids)}"
+            if context.species and species not in context.species:
+                message = f"the chemistry has no species {species!r}{nearest(species, context.species)}"
                 place = context.at("liquids", liquid.id, "composition", species)
-                context.found.error("species-unknown", place, message, f"its species: {listed(ids)}")
+                remedy = f"its species: {listed(sorted(context.species))}"
+                context.found.error("species-unknown", place, message, remedy)
 
 
 def _pumps(context: RigContext) -> None:

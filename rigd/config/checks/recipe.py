@@ -14,6 +14,7 @@ from rigd.config.findings import Findings, listed, nearest
 from rigd.config.lines import Path
 from rigd.config.quantity import read_quantity
 from rigd.config.rule_tables import difference
+from rigd.config.sweep_tables import SweepTable
 from rigd.logic.flow_path import FlowPath
 from rigd.model.protection import ConditionKind
 from rigd.model.recipe import Point
@@ -67,6 +68,11 @@ def check_recipe(context: RecipeContext) -> None:
     _pump_names(context)
     _flows(context)
     _times(context)
+    if context.file.sweep is not None:
+        _no_twins(context, context.file.sweep)
+        if context.file.sweep.residence_time is not None and not context.rig.columns:
+            message = "the rig has no column, so a residence time says nothing about the flow"
+            context.found.error("no-column", ("sweep", "residence_time"), message, "state total_flow instead")
 
 
 def _sections(context: RecipeContext) -> None:
@@ -149,7 +155,6 @@ def _signal(context: RecipeContext) -> None:
 
 def _pump_names(context: RecipeContext) -> None:
     pumps = {pump.id: pump for pump in context.rig.pumps}
-    sweep = context.file.sweep
     for path, named in _named_flows(context):
         for name in named:
             _pump(context, name, (*path, name))
@@ -166,8 +171,6 @@ def _pump_names(context: RecipeContext) -> None:
             message = f"{volume:g} mL is not below what a full syringe of {name} delivers"
             message += f" ({pump.stroke_mL - pump.dead_mL:g} mL): it would refill for ever"
             context.found.error("refill-above-stroke", place, message, "choose a smaller volume")
-    if sweep is not None and sweep.points is not None:
-        _no_twins(context)
 
 
 def _named_flows(context: RecipeContext) -> Iterable[tuple[Path, Iterable[str]]]:
@@ -189,16 +192,17 @@ def _pump(context: RecipeContext, name: str, place: Path) -> None:
         context.found.error("pump-unknown", place, message, f"its pumps: {listed(known)}")
 
 
-def _no_twins(context: RecipeContext) -> None:
-    sweep = context.file.sweep
-    assert sweep is not None
-    seen: list[dict[str, float]] = []
-    for index, flows in enumerate(sweep.points or ()):
-        if dict(flows) in seen:
-            message = f"the same flows as item {seen.index(dict(flows)) + 1}"
-            remedy = "remove it; to measure every point again write repeats = 2 or return_every = n"
-            context.found.error("point-duplicate", ("sweep", "points", index), message, remedy)
-        seen.append(dict(flows))
+def _no_twins(context: RecipeContext, sweep: SweepTable) -> None:
+    """The same flow, time, ratio or temperature twice in one list."""
+    for key in ("points", "total_flow", "residence_time", "ratio", "temperature"):
+        values = getattr(sweep, key)
+        seen: list[object] = []
+        for index, value in enumerate(values if isinstance(values, tuple) else ()):
+            if value in seen:
+                message = f"the same as item {seen.index(value) + 1}"
+                remedy = "remove it; to measure every point again write repeats = 2 or return_every = n"
+                context.found.error("point-duplicate", ("sweep", key, index), message, remedy)
+            seen.append(value)
 
 
 def _flows(context: RecipeContext) -> None:
