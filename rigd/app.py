@@ -8,11 +8,13 @@ from __future__ import annotations
 
 import asyncio
 import contextlib
+import faulthandler
 import gc
 import json
 import logging
 import os
 import platform
+import signal
 import sys
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field, replace
@@ -141,6 +143,7 @@ def control_main(plan_path: str) -> int:
     logging.basicConfig(level=logging.INFO, format="%(asctime)s %(name)s %(message)s", stream=sys.stderr)
     logging.getLogger("transitions").setLevel(logging.WARNING)
     os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
+    faulthandler.register(signal.SIGUSR1)  # shows in control.log what every thread is doing
     sys.setswitchinterval(0.0005)  # a thread must not hold the loop back for the stock 5 ms
     plan = json.loads(Path(plan_path).read_text(encoding="utf-8"))
     try:

@@ -42,6 +42,7 @@ CREATE TABLE IF NOT EXISTS bytes (link TEXT NOT NULL, t_ns INTEGER NOT NULL, sen
 
 CAUSES = tuple(QualityCause)
 """A cause is stored as its index here: new causes may only be added at the end."""
+_CAUSE_NUMBER = {cause: number for number, cause in enumerate(CAUSES)}
 
 INSERT_META = "INSERT OR REPLACE INTO meta VALUES (?, ?)"
 INSERT_TAG = "INSERT OR IGNORE INTO tags VALUES (?, ?, ?, ?, ?, ?, ?, ?, ?)"
@@ -63,7 +64,7 @@ def compact(value: object) -> str:
 
 def sample_row(scan: int, tag_id: int, sample: Sample) -> Row:
     """One row of ``samples``."""
-    quality, cause = int(sample.quality), CAUSES.index(sample.cause)
+    quality, cause = int(sample.quality), _CAUSE_NUMBER[sample.cause]
     return (scan, tag_id, sample.t_ns, sample.value, quality, cause, sample.raw)
 
 
