@@ -37,11 +37,10 @@ class MemoryLink:
         self._inbox.check()
         now = self._loop.time()
         for delay_s, piece in self.hook(data):
-            due = max(now + delay_s, self._on_way[-1][0] if self._on_way else now)
-            if due <= now and not self._on_way:
+            if delay_s <= 0 and not self._on_way:
                 self.far._inbox.put(piece)
             else:
-                self._on_way.append((due, piece))
+                self._on_way.append((now + delay_s, piece))
         self._schedule()
 
     async def read(self) -> bytes:

@@ -163,7 +163,7 @@ async def test_a_deaf_end_times_out_and_half_a_command_does_not_follow_later(far
             got += os.read(far.master, 65536)
         except BlockingIOError:
             break
-    assert len(got) < 200_000
+    assert len(got) < 8192  # what the system still held was thrown away; the far side's 4 KiB had left
     await link.write(b"{stop}")
     await asyncio.sleep(0.02)
     assert os.read(far.master, 65536).endswith(b"{stop}")

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import asyncio
 import contextlib
+import re
 from collections.abc import AsyncIterator
 from dataclasses import replace
 
@@ -317,6 +318,25 @@ async def test_spectra_are_fetched_once_each() -> None:
 
 
 # --- last wills
+
+
+@pytest.mark.parametrize(
+    ("answer", "good"),
+    [
+        ("ok state=stopped flow=0.0000 level=1.000 standby=0.000 delivered=9.0000 fault=0", True),
+        ("ok state=empty flow=0 level=0.000 standby=0.000 delivered=9.0000 fault=1", True),
+        ("ok state=stalled flow=-0.0000 level=1.000 standby=0.000 delivered=9.0000 fault=0", True),
+        ("ok state=stopped flow=0.0001 level=1.000 standby=0.000 delivered=9.0000 fault=0", False),
+        ("ok state=delivering flow=0.0000 level=1.000 standby=0.000 delivered=9.0000 fault=0", False),
+        ("ok state=filling flow=0.0000 level=1.000 standby=0.000 delivered=9.0000 fault=0", False),
+        ("no fault state=stopped flow=0.0000 level=1.000", False),
+        ("busy", False),
+    ],
+)
+def test_only_a_pump_without_motion_satisfies_its_last_will(answer: str, good: bool) -> None:
+    *_, status_frame = syringe_pump.FAMILY.make(PUMP).last_will(LINK).check
+    assert bool(re.search(status_frame.good_reply, reply(b"11", b"F2", answer))) is good
+    assert not re.search(status_frame.good_reply, reply(b"12", b"F2", answer))
 
 
 def test_last_wills_of_devices_that_move_nothing_are_empty() -> None:
