@@ -1,8 +1,8 @@
 """The flow path as text, drawn from the lines of the rig: feeds from the left into their merge, then the trunk.
 
-    acid-feed ━━ V-A ━━ PU-A 2.00 mL/min ━┓
-    solvent ━━━━ V-B ━━ PU-B 2.00 mL/min ━┻━ TEE 3.41 bar
-    ┗━ COL 60.1 °C ━━ IR 37.2 % ━━ BPR ━━ V-C ━━▶ flask 12.3 mL
+    acid-feed ━━━━ V-A ━━ PU-A 2.00 mL/min ━┓
+    alcohol-feed ━ V-B ━━ PU-B 2.00 mL/min ━┻▶
+    ▶━ TEE 3.41 bar ━━ COL 60.1 °C ━━ IR 37.2 % ━━ V-C ▶ flask 12.3 mL
 
 Heavy lines carry flow, light ones stand still. A pump that joins later starts a new pair of rows.
 """
@@ -34,7 +34,7 @@ def drawing(rig: RigDefinition, path: FlowPath, values: Values, width: int) -> l
         rows += _feeds(rig, joining, values)
         last = number == len(path.sections) - 1
         tail = _outlet(path, values) if last else []
-        rows += _trunk(section, _labels(rig, section, values) + tail, _flowing(section, values), width, bool(number))
+        rows += _trunk(_labels(rig, section, values) + tail, _flowing(section, values), width)
     return rows
 
 
@@ -62,20 +62,17 @@ def _feeds(rig: RigDefinition, feeds: Iterable[Feed], values: Values) -> list[Te
     widths = [max((cell_len(row[column]) for row in cells), default=0) for column in range(3)]
     rows = []
     for index, (feed, row) in enumerate(zip(listed, cells, strict=True)):
-        style = MOVING if _pump_flow(values, feed.pump) > 0 else STILL
-        bar = "━" if style == MOVING else "─"
+        moving = _pump_flow(values, feed.pump) > 0
+        style, bar = (MOVING, "━") if moving else (STILL, "─")
         text = Text("  ")
-        for column, cell in enumerate(row):
-            if column and widths[column]:
-                text.append(f"{bar * 2} ", style)
-            text.append(cell, PART if column == 2 else "default")
-            text.append(bar * (widths[column] - cell_len(cell) + 1) if column < 2 else " " * 0, style)
-            if column < 2:
-                text.append(" ", style)
-        text.append(" " * (widths[2] - cell_len(row[2]) + 1))
-        corner = "┓" if index == 0 else "┫"
-        text.append(f"{bar}{corner}" if len(listed) > 1 else f"{bar}┓", style)
-        rows.append(text)
+        for column in (0, 1):
+            if widths[column]:
+                text.append(row[column] + " ").append(bar * (widths[column] - cell_len(row[column]) + 2), style)
+                text.append(" ")
+        text.append(row[2], PART).append(" " * (widths[2] - cell_len(row[2]) + 1))
+        last = index == len(listed) - 1
+        text.append(f"{bar}{'━' if len(listed) == 1 else '┻' if last else '┓' if index == 0 else '┫'}", style)
+        rows.append(text.append("▶" if last else "", style))
     return rows
 
 
@@ -87,17 +84,17 @@ def _feed_cells(rig: RigDefinition, feed: Feed, values: Values) -> tuple[str, st
     return liquid or position or "?", feed.valve, f"{feed.pump} {flow}"
 
 
-def _trunk(section: Section, labels: list[Text], moving: bool, width: int, more: bool) -> list[Text]:
+def _trunk(labels: list[Text], moving: bool, width: int) -> list[Text]:
     """The parts of a section in order, wrapped at ``width``."""
     style, bar = (MOVING, "━") if moving else (STILL, "─")
-    rows, row = [], Text(f"  {'┗' if moving else '└'}{bar} ", style)
+    rows, row = [], Text().append(f"  ▶{bar} ", style)
     first = True
     for label in labels:
         joint = "" if first else f" {bar}{bar} "
         if not first and cell_len(row.plain) + len(joint) + cell_len(label.plain) > width:
             row.append(f" {bar}{bar}", style)
             rows.append(row)
-            row, joint = Text(f"     {bar}{bar} ", style), ""
+            row, joint = Text().append(f"     {bar}{bar} ", style), ""
         row.append(joint, style)
         row.append_text(label)
         first = False
@@ -111,7 +108,7 @@ def _labels(rig: RigDefinition, section: Section, values: Values) -> list[Text]:
     for segment in section.segments:
         if segment.id in lines:
             continue
-        text = Text(segment.id, PART)
+        text = Text().append(segment.id, PART)
         for tag in _tags_at(rig, segment.id):
             entry = values.get(tag.id)
             style = {"bad": "bold red", "uncertain": "yellow"}.get(str((entry or {}).get("q")), "default")
@@ -132,7 +129,7 @@ def _outlet(path: FlowPath, values: Values) -> list[Text]:
         return []
     position = str(values.get(f"{path.outlet_valve}.position", {}).get("text", ""))
     outlet = path.outlets.get(position)
-    text = Text(path.outlet_valve, PART)
+    text = Text().append(path.outlet_valve, PART)
     if outlet is None or not outlet.vessel:
         return [text.append(f" {position or '?'}", "yellow")]
     text.append(" ▶ ", "green" if position != "waste" else "default").append(outlet.vessel)

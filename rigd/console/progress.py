@@ -40,39 +40,52 @@ def main(arguments: list[str]) -> int:
 
 
 def line(state: Watched, width: int) -> Text:
-    """The one line: time, phase, points, pressures, temperatures, conversion, time left, alarms."""
-    snapshot = state.snapshot
+    """The one line: time, phase, points, pressures, temperatures, conversion, time left, alarms.
+
+    What does not fit is left out in turn: first the bar, then the temperatures, then the pressures.
+    """
+    for without in ("", "bar", "bar temperature", "bar temperature pressure"):
+        text = _line(state.snapshot, without)
+        if text.cell_len < width:
+            return text
+    text.truncate(max(width - 1, 20), overflow="ellipsis")
+    return text
+
+
+def _line(snapshot: Mapping[str, Any], without: str) -> Text:
     phase, campaign = _mapping(snapshot.get("phase")), _mapping(snapshot.get("campaign"))
-    text = Text(no_wrap=True, overflow="ellipsis")
+    text = Text(no_wrap=True)
     if _mapping(snapshot.get("run")).get("simulated"):
         text.append("SIM ", style="bold red")
     text.append(f"{clock_words(snapshot.get('t_s'))} ", style="dim")
     stop = str(snapshot.get("stop", "none"))
-    text.append(f"{stop.upper() if stop not in ('none', '') else snapshot.get('state', '')} ", style="bold")
-    text.append(str(phase.get("label") or phase.get("id") or ""), style="green")
-    if isinstance(phase.get("progress"), int | float):
+    if stop not in ("none", ""):
+        text.append(f"{stop.upper()} ", style="bold red")
+    text.append(str(phase.get("label") or phase.get("id") or snapshot.get("state", "")), style="green")
+    if isinstance(phase.get("progress"), int | float) and "bar" not in without:
         text.append(f" {bar(float(phase['progress']), 8)}", style="cyan")
     if campaign.get("total"):
         text.append(f"  {campaign.get('done', 0)}/{campaign['total']} points", style="bold")
-    for part in readings(_mapping(snapshot.get("values"))):
-        text.append(f"  {part}")
+    for measures, reading in readings(_mapping(snapshot.get("values"))):
+        text.append("" if measures in without else f"  {reading}")
     left = campaign.get("left_s") if campaign.get("left_s") is not None else phase.get("left_s")
     if left is not None:
         text.append(f"  {left_words(left)} left", style="cyan")
     alarms = [alarm for alarm in snapshot.get("alarms") or () if isinstance(alarm, Mapping)]
     for alarm in sorted(alarms, key=lambda one: one.get("priority", 9))[:2]:
         text.append(f"  {alarm.get('id', '')}", style=PRIORITY_STYLES.get(alarm.get("priority", 4), "yellow"))
-    text.truncate(max(width - 1, 20), overflow="ellipsis")
     return text
 
 
-def readings(values: Mapping[str, Any]) -> list[str]:
-    """Pressures, then the hottest and coldest sensor's temperatures, then conversions: what fits on a line."""
+def readings(values: Mapping[str, Any]) -> list[tuple[str, str]]:
+    """(what it measures, text): pressures together, the first two sensors' temperatures, conversions."""
     bars = [quantity(entry, "pressure") for entry in values.values() if entry.get("u") == "bar"]
     warm = [quantity(e, "temperature") for tag, e in values.items() if e.get("u") == "degC" and "." not in tag]
-    parts = ["/".join(part.removesuffix(" bar") for part in bars[:3]) + " bar"] if bars else []
-    parts += ["/".join(part.removesuffix(" °C") for part in warm[:2]) + " °C"] if warm else []
-    return parts + [f"X {quantity(e, 'fraction')}" for tag, e in values.items() if tag.endswith(".conversion")]
+    parts = [("pressure", "/".join(part.removesuffix(" bar") for part in bars[:3]) + " bar")] if bars else []
+    if warm:
+        parts.append(("temperature", "/".join(part.removesuffix(" °C") for part in warm[:2]) + " °C"))
+    converted = [quantity(entry, "fraction") for tag, entry in values.items() if tag.endswith(".conversion")]
+    return parts + [("fraction", f"X {text}") for text in converted]
 
 
 def printed(event: Told) -> Text | None:

@@ -37,16 +37,14 @@ def view(state: Watched, rig: RigDefinition | None, path: FlowPath | None, width
     parts += [Rule(style="dim"), *_events(state.events)]
     if state.end:
         parts.append(Text(f"The run has ended: {state.end}.", style="bold"))
-    parts.append(
-        Text("q leaves; the run goes on. In another terminal: rigd hold, resume, stop, cut, acknowledge", "dim")
-    )
+    parts.append(Text("q leaves, the run goes on; in another terminal: rigd hold, resume, stop, cut", "dim"))
     return Group(*parts)
 
 
 def _headline(snapshot: Mapping[str, Any], width: int) -> Text:
     """Rig and recipe, SIMULATED, stop in force, clock; wrapped, never cut."""
     run = _mapping(snapshot.get("run"))
-    text = Text(f"{run.get('rig', '')}", style="bold")
+    text = Text().append(f"{run.get('rig', '')}", style="bold")
     text.append(f"  {run.get('recipe', '')}  ", style="default")
     if run.get("simulated"):
         pace = run.get("pace", 1)
@@ -65,9 +63,9 @@ def _progress_rows(snapshot: Mapping[str, Any], width: int) -> Group:
     phase, campaign = _mapping(snapshot.get("phase")), _mapping(snapshot.get("campaign"))
     label = str(phase.get("label") or phase.get("id") or "")
     point, step = str(phase.get("point") or ""), str(phase.get("step") or "")
-    text = Text(str(snapshot.get("state", "")), style="bold green")
+    text = Text().append(str(snapshot.get("state", "")), style="bold green")
     for part, style in ((label, "bold"), (point, "cyan"), (step, "default")):
-        if part:
+        if part and (part is label or part not in label):
             text.append("  " + part, style=style)
     done, total = campaign.get("done", 0), campaign.get("total", 0)
     second = Text()
@@ -76,11 +74,11 @@ def _progress_rows(snapshot: Mapping[str, Any], width: int) -> Group:
         second.append(bar(float(progress), min(24, width // 3)), style="cyan")
         second.append(f" {100 * min(max(progress, 0.0), 1.0):3.0f} %")
     if phase.get("left_s") is not None:
-        second.append(f"  {left_words(phase['left_s'])} left in this phase", style="default")
+        second.append(f"  phase {left_words(phase['left_s'])} left", style="default")
     if total:
-        second.append(f"   points {done}/{total}", style="bold")
+        second.append(f"  points {done}/{total}", style="bold")
     if campaign.get("left_s") is not None:
-        second.append(f"   {left_words(campaign['left_s'])} left in all")
+        second.append(f"  run {left_words(campaign['left_s'])} left")
     return Group(text, second) if second.plain else Group(text)
 
 
