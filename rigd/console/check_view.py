@@ -10,10 +10,13 @@ from rich.text import Text
 from rigd.console.checking import Checked
 from rigd.console.output import Output
 from rigd.console.trouble import print_problems
+from rigd.logic.planning import Plan
 from rigd.logic.response import Response
 from rigd.model.protection import Condition, ConditionKind, Interlock
 from rigd.model.rig import RigDefinition
+from rigd.report.words import clock, duration
 
+BAR = 24
 STOP_STYLES = {"CUT": "red", "QUENCH": "yellow", "HOLD": "cyan"}
 
 
@@ -23,6 +26,10 @@ def show_check(output: Output, found: Checked) -> None:
     if found.recipe is not None:
         output.say(Text.assemble((found.recipe.title, "bold"), f"  ({found.recipe.name})"))
     output.say("")
+    if found.plan is not None:
+        output.say(timeline(found.plan))
+        output.say(_volumes(found.rig, found.plan))
+        output.say("")
     output.say(cause_and_effect(found.rig, found.responses))
     output.say(_footnote(found))
     if found.problems:
@@ -30,6 +37,35 @@ def show_check(output: Output, found: Checked) -> None:
         print_problems(output.people, found.problems)
     verdict = ("fit to run", "bold green") if found.fit else ("NOT fit to run", "bold red")
     output.say(Text.assemble("\n", verdict))
+
+
+def timeline(planned: Plan) -> RenderableType:
+    """The phases with their times, flows and a bar each."""
+    table = Table(box=box.SIMPLE_HEAD, pad_edge=False, title="plan", title_justify="left", title_style="bold")
+    table.add_column("phase", overflow="fold")
+    for heading in ("begins", "takes", "flow mL/min", "refills"):
+        table.add_column(heading, justify="right")
+    table.add_column("", no_wrap=True)
+    for phase in planned.phases:
+        start, end = (
+            round(BAR * t / max(planned.duration_s, 1.0)) for t in (phase.start_s, phase.start_s + phase.duration_s)
+        )
+        mark = Text().append(" " * start).append("█" * max(1, end - start), "cyan" if phase.point else "dim")
+        flow = sum(phase.flows_mL_min.values())
+        times = [clock(phase.start_s), duration(phase.duration_s)]
+        table.add_row(phase.label, *times, f"{flow:.3g}" if flow else "–", str(phase.refills or ""), mark)
+    return table
+
+
+def _volumes(rig: RigDefinition, planned: Plan) -> Text:
+    """In all: time, liquids drawn against what there is, fractions, waste."""
+    there = {liquid.id: 0.0 for liquid in rig.liquids}
+    for vessel in rig.vessels:
+        if vessel.liquid:
+            there[vessel.liquid] += vessel.content_mL
+    parts = [f"{volume:.0f} of {there.get(name, 0):.0f} mL {name}" for name, volume in planned.used_mL.items()]
+    text = Text().append(f"{duration(planned.duration_s)} in all", "bold").append(f"; draws {', '.join(parts)}; ")
+    return text.append(f"{planned.collected_mL:.1f} mL collected, {planned.waste_mL:.0f} mL to waste. Estimates.")
 
 
 def cause_and_effect(rig: RigDefinition, times: tuple[Response, ...]) -> RenderableType:

@@ -9,6 +9,8 @@ from pathlib import Path
 from rigd.adapters.plugins import driver_family
 from rigd.config.load import load_pair
 from rigd.console.trouble import problem_facts
+from rigd.logic.planning import Plan, plan
+from rigd.logic.program import compile_program
 from rigd.logic.response import Response, largest_flow_mL_min, responses
 from rigd.model.problems import Problem, Severity
 from rigd.model.recipe import Recipe
@@ -21,6 +23,7 @@ class Checked:
 
     rig: RigDefinition
     recipe: Recipe | None
+    plan: Plan | None
     problems: tuple[Problem, ...]
     responses: tuple[Response, ...]
     flow_max_mL_min: float
@@ -38,6 +41,7 @@ class Checked:
             "recipe": self.recipe.name if self.recipe else None,
             "digests": {"rig": self.rig.digest, "recipe": self.recipe.digest if self.recipe else None},
             "problems": [problem_facts(problem) for problem in self.problems],
+            **(plan_facts(self.plan) if self.plan else {}),
             "interlocks": [response_facts(response) for response in self.responses],
         }
 
@@ -48,8 +52,37 @@ def check_files(rig_path: Path, recipe_path: Path | None) -> Checked:
     for device in pair.rig.devices:
         driver_family(device.driver).make(device)
     found = responses(pair.rig, pair.recipe)
-    problems = [*pair.warnings, *(_too_slow(response, str(rig_path)) for response in found if not response.fit)]
-    return Checked(pair.rig, pair.recipe, tuple(problems), found, largest_flow_mL_min(pair.rig, pair.recipe))
+    planned = plan(compile_program(pair.rig, pair.recipe)) if pair.recipe else None
+    severity = Severity.ERROR if pair.recipe else Severity.WARNING
+    problems = [*pair.warnings, *(planned.problems if planned else ())]
+    problems += [_too_slow(response, str(rig_path), severity) for response in found if not response.fit]
+    flow_mL_min = largest_flow_mL_min(pair.rig, pair.recipe)
+    return Checked(pair.rig, pair.recipe, planned, tuple(problems), found, flow_mL_min)
+
+
+def plan_facts(planned: Plan) -> dict[str, object]:
+    """The plan for programs."""
+    phases = [
+        {
+            "id": phase.id,
+            "label": phase.label,
+            "point": phase.point,
+            "start_s": phase.start_s,
+            "duration_s": phase.duration_s,
+            "flow_mL_min": dict(phase.flows_mL_min),
+            "drawn_mL": dict(phase.drawn_mL),
+            "refills": phase.refills,
+        }
+        for phase in planned.phases
+    ]
+    return {
+        "duration_s": planned.duration_s,
+        "used_mL": dict(planned.used_mL),
+        "collected_mL": planned.collected_mL,
+        "waste_mL": planned.waste_mL,
+        "refills": planned.refills,
+        "phases": phases,
+    }
 
 
 def response_facts(response: Response) -> Mapping[str, object]:
@@ -64,14 +97,15 @@ def response_facts(response: Response) -> Mapping[str, object]:
     }
 
 
-def _too_slow(response: Response, rig_path: str) -> Problem:
-    """A recipe that an interlock cannot answer in time is not fit to run."""
+def _too_slow(response: Response, rig_path: str, severity: Severity) -> Problem:
+    """A recipe that an interlock cannot answer in time is not fit to run; a rig alone may still get a slower one."""
     assert response.safety_s is not None
     return Problem(
         "response-slow",
         f"{response.interlock} answers in {response.budget.total_s:.2f} s, but at the largest flow only"
         f" {response.safety_s:.2f} s pass between its limit and the rating; at most half of that may be used",
         f"keep every total flow below {response.flow_max_mL_min:.3g} mL/min, or lower the limit, or poll faster",
+        severity=severity,
         file=rig_path,
         key=f"interlocks[{response.interlock}]",
     )

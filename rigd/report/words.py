@@ -4,9 +4,12 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping, Sequence
+from typing import TYPE_CHECKING
 
 from rigd.model.events import Event, EventKind
-from rigd.report.data import RunData
+
+if TYPE_CHECKING:
+    from rigd.report.data import RunData
 
 OUTCOMES = {
     "done": "Done",

@@ -1,0 +1,99 @@
+"""``rigd check``: exit codes, the promised keys, helpful answers to broken files."""
+
+from __future__ import annotations
+
+import json
+import shutil
+from pathlib import Path
+
+import pytest
+
+from rigd.console.cli import call
+
+CONFIGS = Path(__file__).resolve().parents[2] / "configs"
+RIG, RECIPE = "rigs/two-pump-column.toml", "recipes/demo-sweep.toml"
+
+
+@pytest.fixture
+def files(tmp_path):
+    shutil.copytree(CONFIGS, tmp_path / "configs")
+    return tmp_path / "configs"
+
+
+def change(path: Path, old: str, new: str) -> int:
+    """Change the first occurrence; returns its line."""
+    text = path.read_text()
+    assert old in text
+    path.write_text(text.replace(old, new, 1))
+    return text[: text.index(old)].count("\n") + 1
+
+
+def check(files: Path, capsys, *more: str) -> tuple[int, dict, str]:
+    code = call(["check", str(files / RIG), str(files / RECIPE), "--json", *more])
+    captured = capsys.readouterr()
+    return code, json.loads(captured.out), captured.err
+
+
+def test_the_example_is_fit_and_has_the_promised_keys(files, capsys):
+    code, facts, _ = check(files, capsys)
+    assert code == 0
+    assert facts["fit"] is True
+    assert {"problems", "duration_s", "used_mL", "interlocks"} <= set(facts)
+    pressure = next(lock for lock in facts["interlocks"] if lock["id"] == "PRESSURE-HIGH")
+    assert {"response_time_s", "process_safety_time_s", "margin"} <= set(pressure)
+    assert pressure["process_safety_time_s"] == pytest.approx(12.0 * 0.02 / (4 / 60))  # (20 - 8) bar x C / Q by hand
+    assert pressure["margin"] > 1
+    assert facts["duration_s"] > 600
+    assert facts["used_mL"]["acid-feed"] > 5
+
+
+def test_people_see_the_table_and_the_verdict(files, capsys):
+    assert call(["check", str(files / RIG), str(files / RECIPE)]) == 0
+    shown = capsys.readouterr().out
+    for words in ("PRESSURE-HIGH", "1oo2", "above 8 bar", "fit to run", "relief device"):
+        assert words in shown
+
+
+def test_a_rig_alone_is_checked_at_the_pumps_largest_rates(files, capsys):
+    assert call(["check", str(files / RIG), "--json"]) == 0
+    facts = json.loads(capsys.readouterr().out)
+    pressure = next(lock for lock in facts["interlocks"] if lock["id"] == "PRESSURE-HIGH")
+    assert pressure["process_safety_time_s"] == pytest.approx(12.0 * 0.02 / (10 / 60))
+
+
+def test_a_rig_too_stiff_for_its_flow_is_not_fit(files, capsys):
+    path = files / RIG
+    path.write_text(path.read_text().replace('compliance = "0.01 mL/bar"', 'compliance = "0.002 mL/bar"'))
+    code, facts, people = check(files, capsys)
+    assert code == 1
+    assert facts["fit"] is False
+    assert [problem["code"] for problem in facts["problems"]].count("response-slow") >= 1
+    assert "NOT fit to run" in people
+    assert "mL/min" in people
+
+
+BROKEN = [
+    (RIG, 'bore = "10.30 mm"', 'bore = "10.30"', "unit"),
+    (RIG, 'stroke_volume = "5 mL"', 'stroke_volume = "5 min"', "volume"),
+    (RIG, "syringes = 2", "syringse = 2", "syringes"),
+    (RIG, 'to = "V-A.solvent"', 'to = "V-Z.solvent"', "V-Z"),
+    (RIG, 'id = "PU-B"', 'id = "PU-A"', "PU-A"),
+    (RIG, 'above = "8 bar" }, { tag', 'above = "80 bar" }, { tag', "bar"),
+    (RIG, 'schema = "rigd-rig-1"', 'schema = "rigd-rig-1', "TOML"),
+    (RECIPE, 'total_flow = "4 mL/min"', 'total_flow = "4 mL/mn"', "mL/min"),
+    (RECIPE, "PU-A = 1", "PU-X = 1", "PU-X"),
+    (RECIPE, 'signal = "IR.conversion"', 'signal = "IR.convrsion"', "IR.conversion"),
+]
+
+
+@pytest.mark.parametrize(("name", "old", "new", "hint"), BROKEN, ids=[row[2][:24] for row in BROKEN])
+def test_ten_broken_files_get_ten_helpful_answers(files, name, old, new, hint, capsys):
+    line = change(files / name, old, new)
+    code = call(["check", str(files / RIG), str(files / RECIPE)])
+    shown = capsys.readouterr().err
+    assert code == 2
+    assert "Traceback" not in shown
+    assert hint in shown
+    assert f"{Path(name).name}:" in shown
+    assert any(f".toml:{number}" in shown for number in (line, line - 1, line + 1)) or "PU-A" in new
+    assert "do: " in shown
