@@ -109,7 +109,7 @@ def _mismatch(valve: str) -> Interlock:
     return Interlock(
         id=f"MISMATCH-{valve}",
         title=f"{valve} is not where it was told to be",
-        causes=(Condition(ConditionKind.MISMATCH, f"{valve}.position", reference=valve),),
+        causes=(Condition(ConditionKind.MISMATCH, f"{valve}.position"),),
         stop=Stop.CUT,
         on_delay_ns=ns(MISMATCH_S),
         consequence="a pump runs against a closed port, or the wrong liquid reaches the bed",

@@ -27,7 +27,7 @@ from rigd.model.chemistry import Chemistry
 from rigd.model.devices import DeviceSpec
 from rigd.model.orders import Stop
 from rigd.model.protection import Alarm, ConditionKind, Interlock, Priority
-from rigd.model.rig import Cell, Chiller, Outside, Pump, RigDefinition, Simulation, Tag, Valve
+from rigd.model.rig import Cell, Chiller, Outside, Pump, RigDefinition, Simulation, Tag, TagKind, Valve
 
 _STOPS = {"cut": Stop.CUT, "quench": Stop.QUENCH, "hold": Stop.HOLD}
 
@@ -173,6 +173,7 @@ def _alarm(table: AlarmTable, maker: ConditionMaker) -> Alarm | None:
 def _devices(file: RigFile, rig: RigDefinition) -> tuple[DeviceSpec, ...]:
     facts = _facts(rig)
     units = {device: unit for unit, device in _units(rig)}
+    retries = {link.id: link.retries for link in rig.links}
     return tuple(
         DeviceSpec(
             id=table.id,
@@ -184,7 +185,7 @@ def _devices(file: RigFile, rig: RigDefinition) -> tuple[DeviceSpec, ...]:
             channels=channels_of(table.id, rig.tags),
             serial_no=table.serial_no,
             options=table.options,
-            facts=facts.get(table.id, {}),
+            facts={**facts.get(table.id, {}), "retries": retries.get(table.link, 0)},
         )
         for table in file.devices
     )
@@ -198,32 +199,26 @@ def _units(rig: RigDefinition) -> tuple[tuple[str, str], ...]:
 
 def _facts(rig: RigDefinition) -> Mapping[str, Mapping[str, object]]:
     """What a driver must know of the unit behind its device, by device; names as in the model."""
-    facts: dict[str, Mapping[str, object]] = {}
+    facts: dict[str, dict[str, object]] = {}
     for pump in rig.pumps:
-        facts[pump.device] = {
-            "kind": "pump",
-            "syringes": pump.syringes,
-            "bore_mm": pump.bore_mm,
-            "stroke_mL": pump.stroke_mL,
-            "dead_mL": pump.dead_mL,
-            "rate_min_mL_min": pump.rate_min_mL_min,
-            "rate_max_mL_min": pump.rate_max_mL_min,
-            "refill_rate_mL_min": pump.refill_rate_mL_min,
-        }
+        names = ("syringes", "bore_mm", "stroke_mL", "dead_mL")
+        rates = ("rate_min_mL_min", "rate_max_mL_min", "refill_rate_mL_min")
+        facts[pump.device] = {name: getattr(pump, name) for name in (*names, *rates)}
     for valve in rig.valves:
-        facts[valve.device] = {
-            "kind": "valve",
-            "positions": valve.positions,
-            "rest": valve.rest,
-            "travel_s": valve.travel_s,
-        }
+        facts[valve.device] = {name: getattr(valve, name) for name in ("positions", "rest", "travel_s")}
     for chiller in rig.chillers:
-        facts[chiller.device] = {
-            "kind": "chiller",
-            "low_degC": chiller.low_degC,
-            "high_degC": chiller.high_degC,
-            "safe_degC": chiller.safe_degC,
-        }
+        facts[chiller.device] = {name: getattr(chiller, name) for name in ("low_degC", "high_degC", "safe_degC")}
     for cell in rig.cells:
-        facts[cell.device] = {"kind": "cell", "path_um": cell.path_um, "period_s": cell.period_ns / 1e9}
+        facts[cell.device] = {"path_um": cell.path_um, "period_s": cell.period_ns / 1e9}
+    for device, spans in _spans(rig).items():
+        facts.setdefault(device, {})["spans"] = spans
     return facts
+
+
+def _spans(rig: RigDefinition) -> Mapping[str, Mapping[str, tuple[float, float]]]:
+    """Span of each measured channel, by device."""
+    spans: dict[str, dict[str, tuple[float, float]]] = {}
+    for tag in rig.tags:
+        if tag.kind is TagKind.MEASURED:
+            spans.setdefault(tag.device, {})[tag.channel] = (tag.low, tag.high)
+    return spans

@@ -89,8 +89,9 @@ def _missing(model: type[Table], path: Path, field: FieldInfo | None) -> Finding
     if isinstance(path[-1], int):
         return "list-length", "the list is too short; two values are needed", "write both ends, lower one first"
     table = table_at(model, path[:-1])
-    about = f" ({(table.__doc__ or '').strip().splitlines()[0].rstrip('.')})" if table and len(path) > 1 else ""
-    return "key-missing", f"{path[-1]!r} is missing{about}", _example(path, field)
+    about = (table.__doc__ or "").partition(".")[0].partition(",")[0].partition(";")[0] if table else ""
+    where = f" here: {about[0].lower()}{about[1:]}" if about and len(path) > 1 else ""
+    return "key-missing", f"{path[-1]!r} is missing{where}", _example(path, field)
 
 
 def _choice(field: FieldInfo | None, value: object, found: str) -> Finding:
