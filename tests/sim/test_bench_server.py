@@ -140,6 +140,14 @@ def test_a_second_tcp_master_is_turned_away_while_the_first_lives(tmp_path: Path
             assert first.recv(200).startswith(b"(1101 ok")
 
 
+@pytest.mark.parametrize("transport", ["pty", "tcp"])
+def test_the_server_ends_well_while_a_client_is_connected(tmp_path: Path, transport: str) -> None:
+    with served(tmp_path, transport=transport) as ports:
+        bus = opened(ports["bus"])
+        assert "state=stopped" in ask(bus, STATUS)
+    bus.close()
+
+
 def test_a_client_that_never_reads_does_not_block_the_server(tmp_path: Path) -> None:
     with served(tmp_path, 50.0) as ports:
         deaf = os.open(ports["bus"], os.O_RDWR | os.O_NOCTTY | os.O_NONBLOCK)

@@ -19,6 +19,7 @@ from rigd.ports.plant import PlantMaker, SimulatorOptions
 from rigd_sim.bench.control import Commands, ControlDoor, Halt
 from rigd_sim.bench.ends import MAKERS, End
 from rigd_sim.bench.meeting import Meeting
+from rigd_sim.bench.warm import warm_up
 from rigd_sim.bench.world import Arrival, TICK_wall_s, World
 from rigd_sim.emulators.assemble import emulated_lines
 from rigd_sim.emulators.line_faults import LINE_KINDS
@@ -32,7 +33,7 @@ PACE_MAX = 1000.0
 class Server:
     """One world behind open ports."""
 
-    def __init__(self, world: World, ends: Mapping[str, End], halt: Halt) -> None:
+    def __init__(self, world: World, ends: Mapping[str, End], halt: Halt, selector: selectors.BaseSelector) -> None:
         self._world = world
         self._ends = ends
         self._halt = halt
@@ -41,14 +42,14 @@ class Server:
         self._due: list[tuple[float, int, str, bytes]] = []
         self._count = 0
         self._warned = False
-        self.selector = selectors.DefaultSelector()
+        self._selector = selector
         for link, end in ends.items():
-            end.attach(self.selector, partial(self._heard, link))
+            end.attach(self._selector, partial(self._heard, link))
 
     def run(self) -> None:
         """Serve until told to stop."""
         while not self._halt.asked:
-            for key, _ in self.selector.select(self._pause_s()):
+            for key, _ in self._selector.select(self._pause_s()):
                 key.data()
             if self._wall_s() - self._moved_s >= TICK_wall_s:
                 self.catch_up()
@@ -116,19 +117,20 @@ def _opened(
         raise RigError(f"transport {options.transport!r} is not one of {', '.join(MAKERS)}")
     meeting = Meeting(options.folder)
     stack.callback(meeting.close)
+    warm_up(maker.make(rig, options.seed), rig)
     plant = maker.make(rig, options.seed)
     lines = emulated_lines(rig, plant, options.pace, options.seed)
     world = World(plant, lines, {spec.id: spec.link for spec in rig.devices}, LINE_KINDS, options.pace)
     for fault in options.faults:
         world.inject(fault)
+    selector = stack.enter_context(selectors.DefaultSelector())  # closed last: the ends take themselves out of it
     ends: dict[str, End] = {}
     for link in lines:
         ends[link] = MAKERS[options.transport]()
         stack.callback(ends[link].close)
     commands = Commands(world, [*maker.fault_kinds(), *LINE_KINDS], halt)
-    server = Server(world, ends, halt)
-    stack.callback(server.selector.close)
-    door = ControlDoor(meeting.socket_path, commands, server.selector, server.catch_up)
+    server = Server(world, ends, halt, selector)
+    door = ControlDoor(meeting.socket_path, commands, selector, server.catch_up)
     stack.callback(door.close)
     ports = {link: end.name for link, end in ends.items()}
     meeting.announce(rig.name, options.pace, ports)

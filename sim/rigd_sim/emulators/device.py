@@ -179,12 +179,14 @@ class BracketDevice(Device):
         return NO_ARGUMENTS if words else f"ok {fixed(self._silence_s, 1)}"
 
 
-def told(refusal: str) -> str:
-    """The reply to a command that the plant took ("") or refused with its own words."""
+def told(refusal: str, why: str = "not now") -> str:
+    """The reply to a command that the plant took ("") or refused; ``why`` explains a refusal that says only "state"."""
     if not refusal:
         return "ok"
-    first, *rest = [word(part) for part in refusal.replace(":", " ").split()]
-    return " ".join(["no", first, *rest]) if first in REASONS else " ".join(["no", "state", first, *rest])
+    words = [word(part) for part in refusal.replace(":", " ").split()]
+    if words == ["state"]:
+        words += why.split()
+    return " ".join(["no", *words] if words[0] in REASONS else ["no", "state", *words])
 
 
 def number_within(words: Sequence[str], low: float, high: float, decimals: int) -> tuple[float, str]:

@@ -69,7 +69,7 @@ class SyringePump(BracketDevice):
 
     def _rate(self, words: Sequence[str]) -> str:
         rate, refusal = number_within(words, self._pump.rate_min_mL_min, self._pump.rate_max_mL_min, 4)
-        return refusal or self._not_ready() or told(self.tell(Action.DELIVER, rate))
+        return refusal or self._not_ready() or told(self.tell(Action.DELIVER, rate), "no liquid")
 
     def _not_ready(self) -> str:
         """Why the pump may not deliver now, or ""."""
@@ -90,7 +90,7 @@ class SyringePump(BracketDevice):
         volume, refusal = number_within(words, 0.0, self._pump.stroke_mL, 3)
         if not refusal and self._pump.syringes == 1 and self._state() in (PumpState.DELIVERING, PumpState.REFILLING):
             refusal = "no state that syringe is moving"
-        return refusal or told(self.tell(Action.FILL, volume))
+        return refusal or told(self.tell(Action.FILL, volume), "that syringe is moving")
 
     def _swap(self, words: Sequence[str]) -> str:
         if words:
@@ -99,7 +99,7 @@ class SyringePump(BracketDevice):
             return "no state one syringe only"
         if self._read()["standby"] <= _NOTHING_mL:
             return "no state standby is empty"
-        return told(self.tell(Action.SWAP, 0.0))
+        return told(self.tell(Action.SWAP, 0.0), "standby is filling")
 
     def _status(self, words: Sequence[str]) -> str:
         if words:
