@@ -103,7 +103,7 @@ class DescriptorLink:
     async def _writable(self) -> None:
         self._inbox.check()
         ready: asyncio.Future[None] = self._loop.create_future()
-        self._loop.add_writer(self._fd, lambda: ready.done() or ready.set_result(None))
+        self._loop.add_writer(self._fd, _mark, ready)
         try:
             await ready
         finally:
@@ -121,3 +121,8 @@ class DescriptorLink:
             self._loop.remove_reader(self._fd)
             self._loop.remove_writer(self._fd)
         self._inbox.end(reason)
+
+
+def _mark(ready: asyncio.Future[None]) -> None:
+    if not ready.done():
+        ready.set_result(None)

@@ -8,6 +8,7 @@ from __future__ import annotations
 import contextlib
 import errno
 import sys
+from typing import Any
 
 import serial
 
@@ -26,9 +27,9 @@ _REMEDY = {
 THREAD_POLL_S = 0.1
 
 
-def open_port(spec: LinkSpec) -> serial.SerialBase:
+def open_port(spec: LinkSpec) -> serial.Serial:
     """Open and set up the port; raises ``LinkBusy`` for one in use, else ``LinkClosed``, each with one sentence."""
-    settings: dict[str, object] = {
+    settings: dict[str, Any] = {
         "baudrate": spec.baud,
         "bytesize": spec.data_bits,
         "parity": _PARITY.get(spec.parity, spec.parity),
@@ -48,14 +49,14 @@ def open_port(spec: LinkSpec) -> serial.SerialBase:
     return port
 
 
-def make_link(spec: LinkSpec, port: serial.SerialBase) -> DescriptorLink | ThreadLink:
+def make_link(spec: LinkSpec, port: serial.Serial) -> DescriptorLink | ThreadLink:
     """The link for an open port: watched by the loop where it has a descriptor of its own, else a thread."""
     if _watchable(port):
         return DescriptorLink(spec.port, port.fileno(), port.close, port.reset_output_buffer)
     return ThreadLink(spec.port, port)
 
 
-def _watchable(port: serial.SerialBase) -> bool:
+def _watchable(port: serial.Serial) -> bool:
     return sys.platform != "win32" and type(port) is serial.Serial
 
 
@@ -67,7 +68,7 @@ def _explain(name: str, error: OSError) -> LinkError:
     return LinkClosed(f"cannot open port {name}: {remedy or error}")
 
 
-def _low_latency(port: serial.SerialBase) -> None:
+def _low_latency(port: serial.Serial) -> None:
     """Ask USB adapters not to hold bytes back for 16 ms; ports that know no such thing say so, and that is fine."""
     ask = getattr(port, "set_low_latency_mode", None)
     if ask is not None:

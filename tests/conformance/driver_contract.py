@@ -72,7 +72,7 @@ class DriverContract:
 
     def test_an_unknown_dialect_is_refused(self) -> None:
         with pytest.raises(ConfigError, match="dialect"):
-            self.case.family.make(replace(self.case.spec, dialect="klingon"))
+            self.case.family.make(replace(self.case.spec, dialect="morse"))
 
     def test_the_schema_accepts_the_options_and_refuses_others(self) -> None:
         for dialect in self.case.family.dialects:
