@@ -47,7 +47,8 @@ def explain(error: Exception, output: Output) -> int:
 def problem_block(problem: Problem) -> Group:
     """One problem as lines: where; the source line with a caret; what was found and is allowed; what to do."""
     place = f"{problem.file}:{problem.line}" if problem.line else problem.file
-    head = Text.assemble((problem.severity.value, STYLES[problem.severity]), "  ", (place, "bold"))
+    head = Text(no_wrap=True, overflow="ignore")  # an editor's link must stay whole
+    head.append(problem.severity.value, STYLES[problem.severity]).append(f"  {place}", "bold")
     if problem.key:
         head.append(f"  {problem.key}", "cyan")
     lines = [head, *_source_lines(problem), Text(f"  {problem.message}")]
@@ -59,7 +60,7 @@ def problem_block(problem: Problem) -> Group:
 def print_problems(console: Console, problems: Sequence[Problem]) -> None:
     """All problems, an empty line between, and how many there are."""
     for problem in problems:
-        console.print(problem_block(problem))
+        console.print(problem_block(problem), crop=False)
         console.print()
     errors = sum(problem.severity is Severity.ERROR for problem in problems)
     others = len(problems) - errors

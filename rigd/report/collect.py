@@ -55,7 +55,7 @@ def read_run(folder: Path, rig: RigDefinition | None = None, recipe: Recipe | No
 def phase_spans(events: Sequence[Event], end_s: float) -> tuple[PhaseSpan, ...]:
     """Spans between PHASE events; the last one lasts until ``end_s``."""
     starts = [event for event in events if event.kind is EventKind.PHASE]
-    ends = [event.t_ns / 1e9 for event in starts[1:]] + [end_s]
+    ends = [*(event.t_ns / 1e9 for event in starts[1:]), end_s][: len(starts)]
     return tuple(
         PhaseSpan(
             event.subject,

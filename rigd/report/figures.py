@@ -105,7 +105,8 @@ def timeline_figure(run: RunData) -> str:
             axes.set_ylim(bottom=0)
         if what == "fraction":
             _collections(axes, run.points, scale)
-        axes.legend(loc="upper left", bbox_to_anchor=(1.0, 1.0), fontsize=8, handlelength=1.2)
+        if traces:
+            axes.legend(loc="upper left", bbox_to_anchor=(1.0, 1.0), fontsize=8, handlelength=1.2)
     rows[-1][0].set_xlabel(f"time since the start / {unit}")
     rows[-1][0].set_xlim(0, max(run.duration_s, 1.0) / scale)
     _mark_simulated(figure, run.simulated)
