@@ -1,9 +1,9 @@
 """The packed bed: liquid between the beads moves (a conveyor), beads, heat and activity stay where they are.
 
-Place ``i`` of the bed (fixed) holds the part ``fill`` of slot ``i`` and the part ``v - fill`` of slot ``i + 1``. Liquid
-inside beads exchanges with the liquid passing by at a linear driving force (E. Glueckauf, Trans. Faraday Soc. 51 (1955)
-1540-1551: 15 De/R^2), solved exactly over the step. Reactions on the packing run in the moving liquid at the temperature
-and activity of the place (rate constants are per litre of interstitial liquid).
+Place ``i`` of the bed (fixed) holds the part ``fill`` of slot ``i`` and the part ``v - fill`` of slot ``i + 1``.
+Liquid inside beads exchanges with the liquid passing by at a linear driving force (E. Glueckauf, Trans. Faraday Soc. 51
+(1955) 1540-1551: 15 De/R^2), solved exactly over the step. Reactions on the packing run in the moving liquid at the
+temperature and activity of the place (rate constants are per litre of interstitial liquid).
 
 Heat, one temperature per place (liquid and beads in equilibrium, closed ends, upwind, implicit):
     H dT_i/dt = rho cp Q (T_up - T_i) + conduction + g_wall (T_jacket - T_i) + g_end (T_room - T_end) + heat of reaction

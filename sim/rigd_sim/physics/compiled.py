@@ -1,10 +1,12 @@
-"""The one door to the just-in-time compiler: kernels are plain Python loops over arrays, compiled once and cached
-on disk."""
+"""The one door to the just-in-time compiler.
+
+Kernels are plain Python loops over arrays; compiled once, cached on disk beside the source.
+"""
 
 from __future__ import annotations
 
 from collections.abc import Callable
-from typing import TypeVar, cast
+from typing import Any, TypeVar, cast
 
 import numba
 import numpy as np
@@ -14,13 +16,15 @@ Floats = NDArray[np.float64]
 Ints = NDArray[np.int64]
 F = TypeVar("F", bound=Callable[..., object])
 
+_njit: Any = numba.njit  # its type stub leaves out the two options that make it quick
+_OPTIONS: dict[str, Any] = {"cache": True, "error_model": "numpy", "no_cfunc_wrapper": True}
+
 
 def compiled(function: F) -> F:
-    """Compile a kernel; the cache lies beside the source, so a person waits for it once."""
-    return cast(F, numba.njit(cache=True, error_model="numpy", no_cfunc_wrapper=True)(function))
+    """Compile a kernel that Python calls."""
+    return cast(F, _njit(**_OPTIONS)(function))
 
 
 def inner(function: F) -> F:
     """Compile a function that only kernels call: no way in from Python, so it is ready sooner."""
-    options = {"cache": True, "error_model": "numpy", "no_cfunc_wrapper": True, "no_cpython_wrapper": True}
-    return cast(F, numba.njit(**options)(function))
+    return cast(F, _njit(no_cpython_wrapper=True, **_OPTIONS)(function))

@@ -71,7 +71,7 @@ def push_backward(cells: Floats, s: int, n: int, v: float, fill: float, amount: 
 def disperse(cells: Floats, s: int, n: int, v: float, fill: float, exchange: float, work: Floats) -> None:
     """Backward-Euler dispersion. ``exchange`` = D A dt / dx [m3]: volume exchanged between neighbours one cell apart.
 
-    ``work[7]`` is scratch of at least n + 1. The end slots are shorter, so their centres are nearer to their neighbours.
+    ``work[7]`` is scratch of at least n + 1. The end slots are shorter, so their neighbours are nearer.
     """
     width = cells.shape[1]
     head = fill / v

@@ -46,7 +46,7 @@ def _product(c: Floats, i: int, kin: Floats, r: int, at: int, species: int) -> f
 
 @inner
 def rates(c: Floats, i: int, kin: Floats, species: int, work: Floats, out: int) -> None:
-    """Rates [mol/(m3 s)] of all reactions in row ``i`` with the constants in ``work[5]``, to row ``out`` of ``work``."""
+    """Rates [mol/(m3 s)] of all reactions in row ``i``, constants from ``work[5]``, to row ``out`` of ``work``."""
     for r in range(kin.shape[0]):
         k = work[5, r]
         value = 0.0

@@ -162,10 +162,8 @@ def transport_step(
         move(1.0 / parts, link, edge, cells, node, node_c, mark, amount, work)
         for e in range(edge.shape[1]):
             if edge[EXCHANGE, e] > 0.0:
-                disperse(
-                    cells, link[START, e], link[CELLS, e], edge[CELL_VOLUME, e], edge[FILL, e], edge[EXCHANGE, e] * part,
-                    work,
-                )  # fmt: skip
+                s, n, v = link[START, e], link[CELLS, e], edge[CELL_VOLUME, e]
+                disperse(cells, s, n, v, edge[FILL, e], edge[EXCHANGE, e] * part, work)
         for b in range(bed.shape[1]):
             e = bed[EDGE, b]
             s, n, v = link[START, e], link[CELLS, e], edge[CELL_VOLUME, e]

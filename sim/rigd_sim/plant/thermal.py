@@ -71,9 +71,10 @@ class Thermal:
         stream = fluid.density(room) * fluid.heat_capacity_J_kg_K * flow
         t = contents.temperature[rows]
         wall = bed.column.wall_conductance_W_K / bed.cells
+        axial = BED_CONDUCTIVITY_W_M_K * bed.section / (bed.length / bed.cells)
         given = heat_bed(
-            contents.place, bed.start, bed.cells, dt, self.capacity(bed), stream, room, BED_CONDUCTIVITY_W_M_K * bed.section / (bed.length/ bed.cells),
-            wall, self.jacket(bed.column.id), END_LOSS_W_K, room, self._work,
+            contents.place, bed.start, bed.cells, dt, self.capacity(bed), stream, room, axial, wall,
+            self.jacket(bed.column.id), END_LOSS_W_K, room, self._work,
         )  # fmt: skip
         outlet = t[-1] if stream >= 0.0 else t[0]
         self.book.stream += abs(stream) * (room - float(outlet)) * dt
