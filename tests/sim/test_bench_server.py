@@ -199,7 +199,7 @@ def test_control_lines(tmp_path: Path) -> None:
         ({"do": "dance"}, "fault, clear, truth, faults, stop"),
         ({"do": "fault", "kind": "line-dead"}, "target"),
         ({"do": "fault", "kind": "line-dead", "target": "nowhere"}, "bus, chiller, port, pump, valve"),
-        ({"do": "fault", "kind": "unknown", "target": "pump"}, "no fault is called"),
+        ({"do": "fault", "kind": "unknown", "target": "pump"}, "one of known, line-dead"),
         ({"do": "fault", "kind": "line-dead", "target": "bus", "magnitude": "big"}, "must be a number"),
     ],
 )
@@ -254,7 +254,7 @@ def test_what_a_killed_server_left_behind_is_replaced(tmp_path: Path) -> None:
         (SimulatorOptions("", pace=0.0), "pace"),
         (SimulatorOptions("", pace=float("nan")), "pace"),
         (SimulatorOptions("", transport="smoke"), "pty, tcp"),
-        (SimulatorOptions("", faults=(FaultSpec("unknown", "x"),)), "no fault is called"),
+        (SimulatorOptions("", faults=(FaultSpec("unknown", "x"),)), "there is no fault 'unknown'"),
     ],
 )
 def test_wrong_options_give_one_sentence_and_leave_nothing(

@@ -21,13 +21,13 @@ import json
 import math
 import selectors
 import socket
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Callable, Mapping
 from dataclasses import asdict, dataclass
 from pathlib import Path
 from typing import Any
 
 from rigd.model.errors import DoorError, RigError
-from rigd.ports.plant import FaultKind, FaultSpec
+from rigd.ports.plant import FaultSpec
 from rigd_sim.bench.meeting import SOCKET
 from rigd_sim.bench.world import World
 
@@ -66,9 +66,8 @@ class Halt:
 class Commands:
     """What the control lines do to a world."""
 
-    def __init__(self, world: World, kinds: Sequence[FaultKind], halt: Halt) -> None:
+    def __init__(self, world: World, halt: Halt) -> None:
         self._world = world
-        self._kinds = kinds
         self._halt = halt
 
     def answer(self, line: bytes) -> Answer:
@@ -99,7 +98,7 @@ class Commands:
 
     def _faults(self, message: Answer) -> Answer:
         active = [{name: _finite(value) for name, value in asdict(fault).items()} for fault in self._world.faults()]
-        return {"t_s": self._world.now_s, "active": active, "kinds": [asdict(kind) for kind in self._kinds]}
+        return {"t_s": self._world.now_s, "active": active, "kinds": [asdict(kind) for kind in self._world.kinds]}
 
     def _stop(self, message: Answer) -> Answer:
         self._halt.asked = True

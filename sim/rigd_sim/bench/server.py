@@ -120,7 +120,8 @@ def _opened(
     warm_up(maker.make(rig, options.seed), rig)
     plant = maker.make(rig, options.seed)
     lines = emulated_lines(rig, plant, options.pace, options.seed)
-    world = World(plant, lines, {spec.id: spec.link for spec in rig.devices}, LINE_KINDS, options.pace)
+    devices = {spec.id: spec.link for spec in rig.devices}
+    world = World(plant, lines, devices, maker.fault_kinds(), LINE_KINDS, options.pace)
     for fault in options.faults:
         world.inject(fault)
     selector = stack.enter_context(selectors.DefaultSelector())  # closed last: the ends take themselves out of it
@@ -128,7 +129,7 @@ def _opened(
     for link in lines:
         ends[link] = MAKERS[options.transport]()
         stack.callback(ends[link].close)
-    commands = Commands(world, [*maker.fault_kinds(), *LINE_KINDS], halt)
+    commands = Commands(world, halt)
     server = Server(world, ends, halt, selector)
     door = ControlDoor(meeting.socket_path, commands, selector, server.catch_up)
     stack.callback(door.close)

@@ -23,9 +23,11 @@ class World:
         plant: Plant,
         lines: Mapping[str, EmulatedLine],
         devices: Mapping[str, str],
+        plant_kinds: Sequence[FaultKind],
         line_kinds: Sequence[FaultKind],
         pace: float = 1.0,
     ) -> None:
+        self.kinds = (*plant_kinds, *line_kinds)
         self._plant = plant
         self._lines = lines
         self._links = {**devices, **{link: link for link in lines}}
@@ -54,6 +56,9 @@ class World:
 
     def inject(self, fault: FaultSpec) -> None:
         """Add a fault to the plant or to a line. ``ConfigError`` for an unknown kind or target."""
+        if fault.kind not in {kind.kind for kind in self.kinds}:
+            known = ", ".join(kind.kind for kind in self.kinds)
+            raise ConfigError((Problem("fault-kind", f"there is no fault {fault.kind!r}", f"name one of {known}"),))
         if fault.kind in self._line_kinds:
             self._line_of(fault.target).inject(fault)
         else:
