@@ -70,8 +70,9 @@ class Program:
     to the tag that carries it; ``stale_ns`` holds every tag that must be renewed, and the age at which it is bad.
     ``supply`` maps a pump to {valve position: line from a vessel}; ``drain`` maps an outlet position ("" without an
     outlet valve) to the vessel behind it, "" when closed. ``tags_of`` lists the tags of a device, ``carries`` is the
-    inverse of ``feedback``. The rest serves protect: ``watches`` are all conditions, found by tag (``watching``), by
-    device or fault (``untagged``) or by interlock or alarm (``causes``); ``ringed`` tags keep their recent past.
+    inverse of ``feedback``, ``counting`` the tags that the volume ledger follows. The rest serves protect: ``watches``
+    are all conditions, found by tag (``watching``), by device or fault (``untagged``) or by interlock or alarm
+    (``causes``); ``ringed`` tags keep their recent past.
     """
 
     rig: RigDefinition
@@ -94,6 +95,7 @@ class Program:
     drain: Mapping[str, str]
     tags_of: Mapping[str, tuple[str, ...]]
     carries: Mapping[str, tuple[str, str]]
+    counting: frozenset[str]
     gates: Mapping[str, Gate]
     watches: tuple[Watch, ...]
     watching: Mapping[str, tuple[Watch, ...]]
@@ -138,6 +140,7 @@ def compile_program(rig: RigDefinition, recipe: Recipe, options: RunOptions | No
         drain=_drain(rig, path),
         tags_of=_grouped((tag.device, tag.id) for tag in rig.tags if tag.device),
         carries={tag: key for key, tag in feedback.items()},
+        counting=frozenset(tag for key, tag in feedback.items() if key[1] in ("delivered", "position")),
         gates={tag.id: gate(tag) for tag in rig.tags},
         watches=watches,
         watching=_grouped((tag, watch) for watch in watches for tag in _looks_at(watch)),

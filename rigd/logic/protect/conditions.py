@@ -27,6 +27,7 @@ class Channel(IntEnum):
     UNKNOWN = 4
 
 
+_HIGH, _BAD = ConditionKind.HIGH, Quality.BAD
 _CLEAR, _ACTIVE, _BAD_ACTIVE = Channel.CLEAR, Channel.ACTIVE, Channel.BAD_ACTIVE
 
 
@@ -135,6 +136,10 @@ class Judge:
         if sample is None:
             return
         held = self._before.channels[watch.index] if self._channels is None else self._channels[watch.index]
+        condition = watch.condition
+        quiet = held is _CLEAR and condition.kind is _HIGH and sample.quality is not _BAD
+        if quiet and sample.value <= condition.limit:  # by far the most common case: nothing changes
+            return
         now = self._judge(watch, held, sample)
         if now is not held:
             self.put(watch, now, sample.t_ns if now is _ACTIVE else self._now_ns)

@@ -91,8 +91,8 @@ def update(
 ) -> tuple[Ledger, dict[str, Sample]]:
     """Count on with new samples; returns the volume samples of the vessels that changed."""
     after, moved = ledger, False
-    for tag in taken:
-        unit, channel = program.carries.get(tag, ("", ""))
+    keys = sorted((program.carries[tag][::-1], tag) for tag in program.counting.intersection(taken))
+    for (channel, unit), tag in keys:  # volumes first: what was pumped went where the valve stood before
         if channel == "delivered":
             counted = _count(program, after, memory, samples, unit)
             moved = moved or counted.vessels is not after.vessels

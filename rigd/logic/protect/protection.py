@@ -286,8 +286,15 @@ class _Scan:
         return ProtectStep(state, stopping.demand, tuple(self._events), self._wake_ns(stopping))
 
     def _verdict(self, stopping: Stopping) -> Verdict:
+        before = self._before
+        if (
+            stopping is before.stopping
+            and self._interlocks is before.interlocks
+            and self._alarms.hold_wanted == before.alarms.hold_wanted
+        ):
+            return before.verdict
         held_by = self._interlocks.first_out if self._interlocks.level is Stop.HOLD else self._alarms.hold_wanted
-        verdict = Verdict(
+        return Verdict(
             stop=stopping.level,
             permit=self._interlocks.permit,
             quench_active=stopping.flush is not None,
@@ -295,7 +302,6 @@ class _Scan:
             first_out=self._interlocks.first_out,
             hold_wanted=held_by,
         )
-        return self._before.verdict if verdict == self._before.verdict else verdict
 
     def _wake_ns(self, stopping: Stopping) -> int:
         if self._urgent:

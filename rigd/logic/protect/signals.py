@@ -101,7 +101,7 @@ def take(
         samples[tag] = sample
         taken[tag] = sample
         if tag in ringed:
-            rings[tag] = (*rings.get(tag, ())[1 - RING :], sample)
+            rings[tag] = rings.get(tag, ())[1 - RING :] + (sample,)
     if not taken:
         return signals, taken
     return (
