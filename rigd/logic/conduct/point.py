@@ -1,0 +1,329 @@
+"""One point: set the flows, let it settle, collect its own fraction and nothing else, back to waste.
+
+Settled means: the trunk has been exchanged often enough since the streams were right and the jacket in its band, no
+pump has changed over within the last exchange, and the signal is shown to be quiet. The outlet valve then waits until
+the dead volume between the cell and the valve has passed at this point's own flow.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping
+from dataclasses import dataclass, field, replace
+
+from rigd.logic.conduct.conditioning import NEVER_NS, band_since_ns
+from rigd.logic.conduct.means import Means, merged
+from rigd.logic.conduct.point_events import abandoned, collected, interrupted, settled_event, started, unsettled_event
+from rigd.logic.conduct.point_needs import collect_mL, point_mL, settle_rule, signal_s
+from rigd.logic.conduct.switchover import label
+from rigd.logic.conduct.wants import Move, PointResult, Prompt, Scene, Want, Wants
+from rigd.logic.estimators import turnovers
+from rigd.logic.settling import Settler, is_steady, settle_step
+from rigd.model.events import Event
+from rigd.model.recipe import Point
+
+_FLOW_OFF = 0.02
+_WARM_S_MAX = 3600.0
+
+
+@dataclass(frozen=True, slots=True)
+class Memory:
+    """``step``: set, settle, divert, collect, back. ``marks``: counters since when volumes count.
+
+    ``first`` are those when they first counted (they start anew after a refill), ``at_divert`` and ``at_collect`` those
+    when it was settled and when the fraction began. ``window`` holds the means of the blocks that the settling was
+    judged by, ``means`` those of the present block and later of the whole steady stretch.
+    """
+
+    step: str = "set"
+    started_ns: int = 0
+    in_band_ns: int = NEVER_NS
+    marks: Mapping[str, float] | None = None
+    first: Mapping[str, float] | None = None
+    settle_ns: int = 0
+    settler: Settler = field(default_factory=Settler)
+    judged: bool = False
+    settled: bool = False
+    settled_ns: int = 0
+    at_divert: Mapping[str, float] = field(default_factory=dict)
+    at_collect: Mapping[str, float] = field(default_factory=dict)
+    collect_ns: int = 0
+    end_ns: int = 0
+    collected_mL: float = 0.0
+    means: Means = field(default_factory=Means)
+    window: tuple[Means, ...] = ()
+    residence_s: float = math.nan
+
+
+def start(scene: Scene) -> Memory:
+    """At the beginning of the point."""
+    return Memory(started_ns=scene.now_ns)
+
+
+def step(scene: Scene, memory: Memory) -> Move[Memory]:
+    """One step after the other; each says when it is over."""
+    point = scene.spec.point
+    assert point is not None, "a point phase without a point"
+    band_K = scene.layout.band_K
+    memory = replace(memory, in_band_ns=band_since_ns(scene, point.temperature_degC, band_K, memory.in_band_ns))
+    return _STEPS[memory.step](scene, memory, point)
+
+
+def result(scene: Scene, memory: Memory, point: Point, status: str) -> PointResult:
+    """What is known of the point now."""
+    signal = scene.layout.recipe.settle.signal
+    conversion = signal if signal.endswith(".conversion") else ""
+    end_ns = memory.end_ns or (scene.now_ns if memory.collect_ns else 0)
+    taken_mL = sum(scene.since_mL(memory.at_collect).values()) if memory.collect_ns and not memory.end_ns else 0.0
+    return PointResult(
+        id=point.id,
+        kind=point.kind,
+        flows_mL_min=dict(point.flows_mL_min),
+        temperature_degC=memory.means.mean(scene.layout.bed),
+        residence_time_s=memory.residence_s,
+        settled=memory.settled,
+        settle_s=(memory.settled_ns - memory.settle_ns) / 1e9 if memory.settled_ns else 0.0,
+        conversion=memory.means.mean(conversion) if conversion else math.nan,
+        values=memory.means.values(),
+        collected_mL=memory.collected_mL or taken_mL,
+        collect_start_ns=memory.collect_ns,
+        collect_end_ns=end_ns,
+        status=status,
+    )
+
+
+def broken_off(scene: Scene, memory: Memory) -> tuple[PointResult | None, tuple[Event, ...]]:
+    """What a hold or stop leaves of a point: its part of a fraction is in the flask and is accounted for."""
+    point = scene.spec.point
+    assert point is not None, "a point phase without a point"
+    if not memory.collect_ns:
+        return None, ()
+    found = result(scene, memory, point, "interrupted")
+    return found, (interrupted(found, scene.now_ns),)
+
+
+def _wants(scene: Scene, memory: Memory, point: Point, outlet: str) -> Wants:
+    pumps = {name: _want(scene, memory, point, name) for name in point.flows_mL_min if name in scene.layout.pumps}
+    return Wants(pumps, outlet, point.temperature_degC, together=True)
+
+
+def _want(scene: Scene, memory: Memory, point: Point, name: str) -> Want:
+    """Liquid for this point; refills only where they do no harm."""
+    layout, play, track = scene.layout, scene.layout.pumps[name], scene.tracks[name]
+    liquid, flow = label(play, scene.spec.reagent), point.flows_mL_min[name]
+    whole_mL, fraction_mL = point_mL(layout, point, name), collect_mL(layout, point, name)
+    passed_mL = scene.since_mL(memory.marks).get(name, 0.0) if memory.marks else 0.0
+    here_mL = max(whole_mL - passed_mL, fraction_mL) if memory.step in ("set", "settle") else _rest(scene, memory, name)
+    need_mL = here_mL + scene.needs_mL.get(name, 0.0)
+    level_mL = here_mL if play.dual or memory.step == "set" else min(fraction_mL, here_mL)
+    level_at = track.level_at(scene.now_ns)
+    short = level_at < fraction_mL + play.guard_mL(flow) or (level_at < level_mL and _early(scene, memory))
+    swap = memory.step in ("set", "settle") and short
+    may_fill = memory.step in ("set", "settle") or (play.dual and here_mL > level_at)
+    return Want(liquid, flow, need_mL if flow > 0 else 0.0, level_mL, may_fill=may_fill, swap=swap)
+
+
+def _rest(scene: Scene, memory: Memory, name: str) -> float:
+    """What a pump still has to deliver for the fraction that is being diverted or collected."""
+    point = scene.spec.point
+    assert point is not None, "a point phase without a point"
+    return max(0.0, collect_mL(scene.layout, point, name) - scene.since_mL(memory.at_divert).get(name, 0.0))
+
+
+def _early(scene: Scene, memory: Memory) -> bool:
+    """True while a change-over costs nothing, because more than one exchange is still to come."""
+    if memory.marks is None:
+        return True
+    done = turnovers(scene.layout.path, scene.since_mL(memory.marks))
+    return done < max(0.3, scene.layout.recipe.settle.volumes - 1.2)
+
+
+def _set(scene: Scene, memory: Memory, point: Point) -> Move[Memory]:
+    """Flows right, fronts past their merges, jacket in its band: from here volumes count."""
+    waste = scene.layout.recipe.collect.waste_position
+    first = memory.started_ns == scene.now_ns
+    events = (started(point, scene.now_ns),) if first else ()
+    wants = _wants(scene, memory, point, waste)
+    warm = memory.in_band_ns != NEVER_NS
+    if not first and warm and _streams_right(scene, point):
+        marks = scene.delivered_mL()
+        memory = replace(
+            memory, step="settle", marks=marks, first=memory.first or marks, settle_ns=memory.settle_ns or scene.now_ns
+        )
+    longest_s = scene.layout.recipe.conditioning.max_s if scene.layout.recipe.conditioning else _WARM_S_MAX
+    late = not warm and (scene.now_ns - memory.started_ns) / 1e9 > longest_s
+    text = f"The jacket does not reach {point.temperature_degC:g} degC. Check the chiller, then resume or stop."
+    return Move(
+        memory,
+        wants,
+        "setting flows" if warm else f"waiting for {point.temperature_degC:g} degC",
+        events,
+        trouble=f"point {point.id} was not at temperature within {longest_s / 60:g} min" if late else "",
+        prompt=Prompt("point-late", text) if late else None,
+        left_s=_left_s(scene, memory, point, 0.0),
+    )
+
+
+def _streams_right(scene: Scene, point: Point) -> bool:
+    """True when every pump delivers what the point says, of the liquid that it says, up to its merge."""
+    for name, flow in point.flows_mL_min.items():
+        play, track = scene.layout.pumps[name], scene.tracks[name]
+        if abs(track.flow_mL_min - flow) > _FLOW_OFF * flow + 0.001:
+            return False
+        if flow > 0 and track.active != label(play, scene.spec.reagent):
+            return False
+        if flow > 0 and track.front.to_merge_mL(play.feed, track.delivered_at(scene.now_ns)) > 0:
+            return False
+    return True
+
+
+def _settle(scene: Scene, memory: Memory, point: Point) -> Move[Memory]:
+    waste = scene.layout.recipe.collect.waste_position
+    if not _streams_right(scene, point) or memory.in_band_ns == NEVER_NS:
+        memory = replace(memory, step="set", marks=None, settler=Settler(), judged=False, means=Means(), window=())
+        return Move(memory, _wants(scene, memory, point, waste), "settling starts anew")
+    rule, path = scene.layout.recipe.settle, scene.layout.path
+    passed = turnovers(path, scene.since_mL(memory.marks or {}))
+    memory = _judged(scene, memory, point, passed)
+    steady = not _gated(scene) or is_steady(memory.settler, settle_rule(scene.layout, point))
+    ready = _liquid_for_fraction(scene, point) and _quiet_since_change(scene)
+    events: tuple[Event, ...] = ()
+    if passed >= rule.volumes and ready:
+        if steady:
+            memory = _settled(scene, memory, True)
+            events = (settled_event(point, memory.settler.trend.mean, passed, memory.settle_ns, scene.now_ns),)
+        elif turnovers(path, scene.since_mL(memory.first or {})) >= rule.volumes_max:
+            events = (unsettled_event(point, memory.settler.verdict, passed, scene.now_ns),)
+            if rule.on_timeout != "collect":
+                return _given_up(scene, memory, point, events)
+            memory = _settled(scene, memory, False)
+    wants = _wants(scene, memory, point, waste)
+    due_ns = scene.now_ns + _ns(scene, point, rule.volumes - passed) if passed < rule.volumes else None
+    text = f"settling: {passed:.1f} of {rule.volumes:g} volumes, signal {memory.settler.verdict}"
+    return Move(memory, wants, text, events, due_ns=due_ns, left_s=_left_s(scene, memory, point, passed))
+
+
+def _gated(scene: Scene) -> bool:
+    """True when the signal means something: there is reagent, and the rig has the tag."""
+    return scene.spec.reagent and scene.layout.recipe.settle.signal in scene.layout.program.tags
+
+
+def _ns(scene: Scene, point: Point, volumes: float) -> int:
+    return int(volumes * scene.layout.path.residence_s(point.flows_mL_min) * 1e9) + 1_000_000
+
+
+def _judged(scene: Scene, memory: Memory, point: Point, passed: float) -> Memory:
+    """Feed the signal gate, from the moment on when the old liquid has left the trunk once."""
+    signal = scene.layout.recipe.settle.signal
+    if not memory.judged and passed >= min(1.0, scene.layout.recipe.settle.volumes):
+        memory = replace(memory, settler=Settler(), judged=True, means=Means(), window=())
+    memory = replace(memory, means=memory.means.add(scene.view, scene.layout.record))
+    value = scene.view.value(signal) if signal in scene.view.fresh else None
+    if value is None or not _gated(scene):
+        return memory
+    t_ns = scene.view.samples[signal].t_ns
+    settler = settle_step(memory.settler, settle_rule(scene.layout, point), t_ns, value)
+    memory = replace(memory, settler=settler)
+    if settler.pending:
+        return memory
+    kept = (*memory.window, memory.means)[-scene.layout.recipe.settle.window :]
+    return replace(memory, means=Means(), window=kept)
+
+
+def _liquid_for_fraction(scene: Scene, point: Point) -> bool:
+    """True when each active syringe holds the whole fraction (or as much as one syringe can)."""
+    for name, flow in point.flows_mL_min.items():
+        play = scene.layout.pumps[name]
+        guard_mL = play.guard_mL(flow)
+        wanted_mL = min(collect_mL(scene.layout, point, name) + guard_mL, play.pump.stroke_mL * 0.9)
+        if flow > 0 and scene.tracks[name].level_at(scene.now_ns) < wanted_mL:
+            return False
+    return True
+
+
+def _quiet_since_change(scene: Scene) -> bool:
+    """True when no pump has changed over or been refilled within the last exchange of the trunk."""
+    since = scene.since_mL({name: track.swapped_mL for name, track in scene.tracks.items()})
+    point = scene.spec.point
+    assert point is not None, "a point phase without a point"
+    shares = {name: since[name] / flow for name, flow in point.flows_mL_min.items() if flow > 0}
+    minutes = min(shares.values(), default=0.0)
+    return 60.0 * minutes >= scene.layout.path.residence_s(point.flows_mL_min)
+
+
+def _settled(scene: Scene, memory: Memory, settled: bool) -> Memory:
+    return replace(
+        memory,
+        step="divert",
+        settled=settled,
+        settled_ns=scene.now_ns,
+        at_divert=scene.delivered_mL(),
+        residence_s=scene.residence_s(),
+        means=merged((*memory.window, memory.means)),
+    )
+
+
+def _given_up(scene: Scene, memory: Memory, point: Point, events: tuple[Event, ...]) -> Move[Memory]:
+    waste = scene.layout.recipe.collect.waste_position
+    found = result(scene, memory, point, "abandoned")
+    wants = _wants(scene, memory, point, waste)
+    return Move(memory, wants, "abandoned", (*events, abandoned(found, scene.now_ns)), done=True, result=found)
+
+
+def _passed_mL(scene: Scene, marks: Mapping[str, float]) -> float:
+    """Volume past the outlet valve since ``marks``."""
+    return sum(scene.since_mL(marks).values())
+
+
+def _divert(scene: Scene, memory: Memory, point: Point) -> Move[Memory]:
+    """Wait until the liquid that was seen settled has reached the outlet valve; then turn it."""
+    recipe = scene.layout.recipe
+    memory = replace(memory, means=memory.means.add(scene.view, scene.layout.record))
+    left_mL = scene.layout.dead_mL - _passed_mL(scene, memory.at_divert)
+    outlet = recipe.collect.position if left_mL <= 0 else recipe.collect.waste_position
+    if left_mL <= 0 and scene.outlet_at(recipe.collect.position):
+        memory = replace(memory, step="collect", collect_ns=scene.now_ns, at_collect=scene.delivered_mL())
+    due_ns = scene.now_ns + int(60e9 * max(left_mL, 0.0) / point.total_mL_min) + 1_000_000
+    left_s = 60.0 * (max(left_mL, 0.0) + recipe.collect.volume_mL) / point.total_mL_min
+    text = "letting the dead volume pass"
+    return Move(memory, _wants(scene, memory, point, outlet), text, due_ns=due_ns, left_s=left_s)
+
+
+def _collect(scene: Scene, memory: Memory, point: Point) -> Move[Memory]:
+    recipe = scene.layout.recipe
+    memory = replace(memory, means=memory.means.add(scene.view, scene.layout.record))
+    left_mL = recipe.collect.volume_mL - _passed_mL(scene, memory.at_collect)
+    outlet = recipe.collect.position
+    if left_mL <= 0:
+        taken_mL = _passed_mL(scene, memory.at_collect)
+        memory = replace(memory, step="back", end_ns=scene.now_ns, collected_mL=taken_mL)
+        outlet = recipe.collect.waste_position
+    left_s = 60.0 * max(left_mL, 0.0) / point.total_mL_min
+    due_ns = scene.now_ns + int(1e9 * left_s) + 1_000_000
+    text = f"collecting, {max(left_mL, 0.0):.2f} mL to go"
+    return Move(memory, _wants(scene, memory, point, outlet), text, due_ns=due_ns, left_s=left_s)
+
+
+def _back(scene: Scene, memory: Memory, point: Point) -> Move[Memory]:
+    """Nothing else changes before the outlet is confirmed at waste."""
+    waste = scene.layout.recipe.collect.waste_position
+    wants = _wants(scene, memory, point, waste)
+    if not scene.outlet_at(waste):
+        return Move(memory, wants, "turning the outlet to waste")
+    found = result(scene, memory, point, "collected" if memory.settled else "unsettled")
+    return Move(memory, wants, "collected", (collected(found, scene.now_ns),), done=True, result=found)
+
+
+def _left_s(scene: Scene, memory: Memory, point: Point, passed: float) -> float:
+    """Volumes, or the signal if that takes longer; then dead volume and fraction."""
+    layout = scene.layout
+    residence_s = layout.path.residence_s(point.flows_mL_min)
+    by_volume_s = max(0.0, layout.recipe.settle.volumes - passed) * residence_s
+    by_signal_s = 0.0
+    if _gated(scene):
+        by_signal_s = max(0.0, residence_s + signal_s(layout, point) - passed * residence_s)
+    after_s = 60.0 * (layout.dead_mL + layout.recipe.collect.volume_mL) / point.total_mL_min
+    return max(by_volume_s, by_signal_s) + after_s
+
+
+_STEPS = {"set": _set, "settle": _settle, "divert": _divert, "collect": _collect, "back": _back}

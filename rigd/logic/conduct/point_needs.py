@@ -1,0 +1,51 @@
+"""How much a point takes, and how its signal is judged: shared by the point's phase and by the plan."""
+
+from __future__ import annotations
+
+from rigd.logic.conduct.layout import Layout
+from rigd.logic.settling import SettleRule
+from rigd.model.recipe import Point
+
+
+def share(point: Point, pump: str) -> float:
+    """The pump's part of the total flow."""
+    return point.flows_mL_min.get(pump, 0.0) / point.total_mL_min if point.total_mL_min > 0 else 0.0
+
+
+def settle_mL(layout: Layout, point: Point, pump: str, volumes: float) -> float:
+    """What a pump delivers while this many volumes of the trunk are exchanged."""
+    return volumes * layout.path.residence_s(point.flows_mL_min) / 60.0 * point.flows_mL_min.get(pump, 0.0)
+
+
+def collect_mL(layout: Layout, point: Point, pump: str) -> float:
+    """What a pump delivers from the moment a point is settled until its fraction is complete."""
+    return share(point, pump) * (layout.dead_mL + layout.recipe.collect.volume_mL)
+
+
+def point_mL(layout: Layout, point: Point, pump: str) -> float:
+    """What a point takes of a pump at least: settling and collecting, and a little for the valve's travel."""
+    travel_mL = point.flows_mL_min.get(pump, 0.0) * 6.0 / 60.0
+    return settle_mL(layout, point, pump, layout.recipe.settle.volumes) + collect_mL(layout, point, pump) + travel_mL
+
+
+def settle_rule(layout: Layout, point: Point) -> SettleRule:
+    """The signal gate at this point's flow.
+
+    The window should span about one residence time, so at slow flows several samples are averaged into one (which also
+    takes them apart further than their noise remembers). The horizon is what is to come: dead volume and fraction.
+    """
+    rule, total = layout.recipe.settle, point.total_mL_min
+    tag = layout.program.tags.get(rule.signal)
+    period_s = tag.period_ns / 1e9 if tag else 1.0
+    residence_s = layout.path.residence_s(point.flows_mL_min)
+    horizon_s = 60.0 * (layout.dead_mL + layout.recipe.collect.volume_mL) / total
+    block = max(1, int(residence_s / (rule.window * period_s)))
+    return SettleRule(rule.tolerance, horizon_s, rule.window, rule.persistence, block)
+
+
+def signal_s(layout: Layout, point: Point) -> float:
+    """Time that the signal gate takes at least, counted from the first exchange of the trunk."""
+    rule = settle_rule(layout, point)
+    tag = layout.program.tags.get(layout.recipe.settle.signal)
+    period_s = tag.period_ns / 1e9 if tag else 1.0
+    return (rule.window + rule.persistence - 1) * rule.block * period_s

@@ -1,0 +1,79 @@
+"""What would not work out: bottles that do not last, vessels that overflow, points that one syringe cannot give."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+
+from rigd.logic.conduct.layout import Layout
+from rigd.logic.conduct.point_needs import point_mL
+from rigd.logic.dispersion import settle_volumes_99
+from rigd.model.problems import Problem, Severity
+from rigd.model.recipe import Point
+from rigd.model.rig import Vessel, VesselRole
+
+KEPT_BACK = 0.10
+"""Part of a bottle that is never planned for: the dip tube does not reach it (common practice, no source)."""
+
+
+def find_problems(
+    layout: Layout, used_mL: Mapping[str, float], collected_mL: float, waste_mL: float
+) -> tuple[Problem, ...]:
+    """All findings, worst first."""
+    found = [
+        *_bottles(layout, used_mL),
+        *_receivers(layout, collected_mL, waste_mL),
+        *(problem for point in layout.recipe.points for problem in _point(layout, point)),
+    ]
+    return tuple(sorted(found, key=lambda problem: problem.severity is not Severity.ERROR))
+
+
+def _bottles(layout: Layout, used_mL: Mapping[str, float]) -> list[Problem]:
+    found = []
+    for liquid, volume_mL in sorted(used_mL.items()):
+        here_mL = sum(v.content_mL for v in layout.rig.vessels if v.role is VesselRole.SUPPLY and v.liquid == liquid)
+        usable_mL = here_mL * (1.0 - KEPT_BACK)
+        if volume_mL > usable_mL:
+            message = f"the recipe draws {volume_mL:.0f} mL of {liquid}, {usable_mL:.0f} of {here_mL:.0f} mL are usable"
+            found.append(Problem("bottle-short", message, f"Fill more {liquid} or plan fewer or smaller points."))
+    return found
+
+
+def _receivers(layout: Layout, collected_mL: float, waste_mL: float) -> list[Problem]:
+    collect = layout.recipe.collect
+    pairs = ((collect.position, collected_mL, "flask-overflow"), (collect.waste_position, waste_mL, "waste-overflow"))
+    found = []
+    for position, volume_mL, code in pairs:
+        vessel = _behind(layout, position)
+        if vessel and vessel.content_mL + volume_mL > 0.95 * vessel.capacity_mL:
+            text = f"{volume_mL:.0f} mL go into {vessel.id}, which holds {vessel.capacity_mL:.0f} mL"
+            found.append(Problem(code, text, f"Use a larger {vessel.id} or empty it before the run."))
+    return found
+
+
+def _behind(layout: Layout, position: str) -> Vessel | None:
+    name = layout.program.drain.get(position, layout.program.drain.get("", ""))
+    return next((vessel for vessel in layout.rig.vessels if vessel.id == name), None)
+
+
+def _point(layout: Layout, point: Point) -> list[Problem]:
+    found = []
+    for name, flow in point.flows_mL_min.items():
+        play = layout.pumps.get(name)
+        if play is None or flow <= 0:
+            continue
+        need_mL = point_mL(layout, point, name) + play.reserve_mL(flow)
+        if not play.dual and need_mL > play.pump.stroke_mL:
+            message = (
+                f"point {point.id} takes {need_mL:.1f} mL of {name}, its one syringe holds {play.pump.stroke_mL:g} mL"
+            )
+            remedy = "Collect less, settle for fewer volumes, or use a larger or a second syringe."
+            found.append(Problem("syringe-short", message, remedy))
+    needed = settle_volumes_99(layout, point)
+    if needed > layout.recipe.settle.volumes:
+        message = (
+            f"point {point.id}: {layout.recipe.settle.volumes:g} volumes are fewer than the {needed:.2f} that a front "
+            "takes to 99 % through this path"
+        )
+        remedy = "Raise settle.volumes; the signal gate alone may be fooled by a slow tail."
+        found.append(Problem("settle-short", message, remedy, Severity.WARNING))
+    return found
