@@ -14,7 +14,7 @@ from fakes.emulated import (
     spec,
     valve_line,
 )
-from fakes.plain_plant import PlainPlant, PlainPump, PlainValve
+from fakes.plain_plant import PlainBath, PlainPlant, PlainPump, PlainValve
 
 from rigd.model.errors import ConfigError
 from rigd.model.rig import Pump, Valve
@@ -40,8 +40,8 @@ class OneSpectrum(PlainPlant):
 
 def bus() -> Master:
     """Two pumps and a valve on one line."""
-    units = {"P1": PlainPump(), "P2": PlainPump(), "V": PlainValve()}
-    plant = PlainPlant(dict(units), {"p1": "P1", "p2": "P2", "v": "V"})
+    units: dict[str, PlainPump | PlainValve | PlainBath] = {"P1": PlainPump(), "P2": PlainPump(), "V": PlainValve()}
+    plant = PlainPlant(units, {"p1": "P1", "p2": "P2", "v": "V"})
     pumps = [
         SyringePump(
             spec(f"p{i}", "syringe-pump", f"1{i}", f"P{i}"), plant, Pump(f"P{i}", f"p{i}", 2, 10, 5, 0.005, 5, 8, 20)

@@ -117,6 +117,8 @@ def _opened(
         raise RigError(f"transport {options.transport!r} is not one of {', '.join(MAKERS)}")
     meeting = Meeting(options.folder)
     stack.callback(meeting.close)
+    if not options.quiet:
+        sys.stderr.write("Preparing the simulated rig; the first start on a computer compiles it and takes longer.\n")
     warm_up(maker.make(rig, options.seed), rig)
     plant = maker.make(rig, options.seed)
     lines = emulated_lines(rig, plant, options.pace, options.seed)
