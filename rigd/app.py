@@ -14,6 +14,7 @@ import json
 import logging
 import os
 import platform
+import shutil
 import signal
 import sys
 from collections.abc import Callable, Mapping, Sequence
@@ -89,8 +90,9 @@ def prepare_run(rig_path: Path, recipe_path: Path, settings: RunSettings) -> Pat
     compile_program(rig, recipe)
     links = resolve_ports(rig, str(rig_path), settings.pace)
     folder = run_folder.make_run_folder(settings.runs, recipe.name)
-    locks = lock_ports((link.port for link in links), rig=rig.name, folder=str(folder), pid=os.getpid())
+    locks: list[int] = []
     try:
+        locks = lock_ports((link.port for link in links), rig=rig.name, folder=str(folder), pid=os.getpid())
         run_folder.freeze_files(folder, rig_path, recipe_path)
         door = door_path(rig.name, os.getpid())
         announced = announce(Daemon(os.getpid(), rig.name, folder.name, str(folder), str(door)))
@@ -98,6 +100,7 @@ def prepare_run(rig_path: Path, recipe_path: Path, settings: RunSettings) -> Pat
         write_json(folder / "plan.json", {**plan, "door": str(door), "cleanup": [str(announced), str(door)]})
     except BaseException:
         unlock(locks)
+        shutil.rmtree(folder, ignore_errors=True)  # nothing was run
         raise
     for lock in locks:
         os.set_inheritable(lock, True)

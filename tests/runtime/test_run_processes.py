@@ -1,0 +1,173 @@
+"""The whole daemon as processes: ``rigd sim`` on pseudo-terminals, guard and control; killed, hung, signalled."""
+
+from __future__ import annotations
+
+import json
+import os
+import signal
+import subprocess
+import sys
+import time
+from collections.abc import Iterator
+from pathlib import Path
+
+import pytest
+
+from rigd.adapters.door_client import SocketDoor
+from rigd.adapters.journal_reader import JournalReader
+from rigd.adapters.places import read_json
+from rigd.adapters.sim_client import ask
+from rigd.model.events import EventKind
+
+pytestmark = [pytest.mark.slow, pytest.mark.timeout(180)]
+
+CONFIGS = Path(__file__).parents[2] / "configs"
+RIG, RECIPE = CONFIGS / "rigs" / "two-pump-column.toml", CONFIGS / "recipes" / "demo-sweep.toml"
+NAME = "two-pump-column"
+PACE = 20.0
+START = """
+import sys
+from pathlib import Path
+from rigd.app import RunSettings, start_run
+from rigd.model.errors import RigError
+try:
+    start_run(Path(sys.argv[1]), Path(sys.argv[2]), RunSettings(pace=float(sys.argv[3]), runs=Path(sys.argv[4])))
+except RigError as error:
+    sys.exit(f"refused: {error}")
+"""
+
+
+class Bench:
+    """One simulator and the runs against it."""
+
+    def __init__(self, folder: Path) -> None:
+        self.runs = folder / "runs"
+        self.meeting = folder / "rt" / NAME
+        self.env = {**os.environ, "RIGD_RUNTIME": str(folder / "rt")}
+        command = [sys.executable, "-m", "rigd", "sim", str(RIG), "--pace", f"{PACE:g}", "--quiet"]
+        self.sim = subprocess.Popen(command, env=self.env)
+        self._started: list[subprocess.Popen[str]] = []
+        wait(lambda: (self.meeting / "ports.json").exists(), 30)
+
+    def start(self) -> subprocess.Popen[str]:
+        command = [sys.executable, "-c", START, str(RIG), str(RECIPE), f"{PACE:g}", str(self.runs)]
+        run = subprocess.Popen(command, env=self.env, stderr=subprocess.PIPE, text=True)
+        self._started.append(run)
+        return run
+
+    def running(self) -> tuple[subprocess.Popen[str], int]:
+        """A run whose pumps deliver; (guard, process id of control)."""
+        run = self.start()
+        wait(lambda: self.flow() > 0.1, 60)
+        return run, child_of(run.pid)
+
+    def flow(self) -> float:
+        """What really leaves the pumps [mL/min]."""
+        truth = ask(self.meeting, {"do": "truth"})
+        truth = truth.get("truth", truth)
+        return max(abs(float(truth["flow:L-A3"])), abs(float(truth["flow:L-B3"])))
+
+    def folder(self) -> Path:
+        return sorted(self.runs.iterdir())[-1]
+
+    def close(self) -> None:
+        for run in self._started:
+            for process in (child_of(run.pid), run.pid):
+                if process and run.poll() is None:
+                    os.kill(process, signal.SIGKILL)
+            run.wait()
+            if run.stderr is not None:
+                run.stderr.close()
+        self.sim.send_signal(signal.SIGINT)
+        self.sim.wait(10)
+
+
+def wait(condition: object, seconds: float) -> float:
+    """Wait until the condition holds; the seconds that it took."""
+    began = time.monotonic()
+    while not condition():  # type: ignore[operator]
+        assert time.monotonic() - began < seconds, "waited in vain"
+        time.sleep(0.02)
+    return time.monotonic() - began
+
+
+def child_of(pid: int) -> int:
+    """The control process among the children of a guard; 0 when there is none."""
+    try:
+        children = Path(f"/proc/{pid}/task/{pid}/children").read_text().split()
+        for child in children:
+            if b"rigd.app" in Path(f"/proc/{child}/cmdline").read_bytes():
+                return int(child)
+    except OSError:
+        pass
+    return 0
+
+
+@pytest.fixture
+def bench(tmp_path: Path) -> Iterator[Bench]:
+    bench = Bench(tmp_path)
+    yield bench
+    bench.close()
+
+
+@pytest.mark.parametrize(("number", "seconds"), [(signal.SIGKILL, 1.0), (signal.SIGSTOP, 2.0)])
+def test_pumps_stop_within_2_s_when_control_is_killed_or_hangs(bench: Bench, number: int, seconds: float) -> None:
+    run, control = bench.running()
+    os.kill(control, number)
+    assert wait(lambda: bench.flow() < 0.02, seconds) < seconds
+    assert run.wait(20) == 1
+    assert run.stderr is not None
+    said = run.stderr.read()
+    assert "the guard stopped the rig and every device confirmed it" in said
+    assert "Traceback" not in said
+    with JournalReader(bench.folder()) as journal:
+        assert sum(1 for _ in journal.scans()) > 100
+        assert "outcome" not in journal.meta
+    assert read_json(bench.folder() / "guard.json")["devices"]["pump-a"]["confirmed"]
+
+
+def test_pumps_stop_when_the_guard_is_killed(bench: Bench) -> None:
+    run, control = bench.running()
+    run.kill()
+    assert wait(lambda: bench.flow() < 0.02, 2) < 2
+    wait(lambda: not Path(f"/proc/{control}").exists(), 40)
+    with JournalReader(bench.folder()) as journal:
+        assert journal.meta["outcome"] in ("stopped", "tripped")
+        assert any("guard" in event.text for event in journal.events(EventKind.TRIP))
+
+
+def test_ctrl_c_is_an_orderly_stop_and_a_second_one_a_cut(bench: Bench) -> None:
+    run, _ = bench.running()
+    run.send_signal(signal.SIGINT)
+    time.sleep(0.3)
+    run.send_signal(signal.SIGTERM)
+    assert run.wait(30) == 1
+    assert bench.flow() < 0.02
+    with JournalReader(bench.folder()) as journal:
+        stops = [event.subject for event in journal.events(EventKind.STOP)]
+    assert "quench" in stops
+    assert "cut" in stops
+    assert not list(bench.meeting.glob("run-*.json"))
+    assert not list(bench.meeting.glob("door-*.sock"))
+
+
+async def test_a_second_daemon_is_refused_and_the_door_of_the_first_answers(bench: Bench) -> None:
+    run, _ = bench.running()
+    second = bench.start()
+    assert second.wait(20) == 1
+    assert second.stderr is not None
+    assert f"is in use by process {run.pid} running rig '{NAME}'" in second.stderr.read()
+    door = SocketDoor(json.loads((bench.folder() / "plan.json").read_text())["door"])
+    snapshot = await door.snapshot()
+    assert snapshot["run"]["simulated"] is True  # type: ignore[index]
+    await door.request("cut", "a test")
+    assert run.wait(30) == 1
+    assert bench.flow() < 0.02
+
+
+def test_without_a_simulator_the_command_to_start_it_is_said(tmp_path: Path) -> None:
+    env = {**os.environ, "RIGD_RUNTIME": str(tmp_path / "rt")}
+    command = [sys.executable, "-c", START, str(RIG), str(RECIPE), "20", str(tmp_path / "runs")]
+    done = subprocess.run(command, env=env, capture_output=True, text=True, timeout=30, check=False)
+    assert "start it with: rigd sim" in done.stderr
+    assert not (tmp_path / "runs").exists()
