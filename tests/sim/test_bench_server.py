@@ -261,7 +261,7 @@ def test_wrong_options_give_one_sentence_and_leave_nothing(
     tmp_path: Path, options: SimulatorOptions, why: str, capsys: pytest.CaptureFixture[str]
 ) -> None:
     folder = tmp_path / "meeting"
-    assert server.serve(small_rig(), replace(options, folder=str(folder)), PLAIN) == 2
+    assert server.serve(small_rig(), replace(options, folder=str(folder), quiet=True), PLAIN) == 2
     assert why in (said := capsys.readouterr().err)
     assert said.count("\n") == 1
     assert not (folder / "ports.json").exists()
