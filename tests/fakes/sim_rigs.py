@@ -166,3 +166,28 @@ def two_pump_rig(chemistry: Chemistry | None = None, **truth: float) -> RigDefin
         ),
         simulation=Simulation(seed=7, truth=truth),
     )
+
+
+def column_rig(chemistry: Chemistry, packing: Packing, bore_mm: float = 6.6, length_mm: float = 100.0) -> RigDefinition:
+    """One pump straight into one column and a flask, with tubes too short to matter."""
+    liquids = (
+        Liquid("solvent", "water", LiquidRole.SOLVENT, "water", {}),
+        Liquid("feed", "A in water", LiquidRole.REAGENT, "water", {"A": 1.0}),
+    )
+    return rig_of(
+        chemistry,
+        liquids,
+        vessels=(
+            Vessel("bottle", VesselRole.SUPPLY, 1000.0, 900.0, "feed"),
+            Vessel("flask", VesselRole.COLLECT, 1000.0),
+        ),
+        pumps=(pump("PU", 1, stroke_mL=50.0, rate_max_mL_min=50.0, dead_mL=0.0),),
+        columns=(Column("COL", bore_mm, length_mm, 40.0, packing),),
+        lines=(
+            line("L-0", "bottle", "PU", 1.0, 10.0),
+            line("L-1", "PU", "COL", 0.5, 0.5),
+            line("L-2", "COL", "flask", 0.5, 0.5),
+        ),
+        devices=(device("pump", "PU"),),
+        simulation=Simulation(ambient_degC=25.0),
+    )

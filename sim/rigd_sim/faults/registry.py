@@ -6,11 +6,12 @@ from collections.abc import Mapping, Sequence
 
 from rigd.model.rig import RigDefinition
 from rigd.ports.plant import FaultKind, Plant
-from rigd_sim.faults import wetted
+from rigd_sim.faults import drives, process, signals, wetted
 from rigd_sim.plant import RigPlant
 from rigd_sim.plant.ailments import FaultEffect
 
-EFFECTS: Mapping[str, FaultEffect] = {effect.kind.kind: effect for effect in wetted.EFFECTS}
+_ALL = (*wetted.EFFECTS, *drives.EFFECTS, *signals.EFFECTS, *process.EFFECTS)
+EFFECTS: Mapping[str, FaultEffect] = {effect.kind.kind: effect for effect in _ALL}
 
 
 def fault_kinds() -> Sequence[FaultKind]:

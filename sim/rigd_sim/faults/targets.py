@@ -49,6 +49,16 @@ def cells(rig: RigDefinition) -> Sequence[str]:
     return [cell.id for cell in rig.cells]
 
 
+def units(rig: RigDefinition) -> Sequence[str]:
+    """Everything that can be told something."""
+    return [*pumps(rig), *valves(rig), *chillers(rig)]
+
+
+def vessels(rig: RigDefinition) -> Sequence[str]:
+    """All vessels."""
+    return [vessel.id for vessel in rig.vessels]
+
+
 def supplies(rig: RigDefinition) -> Sequence[str]:
     """All bottles."""
     return [v.id for v in rig.vessels if v.role is VesselRole.SUPPLY]
@@ -63,6 +73,11 @@ def sensors(rig: RigDefinition) -> Sequence[str]:
     """All measured tags that a converter reads."""
     units = {d.id: d.unit for d in rig.devices}
     return [t.id for t in rig.tags if t.kind is TagKind.MEASURED and t.device and not units.get(t.device)]
+
+
+def temperatures(rig: RigDefinition) -> Sequence[str]:
+    """All temperature sensors."""
+    return [tag for tag in sensors(rig) if rig.tag(tag).measures == "temperature"]
 
 
 def devices(rig: RigDefinition) -> Sequence[str]:

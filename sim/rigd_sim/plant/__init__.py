@@ -1,7 +1,6 @@
-"""The simulated rig as one object: parts, flows, heat, reactions and instruments. No bytes, no wall clock, no
-fault names."""
+"""The simulated rig as one object: parts, flows, heat, reactions, instruments. No bytes, no wall clock, no fault
+names."""
 
-from rigd_sim.plant.levers import DeviceFaults
 from rigd_sim.plant.rig_plant import RigPlant
 
-__all__ = ["DeviceFaults", "RigPlant"]
+__all__ = ["RigPlant"]

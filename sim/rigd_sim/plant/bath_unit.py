@@ -44,7 +44,6 @@ class BathUnit:
     running: bool = False
     integral: float = 0.0
     power_W: float = 0.0
-    resets: int = 0
     heater_J: float = 0.0
     lost_J: float = 0.0
 
@@ -63,6 +62,10 @@ class BathUnit:
             return ""
         return "word"
 
+    def restart(self) -> None:
+        """Power was lost and came back: default set-point, circulation off."""
+        self.setpoint_degC, self.running = POWER_ON_DEGC, False
+
     def circulates(self, lever: BathLever) -> bool:
         """True when liquid really goes round."""
         return self.running and not lever.pump_dead
@@ -75,7 +78,7 @@ class BathUnit:
             self.integral = 0.0
             return 0.0
         high, low = self.spec.heating_W * lever.heating, -self.spec.cooling_W * lever.cooling
-        error = self.setpoint_degC + lever.setpoint_offset + ZERO_CELSIUS_K - self.bath_K
+        error = self.setpoint_degC + lever.offset_K + ZERO_CELSIUS_K - self.bath_K
         share = error / BAND_K + self.integral
         span = self.spec.heating_W if share >= 0.0 else self.spec.cooling_W
         wanted = share * span
@@ -85,8 +88,6 @@ class BathUnit:
 
     def advance(self, dt: float, wall_J: dict[str, float], lever: BathLever, room_K: float) -> None:
         """Move on by ``dt``; ``wall_J`` is the heat that each column's wall took out of its jacket in that time."""
-        if lever.resets > self.resets:
-            self.resets, self.setpoint_degC, self.running = lever.resets, POWER_ON_DEGC, False
         wanted = self._thermostat(dt, lever)
         self.power_W += (wanted - self.power_W) * (1.0 - math.exp(-dt / HEATER_LAG_S))
         link = CIRCULATION_W_K if self.circulates(lever) else STAGNANT_W_K

@@ -14,7 +14,7 @@ from rigd.model.chemistry import RateLaw, Reaction, ReactionPlace
 from rigd.model.rig import Column, RigDefinition
 from rigd_sim.physics.bed import PLACE_ROWS, RELEASED, TEMPERATURE, TURNOVER
 from rigd_sim.physics.compiled import Floats
-from rigd_sim.physics.constants import GAS_CONSTANT_J_MOL_K, ZERO_CELSIUS_K
+from rigd_sim.physics.constants import GAS_CONSTANT_J_MOL_K, ML_M3, ZERO_CELSIUS_K
 from rigd_sim.physics.packing_transfer import bead_rate, chung_wen
 from rigd_sim.physics.properties import SOLVENTS, Solvent
 from rigd_sim.physics.reaction import (
@@ -42,6 +42,9 @@ PARTS_MAX = 24
 SUPPLY_COARSENESS = 8.0
 ADSORPTION_BLOCK = 3
 EMPTY_M3 = 1e-9
+NEARLY_EMPTY_M3 = 2e-6
+TORTUOUS = 0.7
+"""1/tortuosity of a packed bed at rest (common practice, no source)."""
 
 
 class Kinetics:
@@ -114,6 +117,7 @@ class Contents:
         self._make_edges()
         self._make_nodes(rig)
         self._make_beds()
+        self._make_dispersion()
         wide = max(self.width, self.kinetics.count, int(self.cell_count.max()) + 1)
         self._scratch = (np.zeros((len(layout.nodes), self.width)), np.zeros((8, wide)))
 
@@ -146,6 +150,10 @@ class Contents:
         self.node_c = np.tile(solvent, (len(nodes), 1))
         self.cells[:] = solvent
         self.hidden: dict[str, Floats] = {}
+        self._vessels = [
+            (self.layout.node_index[v.id], v.id, v.capacity_mL * ML_M3) for v in self.layout.vessels.values()
+        ]
+        self._bottles = [(i, np.flatnonzero(self.ea == i)) for i, _, _ in self._vessels]
         for vessel in rig.vessels:
             if vessel.liquid:
                 self.node_c[self.layout.node_index[vessel.id]] = self.composition(rig, vessel.liquid)
@@ -210,23 +218,30 @@ class Contents:
         """The property set that stands for densities and heat capacities (the first declared)."""
         return SOLVENTS[self.solvents[0]]
 
+    def _make_dispersion(self) -> None:
+        """Taylor-Aris for the tubes, D (1 + u^2 d^2/(192 D^2)) A/dx, as two numbers per edge: rest and per flow^2."""
+        self._at_rest = np.zeros(len(self.layout.edges))
+        self._per_flow2 = np.zeros(len(self.layout.edges))
+        for e, edge in enumerate(self.layout.edges):
+            if edge.cells and edge.kind == "line":
+                section, dx = edge.volume / edge.length, edge.length / edge.cells
+                unit = taylor_aris(self.diffusivity, 1.0 / section, edge.diameter) - self.diffusivity
+                self._at_rest[e] = self.diffusivity * section / dx
+                self._per_flow2[e] = unit * section / dx
+
     def disperse(self, flow: Floats) -> None:
         """Set the dispersion coefficients from the flows [m3/s] of the last step."""
+        np.multiply(flow, flow, out=self.exchange)
+        self.exchange *= self._per_flow2
+        self.exchange += self._at_rest
         fluid = self.fluid()
-        rho, mu = fluid.density(self.room_K), fluid.viscosity(self.room_K)
-        for e, edge in enumerate(self.layout.edges):
-            if edge.cells == 0:
-                continue
-            section = edge.volume / edge.length
-            velocity = abs(flow[e]) / section
-            if edge.kind == "column":
-                bed = self.beds[edge.id]
-                diameter = bed.column.packing.bead_diameter_mm * 1e-3
-                superficial = abs(flow[e]) / bed.section
-                coefficient = chung_wen(rho * superficial * diameter / mu, mu, rho) + 0.7 * self.diffusivity
-            else:
-                coefficient = taylor_aris(self.diffusivity, velocity, edge.diameter)
-            self.exchange[e] = coefficient * section / (edge.length / edge.cells)
+        for bed in self.beds.values():
+            rho, mu = fluid.density(self.room_K), fluid.viscosity(self.room_K)
+            edge = self.layout.edges[bed.edge]
+            superficial = abs(float(flow[bed.edge])) / bed.section
+            re = rho * superficial * bed.column.packing.bead_diameter_mm * 1e-3 / mu
+            coefficient = chung_wen(re, mu, rho) + TORTUOUS * self.diffusivity
+            self.exchange[bed.edge] = coefficient * edge.volume / edge.length / (edge.length / edge.cells)
 
     def advance(self, dt: float) -> None:
         """Carry the pending volumes through, react and disperse over ``dt``; pending is then zero."""
@@ -257,15 +272,44 @@ class Contents:
 
     def admit_air(self) -> None:
         """Let air into bottles that the pending volumes would draw below empty."""
-        for vessel in self.layout.vessels:
-            i = self.layout.node_index[vessel]
-            wanted = float(self.pending[self.ea == i].sum())
+        for i, leaving in self._bottles:
+            if self.node_volume[i] > NEARLY_EMPTY_M3:
+                continue
+            wanted = float(self.pending[leaving].sum())
             short = wanted + EMPTY_M3 - self.node_volume[i]
             if wanted > 0.0 and short > 0.0:
                 held = self.node_volume[i]
                 self.node_c[i] *= held / (held + short)
                 self.node_c[i, self.gas] += short / (held + short)
                 self.node_volume[i] = held + short
+
+    def spill(self, capacity: dict[str, float]) -> None:
+        """What does not fit into a vessel runs to the floor."""
+        floor = self.layout.node_index["floor"]
+        for i, name, size in self._vessels:
+            excess = float(self.node_volume[i]) - capacity.get(name, size)
+            if excess > 0.0 and not self.endless[i]:
+                held = self.node_volume[floor]
+                self.node_c[floor] = (held * self.node_c[floor] + excess * self.node_c[i]) / (held + excess)
+                self.node_volume[floor] = held + excess
+                self.node_volume[i] -= excess
+
+    def gas_by_node(self) -> Floats | None:
+        """Gas at each node: its own, and half of what is in each edge that ends there; ``None`` without any."""
+        in_cells = self.cells[:, self.gas]
+        own: Floats = self.node_c[:, self.gas] * self.node_volume
+        own[self.endless != 0] = 0.0
+        if not in_cells.any() and not own.any():
+            return None
+        for e in np.flatnonzero(self.cell_count):
+            n, s = int(self.cell_count[e]), int(self.cell_start[e])
+            half = 0.5 * self.cell_volume[e] * float(in_cells[s : s + n + 1].sum())
+            own[self.ea[e]] += half
+            own[self.eb[e]] += half
+        for pairs in self.layout.syringes.values():  # gas in a syringe yields to the pressure at the pump's outlet
+            for pair in pairs:
+                own[self.eb[pair.deliver]] += own[pair.node]
+        return own
 
     def hide(self, vessel: str, hidden: bool) -> None:
         """A bottle whose dip tube draws air (``hidden``), or again its liquid."""

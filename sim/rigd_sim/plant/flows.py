@@ -16,7 +16,6 @@ from rigd_sim.plant.contents import Bed, Contents
 from rigd_sim.plant.layout import Layout
 from rigd_sim.plant.levers import Levers
 
-GAS_NEAR = 1e-4  # gas volume fraction from which a node counts its gas
 SMALLEST_VELOCITY = 1e-9
 
 
@@ -27,6 +26,7 @@ class GelState:
     ratio: float
     dry_volume: float
     passed: float = 0.0
+    seen: tuple[float, float, float, float] = (0.0, 0.0, 0.0, 0.0)
 
 
 class Flows:
@@ -64,6 +64,7 @@ class Flows:
         self.gate = np.ones(len(edges))
         self.flow = np.zeros(len(layout.edges))
         self.step = 0.05
+        self._lines_done = False
 
     def _gel(self, bed: Bed, truth: dict[str, float]) -> GelState:
         """Packed swollen (default) or dry (``truth`` "COL.packed_dry" = 1), with ``COL.headspace`` of free volume."""
@@ -85,11 +86,14 @@ class Flows:
     def update_liquid(self) -> None:
         """Conductances of lines and beds from the liquid in them; call after each transport step."""
         contents = self.contents
-        for e, edge in enumerate(self.layout.edges[: self.layout.passive]):
-            if edge.kind == "line":
-                self.base[e] = 1.0 / resistance(self._viscosity(e, contents.room_K), edge.length, edge.diameter)
-            elif edge.kind == "column":
-                self.base[e] = self._bed_conductance(e, contents.beds[edge.id])
+        many = len(contents.solvents) > 1
+        if many or not self._lines_done:
+            self._lines_done = True
+            for e, edge in enumerate(self.layout.edges[: self.layout.passive]):
+                if edge.kind == "line":
+                    self.base[e] = 1.0 / resistance(self._viscosity(e, contents.room_K), edge.length, edge.diameter)
+        for bed in contents.beds.values():
+            self._update_bed(bed, many)
 
     def _viscosity(self, e: int, t_K: float) -> float:
         contents = self.contents
@@ -99,22 +103,28 @@ class Flows:
         mean = contents.cells[s : s + n + 1].mean(axis=0)
         return mixture_viscosity(contents.solvent_of(mean) or {contents.solvents[0]: 1.0}, t_K)
 
-    def _bed_conductance(self, e: int, bed: Bed) -> float:
-        packing = bed.column.packing
-        gel = self.gels[bed.column.id]
+    def _update_bed(self, bed: Bed, many: bool) -> None:
+        """Recompute a bed's conductance when what it depends on has changed by more than a thousandth."""
+        e = bed.edge
         t_mean = float(self.contents.temperature[bed.start : bed.start + bed.cells].mean())
-        mu = self._viscosity(e, t_mean)
-        rho = self.contents.fluid().density(t_mean)
+        drop = float(self.pressure[self.ea[e]] - self.pressure[self.eb[e]]) if self.conductance[e] else 0.0
+        gel = self.gels[bed.column.id]
+        state = (t_mean, gel.ratio, float(self.flow[e]), drop)
+        if not many and all(abs(new - old) <= 1e-3 * scale for new, old, scale in zip(
+            state, gel.seen, (30.0, 1.0, 1e-8, 1e5), strict=True
+        )):  # fmt: skip
+            return
+        gel.seen = state
+        packing = bed.column.packing
+        mu, rho = self._viscosity(e, t_mean), self.contents.fluid().density(t_mean)
         shape = settled(
             gel.ratio, packing.swelling, gel.dry_volume, bed.empty_volume, bed.length, packing.voidage,
             packing.bead_diameter_mm * 1e-3,
         )  # fmt: skip
-        drop = self.pressure[self.ea[e]] - self.pressure[self.eb[e]] if self.conductance[e] else 0.0
-        voidage = pressed_voidage(shape.voidage, packing.compressibility_per_bar / BAR_PA, drop)
-        velocity = max(abs(self.flow[e]) / bed.section, SMALLEST_VELOCITY)
-        bed.voidage = voidage
-        gradient = ergun_gradient(mu, rho, velocity, shape.bead_diameter, voidage)
-        return float(velocity * bed.section / (gradient * shape.length))
+        bed.voidage = pressed_voidage(shape.voidage, packing.compressibility_per_bar / BAR_PA, drop)
+        velocity = max(abs(float(self.flow[e])) / bed.section, SMALLEST_VELOCITY)
+        gradient = ergun_gradient(mu, rho, velocity, shape.bead_diameter, bed.voidage)
+        self.base[e] = velocity * bed.section / (gradient * shape.length)
 
     def swell(self, dt: float) -> None:
         """Swelling goes on where liquid has reached the bed, towards the ratio of the solvent in it."""
@@ -138,28 +148,19 @@ class Flows:
         for e, factor in levers.flow_factor.items():
             if e < self.layout.passive:
                 self.conductance[e] *= factor
-        for node, conductance in levers.leak.items():
-            if node in self.layout.leak_edge:
-                self.conductance[self.layout.leak_edge[node]] = conductance
+        for e, conductance in levers.conductance.items():
+            self.conductance[e] = conductance
         self._gas_compliance()
 
     def _gas_compliance(self) -> None:
-        """Gas in a node adds V/P to its compliance."""
+        """Gas adds V/P to the compliance of the node where it is, or of the nodes at the ends of its edge."""
         contents = self.contents
+        gas = contents.gas_by_node()
         self.compliance[:] = self.rest_compliance
-        if not contents.cells[:, contents.gas].any() and not contents.node_c[:-1, contents.gas].any():
-            return
-        for e, edge in enumerate(self.layout.edges):
-            if edge.cells:
-                n, s = edge.cells, int(contents.cell_start[e])
-                volume = contents.cell_volume[e] * float(contents.cells[s : s + n + 1, contents.gas].sum())
-                for end in (edge.a, edge.b):
-                    r = self.rank[end]
-                    self.compliance[r] += 0.5 * volume / max(self.pressure[r] + ATMOSPHERE_PA, 1e4)
-        for i, r in self.rank.items():
-            held = contents.node_c[i, contents.gas] * contents.node_volume[i]
-            if held > 0.0 and not self.ground[r]:
-                self.compliance[r] += held / max(self.pressure[r] + ATMOSPHERE_PA, 1e4)
+        if gas is not None:
+            free = self.ground == 0
+            here = gas[self.hydraulic] / np.maximum(self.pressure + ATMOSPHERE_PA, 1e4)
+            self.compliance[free] += here[free]
 
     def advance(self, h: float) -> None:
         """Move the pressures on by ``h`` seconds with the present sources; volumes are added up for the transport."""

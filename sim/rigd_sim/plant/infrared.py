@@ -74,24 +74,23 @@ class InfraredUnit:
         self._sum[:] = 0.0
         self._gas = self._time = 0.0
 
-    def spectrum(self, lever: CellLever) -> Spectrum | None:
-        """The last finished spectrum, always the same one until the next is finished; ``None`` before the first."""
+    def spectrum(self, lever: CellLever) -> Spectrum:
+        """The last finished spectrum, the same one until the next is finished; without points before the first."""
         if self.mean is None:
-            return None
+            return Spectrum(self.cell.device, 0, START_PER_CM, STEP_PER_CM, ())
         if self._made != self.count or self._spectrum is None:
-            self._spectrum, self._made = self._make(lever), self.count
+            self._spectrum, self._made = self._make(self.mean, lever), self.count
         return self._spectrum
 
-    def _make(self, lever: CellLever) -> Spectrum:
-        assert self.mean is not None
+    def _make(self, mean: Floats, lever: CellLever) -> Spectrum:
         table = absorptivity(self._chemistry, lever.shift) if lever.shift else self._table
-        pure = (self.mean @ table) * self.cell.path_um * 1e-6
+        pure = (mean @ table) * self.cell.path_um * 1e-6
         stray = STRAY_LIGHT + lever.stray
         seen = -np.log10((10.0**-pure + stray) / (1.0 + stray))
         x = (GRID - 1300.0) / 500.0
         seen += self._wander + lever.offset + lever.slope * x
         seen += lever.film / (1.0 + ((GRID - 1000.0) / 120.0) ** 2)
-        bubble = self.mean_gas + (lever.bubbles if self._random.random() < 0.3 else 0.0)
+        bubble = self.mean_gas
         if bubble > 0.0:  # a bubble in the beam: part of the path is empty, the rest scatters
             seen += min(bubble, 1.0) * (0.3 * float(self._random.random()) + 0.1 - 0.8 * seen)
         seen += NOISE_AU * lever.noise * self._random.standard_normal(POINTS)

@@ -69,7 +69,8 @@ class Sensor:
             return Reading(self.tag.channel, math.nan, 0, "OPEN")
         if lever.frozen and self.frozen_code is not None:
             return self._reading(self.frozen_code)
-        value = spoil(value, lever, room, noise)
+        if lever is not HEALTHY:
+            value = spoil(value, lever, room, noise)
         value += self.tag.noise * lever.noise * noise.normal()
         if lever.beyond:
             value = self.tag.high + 10.0 * (self.tag.high - self.tag.low) * lever.beyond
@@ -86,14 +87,10 @@ class Sensor:
 
 
 def spoil(value: float, lever: SensorLever, room: float, noise: Noise) -> float:
-    """Offset, gain, detachment and spikes of a faulty sensor."""
-    if lever is HEALTHY:
-        return value
-    if lever.shorted:
-        value = room
-    if lever.reversed_sign:
+    """Mirror, detachment, spikes, gain and offset of a faulty sensor."""
+    if lever.mirrored:
         value = 2.0 * room - value
-    value = value + (room - value) * lever.to_ambient
+    value = value + (room - value) * lever.loose
     if lever.spikes and noise.uniform() < 0.2:
         value += lever.spikes * noise.normal()
     return value * lever.gain + lever.offset

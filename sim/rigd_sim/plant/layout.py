@@ -147,6 +147,7 @@ def build_layout(rig: RigDefinition) -> Layout:
                  crack=CAVITATION_PA, conductance=1e-8 / 1e3)
         )  # fmt: skip
     _add_leaks(layout)
+    _add_shunts(layout)
     layout.passive = len(layout.edges)
     for pump in layout.pumps.values():
         _add_syringes(layout, pump)
@@ -219,6 +220,16 @@ def _add_leaks(layout: Layout) -> None:
     for i, node in enumerate(list(layout.nodes)):
         if not node.ground and node.hydraulic:
             layout.leak_edge[i] = layout.add_edge(Edge(f"{node.id}.leak", i, floor, "leak"))
+
+
+def _add_shunts(layout: Layout) -> None:
+    """Closed ways that faults open: past the beads of a column, and back through a pump's outlet check valve."""
+    for column in layout.columns:
+        ends = layout.node_index[f"{column}.in"], layout.node_index[f"{column}.out"]
+        layout.add_edge(Edge(f"{column}.bypass", *ends, "shunt"))
+    for pump in layout.pumps:
+        ends = layout.node_index[f"{pump}.out"], layout.node_index[f"{pump}.in"]
+        layout.add_edge(Edge(f"{pump}.back", *ends, "shunt"))
 
 
 def _add_air_inlets(layout: Layout) -> None:

@@ -7,24 +7,25 @@ from dataclasses import dataclass, field
 
 @dataclass(slots=True)
 class PumpLever:
-    """``stall``: the motor stops. ``slip``: share of the displacement that does not become flow. ``deaf``: orders are
-    accepted but not carried out. ``deaf_stop``: only stop is ignored. ``backlash`` [m3] lost after a change-over."""
+    """``gain``: true over counted displacement. ``deaf`` accepts orders and does nothing; ``deaf_stop`` only for stop.
+
+    ``ripple`` is the depth of the screw's periodic error; ``slack`` [m3] is lost after a change-over or refill;
+    ``no_draw``: filling counts but draws nothing; ``air_share`` of what is drawn is air.
+    """
 
     stall: bool = False
-    slip: float = 0.0
+    gain: float = 1.0
     deaf: bool = False
     deaf_stop: bool = False
     ripple: float = 0.0
-    runaway: float = 1.0
-    backlash: float = 0.0
-    drift_up: float = 0.0
+    slack: float = 0.0
     no_draw: bool = False
+    air_share: float = 0.0
 
 
 @dataclass(slots=True)
 class ValveLever:
-    """``stuck``: does not move. ``lost``: position unknown. ``liar``: says it moved. ``cross`` [0..1]: leaks
-    between ports."""
+    """``stuck``: does not move. ``lost``: position unknown. ``liar``: says it moved. ``slow``: factor on travel."""
 
     stuck: bool = False
     lost: bool = False
@@ -35,20 +36,19 @@ class ValveLever:
 
 @dataclass(slots=True)
 class BathLever:
-    """``pump_dead``: no circulation (its status may still say it runs); power factors; ``reset``: counts resets."""
+    """``pump_dead``: no circulation, ``status_lies`` although it says so. Power factors; ``full_heat``: relay stuck."""
 
     pump_dead: bool = False
     status_lies: bool = False
     heating: float = 1.0
     cooling: float = 1.0
-    resets: int = 0
     full_heat: bool = False
-    setpoint_offset: float = 0.0
+    offset_K: float = 0.0
 
 
 @dataclass(slots=True)
 class SensorLever:
-    """How a measured value is spoiled before it is converted; ``open``: broken wire; ``frozen``: code stands still."""
+    """How a measured value is spoiled: ``beyond`` +1/-1 leaves the converter; ``loose`` 0..1 towards the room."""
 
     frozen: bool = False
     offset: float = 0.0
@@ -56,60 +56,46 @@ class SensorLever:
     noise: float = 1.0
     is_open: bool = False
     beyond: int = 0
-    to_ambient: float = 0.0
-    shorted: bool = False
-    reversed_sign: bool = False
+    loose: float = 0.0
+    mirrored: bool = False
     spikes: float = 0.0
 
 
 @dataclass(slots=True)
 class CellLever:
-    """Spectrum faults: ``offset`` and ``slope`` of the base line [AU], ``film`` [AU at 1000 1/cm], ``dead`` lamp."""
+    """Spectrum faults: base line ``offset`` and ``slope`` [AU], ``film`` [AU], ``stray`` light share, ``shift``
+    [1/cm]."""
 
     offset: float = 0.0
     slope: float = 0.0
     film: float = 0.0
     noise: float = 1.0
-    bubbles: float = 0.0
     frozen: bool = False
     shift: float = 0.0
     stray: float = 0.0
 
 
-@dataclass(frozen=True, slots=True)
-class DeviceFaults:
-    """What a byte server must do wrong for one device; the plant only carries it. ``restarts`` counts up."""
-
-    silent: bool = False
-    late_s: float = 0.0
-    garbled: float = 0.0
-    refuse: bool = False
-    pretend: bool = False
-    wrong_identity: bool = False
-    restarts: int = 0
-    echo: bool = False
-    chatter: float = 0.0
-
-
 @dataclass(slots=True)
 class Levers:
-    """All settings. Edges and nodes by index; parts and devices by id. Factors multiply, so faults combine."""
+    """All settings. Edges and nodes by index; parts, tags and devices by id. Factors multiply, so faults combine."""
 
     flow_factor: dict[int, float] = field(default_factory=dict)  # edge -> conductance factor
-    leak: dict[int, float] = field(default_factory=dict)  # node -> conductance to the floor [m3/(s Pa)]
+    conductance: dict[int, float] = field(default_factory=dict)  # leak or shunt edge -> conductance [m3/(s Pa)]
     air: dict[int, float] = field(default_factory=dict)  # node -> gas that enters [m3/s]
+    head_Pa: dict[str, float] = field(default_factory=dict)  # vessel -> pressure of its height
     bottle_empty: set[str] = field(default_factory=set)
-    closed: dict[str, float] = field(default_factory=dict)  # vessel -> headspace [m3]
+    closed: set[str] = field(default_factory=set)  # vessels without a vent
+    capacity: dict[str, float] = field(default_factory=dict)  # vessel -> true capacity [m3]
     exotherm_W: dict[str, float] = field(default_factory=dict)  # column -> extra heat
     activity: dict[str, float] = field(default_factory=dict)  # column -> factor
-    swell: dict[str, float] = field(default_factory=dict)  # column -> voidage factor
-    bypass: dict[str, float] = field(default_factory=dict)
     pumps: dict[str, PumpLever] = field(default_factory=dict)
     valves: dict[str, ValveLever] = field(default_factory=dict)
     baths: dict[str, BathLever] = field(default_factory=dict)
     sensors: dict[str, SensorLever] = field(default_factory=dict)
     cells: dict[str, CellLever] = field(default_factory=dict)
-    devices: dict[str, DeviceFaults] = field(default_factory=dict)
+    silent: set[str] = field(default_factory=set)  # devices that do not answer
+    refusing: set[str] = field(default_factory=set)  # units that refuse every order
+    restarted: set[str] = field(default_factory=set)  # units that lost power once
     room_K: float = 0.0
 
     def pump(self, unit: str) -> PumpLever:

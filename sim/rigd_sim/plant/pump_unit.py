@@ -90,6 +90,11 @@ class PumpUnit:
         """All motion ends; a stall or an empty end position is left behind."""
         self.state, self.rate, self.filling = PumpState.STOPPED, 0.0, -1
 
+    def restart(self) -> None:
+        """Power was lost and came back: at rest, counter at zero."""
+        self.stop()
+        self.delivered = 0.0
+
     def _deliver(self, value: float, lever: PumpLever) -> str:
         if not self.spec.rate_min_mL_min <= value <= self.spec.rate_max_mL_min:
             return "value"
@@ -133,7 +138,7 @@ class PumpUnit:
             return False
         if self.filling == other:
             self.filling = -1
-        self.active, self.slack = other, lever.backlash
+        self.active, self.slack = other, lever.slack
         return True
 
     def next_event(self) -> float:
@@ -155,11 +160,11 @@ class PumpUnit:
             self.delivered += turned
             lost = min(self.slack, turned)
             self.slack -= lost
-            out.delivered = (turned - lost) * (1.0 - lever.slip) * lever.runaway + self._ripple(turned, lever.ripple)
+            out.delivered = (turned - lost) * lever.gain + self._ripple(turned, lever.ripple)
         if self.filling >= 0:
             drawn = min(self.spec.refill_rate_mL_min * ML_MIN_M3_S * h, self.fill_to - self.counted[self.filling])
             self.counted[self.filling] += drawn
-            out.drawn = 0.0 if lever.no_draw else drawn
+            out.drawn = 0.0 if lever.no_draw else drawn * lever.gain
         return out
 
     def _ripple(self, turned: float, depth: float) -> float:
@@ -179,7 +184,7 @@ class PumpUnit:
             self.filling = -1
             if self.state is PumpState.REFILLING:
                 self.state = PumpState.STOPPED
-            self.slack = lever.backlash
+            self.slack = lever.slack
             changed = True
         if self.moving and self.counted[self.active] <= NOTHING_M3:
             self.counted[self.active] = 0.0

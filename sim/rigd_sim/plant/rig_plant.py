@@ -22,9 +22,9 @@ from rigd_sim.plant.bath_unit import BathUnit
 from rigd_sim.plant.contents import Contents
 from rigd_sim.plant.flows import Flows
 from rigd_sim.plant.infrared import InfraredUnit
-from rigd_sim.plant.instruments import Instruments, Sensor
-from rigd_sim.plant.layout import build_layout
-from rigd_sim.plant.levers import BathLever, CellLever, DeviceFaults, Levers, PumpLever, SensorLever, ValveLever
+from rigd_sim.plant.instruments import HEALTHY, Instruments, Sensor
+from rigd_sim.plant.layout import SyringeEdges, build_layout
+from rigd_sim.plant.levers import BathLever, CellLever, Levers, PumpLever, ValveLever
 from rigd_sim.plant.places import make_sensors
 from rigd_sim.plant.pump_unit import PumpUnit
 from rigd_sim.plant.thermal import Thermal
@@ -33,9 +33,9 @@ from rigd_sim.plant.valve_unit import ValveUnit
 
 NS = 1_000_000_000
 CHEMISTRY_NS = NS
+SMALL_GAS_M3 = 1e-9
 
-_PUMP, _VALVE, _BATH, _SENSOR, _CELL = PumpLever(), ValveLever(), BathLever(), SensorLever(), CellLever()
-_NO_FAULTS = DeviceFaults()
+_PUMP, _VALVE, _BATH, _CELL = PumpLever(), ValveLever(), BathLever(), CellLever()
 
 
 class RigPlant:
@@ -57,11 +57,12 @@ class RigPlant:
         self.ailments = Ailments(rig, self.layout, effects or {})
         self.levers = Levers()
         self._units = {d.id: d.unit for d in rig.devices}
+        self._device_of = {d.unit: d.id for d in rig.devices if d.unit}
         self._chemistry_ns = min([CHEMISTRY_NS, *(c.period_ns for c in rig.cells)])
         self._carried_ns = 0
         self._headspace: dict[str, float] = {}
         self.initial = self.contents.totals()
-        self._regate()
+        self._refresh_levers()
 
     # time ---------------------------------------------------------------------------------------------------------
 
@@ -101,33 +102,31 @@ class RigPlant:
                 continue
             stroke = pump.stroke(h, self.levers.pumps.get(name, _PUMP))
             edges = layout.syringes[name]
-            if pump.moving:
-                self._displace(edges[stroke.active].deliver, edges[stroke.active].node, stroke.delivered, h, 1.0)
+            if stroke.delivered:
+                self._push(edges[stroke.active], stroke.delivered, h)
             if stroke.drawn:
-                self._displace(edges[stroke.filling].draw, edges[stroke.filling].node, stroke.drawn, h, -1.0)
+                self._draw(pump, edges[stroke.filling], stroke.drawn, h)
         for node, rate in self.levers.air.items():
             flows.add(layout.air_edge[node], rate * h, h)
             flows.source[flows.rank[node]] += rate
         flows.advance(h)
 
-    def _displace(self, edge: int, syringe: int, volume: float, h: float, sign: float) -> None:
-        """A syringe moves ``volume`` [m3] out (+1) or in (-1); never more out than it truly holds."""
-        held = self.contents.node_volume[syringe] + self._pending_into(syringe)
-        volume = min(volume, held) if sign > 0.0 else volume
-        ends = self.layout.edges[edge]
-        node = ends.b if sign > 0.0 else ends.a
-        self.flows.add(edge, volume, h)
-        self.flows.source[self.flows.rank[node]] += sign * volume / h
+    def _draw(self, pump: PumpUnit, syringe: SyringeEdges, volume: float, h: float) -> None:
+        """Draw from the inlet; a leak on the suction side puts air in the place of liquid."""
+        share = self.levers.pumps.get(pump.spec.id, _PUMP).air_share
+        inlet = self.layout.edges[syringe.draw].a
+        self.flows.add(syringe.draw, volume, h)
+        self.flows.source[self.flows.rank[inlet]] -= volume * (1.0 - share) / h
+        if share > 0.0:
+            self.flows.add(self.layout.air_edge[inlet], volume * share, h)
 
-    def _pending_into(self, node: int) -> float:
-        contents = self.contents
-        return sum(
-            float(contents.pending[e]) * (1.0 if self.layout.edges[e].b == node else -1.0)
-            for pair in self.layout.syringes.values()
-            for s in pair
-            if s.node == node
-            for e in (s.deliver, s.draw)
-        )
+    def _push(self, syringe: SyringeEdges, volume: float, h: float) -> None:
+        """Deliver to the outlet, never more than the syringe truly holds."""
+        pending = self.contents.pending
+        held = self.contents.node_volume[syringe.node] + pending[syringe.draw] - pending[syringe.deliver]
+        volume = min(volume, float(held))
+        self.flows.add(syringe.deliver, volume, h)
+        self.flows.source[self.flows.rank[self.layout.edges[syringe.deliver].b]] += volume / h
 
     def _events(self) -> None:
         """What changes by itself at the end of a step."""
@@ -167,6 +166,7 @@ class RigPlant:
         self.thermal.advance(dt, mean_flow, self.levers)
         self.flows.swell(dt)
         contents.age(dt)
+        contents.spill(self.levers.capacity)
         self._close_flasks()
         for unit in self.infrared.values():
             row = contents.node_c[self.layout.node_index[unit.cell.id]]
@@ -187,7 +187,7 @@ class RigPlant:
         """Headspace gas of closed vessels (isothermal ideal gas): p V stays what it was when they were closed."""
         for name, gas in self._headspace.items():
             i = self.layout.node_index[name]
-            room = max(self.layout.vessels[name].capacity_mL * ML_M3 - self.contents.node_volume[i], 1e-9)
+            room = max(self.layout.vessels[name].capacity_mL * ML_M3 - self.contents.node_volume[i], SMALL_GAS_M3)
             r = self.flows.rank[i]
             self.flows.pressure[r] = gas / room - ATMOSPHERE_PA
             self.flows.rest_compliance[r] = room / (gas / room)
@@ -206,30 +206,46 @@ class RigPlant:
 
     def _refresh_levers(self) -> None:
         """Rebuild the settings of all faults in force and let every part see them."""
+        before = self.levers.restarted
         self.levers = self.ailments.levers(self.now_ns / NS)
+        for unit in self.levers.restarted - before:
+            self._restart(unit)
+        self.contents.room_K = self.rig.simulation.ambient_degC + ZERO_CELSIUS_K + self.levers.room_K
         for name, vessel in self.layout.vessels.items():
             self.contents.hide(name, name in self.levers.bottle_empty)
             self._shut(name, vessel.capacity_mL * ML_M3, name in self.levers.closed or not vessel.vented)
         self.contents.poison(self.levers.activity)
         self._regate()
 
+    def _restart(self, unit: str) -> None:
+        if unit in self.pumps:
+            self.pumps[unit].restart()
+        elif unit in self.valves:
+            self.valves[unit].restart(self.now_ns / NS)
+        elif unit in self.baths:
+            self.baths[unit].restart()
+
     def _shut(self, name: str, capacity: float, closed: bool) -> None:
+        """Close or vent a vessel; a vented one stands at the pressure of its height."""
         i = self.layout.node_index[name]
         r = self.flows.rank[i]
         if closed and name not in self._headspace:
-            room = self.levers.closed.get(name, 0.0) or capacity - float(self.contents.node_volume[i])
-            self._headspace[name] = ATMOSPHERE_PA * max(room, 1e-9)
+            self._headspace[name] = ATMOSPHERE_PA * max(capacity - float(self.contents.node_volume[i]), SMALL_GAS_M3)
             self.flows.ground[r] = 0
-        elif not closed and name in self._headspace:
-            del self._headspace[name]
+        elif not closed:
+            self._headspace.pop(name, None)
             self.flows.ground[r] = 1
-            self.flows.pressure[r] = 0.0
+            self.flows.pressure[r] = self.levers.head_Pa.get(name, 0.0)
         self._close_flasks()
 
     # the port -----------------------------------------------------------------------------------------------------
 
     def tell(self, unit: str, action: Action, value: float) -> str:
         """Give a command to a unit at the present time; "" or the device's reason to refuse."""
+        if unit in self.levers.refusing:
+            return "fault"
+        if self._device_of.get(unit) in self.levers.silent:
+            return "no answer"
         if unit in self.pumps:
             self._carry()
             return self.pumps[unit].tell(action, value, self.levers.pumps.get(unit, _PUMP))
@@ -244,6 +260,8 @@ class RigPlant:
 
     def read(self, device: str, channels: Sequence[str]) -> Sequence[Reading]:
         """What the instruments of this device show now."""
+        if device in self.levers.silent:
+            return [Reading(c, math.nan, fault="no answer") for c in channels]
         unit = self._units.get(device, "")
         if unit in self.pumps:
             return [Reading(c, self._pump_channel(unit, c)) for c in channels]
@@ -262,7 +280,7 @@ class RigPlant:
         if sensor is None:
             return Reading(channel, math.nan, 0, "OPEN")
         value = self.flows.shown_bar(sensor.slot) if sensor.slot >= 0 else sensor.shown
-        lever = self.levers.sensors.get(sensor.tag.id, _SENSOR)
+        lever = self.levers.sensors.get(sensor.tag.id, HEALTHY)
         return sensor.read(value, self.instruments.noise, lever, self.contents.room_K - ZERO_CELSIUS_K)
 
     def _pump_channel(self, unit: str, channel: str) -> float:
@@ -290,16 +308,9 @@ class RigPlant:
         return math.nan
 
     def spectrum(self, device: str) -> Spectrum:
-        """The last finished spectrum; ``LookupError`` before the first one or for a device that is no cell."""
+        """The last finished spectrum, without points before the first; ``LookupError`` if the device is no cell."""
         unit = self.infrared[device]
-        found = unit.spectrum(self.levers.cells.get(unit.cell.id, _CELL))
-        if found is None:
-            raise LookupError(f"{device} has not finished a spectrum yet")
-        return found
-
-    def spectra_finished(self, device: str) -> int:
-        """How many spectra a cell's device has finished since the start."""
-        return self.infrared[device].count
+        return unit.spectrum(self.levers.cells.get(unit.cell.id, _CELL))
 
     def inject(self, fault: FaultSpec) -> None:
         """Add a fault; ``ConfigError`` for an unknown kind or target."""
@@ -312,10 +323,6 @@ class RigPlant:
         self._carry()
         self.ailments.clear(kind, target)
         self._refresh_levers()
-
-    def device_faults(self, device: str) -> DeviceFaults:
-        """What a byte server must do wrong for this device now."""
-        return self.levers.devices.get(device, _NO_FAULTS)
 
     def truth(self) -> Mapping[str, float]:
         """True state for checkers; keys as in the port."""

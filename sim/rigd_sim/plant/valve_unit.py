@@ -46,6 +46,10 @@ class ValveUnit:
             self.travel_s = self.spec.travel_s * lever.slow
         return ""
 
+    def restart(self, now_s: float) -> None:
+        """Power was lost and came back: go to the rest position."""
+        self.tell(self.spec.index(self.spec.rest), now_s, ValveLever())
+
     def moving(self, now_s: float) -> bool:
         """True during travel."""
         return self.position != self.target and now_s < self.start_s + self.travel_s
