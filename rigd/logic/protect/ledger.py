@@ -63,7 +63,10 @@ class Source:
 
 @dataclass(frozen=True, slots=True)
 class Ledger:
-    """Volumes [mL]: in each vessel, drawn of each liquid, delivered by each pump since the start."""
+    """Volumes [mL]: in each vessel, drawn of each liquid, delivered by each pump since the start.
+
+    ``outlet`` is the vessel that the outlet leads to; ``shown`` once the volumes have been put into the image.
+    """
 
     vessels: Mapping[str, float]
     used: Mapping[str, float] = field(default_factory=dict)
@@ -71,6 +74,7 @@ class Ledger:
     counts: Mapping[str, Count] = field(default_factory=dict)
     sources: Mapping[str, Source] = field(default_factory=dict)
     outlet: str = ""
+    shown: bool = False
 
 
 def initial(program: Program) -> Ledger:
@@ -89,7 +93,7 @@ def update(
     taken: Iterable[str],
     now_ns: int,
 ) -> tuple[Ledger, dict[str, Sample]]:
-    """Count on with new samples; returns the volume samples of the vessels that changed."""
+    """Count on with new samples; returns the volume samples of the vessels that changed, at first of all."""
     after, moved = ledger, False
     keys = sorted((program.carries[tag][::-1], tag) for tag in program.counting.intersection(taken))
     for (channel, unit), tag in keys:  # volumes first: what was pumped went where the valve stood before
@@ -99,17 +103,12 @@ def update(
             after = counted
         elif channel == "position":
             after = _switch(program, after, unit, samples[tag])
-    if not moved:
+    if ledger.shown and not moved:
         return after, {}
-    changed = (v for v, volume in after.vessels.items() if volume != ledger.vessels[v])
+    changed = [v for v, volume in after.vessels.items() if not ledger.shown or volume != ledger.vessels[v]]
     named = ((f"{vessel}.volume", after.vessels[vessel]) for vessel in changed)
-    return after, {tag: Sample(tag, volume, now_ns) for tag, volume in named if tag in program.tags}
-
-
-def volumes(program: Program, ledger: Ledger, now_ns: int) -> tuple[Sample, ...]:
-    """The volume samples of all vessels."""
-    tags = ((f"{vessel}.volume", volume) for vessel, volume in ledger.vessels.items())
-    return tuple(Sample(tag, volume, now_ns) for tag, volume in tags if tag in program.tags)
+    shown = {tag: Sample(tag, volume, now_ns) for tag, volume in named if tag in program.tags}
+    return (after if after.shown else replace(after, shown=True)), shown
 
 
 def _switch(program: Program, ledger: Ledger, valve: str, sample: Sample) -> Ledger:

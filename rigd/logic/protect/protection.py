@@ -73,19 +73,13 @@ class ProtectStep:
 
 def initial(program: Program, now_ns: int) -> ProtectState:
     """Nothing seen, everything tripped, the end state of a cut demanded."""
-    book = ledger.initial(program)
-    volumes = {sample.tag: sample for sample in ledger.volumes(program, book, now_ns)}
-    judge = Judge(conditions.initial(program.watches), volumes, lambda _: None, now_ns)
-    for tag in volumes:
-        for watch in program.watching.get(tag, ()):
-            judge.tag(watch)
     return ProtectState(
-        replace(signals.initial(now_ns), samples=volumes),
-        judge.result(),
+        signals.initial(now_ns),
+        conditions.initial(program.watches),
         faults.initial(now_ns),
         interlocks.initial(program, now_ns),
         alarms.initial(program),
-        book,
+        ledger.initial(program),
         stops.initial(program),
     )
 
