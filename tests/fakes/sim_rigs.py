@@ -6,6 +6,7 @@ from dataclasses import replace
 
 from rigd.model.chemistry import Band, Chemistry, RateLaw, Reaction, ReactionPlace, Species
 from rigd.model.devices import ChannelSpec, DeviceSpec
+from rigd.model.orders import Action
 from rigd.model.rig import (
     Cell,
     Chiller,
@@ -26,6 +27,7 @@ from rigd.model.rig import (
     Vessel,
     VesselRole,
 )
+from rigd_sim.plant import RigPlant
 
 S_NS = 1_000_000_000
 PARTS = (
@@ -191,3 +193,22 @@ def column_rig(chemistry: Chemistry, packing: Packing, bore_mm: float = 6.6, len
         devices=(device("pump", "PU"),),
         simulation=Simulation(ambient_degC=25.0),
     )
+
+
+def charged(plant: RigPlant, species: str, mol_m3: float, mL: float = 50.0) -> None:
+    """Fill the pump of a ``column_rig`` and put a step of ``species`` right at the inlet of its column."""
+    contents, layout = plant.contents, plant.layout
+    column = contents.species.index(species)
+    plant.tell("PU", Action.FILL, mL)
+    plant.advance(plant.now_ns + round((mL / 8.0 * 60.0 + 5.0) * S_NS))
+    for name in ("PU.syringe1", "PU.out", "COL.in"):
+        contents.node_c[layout.node_index[name], column] = mol_m3
+    edge = layout.edge_index["L-1"]
+    first = int(contents.cell_start[edge])
+    contents.cells[first : first + layout.edges[edge].cells + 1, column] = mol_m3
+
+
+def outlet(plant: RigPlant, species: str) -> float:
+    """Concentration that leaves the column now [mol/m3]."""
+    plant.settle()
+    return float(plant.contents.node_c[plant.layout.node_index["COL.out"], plant.contents.species.index(species)])

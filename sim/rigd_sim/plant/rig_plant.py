@@ -151,6 +151,10 @@ class RigPlant:
 
     # liquid, heat, reaction ---------------------------------------------------------------------------------------
 
+    def settle(self) -> None:
+        """Bring liquid, reactions and heat to the present time, between two regular steps."""
+        self._carry()
+
     def _carry(self) -> None:
         """Carry pending volumes, reactions and heat to the present time."""
         dt = (self.now_ns - self._carried_ns) / NS
