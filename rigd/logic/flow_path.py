@@ -9,7 +9,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterable, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 from rigd.model.rig import Column, Line, RigDefinition, Valve
 
@@ -52,7 +52,8 @@ class Feed:
     """One pump with what leads to it and from it to the part ``merge``, where it enters the trunk.
 
     ``supply`` maps the position of ``valve`` to the liquid drawn there; without a valve the only key is "".
-    ``syringe`` is the dead volume that stays in one syringe at the end of its stroke.
+    ``syringe`` is the dead volume that stays in one syringe at the end of its stroke. ``inlet_mL`` is the hold-up from
+    the feed valve to the pump, ``outlet_mL`` from the pump to the merge, without the merge itself.
     """
 
     pump: str
@@ -62,16 +63,12 @@ class Feed:
     outlet: tuple[Segment, ...]
     syringe: Segment
     merge: str
+    inlet_mL: float = field(init=False)
+    outlet_mL: float = field(init=False)
 
-    @property
-    def inlet_mL(self) -> float:
-        """Hold-up from the feed valve (or vessel) to the pump."""
-        return _total_mL(self.inlet)
-
-    @property
-    def outlet_mL(self) -> float:
-        """Hold-up from the pump to the merge, without the merge itself."""
-        return _total_mL(self.outlet)
+    def __post_init__(self) -> None:
+        object.__setattr__(self, "inlet_mL", _total_mL(self.inlet))
+        object.__setattr__(self, "outlet_mL", _total_mL(self.outlet))
 
     def position_of(self, liquid: str) -> str | None:
         """The valve position that draws this liquid, ``None`` when there is none."""
@@ -84,11 +81,10 @@ class Section:
 
     segments: tuple[Segment, ...]
     pumps: tuple[str, ...]
+    volume_mL: float = field(init=False)
 
-    @property
-    def volume_mL(self) -> float:
-        """Hold-up of the section."""
-        return _total_mL(self.segments)
+    def __post_init__(self) -> None:
+        object.__setattr__(self, "volume_mL", _total_mL(self.segments))
 
 
 @dataclass(frozen=True, slots=True)
@@ -109,7 +105,8 @@ class Outlet:
 class FlowPath:
     """The whole path. ``trunk`` runs from the first merge (included) to the outlet valve, columns and cells included.
 
-    ``outlet_valve`` is "" when the trunk ends in a vessel without one.
+    ``outlet_valve`` is "" when the trunk ends in a vessel without one. ``trunk`` holds the segments of all sections in
+    the direction of flow, ``trunk_mL`` their hold-up.
     """
 
     feeds: tuple[Feed, ...]
@@ -119,16 +116,13 @@ class FlowPath:
     supply_lines: tuple[SupplyLine, ...]
     column_mL: float
     interstitial_mL: float
+    trunk: tuple[Segment, ...] = field(init=False)
+    trunk_mL: float = field(init=False)
 
-    @property
-    def trunk(self) -> tuple[Segment, ...]:
-        """Segments from the first merge to the outlet valve, in the direction of flow."""
-        return tuple(segment for section in self.sections for segment in section.segments)
-
-    @property
-    def trunk_mL(self) -> float:
-        """Hold-up from the first merge to the outlet valve."""
-        return _total_mL(self.trunk)
+    def __post_init__(self) -> None:
+        trunk = tuple(segment for section in self.sections for segment in section.segments)
+        object.__setattr__(self, "trunk", trunk)
+        object.__setattr__(self, "trunk_mL", _total_mL(trunk))
 
     @property
     def wetted_mL(self) -> float:

@@ -10,10 +10,9 @@ from rigd.logic.conduct.conditioning import batch
 from rigd.logic.conduct.doses import Dose
 from rigd.logic.conduct.layout import Layout, PumpLayout, liquid_of
 from rigd.logic.conduct.leak_test import fill_flows
-from rigd.logic.conduct.point_needs import point_mL, signal_s
+from rigd.logic.conduct.point_needs import point_mL, settle_s
 from rigd.logic.conduct.shares import flush_doses, prime_doses, rinse_doses, solvent_flows
 from rigd.logic.conduct.switchover import flows_of, label
-from rigd.model.recipe import Point
 
 LATENCY_S = 2.0
 """From an order until its effect has been seen: one sample of the pump and of the valve each."""
@@ -164,14 +163,6 @@ def _switchover(layout: Layout, spec: PhaseSpec, before: Effort) -> Effort:
                   before.bath_degC, before.after(seconds))  # fmt: skip
 
 
-def settle_s(layout: Layout, point: Point, reagent: bool) -> float:
-    """Volumes, or the signal gate if that takes longer."""
-    residence_s = layout.path.residence_s(point.flows_mL_min)
-    by_volume_s = layout.recipe.settle.volumes * residence_s
-    gated = reagent and layout.recipe.settle.signal in layout.program.tags
-    return max(by_volume_s, residence_s + signal_s(layout, point) if gated else 0.0)
-
-
 def _point(layout: Layout, spec: PhaseSpec, before: Effort) -> Effort:
     point = spec.point
     assert point is not None, "a point phase without a point"
@@ -185,7 +176,7 @@ def _point(layout: Layout, spec: PhaseSpec, before: Effort) -> Effort:
         play = layout.pumps[name]
         volumes[name] = flow * running_s / 60.0
         left_mL = left.get(name, 0.0)
-        if left_mL < point_mL(layout, point, name) + play.guard_mL(flow):
+        if left_mL < point_mL(layout, point, name, spec.reagent) + play.guard_mL(flow):
             refills += 1
             if not play.dual:
                 refill_s = max(refill_s, _fill_s(play, play.pump.stroke_mL - left_mL) + LATENCY_S)

@@ -17,6 +17,9 @@ from rigd.logic.student import t_quantile
 RATIO_LIMIT = 1.44
 """95 % point of the ratio under white noise for the filter factors below (J. Process Control 7 (1997) 149-152)."""
 
+RATIO_MEMORY = 60
+"""Samples over which the gate takes the ratio, at most."""
+
 CONFIDENCE = 0.95
 """Of each of the two one-sided tests."""
 
@@ -56,6 +59,14 @@ def ratio_step(
         nu2=l2 * (value - filter_.filtered) ** 2 + (1 - l2) * filter_.nu2,
         delta2=l3 * (value - filter_.previous) ** 2 + (1 - l3) * filter_.delta2,
     )
+
+
+def ratio_over(values: tuple[float, ...]) -> float | None:
+    """The ratio after these values; ``None`` when they do not move."""
+    state = ratio_start(values[0])
+    for value in values[1:]:
+        state = ratio_step(state, value)
+    return state.ratio
 
 
 @dataclass(frozen=True, slots=True)
@@ -105,9 +116,12 @@ class SettleRule:
 
 @dataclass(frozen=True, slots=True)
 class Settler:
-    """Streaming state. ``verdict`` says why it is not steady: "few", "frozen", "moving", "unproven", or "steady"."""
+    """Streaming state. ``verdict`` says why it is not steady: "few", "frozen", "moving", "unproven", or "steady".
 
-    ratio: RatioFilter | None = None
+    ``raw`` holds the last samples. The ratio is taken over them alone: the plain recursion would remember a step that
+    is large against the noise for dozens of samples.
+    """
+
     raw: tuple[float, ...] = ()
     started_ns: int = 0
     pending: tuple[tuple[float, float], ...] = ()
@@ -125,12 +139,10 @@ class Settler:
 def settle_step(settler: Settler, rule: SettleRule, t_ns: int, value: float) -> Settler:
     """Take one good sample; judge whenever a block is complete."""
     started_ns = settler.started_ns or t_ns
-    ratio = ratio_start(value) if settler.ratio is None else ratio_step(settler.ratio, value)
     pending = (*settler.pending, ((t_ns - started_ns) / 1e9, value))
     settler = replace(
         settler,
-        ratio=ratio,
-        raw=(*settler.raw, value)[-max(rule.window, 3) :],
+        raw=(*settler.raw, value)[-min(max(rule.window * rule.block, 3), RATIO_MEMORY) :],
         started_ns=started_ns,
         pending=pending,
         count=settler.count + 1,
@@ -159,7 +171,7 @@ def _verdict(settler: Settler, rule: SettleRule) -> str:
         return "few"
     if min(settler.raw) == max(settler.raw):
         return "frozen"
-    ratio = settler.ratio.ratio if settler.ratio else None
+    ratio = ratio_over(settler.raw)
     if ratio is None or ratio > RATIO_LIMIT:
         return "moving"
     return "steady" if settler.trend.change_below(rule.tolerance, rule.horizon_s) else "unproven"

@@ -79,7 +79,7 @@ def _fill_or_swap(play: PumpLayout, track: PumpTrack, want: Want, at: Callable[[
         return _still_wanted(track, want)
     if track.swap:
         return track
-    if play.dual and _swap_now(track, want, now_ns):
+    if play.dual and _swap_now(play, track, want, now_ns):
         return start_swap(track, play)
     if not track.at_rest and _flow(play, track, want, now_ns)[0] == 0.0:
         return track  # it is about to be stopped, and that would end the filling
@@ -98,31 +98,40 @@ def _still_wanted(track: PumpTrack, want: Want) -> PumpTrack:
     return replace(track, fill=None)
 
 
-def _swap_now(track: PumpTrack, want: Want, now_ns: int) -> bool:
+def _swap_now(play: PumpLayout, track: PumpTrack, want: Want, now_ns: int) -> bool:
     if track.standby != want.label or track.standby_mL <= EMPTY_mL or now_ns - track.refused_ns < 2_000_000_000:
         return False
     if track.active != want.label:
         return want.urgent
-    return want.swap and track.standby_mL > track.level_at(now_ns) + 0.05
+    enough_mL = 0.95 * min(want.level_mL, play.pump.stroke_mL)
+    return want.swap and track.standby_mL > max(track.level_at(now_ns) + 0.05, enough_mL)
 
 
 def _dual_fill(play: PumpLayout, track: PumpTrack, want: Want, now_ns: int) -> float:
     """How far the standby syringe should be filled now; 0 = not."""
     foreign = track.standby != want.label and track.standby_mL > EMPTY_mL
-    if foreign or want.need_mL <= 0.0:
-        return 0.0
-    reserve_mL = play.reserve_mL(want.flow_mL_min)
     here_mL = track.supply_mL(want.label, now_ns)
+    reserve_mL = play.reserve_mL(want.flow_mL_min)
     missing_mL = want.need_mL + reserve_mL - here_mL
-    if track.active == want.label:
-        wanted_mL = max(min(want.level_mL, want.need_mL), 0.0) + play.guard_mL(want.flow_mL_min)
-        if missing_mL <= reserve_mL or track.level_at(now_ns) >= wanted_mL:
-            return 0.0
-    elif here_mL >= 0.6 * min(want.need_mL, play.pump.stroke_mL, want.batch_mL):
+    if foreign or want.need_mL <= 0.0 or missing_mL <= reserve_mL:
         return 0.0
-    target_mL = (track.standby_mL if track.standby == want.label else 0.0) + missing_mL
-    target_mL = min(target_mL, play.pump.stroke_mL, want.batch_mL + reserve_mL)
-    return target_mL if target_mL > track.standby_mL + _WORTH_mL else 0.0
+    held_mL = track.standby_mL if track.standby == want.label else 0.0
+    target_mL = min(held_mL + missing_mL, play.pump.stroke_mL, want.batch_mL + reserve_mL)
+    if target_mL <= track.standby_mL + _WORTH_mL:
+        return 0.0
+    if track.active != want.label:
+        enough_mL = 0.6 * min(want.need_mL, play.pump.stroke_mL, want.batch_mL)
+        return 0.0 if here_mL >= max(enough_mL, EMPTY_mL) else target_mL
+    little = missing_mL < 0.25 * play.pump.stroke_mL and here_mL >= want.level_mL
+    if held_mL > EMPTY_mL and not want.swap and little:
+        return 0.0  # not worth a filling of its own
+    wanted_mL = max(min(want.level_mL, want.need_mL), _lead_mL(play, target_mL - held_mL, want.flow_mL_min))
+    return target_mL if track.level_at(now_ns) < wanted_mL + play.guard_mL(want.flow_mL_min) else 0.0
+
+
+def _lead_mL(play: PumpLayout, volume_mL: float, flow_mL_min: float) -> float:
+    """What flows out while a filling of this volume is prepared and drawn."""
+    return 1.2 * flow_mL_min * (play.refill_s(volume_mL) + 4.0) / 60.0
 
 
 def _single_fill(play: PumpLayout, track: PumpTrack, want: Want, now_ns: int) -> float:

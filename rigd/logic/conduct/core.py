@@ -16,7 +16,7 @@ from rigd.logic.conduct.phases import STARTS, STEPS
 from rigd.logic.conduct.pumps import PumpTrack
 from rigd.logic.conduct.requests import answer_all, prompt_event
 from rigd.logic.conduct.state import HOLD_SPEC, ConductState, ConductStep
-from rigd.logic.conduct.wants import Move, PointResult, Prompt, Wants, event
+from rigd.logic.conduct.wants import Move, PointResult, Prompt, event
 from rigd.logic.program import SECOND_NS, Program
 from rigd.logic.view import View
 from rigd.model.events import Event, EventKind
@@ -25,7 +25,8 @@ from rigd.model.orders import Stop
 Told = tuple[ConductState, Sequence[Event]]
 """A new state, and what is to be told of it."""
 
-_LONGEST_THOUGHT_NS = SECOND_NS
+_LONGEST_NS = SECOND_NS
+_LONGEST_CALM_NS = 5 * SECOND_NS
 _PHASES_PER_STEP = 12
 _AT_WORK = (run_states.RUNNING, run_states.HOLDING, run_states.HELD, run_states.RESTARTING)
 
@@ -41,7 +42,7 @@ def initial(program: Program, now_ns: int) -> ConductState:
         started_ns=now_ns,
         tracks={name: PumpTrack() for name in layout.pumps},
         prompts=prompts,
-        alert=_alert(PhaseKind.HOLD, layout.watch, layout.pressures),
+        alert=layout.usual_alert,
     )
 
 
@@ -84,22 +85,26 @@ def _act(state: ConductState, view: View, events: list[Event]) -> ConductStep:
     """Run the phase at work until it wants to wait."""
     due_ns: int | None = None
     demand, wants = None, None
+    calm = False
     if state.run in _AT_WORK:
-        state, wants, due_ns, more = _work(state, view)
+        state, move, more = _work(state, view)
         events += more
+        if move is not None:
+            wants, due_ns, calm = move.wants, move.due_ns, move.calm
     if state.run == run_states.COMPLETE:
         wants = park.parked(scene_of(state, view))
     if wants is not None and view.verdict.stop < Stop.QUENCH:
         state, demand, demand_due_ns, asked = demand_for(state, view, wants)
         events += asked
         due_ns = min((due for due in (due_ns, demand_due_ns) if due is not None), default=None)
-    wake_ns = _wake_ns(state, view.now_ns, due_ns)
-    state = replace(state, demand=demand, due_ns=wake_ns)
+    calm = calm and not any(track.fill or track.swap for track in state.tracks.values())
+    wake_ns = _wake_ns(state, view.now_ns, due_ns, calm)
+    state = replace(state, demand=demand, due_ns=wake_ns, alert=_alert(state, calm))
     return ConductStep(state, demand, tuple(events), wake_ns)
 
 
-def _wake_ns(state: ConductState, now_ns: int, due_ns: int | None) -> int:
-    latest_ns = now_ns + _LONGEST_THOUGHT_NS
+def _wake_ns(state: ConductState, now_ns: int, due_ns: int | None, calm: bool) -> int:
+    latest_ns = now_ns + (_LONGEST_CALM_NS if calm else _LONGEST_NS)
     if due_ns is None:
         return latest_ns
     if due_ns <= now_ns:
@@ -107,7 +112,7 @@ def _wake_ns(state: ConductState, now_ns: int, due_ns: int | None) -> int:
     return min(due_ns, latest_ns)
 
 
-def _work(state: ConductState, view: View) -> tuple[ConductState, Wants | None, int | None, list[Event]]:
+def _work(state: ConductState, view: View) -> tuple[ConductState, Move[Any] | None, list[Event]]:
     events: list[Event] = []
     for _ in range(_PHASES_PER_STEP):
         move = _move(state, view)
@@ -120,12 +125,12 @@ def _work(state: ConductState, view: View) -> tuple[ConductState, Wants | None, 
             if more:
                 continue
         if not move.done:
-            return state, move.wants, move.due_ns, events
+            return state, move, events
         state, more = _finish(state, view)
         events += more
         if state.run not in _AT_WORK:
-            return state, None, None, events
-    return state, move.wants, view.now_ns, events
+            return state, None, events
+    return state, replace(move, due_ns=view.now_ns, calm=False), events
 
 
 def _move(state: ConductState, view: View) -> Move[Any]:
@@ -145,7 +150,7 @@ def _after_move(state: ConductState, view: View, move: Move[Any]) -> Told:
     """Keep what the phase remembers and tell what it tells."""
     events = list(move.events)
     stage = getattr(move.memory, "step", "") or getattr(move.memory, "stage", "")
-    if stage and stage != state.stage:
+    if stage and state.stage and stage != state.stage:
         events.insert(0, _phase_event(state.spec, view.now_ns, stage))
     prompts = dict(state.prompts)
     if move.prompt and prompts.get(move.prompt.id, Prompt("", "")).status != "open":
@@ -259,8 +264,7 @@ def _finish(state: ConductState, view: View) -> Told:
 
 def _enter(state: ConductState, view: View, spec: PhaseSpec) -> Told:
     needs = _needs_mL(state, spec)
-    alert = _alert(spec.kind, state.layout.watch, state.layout.pressures)
-    state = replace(state, spec=spec, since_ns=view.now_ns, stage="", step="", left_s=None, needs_mL=needs, alert=alert)
+    state = replace(state, spec=spec, since_ns=view.now_ns, stage="", step="", left_s=None, needs_mL=needs)
     state = replace(state, memory=STARTS[spec.kind](scene_of(state, view)))
     return state, [_phase_event(spec, view.now_ns, "")]
 
@@ -282,7 +286,9 @@ def _phase_event(spec: PhaseSpec, now_ns: int, stage: str) -> Event:
     return event(EventKind.PHASE, spec.id, now_ns, text, step=stage, point=name, label=spec.label)
 
 
-def _alert(kind: PhaseKind, watch: tuple[str, ...], pressures: tuple[str, ...]) -> frozenset[str]:
+def _alert(state: ConductState, calm: bool) -> frozenset[str]:
     """Tags whose new samples are acted on at once."""
-    quick = [tag for tag in watch if tag.endswith((".level", ".position", ".state"))]
-    return frozenset([*quick, *(pressures if kind in (PhaseKind.LEAK_TEST, PhaseKind.PARK) else ())])
+    if calm:
+        return state.layout.calm_alert
+    pressure = state.spec.kind in (PhaseKind.LEAK_TEST, PhaseKind.PARK)
+    return state.layout.pressure_alert if pressure else state.layout.usual_alert

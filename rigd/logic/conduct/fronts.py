@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 
-from rigd.logic.conduct.layout import Layout, liquid_of
+from rigd.logic.conduct.layout import UNKNOWN, Layout, liquid_of
 from rigd.logic.conduct.pumps import PumpTrack
 from rigd.logic.conduct.wants import event
 from rigd.logic.estimators import Front
@@ -34,7 +34,9 @@ def follow(
     events: list[Event] = []
     for name, track in tracks.items():
         if track.front is not known.get(name):
-            pending[name] = known[name] = track.front
+            known[name] = track.front
+            if track.t_ns > 0 and track.front.liquid != UNKNOWN:
+                pending[name] = track.front
     arrived = [name for name, front in pending.items() if _at_merge(layout, name, front, tracks[name], now_ns)]
     for name in arrived:
         events.append(_merge_event(layout, name, pending.pop(name), now_ns))
@@ -64,7 +66,7 @@ def _at_merge(layout: Layout, name: str, front: Front, track: PumpTrack, now_ns:
 
 def _merge_event(layout: Layout, name: str, front: Front, now_ns: int) -> Event:
     feed = layout.pumps[name].feed
-    liquid = liquid_of(front.liquid) or "unknown liquid"
+    liquid = liquid_of(front.liquid)
     text = f"The front of {liquid} from {name} is at {feed.merge}."
     kind = "rinse" if "~" in front.liquid else "front"
     volume_mL = round(feed.outlet_mL, 4)

@@ -69,7 +69,8 @@ class Layout:
     """The rig as the sequence sees it. Tag ids are "" when the rig has no such sensor.
 
     ``dead_mL`` lies between the place where the signal is measured and the outlet valve. ``record`` are the tags that
-    are averaged over a point, ``watch`` all that the sequence reads.
+    are averaged over a point, ``watch`` all that the sequence reads; of the three alerts one at a time holds the tags
+    whose new samples make it think at once.
     """
 
     program: Program
@@ -84,6 +85,9 @@ class Layout:
     dead_mL: float
     band_K: float
     watch: tuple[str, ...]
+    usual_alert: frozenset[str]
+    calm_alert: frozenset[str]
+    pressure_alert: frozenset[str]
 
     @property
     def recipe(self) -> Recipe:
@@ -113,6 +117,8 @@ def make_layout(program: Program) -> Layout:
     signal_part = _signal_part(program)
     jacket = _jacket(program)
     record = tuple(t.id for t in rig.tags if t.measures in _RECORDED or t.at in {c.id for c in rig.cells})
+    quick = frozenset(tag for tag in tags if tag.endswith((".level", ".position", ".state")))
+    signal = frozenset({program.recipe.settle.signal} & tags.keys())
     feedback = {tag.id for tag in rig.tags if tag.id.partition(".")[0] in {*program.pumps, *program.valves}}
     return Layout(
         program=program,
@@ -126,6 +132,9 @@ def make_layout(program: Program) -> Layout:
         trunk_mL=path.trunk_mL,
         dead_mL=path.trunk_mL - path.past_part_mL(signal_part) if signal_part else 0.0,
         band_K=program.recipe.conditioning.band_K if program.recipe.conditioning else 1.0,
+        usual_alert=quick,
+        calm_alert=signal,
+        pressure_alert=quick | frozenset(pressures),
         watch=tuple(sorted({*feedback, jacket, program.recipe.settle.signal, *pressures, *record} & tags.keys())),
     )
 

@@ -14,7 +14,7 @@ from dataclasses import dataclass, field, replace
 from rigd.logic.conduct.conditioning import NEVER_NS, band_since_ns
 from rigd.logic.conduct.means import Means, merged
 from rigd.logic.conduct.point_events import abandoned, collected, interrupted, settled_event, started, unsettled_event
-from rigd.logic.conduct.point_needs import collect_mL, point_mL, settle_rule, signal_s
+from rigd.logic.conduct.point_needs import another_try_mL, collect_mL, gated, point_mL, settle_rule, signal_s
 from rigd.logic.conduct.switchover import label
 from rigd.logic.conduct.wants import Move, PointResult, Prompt, Scene, Want, Wants
 from rigd.logic.estimators import turnovers
@@ -111,14 +111,16 @@ def _want(scene: Scene, memory: Memory, point: Point, name: str) -> Want:
     """Liquid for this point; refills only where they do no harm."""
     layout, play, track = scene.layout, scene.layout.pumps[name], scene.tracks[name]
     liquid, flow = label(play, scene.spec.reagent), point.flows_mL_min[name]
-    whole_mL, fraction_mL = point_mL(layout, point, name), collect_mL(layout, point, name)
+    whole_mL, fraction_mL = point_mL(layout, point, name, scene.spec.reagent), collect_mL(layout, point, name)
     passed_mL = scene.since_mL(memory.marks).get(name, 0.0) if memory.marks else 0.0
     here_mL = max(whole_mL - passed_mL, fraction_mL) if memory.step in ("set", "settle") else _rest(scene, memory, name)
-    need_mL = here_mL + scene.needs_mL.get(name, 0.0)
-    level_mL = here_mL if play.dual or memory.step == "set" else min(fraction_mL, here_mL)
     level_at = track.level_at(scene.now_ns)
-    short = level_at < fraction_mL + play.guard_mL(flow) or (level_at < level_mL and _early(scene, memory))
-    swap = memory.step in ("set", "settle") and short
+    short = memory.step in ("set", "settle") and level_at < fraction_mL + play.guard_mL(flow)
+    if short:
+        here_mL = another_try_mL(layout, point, name)
+    need_mL = here_mL + scene.needs_mL.get(name, 0.0) + (level_at if short and play.dual else 0.0)
+    level_mL = here_mL if play.dual or memory.step == "set" else min(fraction_mL, here_mL)
+    swap = memory.step in ("set", "settle") and (short or (level_at < level_mL and _early(scene, memory)))
     may_fill = memory.step in ("set", "settle") or (play.dual and here_mL > level_at)
     return Want(liquid, flow, need_mL if flow > 0 else 0.0, level_mL, may_fill=may_fill, swap=swap)
 
@@ -185,7 +187,7 @@ def _settle(scene: Scene, memory: Memory, point: Point) -> Move[Memory]:
     rule, path = scene.layout.recipe.settle, scene.layout.path
     passed = turnovers(path, scene.since_mL(memory.marks or {}))
     memory = _judged(scene, memory, point, passed)
-    steady = not _gated(scene) or is_steady(memory.settler, settle_rule(scene.layout, point))
+    steady = not gated(scene.layout, scene.spec.reagent) or is_steady(memory.settler, settle_rule(scene.layout, point))
     ready = _liquid_for_fraction(scene, point) and _quiet_since_change(scene)
     events: tuple[Event, ...] = ()
     if passed >= rule.volumes and ready:
@@ -200,12 +202,8 @@ def _settle(scene: Scene, memory: Memory, point: Point) -> Move[Memory]:
     wants = _wants(scene, memory, point, waste)
     due_ns = scene.now_ns + _ns(scene, point, rule.volumes - passed) if passed < rule.volumes else None
     text = f"settling: {passed:.1f} of {rule.volumes:g} volumes, signal {memory.settler.verdict}"
-    return Move(memory, wants, text, events, due_ns=due_ns, left_s=_left_s(scene, memory, point, passed))
-
-
-def _gated(scene: Scene) -> bool:
-    """True when the signal means something: there is reagent, and the rig has the tag."""
-    return scene.spec.reagent and scene.layout.recipe.settle.signal in scene.layout.program.tags
+    left_s = _left_s(scene, memory, point, passed)
+    return Move(memory, wants, text, events, due_ns=due_ns, left_s=left_s, calm=memory.step == "settle")
 
 
 def _ns(scene: Scene, point: Point, volumes: float) -> int:
@@ -219,7 +217,7 @@ def _judged(scene: Scene, memory: Memory, point: Point, passed: float) -> Memory
         memory = replace(memory, settler=Settler(), judged=True, means=Means(), window=())
     memory = replace(memory, means=memory.means.add(scene.view, scene.layout.record))
     value = scene.view.value(signal) if signal in scene.view.fresh else None
-    if value is None or not _gated(scene):
+    if value is None or not gated(scene.layout, scene.spec.reagent):
         return memory
     t_ns = scene.view.samples[signal].t_ns
     settler = settle_step(memory.settler, settle_rule(scene.layout, point), t_ns, value)
@@ -283,7 +281,7 @@ def _divert(scene: Scene, memory: Memory, point: Point) -> Move[Memory]:
     outlet = recipe.collect.position if left_mL <= 0 else recipe.collect.waste_position
     if left_mL <= 0 and scene.outlet_at(recipe.collect.position):
         memory = replace(memory, step="collect", collect_ns=scene.now_ns, at_collect=scene.delivered_mL())
-    due_ns = scene.now_ns + int(60e9 * max(left_mL, 0.0) / point.total_mL_min) + 1_000_000
+    due_ns = scene.now_ns + int(60e9 * left_mL / point.total_mL_min) + 1_000_000 if left_mL > 0 else None
     left_s = 60.0 * (max(left_mL, 0.0) + recipe.collect.volume_mL) / point.total_mL_min
     text = "letting the dead volume pass"
     return Move(memory, _wants(scene, memory, point, outlet), text, due_ns=due_ns, left_s=left_s)
@@ -299,9 +297,10 @@ def _collect(scene: Scene, memory: Memory, point: Point) -> Move[Memory]:
         memory = replace(memory, step="back", end_ns=scene.now_ns, collected_mL=taken_mL)
         outlet = recipe.collect.waste_position
     left_s = 60.0 * max(left_mL, 0.0) / point.total_mL_min
-    due_ns = scene.now_ns + int(1e9 * left_s) + 1_000_000
+    due_ns = scene.now_ns + int(1e9 * left_s) + 1_000_000 if left_mL > 0 else None
     text = f"collecting, {max(left_mL, 0.0):.2f} mL to go"
-    return Move(memory, _wants(scene, memory, point, outlet), text, due_ns=due_ns, left_s=left_s)
+    calm = memory.step == "collect"
+    return Move(memory, _wants(scene, memory, point, outlet), text, due_ns=due_ns, left_s=left_s, calm=calm)
 
 
 def _back(scene: Scene, memory: Memory, point: Point) -> Move[Memory]:
@@ -320,7 +319,7 @@ def _left_s(scene: Scene, memory: Memory, point: Point, passed: float) -> float:
     residence_s = layout.path.residence_s(point.flows_mL_min)
     by_volume_s = max(0.0, layout.recipe.settle.volumes - passed) * residence_s
     by_signal_s = 0.0
-    if _gated(scene):
+    if gated(scene.layout, scene.spec.reagent):
         by_signal_s = max(0.0, residence_s + signal_s(layout, point) - passed * residence_s)
     after_s = 60.0 * (layout.dead_mL + layout.recipe.collect.volume_mL) / point.total_mL_min
     return max(by_volume_s, by_signal_s) + after_s

@@ -22,10 +22,27 @@ def collect_mL(layout: Layout, point: Point, pump: str) -> float:
     return share(point, pump) * (layout.dead_mL + layout.recipe.collect.volume_mL)
 
 
-def point_mL(layout: Layout, point: Point, pump: str) -> float:
-    """What a point takes of a pump at least: settling and collecting, and a little for the valve's travel."""
-    travel_mL = point.flows_mL_min.get(pump, 0.0) * 6.0 / 60.0
-    return settle_mL(layout, point, pump, layout.recipe.settle.volumes) + collect_mL(layout, point, pump) + travel_mL
+def point_mL(layout: Layout, point: Point, pump: str, reagent: bool) -> float:
+    """What a point takes of a pump: settling with a little patience, the fraction, and the valve's travel."""
+    flow = point.flows_mL_min.get(pump, 0.0)
+    return flow * (1.1 * settle_s(layout, point, reagent) + 6.0) / 60.0 + collect_mL(layout, point, pump)
+
+
+def another_try_mL(layout: Layout, point: Point, pump: str) -> float:
+    """What it takes after a change-over of a pump: one exchange, a little patience, and the fraction."""
+    return settle_mL(layout, point, pump, 1.5) + collect_mL(layout, point, pump)
+
+
+def gated(layout: Layout, reagent: bool) -> bool:
+    """True when the signal means something: there is reagent, and the rig has the tag."""
+    return reagent and layout.recipe.settle.signal in layout.program.tags
+
+
+def settle_s(layout: Layout, point: Point, reagent: bool) -> float:
+    """Time to settle: the volumes, or the signal gate if that takes longer."""
+    residence_s = layout.path.residence_s(point.flows_mL_min)
+    by_signal_s = residence_s + signal_s(layout, point) if gated(layout, reagent) else 0.0
+    return max(layout.recipe.settle.volumes * residence_s, by_signal_s)
 
 
 def settle_rule(layout: Layout, point: Point) -> SettleRule:

@@ -143,7 +143,8 @@ class Move(Generic[M]):
     """What a phase returns: its new memory, its wants, and what else is to be known.
 
     ``trouble`` asks for a hold and is its reason. ``prompt`` is opened unless it is already. ``due_ns`` is when the
-    phase wants to be asked again at the latest; ``left_s`` its own estimate of the time left, if it has one.
+    phase wants to be asked again at the latest; ``left_s`` its own estimate of the time left, if it has one. ``calm``:
+    nothing can happen that ``due_ns`` or a new value of the settling signal would not tell.
     """
 
     memory: M
@@ -156,6 +157,7 @@ class Move(Generic[M]):
     result: PointResult | None = None
     due_ns: int | None = None
     left_s: float | None = None
+    calm: bool = False
 
 
 def event(kind: EventKind, subject: str, t_ns: int, text: str, /, **fields: str | float | int | bool) -> Event:
