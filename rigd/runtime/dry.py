@@ -15,16 +15,16 @@ from collections.abc import Callable, Iterable, Mapping, Sequence
 from dataclasses import dataclass, field
 from typing import Any
 
-from rigd.logic.program import Program
-
 from rigd.logic import scan
-from rigd.model.devices import DeviceIdentity, DeviceSpec, DeviceStatus, LinkState
+from rigd.logic.program import Program
+from rigd.model.devices import DeviceIdentity, DeviceStatus, LinkState
 from rigd.model.events import Event
 from rigd.model.intake import Intake
 from rigd.model.orders import Order, Outcome, Request, Result, Verb
-from rigd.model.samples import Quality, QualityCause, Reading, Sample, Spectrum
+from rigd.model.samples import Quality, Reading, Sample, Spectrum
 from rigd.ports.journal import Journal
 from rigd.ports.plant import Plant
+from rigd.runtime.polls import Poll, polls_of, samples_of
 
 SIMULATED = DeviceIdentity(maker="rigd", model="simulated", serial_no="0", simulated=True)
 LONGEST_NS = 14 * 86_400 * 1_000_000_000
@@ -60,15 +60,6 @@ class DryResult:
 
 
 @dataclass(slots=True)
-class _Poll:
-    device: DeviceSpec
-    channels: tuple[str, ...]
-    tags: Mapping[str, str]
-    period_ns: int
-    spectrum: bool = False
-
-
-@dataclass(slots=True)
 class _Tape:
     """Digest, peaks and events while the run goes on."""
 
@@ -90,25 +81,6 @@ class _Tape:
 
     def _line(self, values: Sequence[object]) -> None:
         self.hash.update(json.dumps(values, ensure_ascii=False, separators=(",", ":")).encode())
-
-
-def polls_of(devices: Iterable[DeviceSpec], derived: Mapping[str, Derive]) -> list[_Poll]:
-    """One poll per device and period; a device in ``derived`` is read as a spectrum."""
-    polls: list[_Poll] = []
-    for device in devices:
-        periods = sorted({channel.period_ns for channel in device.channels})
-        for period in periods:
-            of_period = [channel for channel in device.channels if channel.period_ns == period]
-            polls.append(
-                _Poll(
-                    device,
-                    tuple(channel.channel for channel in of_period),
-                    {channel.channel: channel.tag for channel in of_period},
-                    period,
-                    device.id in derived,
-                )
-            )
-    return polls
 
 
 def first_requests(program: Program, signer: str) -> tuple[Request, ...]:
@@ -137,10 +109,10 @@ class DryShell:
         self._derived = derived or {}
         self._journal = journal
         self._watch = watch
-        self._polls = polls_of(program.rig.devices, self._derived)
+        self._polls = [poll for device in program.rig.devices for poll in polls_of(program.rig, device)]
+        self._last_ns: dict[str, int] = {}
         self._queue: list[tuple[int, int, object]] = []
         self._sequence = 0
-        self._device_of = {device.unit: device.id for device in program.rig.devices if device.unit}
         self._watch_ns = 0
         self._scans = 0
 
@@ -185,27 +157,23 @@ class DryShell:
         requests: list[Request] = []
         while self._queue and self._queue[0][0] <= now_ns:
             t_ns, _, thing = heapq.heappop(self._queue)
-            if isinstance(thing, _Poll):
+            if isinstance(thing, Poll):
                 samples.extend(self._read(thing, now_ns))
                 self._at(t_ns + thing.period_ns, thing)
             elif isinstance(thing, Request):
                 requests.append(thing)
         return tuple(samples), tuple(requests)
 
-    def _read(self, poll: _Poll, now_ns: int) -> Iterable[Sample]:
-        if poll.spectrum:
-            spectrum = self._plant.spectrum(poll.device.id)
-            if not spectrum.absorbance:
-                return
-            if self._journal is not None:
-                self._journal.spectrum(spectrum)
-            readings = self._derived[poll.device.id](spectrum)
-        else:
-            readings = self._plant.read(poll.device.id, poll.channels)
-        for reading in readings:
-            tag = poll.tags.get(reading.channel)
-            if tag is not None:
-                yield sample_of(reading, tag, now_ns)
+    def _read(self, poll: Poll, now_ns: int) -> list[Sample]:
+        if not poll.spectrum:
+            return samples_of(poll, self._plant.read(poll.device, poll.channels), now_ns)
+        spectrum = self._plant.spectrum(poll.device)
+        if not spectrum.absorbance or spectrum.t_ns == self._last_ns.get(poll.device):
+            return []  # the same one as before: a detector that stands still turns stale, as it should
+        self._last_ns[poll.device] = spectrum.t_ns
+        if self._journal is not None:
+            self._journal.spectrum(spectrum)
+        return samples_of(poll, self._derived[poll.device](spectrum), now_ns)
 
     def _decide(self, state: scan.CoreState, intake: Intake, now_ns: int) -> scan.Step:
         self._scans += 1
@@ -240,10 +208,3 @@ class DryShell:
             tape.peak,
             self._scans,
         )
-
-
-def sample_of(reading: Reading, tag: str, t_ns: int) -> Sample:
-    """A reading under its tag; a fault that the device itself told makes it bad."""
-    if reading.fault:
-        return Sample(tag, reading.value, t_ns, Quality.BAD, QualityCause.SENSOR_FAULT, reading.raw)
-    return Sample(tag, reading.value, t_ns, raw=reading.raw)
