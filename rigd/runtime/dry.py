@@ -17,6 +17,7 @@ from typing import Any
 
 from rigd.logic import scan
 from rigd.logic.program import Program
+from rigd.logic.run_end import RunEnd
 from rigd.model.devices import DeviceIdentity, DeviceStatus, LinkState
 from rigd.model.events import Event
 from rigd.model.intake import Intake
@@ -192,11 +193,9 @@ class DryShell:
         result = Result.REFUSED if refusal else Result.DONE
         return Outcome(order.number, order.unit, order.action, result, now_ns, refusal)
 
-    def _result(self, end: scan.RunEnd | None, tape: _Tape, state: scan.CoreState, now_ns: int) -> DryResult:
+    def _result(self, end: RunEnd | None, tape: _Tape, state: scan.CoreState, now_ns: int) -> DryResult:
         if end is None:
-            end = scan.RunEnd(
-                "stopped", 1, f"The recipe was not over after {now_ns / 3.6e12:.1f} h and was ended here."
-            )
+            end = RunEnd("stopped", 1, f"The recipe was not over after {now_ns / 3.6e12:.1f} h and was ended here.")
         return DryResult(
             end.outcome,
             end.exit_code,
