@@ -23,6 +23,7 @@ LARGEST, SMALLEST = 1e12, 1e-18
 """Numbers beyond these, in any house unit, are slips of the keyboard and would only overflow later."""
 
 _NUMBER = r"(?:\d+\.?\d*|\.\d+)(?:[eE][-+]?\d+)?"
+_COMMA = re.compile(r"\s*[-+]?\d+,\d")
 _HEAD: dict[Sign, str] = {"any": r"[-+]?", "not negative": r"\+?", "positive": r"\+?(?=[0-9.]*[1-9])"}
 _SYMBOL = re.compile(r"\s*[-+]?" + _NUMBER + r"\s*(.*?)\s*")
 
@@ -43,6 +44,8 @@ def read_quantity(value: object, dimension: str, sign: Sign = "any") -> float:
     if not isinstance(value, str):
         house = HOUSE[dimension]
         raise _error("type-wrong", f"found {_kind(value)}, but a {dimension} is text with a unit such as '1 {house}'")
+    if _COMMA.match(value):
+        raise _error("quantity-unreadable", f"{value!r} has a decimal comma; write a decimal point")
     try:
         number = parse_quantity(value, dimension)
     except UnitError as error:
@@ -137,7 +140,7 @@ def _read_any(value: object) -> str:
     if not isinstance(value, str):
         raise _error("type-wrong", f"found {_kind(value)}, but text with a unit is needed, such as '8 bar'")
     match = _SYMBOL.fullmatch(value)
-    if match is None:
+    if match is None or _COMMA.match(value):
         raise _error("quantity-unreadable", f"{value!r} is not a number with a unit; write for example '8 bar'")
     if not match[1]:
         raise _error("unit-missing", f"{value!r} has no unit; write a number and a unit such as '8 bar'")
