@@ -259,6 +259,6 @@ def _share_compliance(layout: Layout) -> None:
         for end in (edge.a, edge.b):
             layout.nodes[end].compliance += 0.5 * edge.volume * LIQUID_COMPRESSIBILITY_PER_PA
     for node in layout.nodes:
-        if not node.ground and node.hydraulic:
+        if not node.ground and node.hydraulic and node.id not in layout.vessels:
             node.compliance = max(node.compliance, 1e-18)
             node.volume += node.compliance * ATMOSPHERE_PA  # what compression holds at atmospheric pressure

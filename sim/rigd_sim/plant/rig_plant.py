@@ -29,10 +29,11 @@ from rigd_sim.plant.places import make_sensors
 from rigd_sim.plant.pump_unit import PumpUnit
 from rigd_sim.plant.thermal import Thermal
 from rigd_sim.plant.truth import true_state
-from rigd_sim.plant.valve_unit import ValveUnit
+from rigd_sim.plant.valve_unit import NEVER_NS, ValveUnit
 
 NS = 1_000_000_000
 CHEMISTRY_NS = NS
+FAR_S = 1e6
 SMALL_GAS_M3 = 1e-9
 
 _PUMP, _VALVE, _BATH, _CELL = PumpLever(), ValveLever(), BathLever(), CellLever()
@@ -72,27 +73,25 @@ class RigPlant:
             raise ValueError(f"the plant is at {self.now_ns} ns and cannot go back to {to_ns} ns")
         while self.now_ns < to_ns:
             grid = (self._carried_ns // self._chemistry_ns + 1) * self._chemistry_ns
-            event = self._next_event_s()
-            step = min(to_ns, grid) - self.now_ns
-            if event * NS < step:
-                step = max(1, math.ceil(event * NS))
+            step = max(1, min(to_ns, grid, self._next_event_ns()) - self.now_ns)
             self._hydraulics(step / NS)
             self.now_ns += step
             self._events()
             if self.now_ns >= grid:
                 self._chemistry()
 
-    def _next_event_s(self) -> float:
-        """Seconds until a pump, a valve or a fault changes by itself."""
-        now = self.now_ns / NS
-        nearest = self.ailments.next_change(now)
+    def _next_event_ns(self) -> int:
+        """When a pump, a valve or a fault changes by itself."""
+        now = self.now_ns
+        nearest = self.ailments.next_change(now / NS)
         for pump in self.pumps.values():
             if pump.moving or pump.filling >= 0:
                 nearest = min(nearest, pump.next_event())
+        event = now + math.ceil(nearest * NS) if nearest < FAR_S else NEVER_NS
         for valve in self.valves.values():
             if valve.position != valve.target:
-                nearest = min(nearest, valve.next_event(now))
-        return nearest
+                event = min(event, valve.next_event_ns(now))
+        return event
 
     def _hydraulics(self, h: float) -> None:
         flows, layout = self.flows, self.layout
@@ -130,7 +129,6 @@ class RigPlant:
 
     def _events(self) -> None:
         """What changes by itself at the end of a step."""
-        now = self.now_ns / NS
         for name, pump in self.pumps.items():
             if pump.moving or pump.filling >= 0:
                 node = self.flows.rank[self.layout.node_index[f"{name}.out"]]
@@ -143,9 +141,9 @@ class RigPlant:
         if moving:
             self._carry()
             for valve in moving:
-                valve.settle(now)
+                valve.settle(self.now_ns)
             self._regate()
-        if self.ailments.next_change(now - 2e-9) <= 3e-9:
+        if self.ailments.next_change(self.now_ns / NS - 2e-9) <= 3e-9:
             self._carry()
             self._refresh_levers()
 
@@ -198,12 +196,11 @@ class RigPlant:
 
     def _regate(self) -> None:
         """Open and shut the lines at valve ports."""
-        now = self.now_ns / NS
         for e, edge in enumerate(self.layout.edges[: self.layout.passive]):
             factor = 1.0
             for valve, port in edge.gates:
                 unit = self.valves[valve]
-                if unit.spec.index(port) != unit.open_port(now):
+                if unit.spec.index(port) != unit.open_port(self.now_ns):
                     factor *= self.levers.valves.get(valve, _VALVE).cross
             self.flows.gate[e] = factor
         self.flows.apply(self.levers)
@@ -225,7 +222,7 @@ class RigPlant:
         if unit in self.pumps:
             self.pumps[unit].restart()
         elif unit in self.valves:
-            self.valves[unit].restart(self.now_ns / NS)
+            self.valves[unit].restart(self.now_ns)
         elif unit in self.baths:
             self.baths[unit].restart()
 
@@ -255,7 +252,7 @@ class RigPlant:
             return self.pumps[unit].tell(action, value, self.levers.pumps.get(unit, _PUMP))
         if unit in self.valves and action is Action.MOVE:
             self._carry()
-            answer = self.valves[unit].tell(value, self.now_ns / NS, self.levers.valves.get(unit, _VALVE))
+            answer = self.valves[unit].tell(value, self.now_ns, self.levers.valves.get(unit, _VALVE))
             self._regate()
             return answer
         if unit in self.baths:
@@ -271,7 +268,7 @@ class RigPlant:
             return [Reading(c, self._pump_channel(unit, c)) for c in channels]
         if unit in self.valves:
             lever = self.levers.valves.get(unit, _VALVE)
-            return [Reading(c, float(self.valves[unit].feedback(self.now_ns / NS, lever))) for c in channels]
+            return [Reading(c, float(self.valves[unit].feedback(self.now_ns, lever))) for c in channels]
         if unit in self.baths:
             return [Reading(c, self._bath_channel(unit, c)) for c in channels]
         if device in self.infrared:

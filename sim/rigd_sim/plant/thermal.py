@@ -36,6 +36,7 @@ class Thermal:
         for column, chiller in self.jacket_of.items():
             baths[chiller].jackets[column] = contents.room_K
         self.book = HeatBook()
+        self._reference_K = contents.room_K
         self._work = np.empty((2, max([b.cells for b in contents.beds.values()], default=1)))
 
     def jacket(self, column: str) -> float:
@@ -84,8 +85,8 @@ class Thermal:
         return given
 
     def stored(self) -> float:
-        """Heat held above room temperature by beds, jackets and baths [J]."""
-        room, total = self.contents.room_K, 0.0
+        """Heat held by beds, jackets and baths above the room temperature of the start [J]."""
+        room, total = self._reference_K, 0.0
         for bed in self.contents.beds.values():
             total += self.capacity(bed) * float(
                 (self.contents.temperature[bed.start : bed.start + bed.cells] - room).sum()

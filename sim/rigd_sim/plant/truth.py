@@ -33,7 +33,7 @@ def true_state(plant: RigPlant) -> dict[str, float]:
     for bed in contents.beds.values():
         state[f"voidage:{bed.column.id}"] = bed.voidage
     for name, valve in plant.valves.items():
-        state[f"position:{name}"] = float(valve.open_port(plant.now_ns / 1e9))
+        state[f"position:{name}"] = float(valve.open_port(plant.now_ns))
     _conversions(plant, state)
     return state
 
