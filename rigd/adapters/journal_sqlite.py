@@ -246,7 +246,7 @@ class _Writer:
 
     def _end(self) -> None:
         try:
-            self._of._connection.execute("PRAGMA wal_checkpoint(TRUNCATE)")
+            self._of._connection.execute("PRAGMA journal_mode = DELETE")  # one file, easy to copy and to archive
             self._of._connection.close()
         except sqlite3.Error as error:
             self._of._trouble = self._of._trouble or str(error)

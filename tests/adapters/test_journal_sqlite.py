@@ -211,6 +211,17 @@ def test_a_journal_that_cannot_be_made_is_refused(tmp_path: Path) -> None:
         SqliteJournal(tmp_path / "missing" / "run.sqlite", {}, TAGS)
 
 
+def test_an_ended_journal_is_one_file_and_reads_from_a_folder_that_cannot_be_written(tmp_path: Path) -> None:
+    filled(tmp_path / "run.sqlite", 3)
+    tmp_path.chmod(0o500)
+    try:
+        with JournalReader(tmp_path) as reader:
+            assert len(list(reader.scans())) == 3
+        assert [path.name for path in tmp_path.iterdir()] == ["run.sqlite"]
+    finally:
+        tmp_path.chmod(0o700)
+
+
 def test_a_live_journal_can_be_read(tmp_path: Path) -> None:
     journal = SqliteJournal(tmp_path / "run.sqlite", {}, TAGS)
     journal.scan(1, S, UTC, rich_intake(1))
