@@ -74,11 +74,15 @@ class Told:
 
 @dataclass(frozen=True, slots=True)
 class Memory:
-    """What every unit was told; ``number`` is that of the last order."""
+    """What every unit was told; ``number`` is that of the last order.
+
+    ``settled`` is a demand that needed no more orders when it was last looked at, and still does not.
+    """
 
     told: Mapping[Key, Told] = field(default_factory=dict)
     number: int = 0
     due_ns: int = NEVER_NS
+    settled: Demand | None = None
 
     def last(self, unit: str, aspect: Aspect) -> Told | None:
         """The last order of this aspect that is not known to have failed."""
@@ -114,7 +118,7 @@ def note(
                 del told[key]
             elif status.link is LinkState.ONLINE and not told[key].stands:
                 told[key] = replace(told[key], retry_ns=now_ns)
-    return replace(memory, told=told, due_ns=_due_ns(told)), tuple(events)
+    return Memory(told, memory.number, _due_ns(told)), tuple(events)
 
 
 def _answer(told: dict[Key, Told], outcome: Outcome, now_ns: int) -> Event | None:
@@ -151,28 +155,66 @@ def decide(
     again: frozenset[str] = frozenset(),
 ) -> tuple[Memory, tuple[Order, ...], tuple[Event, ...]]:
     """Orders for a demand. ``again`` names pumps whose stop is to be repeated although it was answered."""
-    told: dict[Key, Told] | None = None
-    orders: list[Order] = []
-    events: list[Event] = []
-    number = memory.number
+    if demand == memory.settled and not again and not _any_stands(program, demand, samples):
+        return memory, (), ()
+    desk = _Desk(program, memory, samples, now_ns)
     for wanted in _wanted(program, demand):
-        held = (memory.told if told is None else told).get(wanted.key)
-        repeat = wanted.action is Action.STOP and wanted.unit in again
+        if desk.needs(wanted, repeat=wanted.action is Action.STOP and wanted.unit in again):
+            desk.order(wanted, demand)
+    return desk.result(demand), tuple(desk.orders), tuple(desk.events)
+
+
+class _Desk:
+    """Working space of one decision."""
+
+    def __init__(self, program: Program, memory: Memory, samples: Mapping[str, Sample], now_ns: int) -> None:
+        self._program = program
+        self._before = memory
+        self._memory = memory
+        self._samples = samples
+        self._now_ns = now_ns
+        self._open = False
+        self.orders: list[Order] = []
+        self.events: list[Event] = []
+
+    def needs(self, wanted: Wanted, *, repeat: bool) -> bool:
+        """True when this has to be ordered now; remembers when it must be looked at again."""
+        held = self._memory.told.get(wanted.key)
         if held is not None and wanted.action is Action.DELIVER:
-            held = _check_running(program, held, samples, now_ns, events)
-        if not repeat and not _due(held, wanted, now_ns):
-            continue
-        if _must_wait(program, memory if told is None else replace(memory, told=told), wanted, samples):
-            continue
+            held = _check_running(self._program, held, self._samples, self._now_ns, self.events)
+        if repeat or held is None or not _same(held, wanted):
+            waits = _must_wait(self._program, self._memory, wanted, self._samples)
+            self._open = self._open or waits
+            return not waits
+        self._open = self._open or not held.stands
+        due = not held.stands and self._now_ns >= held.retry_ns
+        return due and not _must_wait(self._program, self._memory, wanted, self._samples)
+
+    def order(self, wanted: Wanted, demand: Demand) -> None:
+        """Order it."""
         assert demand.source, "no order without a source"
-        number += 1
-        order = Order(number, wanted.unit, wanted.action, wanted.value, demand.authority, demand.source, now_ns)
-        told = dict(memory.told) if told is None else told
-        told[wanted.key] = Told(order, wanted.ticket, tries=_tries(held, wanted, now_ns))
-        orders.append(order)
-    if told is None:
-        return memory, (), tuple(events)
-    return Memory(told, number, _due_ns(told)), tuple(orders), tuple(events)
+        held, number = self._memory.told.get(wanted.key), self._memory.number + 1
+        order = Order(number, wanted.unit, wanted.action, wanted.value, demand.authority, demand.source, self._now_ns)
+        told = Told(order, wanted.ticket, tries=_tries(held, wanted, self._now_ns))
+        self._memory = Memory({**self._memory.told, wanted.key: told}, number)
+        self.orders.append(order)
+
+    def result(self, demand: Demand) -> Memory:
+        """The memory afterwards."""
+        settled = None if self._open else demand
+        if not self.orders and settled == self._before.settled:
+            return self._before
+        return Memory(self._memory.told, self._memory.number, _due_ns(self._memory.told), settled)
+
+
+def _any_stands(program: Program, demand: Demand, samples: Mapping[str, Sample]) -> bool:
+    """True when a pump that shall deliver reports, at whatever time, that it does not."""
+    for pump, want in demand.pumps.items():
+        if want.flow_mL_min > 0:
+            sample = samples.get(program.feedback.get((pump, "state"), ""))
+            if sample is not None and sample.value in (PumpState.STOPPED, PumpState.EMPTY):
+                return True
+    return False
 
 
 def _wanted(program: Program, demand: Demand) -> list[Wanted]:
@@ -199,12 +241,6 @@ def _wanted(program: Program, demand: Demand) -> list[Wanted]:
         )
     ]
     return [wanted for wanted in stops + moves + baths + fills + runs if wanted.unit in mine]
-
-
-def _due(held: Told | None, wanted: Wanted, now_ns: int) -> bool:
-    if held is None or not _same(held, wanted):
-        return True
-    return not held.stands and now_ns >= held.retry_ns
 
 
 def _same(held: Told, wanted: Wanted) -> bool:

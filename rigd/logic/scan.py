@@ -73,7 +73,7 @@ def protect(program: Program, state: CoreState, intake: Intake, now_ns: int) -> 
     if step.demand is not None:
         image, again = step.state.signals.samples, step.state.stopping.again
         memory, orders, given = arbitration.decide(program, memory, step.demand, image, now_ns, again)
-    after = replace(state, protect=step.state, memory=memory, now_ns=now_ns)
+    after = CoreState(step.state, state.conduct, memory, state.started_ns, now_ns, state.broken)
     return Step(after, orders, (*answers, *step.events, *given), min(step.wake_ns, _retry_ns(memory, now_ns)))
 
 
@@ -101,7 +101,7 @@ def _conduct(program: Program, state: CoreState, intake: Intake, now_ns: int) ->
         assert step.demand.authority < Authority.QUENCH, "the sequence never speaks with the authority of a stop"
         memory, orders, given = arbitration.decide(program, memory, step.demand, signals.samples, now_ns)
     assert not orders or verdict.stop <= Stop.HOLD, "a tripped final element never gets an order of the sequence"
-    after = replace(state, conduct=step.state, memory=memory)
+    after = CoreState(guarded, step.state, memory, state.started_ns, state.now_ns)
     return Step(after, orders, (*step.events, *given), min(step.wake_ns, _retry_ns(memory, now_ns)))
 
 
