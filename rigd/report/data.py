@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 
@@ -49,7 +50,8 @@ class PhaseSpan:
 
 @dataclass(frozen=True, slots=True)
 class PointRow:
-    """What became of one point. Conversion is a fraction; ``conversion_sd`` the scatter of its readings.
+    """What became of one point. Conversion is a fraction; ``conversion_sd`` the scatter of its readings;
+    ``temperature_degC`` is the planned one, ``bed_degC`` the bed's own while the point was steady.
 
     NaN stands for what was not measured; times are process seconds since the start of the run.
     """
@@ -68,7 +70,8 @@ class PointRow:
     collected_mL: float
     collect_start_s: float
     collect_end_s: float
-    selectivity: float = float("nan")
+    selectivity: float = math.nan
+    bed_degC: float = math.nan
 
     @property
     def total_mL_min(self) -> float:

@@ -155,15 +155,17 @@ def _curves(left: Axes, right: Axes, kinetics: KineticsResult, temperature: floa
     if fit is None or not points:
         left.plot([], [], "o", color=colour, label=f"{temperature:g} °C")
         return
-    tau = np.array([place for place, _ in fit.curve])
-    height = 100 * np.array([x for _, x in fit.curve])
     k, error = fit.fit.k, fit.fit.k_error
-    label = f"{temperature:g} °C: k = {with_error(k, error)} {fit.fit.unit}\n({fit.fit.law.value})"
-    left.plot(tau / 60.0, height, color=colour, linewidth=1.5, label=label)
+    label = f"k({temperature:g} °C) = {with_error(k, error)} {fit.fit.unit}\n({fit.fit.law.value})"
     volume_mL = float(np.median([p.residence_time_s * p.total_mL_min / 60.0 for p in points]))
     flows = np.array([p.total_mL_min for p in points])
     wanted = np.linspace(0.9 * flows.min(), 1.08 * flows.max(), 150)
-    right.plot(wanted, np.interp(60.0 * volume_mL / wanted, tau, height), color=colour, linewidth=1.5)
+    for curve, style, name in ((fit.curve, "-", label), (fit.even, (0, (3, 3)), f"at exactly {temperature:g} °C")):
+        if curve:
+            tau, height = np.array(curve).T
+            look: dict[str, Any] = {"color": colour, "linewidth": 1.5 if style == "-" else 1.0, "linestyle": style}
+            left.plot(tau / 60.0, 100 * height, label=name, **look)
+            right.plot(wanted, np.interp(60.0 * volume_mL / wanted, tau, 100 * height), **look)
 
 
 def with_error(value: float, error: float) -> str:

@@ -6,6 +6,7 @@ import math
 from dataclasses import dataclass
 
 import numpy as np
+from numpy.typing import NDArray
 
 from rigd.analysis.fitting import FitError
 from rigd.analysis.kinetics import Feed, Law, RateFit, conversion, feed_after_tee, fit_rate_constant, law_of
@@ -14,17 +15,27 @@ from rigd.model.rig import LiquidRole, RigDefinition
 from rigd.report.data import PointRow, RunData
 
 CURVE_POINTS = 120
+EVEN = 0.01
+"""Relative change of k below which the bed's own temperature is not drawn apart."""
+KELVIN, GAS_CONSTANT = 273.15, 8.314462618
+"""CODATA 2018, exact."""
 
 
 @dataclass(frozen=True, slots=True)
 class Kinetics:
-    """One fit: at which temperature, from which points, and the fitted curve as (residence time [s], conversion)."""
+    """One fit: ``k`` at ``temperature_degC``, from which points, and what to draw over residence time [s].
+
+    ``curve`` is the fit with each point's own bed temperature, ``even`` what it gives at exactly ``temperature_degC``
+    (empty when the points were there anyway). ``activation_kJ_mol`` is the declared energy that was used for that.
+    """
 
     temperature_degC: float
     fit: RateFit
     feed: Feed
     used: tuple[str, ...]
     curve: tuple[tuple[float, float], ...]
+    even: tuple[tuple[float, float], ...] = ()
+    activation_kJ_mol: float = 0.0
 
 
 @dataclass(frozen=True, slots=True)
@@ -38,15 +49,14 @@ class KineticsResult:
 def kinetics_of(run: RunData) -> KineticsResult:
     """Fit each temperature that has two usable points. A point counts when it was settled and its conversion was read;
     returns to an earlier point count too (they carry the loss of activity into the scatter)."""
-    law, partner, constant = law_of(run.rig.chemistry) if run.rig else (Law.APPARENT, "", 0.0)
+    basis = _basis(run.rig)
     usable = [point for point in run.points if _usable(point)]
     fits: list[Kinetics] = []
     remarks: list[str] = []
     for temperature in sorted({round(point.temperature_degC, 1) for point in usable}):
         here = [point for point in usable if round(point.temperature_degC, 1) == temperature]
         try:
-            feeds = [_feed(run.rig, point, partner) for point in here]
-            fits.append(_fit(temperature, here, feeds, law, constant))
+            fits.append(_fit(temperature, here, [_feed(run.rig, point, basis.partner) for point in here], basis))
         except FitError as error:
             remarks.append(f"No rate constant at {temperature:g} degC: {error}.")
     left_out = [point.id for point in run.points if point.kind != PointKind.BLANK and not _usable(point)]
@@ -81,10 +91,58 @@ def _feed(rig: RigDefinition | None, point: PointRow, partner: str) -> Feed:
     return feed
 
 
-def _fit(temperature: float, points: list[PointRow], feeds: list[Feed], law: Law, constant: float) -> Kinetics:
-    tau = [point.residence_time_s for point in points]
-    found = fit_rate_constant(law, tau, [point.conversion for point in points], feeds, constant)
+@dataclass(frozen=True, slots=True)
+class _Basis:
+    """What the files say: rate law, partner, equilibrium constant, activation energy, and which part of the liquid in
+    the columns lies between the beads (``k`` refers to that liquid, as in the chemistry file)."""
+
+    law: Law = Law.APPARENT
+    partner: str = ""
+    constant: float = 0.0
+    activation_kJ_mol: float = 0.0
+    between_beads: float = 1.0
+
+
+def _basis(rig: RigDefinition | None) -> _Basis:
+    if rig is None:
+        return _Basis()
+    from rigd.logic.flow_path import flow_path
+
+    law, partner, constant = law_of(rig.chemistry)
+    path = flow_path(rig)
+    reactions = [one for one in rig.chemistry.reactions if one.stoichiometry.get(rig.chemistry.reactant, 0.0) < 0]
+    energy = reactions[0].activation_energy_kJ_mol if len(reactions) == 1 else 0.0
+    between = path.interstitial_mL / path.column_mL if path.column_mL else 1.0
+    return _Basis(law, partner, constant, energy, between)
+
+
+def _fit(temperature: float, points: list[PointRow], feeds: list[Feed], basis: _Basis) -> Kinetics:
+    """Fit with contact times brought to ``temperature`` by the declared activation energy."""
+    tau = np.array([point.residence_time_s for point in points])
+    beds = np.array([point.bed_degC if math.isfinite(point.bed_degC) else temperature for point in points])
+    speeds = basis.between_beads * _speed(beds, temperature, basis.activation_kJ_mol)
+    conversions = [point.conversion for point in points]
+    found = fit_rate_constant(basis.law, list(tau * speeds), conversions, feeds, basis.constant)
     common = sorted(feeds, key=lambda feed: feed.reactant)[len(feeds) // 2]
-    times = np.linspace(0.0, 1.12 * max(tau), CURVE_POINTS)
-    curve = tuple((float(t), conversion(law, found.k, float(t), common, constant)) for t in times)
-    return Kinetics(temperature, found, common, tuple(point.id for point in points), curve)
+    order = np.argsort(tau)
+    times = np.linspace(0.0, 1.12 * float(tau.max()), CURVE_POINTS)
+    own = np.interp(times, tau[order], speeds[order])
+
+    def drawn(factors: NDArray[np.float64]) -> tuple[tuple[float, float], ...]:
+        dose = times * factors
+        return tuple(
+            (float(t), conversion(basis.law, found.k, float(d), common, basis.constant))
+            for t, d in zip(times, dose, strict=True)
+        )
+
+    differs = bool(np.abs(speeds / basis.between_beads - 1.0).max() > EVEN)
+    even = drawn(np.full_like(times, basis.between_beads)) if differs else ()
+    energy = basis.activation_kJ_mol if differs else 0.0
+    return Kinetics(temperature, found, common, tuple(point.id for point in points), drawn(own), even, energy)
+
+
+def _speed(beds_degC: NDArray[np.float64], at_degC: float, activation_kJ_mol: float) -> NDArray[np.float64]:
+    """k at the bed's temperature over k at ``at_degC`` (Arrhenius)."""
+    inverse = 1.0 / (beds_degC + KELVIN) - 1.0 / (at_degC + KELVIN)
+    ratio: NDArray[np.float64] = np.exp(-1000.0 * activation_kJ_mol / GAS_CONSTANT * inverse)
+    return ratio

@@ -12,6 +12,7 @@ from markupsafe import Markup
 from rigd import __version__
 from rigd.model.events import Event, EventKind
 from rigd.model.protection import ConditionKind
+from rigd.model.rig import TagKind
 from rigd.report.collect import UNFINISHED
 from rigd.report.data import PointRow, RunData, Trace
 from rigd.report.figures import conversion_figure, timeline_figure, with_error
@@ -66,9 +67,15 @@ def _context(run: RunData) -> dict[str, Any]:
         "timeline_svg": Markup(timeline_figure(run)),
         "residence_note": _residence_note(run),
         "fits": [_fit(fit) for fit in kinetics.fits],
+        "corrected": sorted({fit.activation_kJ_mol for fit in kinetics.fits if fit.activation_kJ_mol}),
         "remarks": kinetics.remarks,
         "points": [_point(point) for point in run.points],
-        "peaks": [_peak(run, trace) for what in ("pressure", "temperature") for trace in run.measured(what)],
+        "peaks": [
+            _peak(run, trace)
+            for what in ("pressure", "temperature")
+            for trace in run.measured(what)
+            if _sensor(run, trace)
+        ],
         "used": _used(run),
         "happened": [_event(event) for event in of_kind(run, *_TOLD)],
         "all_events": [_event(event) for event in run.events],
@@ -136,6 +143,7 @@ def _point(point: PointRow) -> dict[str, Any]:
         "flows": [f"{pump} {flow:.3g}" for pump, flow in point.flows_mL_min.items()],
         "total": f"{point.total_mL_min:.3g}",
         "temperature": f"{point.temperature_degC:g}",
+        "bed": number(point.bed_degC, 1),
         "residence": duration(point.residence_time_s),
         "settled": point.settled,
         "settle": duration(point.settle_s),
@@ -157,6 +165,11 @@ def _residence_note(run: RunData) -> str:
         f"Residence time is the liquid volume of the packed column, {path.column_mL:.2f} mL"
         f" (of it {path.interstitial_mL:.2f} mL between the beads, the rest inside them), over the total flow."
     )
+
+
+def _sensor(run: RunData, trace: Trace) -> bool:
+    """True for a sensor's own tag, not for what a device reads back."""
+    return run.rig is None or any(tag.id == trace.tag and tag.kind is TagKind.MEASURED for tag in run.rig.tags)
 
 
 def _peak(run: RunData, trace: Trace) -> dict[str, str]:

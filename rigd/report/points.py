@@ -26,11 +26,25 @@ def point_rows(
             told.setdefault(event.subject, []).append(event)
     planned = {point.id: point for point in recipe.points} if recipe else {}
     signal = traces.get(recipe.settle.signal) if recipe else None
-    return tuple(_row(name, story, planned.get(name), rig, signal) for name, story in told.items())
+    before_s = judged_s(rig, recipe)
+    return tuple(_row(name, story, planned.get(name), rig, signal, before_s) for name, story in told.items())
+
+
+def judged_s(rig: RigDefinition | None, recipe: Recipe | None) -> float:
+    """How long before it was declared steady the signal was quiet: the samples in a row that the rule asked for [s]."""
+    if rig is None or recipe is None:
+        return 0.0
+    period_ns = next((tag.period_ns for tag in rig.tags if tag.id == recipe.settle.signal), 0)
+    return recipe.settle.persistence * period_ns / 1e9
 
 
 def _row(
-    name: str, story: Sequence[Event], plan: Point | None, rig: RigDefinition | None, signal: Trace | None
+    name: str,
+    story: Sequence[Event],
+    plan: Point | None,
+    rig: RigDefinition | None,
+    signal: Trace | None,
+    before_s: float,
 ) -> PointRow:
     facts: dict[str, str | float | int | bool] = {}
     for event in story:
@@ -38,8 +52,10 @@ def _row(
     times = {str(event.fields.get("status", "")): event.t_ns / 1e9 for event in story}
     steady_s = times.get(SETTLED, times.get(UNSETTLED, NAN))
     flows = dict(plan.flows_mL_min) if plan else _flows(facts)
-    start_s, end_s = times.get(COLLECTING, NAN), times.get(COLLECTED, NAN)
-    conversion, scatter, readings = _conversion(signal, steady_s, end_s)
+    collected_mL = _number(facts, "collected_mL")
+    end_s = times.get(COLLECTED, NAN)
+    start_s = times.get(COLLECTING, end_s - 60.0 * collected_mL / (sum(flows.values()) or NAN))
+    conversion, scatter, readings = _conversion(signal, steady_s - before_s, end_s)
     return PointRow(
         id=name,
         kind=plan.kind.value if plan else str(facts.get("kind", "point")),
@@ -52,10 +68,11 @@ def _row(
         conversion=_number(facts, "conversion", conversion),
         conversion_sd=scatter,
         readings=readings,
-        collected_mL=_number(facts, "collected_mL"),
+        collected_mL=collected_mL,
         collect_start_s=start_s,
         collect_end_s=end_s,
         selectivity=_number(facts, "selectivity"),
+        bed_degC=_number(facts, "temperature_degC"),
     )
 
 
@@ -71,12 +88,13 @@ def _flows(facts: Mapping[str, str | float | int | bool]) -> dict[str, float]:
 
 
 def _conversion(signal: Trace | None, steady_s: float, end_s: float) -> tuple[float, float, int]:
-    """Mean and standard deviation of the signal from steady to collected, and from how many readings."""
+    """Mean and standard deviation of the signal while it was steady, and from how many readings."""
     if signal is None or signal.measures != "fraction" or not math.isfinite(steady_s):
         return NAN, NAN, 0
     seen = signal.between(steady_s, end_s if math.isfinite(end_s) else math.inf)
     if not seen.size:
         return NAN, NAN, 0
+    seen = seen[np.insert(np.diff(seen) != 0.0, 0, True)]  # a spectrum that was read twice counts once
     return float(seen.mean()), float(np.std(seen, ddof=1)) if seen.size > 1 else NAN, int(seen.size)
 
 

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import math
+
 from rich import box
 from rich.console import Group, RenderableType
 from rich.panel import Panel
@@ -51,6 +53,7 @@ def summary(run: RunData) -> RenderableType:
 def _head(run: RunData) -> Panel:
     colour = _COLOURS.get(run.outcome, "yellow")
     body = Text.assemble(
+        (f"{run.recipe_title}\n" if run.recipe_title else ""),
         (outcome_words(run), f"bold {colour}"),
         f"  {points_words(run)} in {duration(run.duration_s)}",
         (f"\n{run.outcome_text}" if run.outcome_text else ""),
@@ -58,7 +61,7 @@ def _head(run: RunData) -> Panel:
     mark = " SIMULATED " if run.simulated else None
     return Panel(
         body,
-        title=Text(f"{run.title}: {run.recipe_title}", style="bold"),
+        title=Text(run.title or run.id, style="bold"),
         title_align="left",
         subtitle=Text(mark, style="bold white on red") if mark else None,
         border_style=colour,
@@ -70,14 +73,14 @@ def _points(run: RunData) -> Table:
     table = Table(box=box.SIMPLE_HEAD, pad_edge=False)
     table.add_column("point")
     table.add_column("flows mL/min")
-    for heading in ("T °C", "residence", "steady after", "conversion %", "collected mL"):
+    for heading in ("bed °C", "residence", "steady after", "conversion %", "collected mL"):
         table.add_column(heading, justify="right")
     for point in run.points:
         steady = duration(point.settle_s) if point.settled else Text("not steady", style="yellow")
         table.add_row(
             point.id if point.kind == "point" else f"{point.id} ({point.kind})",
             flow_words(dict(point.flows_mL_min)),
-            f"{point.temperature_degC:g}",
+            number(point.bed_degC if math.isfinite(point.bed_degC) else point.temperature_degC, 1),
             duration(point.residence_time_s),
             steady,
             percent(point.conversion, point.conversion_sd),

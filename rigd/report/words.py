@@ -74,7 +74,8 @@ def percent(value: float, scatter: float = math.nan) -> str:
     """``63.4 ± 0.5`` of a fraction and its standard deviation, in per cent (the sign is in the heading)."""
     if not math.isfinite(value):
         return "–"
-    return f"{100 * value:.1f}" + (f" ± {100 * scatter:.1f}" if math.isfinite(scatter) else "")
+    digits = 2 if scatter < 0.0005 else 1
+    return f"{100 * value:.{digits}f}" + (f" ± {100 * scatter:.{digits}f}" if math.isfinite(scatter) else "")
 
 
 def outcome_words(run: RunData) -> str:

@@ -137,6 +137,12 @@ def write_run(folder: Path, simulated: bool = True, trip_after: int | None = Non
     return folder
 
 
+def true_conversion(residence_s: float) -> float:
+    """What the rate constant gives; it refers to the liquid between the beads."""
+    path = flow_path(two_pumps())
+    return conversion(Law.REVERSIBLE, TRUE_K, residence_s * path.interstitial_mL / path.column_mL, FEED, 4.0)
+
+
 def _phase(tape: _Tape, name: str, length_s: int, flow: float) -> None:
     begin = tape.event(EventKind.PHASE, name, f"{name} begins.", label=name, point="", step="")
     for second in range(length_s):
@@ -148,11 +154,11 @@ def _phase(tape: _Tape, name: str, length_s: int, flow: float) -> None:
 def _point(tape: _Tape, point) -> None:
     flow = point.total_mL_min
     residence_s = 60.0 * flow_path(tape.rig).column_mL / flow
-    final = conversion(Law.REVERSIBLE, TRUE_K, residence_s, FEED, 4.0)
+    final = true_conversion(residence_s)
     begin = tape.event(EventKind.PHASE, "sweep", f"Point {point.id} begins.", label="sweep", point=point.id)
     started = tape.event(EventKind.POINT, point.id, f"{point.id} begins.", status="started")
     for second in range(SETTLE_S):
-        seen = final * (1 - math.exp(-second / 18.0))
+        seen = final * (1 - math.exp(-second / 12.0))
         tape.second(flow, seen, 1, (begin, started) if not second else ())
     settled = tape.event(
         EventKind.POINT, point.id, f"{point.id} is steady.", status="settled", settle_s=float(SETTLE_S)

@@ -3,12 +3,13 @@
 from __future__ import annotations
 
 import math
+from dataclasses import replace
 
 import numpy as np
 import pytest
-from fakes.report_run import FEED, TRUE_K, invented_recipe, invented_rig, write_run
+from fakes.report_run import FEED, TRUE_K, invented_recipe, invented_rig, true_conversion, write_run
 
-from rigd.analysis.kinetics import Law, conversion
+from rigd.analysis.kinetics import Law
 from rigd.model.errors import JournalError
 from rigd.report.collect import UNFINISHED, read_run
 from rigd.report.figures import thinned
@@ -24,7 +25,7 @@ def run(tmp_path_factory):
 
 def test_points_are_those_of_the_recipe_with_what_became_of_them(run):
     assert [point.id for point in run.points] == ["P1", "P2", "P3", "P4", "P5", "P6"]
-    assert all(point.status == "collected" and point.settled and point.readings == 8 for point in run.points)
+    assert all(point.status == "collected" and point.settled and point.readings == 11 for point in run.points)
     first = run.points[0]
     assert first.flows_mL_min == {"PU-A": 2.0, "PU-B": 2.0}
     assert first.collected_mL == pytest.approx(4.0 * 40 / 60)
@@ -33,8 +34,9 @@ def test_points_are_those_of_the_recipe_with_what_became_of_them(run):
 
 def test_conversion_is_the_mean_of_the_readings_and_its_scatter_the_noise(run):
     for point in run.points:
-        true = conversion(Law.REVERSIBLE, TRUE_K, point.residence_time_s, FEED, 4.0)
-        assert point.conversion == pytest.approx(true, abs=4 * 0.006 / math.sqrt(8) + 0.003)
+        assert point.conversion == pytest.approx(
+            true_conversion(point.residence_time_s), abs=4 * 0.006 / math.sqrt(11) + 0.002
+        )
         assert 0.001 < point.conversion_sd < 0.015
 
 
@@ -44,6 +46,28 @@ def test_the_rate_constant_behind_the_signals_comes_back(run):
     assert fit.feed == FEED
     assert abs(fit.fit.k - TRUE_K) < 4 * fit.fit.k_error
     assert fit.fit.k == pytest.approx(TRUE_K, rel=0.02)
+
+
+def test_points_count_at_the_temperature_that_their_bed_had(run):
+    """Cold beds at the fast points, by Arrhenius with the declared 58 kJ/mol: the constant at 60 degC still comes back.
+
+    k(55)/k(60) = exp(-58000/8.314462618 (1/328.15 - 1/333.15)) = 0.7269 by hand.
+    """
+    beds = {"P1": 55.0, "P2": 57.0, "P3": 58.5}
+
+    def seen(point):
+        bed = beds.get(point.id, 60.0)
+        slower = math.exp(-58000 / 8.314462618 * (1 / (bed + 273.15) - 1 / 333.15))
+        return replace(point, bed_degC=bed, conversion=true_conversion(point.residence_time_s * slower))
+
+    assert math.exp(-58000 / 8.314462618 * (1 / 328.15 - 1 / 333.15)) == pytest.approx(0.7269, abs=1e-4)
+    (fit,) = kinetics_of(replace(run, points=tuple(seen(point) for point in run.points))).fits
+    assert fit.fit.k == pytest.approx(TRUE_K, rel=1e-6)
+    assert fit.activation_kJ_mol == 58.0
+    assert fit.even[-1][1] == pytest.approx(fit.curve[-1][1])
+    assert fit.even[10][1] > fit.curve[10][1]
+    (plain,) = kinetics_of(run).fits
+    assert plain.even == ()
 
 
 def test_used_volumes_balance_with_what_the_pumps_delivered(run):
