@@ -35,6 +35,7 @@ class FaultEffect:
 @dataclass(slots=True)
 class _Entry:
     spec: FaultSpec
+    onset_s: float
     end_s: float
 
 
@@ -45,15 +46,16 @@ class Ailments:
         self._rig, self._layout, self._effects = rig, layout, effects
         self._entries: list[_Entry] = []
 
-    def inject(self, fault: FaultSpec) -> None:
-        """Add a fault; ``ConfigError`` names what is allowed."""
+    def inject(self, fault: FaultSpec, now_s: float) -> None:
+        """Add a fault; one whose onset is past begins now. ``ConfigError`` names what is allowed."""
         effect = self._effects.get(fault.kind)
         if effect is None:
             raise _refuse("fault-kind", f"there is no fault kind {fault.kind!r}", self._effects)
         allowed = effect.targets(self._rig)
         if fault.target not in allowed:
             raise _refuse("fault-target", f"{fault.kind!r} cannot hit {fault.target!r}", allowed)
-        self._entries.append(_Entry(fault, fault.onset_s + fault.duration_s))
+        onset_s = max(fault.onset_s, now_s)
+        self._entries.append(_Entry(fault, onset_s, onset_s + fault.duration_s))
 
     def clear(self, kind: str, target: str) -> None:
         """Forget all faults of this kind on this target."""
@@ -61,18 +63,18 @@ class Ailments:
 
     def next_change(self, now_s: float) -> float:
         """Seconds until a fault begins or ends; infinity if none will."""
-        times = [t - now_s for e in self._entries for t in (e.spec.onset_s, e.end_s)]
+        times = [t - now_s for e in self._entries for t in (e.onset_s, e.end_s)]
         return min((t for t in times if t > 1e-9), default=float("inf"))
 
     def active(self, now_s: float) -> bool:
         """True while any fault is in force."""
-        return any(e.spec.onset_s <= now_s + 1e-9 < e.end_s for e in self._entries)
+        return any(e.onset_s <= now_s + 1e-9 < e.end_s for e in self._entries)
 
     def levers(self, now_s: float) -> Levers:
         """Levers of this moment: healthy, then every active effect in the order of injection."""
         result = Levers()
         for entry in self._entries:
-            elapsed = now_s - entry.spec.onset_s
+            elapsed = now_s - entry.onset_s
             if elapsed >= -1e-9 and now_s + 1e-9 < entry.end_s:
                 situation = Situation(self._rig, self._layout, entry.spec, max(elapsed, 0.0))
                 self._effects[entry.spec.kind].apply(result, situation)

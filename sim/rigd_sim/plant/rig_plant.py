@@ -314,9 +314,9 @@ class RigPlant:
         return unit.spectrum(self.levers.cells.get(unit.cell.id, _CELL))
 
     def inject(self, fault: FaultSpec) -> None:
-        """Add a fault; ``ConfigError`` for an unknown kind or target."""
+        """Add a fault (an onset in the past means now); ``ConfigError`` for an unknown kind or target."""
         self._carry()
-        self.ailments.inject(fault)
+        self.ailments.inject(fault, self.now_ns / NS)
         self._refresh_levers()
 
     def clear(self, kind: str, target: str) -> None:
