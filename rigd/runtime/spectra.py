@@ -22,6 +22,9 @@ class CellReader:
 
     def __init__(self, cell: Cell, chemistry: Chemistry, channels: Sequence[str]) -> None:
         self._cell, self._chemistry, self._channels = cell, chemistry, channels
+        from rigd.analysis.unmix import Unmixer  # numpy: only for a rig with a cell, and not while scans wait for it
+
+        self._make = Unmixer
         self._species = [one.id for one in chemistry.species if one.bands and one.id in channels]
         self._unmixer: Unmixer | None = None
         self._grid: tuple[float, float, int] = (0.0, 0.0, 0)
@@ -38,10 +41,8 @@ class CellReader:
     def _unmixer_for(self, spectrum: Spectrum) -> Unmixer:
         grid = (spectrum.start_per_cm, spectrum.step_per_cm, len(spectrum.absorbance))
         if self._unmixer is None or grid != self._grid:
-            from rigd.analysis.unmix import Unmixer  # brings numpy, which a rig without a cell does not need
-
             self._grid = grid
-            self._unmixer = Unmixer(self._chemistry, self._species, *grid, self._cell.path_um)
+            self._unmixer = self._make(self._chemistry, self._species, *grid, self._cell.path_um)
         return self._unmixer
 
 

@@ -10,8 +10,11 @@ from typing import Any
 import pytest
 from fakes.deep_rig import DeepRig, run_virtually
 
+from rigd.adapters.journal_reader import JournalReader
+from rigd.adapters.journal_sqlite import SqliteJournal
 from rigd.adapters.plugins import driver_family
 from rigd.config import load_pair
+from rigd.logic import scan as core
 from rigd.logic.run_end import RunEnd
 from rigd.model.devices import LinkState
 from rigd.model.errors import LinkTimeout
@@ -153,6 +156,33 @@ def test_the_same_seed_gives_the_same_run() -> None:
         return [rig.journal.orders, rig.journal.events]
 
     assert once() == once()
+
+
+def test_a_journal_of_the_run_replays_to_the_same_orders_and_events(tmp_path: Path) -> None:
+    async def script(rig: DeepRig) -> None:
+        await started(rig)
+        rig.inject("block", "L-4")
+        await rig.until(lambda: rig.texts(EventKind.TRIP), 120)
+
+    rig, end = play(script)
+    assert end.exit_code == 1
+    assert rig.texts(EventKind.TRIP)[0] == "trip: PRESSURE-HIGH"
+    journal = SqliteJournal(tmp_path / "run.sqlite", {}, PAIR.rig.tags)
+    for number, now_ns, intake in rig.journal.intakes:
+        journal.scan(number, now_ns, "", intake)
+        journal.decided(number, [], [])
+    journal.close(end.outcome)
+    program = rig.live.given.program
+    orders, events = [], []
+    with JournalReader(tmp_path) as reader:
+        state = core.initial(program, 0)
+        for record in reader.scans():
+            step = core.scan(program, state, record.intake, record.now_ns)
+            state = step.state
+            orders += step.orders
+            events += step.events
+    assert orders == rig.journal.orders
+    assert events == rig.journal.events
 
 
 def test_a_bug_in_a_task_ends_everything_at_once(monkeypatch: pytest.MonkeyPatch) -> None:
