@@ -1,7 +1,5 @@
 """The chemistry file: species with their absorption bands, and reactions."""
 
-from __future__ import annotations
-
 import re
 from typing import Annotated, Literal
 

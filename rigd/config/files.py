@@ -1,7 +1,5 @@
 """The rig file and the recipe file as wholes."""
 
-from __future__ import annotations
-
 from typing import Annotated, Literal
 
 from pydantic import Field
@@ -70,8 +68,8 @@ class RigFile(Table):
     alarms: tuple[AlarmTable, ...] = ()
     links: Annotated[tuple[LinkTable, ...], Field(min_length=1)]
     devices: Annotated[tuple[DeviceTable, ...], Field(min_length=1)]
-    outside: OutsideTable = OutsideTable()
-    simulation: SimulationTable = SimulationTable()
+    outside: OutsideTable = Field(default_factory=OutsideTable)
+    simulation: SimulationTable = Field(default_factory=SimulationTable)
 
 
 class RecipeFile(Table):

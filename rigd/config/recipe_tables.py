@@ -1,7 +1,5 @@
 """The sections of a recipe file, except the sweep."""
 
-from __future__ import annotations
-
 from datetime import UTC
 from typing import Annotated, Literal
 

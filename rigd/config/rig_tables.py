@@ -1,7 +1,5 @@
 """The parts of a rig file: liquids, vessels, valves, pumps, tees, columns, cells, regulators, chillers, lines."""
 
-from __future__ import annotations
-
 from typing import Annotated
 
 from pydantic import Field

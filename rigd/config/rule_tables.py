@@ -1,8 +1,6 @@
 """Sensors, interlocks, alarms, links, devices and who is told: the tables of a rig file that are not hardware."""
 
-from __future__ import annotations
-
-from typing import Annotated, Any, Literal
+from typing import Annotated, Any, Literal, Self
 
 from pydantic import ConfigDict, Field, ValidationInfo, field_validator, model_validator
 from pydantic_core import PydanticCustomError
@@ -81,7 +79,7 @@ class SensorTable(Table):
         return noise
 
     @model_validator(mode="after")
-    def _span_or_labels(self) -> SensorTable:
+    def _span_or_labels(self) -> Self:
         if self.measures == "state" and (self.span or len(self.labels) < 2):
             text = "a sensor of a state needs 'labels' (two or more, first for value 0) and no 'span'"
             raise PydanticCustomError("span-or-labels", "{text}", {"text": text})
@@ -127,7 +125,7 @@ class ConditionTable(Table):
     deadband: Written | None = None
 
     @model_validator(mode="after")
-    def _one(self) -> ConditionTable:
+    def _one(self) -> Self:
         given = [name for name in COMPARISONS if getattr(self, name) is not None]
         text = ""
         if len(given) != 1:

@@ -1,9 +1,7 @@
 """The ``[sweep]`` section of a recipe: which points, in which order."""
 
-from __future__ import annotations
-
 from collections.abc import Mapping
-from typing import Annotated, Any, Literal
+from typing import Annotated, Any, Literal, Self
 
 from pydantic import ConfigDict, Discriminator, Field, Tag, model_validator
 from pydantic_core import PydanticCustomError
@@ -97,7 +95,7 @@ class SweepTable(Table):
     seed: Annotated[int, Field(strict=True, ge=0)] = 1
 
     @model_validator(mode="after")
-    def _one(self) -> SweepTable:
+    def _one(self) -> Self:
         given = [name for name in FORMS if getattr(self, name) is not None]
         text = ""
         if len(given) != 1:
