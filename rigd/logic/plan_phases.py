@@ -96,7 +96,7 @@ def _dosed(layout: Layout, doses: Mapping[str, Sequence[Dose]], flows: Mapping[s
         _doses_s(layout, row, layout.pumps[name], flows[name], start.left_mL.get(name, 0.0))
         for name, row in doses.items()
     ]
-    volumes = {name: sum(dose.volume_mL for dose in row if "~" not in dose.label) for name, row in doses.items()}
+    volumes = {name: sum(dose.volume_mL for dose in row) for name, row in doses.items()}
     left = {name: layout.pumps[name].reserve_mL(flows[name]) for name in doses}
     fills = sum(len(row) * layout.pumps[name].pump.syringes for name, row in doses.items())
     seconds = max(times, default=0.0)
@@ -121,9 +121,14 @@ def _conditioning(layout: Layout, spec: PhaseSpec, before: Effort) -> Effort:
     by_volume_s = rule.volumes * layout.path.residence_s(flows) + 5.0
     seconds = max(by_volume_s, rule.min_s, before.bath_s + rule.steady_s)
     volumes = {name: flow * seconds / 60.0 for name, flow in flows.items()}
-    left = {name: 0.5 * batch(layout.pumps[name], flow) for name, flow in flows.items()}
+    left = {name: _left_mL(layout.pumps[name], flow) for name, flow in flows.items()}
     refills = sum(int(volumes[name] / batch(layout.pumps[name], flow)) + 1 for name, flow in flows.items())
     return Effort(seconds, flows, volumes, {}, {**before.left_mL, **left}, refills, before.bath_degC)
+
+
+def _left_mL(play: PumpLayout, flow: float) -> float:
+    """Left when it is not known in advance when to stop: half a filling; a single syringe is filled as needed."""
+    return 0.5 * batch(play, flow) if play.dual else play.reserve_mL(flow)
 
 
 def _leak_test(layout: Layout, spec: PhaseSpec, before: Effort) -> Effort:
@@ -145,7 +150,7 @@ def _leak_test(layout: Layout, spec: PhaseSpec, before: Effort) -> Effort:
 def _switchover(layout: Layout, spec: PhaseSpec, before: Effort) -> Effort:
     flows = flows_of(layout, spec.reagent, spec.slow, spec.point)
     rule = layout.recipe.switchover
-    doses = rinse_doses(layout, rule.rinses, flows) if rule and spec.reagent else {}
+    doses = rinse_doses(layout, rule.rinses, spec.reagent, flows) if rule else {}
     rinsed = _dosed(layout, doses, flows, before) if doses else replace(before, duration_s=0.0, refills=0)
     charge_s = meet_s = 0.0
     for name, flow in flows.items():

@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Mapping
 
 from rigd.logic.conduct.layout import Layout
-from rigd.logic.conduct.point_needs import point_mL
+from rigd.logic.conduct.point_needs import least_mL
 from rigd.logic.dispersion import settle_volumes_99
 from rigd.model.problems import Problem, Severity
 from rigd.model.recipe import Point, PointKind
@@ -61,7 +61,7 @@ def _point(layout: Layout, point: Point) -> list[Problem]:
         play = layout.pumps.get(name)
         if play is None or flow <= 0:
             continue
-        need_mL = point_mL(layout, point, name, point.kind is not PointKind.BLANK) + play.reserve_mL(flow)
+        need_mL = least_mL(layout, point, name, point.kind is not PointKind.BLANK) + play.reserve_mL(flow)
         if not play.dual and need_mL > play.pump.stroke_mL:
             message = (
                 f"point {point.id} takes {need_mL:.1f} mL of {name}, its one syringe holds {play.pump.stroke_mL:g} mL"

@@ -216,7 +216,9 @@ class KinematicRig:
         self.now_ns = 0
         self.random = random.Random(seed)
         self.pumps = {pump.id: self._pump(pump, self.path) for pump in rig.pumps}
-        self.supplies = {(line.pump, line.position): self._supply(line.volume_mL, line.liquid) for line in self.path.supply_lines}
+        self.supplies = {
+            (line.pump, line.position): self._supply(line.volume_mL, line.liquid) for line in self.path.supply_lines
+        }
         self.valves = {valve.id: FakeValve(valve.positions, valve.travel_s) for valve in rig.valves}
         self.sections = [Pipe.full_of(section.volume_mL, "air") for section in self.path.sections]
         self.flask: list[Parcel] = []
@@ -231,7 +233,8 @@ class KinematicRig:
         self.compliance_mL_bar = 0.03
         self.signal = 0.0
         self.commands: list[tuple[int, str, Action, float]] = []
-        self.meetings: list[tuple[int, str]] = []
+        self.reagent_at_switchover_s: dict[str, float] = {}
+        self.ran_empty: list[tuple[int, str]] = []
         self._told: dict[tuple[str, str], float | str] = {}
         self._wait: list[Outcome] = []
         self._number = 0
@@ -259,7 +262,8 @@ class KinematicRig:
         for valve in self.valves.values():
             valve.left_s = max(0.0, valve.left_s - dt_s)
         arriving = {name: self._run(name, pump, dt_s) for name, pump in self.pumps.items()}
-        flows = tuple(sorted((name, pump.rate) for name, pump in self.pumps.items() if pump.state is PumpState.DELIVERING))
+        running = {name: pump.rate for name, pump in self.pumps.items() if pump.state is PumpState.DELIVERING}
+        flows = tuple(sorted(running.items()))
         shut = self.valves[self.path.outlet_valve].position == "shut"
         self._pressure(dt_s, shut, sum(p.volume_mL for row in arriving.values() for p in row))
         if not shut:
@@ -274,11 +278,24 @@ class KinematicRig:
         position = turn.position if turn else ""
         pipe = self.supplies[(name, position)]
         before = sum(s.level_mL for s in pump.syringes) + pump.delivered_mL
+        moving = pump.state is PumpState.DELIVERING
         out = pump.step(dt_s, pipe)
+        if moving and pump.state is PumpState.EMPTY:
+            self.ran_empty.append((self.now_ns, name))
+        self._note_front(name, pump.rate, out)
         drawn = sum(s.level_mL for s in pump.syringes) + pump.delivered_mL - before
         liquid = draw_liquid(pipe)[0][0]
         self.drawn[liquid] = self.drawn.get(liquid, 0.0) + max(drawn, 0.0)
         return out
+
+    def _note_front(self, name: str, rate: float, out: list[Parcel]) -> None:
+        """When nearly pure reagent first came out of a pump's line."""
+        passed_mL = 0.0
+        for parcel in out:
+            pure = sum(share for liquid, share in parcel.mix if liquid.startswith("feed")) > 0.985
+            if pure and name not in self.reagent_at_switchover_s:
+                self.reagent_at_switchover_s[name] = self.now_ns / 1e9 + 60 * passed_mL / rate
+            passed_mL += parcel.volume_mL
 
     def _through(self, arriving: dict[str, list[Parcel]], flows: tuple[tuple[str, float], ...]) -> None:
         """Join the streams section by section, then out through the outlet valve."""
@@ -342,9 +359,9 @@ class KinematicRig:
         return values
 
     def obey(self, demand: Demand) -> None:
-        """A small arbitration: what differs from what was told is ordered; stops, valves, baths, fillings, deliveries."""
+        """A small arbitration: what differs from what was told is ordered; stops, valves, baths, fills, deliveries."""
         for name, want in demand.pumps.items():
-            if want.flow_mL_min <= 0:
+            if want.flow_mL_min <= 0.0:
                 self._tell(name, "rate", Action.STOP, 0.0)
         for name, position in demand.valves.items():
             self._tell(name, "move", Action.MOVE, float(self.valves[name].positions.index(position)))

@@ -18,6 +18,7 @@ from rigd.logic.settling import (
     Settler,
     SettleRule,
     is_steady,
+    ratio_over,
     ratio_start,
     ratio_step,
     settle_step,
@@ -120,6 +121,18 @@ def run(values: Any, rule: SettleRule = RULE) -> Settler:
     return settler
 
 
+SHORT = [(12, 0.126), (24, 0.067), (60, 0.050)]
+
+
+@pytest.mark.parametrize(("count", "expected"), SHORT)
+def test_short_memory_rejects_steady_noise_a_little_more_often(count: int, expected: float) -> None:
+    """Rates stated in the docstring, from a run of 1e5; here 4000, so four standard errors are 0.02."""
+    rng = np.random.default_rng(4)
+    rows = rng.standard_normal((4000, count)).tolist()
+    rejected = sum((ratio_over(tuple(row)) or 0.0) > RATIO_LIMIT for row in rows) / 4000
+    assert rejected == pytest.approx(expected, abs=0.021)
+
+
 def noise(n: int, sigma: float, seed: int = 5) -> Any:
     return np.random.default_rng(seed).normal(0, sigma, n)
 
@@ -136,7 +149,7 @@ def test_frozen_signal_is_never_steady() -> None:
 
 
 def test_signal_that_freezes_later_is_not_steady_either() -> None:
-    moving = 0.5 + noise(10, 0.002)
+    moving = 0.5 + noise(7, 0.002)
     settler = run([*moving, *([0.5] * 100)])
     assert settler.verdict == "frozen"
 

@@ -126,7 +126,7 @@ def _dual_fill(play: PumpLayout, track: PumpTrack, want: Want, now_ns: int) -> f
     if held_mL > EMPTY_mL and not want.swap and little:
         return 0.0  # not worth a filling of its own
     wanted_mL = max(min(want.level_mL, want.need_mL), _lead_mL(play, target_mL - held_mL, want.flow_mL_min))
-    return target_mL if track.level_at(now_ns) < wanted_mL + play.guard_mL(want.flow_mL_min) else 0.0
+    return target_mL if track.level_at(now_ns) <= wanted_mL + play.guard_mL(want.flow_mL_min) else 0.0
 
 
 def _lead_mL(play: PumpLayout, volume_mL: float, flow_mL_min: float) -> float:
@@ -142,7 +142,7 @@ def _single_fill(play: PumpLayout, track: PumpTrack, want: Want, now_ns: int) ->
     reserve_mL = play.reserve_mL(want.flow_mL_min)
     if track.active != want.label:
         return min(want.need_mL + reserve_mL, want.batch_mL + reserve_mL) if level_mL <= _RUN_OUT_mL else 0.0
-    if level_mL >= _single_needs_mL(play, want):
+    if level_mL > _single_needs_mL(play, want):
         return 0.0
     target_mL = min(want.need_mL + reserve_mL, want.batch_mL + reserve_mL, play.pump.stroke_mL)
     return target_mL if target_mL > level_mL + _WORTH_mL else 0.0

@@ -28,7 +28,8 @@ _WARM_S_MAX = 3600.0
 
 @dataclass(frozen=True, slots=True)
 class Memory:
-    """``step``: set, settle, divert, collect, back. ``marks``: counters since when volumes count.
+    """``step``: set, settle, divert, collect, back. ``marks``: counters since when volumes count. ``entered_mL``:
+    counters when the present setting of flows began; ``topped``: pumps that hold enough or were filled since.
 
     ``first`` are those when they first counted (they start anew after a refill), ``at_divert`` and ``at_collect`` those
     when it was settled and when the fraction began. ``window`` holds the means of the blocks that the settling was
@@ -38,6 +39,8 @@ class Memory:
     step: str = "set"
     started_ns: int = 0
     in_band_ns: int = NEVER_NS
+    entered_mL: Mapping[str, float] = field(default_factory=dict)
+    topped: frozenset[str] = frozenset()
     marks: Mapping[str, float] | None = None
     first: Mapping[str, float] | None = None
     settle_ns: int = 0
@@ -47,6 +50,7 @@ class Memory:
     settled_ns: int = 0
     at_divert: Mapping[str, float] = field(default_factory=dict)
     at_collect: Mapping[str, float] = field(default_factory=dict)
+    turned_ns: int = 0
     collect_ns: int = 0
     end_ns: int = 0
     collected_mL: float = 0.0
@@ -57,7 +61,7 @@ class Memory:
 
 def start(scene: Scene) -> Memory:
     """At the beginning of the point."""
-    return Memory(started_ns=scene.now_ns)
+    return Memory(started_ns=scene.now_ns, entered_mL=scene.delivered_mL())
 
 
 def step(scene: Scene, memory: Memory) -> Move[Memory]:
@@ -119,7 +123,8 @@ def _want(scene: Scene, memory: Memory, point: Point, name: str) -> Want:
     if short:
         here_mL = another_try_mL(layout, point, name)
     need_mL = here_mL + scene.needs_mL.get(name, 0.0) + (level_at if short and play.dual else 0.0)
-    level_mL = here_mL if play.dual or memory.step == "set" else min(fraction_mL, here_mL)
+    asks = play.dual or (memory.step == "set" and name not in memory.topped)
+    level_mL = here_mL if asks else min(fraction_mL, here_mL)
     swap = memory.step in ("set", "settle") and (short or (level_at < level_mL and _early(scene, memory)))
     may_fill = memory.step in ("set", "settle") or (play.dual and here_mL > level_at)
     return Want(liquid, flow, need_mL if flow > 0 else 0.0, level_mL, may_fill=may_fill, swap=swap)
@@ -144,6 +149,7 @@ def _set(scene: Scene, memory: Memory, point: Point) -> Move[Memory]:
     """Flows right, fronts past their merges, jacket in its band: from here volumes count."""
     waste = scene.layout.recipe.collect.waste_position
     first = memory.started_ns == scene.now_ns
+    memory = replace(memory, topped=_topped(scene, memory, point))
     events = (started(point, scene.now_ns),) if first else ()
     wants = _wants(scene, memory, point, waste)
     warm = memory.in_band_ns != NEVER_NS
@@ -166,6 +172,18 @@ def _set(scene: Scene, memory: Memory, point: Point) -> Move[Memory]:
     )
 
 
+def _topped(scene: Scene, memory: Memory, point: Point) -> frozenset[str]:
+    """Pumps that need no more filling before they run: they hold what the point takes, or have just been filled."""
+    found = set(memory.topped)
+    for name, flow in point.flows_mL_min.items():
+        play, track = scene.layout.pumps[name], scene.tracks[name]
+        enough = track.level_at(scene.now_ns) >= point_mL(scene.layout, point, name, scene.spec.reagent)
+        filled = track.swapped_mL >= memory.entered_mL.get(name, 0.0) - 1e-6 and track.fill is None
+        if flow <= 0 or play.dual or enough or filled:
+            found.add(name)
+    return frozenset(found)
+
+
 def _streams_right(scene: Scene, point: Point) -> bool:
     """True when every pump delivers what the point says, of the liquid that it says, up to its merge."""
     for name, flow in point.flows_mL_min.items():
@@ -182,7 +200,7 @@ def _streams_right(scene: Scene, point: Point) -> bool:
 def _settle(scene: Scene, memory: Memory, point: Point) -> Move[Memory]:
     waste = scene.layout.recipe.collect.waste_position
     if not _streams_right(scene, point) or memory.in_band_ns == NEVER_NS:
-        memory = replace(memory, step="set", marks=None, settler=Settler(), judged=False, means=Means(), window=())
+        memory = _anew(scene, memory)
         return Move(memory, _wants(scene, memory, point, waste), "settling starts anew")
     rule, path = scene.layout.recipe.settle, scene.layout.path
     passed = turnovers(path, scene.since_mL(memory.marks or {}))
@@ -204,6 +222,21 @@ def _settle(scene: Scene, memory: Memory, point: Point) -> Move[Memory]:
     text = f"settling: {passed:.1f} of {rule.volumes:g} volumes, signal {memory.settler.verdict}"
     left_s = _left_s(scene, memory, point, passed)
     return Move(memory, wants, text, events, due_ns=due_ns, left_s=left_s, calm=memory.step == "settle")
+
+
+def _anew(scene: Scene, memory: Memory) -> Memory:
+    """Back to setting the flows: what has been seen of the settling does not count any more."""
+    return replace(
+        memory,
+        step="set",
+        entered_mL=scene.delivered_mL(),
+        topped=frozenset(),
+        marks=None,
+        settler=Settler(),
+        judged=False,
+        means=Means(),
+        window=(),
+    )
 
 
 def _ns(scene: Scene, point: Point, volumes: float) -> int:
@@ -279,12 +312,24 @@ def _divert(scene: Scene, memory: Memory, point: Point) -> Move[Memory]:
     memory = replace(memory, means=memory.means.add(scene.view, scene.layout.record))
     left_mL = scene.layout.dead_mL - _passed_mL(scene, memory.at_divert)
     outlet = recipe.collect.position if left_mL <= 0 else recipe.collect.waste_position
-    if left_mL <= 0 and scene.outlet_at(recipe.collect.position):
-        memory = replace(memory, step="collect", collect_ns=scene.now_ns, at_collect=scene.delivered_mL())
+    if left_mL <= 0:
+        memory = replace(memory, turned_ns=memory.turned_ns or scene.now_ns)
+        if scene.outlet_at(recipe.collect.position):
+            memory = _begun(scene, memory, point)
     due_ns = scene.now_ns + int(60e9 * left_mL / point.total_mL_min) + 1_000_000 if left_mL > 0 else None
     left_s = 60.0 * (max(left_mL, 0.0) + recipe.collect.volume_mL) / point.total_mL_min
     text = "letting the dead volume pass"
     return Move(memory, _wants(scene, memory, point, outlet), text, due_ns=due_ns, left_s=left_s)
+
+
+def _begun(scene: Scene, memory: Memory, point: Point) -> Memory:
+    """The outlet is confirmed at the flask. It got there when its travel was over, before that could be read."""
+    valve = scene.layout.program.valves.get(scene.layout.path.outlet_valve)
+    travel_ns = int(valve.travel_s * 1e9) if valve else 0
+    begun_ns = min(memory.turned_ns + travel_ns, scene.now_ns)
+    late_min = (scene.now_ns - begun_ns) / 60e9
+    marks = {name: mL - point.flows_mL_min.get(name, 0.0) * late_min for name, mL in scene.delivered_mL().items()}
+    return replace(memory, step="collect", collect_ns=begun_ns, at_collect=marks)
 
 
 def _collect(scene: Scene, memory: Memory, point: Point) -> Move[Memory]:

@@ -22,10 +22,17 @@ def collect_mL(layout: Layout, point: Point, pump: str) -> float:
     return share(point, pump) * (layout.dead_mL + layout.recipe.collect.volume_mL)
 
 
-def point_mL(layout: Layout, point: Point, pump: str, reagent: bool) -> float:
-    """What a point takes of a pump: settling with a little patience, the fraction, and the valve's travel."""
+def least_mL(layout: Layout, point: Point, pump: str, reagent: bool) -> float:
+    """What a point takes of a pump at least: settling, the fraction, and the valve's travel."""
     flow = point.flows_mL_min.get(pump, 0.0)
-    return flow * (1.1 * settle_s(layout, point, reagent) + 6.0) / 60.0 + collect_mL(layout, point, pump)
+    return flow * (settle_s(layout, point, reagent) + 6.0) / 60.0 + collect_mL(layout, point, pump)
+
+
+def point_mL(layout: Layout, point: Point, pump: str, reagent: bool) -> float:
+    """What is kept ready for a point: with patience for a signal gate that says no once or twice."""
+    again_s = 2.0 * layout.recipe.settle.persistence * _judged_every_s(layout, point) if gated(layout, reagent) else 0.0
+    patience_s = max(0.1 * settle_s(layout, point, reagent), again_s)
+    return least_mL(layout, point, pump, reagent) + point.flows_mL_min.get(pump, 0.0) * patience_s / 60.0
 
 
 def another_try_mL(layout: Layout, point: Point, pump: str) -> float:
@@ -63,6 +70,9 @@ def settle_rule(layout: Layout, point: Point) -> SettleRule:
 def signal_s(layout: Layout, point: Point) -> float:
     """Time that the signal gate takes at least, counted from the first exchange of the trunk."""
     rule = settle_rule(layout, point)
+    return (rule.window + rule.persistence - 1) * _judged_every_s(layout, point)
+
+
+def _judged_every_s(layout: Layout, point: Point) -> float:
     tag = layout.program.tags.get(layout.recipe.settle.signal)
-    period_s = tag.period_ns / 1e9 if tag else 1.0
-    return (rule.window + rule.persistence - 1) * rule.block * period_s
+    return settle_rule(layout, point).block * (tag.period_ns / 1e9 if tag else 1.0)

@@ -31,7 +31,7 @@ def flush(scene: Scene, memory: Memory) -> Move[Memory]:
     """Solvent through all. The bath is led to the flush temperature once no pump delivers reagent any more."""
     recipe = scene.layout.recipe
     doses = flush_doses(scene.layout, recipe.flush)
-    on_solvent = all(scene.tracks[name].active == row[0].label for name, row in doses.items())
+    on_solvent = all(liquid_of(scene.tracks[name].active) == liquid_of(row[0].label) for name, row in doses.items())
     temperature = recipe.flush.temperature_degC if on_solvent else None
     return _dosed(scene, memory, doses, solvent_flows(scene.layout, recipe.flush.total_mL_min), temperature)
 

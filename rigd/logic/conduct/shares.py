@@ -50,24 +50,29 @@ def prime_doses(layout: Layout, prime: Prime) -> dict[str, tuple[Dose, ...]]:
         if wash and play.reagent:
             drawn_mL = prime.reagent_line_volumes * play.supply_mL.get(play.reagent, 0.0)
             line = Dose(f"{play.reagent}~line", drawn_mL)
-            doses[name] = (first, line, Dose(play.solvent, prime.volumes * through))
+            doses[name] = (first, line, *_rinses(play, play.solvent, 1), Dose(play.solvent, prime.volumes * through))
     return doses
 
 
 def flush_doses(layout: Layout, flush: Flush) -> dict[str, tuple[Dose, ...]]:
-    """Solvent through everything, both syringes of each pump included."""
-    return {
-        name: (Dose(layout.pumps[name].solvent, flush.volumes * through_mL(layout, layout.pumps[name])),)
-        for name in layout.solvent_pumps()
-    }
+    """Solvent through everything; each syringe is rinsed first, because the line from the valve still holds reagent."""
+    doses: dict[str, tuple[Dose, ...]] = {}
+    for name in layout.solvent_pumps():
+        play = layout.pumps[name]
+        rinses = _rinses(play, play.solvent, 1) if play.reagent and not layout.recipe.solvent_only else ()
+        doses[name] = (*rinses, Dose(play.solvent, flush.volumes * through_mL(layout, play)))
+    return doses
 
 
-def rinse_doses(layout: Layout, rinses: int, pumps: Mapping[str, float]) -> dict[str, tuple[Dose, ...]]:
-    """Each syringe of each pump that will deliver reagent, rinsed with it."""
+def rinse_doses(layout: Layout, rinses: int, reagent: bool, pumps: Mapping[str, float]) -> dict[str, tuple[Dose, ...]]:
+    """Each syringe of each pump that changes its liquid, rinsed with the new one."""
     doses: dict[str, tuple[Dose, ...]] = {}
     for name in pumps:
         play = layout.pumps[name]
-        if play.reagent:
-            count = rinses * play.pump.syringes
-            doses[name] = tuple(Dose(f"{play.reagent}~{i + 1}", play.rinse_mL) for i in range(count))
+        if play.reagent and play.solvent:
+            doses[name] = _rinses(play, play.reagent if reagent else play.solvent, rinses)
     return doses
+
+
+def _rinses(play: PumpLayout, liquid: str, rinses: int) -> tuple[Dose, ...]:
+    return tuple(Dose(f"{liquid}~{i + 1}", play.rinse_mL) for i in range(rinses * play.pump.syringes))

@@ -3,7 +3,7 @@
 To reagent: each syringe is rinsed with it, the next one is charged, and the rest of the old liquid runs out; a pump
 changes over by itself the moment its active syringe is empty. The front then has to pass the pump's outlet line. What
 is left of the old liquid plus that line, over the flow, is the time to the merge; a pump with less of it than another
-waits, so that all arrive together. To solvent: the same without rinses, and without pausing for anything.
+waits, so that all arrive together. To solvent: the same, without waiting for anything.
 """
 
 from __future__ import annotations
@@ -46,8 +46,6 @@ def flows_of(layout: Layout, reagent: bool, slow: float = 1.0, point: Point | No
 def step(scene: Scene, memory: Memory) -> Move[Memory]:
     """Rinse, charge, then let the fronts meet."""
     flows = flows_of(scene.layout, scene.spec.reagent, scene.spec.slow, scene.spec.point)
-    if not scene.spec.reagent:
-        return _meet(scene, memory, flows)
     if memory.stage == "rinse":
         return _rinse(scene, memory, flows)
     if memory.stage == "charge":
@@ -66,16 +64,21 @@ def _wants(scene: Scene, wants: Mapping[str, Want], **options: bool) -> Wants:
 
 def _rinse(scene: Scene, memory: Memory, flows: Mapping[str, float]) -> Move[Memory]:
     rule = scene.layout.recipe.switchover
-    doses = {} if _has_been_rinsed(scene, flows) else rinse_doses(scene.layout, rule.rinses if rule else 0, flows)
+    rinses = 0 if rule is None or _has_been_rinsed(scene, flows) else rule.rinses
+    doses = rinse_doses(scene.layout, rinses, scene.spec.reagent, flows)
     dosing, wants, done = dose_all(scene, doses, memory.rinses, flows)
     memory = replace(memory, rinses=dosing, stage="charge" if done else "rinse")
-    if done:
+    if done and scene.spec.reagent:
         return _charge(scene, memory, flows)
+    if done:
+        return _meet(scene, replace(memory, stage="meet"), flows)
     return Move(memory, _wants(scene, wants), "rinsing", due_ns=dose_due_ns(scene, doses, dosing, flows))
 
 
 def _has_been_rinsed(scene: Scene, flows: Mapping[str, float]) -> bool:
     """After a hold the standby syringe still holds the reagent; then there is nothing to rinse."""
+    if not scene.spec.reagent:
+        return False
     held = [
         track.standby == label(scene.layout.pumps[name], True) and track.standby_mL > EMPTY_mL
         for name, track in scene.tracks.items()
