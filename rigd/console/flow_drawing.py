@@ -21,7 +21,7 @@ from rigd.model.rig import RigDefinition, Tag
 Values = Mapping[str, Mapping[str, Any]]
 
 MOVING, STILL, PART = "bold cyan", "dim", "bold"
-DIGITS = {"pressure": 2, "temperature": 1, "fraction": 1, "flow": 3, "volume": 1}
+DIGITS = {"pressure": 2, "temperature": 1, "fraction": 1, "flow": 3, "volume": 1, "absorbance": 4}
 SHOWN_AT_PARTS = ("pressure", "temperature", "fraction")
 
 

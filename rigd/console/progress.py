@@ -90,7 +90,7 @@ def readings(values: Mapping[str, Any]) -> list[tuple[str, str]]:
 
 def printed(event: Told) -> Text | None:
     """What is printed about an event, ``None`` for those that are not."""
-    if event.kind not in KINDS_PRINTED or event.fields.get("step"):
+    if event.kind not in KINDS_PRINTED or event.fields.get("step") or event.fields.get("status") == "started":
         return None
     return Text.assemble(
         (f"{clock_words(event.t_s)} ", "dim"), (event.text or event.subject, STYLES.get(event.kind, ""))

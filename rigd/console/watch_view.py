@@ -61,12 +61,9 @@ def _headline(snapshot: Mapping[str, Any], width: int) -> Text:
 def _progress_rows(snapshot: Mapping[str, Any], width: int) -> Group:
     """Run state and phase with its bar; points done and time left."""
     phase, campaign = _mapping(snapshot.get("phase")), _mapping(snapshot.get("campaign"))
-    label = str(phase.get("label") or phase.get("id") or "")
-    point, step = str(phase.get("point") or ""), str(phase.get("step") or "")
-    text = Text().append(str(snapshot.get("state", "")), style="bold green")
-    for part, style in ((label, "bold"), (point, "cyan"), (step, "default")):
-        if part and (part is label or part not in label):
-            text.append("  " + part, style=style)
+    text = Text(no_wrap=True, overflow="ellipsis").append(str(snapshot.get("state", "")), style="bold green")
+    text.append(f"  {phase.get('label') or phase.get('id') or ''}", style="bold")
+    step = Text(str(phase.get("step") or ""), no_wrap=True, overflow="ellipsis")
     done, total = campaign.get("done", 0), campaign.get("total", 0)
     second = Text()
     progress = phase.get("progress")
@@ -79,7 +76,7 @@ def _progress_rows(snapshot: Mapping[str, Any], width: int) -> Group:
         second.append(f"  points {done}/{total}", style="bold")
     if campaign.get("left_s") is not None:
         second.append(f"  run {left_words(campaign['left_s'])} left")
-    return Group(text, second) if second.plain else Group(text)
+    return Group(text, step, second)
 
 
 def bar(progress: float, width: int) -> str:
