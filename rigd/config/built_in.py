@@ -25,7 +25,7 @@ JOURNAL_S = 5.0
 def built_in_interlocks(rig: RigDefinition, devices: Iterable[DeviceSpec]) -> tuple[Interlock, ...]:
     """The built-in interlocks of a rig; ``rig`` need not hold them or its devices yet."""
     known = tuple(devices)
-    watched = _watched_devices(rig, known)
+    watched = _watched_devices(rig)
     found: list[Interlock] = []
     for device in known:
         if device.id in watched:
@@ -53,12 +53,12 @@ def built_in_alarms(rig: RigDefinition) -> tuple[Alarm, ...]:
     )
 
 
-def _watched_devices(rig: RigDefinition, devices: tuple[DeviceSpec, ...]) -> frozenset[str]:
+def _watched_devices(rig: RigDefinition) -> frozenset[str]:
     """Actuators, and devices that carry a tag of an interlock."""
     parts: tuple[Pump | Valve | Chiller, ...] = (*rig.pumps, *rig.valves, *rig.chillers)
     moving = {part.device for part in parts if part.device}
     tags = {name for lock in rig.interlocks for cause in lock.causes for name in (cause.tag, cause.reference)}
-    carrying = {device.id for device in devices for channel in device.channels if channel.tag in tags}
+    carrying = {tag.device for tag in rig.tags if tag.id in tags}
     return frozenset(moving | carrying)
 
 

@@ -10,6 +10,7 @@ from fakes.config_files import CHEMISTRY, Edit, edited, problems_of
 WATER = CHEMISTRY[CHEMISTRY.index('[[species]]\nid = "water"') :].split("\n\n")[0]
 
 CHEMISTRY_ROWS = (
+    ("name-reserved", "species[residual].id", ((WATER, WATER + "\n\n" + WATER.replace('"water"', '"residual"')),)),
     ("species-unknown", "reactant", (('reactant = "acetic acid"', 'reactant = "acetic acd"'),)),
     ("species-unknown", "product", (('product = "ethyl acetate"', 'product = "ester"'),)),
     (

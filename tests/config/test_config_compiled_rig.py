@@ -194,6 +194,12 @@ def test_a_link_without_interlocked_tags_may_be_lost(tmp_path: Path) -> None:
     assert "LINK-chiller" in {lock.id for lock in made.interlocks}
 
 
+def test_the_link_of_a_cell_counts_when_an_interlock_looks_at_it(tmp_path: Path) -> None:
+    rig = edited(RIG, *within("BED-HOT", '"TT-1", above = "75 degC"', '"IR.acetic acid", above = "1.5 mol/L"'))
+
+    assert "LINK-ir" in {lock.id for lock in load_rig(write(tmp_path, rig)[0]).interlocks}
+
+
 def test_the_weakest_part_is_sought_behind_the_pumps_only(tmp_path: Path) -> None:
     """A weak suction line does not count, a weak line to the flask does."""
     weak_suction = edited(RIG, *within("L-A2", 'rating = "20 bar"', 'rating = "2 bar"'))

@@ -12,6 +12,20 @@ from fakes.config_files import RIG, Row, block, within
 
 ROWS = (
     Row(
+        "duplicate-id",
+        "valves[V-C].positions[3]",
+        "positions",
+        within("V-C", '["waste", "collect", "shut"]', '["waste", "collect", "waste"]'),
+    ),
+    Row(
+        "flow-out-of-range",
+        "flush_flow",
+        "flush_flow",
+        (('flush_flow = "2 mL/min"', 'flush_flow = "11 mL/min"'),),
+        "",
+        ("flow-out-of-range",),
+    ),
+    Row(
         "liquid-missing",
         "vessels[bottle-A].liquid",
         "[[vessels]]",

@@ -9,6 +9,9 @@ from rigd.config.lines import Path
 from rigd.config.structure import declared
 from rigd.model.chemistry import RateLaw
 
+RESERVED = ("conversion", "residual")
+"""A cell has a tag of each species, and these two."""
+
 BALANCE = 0.005
 """Masses of both sides of a reaction may differ by this fraction (rounded molar masses)."""
 
@@ -20,6 +23,10 @@ def check_chemistry(file: ChemistryFile, found: Findings) -> None:
     reactions = [(table.id, (*table.key_path, "id")) for table in file.reactions]
     report_duplicates(found, "species", species)
     report_duplicates(found, "reaction", reactions)
+    for name, place in species:
+        if name in RESERVED:
+            message = f"{name!r} is the name of another signal of the cell"
+            found.error("name-reserved", place, message, "call the species otherwise")
     for key in ("reactant", "product"):
         _species(found, known, getattr(file, key), (key,))
     for index, name in enumerate(file.byproducts):

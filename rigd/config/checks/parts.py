@@ -5,6 +5,7 @@ from __future__ import annotations
 from dataclasses import fields
 
 from rigd.config.checks.context import RigContext
+from rigd.config.checks.identity import report_duplicates
 from rigd.config.findings import listed, nearest
 from rigd.model.rig import VesselRole
 
@@ -12,8 +13,9 @@ _COLUMN_PLACES = ("inlet", "middle", "outlet", "jacket")
 
 
 def check_parts(context: RigContext) -> None:
-    """Vessels, pumps, columns, chillers, sensors' places, the simulator's truths."""
+    """Vessels, valves, pumps, columns, chillers, sensors' places, the simulator's truths."""
     _vessels(context)
+    _valves(context)
     _pumps(context)
     _columns(context)
     _chillers(context)
@@ -51,11 +53,24 @@ def _vessels(context: RigContext) -> None:
                 context.found.error("species-unknown", place, message, remedy)
 
 
+def _valves(context: RigContext) -> None:
+    for valve in context.rig.valves:
+        place = context.at("valves", valve.id, "positions")
+        report_duplicates(context.found, "position", [(name, (*place, i)) for i, name in enumerate(valve.positions)])
+
+
 def _pumps(context: RigContext) -> None:
+    share = context.rig.flush_mL_min / max(len(context.rig.pumps), 1)
     for pump in context.rig.pumps:
         if pump.rate_min_mL_min >= pump.rate_max_mL_min:
             message = f"smallest rate {pump.rate_min_mL_min:g} mL/min, largest {pump.rate_max_mL_min:g} mL/min"
             context.found.error("range-empty", context.at("pumps", pump.id, "rate_max"), message, "correct one of them")
+        elif context.whole("pumps") and not pump.rate_min_mL_min <= share <= pump.rate_max_mL_min:
+            message = (
+                f"{context.rig.flush_mL_min:g} mL/min in total are {share:.4g} mL/min for {pump.id}, which delivers"
+            )
+            message += f" {pump.rate_min_mL_min:g} to {pump.rate_max_mL_min:g} mL/min"
+            context.found.error("flow-out-of-range", ("flush_flow",), message, "change the flow of the flush")
         if pump.dead_mL >= pump.stroke_mL:
             message = f"the dead volume ({pump.dead_mL:g} mL) is not below the stroke ({pump.stroke_mL:g} mL)"
             context.found.error(

@@ -14,8 +14,10 @@ def check_recipe_limits(context: RecipeContext) -> None:
         _chiller(context, place, degC)
         _too_hot(context, place, degC)
         _freezing(context, place, degC)
+    _rest_above_freezing(context)
     _leak_test(context)
     _trips_above_sheet(context)
+    _stops_fit_the_chemistry(context)
     if not context.chillers and context.file.sweep is not None:
         message = "no chiller jackets a column of this rig; the temperature of the points is not controlled"
         remedy = "see that it fits the room"
@@ -66,6 +68,33 @@ def _freezing(context: RecipeContext, place: Path, degC: float) -> None:
         message = f"{degC:g} degC; by the chemistry sheet the mixture freezes below {sheet.freezes_below:g} degC"
         remedy = "stay above it: a frozen bed is a block"
         context.found.error("freezing", place, message, remedy)
+
+
+def _rest_above_freezing(context: RecipeContext) -> None:
+    sheet = context.file.sheet
+    for chiller in context.chillers:
+        if sheet is not None and chiller.safe_degC <= sheet.freezes_below:
+            message = f"{chiller.id} goes to {chiller.safe_degC:g} degC when the rig is stopped; by the chemistry sheet"
+            message += f" the mixture freezes below {sheet.freezes_below:g} degC"
+            remedy = "raise the chiller's safe_temperature in the rig file"
+            context.found.error("freezing", ("sheet", "freezes_below"), message, remedy)
+
+
+def _stops_fit_the_chemistry(context: RecipeContext) -> None:
+    """What a stop does to this chemistry must be known before the night, not found out in it."""
+    sheet = context.file.sheet
+    if sheet is None or context.file.switchover is None:
+        return
+    if not sheet.solvent_compatible:
+        message = (
+            "the sheet says that the chemistry does not bear the solvent, but every stop but a cut flushes with it"
+        )
+        remedy = "choose another solvent for the rig, or do not run this chemistry unattended by this program"
+        context.found.error("solvent-incompatible", ("sheet", "solvent_compatible"), message, remedy)
+    if not sheet.stagnation_safe:
+        message = "the sheet says that standing still is not safe, but on over-pressure the pumps are cut all the same"
+        remedy = "plan who vents, cools and flushes by hand after a cut, and how fast; a block cannot be pumped through"
+        context.found.warning("stagnation-unsafe", ("sheet", "stagnation_safe"), message, remedy)
 
 
 def _leak_test(context: RecipeContext) -> None:
