@@ -18,7 +18,7 @@ import shutil
 import signal
 import sys
 from collections.abc import Callable, Mapping, Sequence
-from dataclasses import dataclass, field, replace
+from dataclasses import asdict, dataclass, field, replace
 from pathlib import Path
 from typing import Any, NoReturn
 
@@ -290,6 +290,7 @@ def _facts(plan: Mapping[str, Any], folder: Path, clock: PacedClock) -> dict[str
     for name in (run_folder.RIG, run_folder.CHEMISTRY, run_folder.RECIPE):
         with contextlib.suppress(OSError):
             facts[name] = (folder / name).read_text(encoding="utf-8")
+    facts["options"] = json.dumps(asdict(_run_options(plan)))
     computer = f"{platform.platform()}, Python {platform.python_version()}"
     started = {"started_utc": clock.utc(), "origin_monotonic_ns": str(clock.origin_ns), "boot_id": boot_id()}
     return {**facts, **started, "version": __version__, "computer": computer}
@@ -329,12 +330,20 @@ def dry_run(rig_path: Path, recipe_path: Path, settings: DrySettings = DrySettin
         plant.inject(fault)
     journal = None
     if settings.journal is not None:
-        facts = {"rig": pair.rig.name, "recipe": pair.recipe.name, "simulated": "true", "version": __version__}
+        facts = _dry_facts(program, rig_path, recipe_path)
         journal = SqliteJournal(settings.journal, facts, pair.rig.tags)
     result = DryShell(program, plant, cell_readers(pair.rig), journal, settings.watch).run(settings.options)
     if journal is not None:
         journal.close(result.outcome)
     return DryRun(program, plant, result)
+
+
+def _dry_facts(program: Program, rig_path: Path, recipe_path: Path) -> dict[str, str]:
+    """What the journal of a rehearsal holds about it: enough to decide it all again."""
+    rig, recipe = program.rig, program.recipe
+    names = {"rig": rig.name, "recipe": recipe.name, "rig_digest": rig.digest, "recipe_digest": recipe.digest}
+    facts = {"simulated": "true", "version": __version__, "options": json.dumps(asdict(program.options))}
+    return {**names, **facts, **run_folder.frozen_texts(rig_path, recipe_path)}
 
 
 if __name__ == "__main__":

@@ -9,6 +9,7 @@ from __future__ import annotations
 
 import re
 import tomllib
+from collections.abc import Mapping
 from datetime import UTC, datetime
 from pathlib import Path
 
@@ -33,16 +34,26 @@ def make_run_folder(runs: Path, recipe_name: str) -> Path:
     raise RigError(f"there are a hundred runs called {stamp}-{recipe_name} already; wait a second")
 
 
+def frozen_texts(rig_path: Path, recipe_path: Path) -> dict[str, str]:
+    """The three files as the copies hold them, by the names of the copies. Raises ``OSError`` and ``RigError``."""
+    rig_text = rig_path.read_text(encoding="utf-8")
+    chemistry = rig_path.parent / tomllib.loads(rig_text)["chemistry"]
+    frozen, lines = _CHEMISTRY_LINE.subn(rf'\1 "{CHEMISTRY}"', rig_text, count=1)
+    if lines != 1:
+        raise RigError(f'{rig_path}: write the chemistry file on a line of its own, as chemistry = "..."')
+    texts = {CHEMISTRY: chemistry.read_text(encoding="utf-8"), RECIPE: recipe_path.read_text(encoding="utf-8")}
+    return {RIG: frozen, **texts}
+
+
 def freeze_files(folder: Path, rig_path: Path, recipe_path: Path) -> None:
     """Copy rig, chemistry and recipe into the run folder so that the copies load by themselves."""
     try:
-        rig_text = rig_path.read_text(encoding="utf-8")
-        chemistry = rig_path.parent / tomllib.loads(rig_text)["chemistry"]
-        (folder / CHEMISTRY).write_bytes(chemistry.read_bytes())
-        (folder / RECIPE).write_bytes(recipe_path.read_bytes())
-        frozen, lines = _CHEMISTRY_LINE.subn(rf'\1 "{CHEMISTRY}"', rig_text, count=1)
-        if lines != 1:
-            raise RigError(f'{rig_path}: write the chemistry file on a line of its own, as chemistry = "..."')
-        (folder / RIG).write_text(frozen, encoding="utf-8")
+        write_texts(folder, frozen_texts(rig_path, recipe_path))
     except OSError as error:
         raise RigError(f"cannot copy the files of the run to {folder}: {error.strerror}") from error
+
+
+def write_texts(folder: Path, texts: Mapping[str, str]) -> None:
+    """Write frozen files into a folder. Raises ``OSError``."""
+    for name, text in texts.items():
+        (folder / name).write_text(text, encoding="utf-8")

@@ -49,11 +49,12 @@ def samples_of(poll: Poll, readings: Iterable[Reading], t_ns: int) -> list[Sampl
 
 def sample_of(reading: Reading, tag: str, t_ns: int) -> Sample:
     """A reading under its tag; a fault that the device itself told, or a value that is no number, makes it bad."""
+    value = reading.value + 0.0  # minus zero becomes zero, which is all that a journal can hold
     if reading.fault:
-        return Sample(tag, reading.value, t_ns, Quality.BAD, QualityCause.SENSOR_FAULT, reading.raw)
-    if math.isnan(reading.value):
-        return Sample(tag, reading.value, t_ns, Quality.BAD, QualityCause.NOT_A_NUMBER, reading.raw)
-    return Sample(tag, reading.value, t_ns, raw=reading.raw)
+        return Sample(tag, value, t_ns, Quality.BAD, QualityCause.SENSOR_FAULT, reading.raw)
+    if math.isnan(value):
+        return Sample(tag, value, t_ns, Quality.BAD, QualityCause.NOT_A_NUMBER, reading.raw)
+    return Sample(tag, value, t_ns, raw=reading.raw)
 
 
 def next_due_ns(start_ns: int, period_ns: int, now_ns: int) -> int:

@@ -73,6 +73,8 @@ class ScanLoop:
         """One scan, in the stages of ``rigd.model.ticket.STAGES``."""
         self._number += 1
         number, now_ns = self._number, self._clock.now_ns()
+        if number == 1:
+            self._state = core.initial(self._program, now_ns)  # the journal begins here, and so must a replay
         intake = self._inbox.take(self._vigil.faults())
         self._journal.scan(number, now_ns, self._clock.utc(), intake)
         self._permission.done(number, "intake")
