@@ -83,6 +83,7 @@ class Rehearsal:
         self.events: list[Event] = []
         self.silent: set[str] = set()
         self.deaf: set[str] = set()
+        self.failing: set[str] = set()
         self._pending: dict[str, list[object]] = {"outcomes": [], "links": [], "requests": [], "faults": []}
         self._next = {channel.tag: 0 for device in rig.devices for channel in device.channels}
         self._number = 0
@@ -185,6 +186,8 @@ class Rehearsal:
     def _carry_out(self, order: Order) -> Outcome:
         if order.unit in self.deaf:
             return Outcome(order.number, order.unit, order.action, Result.DONE, self.now_ns)
+        if order.unit in self.failing:
+            return Outcome(order.number, order.unit, order.action, Result.FAILED, self.now_ns, "no reply")
         refusal = self.plant.tell(order.unit, order.action, order.value)
         result = Result.REFUSED if refusal else Result.DONE
         return Outcome(order.number, order.unit, order.action, result, self.now_ns, refusal)

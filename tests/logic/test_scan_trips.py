@@ -354,6 +354,39 @@ def test_a_pump_that_says_ok_and_goes_on_is_told_again_and_alarmed() -> None:
     assert rehearsal.conduct.views[-1].verdict.stop_done
 
 
+def test_a_pump_that_cannot_be_told_to_stop_is_alarmed_and_the_run_does_not_end() -> None:
+    rehearsal = running()
+    rehearsal.failing.add("PU-A")
+    rehearsal.sensors["PT-1"] = 9.0
+    rehearsal.run(20.0)
+    raised = [event for event in rehearsal.happened(EventKind.ALARM) if event.subject == "STOP-UNCONFIRMED"]
+    assert len(raised) == 1
+    assert rehearsal.end() is None
+    assert len(rehearsal.told("PU-A")) > 8  # tried for ever
+    rehearsal.failing.clear()
+    rehearsal.run(4.0)
+    assert rehearsal.end() is not None
+
+
+def test_a_valve_that_refuses_its_order_trips_as_well() -> None:
+    rehearsal = running()
+    rehearsal.failing.add("V-C")
+    rehearsal.conduct.want = sequence_demand(valves={"V-C": "collect"})
+    rehearsal.run(8.0)
+    assert [trip.subject for trip in trips(rehearsal)] == ["MISMATCH-V-C"]
+
+
+def test_the_trip_tells_what_was_really_done() -> None:
+    rehearsal = running()
+    for name in ("PU-A", "PU-B"):  # content not known: a quench cannot flush
+        rehearsal.pump(name).standby_mL = 3.0
+    rehearsal.sensors["TT-1"] = 80.0
+    rehearsal.run(4.0)
+    (trip,) = trips(rehearsal)
+    assert trip.fields["stop"] == "quench"
+    assert "so a flush was not possible and every pump was ordered to stop" in trip.text
+
+
 def test_a_hold_interlock_asks_for_a_hold_and_leaves_the_permit() -> None:
     warm = Interlock("WARM", "bed warm", (Condition(ConditionKind.HIGH, "TT-1", 65.0),), Stop.HOLD)
     rehearsal = Rehearsal(program_of(two_pump_rig(interlocks=(PRESSURE_HIGH, BED_HOT, warm))))

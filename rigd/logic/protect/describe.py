@@ -12,7 +12,7 @@ from rigd.logic.protect.faults import Faults
 from rigd.logic.protect.latch import LatchState
 from rigd.logic.protect.signals import Signals
 from rigd.model.events import Event, EventKind
-from rigd.model.orders import Request, Stop
+from rigd.model.orders import Request
 from rigd.model.protection import Condition, ConditionKind
 from rigd.model.samples import Quality, Sample
 
@@ -20,13 +20,6 @@ if TYPE_CHECKING:
     from rigd.logic.program import Program
 
 Fields = dict[str, str | float | int | bool]
-
-DID = {
-    Stop.CUT: "every pump was ordered to stop, the valves to rest and the baths to their safe temperature",
-    Stop.QUENCH: "the reagents were stopped and a flush with solvent was ordered, then a stop",
-    Stop.HOLD: "a hold was asked for",
-    Stop.NONE: "nothing was stopped",
-}
 
 
 class Words:
@@ -41,28 +34,28 @@ class Words:
         self._faults = faults
         self._now_ns = now_ns
 
-    def interlock(self, change: interlocks.Change, first_out: str) -> list[Event]:
-        """The events of one transition of an interlock: a trip has a TRIP event besides."""
-        found = change.interlock
-        watch = self._program.watches[change.causes[0]] if change.causes else None
-        cause = self.cause(watch) if watch is not None else change.note
+    def interlock(self, change: interlocks.Change) -> Event:
+        """The event of one transition of an interlock."""
+        found, cause = change.interlock, self._cause_of(change)
         fields: Fields = {"state": str(change.after), "from": str(change.before), "number": change.number}
         text = f"{found.id} ({found.title}): {_interlock_words(change)}{f', {cause}' if cause else ''}."
-        events = [Event(EventKind.INTERLOCK, found.id, self._now_ns, text, fields)]
-        if change.is_trip:
-            events.insert(0, self._trip(change, watch, cause, first_out))
-        return events
+        return Event(EventKind.INTERLOCK, found.id, self._now_ns, text, fields)
 
-    def _trip(self, change: interlocks.Change, watch: Watch | None, cause: str, first_out: str) -> Event:
-        found = change.interlock
+    def _cause_of(self, change: interlocks.Change) -> str:
+        return self.cause(self._program.watches[change.causes[0]]) if change.causes else change.note
+
+    def trip(self, change: interlocks.Change, first_out: str, did: str) -> Event:
+        """The event of a trip; ``did`` is what the rig was really made to do."""
+        found, cause = change.interlock, self._cause_of(change)
+        watch = self._program.watches[change.causes[0]] if change.causes else None
         do = found.response or "Find the cause before a reset."
         order = "first-out" if change.number == 1 else f"number {change.number} after {first_out}"
-        text = f"{found.title}: {cause}, so {DID[found.stop]} ({found.id}, {order}). {do}"
+        text = f"{found.title}: {cause}, so {did} ({found.id}, {order}). {do}"
         fields: Fields = {
             "first_out": first_out,
             "number": change.number,
             "stop": found.stop.name.lower(),
-            "did": DID[found.stop],
+            "did": did,
             "do": do,
             "cause": cause,
             **self._measured(watch),
@@ -146,7 +139,10 @@ class Words:
                 return f"{watch.tag} changes by {slope} {self._unit(watch)}, limit {condition.limit:g}"
             case ConditionKind.DEVIATION:
                 reference = self._signals.samples.get(condition.reference)
-                shown = "unknown" if reference is None else self._number(condition.reference, reference.value)
+                if reference is None or reference.quality is Quality.BAD:
+                    why = "never seen" if reference is None else str(reference.cause)
+                    return f"{condition.reference}, with which {watch.tag} is compared, cannot be believed ({why})"
+                shown = self._number(condition.reference, reference.value)
                 return f"{reads}, more than {condition.limit:g} away from {condition.reference} ({shown})"
             case ConditionKind.MISMATCH:
                 return f"{reads}, which is not what it was told"

@@ -80,7 +80,7 @@ def initial(program: Program, now_ns: int) -> ProtectState:
         interlocks.initial(program, now_ns),
         alarms.initial(program),
         ledger.initial(program),
-        stops.initial(program),
+        stops.initial(program, now_ns),
     )
 
 
@@ -125,6 +125,7 @@ class _Scan:
         self._gone: tuple[faults.Key, ...] = ()
         self._fresh: set[str] = set()
         self._urgent = False
+        self._trips: list[tuple[Words, interlocks.Change]] = []
         self._events: list[Event] = []
 
     def hear(self, intake: Intake) -> None:
@@ -193,7 +194,9 @@ class _Scan:
             return
         words = self._words()
         for change in tripped:
-            self._events += words.interlock(change, self._interlocks.first_out)
+            self._events.append(words.interlock(change))
+            if change.is_trip:
+                self._trips.append((words, change))
             if change.before is LatchState.BYPASSED is change.after and change.event is LatchEvent.DEMAND:
                 self._raise("BYPASS-DEMAND", f"{change.interlock.id} would have tripped but for its bypass")
         self._events += [words.alarm(change) for change in raised]
@@ -262,6 +265,8 @@ class _Scan:
         """Impose what must be imposed, and put the verdict into words for conduct."""
         scene = Scene(self._program, self._ledger, self._signals, self._memory, self._now_ns)
         stopping, events = stops.advance(scene, self._before.stopping, self._interlocks)
+        first_out = self._interlocks.first_out
+        self._events += [words.trip(change, first_out, stops.did(stopping)) for words, change in self._trips]
         self._events += events
         if stopping.overdue:
             names = ", ".join(stopping.overdue)
@@ -323,10 +328,13 @@ class _Scan:
         return False
 
     def _told(self, tag: str) -> Told | None:
-        """What the unit behind a feedback tag was told, and from when on its feedback must agree."""
+        """What the unit behind a feedback tag was told, and from when on its feedback must agree.
+
+        An order that the unit refused counts as well: it is not where it should be.
+        """
         unit, channel = self._program.carries.get(tag, ("", ""))
         aspect = _ASPECT_OF.get(channel)
-        told = None if aspect is None else self._memory.last(unit, aspect)
+        told = None if aspect is None else self._memory.told.get((unit, aspect))
         if told is None:
             return None
         base_ns = told.answered_ns if told.result is Result.DONE else told.order.t_ns + UNANSWERED_NS

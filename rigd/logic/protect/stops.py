@@ -32,6 +32,8 @@ PATIENCE_NS = 1_000_000_000
 
 START_UP = "START-UP"
 
+_CUT = "every pump was ordered to stop, the valves to rest and the baths to their safe temperature"
+
 _AT_REST = (PumpState.STOPPED, PumpState.STALLED, PumpState.EMPTY)
 
 
@@ -42,6 +44,7 @@ class Stopping:
     level: Stop
     source: str
     demand: Demand | None
+    since_ns: int
     flush: Flush | None = None
     failed: bool = False
     done: bool = False
@@ -50,9 +53,24 @@ class Stopping:
     due_ns: int = NEVER_NS
 
 
-def initial(program: Program) -> Stopping:
+def initial(program: Program, now_ns: int) -> Stopping:
     """Start-up is a trip: the end state of a cut is ordered, whatever the devices were doing."""
-    return Stopping(Stop.CUT, START_UP, rest(program, Authority.CUT, START_UP))
+    return Stopping(Stop.CUT, START_UP, rest(program, Authority.CUT, START_UP), now_ns)
+
+
+def did(stopping: Stopping) -> str:
+    """What the stop in force made the rig do, as a clause."""
+    match stopping.level:
+        case Stop.CUT:
+            return f"a flush was not possible and {_CUT}" if stopping.failed else _CUT
+        case Stop.QUENCH if stopping.flush is not None:
+            return "the reagents were stopped and a flush with solvent began, after which everything stops"
+        case Stop.QUENCH:
+            return f"{_CUT}, nothing having been delivered that needs a flush"
+        case Stop.HOLD:
+            return "a hold was asked for"
+        case _:
+            return "nothing was stopped"
 
 
 def rest(program: Program, authority: Authority, source: str, pumps: Mapping[str, PumpDemand] | None = None) -> Demand:
@@ -99,15 +117,15 @@ def _change(scene: Scene, stopping: Stopping, level: Stop, first_out: str, event
     match level:
         case Stop.CUT:
             events.append(_event(scene, level, source, "Cut: all pumps stop, valves go to rest, baths to safe."))
-            return Stopping(level, source, rest(scene.program, Authority.CUT, source))
+            return Stopping(level, source, rest(scene.program, Authority.CUT, source), scene.now_ns)
         case Stop.QUENCH:
             return _quench(scene, source, events)
         case Stop.HOLD:
             events.append(_event(scene, level, source, f"Hold asked for by {source}."))
-            return Stopping(level, source, None)
+            return Stopping(level, source, None, scene.now_ns)
         case _:
             events.append(_event(scene, level, "", "All interlocks are reset; nothing moves until a new start."))
-            return Stopping(level, "", None)
+            return Stopping(level, "", None, scene.now_ns)
 
 
 def _quench(scene: Scene, source: str, events: list[Event]) -> Stopping:
@@ -115,7 +133,7 @@ def _quench(scene: Scene, source: str, events: list[Event]) -> Stopping:
     if not any(scene.ledger.delivered.values()):
         text = "Quench: nothing has been delivered, so there is nothing to flush; pumps stop and valves go to rest."
         events.append(_event(scene, Stop.QUENCH, source, text))
-        return Stopping(Stop.QUENCH, source, rest(program, Authority.QUENCH, source))
+        return Stopping(Stop.QUENCH, source, rest(program, Authority.QUENCH, source), scene.now_ns)
     flush = flushing.begin(program, scene.ledger, scene.signals, scene.now_ns)
     if isinstance(flush, str):
         return _cut_instead(scene, source, flush, events)
@@ -123,12 +141,12 @@ def _quench(scene: Scene, source: str, events: list[Event]) -> Stopping:
     left_out = f" {', '.join(stays)} may hold reagent and cannot be flushed: stopped." if stays else ""
     text = f"Quench: reagents off, {flush.target_mL:.1f} mL of solvent by {', '.join(flush.rates)}.{left_out}"
     events.append(_event(scene, Stop.QUENCH, source, text))
-    return Stopping(Stop.QUENCH, source, rest(program, Authority.QUENCH, source), flush)
+    return Stopping(Stop.QUENCH, source, rest(program, Authority.QUENCH, source), scene.now_ns, flush)
 
 
 def _cut_instead(scene: Scene, source: str, why: str, events: list[Event]) -> Stopping:
     events.append(_event(scene, Stop.CUT, source, f"Cut instead of a quench: {why}."))
-    return Stopping(Stop.CUT, source, rest(scene.program, Authority.CUT, source), failed=True)
+    return Stopping(Stop.CUT, source, rest(scene.program, Authority.CUT, source), scene.now_ns, failed=True)
 
 
 def _flush_on(scene: Scene, stopping: Stopping, flush: Flush, events: list[Event]) -> Stopping:
@@ -162,12 +180,13 @@ def _confirm(scene: Scene, stopping: Stopping) -> Stopping:
             continue
         waiting = True
         told = scene.memory.last(name, Aspect.RATE)
-        if told is None or told.order.action is not Action.STOP:
-            continue
-        end_ns = told.order.t_ns + patience_ns(scene.program, name)
+        ordered = told is not None and told.order.action is Action.STOP
+        told_ns = told.order.t_ns if told is not None and ordered else stopping.since_ns
+        end_ns = told_ns + patience_ns(scene.program, name)
         if scene.now_ns >= end_ns:
-            again.add(name)
             overdue.append(name)
+            if ordered:  # an order that failed is repeated by arbitration
+                again.add(name)
         else:
             due_ns = min(due_ns, end_ns)
             overdue += [name] if name in stopping.overdue else []
