@@ -1,0 +1,166 @@
+"""Cost of one second of the plant: 300 cells, 6 species, 2 reactions.
+
+The floor is the same arithmetic as one compiled loop: the kernels that one second calls, with the arguments that it
+gives them, called again and again without any Python in between.
+"""
+
+from __future__ import annotations
+
+import time
+from collections.abc import Callable, Iterator
+from dataclasses import dataclass, replace
+from typing import Any
+from unittest.mock import patch
+
+import numpy as np
+from bench.figures import Figure, Scale, Target, median
+from fakes.sim_rigs import esterification, two_pump_rig
+
+from rigd.model.chemistry import Chemistry, RateLaw, Reaction, ReactionPlace, Species
+from rigd.model.orders import Action
+from rigd.model.rig import RigDefinition
+from rigd_sim.physics.bed import heat_bed
+from rigd_sim.physics.compiled import compiled
+from rigd_sim.physics.network import VOLUME, advance_pressures
+from rigd_sim.physics.transport import MOVED, transport_step
+from rigd_sim.plant import contents, flows, layout, thermal
+from rigd_sim.plant.rig_plant import RigPlant
+
+S = 1_000_000_000
+BED_SHARE = 0.35
+LINES = 14
+Call = tuple[Any, ...]
+
+
+@compiled
+def one_loop(n, moved, pressures, transport, heat):  # type: ignore[no-untyped-def]
+    """The floor: ``n`` seconds of pressures, transport with reactions, and heat of the bed."""
+    step = pressures[1]
+    for _ in range(n):
+        pressures[3][VOLUME, :] = 0.0
+        step = advance_pressures(pressures[0], step, *pressures[2:])
+        transport[3][MOVED, :] = moved
+        transport_step(*transport)
+        heat_bed(*heat)
+    return step
+
+
+def plant_figures(scale: Scale) -> Iterator[Figure]:
+    """One second in the middle of a run."""
+    seconds, rounds = scale.pick(3, 60, 120), scale.pick(1, 7, 15)
+    plant_us, floor_us = step_costs(300, seconds, rounds)
+    yield Figure(
+        "plant",
+        "plant, 1 s: 300 cells, 6 species, 2 reactions",
+        "us",
+        median(plant_us),
+        median(floor_us),
+        "same kernels, one compiled loop",
+        Target(ratio_max=2),
+        f"CPU time; median of {rounds} rounds of {seconds} s",
+    )
+
+
+def step_costs(cells: int, seconds: int, rounds: int, flow_mL_min: float = 0.5) -> tuple[list[float], list[float]]:
+    """CPU time per second of plant and per turn of the floor [us], in turn."""
+    plant = running_plant(bench_rig(), cells, flow_mL_min)
+    second = recorded_second(plant)
+    second.run(1)  # compiles
+    plant_us, floor_us = [], []
+    for _ in range(rounds):
+        plant_us.append(_cpu_us(lambda: _advance(plant, seconds)) / seconds)
+        floor_us.append(_cpu_us(lambda: second.run(seconds)) / seconds)
+    return plant_us, floor_us
+
+
+def bench_rig() -> RigDefinition:
+    """Two pumps with syringes that last, one column; six species and two reactions on the packing. Invented."""
+    chemistry = esterification()
+    second = Reaction(
+        "dehydration", {"ethanol": -2, "ether": 1, "water": 1}, RateLaw.POWER, ReactionPlace.CATALYST, 1e-5, 60.0, 90.0,
+        {"ethanol": 2}, heat_kJ_mol=-12.0,
+    )  # fmt: skip
+    more = (Species("ether", "diethyl ether", 74.12), Species("tracer", "tracer", 100.0))
+    six = Chemistry("six species", (*chemistry.species, *more), (*chemistry.reactions, second), "acid", "ester")
+    rig = two_pump_rig(six)
+    return replace(rig, pumps=tuple(replace(pump, stroke_mL=100.0, refill_rate_mL_min=800.0) for pump in rig.pumps))
+
+
+def running_plant(rig: RigDefinition, cells: int, flow_mL_min: float) -> RigPlant:
+    """A plant of about ``cells`` cells whose pumps deliver reagent into the warm column."""
+    bed = round(BED_SHARE * cells)
+    each = max(1, round((cells - bed) / LINES))
+    with patch.multiple(layout, CELLS_BED=cells - each * LINES, CELLS_LINE_MIN=each, CELLS_LINE_MAX=each):
+        plant = RigPlant(rig, 1)
+    assert int(plant.contents.cell_count.sum()) == cells
+    tell: Callable[[str, Action, float], str] = plant.tell
+    for valve, position in (("V-A", 1.0), ("V-B", 1.0)):
+        assert not tell(valve, Action.MOVE, position)
+    for pump in ("PU-A", "PU-B"):
+        assert not tell(pump, Action.FILL, 100.0)
+    tell("CH", Action.SET_TEMPERATURE, 60.0)
+    tell("CH", Action.CIRCULATE, 1.0)
+    plant.advance(30 * S)
+    for pump in ("PU-A", "PU-B"):
+        assert not tell(pump, Action.SWAP, 0.0)
+        assert not tell(pump, Action.DELIVER, flow_mL_min)
+    plant.advance(90 * S)
+    return plant
+
+
+@dataclass
+class Second:
+    """What one second of the plant gave to its kernels; arrays are copies and go on living in ``run``."""
+
+    moved: Any
+    pressures: Call
+    transport: Call
+    heat: Call
+
+    def run(self, seconds: int) -> None:
+        """The floor."""
+        one_loop(seconds, self.moved, self.pressures, self.transport, self.heat)
+
+
+def recorded_second(plant: RigPlant) -> Second:
+    """One second of a running plant, which must call each kernel once."""
+    calls: dict[str, list[Call]] = {"pressures": [], "transport": [], "heat": []}
+    copies: dict[int, Any] = {}
+
+    def noted(name: str, kernel: Callable[..., Any]) -> Callable[..., Any]:
+        def call(*arguments: Any) -> Any:
+            calls[name].append(tuple(_copied(argument, copies) for argument in arguments))
+            return kernel(*arguments)
+
+        return call
+
+    with (
+        patch.object(flows, "advance_pressures", noted("pressures", advance_pressures)),
+        patch.object(contents, "transport_step", noted("transport", transport_step)),
+        patch.object(thermal, "heat_bed", noted("heat", heat_bed)),
+    ):
+        _advance(plant, 1)
+    counts = {name: len(found) for name, found in calls.items()}
+    assert counts == {"pressures": 1, "transport": 1, "heat": 1}, counts
+    transport = calls["transport"][0]
+    return Second(transport[3][MOVED].copy(), calls["pressures"][0], transport, calls["heat"][0])
+
+
+def _copied(argument: Any, copies: dict[int, Any]) -> Any:
+    """A copy of an array, the same one for the same array."""
+    if not isinstance(argument, np.ndarray):
+        return argument
+    if id(argument) not in copies:
+        copies[id(argument)] = argument.copy()
+    return copies[id(argument)]
+
+
+def _advance(plant: RigPlant, seconds: int) -> None:
+    for _ in range(seconds):
+        plant.advance(plant.now_ns + S)
+
+
+def _cpu_us(act: Callable[[], None]) -> float:
+    started_s = time.process_time()
+    act()
+    return (time.process_time() - started_s) * 1e6
