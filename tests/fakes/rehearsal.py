@@ -104,6 +104,10 @@ class Rehearsal:
         """Report a link change with the next scan."""
         self._pending["links"].append(DeviceStatus(device, state, self.now_ns, identity=SIMULATED, **fields))  # type: ignore[arg-type]
 
+    def forget_link(self, device: str) -> None:
+        """Do not report this device with the next scan."""
+        self._pending["links"] = [status for status in self._pending["links"] if status.device != device]  # type: ignore[attr-defined]
+
     def link_as(self, device: str, identity: DeviceIdentity) -> None:
         """Report that another device answers."""
         self._pending["links"].append(DeviceStatus(device, LinkState.ONLINE, self.now_ns, identity=identity))

@@ -107,7 +107,7 @@ def test_age_makes_bad_at_the_declared_time_and_a_new_sample_heals(program: Prog
     assert "PT-1" not in aged
     state, aged = signals.grow_old(program, state, max(state.due_ns, S))
     assert aged["PT-1"].cause is QualityCause.STALE
-    assert aged["PT-2"].cause is QualityCause.NEVER_SEEN
+    assert "PT-2" not in state.samples  # still within its time of grace
     state, _ = signals.take(program, state, (Sample("PT-1", 1.0, 2 * S),), 2 * S)
     assert state.samples["PT-1"].quality is Quality.GOOD
     assert state.due_ns <= 3 * S
@@ -125,6 +125,15 @@ def test_the_time_to_look_again_is_never_late(program: Program) -> None:
         for name, last_ns in seen.items():
             stale = now_ns - last_ns >= program.stale_ns[name]
             assert (state.samples[name].quality is Quality.BAD) is stale
+
+
+def test_what_was_never_seen_is_bad_after_the_time_of_grace(program: Program) -> None:
+    state, aged = signals.grow_old(program, signals.initial(5 * S), 15 * S - 1)
+    assert aged == {}
+    assert state.due_ns == 15 * S
+    state, aged = signals.grow_old(program, state, 15 * S)
+    assert aged["PT-2"].cause is QualityCause.NEVER_SEEN
+    assert aged["PT-2"].quality is Quality.BAD
 
 
 def test_the_floor_of_a_paced_run_widens_the_age() -> None:

@@ -70,6 +70,19 @@ def test_reset_before_everything_was_heard_of_is_refused_by_name() -> None:
     assert "TT-1 has not been heard of yet" in answer.text
 
 
+def test_a_device_that_never_answers_is_named_after_the_time_of_grace() -> None:
+    rehearsal = Rehearsal(program_of())
+    rehearsal.silent.update(tag for tag in rehearsal.program.tags if tag.startswith("PU-A"))
+    rehearsal.forget_link("pump-A")
+    rehearsal.run(5.0)
+    assert "pump-A has not been heard of yet" in rehearsal.ask(Verb.RESET, "*").text
+    assert trips(rehearsal) == []
+    rehearsal.run(6.0)
+    assert rehearsal.snapshot()["interlocks"]["LINK-pump-A"] == "tripped active"
+    assert "LINK-pump-A (LINK-pump-A): its cause is still present" in rehearsal.ask(Verb.RESET, "*").text
+    assert trips(rehearsal) == []  # what the start-up finds is no first-out
+
+
 def test_overpressure_stops_every_pump_and_says_what_happened() -> None:
     rehearsal = running()
     rehearsal.sensors["PT-1"] = 8.42

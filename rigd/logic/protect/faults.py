@@ -11,7 +11,7 @@ from dataclasses import dataclass, field
 from typing import TYPE_CHECKING
 
 from rigd.logic.protect.conditions import Channel, Judge
-from rigd.logic.protect.signals import Signals, is_online
+from rigd.logic.protect.signals import Signals, grace_ns, is_online
 from rigd.logic.protect.timers import NEVER_NS
 from rigd.model.devices import DeviceIdentity, DeviceStatus
 from rigd.model.protection import ConditionKind
@@ -20,8 +20,6 @@ if TYPE_CHECKING:
     from rigd.logic.program import Program
 
 HOLD_NS = 1_000_000_000
-LINK_GRACE_NS = 10_000_000_000
-"""After the start a device has this long to answer for the first time."""
 
 Key = tuple[ConditionKind, str]
 
@@ -48,9 +46,9 @@ class Faults:
         return "" if fault is None else fault.detail
 
 
-def initial(now_ns: int) -> Faults:
+def initial(program: Program, now_ns: int) -> Faults:
     """No fault; links have their time of grace."""
-    return Faults(links_due_ns=now_ns + LINK_GRACE_NS)
+    return Faults(links_due_ns=now_ns + grace_ns(program))
 
 
 def report(faults: Faults, names: Iterable[tuple[str, str]], until_ns: int) -> Faults:

@@ -135,23 +135,28 @@ def _position(program: Program, valve: str, sample: Sample) -> str:
 
 
 def _count(program: Program, ledger: Ledger, memory: Memory, samples: Mapping[str, Sample], pump: str) -> Ledger:
-    read = [_value(program, samples, pump, channel) for channel in ("level", "standby", "delivered")]
-    level, standby, delivered = read
+    level = _value(program, samples, pump, "level")
+    standby = _value(program, samples, pump, "standby") or 0.0
+    delivered = _value(program, samples, pump, "delivered")
     if level is None or delivered is None:
         return ledger
-    standby = standby or 0.0
     before = ledger.counts.get(pump)
     if before is None or delivered < before.delivered_mL - RESTART_mL:
-        fresh = Count(level, standby, delivered, level + standby + delivered, Content.REAGENT, Content.REAGENT)
-        return replace(ledger, counts={**ledger.counts, pump: _emptied(program, pump, fresh)})
-    total = level + standby + delivered
-    drawn = total - before.total_mL if total - before.total_mL > QUANTUM_mL else 0.0
+        before = Count(level, standby, delivered, level + standby + delivered, Content.REAGENT, Content.REAGENT)
+    rise = level + standby + delivered - before.total_mL
+    drawn = rise if rise > QUANTUM_mL else 0.0
     out = max(0.0, delivered - before.delivered_mL)
-    count = _contents(program, pump, before, level, standby, _drawn(program, ledger, memory, pump))
-    count = replace(count, delivered_mL=max(delivered, before.delivered_mL), total_mL=before.total_mL + drawn)
-    counted = replace(ledger, counts={**ledger.counts, pump: count})
-    held = ledger.sources.get(pump)
-    return _book(counted, pump, held.last if held else None, drawn, out) if drawn or out else counted
+    active, other = _contents(before, level, standby, _drawn(program, ledger, memory, pump))
+    nothing_mL = EMPTY_FRACTION * program.pumps[pump].stroke_mL
+    count = Count(
+        level,
+        standby,
+        max(delivered, before.delivered_mL),
+        before.total_mL + drawn,
+        Content.EMPTY if level <= nothing_mL else active,
+        Content.EMPTY if standby <= nothing_mL else other,
+    )
+    return _book(ledger, pump, count, drawn, out)
 
 
 def _value(program: Program, samples: Mapping[str, Sample], pump: str, channel: str) -> float | None:
@@ -159,28 +164,32 @@ def _value(program: Program, samples: Mapping[str, Sample], pump: str, channel: 
     return None if sample is None or sample.quality is Quality.BAD else sample.value
 
 
-def _book(ledger: Ledger, pump: str, line: SupplyLine | None, drawn: float, out: float) -> Ledger:
-    vessels, used = dict(ledger.vessels), dict(ledger.used)
-    if line is not None and drawn:
-        vessels[line.vessel] = vessels.get(line.vessel, 0.0) - drawn
-        used[line.liquid] = used.get(line.liquid, 0.0) + drawn
-    if ledger.outlet:
-        vessels[ledger.outlet] = vessels.get(ledger.outlet, 0.0) + out
-    delivered = {**ledger.delivered, pump: ledger.delivered.get(pump, 0.0) + out}
-    return replace(ledger, vessels=vessels, used=used, delivered=delivered)
+def _book(ledger: Ledger, pump: str, count: Count, drawn: float, out: float) -> Ledger:
+    """Enter a pump's new count, what it drew and what it delivered."""
+    counts = {**ledger.counts, pump: count}
+    vessels, used, delivered = ledger.vessels, ledger.used, ledger.delivered
+    source = ledger.sources.get(pump)
+    if drawn and source is not None and source.last is not None:
+        line = source.last
+        vessels = {**vessels, line.vessel: vessels.get(line.vessel, 0.0) - drawn}
+        used = {**used, line.liquid: used.get(line.liquid, 0.0) + drawn}
+    if out:
+        delivered = {**delivered, pump: delivered.get(pump, 0.0) + out}
+        if ledger.outlet:
+            vessels = {**vessels, ledger.outlet: vessels.get(ledger.outlet, 0.0) + out}
+    return Ledger(vessels, used, delivered, counts, ledger.sources, ledger.outlet, ledger.shown)
 
 
-def _contents(program: Program, pump: str, before: Count, level: float, standby: float, drawn: Content) -> Count:
-    """What the syringes may hold after the move from the last counters to these."""
+def _contents(before: Count, level: float, standby: float, drawn: Content) -> tuple[Content, Content]:
+    """What the active and the standby syringe may hold after the move from the last counters to these."""
     active, other = before.active, before.standby
     if standby < before.standby_mL - QUANTUM_mL:  # only a change-over takes liquid from the standby syringe
-        active, other = other, active
-    elif standby > before.standby_mL + QUANTUM_mL:
-        other = _mixed(other, drawn)
-    elif level > before.level_mL + QUANTUM_mL:
-        active = _mixed(active, drawn)
-    after = replace(before, level_mL=level, standby_mL=standby, active=active, standby=other)
-    return _emptied(program, pump, after)
+        return other, active
+    if standby > before.standby_mL + QUANTUM_mL:
+        return active, _mixed(other, drawn)
+    if level > before.level_mL + QUANTUM_mL:
+        return _mixed(active, drawn), other
+    return active, other
 
 
 def _drawn(program: Program, ledger: Ledger, memory: Memory, pump: str) -> Content:
@@ -194,10 +203,3 @@ def _drawn(program: Program, ledger: Ledger, memory: Memory, pump: str) -> Conte
 
 def _mixed(held: Content, drawn: Content) -> Content:
     return drawn if held in (Content.EMPTY, drawn) else Content.REAGENT
-
-
-def _emptied(program: Program, pump: str, count: Count) -> Count:
-    nothing_mL = EMPTY_FRACTION * program.pumps[pump].stroke_mL
-    active = Content.EMPTY if count.level_mL <= nothing_mL else count.active
-    standby = Content.EMPTY if count.standby_mL <= nothing_mL else count.standby
-    return replace(count, active=active, standby=standby)

@@ -76,7 +76,7 @@ def initial(program: Program, now_ns: int) -> ProtectState:
     return ProtectState(
         signals.initial(now_ns),
         conditions.initial(program.watches),
-        faults.initial(now_ns),
+        faults.initial(program, now_ns),
         interlocks.initial(program, now_ns),
         alarms.initial(program),
         ledger.initial(program),

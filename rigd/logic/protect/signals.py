@@ -25,6 +25,9 @@ RING = 20
 MARGIN_NS = 1_000_000_000
 """A value at the very end of its span is uncertain for this long, then bad."""
 
+GRACE_NS = 10_000_000_000
+"""After the start every device has this long to answer and every tag to be seen. Until then nobody can reset."""
+
 _LARGEST = 1.7976931348623157e308
 
 
@@ -182,7 +185,7 @@ def grow_old(program: Program, signals: Signals, now_ns: int) -> tuple[Signals, 
         held = samples.get(tag)
         if held is not None and held.quality is Quality.BAD:
             continue
-        end_ns = (signals.started_ns if held is None else held.t_ns) + limit_ns
+        end_ns = signals.started_ns + grace_ns(program) if held is None else held.t_ns + limit_ns
         since_ns = signals.marginal.get(tag)
         if now_ns >= end_ns:
             samples[tag] = aged[tag] = _stale(tag, held, signals.started_ns)
@@ -191,6 +194,11 @@ def grow_old(program: Program, signals: Signals, now_ns: int) -> tuple[Signals, 
         else:
             due_ns = min(due_ns, end_ns if since_ns is None else min(end_ns, since_ns + MARGIN_NS))
     return replace(signals, samples=samples if aged else signals.samples, due_ns=due_ns), aged
+
+
+def grace_ns(program: Program) -> int:
+    """Time of grace after the start; ten times the allowance of a paced run."""
+    return max(GRACE_NS, 10 * program.options.stale_floor_ns)
 
 
 def _stale(tag: str, held: Sample | None, started_ns: int) -> Sample:
