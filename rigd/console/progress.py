@@ -61,7 +61,8 @@ def _line(snapshot: Mapping[str, Any], without: str) -> Text:
     stop = str(snapshot.get("stop", "none"))
     if stop not in ("none", ""):
         text.append(f"{stop.upper()} ", style="bold red")
-    text.append(str(phase.get("label") or phase.get("id") or snapshot.get("state", "")), style="green")
+    name = phase.get("point") or phase.get("label") or phase.get("id") or snapshot.get("state", "")
+    text.append(str(name), style="green")
     if isinstance(phase.get("progress"), int | float) and "bar" not in without:
         text.append(f" {bar(float(phase['progress']), 8)}", style="cyan")
     if campaign.get("total"):

@@ -2,8 +2,6 @@
 
 from __future__ import annotations
 
-import math
-
 from rich import box
 from rich.console import Group, RenderableType
 from rich.panel import Panel
@@ -80,7 +78,7 @@ def _points(run: RunData) -> Table:
         table.add_row(
             point.id if point.kind == "point" else f"{point.id} ({point.kind})",
             flow_words(dict(point.flows_mL_min)),
-            number(point.bed_degC if math.isfinite(point.bed_degC) else point.temperature_degC, 1),
+            number(point.bed_degC, 1),
             duration(point.residence_time_s),
             steady,
             percent(point.conversion, point.conversion_sd),

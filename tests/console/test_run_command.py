@@ -155,3 +155,40 @@ def test_a_damaged_journal_is_listed_and_reported_in_a_sentence(tmp_path, capsys
     assert "cannot be read" in capsys.readouterr().out
     assert call(["report", str(folder)]) == 1
     assert "Traceback" not in capsys.readouterr().err
+
+
+@pytest.fixture
+def terminal(monkeypatch):
+    """Someone sits at the terminal and answers these questions in turn."""
+
+    def sits(*answers: object) -> list[str]:
+        asked, waiting = [], iter(answers)
+
+        def answer(question: str, **_: object) -> object:
+            asked.append(question)
+            return next(waiting)
+
+        for stream in ("stdin", "stderr"):
+            monkeypatch.setattr(f"sys.{stream}.isatty", lambda: True, raising=False)
+        monkeypatch.setattr(click, "prompt", answer)
+        monkeypatch.setattr(click, "confirm", answer)
+        return asked
+
+    return sits
+
+
+def test_at_a_terminal_each_item_is_asked_for_and_the_name_signs(files, started, terminal):
+    real_ports(files)
+    asked = terminal("Ada", True, True, True, True)
+    assert run(files) == 0
+    assert started[0][2].signer == "Ada"
+    assert len(asked) == 1 + 3 + 1
+
+
+@pytest.mark.parametrize("answers", [("Ada", True, False), ("Ada", True, True, True, False)])
+def test_one_no_and_nothing_starts(files, started, terminal, answers, capsys):
+    real_ports(files)
+    terminal(*answers)
+    assert run(files) == 2
+    assert started == []
+    assert "nothing was started" in " ".join(capsys.readouterr().err.split())

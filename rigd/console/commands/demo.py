@@ -18,7 +18,7 @@ import click
 from rigd.console.output import Output, json_option
 from rigd.console.run_names import RUNS
 
-DEMO_PACE = 20.0
+DEMO_PACE = 25.0
 """Process seconds per second: the sweep ends within about two minutes."""
 SERVED_S = 30.0
 """Longest wait for the simulator to open its ports."""
