@@ -26,6 +26,7 @@ from rigd import __version__
 from rigd.adapters import run_folder
 from rigd.adapters.clock import PacedClock, boot_id, suspended_ns, wall_ns
 from rigd.adapters.door_server import DoorServer
+from rigd.adapters.guard_plan import helper, will_facts, with_folder
 from rigd.adapters.journal_sqlite import SqliteJournal
 from rigd.adapters.open_link import open_link
 from rigd.adapters.places import SIMULATED, Daemon, announce, door_path, simulated_ports, write_json
@@ -202,6 +203,9 @@ async def _live(live: Live, plan: dict[str, Any], clock: PacedClock, journal: Sq
     gc.freeze()  # what is there now stays: the collector need not look at it during scans
     end = await live.run()
     live.say_end(end)
+    for device in live.devices:
+        if device.identity is not None:
+            journal.note(f"identity.{device.spec.id}", json.dumps(asdict(device.identity)))
     await door.close(end.outcome, end.exit_code)
     try:
         await asyncio.to_thread(journal.close, end.outcome)
@@ -222,9 +226,9 @@ def _plan(
     python = [sys.executable, "-m"]
     helpers = []
     if rig.outside.mqtt is not None or rig.outside.channels:
-        helpers.append(_helper("front", [*python, "rigd.front", str(folder / "plan.json")], shown=False))
+        helpers.append(helper("front", [*python, "rigd.front", str(folder / "plan.json")], shown=False))
     if settings.progress:
-        helpers.append(_helper("progress", _with_folder(settings.progress, folder), shown=True))
+        helpers.append(helper("progress", with_folder(settings.progress, folder), shown=True))
     return {
         "run": folder.name,
         "folder": str(folder),
@@ -243,37 +247,11 @@ def _plan(
         "locks": list(locks),
         "control": [*python, "rigd.app", "control"],
         "helpers": helpers,
-        "after": _with_folder(settings.after, folder),
+        "after": with_folder(settings.after, folder),
         "first_s": FIRST_TICKET_S,
         "early_s": EARLY_S,
         "late_s": max(LATE_S, 5e-9 * rig.scan_ns),
-        "wills": [_will_facts(will) for will in last_wills(rig, drivers, links)],
-    }
-
-
-def _helper(name: str, argv: list[str], shown: bool) -> dict[str, Any]:
-    return {"name": name, "argv": argv, "shown": shown}
-
-
-def _with_folder(command: Sequence[str], folder: Path) -> list[str]:
-    return [word.replace("{folder}", str(folder)) for word in command]
-
-
-def _will_facts(will: LastWill) -> dict[str, Any]:
-    def frames(some: Sequence[Any]) -> list[dict[str, Any]]:
-        return [
-            {"request": one.request.hex(), "good_reply": one.good_reply.hex(), "timeout_s": one.reply_timeout_s}
-            for one in some
-        ]
-
-    link = will.link
-    port = {"port": link.port, "baud": link.baud, "data_bits": link.data_bits, "parity": link.parity}
-    return {
-        "device": will.device,
-        **port,
-        "stop_bits": link.stop_bits,
-        "frames": frames(will.frames),
-        "check": frames(will.check),
+        "wills": [will_facts(will) for will in last_wills(rig, drivers, links)],
     }
 
 

@@ -5,7 +5,6 @@ from __future__ import annotations
 import csv
 import math
 from bisect import bisect_right
-from collections.abc import Iterator
 from pathlib import Path
 
 from rigd.adapters.journal_reader import JournalReader, Series, TagInfo
@@ -80,9 +79,3 @@ def _cell(info: TagInfo, series: Series, now_ns: int) -> str:
     if info.labels and 0 <= value < len(info.labels):
         return info.labels[int(value)]
     return f"{value:.6g}"
-
-
-def rows(out: Path) -> Iterator[list[str]]:
-    """Read a written table back (tests, notebooks without a data frame library)."""
-    with out.open(newline="", encoding="utf-8") as file:
-        yield from csv.reader(file)

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping
 from functools import cache
 from importlib.metadata import EntryPoint, entry_points
 from typing import TypeVar
@@ -35,22 +34,6 @@ def plant_maker(name: str = "simulated") -> PlantMaker:
 def simulator_maker(name: str = "simulated") -> SimulatorMaker:
     """The simulator registered as ``name``."""
     return _load(SIMULATORS, name, SimulatorMaker)
-
-
-class InstalledFamilies(Mapping[str, DriverFamily]):
-    """All driver families by name; each is loaded when it is first asked for, so that a broken stranger's package does
-    not stop a rig that does not use it."""
-
-    def __getitem__(self, name: str) -> DriverFamily:
-        if name not in _entries(DRIVERS):
-            raise KeyError(name)
-        return driver_family(name)
-
-    def __iter__(self) -> Iterator[str]:
-        return iter(_entries(DRIVERS))
-
-    def __len__(self) -> int:
-        return len(_entries(DRIVERS))
 
 
 @cache

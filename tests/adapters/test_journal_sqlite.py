@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import csv
 import math
 import os
 import signal
@@ -15,7 +16,7 @@ from pathlib import Path
 import pytest
 
 from rigd.adapters import journal_sqlite
-from rigd.adapters.journal_export import events_csv, export_csv, rows
+from rigd.adapters.journal_export import events_csv, export_csv
 from rigd.adapters.journal_reader import JournalReader
 from rigd.adapters.journal_sqlite import SqliteJournal
 from rigd.model.devices import DeviceIdentity, DeviceStatus, LinkState
@@ -248,7 +249,8 @@ def test_export_has_units_in_the_header_and_words_for_positions(tmp_path: Path) 
         journal.decided(number, [], [phase] if number == 1 else [])
     journal.close("done")
     assert export_csv(tmp_path, tmp_path / "out.csv") == 5
-    table = list(rows(tmp_path / "out.csv"))
+    with (tmp_path / "out.csv").open(newline="", encoding="utf-8") as file:
+        table = list(csv.reader(file))
     assert table[0] == ["time [s]", "UTC", "simulated", "phase", "point", "PT-1 [bar]", "V-A.position"]
     assert [row[5] for row in table[1:]] == ["", "1.125", "2.125", "", "4.125"]
     assert [row[6] for row in table[1:]] == ["", "b", "a", "b", "a"]
