@@ -203,9 +203,7 @@ def charged(plant: RigPlant, species: str, mol_m3: float, mL: float = 50.0) -> N
     plant.advance(plant.now_ns + round((mL / 8.0 * 60.0 + 5.0) * S_NS))
     for name in ("PU.syringe1", "PU.out", "COL.in"):
         contents.node_c[layout.node_index[name], column] = mol_m3
-    edge = layout.edge_index["L-1"]
-    first = int(contents.cell_start[edge])
-    contents.cells[first : first + layout.edges[edge].cells + 1, column] = mol_m3
+    contents.cells[contents.slots(layout.edge_index["L-1"]), column] = mol_m3
 
 
 def outlet(plant: RigPlant, species: str) -> float:

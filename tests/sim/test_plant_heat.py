@@ -74,7 +74,8 @@ def test_power_off_cools_to_the_room() -> None:
 def test_liquid_approaches_the_jacket_as_a_jacketed_plug(monkeypatch: pytest.MonkeyPatch) -> None:
     """T(L) = Tj + (T0 - Tj) exp(-NTU), NTU = UA/(m cp): steady profile of the bed at 4 mL/min.
 
-    Axial conduction is part of the plant and not of the closed form: 2 % of the driving difference is allowed. The unjacketed ends, which cool the outlet by 1 K here, are switched off.
+    Axial conduction is part of the plant and not of the closed form: 2 % of the driving difference is allowed. The
+    unjacketed ends, which cool the outlet by 1 K here, are switched off.
     """
     monkeypatch.setattr(thermal, "END_LOSS_W_K", 0.0)
     plant = hot(20.0)

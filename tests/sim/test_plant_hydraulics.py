@@ -235,7 +235,7 @@ def test_gel_bed_story() -> None:
     Common practice: pack swollen and leave room. Polystyrene gel, toluene: 5.3 mL/g against 1 dry (from memory, 15 %).
     """
     gel = Packing("gel, 1 % cross-linked", True, 0.075, 0.38, 0.4, swelling=5.3, swell_s=120.0)
-    drops = {}
+    drops: dict[str, list[float]] = {}
     for story, truth in (("dry", {"COL.packed_dry": 1.0}), ("swollen", {"COL.headspace": 0.15})):
         rig = column_rig(tracer(), gel)
         rig = replace(rig, simulation=replace(rig.simulation, truth=truth))

@@ -142,7 +142,7 @@ def test_first_order_lag_of_a_temperature_sensor() -> None:
     plant.advance(S_NS)
     sensor = plant.instruments.by_tag["TT-1"]
     bed = plant.contents.beds["COL"]
-    plant.thermal.advance = lambda *_: None  # type: ignore[method-assign,assignment]
+    plant.thermal.advance = lambda *_: None  # type: ignore[method-assign]
     plant.contents.temperature[bed.start : bed.start + bed.cells] += 10.0
     plant.advance(4 * S_NS)
     assert sensor.shown == pytest.approx(22.0 + 10.0 * -math.expm1(-1.0), abs=1e-6)

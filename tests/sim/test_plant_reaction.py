@@ -138,11 +138,11 @@ def test_rate_per_gram_is_mass_over_liquid() -> None:
 
 def _lines(plant: RigPlant, feed: NDArray[np.float64], k1: float, k2: float, flow: float, until: float) -> float:
     """Outlet of C after a step feed, by an independent method of lines: 400 cells, central differences, scipy BDF."""
-    edge = plant.layout.edge_index["COL"]
+    bed = plant.contents.beds["COL"]
     n = 400
-    volume = plant.layout.edges[edge].volume
+    volume = plant.layout.edges[bed.edge].volume
     q = flow * 1e-6 / 60
-    pe = q / plant.contents.exchange[edge] * plant.layout.edges[edge].cells
+    pe = q / plant.contents.exchange[bed.kernel] * bed.cells
     dx = 1.0 / n
 
     def slope(_t: float, y: NDArray[np.float64]) -> NDArray[np.float64]:

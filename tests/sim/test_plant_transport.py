@@ -34,8 +34,8 @@ def started(bead_mm: float, k_per_s: float = 0.0, bead_liquid: float = 0.0) -> t
 
 def peclet(plant: RigPlant) -> float:
     """Pe of the column from the dispersion that the plant itself uses: Q n / (D A / dx)."""
-    edge = plant.layout.edge_index["COL"]
-    return float(FLOW_M3_S / plant.contents.exchange[edge] * plant.layout.edges[edge].cells)
+    bed = plant.contents.beds["COL"]
+    return float(FLOW_M3_S / plant.contents.exchange[bed.kernel] * bed.cells)
 
 
 def breakthrough(plant: RigPlant, tau: float, start_ns: int, until: float = 3.0, step: float = 0.02) -> Curve:
@@ -114,8 +114,8 @@ def test_plug_flow_front_stays_within_two_cells(monkeypatch: pytest.MonkeyPatch)
     monkeypatch.setattr(plant.contents, "disperse", lambda flow: plant.contents.exchange.fill(0.0))
     plant.advance(start + round(0.9 * tau * S_NS))
     edge = plant.layout.edge_index["COL"]
-    first, cells = int(plant.contents.cell_start[edge]), plant.layout.edges[edge].cells
-    profile = plant.contents.cells[first : first + cells + 1, plant.contents.species.index("A")] / 1000.0
+    cells = plant.layout.edges[edge].cells
+    profile = plant.contents.cells[plant.contents.slots(edge), plant.contents.species.index("A")] / 1000.0
     assert np.count_nonzero((profile > 0.001) & (profile < 0.999)) <= 2
     assert profile.sum() == pytest.approx(0.9 * cells, abs=1.0)
 

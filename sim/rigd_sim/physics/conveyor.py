@@ -99,6 +99,39 @@ def disperse(cells: Floats, s: int, n: int, v: float, fill: float, exchange: flo
 
 
 @inner
+def _give(cells: Floats, s: int, n: int, v: float, fill: float, p: int, k: int, amount: float) -> None:
+    """Add ``amount`` (may be negative) to place ``p``: by volume if it gains, by content if it loses."""
+    head = fill / v
+    up = cells[s + p, k]
+    down = cells[s + p + 1, k]
+    share = head
+    if amount < 0.0:
+        share = head * up / (head * up + (1.0 - head) * down)
+    held_up = fill if p == 0 else v
+    held_down = v - fill if p == n - 1 else v
+    if held_up > 0.0:
+        cells[s + p, k] = up + share * amount / held_up
+    if held_down > 0.0:
+        cells[s + p + 1, k] = down + (1.0 - share) * amount / held_down
+
+
+@inner
+def exchange_rings(cells: Floats, s1: int, fill1: float, s2: int, fill2: float, n: int, v: float, k_dt: float) -> None:
+    """Radial diffusion between two rings of a tube, place by place; ``k_dt`` is rate times step. Exact for a pair."""
+    share = 0.5 * (1.0 - np.exp(-2.0 * k_dt)) * v
+    h1 = fill1 / v
+    h2 = fill2 / v
+    for p in range(n):
+        for k in range(cells.shape[1]):
+            inside = h1 * cells[s1 + p, k] + (1.0 - h1) * cells[s1 + p + 1, k]
+            outside = h2 * cells[s2 + p, k] + (1.0 - h2) * cells[s2 + p + 1, k]
+            moved = share * (inside - outside)
+            if moved != 0.0:
+                _give(cells, s1, n, v, fill1, p, k, -moved)
+                _give(cells, s2, n, v, fill2, p, k, moved)
+
+
+@inner
 def mix(i: int, node: Floats, c: Floats, amount: Floats, work: Floats) -> None:
     """Stirred node ``i`` over one step of constant flows: update volume and ``c``, mean outlet to ``work[0]``.
 

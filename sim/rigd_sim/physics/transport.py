@@ -10,13 +10,15 @@ import numpy as np
 
 from rigd_sim.physics.bed import exchange_beads, react_bed
 from rigd_sim.physics.compiled import Floats, Ints, compiled, inner
-from rigd_sim.physics.conveyor import disperse, mix, push_backward, push_forward
+from rigd_sim.physics.conveyor import disperse, exchange_rings, mix, push_backward, push_forward
 from rigd_sim.physics.reaction import EA_OVER_R, K_REF, ON_BED, T_REF, react
 
 FROM, TO, CELLS, START, LINK_ROWS = 0, 1, 2, 3, 4
 """Rows of ``link`` (integers): end nodes, cells, first slot of each edge."""
-CELL_VOLUME, FILL, MOVED, EXCHANGE, EDGE_ROWS = 0, 1, 2, 3, 4
-"""Rows of ``edge``: cell volume, fill of the first slot [m3], volume to move [m3], D A / dx [m3/s]."""
+CELL_VOLUME, FILL, MOVED, EXCHANGE, RADIAL, EDGE_ROWS = 0, 1, 2, 3, 4, 5
+"""Rows of ``edge``: cell volume, fill of the first slot [m3], volume to move [m3], D A / dx [m3/s], exchange with
+the next
+edge as the next ring of the same tube [1/s]."""
 HELD, INFLOW, OUTFLOW, NODE_ROWS = 0, 1, 2, 3
 """Rows of ``node``: volume [m3] and, for one step, what enters and leaves."""
 ENDLESS, WAITING, DONE, MARK_ROWS = 0, 1, 2, 3
@@ -164,6 +166,11 @@ def transport_step(
             if edge[EXCHANGE, e] > 0.0:
                 s, n, v = link[START, e], link[CELLS, e], edge[CELL_VOLUME, e]
                 disperse(cells, s, n, v, edge[FILL, e], edge[EXCHANGE, e] * part, work)
+            if edge[RADIAL, e] > 0.0:
+                exchange_rings(
+                    cells, link[START, e], edge[FILL, e], link[START, e + 1], edge[FILL, e + 1], link[CELLS, e],
+                    edge[CELL_VOLUME, e], edge[RADIAL, e] * part,
+                )  # fmt: skip
         for b in range(bed.shape[1]):
             e = bed[EDGE, b]
             s, n, v = link[START, e], link[CELLS, e], edge[CELL_VOLUME, e]

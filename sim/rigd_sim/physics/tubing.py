@@ -40,3 +40,31 @@ def development(diffusivity: float, residence_time: float, diameter: float) -> f
 def pure_convection_step(theta: float) -> float:
     """F(theta) of laminar flow without diffusion: 1 - 1/(4 theta^2) for theta > 1/2."""
     return 0.0 if theta <= 0.5 else 1.0 - 0.25 / theta**2
+
+
+RINGS = 4
+
+
+def ring_velocities(rings: int = RINGS) -> list[float]:
+    """Mean velocity of each of ``rings`` of equal area, inside first, over the mean: 2 (1 - r^2/R^2) of laminar
+    flow."""
+    return [2.0 * (1.0 - (i + 0.5) / rings) for i in range(rings)]
+
+
+def ring_exchange(diffusivity: float, diameter: float, rings: int = RINGS) -> list[float]:
+    """Exchange rate of each ring with the next one outward [1/s], per volume of one ring.
+
+    Radial diffusion in s = r^2/R^2: dc/dt = 4 D/R^2 d/ds (s dc/ds), finite volumes, and one common factor that
+    makes the
+    long-time dispersion of the rings exactly Taylor's u^2 R^2/(48 D). With no time to diffuse the rings are pure
+    convection in ``rings`` steps; so one model covers the whole range, and ``development`` says where in it a tube is.
+    """
+    radius = diameter / 2.0
+    plain = [4.0 * diffusivity / radius**2 * (i + 1) / rings * rings**2 for i in range(rings - 1)]
+    # long-time dispersion of the plain rings: flux of (v - 1) through each boundary, squared, over its exchange
+    passed, total = 0.0, 0.0
+    for velocity, rate in zip(ring_velocities(rings), plain, strict=False):
+        passed += velocity - 1.0
+        total += passed**2 / rate
+    wanted = radius**2 / (48.0 * diffusivity)
+    return [rate * total / rings / wanted for rate in plain]

@@ -31,7 +31,7 @@ from rigd_sim.physics.reaction import (
     T_REF,
 )
 from rigd_sim.physics.transport import EDGE_ROWS, LINK_ROWS, MARK_ROWS, NODE_ROWS, transport_step
-from rigd_sim.physics.tubing import area, taylor_aris
+from rigd_sim.physics.tubing import area, ring_exchange, ring_velocities
 from rigd_sim.plant.layout import Layout
 
 LAWS = {RateLaw.POWER: POWER, RateLaw.REVERSIBLE: REVERSIBLE, RateLaw.LHHW: LHHW}
@@ -86,10 +86,10 @@ def _equilibrium(reaction: Reaction) -> float:
 
 
 class Bed:
-    """One column's places: index of its edge, first place, heat and exchange figures."""
+    """One column's places: its edge in layout and kernel, first place, heat and exchange figures."""
 
-    def __init__(self, column: Column, edge: int, start: int, cells: int) -> None:
-        self.column, self.edge, self.start, self.cells = column, edge, start, cells
+    def __init__(self, column: Column, edge: int, kernel: int, start: int, cells: int) -> None:
+        self.column, self.edge, self.kernel, self.start, self.cells = column, edge, kernel, start, cells
         bore, length = column.bore_mm * 1e-3, column.length_mm * 1e-3
         packing = column.packing
         self.section, self.length = area(bore), length
@@ -123,22 +123,38 @@ class Contents:
         self._scratch = (np.zeros((len(layout.nodes), self.width)), np.zeros((8, wide)))
 
     def _make_edges(self) -> None:
-        """Tables of the transport kernel; the attributes are views into them."""
+        """Tables of the transport kernel; the attributes are views into them.
+
+        A tube is several kernel edges, one per ring; ``owner`` is the layout edge of each and ``share`` its part of
+        the flow. ``pending`` is per layout edge, ``first`` the first kernel edge of each.
+        """
         edges = self.layout.edges
-        self.link = np.zeros((LINK_ROWS, len(edges)), dtype=np.int64)
-        self.edge = np.zeros((EDGE_ROWS, len(edges)))
+        self.pending = np.zeros(len(edges))
+        self.owner = np.array([e for e, edge in enumerate(edges) for _ in range(edge.rings)], dtype=np.int64)
+        self.first = np.searchsorted(self.owner, np.arange(len(edges)))
+        count = len(self.owner)
+        self.link = np.zeros((LINK_ROWS, count), dtype=np.int64)
+        self.edge = np.zeros((EDGE_ROWS, count))
         self.ea, self.eb, self.cell_count, self.cell_start = self.link
-        self.cell_volume, self.fill, self.pending, self.exchange = self.edge
-        self.ea[:], self.eb[:] = [e.a for e in edges], [e.b for e in edges]
-        self.cell_count[:] = [e.cells for e in edges]
+        self.cell_volume, self.fill, self.moved, self.exchange, self.radial = self.edge
+        self.share = np.concatenate([np.array(ring_velocities(e.rings)) / e.rings for e in edges])
+        for i, e in enumerate(self.owner):
+            edge = edges[e]
+            self.ea[i], self.eb[i], self.cell_count[i] = edge.a, edge.b, edge.cells
+            self.cell_volume[i] = edge.volume / edge.cells / edge.rings if edge.cells else 0.0
         slots = np.where(self.cell_count > 0, self.cell_count + 1, 0)
         self.cell_start[1:] = np.cumsum(slots)[:-1]
-        self.cell_volume[:] = [e.volume / e.cells if e.cells else 0.0 for e in edges]
         self.cells = np.zeros((int(slots.sum()), self.width))
         self._long = np.flatnonzero(self.cell_count)
-        coarse = np.array([SUPPLY_COARSENESS if e.supply else 1.0 for e in edges])
+        coarse = np.array([SUPPLY_COARSENESS if edges[e].supply else float(edges[e].rings) for e in self.owner])
         self._least = (self.cell_volume * coarse)[self._long]
-        self._spread = SMEARING**0.5 * np.array([e.volume for e in edges])[self._long]
+        self._spread = SMEARING**0.5 * (self.cell_volume * self.cell_count)[self._long]
+
+    def slots(self, e: int) -> slice:
+        """Rows of ``cells`` that belong to layout edge ``e``, all rings."""
+        i = int(self.first[e])
+        rings = self.layout.edges[e].rings
+        return slice(int(self.cell_start[i]), int(self.cell_start[i]) + rings * (int(self.cell_count[i]) + 1))
 
     def _make_nodes(self, rig: RigDefinition) -> None:
         nodes = self.layout.nodes
@@ -154,7 +170,8 @@ class Contents:
         self._vessels = [
             (self.layout.node_index[v.id], v.id, v.capacity_mL * ML_M3) for v in self.layout.vessels.values()
         ]
-        self._bottles = [(i, np.flatnonzero(self.ea == i)) for i, _, _ in self._vessels]
+        starts = np.array([e.a for e in self.layout.edges])
+        self._bottles = [(i, np.flatnonzero(starts == i)) for i, _, _ in self._vessels]
         for vessel in rig.vessels:
             if vessel.liquid:
                 self.node_c[self.layout.node_index[vessel.id]] = self.composition(rig, vessel.liquid)
@@ -177,10 +194,10 @@ class Contents:
         for column in self.layout.columns.values():
             edge = self.layout.edge_index[column.id]
             cells = self.layout.edges[edge].cells
-            self.beds[column.id] = Bed(column, edge, start, cells)
+            self.beds[column.id] = Bed(column, edge, int(self.first[edge]), start, cells)
             start += cells
         beds = list(self.beds.values())
-        self.bed = np.array([[b.edge for b in beds], [b.start for b in beds]], dtype=np.int64)
+        self.bed = np.array([[b.kernel for b in beds], [b.start for b in beds]], dtype=np.int64)
         self.beads = np.tile(self.cells[0], (start, 1)) if start else np.zeros((0, self.width))
         radius = [b.column.packing.bead_diameter_mm * 0.5e-3 for b in beds]
         rates = [bead_rate(BEAD_DIFFUSION_SHARE * self.diffusivity, r) for r in radius]
@@ -220,21 +237,17 @@ class Contents:
         return SOLVENTS[self.solvents[0]]
 
     def _make_dispersion(self) -> None:
-        """Taylor-Aris for the tubes, D (1 + u^2 d^2/(192 D^2)) A/dx, as two numbers per edge: rest and per flow^2."""
-        self._at_rest = np.zeros(len(self.layout.edges))
-        self._per_flow2 = np.zeros(len(self.layout.edges))
+        """Tubes: molecular diffusion along each ring, radial exchange between rings (constants of the tube)."""
         for e, edge in enumerate(self.layout.edges):
             if edge.cells and edge.kind == "line":
-                section, dx = edge.volume / edge.length, edge.length / edge.cells
-                unit = taylor_aris(self.diffusivity, 1.0 / section, edge.diameter) - self.diffusivity
-                self._at_rest[e] = self.diffusivity * section / dx
-                self._per_flow2[e] = unit * section / dx
+                i = int(self.first[e])
+                rings = slice(i, i + edge.rings)
+                section, dx = edge.volume / edge.length / edge.rings, edge.length / edge.cells
+                self.exchange[rings] = self.diffusivity * section / dx
+                self.radial[i : i + edge.rings - 1] = ring_exchange(self.diffusivity, edge.diameter, edge.rings)
 
     def disperse(self, flow: Floats) -> None:
-        """Set the dispersion coefficients from the flows [m3/s] of the last step."""
-        np.multiply(flow, flow, out=self.exchange)
-        self.exchange *= self._per_flow2
-        self.exchange += self._at_rest
+        """Set the dispersion coefficients of the beds from the flows [m3/s] of the last step."""
         fluid = self.fluid()
         for bed in self.beds.values():
             rho, mu = fluid.density(self.room_K), fluid.viscosity(self.room_K)
@@ -242,7 +255,7 @@ class Contents:
             superficial = abs(float(flow[bed.edge])) / bed.section
             re = rho * superficial * bed.column.packing.bead_diameter_mm * 1e-3 / mu
             coefficient = chung_wen(re, mu, rho) + TORTUOUS * self.diffusivity
-            self.exchange[bed.edge] = coefficient * edge.volume / edge.length / (edge.length / edge.cells)
+            self.exchange[bed.kernel] = coefficient * edge.volume / edge.length / (edge.length / edge.cells)
 
     def _parts(self, dt: float) -> int:
         """How many parts the pending volumes must be carried in.
@@ -250,7 +263,7 @@ class Contents:
         A part of volume dV smears a front by dV^2/12. It may be one cell of an edge, or as much as keeps that below
         ``SMEARING``/12 of the variance that dispersion makes in the edge anyway, about V^2/(1 + Pe/2).
         """
-        moved = np.abs(self.pending[self._long])
+        moved = np.abs(self.moved[self._long])
         peclet = moved / dt * self.cell_count[self._long] / (self.exchange[self._long] + 1e-30)
         allowed = np.maximum(self._least, self._spread / np.sqrt(1.0 + 0.5 * peclet))
         return int(min(max(math.ceil(float((moved / allowed).max())), 1), PARTS_MAX))
@@ -258,6 +271,7 @@ class Contents:
     def advance(self, dt: float) -> None:
         """Carry the pending volumes through, react and disperse over ``dt``; pending is then zero."""
         k = self.kinetics
+        np.multiply(self.pending[self.owner], self.share, out=self.moved)
         parts = self._parts(dt)
         transport_step(
             dt, parts, self.link, self.edge, self.cells, self.node, self.node_c, self.mark, self.bed, self.bed_rate,
@@ -320,7 +334,7 @@ class Contents:
             own[self.eb[e]] += half
         for pairs in self.layout.syringes.values():  # gas in a syringe yields to the pressure at the pump's outlet
             for pair in pairs:
-                own[self.eb[pair.deliver]] += own[pair.node]
+                own[self.layout.edges[pair.deliver].b] += own[pair.node]
         return own
 
     def hide(self, vessel: str, hidden: bool) -> None:

@@ -99,8 +99,7 @@ class Flows:
         contents = self.contents
         if len(contents.solvents) == 1:
             return SOLVENTS[contents.solvents[0]].viscosity(t_K)
-        n, s = int(contents.cell_count[e]), int(contents.cell_start[e])
-        mean = contents.cells[s : s + n + 1].mean(axis=0)
+        mean = contents.cells[contents.slots(e)].mean(axis=0)
         return mixture_viscosity(contents.solvent_of(mean) or {contents.solvents[0]: 1.0}, t_K)
 
     def _update_bed(self, bed: Bed, many: bool) -> None:

@@ -8,12 +8,12 @@ from typing import TypeVar
 
 from rigd.model.rig import Column, End, Line, Pump, RigDefinition, Vessel, VesselRole
 from rigd_sim.physics.constants import ATMOSPHERE_PA, BAR_PA, ML_M3
-from rigd_sim.physics.tubing import area
+from rigd_sim.physics.tubing import RINGS, area
 
 LIQUID_COMPRESSIBILITY_PER_PA = 1e-9
 """About 1e-4 per bar with the tube wall: common practice for organic liquids, no source."""
 CELLS_TARGET = 220
-CELLS_LINE_MIN, CELLS_LINE_MAX = 4, 40
+CELLS_LINE_MIN, CELLS_LINE_MAX = 6, 40
 CELLS_BED = 100
 BARREL_NODE_M3 = 20e-9
 JOINT_NODE_M3 = 1e-10
@@ -63,6 +63,7 @@ class Edge:
     conductance: float = 0.0
     gates: tuple[tuple[str, str], ...] = ()  # (valve, position) that must all be open
     supply: bool = False
+    rings: int = 1
 
 
 @dataclass(slots=True)
@@ -204,6 +205,7 @@ def _line_edge(layout: Layout, line: Line, cell: float) -> Edge:
     return Edge(
         line.id, _end_node(layout, line.start, False), _end_node(layout, line.end, True), "line", volume, cells,
         line.bore_mm * 1e-3, line.length_mm * 1e-3, gates=gates, supply=_is_supply(layout, line),
+        rings=RINGS,
     )  # fmt: skip
 
 
