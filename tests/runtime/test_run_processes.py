@@ -47,7 +47,6 @@ class Bench:
         command = [sys.executable, "-m", "rigd", "sim", str(RIG), "--pace", f"{PACE:g}", "--quiet"]
         self.sim = subprocess.Popen(command, env=self.env)
         self._started: list[subprocess.Popen[str]] = []
-        wait(lambda: (self.meeting / "ports.json").exists(), 30)
 
     def start(self) -> subprocess.Popen[str]:
         command = [sys.executable, "-c", START, str(RIG), str(RECIPE), f"{PACE:g}", str(self.runs)]
@@ -106,8 +105,11 @@ def child_of(pid: int) -> int:
 @pytest.fixture
 def bench(tmp_path: Path) -> Iterator[Bench]:
     bench = Bench(tmp_path)
-    yield bench
-    bench.close()
+    try:
+        wait((bench.meeting / "ports.json").exists, 90)  # a first start compiles the physics
+        yield bench
+    finally:
+        bench.close()
 
 
 @pytest.mark.parametrize(("number", "seconds"), [(signal.SIGKILL, 1.0), (signal.SIGSTOP, 2.0)])
