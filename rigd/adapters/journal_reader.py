@@ -4,10 +4,8 @@ from __future__ import annotations
 
 import json
 import sqlite3
-from collections.abc import Iterable, Iterator
+from collections.abc import Iterable, Iterator, Sequence
 from dataclasses import dataclass
-from itertools import groupby
-from operator import itemgetter
 from pathlib import Path
 from types import TracebackType
 from typing import Any, Self
@@ -84,14 +82,25 @@ class JournalReader:
         for segment in self._segments:
             segment.close()
 
-    def scans(self) -> Iterator[ScanRecord]:
-        """All scans in order. A scan that was recorded twice, around a failure of the disk, comes once."""
-        last = 0
+    def scans(self, after: int = 0) -> Iterator[ScanRecord]:
+        """All scans in order, or those with a number above ``after``. A scan that was recorded twice, around a failure
+        of the disk, comes once."""
+        last = after
         for segment in self._segments:
-            for record in self._segment_scans(segment):
+            for record in self._segment_scans(segment, after):
                 if record.number > last:
                     last = record.number
                     yield record
+
+    def span(self) -> tuple[int, int, int]:
+        """Number of the last scan, process time of the first and of the last [ns]; zeros for an empty journal."""
+        try:
+            heads = [segment.execute(f"{_NOW} ORDER BY number LIMIT 1").fetchone() for segment in self._segments]
+            tails = [segment.execute(f"{_NOW} ORDER BY number DESC LIMIT 1").fetchone() for segment in self._segments]
+        except sqlite3.DatabaseError as error:
+            raise JournalError(f"{self.path} is damaged: {error}") from error
+        heads, tails = [row for row in heads if row], [row for row in tails if row]
+        return (tails[-1][0], heads[0][1], tails[-1][1]) if heads else (0, 0, 0)
 
     def events(self, *kinds: EventKind) -> list[Event]:
         """All events, or those of some kinds, in order."""
@@ -139,50 +148,82 @@ class JournalReader:
         except sqlite3.DatabaseError as error:
             raise JournalError(f"{self.path} is damaged: {error}") from error
 
-    def _segment_scans(self, segment: sqlite3.Connection) -> Iterator[ScanRecord]:
-        samples = _Grouped(segment, "SELECT scan, tag, t_ns, value, quality, cause, raw FROM samples ORDER BY rowid")
-        inputs = _Grouped(segment, "SELECT scan, kind, body FROM inputs ORDER BY rowid")
-        orders = _Grouped(
-            segment, "SELECT scan, number, unit, action, value, authority, source, t_ns FROM orders ORDER BY rowid"
-        )
-        events = _Grouped(segment, "SELECT scan, kind, subject, t_ns, text, fields FROM events ORDER BY rowid")
+    def _segment_scans(self, segment: sqlite3.Connection, after: int) -> Iterator[ScanRecord]:
+        names, sample_of = self._names, schema.sample_of
         try:
-            for number, now_ns, utc in segment.execute("SELECT number, now_ns, utc FROM scans ORDER BY number"):
-                intake = schema.intake_of(
-                    tuple(schema.sample_of(self._names[row[1]], *row[2:]) for row in samples.of(number)),
-                    [(row[1], row[2]) for row in inputs.of(number)],
-                )
+            samples, inputs, orders, events = (_Grouped(segment, table, columns, after) for table, columns in _OF_SCAN)
+            for number, now_ns, utc in segment.execute(
+                "SELECT number, now_ns, utc FROM scans WHERE number > ? ORDER BY number", (after,)
+            ):
                 yield ScanRecord(
                     number,
                     now_ns,
                     utc,
-                    intake,
-                    tuple(schema.order_of(*row[1:]) for row in orders.of(number)),
-                    tuple(schema.event_of(*row[1:]) for row in events.of(number)),
+                    schema.intake_of(
+                        tuple([sample_of(names[tag], *rest) for _, tag, *rest in samples.of(number)]),
+                        inputs.of(number),
+                    ),
+                    tuple([schema.order_of(*row[1:]) for row in orders.of(number)]),
+                    tuple([schema.event_of(*row[1:]) for row in events.of(number)]),
                 )
-        except (sqlite3.DatabaseError, ValueError, KeyError) as error:
+        except (sqlite3.DatabaseError, ValueError, KeyError, TypeError, IndexError) as error:
             raise JournalError(f"{self.path} is damaged: {error}") from error
 
 
+_NOW = "SELECT number, now_ns FROM scans"
+_OF_SCAN = (
+    ("samples", "scan, tag, t_ns, value, quality, cause, raw"),
+    ("inputs", "scan, kind, body"),
+    ("orders", "scan, number, unit, action, value, authority, source, t_ns"),
+    ("events", "scan, kind, subject, t_ns, text, fields"),
+)
+
+
 class _Grouped:
-    """Walks rows that are in scan order, handing out those of one scan at a time."""
+    """Walks the rows of a table that are in scan order, handing out those of one scan at a time. The first column is
+    the scan."""
 
-    def __init__(self, connection: sqlite3.Connection, sql: str) -> None:
-        self._groups = groupby(connection.execute(sql), key=itemgetter(0))
-        self._next: tuple[int, list[Any]] | None = self._advance()
+    __slots__ = ("_number", "_row", "_rows")
 
-    def of(self, scan: int) -> list[Any]:
-        while self._next is not None and self._next[0] < scan:
-            self._next = self._advance()
-        if self._next is None or self._next[0] != scan:
-            return []
-        rows = self._next[1]
-        self._next = self._advance()
-        return rows
+    def __init__(self, connection: sqlite3.Connection, table: str, columns: str, after: int) -> None:
+        first = rowid_after(connection, table, "scan", after) if after else 0
+        self._rows = connection.execute(f"SELECT {columns} FROM {table} WHERE rowid >= ? ORDER BY rowid", (first,))
+        self._row: Any = None
+        self._number = 0
+        self._advance()
 
-    def _advance(self) -> tuple[int, list[Any]] | None:
-        group = next(self._groups, None)
-        return None if group is None else (group[0], list(group[1]))
+    def of(self, scan: int) -> Sequence[Any]:
+        """The rows of this scan; those of earlier ones are left behind."""
+        if self._number > scan:
+            return ()
+        while self._number < scan:
+            self._advance()
+        found = []
+        while self._number == scan:
+            found.append(self._row)
+            self._advance()
+        return found
+
+    def _advance(self) -> None:
+        self._row = row = self._rows.fetchone()
+        self._number = _NO_MORE if row is None else row[0]
+
+
+_NO_MORE = 1 << 63
+
+
+def rowid_after(connection: sqlite3.Connection, table: str, column: str, value: int) -> int:
+    """The first rowid whose ``column`` is above ``value``, by halving: rows stand in the order of arrival, so that the
+    order of the file is the index, and it costs the writer nothing."""
+    (low, high) = connection.execute(f"SELECT coalesce(min(rowid), 1), coalesce(max(rowid), 0) FROM {table}").fetchone()
+    while low <= high:
+        middle = (low + high) // 2
+        row = connection.execute(f"SELECT {column} FROM {table} WHERE rowid >= ? LIMIT 1", (middle,)).fetchone()
+        if row[0] > value:
+            high = middle - 1
+        else:
+            low = middle + 1
+    return int(low)
 
 
 def _segments(first: Path) -> list[Path]:

@@ -11,7 +11,7 @@ from __future__ import annotations
 import json
 import math
 from array import array
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from typing import Any
 
 from rigd.model.devices import DeviceIdentity, DeviceStatus, LinkState
@@ -42,6 +42,7 @@ CREATE TABLE IF NOT EXISTS bytes (link TEXT NOT NULL, t_ns INTEGER NOT NULL, sen
 
 CAUSES = tuple(QualityCause)
 """A cause is stored as its index here: new causes may only be added at the end."""
+QUALITIES = tuple(Quality)
 _CAUSE_NUMBER = {cause: number for number, cause in enumerate(CAUSES)}
 
 INSERT_META = "INSERT OR REPLACE INTO meta VALUES (?, ?)"
@@ -70,7 +71,7 @@ def sample_row(scan: int, tag_id: int, sample: Sample) -> Row:
 
 def sample_of(tag: str, t_ns: int, value: float | None, quality: int, cause: int, raw: int | None) -> Sample:
     """The sample in a row of ``samples``."""
-    return Sample(tag, math.nan if value is None else value, t_ns, Quality(quality), CAUSES[cause], raw)
+    return Sample(tag, math.nan if value is None else value, t_ns, QUALITIES[quality], CAUSES[cause], raw)
 
 
 def input_rows(scan: int, intake: Intake) -> list[Row]:
@@ -82,10 +83,12 @@ def input_rows(scan: int, intake: Intake) -> list[Row]:
     return rows
 
 
-def intake_of(samples: tuple[Sample, ...], inputs: list[tuple[str, str]]) -> Intake:
-    """The intake behind the rows of one scan; ``inputs`` are (kind, body)."""
+def intake_of(samples: tuple[Sample, ...], inputs: Sequence[tuple[int, str, str]]) -> Intake:
+    """The intake behind the rows of one scan; ``inputs`` are (scan, kind, body)."""
+    if not inputs:
+        return Intake(samples)
     bodies: dict[str, list[Any]] = {"outcome": [], "link": [], "request": [], "fault": []}
-    for kind, body in inputs:
+    for _, kind, body in inputs:
         bodies[kind].append(json.loads(body))
     return Intake(
         samples,

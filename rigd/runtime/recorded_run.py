@@ -1,0 +1,95 @@
+"""A run as its journal holds it, made ready to be decided again: the files it was run with become a program."""
+
+from __future__ import annotations
+
+import json
+import tempfile
+from collections.abc import Mapping
+from dataclasses import dataclass, fields
+from pathlib import Path
+
+from rigd import __version__
+from rigd.adapters import run_folder
+from rigd.adapters.journal_reader import JournalReader
+from rigd.config.load import load_pair
+from rigd.logic.program import Program, RunOptions, compile_program
+from rigd.model.errors import ConfigError, JournalError
+from rigd.model.problems import Problem
+
+FILES = (run_folder.RIG, run_folder.CHEMISTRY, run_folder.RECIPE)
+
+
+@dataclass(frozen=True, slots=True)
+class Recorded:
+    """What a journal was recorded with. ``notes`` are sentences about why a replay may differ."""
+
+    program: Program
+    meta: Mapping[str, str]
+    notes: tuple[str, ...] = ()
+
+
+def recorded_run(journal: JournalReader) -> Recorded:
+    """The program of a run, from the texts in its journal. ``JournalError`` says why when it cannot be made."""
+    meta = journal.meta
+    with tempfile.TemporaryDirectory(prefix="rigd-replay-") as folder:
+        run_folder.write_texts(Path(folder), texts_of(journal))
+        try:
+            pair = load_pair(Path(folder) / run_folder.RIG, Path(folder) / run_folder.RECIPE)
+        except ConfigError as error:
+            raise JournalError(_unread(journal, error.problems)) from error
+    assert pair.recipe is not None
+    notes = _notes(meta, (pair.rig.digest, pair.recipe.digest))
+    return Recorded(compile_program(pair.rig, pair.recipe, options_of(journal)), meta, notes)
+
+
+def texts_of(journal: JournalReader) -> dict[str, str]:
+    """Rig, chemistry and recipe file of the run: those in the journal, else the copies beside it."""
+    texts = {name: journal.meta[name] for name in FILES if name in journal.meta}
+    for name in FILES:
+        copy = journal.path.parent / name
+        if name not in texts and copy.is_file():
+            texts[name] = copy.read_text(encoding="utf-8")
+    missing = [name for name in FILES if name not in texts]
+    if missing:
+        raise JournalError(
+            f"{journal.path} holds no {missing[0]} and there is no copy beside it: it was recorded by a version of rigd"
+            " that did not store the files of a run, and cannot be decided again; its data can be read and exported"
+        )
+    return texts
+
+
+def options_of(journal: JournalReader) -> RunOptions:
+    """The options of the run. ``JournalError`` when this version does not know one of them."""
+    text = journal.meta.get("options")
+    if text is None:
+        raise JournalError(
+            f"{journal.path} does not tell the options of its run (floors, points already collected): it was recorded "
+            "by a version of rigd that did not store them, and cannot be decided again; its data can be exported"
+        )
+    known = {one.name for one in fields(RunOptions)}
+    try:
+        given = dict(json.loads(text))
+        if unknown := sorted(given.keys() - known):
+            raise JournalError(f"{journal.path} was run with the option {unknown[0]!r}, which rigd {__version__} lacks")
+        return RunOptions(**{**given, "collected": tuple(given.get("collected", ()))})
+    except (ValueError, TypeError) as error:
+        raise JournalError(f"{journal.path} is damaged: its options are {text!r}") from error
+
+
+def _notes(meta: Mapping[str, str], digests: tuple[str, str]) -> tuple[str, ...]:
+    found = []
+    if (version := meta.get("version", "unknown")) != __version__:
+        found.append(f"recorded by rigd {version}, decided again by rigd {__version__}: differences may come from that")
+    for what, digest in zip(("rig", "recipe"), digests, strict=True):
+        if meta.get(f"{what}_digest", digest) != digest:
+            found.append(f"this version reads the run's {what} file differently: its digest is another one")
+    return tuple(found)
+
+
+def _unread(journal: JournalReader, problems: tuple[Problem, ...]) -> str:
+    first = problems[0]
+    place = f"{Path(first.file).name}:{first.line}"
+    return (
+        f"rigd {__version__} cannot read the files with which {journal.path} was recorded (by rigd "
+        f"{journal.meta.get('version', 'unknown')}): {place}: {first.message}"
+    )
