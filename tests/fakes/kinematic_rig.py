@@ -252,15 +252,14 @@ class KinematicRig:
     # ---- time
 
     def advance(self, to_ns: int) -> None:
-        """Move to a later time in steps of at most a second."""
+        """Move to a later time in steps of at most a second; the arrival of a valve ends a step."""
         while self.now_ns < to_ns:
-            step_ns = min(to_ns - self.now_ns, 1_000_000_000)
+            arrivals = [math.ceil(valve.left_s * 1e9) for valve in self.valves.values() if valve.left_s > 0]
+            step_ns = min([to_ns - self.now_ns, 1_000_000_000, *arrivals])
             self._step(step_ns / 1e9)
             self.now_ns += step_ns
 
     def _step(self, dt_s: float) -> None:
-        for valve in self.valves.values():
-            valve.left_s = max(0.0, valve.left_s - dt_s)
         arriving = {name: self._run(name, pump, dt_s) for name, pump in self.pumps.items()}
         running = {name: pump.rate for name, pump in self.pumps.items() if pump.state is PumpState.DELIVERING}
         flows = tuple(sorted(running.items()))
@@ -270,6 +269,8 @@ class KinematicRig:
             self._through(arriving, flows)
         self._heat(dt_s)
         self._signal(dt_s)
+        for valve in self.valves.values():
+            valve.left_s = valve.left_s - dt_s if valve.left_s > dt_s + 1e-9 else 0.0
 
     def _run(self, name: str, pump: FakePump, dt_s: float) -> list[Parcel]:
         valve = self.path.feed(name).valve

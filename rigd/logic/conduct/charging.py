@@ -3,7 +3,8 @@
 Rules. A syringe is filled only when it is empty or holds the same liquid, and only after its feed valve is confirmed at
 that liquid. A pump never runs empty: it stops at a guard level unless the standby syringe may follow. A planned change
 of liquid fills the standby syringe with the new one and lets the active one run out, so that nothing mixes but the
-dead volume; an urgent one changes over at once and leaves the old liquid in the standby syringe.
+dead volume; an urgent one changes over at once and keeps the old liquid in the standby syringe, however much of the
+new one is needed: a pump at rest may change over to fill the other syringe and back without a drop moving.
 """
 
 from __future__ import annotations
@@ -39,10 +40,11 @@ def charge(
     play: PumpLayout, track: PumpTrack, want: Want, at: Callable[[str], bool], ramp: Ramp, now_ns: int
 ) -> Charge:
     """Decide for one pump. ``at`` tells whether its feed valve is confirmed at a position."""
+    before = track
     track = _fill_or_swap(play, track, want, at, now_ns)
     flow, due_ns = _flow(play, track, want, now_ns)
     if flow == 0.0:
-        track = _broken(track)
+        track = _broken(before, track)
     waits = flow == 0.0 and want.flow_mL_min > 0.0
     flow, ramp_due_ns, track = _ramped(flow, track, ramp, now_ns)
     flow = min(max(flow, play.pump.rate_min_mL_min), play.pump.rate_max_mL_min) if flow > 0.0 else 0.0
@@ -53,19 +55,23 @@ def charge(
     return Charge(track, demand, position or "", waits, min(dues) if dues else None)
 
 
-def paused(charges: Mapping[str, Charge]) -> dict[str, Charge]:
+def paused(charges: Mapping[str, Charge], before: Mapping[str, PumpTrack]) -> dict[str, Charge]:
     """All pumps at rest, because one of them waits for liquid."""
     return {
-        name: replace(one, demand=replace(one.demand, flow_mL_min=0.0), track=replace(_broken(one.track), moving_ns=-1))
+        name: replace(
+            one,
+            demand=replace(one.demand, flow_mL_min=0.0),
+            track=replace(_broken(before[name], one.track), moving_ns=-1),
+        )
         for name, one in charges.items()
     }
 
 
-def _broken(track: PumpTrack) -> PumpTrack:
-    """Stopping a pump that delivers also ends its filling."""
-    if track.fill is None or track.state is not PumpState.DELIVERING:
+def _broken(before: PumpTrack, track: PumpTrack) -> PumpTrack:
+    """A pump that is stopped while it delivers also ends a filling that was under way. (A new one goes out after.)"""
+    if before.moving_ns < 0 or before.fill is None or before.fill is not track.fill:
         return track
-    return replace(track, fill=replace(track.fill, broken=True))
+    return replace(track, fill=replace(before.fill, broken=True))
 
 
 def _once(track: PumpTrack) -> OneShot | None:
@@ -79,15 +85,15 @@ def _fill_or_swap(play: PumpLayout, track: PumpTrack, want: Want, at: Callable[[
         return _still_wanted(track, want)
     if track.swap:
         return track
-    if play.dual and _swap_now(play, track, want, now_ns):
-        return start_swap(track, play)
     if not track.at_rest and _flow(play, track, want, now_ns)[0] == 0.0:
         return track  # it is about to be stopped, and that would end the filling
     volume_mL = _dual_fill(play, track, want, now_ns) if play.dual else _single_fill(play, track, want, now_ns)
-    position = play.feed.position_of(liquid_of(want.label))
-    if volume_mL <= 0.0 or not want.may_fill or position is None or not at(position):
-        return track
-    return start_fill(track, play, want.label, min(volume_mL, play.pump.stroke_mL), now_ns)
+    if volume_mL > 0.0 and want.may_fill:
+        position = play.feed.position_of(liquid_of(want.label))
+        if position is None or not at(position):
+            return track
+        return start_fill(track, play, want.label, min(volume_mL, play.pump.stroke_mL), now_ns)
+    return start_swap(track, play) if play.dual and _swap_now(play, track, want, now_ns) else track
 
 
 def _still_wanted(track: PumpTrack, want: Want) -> PumpTrack:
@@ -99,12 +105,18 @@ def _still_wanted(track: PumpTrack, want: Want) -> PumpTrack:
 
 
 def _swap_now(play: PumpLayout, track: PumpTrack, want: Want, now_ns: int) -> bool:
-    if track.standby != want.label or track.standby_mL <= EMPTY_mL or now_ns - track.refused_ns < 2_000_000_000:
+    """Whether the other syringe is to deliver, or to be the one that can be filled."""
+    if track.standby_mL <= EMPTY_mL or now_ns - track.refused_ns < 2_000_000_000:
         return False
+    level_mL = track.level_at(now_ns)
+    if track.standby != want.label:
+        # The wanted liquid is used up and the other one is in the way: change over at rest, fill, and change back.
+        spent = track.active == want.label and level_mL <= play.guard_mL(want.flow_mL_min)
+        return want.urgent and spent and track.at_rest and want.may_fill and want.need_mL > 0.0
     if track.active != want.label:
         return want.urgent
     enough_mL = 0.95 * min(want.level_mL, play.pump.stroke_mL)
-    return want.swap and track.standby_mL > max(track.level_at(now_ns) + 0.05, enough_mL)
+    return want.swap and track.standby_mL > max(level_mL + 0.05, enough_mL)
 
 
 def _dual_fill(play: PumpLayout, track: PumpTrack, want: Want, now_ns: int) -> float:
@@ -113,7 +125,7 @@ def _dual_fill(play: PumpLayout, track: PumpTrack, want: Want, now_ns: int) -> f
     here_mL = track.supply_mL(want.label, now_ns)
     reserve_mL = play.reserve_mL(want.flow_mL_min)
     missing_mL = want.need_mL + reserve_mL - here_mL
-    if foreign or want.need_mL <= 0.0 or missing_mL <= reserve_mL:
+    if foreign or want.need_mL <= 0.0 or here_mL >= want.need_mL + play.guard_mL(want.flow_mL_min):
         return 0.0
     held_mL = track.standby_mL if track.standby == want.label else 0.0
     target_mL = min(held_mL + missing_mL, play.pump.stroke_mL, want.batch_mL + reserve_mL)

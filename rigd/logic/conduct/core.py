@@ -153,7 +153,7 @@ def _after_move(state: ConductState, view: View, move: Move[Any]) -> Told:
     if stage and state.stage and stage != state.stage:
         events.insert(0, _phase_event(state.spec, view.now_ns, stage))
     prompts = dict(state.prompts)
-    if move.prompt and prompts.get(move.prompt.id, Prompt("", "")).status != "open":
+    if move.prompt and move.prompt.id not in prompts:
         prompts[move.prompt.id] = move.prompt
         events.append(prompt_event(move.prompt, view.now_ns))
     results = _with_result(state.results, move.result)

@@ -55,7 +55,7 @@ def _charges(state: ConductState, view: View, wants: Wants) -> dict[str, Charge]
         for name, play in state.layout.pumps.items()
     }
     if wants.together and any(one.waits for one in charges.values()):
-        return paused(charges)
+        return paused(charges, state.tracks)
     return charges
 
 

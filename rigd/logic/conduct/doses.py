@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 
-from rigd.logic.conduct.layout import PumpLayout
+from rigd.logic.conduct.layout import PumpLayout, liquid_of
 from rigd.logic.conduct.pumps import PumpTrack
 from rigd.logic.conduct.wants import Scene, Want
 
@@ -76,8 +76,11 @@ def _want(play: PumpLayout, row: Sequence[Dose], dosing: Dosing, scene: Scene, f
     if dosing.index >= len(row):
         return Want(row[-1].label if row else play.solvent)
     dose = row[dosing.index]
-    need_mL = max(0.0, dose.volume_mL - passed_mL(dosing, scene.tracks[play.id], scene.now_ns))
-    return Want(dose.label, flow, need_mL, level_mL=need_mL if play.dual else 0.0, batch_mL=dose.batch_mL(play))
+    track = scene.tracks[play.id]
+    need_mL = max(0.0, dose.volume_mL - passed_mL(dosing, track, scene.now_ns))
+    keeps = "~" in dose.label and track.active == liquid_of(dose.label)  # pure liquid is not run out for a rinse
+    level_mL = need_mL if play.dual else 0.0
+    return Want(dose.label, flow, need_mL, level_mL, dose.batch_mL(play), urgent=keeps)
 
 
 def dose_due_ns(

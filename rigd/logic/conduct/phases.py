@@ -13,7 +13,7 @@ STARTS: Mapping[PhaseKind, Callable[[Scene], Any]] = {
     PhaseKind.PRIME: lambda scene: prime.Memory(),
     PhaseKind.CONDITIONING: conditioning.start,
     PhaseKind.LEAK_TEST: leak_test.start,
-    PhaseKind.SWITCHOVER: lambda scene: switchover.Memory(),
+    PhaseKind.SWITCHOVER: switchover.start,
     PhaseKind.POINT: point.start,
     PhaseKind.FLUSH: lambda scene: prime.Memory(),
     PhaseKind.PARK: park.start,

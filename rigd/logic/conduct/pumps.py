@@ -44,7 +44,8 @@ class Fill:
 class PumpTrack:
     """One pump as last seen; ``t_ns`` 0 means never.
 
-    ``active`` and ``standby`` say what is in the syringes; ``front`` when the liquid in the active one began to leave.
+    ``active`` and ``standby`` say what is in the syringes, ``drawn`` what was drawn last and fills the line from the
+    valve; ``front`` when the liquid in the active syringe began to leave.
     ``swapped_mL`` is the counter at the last change-over, ``swap`` the ticket of one that was asked for and
     ``swap_done_ns`` when the pump said yes to it; ``moving_ns`` is since when it was told to move (-1: to rest).
     """
@@ -59,6 +60,7 @@ class PumpTrack:
     t_ns: int = 0
     front: Front = _NO_FRONT
     swapped_mL: float = -1e9
+    drawn: str = UNKNOWN
     fill: Fill | None = None
     swap: str = ""
     swap_done_ns: int = -1
@@ -208,7 +210,7 @@ def start_fill(track: PumpTrack, play: PumpLayout, label: str, volume_mL: float,
     now_mL = track.standby_mL if play.dual else track.level_mL
     fill = Fill(f"{play.id}#{number}", label, round(volume_mL, 3), now_ns, now_ns, now_mL)
     standby = label if play.dual else track.standby
-    return replace(track, fill=fill, standby=standby, tickets=number)
+    return replace(track, fill=fill, standby=standby, drawn=liquid_of(label), tickets=number)
 
 
 def start_swap(track: PumpTrack, play: PumpLayout) -> PumpTrack:

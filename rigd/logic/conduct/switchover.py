@@ -12,7 +12,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field, replace
 
 from rigd.logic.conduct.conditioning import lead
-from rigd.logic.conduct.doses import Dosing, dose_all, dose_due_ns
+from rigd.logic.conduct.doses import Dose, Dosing, dose_all, dose_due_ns
 from rigd.logic.conduct.layout import Layout, PumpLayout
 from rigd.logic.conduct.pumps import EMPTY_mL, PumpTrack
 from rigd.logic.conduct.shares import reagent_flows, rinse_doses, solvent_flows
@@ -25,11 +25,16 @@ _APART_S = 2.0
 
 @dataclass(frozen=True, slots=True)
 class Memory:
-    """``stage``: rinse, charge, meet. ``started``: pumps that have been let go in the last stage."""
+    """``stage``: rinse, charge, meet. ``started``: pumps that have been let go in the last stage.
+
+    ``kept``: pumps that had the right liquid in a syringe at the beginning, ``right_line``: in the line as well.
+    """
 
     stage: str = "rinse"
     rinses: Mapping[str, Dosing] = field(default_factory=dict)
     started: frozenset[str] = frozenset()
+    kept: frozenset[str] = frozenset()
+    right_line: frozenset[str] = frozenset()
 
 
 def flows_of(layout: Layout, reagent: bool, slow: float = 1.0, point: Point | None = None) -> dict[str, float]:
@@ -63,9 +68,7 @@ def _wants(scene: Scene, wants: Mapping[str, Want], **options: bool) -> Wants:
 
 
 def _rinse(scene: Scene, memory: Memory, flows: Mapping[str, float]) -> Move[Memory]:
-    rule = scene.layout.recipe.switchover
-    rinses = 0 if rule is None or _has_been_rinsed(scene, flows) else rule.rinses
-    doses = rinse_doses(scene.layout, rinses, scene.spec.reagent, flows)
+    doses = _doses(scene, memory, flows)
     dosing, wants, done = dose_all(scene, doses, memory.rinses, flows)
     memory = replace(memory, rinses=dosing, stage="charge" if done else "rinse")
     if done and scene.spec.reagent:
@@ -75,16 +78,26 @@ def _rinse(scene: Scene, memory: Memory, flows: Mapping[str, float]) -> Move[Mem
     return Move(memory, _wants(scene, wants), "rinsing", due_ns=dose_due_ns(scene, doses, dosing, flows))
 
 
-def _has_been_rinsed(scene: Scene, flows: Mapping[str, float]) -> bool:
-    """After a hold the standby syringe still holds the reagent; then there is nothing to rinse."""
-    if not scene.spec.reagent:
-        return False
-    held = [
-        track.standby == label(scene.layout.pumps[name], True) and track.standby_mL > EMPTY_mL
-        for name, track in scene.tracks.items()
-        if name in flows and scene.layout.pumps[name].reagent
-    ]
-    return bool(held) and all(held)
+def _doses(scene: Scene, memory: Memory, flows: Mapping[str, float]) -> dict[str, tuple[Dose, ...]]:
+    """Rinses of each syringe; fewer when the line from the valve or a syringe holds the right liquid already."""
+    rule = scene.layout.recipe.switchover
+    rinses = rule.rinses if rule else 0
+    doses = rinse_doses(scene.layout, rinses, scene.spec.reagent, flows)
+    for name in doses:
+        if name in memory.right_line:
+            doses[name] = ()
+        elif name in memory.kept:
+            doses[name] = doses[name][:1]
+    return doses
+
+
+def start(scene: Scene) -> Memory:
+    """At the beginning: what is right already. After a hold a syringe still holds reagent, the line does not."""
+    plays, tracks = scene.layout.pumps, scene.tracks
+    wanted = {name: label(play, scene.spec.reagent) for name, play in plays.items()}
+    kept = {name for name, want in wanted.items() if tracks[name].supply_mL(want, scene.now_ns) > EMPTY_mL}
+    lines = {name for name in kept if tracks[name].drawn == wanted[name]}
+    return Memory(kept=frozenset(kept), right_line=frozenset(lines))
 
 
 def _charge(scene: Scene, memory: Memory, flows: Mapping[str, float]) -> Move[Memory]:
