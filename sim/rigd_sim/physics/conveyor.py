@@ -17,7 +17,7 @@ from __future__ import annotations
 
 import numpy as np
 
-from rigd_sim.physics.compiled import Floats, inner
+from rigd_sim.physics.compiled import Floats, Ints, inner
 
 
 @inner
@@ -116,19 +116,45 @@ def _give(cells: Floats, s: int, n: int, v: float, fill: float, p: int, k: int, 
 
 
 @inner
-def exchange_rings(cells: Floats, s1: int, fill1: float, s2: int, fill2: float, n: int, v: float, k_dt: float) -> None:
-    """Radial diffusion between two rings of a tube, place by place; ``k_dt`` is rate times step. Exact for a pair."""
-    share = 0.5 * (1.0 - np.exp(-2.0 * k_dt)) * v
-    h1 = fill1 / v
-    h2 = fill2 / v
+def exchange_rings(cells: Floats, link: Ints, edge: Floats, e: int, dt: float, work: Floats) -> None:
+    """Radial diffusion between the rings of a tube (kernel edges from ``e``), place by place.
+
+    Crank-Nicolson over the rings: alternated with moves it has exactly the long-time dispersion of the continuous
+    process at any step. The step is capped where the scheme could become negative (rings then mix nearly completely).
+    Rows of ``link`` and ``edge`` as in ``transport``: 2 cells, 3 start; 0 cell volume, 1 fill, 4 radial exchange.
+    """
+    rings = 1
+    fastest = edge[4, e]
+    while edge[4, e + rings - 1] > 0.0:
+        fastest = max(fastest, edge[4, e + rings - 1] + edge[4, e + rings])
+        rings += 1
+    half = 0.5 * (dt if dt * fastest < 2.0 else 2.0 / fastest)
+    n = link[2, e]
+    v = edge[0, e]
     for p in range(n):
         for k in range(cells.shape[1]):
-            inside = h1 * cells[s1 + p, k] + (1.0 - h1) * cells[s1 + p + 1, k]
-            outside = h2 * cells[s2 + p, k] + (1.0 - h2) * cells[s2 + p + 1, k]
-            moved = share * (inside - outside)
-            if moved != 0.0:
-                _give(cells, s1, n, v, fill1, p, k, -moved)
-                _give(cells, s2, n, v, fill2, p, k, moved)
+            for r in range(rings):
+                s = link[3, e + r] + p
+                head = edge[1, e + r] / v
+                work[2, r] = head * cells[s, k] + (1.0 - head) * cells[s + 1, k]
+            carry = 0.0
+            for r in range(rings):
+                inner_rate = half * edge[4, e + r - 1] if r > 0 else 0.0
+                outer_rate = half * edge[4, e + r]
+                rhs = work[2, r] * (1.0 - inner_rate - outer_rate)
+                rhs += inner_rate * work[2, r - 1] if r > 0 else 0.0
+                rhs += outer_rate * work[2, r + 1] if r < rings - 1 else 0.0
+                rhs += inner_rate * work[3, r - 1] if r > 0 else 0.0
+                pivot = 1.0 + inner_rate + outer_rate - inner_rate * carry
+                carry = outer_rate / pivot
+                work[3, r] = rhs / pivot
+                work[4, r] = carry
+            for r in range(rings - 2, -1, -1):
+                work[3, r] += work[4, r] * work[3, r + 1]
+            for r in range(rings):
+                moved = v * (work[3, r] - work[2, r])
+                if moved != 0.0:
+                    _give(cells, link[3, e + r], n, v, edge[1, e + r], p, k, moved)
 
 
 @inner

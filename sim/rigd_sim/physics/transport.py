@@ -166,11 +166,8 @@ def transport_step(
             if edge[EXCHANGE, e] > 0.0:
                 s, n, v = link[START, e], link[CELLS, e], edge[CELL_VOLUME, e]
                 disperse(cells, s, n, v, edge[FILL, e], edge[EXCHANGE, e] * part, work)
-            if edge[RADIAL, e] > 0.0:
-                exchange_rings(
-                    cells, link[START, e], edge[FILL, e], link[START, e + 1], edge[FILL, e + 1], link[CELLS, e],
-                    edge[CELL_VOLUME, e], edge[RADIAL, e] * part,
-                )  # fmt: skip
+            if edge[RADIAL, e] > 0.0 and (e == 0 or edge[RADIAL, e - 1] == 0.0):
+                exchange_rings(cells, link, edge, e, part, work)
         for b in range(bed.shape[1]):
             e = bed[EDGE, b]
             s, n, v = link[START, e], link[CELLS, e], edge[CELL_VOLUME, e]

@@ -13,7 +13,7 @@ from rigd_sim.physics.tubing import RINGS, area
 LIQUID_COMPRESSIBILITY_PER_PA = 1e-9
 """About 1e-4 per bar with the tube wall: common practice for organic liquids, no source."""
 CELLS_TARGET = 220
-CELLS_LINE_MIN, CELLS_LINE_MAX = 6, 40
+CELLS_LINE_MIN, CELLS_LINE_MAX, CELLS_SUPPLY_MAX = 6, 110, 16
 CELLS_BED = 100
 BARREL_NODE_M3 = 20e-9
 JOINT_NODE_M3 = 1e-10
@@ -200,12 +200,14 @@ def _end_node(layout: Layout, end: End, entering: bool) -> int:
 
 def _line_edge(layout: Layout, line: Line, cell: float) -> Edge:
     volume = _line_volume(line)
-    cells = min(max(round(volume / cell), CELLS_LINE_MIN), CELLS_LINE_MAX)
+    supply = _is_supply(layout, line)
+    most = CELLS_SUPPLY_MAX if supply else CELLS_LINE_MAX
+    cells = min(max(round(volume / cell), CELLS_LINE_MIN), most)
     gates = tuple((end.part, end.port) for end in (line.start, line.end) if end.port)
     return Edge(
         line.id, _end_node(layout, line.start, False), _end_node(layout, line.end, True), "line", volume, cells,
-        line.bore_mm * 1e-3, line.length_mm * 1e-3, gates=gates, supply=_is_supply(layout, line),
-        rings=RINGS,
+        line.bore_mm * 1e-3, line.length_mm * 1e-3, gates=gates, supply=supply,
+        rings=1 if supply else RINGS,
     )  # fmt: skip
 
 
