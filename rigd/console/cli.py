@@ -45,6 +45,7 @@ SECTIONS: dict[str, dict[str, tuple[str, str]]] = {
         "runs": ("runs:runs", "List what was run."),
         "report": ("report:report", "Write the report of a run."),
         "export": ("export:export", "Write the data of a run as tables."),
+        "replay": ("replay:replay", "Decide a run again from its journal; play it back; ask what if."),
     },
 }
 

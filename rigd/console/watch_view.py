@@ -17,14 +17,17 @@ from rigd.logic.flow_path import FlowPath
 from rigd.model.rig import RigDefinition
 
 EVENTS_SHOWN = 6
+FOOT = "q leaves, the run goes on; in another terminal: rigd hold, resume, stop, cut"
 PRIORITY_STYLES = {1: "bold white on red", 2: "bold red", 3: "yellow", 4: "cyan"}
 STOP_STYLES = {"hold": "bold black on yellow", "quench": "bold white on dark_orange3", "cut": "bold white on red"}
 EVENT_STYLES = {"trip": "bold red", "alarm": "yellow", "stop": "bold yellow", "fault": "red", "point": "cyan"}
 GROUPS = ("pressure", "temperature", "flow", "fraction", "concentration", "volume", "absorbance")
 
 
-def view(state: Watched, rig: RigDefinition | None, path: FlowPath | None, width: int) -> RenderableType:
-    """The whole screen."""
+def view(
+    state: Watched, rig: RigDefinition | None, path: FlowPath | None, width: int, foot: str = FOOT
+) -> RenderableType:
+    """The whole screen, with a line about the keys below."""
     snapshot = state.snapshot
     if not snapshot:
         return Text("waiting for the first snapshot of the run ...", style="dim")
@@ -37,7 +40,7 @@ def view(state: Watched, rig: RigDefinition | None, path: FlowPath | None, width
     parts += [Rule(style="dim"), *_events(state.events)]
     if state.end:
         parts.append(Text(f"The run has ended: {state.end}.", style="bold"))
-    parts.append(Text("q leaves, the run goes on; in another terminal: rigd hold, resume, stop, cut", "dim"))
+    parts.append(Text(foot, "dim"))
     return Group(*parts)
 
 

@@ -4,7 +4,8 @@ from __future__ import annotations
 
 import json
 import tempfile
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping
+from contextlib import contextmanager
 from dataclasses import dataclass, fields
 from pathlib import Path
 
@@ -16,7 +17,8 @@ from rigd.logic.program import Program, RunOptions, compile_program
 from rigd.model.errors import ConfigError, JournalError
 from rigd.model.problems import Problem
 
-FILES = (run_folder.RIG, run_folder.CHEMISTRY, run_folder.RECIPE)
+RIG, CHEMISTRY, RECIPE = run_folder.RIG, run_folder.CHEMISTRY, run_folder.RECIPE
+FILES = (RIG, CHEMISTRY, RECIPE)
 
 
 @dataclass(frozen=True, slots=True)
@@ -31,18 +33,25 @@ class Recorded:
 def recorded_run(journal: JournalReader) -> Recorded:
     """The program of a run, from the texts in its journal. ``JournalError`` says why when it cannot be made."""
     meta = journal.meta
-    with tempfile.TemporaryDirectory(prefix="rigd-replay-") as folder:
-        run_folder.write_texts(Path(folder), texts_of(journal))
+    with _temporary_files(journal) as folder:
         try:
-            pair = load_pair(Path(folder) / run_folder.RIG, Path(folder) / run_folder.RECIPE)
+            pair = load_pair(folder / RIG, folder / RECIPE)
         except ConfigError as error:
             raise JournalError(_unread(journal, error.problems)) from error
     assert pair.recipe is not None
     notes = _notes(meta, (pair.rig.digest, pair.recipe.digest))
-    return Recorded(compile_program(pair.rig, pair.recipe, options_of(journal)), meta, notes)
+    return Recorded(compile_program(pair.rig, pair.recipe, _options_of(journal)), meta, notes)
 
 
-def texts_of(journal: JournalReader) -> dict[str, str]:
+@contextmanager
+def _temporary_files(journal: JournalReader) -> Iterator[Path]:
+    """A folder with the files of the run, removed at the end."""
+    with tempfile.TemporaryDirectory(prefix="rigd-replay-") as folder:
+        run_folder.write_texts(Path(folder), _texts_of(journal))
+        yield Path(folder)
+
+
+def _texts_of(journal: JournalReader) -> dict[str, str]:
     """Rig, chemistry and recipe file of the run: those in the journal, else the copies beside it."""
     texts = {name: journal.meta[name] for name in FILES if name in journal.meta}
     for name in FILES:
@@ -58,7 +67,7 @@ def texts_of(journal: JournalReader) -> dict[str, str]:
     return texts
 
 
-def options_of(journal: JournalReader) -> RunOptions:
+def _options_of(journal: JournalReader) -> RunOptions:
     """The options of the run. ``JournalError`` when this version does not know one of them."""
     text = journal.meta.get("options")
     if text is None:
