@@ -8,15 +8,29 @@ from pathlib import Path
 from typing import Any
 
 from rigd.app import DryRun
+from rigd.config.load import load_pair
 from rigd.console.output import Output
 from rigd.console.watch_view import left_words
 from rigd.logic import scan
+from rigd.logic.planning import plan
+from rigd.logic.program import compile_program
 from rigd.report.collect import phase_spans, read_run
 from rigd.report.data import RunData
 from rigd.report.facts import alarm_facts, point_facts, trip_facts
 from rigd.report.points import point_rows
 
+PATIENCE = 3.0
+"""A rehearsal that takes this many times its plan, and an hour, waits for somebody who is not there: it is ended."""
+
 Watch = Callable[[int, scan.CoreState], None]
+
+
+def longest_ns(rig: Path, recipe: Path) -> int:
+    """When to give up on a rehearsal [ns of process time], from its plan. Raises ``ConfigError``."""
+    pair = load_pair(rig, recipe)
+    assert pair.recipe is not None
+    planned_s = plan(compile_program(pair.rig, pair.recipe)).duration_s
+    return int((PATIENCE * planned_s + 3600.0) * 1e9)
 
 
 def rehearsed(done: DryRun, folder: Path | None) -> RunData:

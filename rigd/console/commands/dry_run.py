@@ -29,13 +29,16 @@ def dry_run(
     specs = tuple(parse_fault(text) for text in faults)
     from rigd.app import DrySettings
     from rigd.app import dry_run as rehearse
-    from rigd.console.rehearsal import dry_facts, rehearsed, show_progress
+    from rigd.console.rehearsal import dry_facts, longest_ns, rehearsed, show_progress
     from rigd.report.summary import summary
+    from rigd.runtime.dry import DryOptions
 
     began = time.monotonic()
     journal = _journal(out) if out is not None else None
+    options = DryOptions(limit_ns=longest_ns(rig, recipe))
     with show_progress(output) as watch:
-        done = rehearse(rig, recipe, DrySettings(seed=seed or 0, faults=specs, journal=journal, watch=watch))
+        settings = DrySettings(seed=seed or 0, faults=specs, journal=journal, watch=watch, options=options)
+        done = rehearse(rig, recipe, settings)
     wall_s = time.monotonic() - began
     data = rehearsed(done, out)
     output.document(dry_facts(done, data, seed or 0, wall_s))

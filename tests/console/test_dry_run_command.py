@@ -1,0 +1,68 @@
+"""``rigd dry-run``: promised keys, exit codes, the same digest again. An early block keeps the rehearsals short."""
+
+from __future__ import annotations
+
+import json
+from pathlib import Path
+
+import pytest
+
+from rigd.console.cli import call
+
+CONFIGS = Path(__file__).resolve().parents[2] / "configs"
+FILES = (str(CONFIGS / "rigs/two-pump-column.toml"), str(CONFIGS / "recipes/demo-sweep.toml"))
+BLOCK = ("--fault", "block@L-4,at=40 s")
+KEYS = {
+    "outcome", "seed", "digest", "duration_s", "wall_s", "points", "peak", "used_mL", "trips", "alarms",
+}  # fmt: skip
+
+
+def rehearse(capsys, *more: str) -> tuple[int, dict]:
+    code = call(["dry-run", *FILES, "--json", *more])
+    return code, json.loads(capsys.readouterr().out)
+
+
+def test_a_blocked_outlet_trips_and_is_told(capsys, tmp_path):
+    code, facts = rehearse(capsys, *BLOCK, "--out", str(tmp_path / "out"))
+    assert code == 1
+    assert set(facts) >= KEYS
+    assert facts["outcome"] == "tripped"
+    (first,) = [trip for trip in facts["trips"] if trip["first_out"]]
+    assert first["id"] == "PRESSURE-HIGH"
+    assert 40 < first["t_s"] < 60
+    assert 8.0 < facts["peak"]["PT-1"] < 20.0  # above the limit, below the weakest rating
+    assert "PRESSURE-HIGH" in (tmp_path / "out" / "report.html").read_text()
+    again_code, again = rehearse(capsys, *BLOCK)
+    assert (again_code, again["digest"]) == (1, facts["digest"])
+    _, other = rehearse(capsys, *BLOCK, "--seed", "8")
+    assert other["digest"] != facts["digest"]
+
+
+def test_a_folder_that_holds_a_run_is_not_overwritten(tmp_path, capsys):
+    (tmp_path / "run.sqlite").write_text("something")
+    assert call(["dry-run", *FILES, "--out", str(tmp_path)]) == 2
+    assert (tmp_path / "run.sqlite").read_text() == "something"
+    assert "holds a run already" in capsys.readouterr().err
+
+
+@pytest.mark.parametrize("fault", ["blok@L-4", "block@L-99"])
+def test_an_unknown_fault_is_a_sentence(fault, capsys):
+    assert call(["dry-run", *FILES, "--fault", fault]) == 2
+    error = capsys.readouterr().err
+    assert "Traceback" not in error
+    assert fault.split("@")[0] in error or "L-99" in error
+
+
+@pytest.mark.slow
+@pytest.mark.timeout(300)
+def test_the_demonstration_is_done_and_agrees_with_the_plan(capsys):
+    code, facts = rehearse(capsys)
+    assert code == 0
+    assert facts["outcome"] == "done"
+    assert len(facts["points"]) == 6
+    assert facts["trips"] == []
+    assert call(["check", *FILES, "--json"]) == 0
+    planned = json.loads(capsys.readouterr().out)
+    assert facts["duration_s"] == pytest.approx(planned["duration_s"], rel=0.05)
+    for liquid, volume in planned["used_mL"].items():
+        assert facts["used_mL"][liquid] == pytest.approx(volume, rel=0.2)
