@@ -6,6 +6,7 @@ gives them, called again and again without any Python in between.
 
 from __future__ import annotations
 
+import inspect
 import time
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass, replace
@@ -23,26 +24,25 @@ from rigd_sim.physics.bed import heat_bed
 from rigd_sim.physics.compiled import compiled
 from rigd_sim.physics.network import VOLUME, advance_pressures
 from rigd_sim.physics.transport import MOVED, transport_step
-from rigd_sim.plant import contents, flows, layout, thermal
+from rigd_sim.plant import contents, flows, rig_plant, thermal
+from rigd_sim.plant.layout import Layout, build_layout
 from rigd_sim.plant.rig_plant import RigPlant
 
 S = 1_000_000_000
 BED_SHARE = 0.35
-LINES = 14
 Call = tuple[Any, ...]
 
 
 @compiled
-def one_loop(n, moved, pressures, transport, heat):  # type: ignore[no-untyped-def]
-    """The floor: ``n`` seconds of pressures, transport with reactions, and heat of the bed."""
-    step = pressures[1]
+def one_loop(n, passed, pending, moved, pressures, transport, heat):  # type: ignore[no-untyped-def]
+    """The floor: ``n`` seconds of pressures, transport with reactions, and heat of the bed. ``passed`` and ``pending``
+    are the rows that one step fills and the next one empties; ``moved`` is what a second moves."""
     for _ in range(n):
-        pressures[3][VOLUME, :] = 0.0
-        step = advance_pressures(pressures[0], step, *pressures[2:])
-        transport[3][MOVED, :] = moved
+        passed[:] = 0.0
+        advance_pressures(*pressures)
+        pending[:] = moved
         transport_step(*transport)
         heat_bed(*heat)
-    return step
 
 
 def plant_figures(scale: Scale) -> Iterator[Figure]:
@@ -88,9 +88,7 @@ def bench_rig() -> RigDefinition:
 
 def running_plant(rig: RigDefinition, cells: int, flow_mL_min: float) -> RigPlant:
     """A plant of about ``cells`` cells whose pumps deliver reagent into the warm column."""
-    bed = round(BED_SHARE * cells)
-    each = max(1, round((cells - bed) / LINES))
-    with patch.multiple(layout, CELLS_BED=cells - each * LINES, CELLS_LINE_MIN=each, CELLS_LINE_MAX=each):
+    with patch.object(rig_plant, "build_layout", lambda of: with_cells(build_layout(of), cells)):
         plant = RigPlant(rig, 1)
     assert int(plant.contents.cell_count.sum()) == cells
     tell: Callable[[str, Action, float], str] = plant.tell
@@ -108,10 +106,23 @@ def running_plant(rig: RigDefinition, cells: int, flow_mL_min: float) -> RigPlan
     return plant
 
 
+def with_cells(layout: Layout, cells: int) -> Layout:
+    """The same network with ``cells`` in all, rings counted: about ``BED_SHARE`` in the column, the rest in lines."""
+    lines = [edge for edge in layout.edges if edge.kind == "line"]
+    (bed,) = (edge for edge in layout.edges if edge.kind == "column")
+    each = max(1, round((1 - BED_SHARE) * cells / sum(line.rings for line in lines)))
+    for line in lines:
+        line.cells = each
+    bed.cells = cells - sum(line.cells * line.rings for line in lines)
+    return layout
+
+
 @dataclass
 class Second:
     """What one second of the plant gave to its kernels; arrays are copies and go on living in ``run``."""
 
+    passed: Any
+    pending: Any
     moved: Any
     pressures: Call
     transport: Call
@@ -119,7 +130,7 @@ class Second:
 
     def run(self, seconds: int) -> None:
         """The floor."""
-        one_loop(seconds, self.moved, self.pressures, self.transport, self.heat)
+        one_loop(seconds, self.passed, self.pending, self.moved, self.pressures, self.transport, self.heat)
 
 
 def recorded_second(plant: RigPlant) -> Second:
@@ -142,8 +153,15 @@ def recorded_second(plant: RigPlant) -> Second:
         _advance(plant, 1)
     counts = {name: len(found) for name, found in calls.items()}
     assert counts == {"pressures": 1, "transport": 1, "heat": 1}, counts
-    transport = calls["transport"][0]
-    return Second(transport[3][MOVED].copy(), calls["pressures"][0], transport, calls["heat"][0])
+    pressures, transport = calls["pressures"][0], calls["transport"][0]
+    passed = pressures[_place(advance_pressures, "edge")][VOLUME]
+    pending = transport[_place(transport_step, "edge")][MOVED]
+    return Second(passed, pending, pending.copy(), pressures, transport, calls["heat"][0])
+
+
+def _place(kernel: Any, argument: str) -> int:
+    """Where an argument of a kernel stands."""
+    return list(inspect.signature(kernel.py_func).parameters).index(argument)
 
 
 def _copied(argument: Any, copies: dict[int, Any]) -> Any:

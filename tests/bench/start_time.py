@@ -2,10 +2,12 @@
 
 from __future__ import annotations
 
+import os
 import subprocess
 import sys
 import time
 from collections.abc import Iterator, Sequence
+from dataclasses import dataclass
 from pathlib import Path
 
 from bench.figures import Figure, Scale, Target, median
@@ -20,38 +22,52 @@ COMMANDS: dict[str, list[str]] = {
 }
 
 
+@dataclass(frozen=True, slots=True)
+class Took:
+    """Wall and processor time of one process [ms]."""
+
+    wall_ms: float
+    cpu_ms: float
+
+
 def start_figures(scale: Scale) -> Iterator[Figure]:
     """Wall time from starting the process to its end."""
     times = start_times(scale.pick(1, 15, 40))
-    floor_ms = median(times["floor"])
+    floor_ms = median([took.wall_ms for took in times["floor"]])
     for name, what, most_ms in (("help", "rigd --help", 150), ("check", "rigd check, 8 h sweep", 400)):
+        wall_ms = [took.wall_ms for took in times[name]]
         yield Figure(
             f"start.{name}",
             what,
             "ms",
-            median(times[name]),
+            median(wall_ms),
             floor_ms,
             "python -c pass",
             Target(value_max=most_ms),
-            f"median of {len(times[name])}, quickest {min(times[name]):.0f} ms",
+            f"median of {len(wall_ms)}, quickest {min(wall_ms):.0f} ms; processor "
+            f"{median([took.cpu_ms for took in times[name]]):.0f} ms",
         )
 
 
-def start_times(rounds: int) -> dict[str, list[float]]:
-    """Times of all commands [ms], in turn, after one unmeasured round that fills the disk cache."""
-    times: dict[str, list[float]] = {name: [] for name in COMMANDS}
+def start_times(rounds: int) -> dict[str, list[Took]]:
+    """Times of all commands, in turn, after one unmeasured round that fills the caches."""
+    times: dict[str, list[Took]] = {name: [] for name in COMMANDS}
     for number in range(rounds + 1):
         for name, arguments in COMMANDS.items():
-            took_ms = _run(arguments)
+            took = _run(arguments)
             if number:
-                times[name].append(took_ms)
+                times[name].append(took)
     return times
 
 
-def _run(arguments: Sequence[str]) -> float:
-    t0 = time.perf_counter()
-    done = subprocess.run([sys.executable, *arguments], capture_output=True, text=True, check=False)
-    took_ms = (time.perf_counter() - t0) * 1e3
+def _run(arguments: Sequence[str]) -> Took:
+    environment = {**os.environ}
+    environment.pop("PYTHONDONTWRITEBYTECODE", None)  # an installed program has its byte code
+    before, started_s = os.times(), time.perf_counter()
+    command = [sys.executable, *arguments]
+    done = subprocess.run(command, capture_output=True, text=True, check=False, env=environment)
+    wall_s, after = time.perf_counter() - started_s, os.times()
     if done.returncode:
         raise RuntimeError(f"rigd {' '.join(arguments)} ended with {done.returncode}: {done.stderr.strip()[-300:]}")
-    return took_ms
+    cpu_s = after.children_user + after.children_system - before.children_user - before.children_system
+    return Took(wall_s * 1e3, cpu_s * 1e3)

@@ -23,13 +23,18 @@ async def echo(asked_port: str, told_port: str, times: int) -> None:
     for descriptor in (asked, told):
         tty.setraw(descriptor)
 
-    def answered() -> None:
+    answered = asyncio.Event()
+
+    def readable() -> None:
         if os.read(asked, 65536):
             os.write(told, STOP_FRAME)
+            answered.set()
 
-    loop.add_reader(asked, answered)
+    loop.add_reader(asked, readable)
     for _ in range(times):
+        answered.clear()
         os.write(asked, ASK)
+        await answered.wait()
         await asyncio.sleep(PERIOD_s)
     loop.remove_reader(asked)
     os.close(asked)

@@ -92,6 +92,7 @@ class FarEnd:
         self.armed = False
         self.echoing = False
         self.stands_told = False
+        self.asked = 0
         self.sent_ns = 0
         self.first_ns = 0
         self.selector = selectors.DefaultSelector()
@@ -132,7 +133,7 @@ class FarEnd:
             sys.exit(0)
         for word in words:
             if word in (ECHO.encode(), LIVE.encode()):
-                self.echoing = word == ECHO.encode()
+                self.echoing, self.asked, self.sent_ns = word == ECHO.encode(), 0, 0
             elif word == GO.encode():
                 self.devices.back()
                 self.sent_ns = self.first_ns = 0
@@ -163,13 +164,16 @@ class FarEnd:
             self.sent_ns = 0
 
     def _echo(self, link: str, seen_ns: int) -> None:
-        """A request is answered with a frame at once; whatever comes on the other terminal is the echo."""
+        """A request is answered with a frame, one at a time; whatever comes on the other terminal is the echo."""
         if link == SENSORS:
-            self.sent_ns = time.monotonic_ns()
-            os.write(self.masters[SENSORS], ECHO_FRAME)
+            self.asked += 1
         elif self.sent_ns:
             say({"first_ns": seen_ns - self.sent_ns})
             self.sent_ns = 0
+        if self.asked and not self.sent_ns:
+            self.asked -= 1
+            self.sent_ns = time.monotonic_ns()
+            os.write(self.masters[SENSORS], ECHO_FRAME)
 
 
 def say(facts: dict[str, Any]) -> None:
