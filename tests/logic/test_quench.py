@@ -196,3 +196,30 @@ def test_the_sequence_moves_nothing_during_a_quench() -> None:
     rehearsal.run(30.0)
     late = [order for order in rehearsal.orders if order.t_ns >= asked_ns]
     assert {order.authority for order in late} == {Authority.QUENCH}
+
+
+def test_a_flush_that_does_not_get_on_is_cut_in_its_time() -> None:
+    rehearsal = filled(SOLVENT)
+    rehearsal.ask(Verb.STOP)
+    asked_ns = rehearsal.now_ns
+    rehearsal.deaf.update(("PU-A", "PU-B"))
+    for name in ("PU-A", "PU-B"):
+        rehearsal.pump(name).state = PumpState.STOPPED
+    rehearsal.run(900.0, until=lambda: stops(rehearsal)[-1].subject == "cut")
+    assert "the flush was not done in time (0.0 of" in stops(rehearsal)[-1].text
+    target = flush.target_mL(rehearsal.program)
+    at_least_s = 60.0 * target / rehearsal.program.rig.flush_mL_min
+    assert 2 * at_least_s < (rehearsal.now_ns - asked_ns) / 1e9 < 2 * at_least_s + 60.0 + 90.0
+
+
+def test_every_stop_event_names_its_cause() -> None:
+    rehearsal = filled(SOLVENT)
+    rehearsal.ask(Verb.STOP)
+    rehearsal.run(5.0)
+    rehearsal.sensors["PT-1"] = 9.0
+    rehearsal.run(3.0)
+    causes = [(event.subject, event.fields["cause"]) for event in stops(rehearsal)]
+    assert causes == [("none", ""), ("quench", "STOP-REQUEST"), ("cut", "PRESSURE-HIGH"), ("cut", "PRESSURE-HIGH")]
+    assert {order.source for order in rehearsal.orders if order.authority is Authority.CUT and order.t_ns > 0} == {
+        "PRESSURE-HIGH"
+    }

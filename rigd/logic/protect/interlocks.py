@@ -80,7 +80,10 @@ class Change:
 
 @dataclass(frozen=True, slots=True)
 class Interlocks:
-    """All of them. ``count`` causes were recorded in this group; ``released`` once everything had been reset."""
+    """All of them. ``count`` causes were recorded in this group; ``released`` once everything had been reset.
+
+    ``level`` is the stop asked for and ``driver`` the interlock that raised it to that.
+    """
 
     states: Mapping[str, Running]
     due_ns: int
@@ -89,6 +92,7 @@ class Interlocks:
     released: bool = False
     running: bool = False
     level: Stop = Stop.CUT
+    driver: str = ""
     permit: bool = False
 
 
@@ -171,6 +175,10 @@ def settle(program: Program, interlocks: Interlocks) -> Interlocks:
     tripped = [interlock for interlock in program.interlocks if not states[interlock.id].latch.permits]
     released = interlocks.released or not tripped
     level = max((interlock.stop for interlock in tripped), default=Stop.NONE)
+    driver = interlocks.driver if tripped else ""
+    if tripped and released and (level > interlocks.level or not driver):
+        leading = [interlock.id for interlock in tripped if interlock.stop is level]
+        driver = interlocks.first_out if interlocks.first_out in leading else leading[0]
     if tripped:
         level = max(level, interlocks.level)
     return replace(
@@ -178,6 +186,7 @@ def settle(program: Program, interlocks: Interlocks) -> Interlocks:
         due_ns=min(states[interlock.id].due_ns(interlock) for interlock in program.interlocks),
         released=released,
         level=level,
+        driver=driver,
         permit=released and level <= Stop.HOLD,
         first_out=interlocks.first_out if tripped else "",
         count=interlocks.count if tripped else 0,

@@ -100,7 +100,7 @@ def advance(scene: Scene, stopping: Stopping, interlocks: Interlocks) -> tuple[S
     if stopping.failed and level is Stop.QUENCH:
         level = Stop.CUT
     if level != stopping.level:
-        stopping = _change(scene, stopping, level, interlocks.first_out, events)
+        stopping = _change(scene, stopping, level, interlocks.driver, events)
     if stopping.flush is not None:
         stopping = _flush_on(scene, stopping, stopping.flush, events)
     if stopping.level >= Stop.QUENCH:
@@ -111,9 +111,9 @@ def advance(scene: Scene, stopping: Stopping, interlocks: Interlocks) -> tuple[S
     return stopping, events
 
 
-def _change(scene: Scene, stopping: Stopping, level: Stop, first_out: str, events: list[Event]) -> Stopping:
+def _change(scene: Scene, stopping: Stopping, level: Stop, driver: str, events: list[Event]) -> Stopping:
     assert level > stopping.level or level is Stop.NONE, "a stop never comes down but by a reset"
-    source = first_out or stopping.source or START_UP
+    source = driver or stopping.source or START_UP
     match level:
         case Stop.CUT:
             events.append(_event(scene, level, source, "Cut: all pumps stop, valves go to rest, baths to safe."))
