@@ -68,7 +68,3 @@ def test_a_scan_of_a_hundred_new_samples_takes_well_below_a_millisecond() -> Non
     took_us, floor_us = median_scan_us()
     print(f"scan {took_us:.0f} us, floor {floor_us:.1f} us")
     assert took_us < 1000
-
-
-if __name__ == "__main__":
-    print("scan %.0f us, floor %.1f us" % median_scan_us(2000))
