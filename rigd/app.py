@@ -30,7 +30,7 @@ from rigd.adapters.guard_plan import helper, will_facts, with_folder
 from rigd.adapters.journal_sqlite import SqliteJournal
 from rigd.adapters.open_link import open_link
 from rigd.adapters.places import SIMULATED, Daemon, announce, door_path, simulated_ports, write_json
-from rigd.adapters.plugins import driver_family, plant_maker
+from rigd.adapters.plugins import driver_family, plant_maker, simulator_maker
 from rigd.adapters.port_lock import lock_ports, unlock
 from rigd.config import load_pair
 from rigd.logic.program import Program, RunOptions, compile_program
@@ -42,6 +42,7 @@ from rigd.model.recipe import Recipe
 from rigd.model.rig import RigDefinition
 from rigd.ports.driver import Driver
 from rigd.ports.plant import FaultSpec, Plant
+from rigd.runtime.deep import DeepShell
 from rigd.runtime.dry import DryOptions, DryResult, DryShell
 from rigd.runtime.live import Live, Surroundings
 from rigd.runtime.permission import Permission
@@ -289,13 +290,15 @@ class DryRun:
 
 @dataclass(frozen=True, slots=True)
 class DrySettings:
-    """``seed`` 0 takes the rig file's; ``faults`` are injected before the start; ``watch`` is called each second."""
+    """``seed`` 0 takes the rig file's; ``faults`` are injected before the start; ``watch`` is called each second;
+    ``deep`` runs the live shell over emulated bytes instead of the fast shell."""
 
     seed: int = 0
     faults: tuple[FaultSpec, ...] = ()
     journal: Path | None = None
     watch: Callable[[int, CoreState], None] | None = None
     options: DryOptions = field(default_factory=DryOptions)
+    deep: bool = False
 
 
 def dry_run(rig_path: Path, recipe_path: Path, settings: DrySettings = DrySettings()) -> DryRun:
@@ -303,14 +306,21 @@ def dry_run(rig_path: Path, recipe_path: Path, settings: DrySettings = DrySettin
     pair = load_pair(rig_path, recipe_path)
     assert pair.recipe is not None
     program = compile_program(pair.rig, pair.recipe)
-    plant = plant_maker().make(pair.rig, settings.seed or pair.rig.simulation.seed)
+    seed = settings.seed or pair.rig.simulation.seed
+    plant = plant_maker().make(pair.rig, seed)
     for fault in settings.faults:
         plant.inject(fault)
     journal = None
     if settings.journal is not None:
         facts = _dry_facts(program, rig_path, recipe_path)
         journal = SqliteJournal(settings.journal, facts, pair.rig.tags)
-    result = DryShell(program, plant, cell_readers(pair.rig), journal, settings.watch).run(settings.options)
+    shell: DryShell | DeepShell
+    if settings.deep:
+        lines = simulator_maker().lines(pair.rig, plant, 1.0, seed)
+        shell = DeepShell(program, plant, lines, make_drivers(pair.rig), journal, settings.watch)
+    else:
+        shell = DryShell(program, plant, cell_readers(pair.rig), journal, settings.watch)
+    result = shell.run(settings.options)
     if journal is not None:
         journal.close(result.outcome)
     return DryRun(program, plant, result)

@@ -98,6 +98,10 @@ class SqliteJournal:
             return f"the disk does not keep up: {waiting} records wait"
         return "the journal's writer has ended" if not self._thread.is_alive() else ""
 
+    def behind(self) -> bool:
+        """True while so much waits that whoever can wait should."""
+        return self._queue.qsize() > LATE // 2 and self._thread.is_alive() and not self._trouble
+
     def close(self, outcome: str) -> None:
         """Write what is queued and the outcome, end the file; waits up to 10 s, then gives up with ``JournalError``."""
         if self._lost:

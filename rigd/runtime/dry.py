@@ -8,12 +8,9 @@ wall, on hashing or on set order.
 
 from __future__ import annotations
 
-import hashlib
 import heapq
-import json
-from collections.abc import Callable, Iterable, Mapping, Sequence
-from dataclasses import dataclass, field
-from typing import Any
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import dataclass
 
 from rigd.logic import scan
 from rigd.logic.program import Program
@@ -22,10 +19,11 @@ from rigd.model.devices import DeviceIdentity, DeviceStatus, LinkState
 from rigd.model.events import Event
 from rigd.model.intake import Intake
 from rigd.model.orders import Order, Outcome, Request, Result, Verb
-from rigd.model.samples import Quality, Reading, Sample, Spectrum
+from rigd.model.samples import Reading, Sample, Spectrum
 from rigd.ports.journal import Journal
 from rigd.ports.plant import Plant
 from rigd.runtime.polls import Poll, polls_of, samples_of
+from rigd.runtime.tape import Tape
 
 SIMULATED = DeviceIdentity(maker="rigd", model="simulated", serial_no="0", simulated=True)
 LONGEST_NS = 14 * 86_400 * 1_000_000_000
@@ -60,30 +58,6 @@ class DryResult:
     scans: int
 
 
-@dataclass(slots=True)
-class _Tape:
-    """Digest, peaks and events while the run goes on."""
-
-    hash: Any = field(default_factory=hashlib.sha256)
-    peak: dict[str, float] = field(default_factory=dict)
-    events: list[Event] = field(default_factory=list)
-
-    def samples(self, samples: Iterable[Sample]) -> None:
-        for sample in samples:
-            if sample.quality is Quality.GOOD and sample.value > self.peak.get(sample.tag, float("-inf")):
-                self.peak[sample.tag] = sample.value
-
-    def decided(self, orders: Sequence[Order], events: Sequence[Event]) -> None:
-        for order in orders:
-            self._line([order.number, order.unit, order.action, order.value, int(order.authority), order.t_ns])
-        for event in events:
-            self._line([event.kind, event.subject, event.t_ns, event.text, dict(sorted(event.fields.items()))])
-            self.events.append(event)
-
-    def _line(self, values: Sequence[object]) -> None:
-        self.hash.update(json.dumps(values, ensure_ascii=False, separators=(",", ":")).encode())
-
-
 def first_requests(program: Program, signer: str) -> tuple[Request, ...]:
     """What a person does at the start: reset, sign every item, start."""
     steps = [(Verb.RESET, "*"), (Verb.CONFIRM, "*"), (Verb.START, "")]
@@ -92,6 +66,11 @@ def first_requests(program: Program, signer: str) -> tuple[Request, ...]:
     return tuple(
         Request(f"person-{i}", verb, signer, (2 + i) * 1_000_000_000, target) for i, (verb, target) in enumerate(steps)
     )
+
+
+def unfinished(now_ns: int) -> RunEnd:
+    """The end of a rehearsal that did not come to one."""
+    return RunEnd("stopped", 1, f"The recipe was not over after {now_ns / 3.6e12:.1f} h and was ended here.")
 
 
 class DryShell:
@@ -119,7 +98,7 @@ class DryShell:
 
     def run(self, options: DryOptions = DryOptions()) -> DryResult:
         """Run until the core says that the run is over (plus ``linger_ns``), or ``limit_ns`` has passed."""
-        tape = _Tape()
+        tape = Tape()
         state = scan.initial(self._program, 0)
         for request in (*first_requests(self._program, options.signer), *options.requests):
             self._at(request.t_ns, request)
@@ -193,9 +172,8 @@ class DryShell:
         result = Result.REFUSED if refusal else Result.DONE
         return Outcome(order.number, order.unit, order.action, result, now_ns, refusal)
 
-    def _result(self, end: RunEnd | None, tape: _Tape, state: scan.CoreState, now_ns: int) -> DryResult:
-        if end is None:
-            end = RunEnd("stopped", 1, f"The recipe was not over after {now_ns / 3.6e12:.1f} h and was ended here.")
+    def _result(self, end: RunEnd | None, tape: Tape, state: scan.CoreState, now_ns: int) -> DryResult:
+        end = end or unfinished(now_ns)
         return DryResult(
             end.outcome,
             end.exit_code,

@@ -53,6 +53,11 @@ class ScanLoop:
         self._wake_ns = 0
         self.listeners: list[Listener] = []
 
+    @property
+    def state(self) -> core.CoreState:
+        """What the core remembers after the last scan."""
+        return self._state
+
     def snapshot(self) -> dict[str, object]:
         """The core's own view of the rig now."""
         return core.snapshot(self._program, self._state, self._clock.now_ns())

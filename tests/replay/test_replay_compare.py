@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 import os
 import signal
 import subprocess
@@ -12,10 +13,12 @@ from pathlib import Path
 import pytest
 from fakes.recorded import BLOCK, RECIPE, RIG, copy_of, recorded, spoilt
 
-from rigd.adapters.journal_reader import JournalReader
+from rigd.adapters.journal_reader import JournalReader, ScanRecord
 from rigd.model.errors import JournalError
-from rigd.model.events import EventKind
-from rigd.runtime.replay import NOTHING, replay
+from rigd.model.events import Event, EventKind
+from rigd.model.intake import NOTHING as NOTHING_NEW
+from rigd.ports.plant import FaultSpec
+from rigd.runtime.replay import NOTHING, difference, replay
 
 
 def trips(run: Path) -> list[str]:
@@ -136,20 +139,23 @@ def test_a_gap_ends_the_comparison_with_its_scans_named(tmp_path):
     assert "lacks scans 101 to 120" in found.gap
 
 
-def test_not_a_number_in_the_data_is_compared_like_any_value(tmp_path):
-    """A sensor that says nothing usable: the same on both sides, in samples and in the fields of events."""
-    run = copy_of(recorded(), tmp_path)
-    with spoilt(run) as tables:
-        ((tag,),) = tables.execute("SELECT id FROM tags WHERE tag = 'TT-2'")
-        tables.execute("UPDATE samples SET value = NULL WHERE tag = ? AND t_ns >= 60e9", (tag,))
+def test_not_a_number_in_the_data_is_compared_like_any_value():
+    """A broken wire reads as no number at all; the same on both sides, in samples and in the fields of events."""
+    run = recorded(FaultSpec("open", "TT-1", onset_s=40.0))
     with JournalReader(run) as journal:
-        values = journal.series("TT-2").values
-    assert values[-1] != values[-1]
-    found = replay(run)
-    assert found.first is None or "TT-2" in found.first.actual
-    with JournalReader(run) as journal:
-        assert replay(run).different == found.different
-        assert sum(1 for _ in journal.scans()) == found.scans
+        last = journal.series("TT-1").values[-1]
+        told = [event for event in journal.events() if "TT-1" in event.text]
+    assert math.isnan(last)
+    assert told
+    assert replay(run).same
+
+
+def test_not_a_number_in_an_event_is_equal_to_itself():
+    def scan(value: float) -> ScanRecord:
+        return ScanRecord(1, 0, "", NOTHING_NEW, (), (Event(EventKind.NOTE, "PT-1", 0, "x", {"value": value}),))
+
+    assert difference(scan(math.nan), (), scan(float("nan")).events) is None
+    assert difference(scan(math.nan), (), scan(1.0).events) is not None
 
 
 def test_another_version_of_the_program_is_said(tmp_path):
@@ -216,7 +222,7 @@ def test_a_file_cut_short_or_no_database_at_all(tmp_path):
     journal = run / "run.sqlite"
     whole = journal.read_bytes()
     journal.write_bytes(whole[: len(whole) // 2])
-    with pytest.raises(JournalError, match="damaged|cannot be"):
+    with pytest.raises(JournalError, match=r"damaged|cannot be"):
         replay(run)
     for content in (b"", b"not a database at all, but a letter" * 100):
         journal.write_bytes(content)

@@ -17,10 +17,11 @@ from rigd.console.output import Output, json_option
 @click.option("--seed", type=click.IntRange(min=1), default=None, help="Seed of noise; the rig file's if not given.")
 @click.option("--fault", "faults", multiple=True, metavar="FAULT", help=f"Inject a fault: {FORM}. May be repeated.")
 @click.option("--out", type=click.Path(path_type=Path, file_okay=False), help="Keep journal and report in this folder.")
+@click.option("--deep", is_flag=True, help="The live shell, the drivers and every byte, in virtual time; much slower.")
 @json_option
 @click.pass_obj
 def dry_run(
-    output: Output, rig: Path, recipe: Path, seed: int | None, faults: tuple[str, ...], out: Path | None
+    output: Output, rig: Path, recipe: Path, seed: int | None, faults: tuple[str, ...], out: Path | None, deep: bool
 ) -> int:
     """Rehearse RECIPE on the simulated RIG, much faster than the clock.
 
@@ -37,7 +38,7 @@ def dry_run(
     journal = _journal(out) if out is not None else None
     options = DryOptions(limit_ns=longest_ns(rig, recipe))
     with show_progress(output) as watch:
-        settings = DrySettings(seed=seed or 0, faults=specs, journal=journal, watch=watch, options=options)
+        settings = DrySettings(seed or 0, specs, journal, watch, options, deep)
         done = rehearse(rig, recipe, settings)
     wall_s = time.monotonic() - began
     data = rehearsed(done, out)
