@@ -35,6 +35,12 @@ class Row:
 
 ROWS = (
     Row(
+        "park-below-regulator",
+        "park.pressure_max",
+        '"2 bar"',
+        (('pressure_max = "2.5 bar"', 'pressure_max = "2 bar"'),),
+    ),
+    Row(
         "freezing",
         "sheet.freezes_below",
         "freezes_below",

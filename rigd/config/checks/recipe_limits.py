@@ -16,6 +16,7 @@ def check_recipe_limits(context: RecipeContext) -> None:
         _freezing(context, place, degC)
     _rest_above_freezing(context)
     _leak_test(context)
+    _park_above_regulators(context)
     _trips_above_sheet(context)
     _stops_fit_the_chemistry(context)
     if not context.chillers and context.file.sweep is not None:
@@ -114,6 +115,18 @@ def _leak_test(context: RecipeContext) -> None:
         context.found.error(
             "range-empty", ("leak_test", "largest_drop"), message, "allow a small part of the pressure only"
         )
+
+
+def _park_above_regulators(context: RecipeContext) -> None:
+    """A back-pressure regulator keeps its set pressure in the path at rest, so less can never be waited for."""
+    park = context.file.park
+    for regulator in context.rig.regulators:
+        if park is not None and park.pressure_max <= regulator.set_bar:
+            message = (
+                f"{park.pressure_max:g} bar is never reached: {regulator.id} keeps {regulator.set_bar:g} bar at rest"
+            )
+            remedy = f"allow more than {regulator.set_bar:g} bar, and release the rest by hand before opening a fitting"
+            context.found.error("park-below-regulator", ("park", "pressure_max"), message, remedy)
 
 
 def _trips_above_sheet(context: RecipeContext) -> None:
