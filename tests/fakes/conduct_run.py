@@ -10,6 +10,7 @@ from fakes.kinematic_rig import KinematicRig
 from rigd.logic import conduct
 from rigd.logic.program import Program, RunOptions, compile_program
 from rigd.logic.view import Verdict, View
+from rigd.model.devices import DeviceStatus, LinkState
 from rigd.model.events import Event, EventKind
 from rigd.model.orders import Request, Stop, Verb
 from rigd.model.recipe import Recipe
@@ -37,11 +38,17 @@ class ConductRun:
         self.events: list[Event] = []
         self.requests: list[Request] = []
         self.scans = 0
+        self._online = {d.id: DeviceStatus(d.id, LinkState.ONLINE, 0) for d in self.rig.devices}
         self._next = {tag.id: tag.period_ns for tag in self.rig.tags}
 
     def ask(self, verb: Verb, target: str = "", who: str = "tester") -> None:
         """A request for the next scan."""
         self.requests.append(Request(f"r{len(self.events)}-{len(self.requests)}", verb, who, self.plant.now_ns, target))
+
+    def silence(self, tag: str) -> None:
+        """This tag is not seen any more."""
+        del self.samples[tag]
+        self._next[tag] = 1 << 62
 
     def start(self) -> None:
         """Sign the checklist and start."""
@@ -62,7 +69,7 @@ class ConductRun:
         """Go to the next time at which something happens."""
         wake_ns = max(self.state.due_ns, self.plant.now_ns + 1)
         slow = self.plant.valves[self.plant.path.outlet_valve].position != "shut"
-        skip = {"PT-1"} if slow else set()
+        skip = {tag.id for tag in self.rig.tags if tag.measures == "pressure"} if slow else set()
         to_ns = min([wake_ns, *(t for tag, t in self._next.items() if tag not in skip)])
         self.plant.advance(max(to_ns, self.plant.now_ns + 1))
         now_ns = self.plant.now_ns
@@ -76,6 +83,7 @@ class ConductRun:
             self.verdict,
             outcomes=self.plant.outcomes(),
             requests=tuple(self.requests),
+            devices=self._online,
             fresh=fresh,
         )
         self.requests = []

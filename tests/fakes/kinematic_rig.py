@@ -16,7 +16,7 @@ from rigd.logic.demand import Demand
 from rigd.logic.flow_path import FlowPath, flow_path
 from rigd.model.devices import VALVE_MOVING, PumpState
 from rigd.model.orders import Action, Outcome, Result
-from rigd.model.rig import Pump, RigDefinition
+from rigd.model.rig import LiquidRole, Pump, RigDefinition, Tag
 from rigd.model.samples import Sample
 
 Mix = tuple[tuple[str, float], ...]
@@ -214,6 +214,7 @@ class KinematicRig:
     def __init__(self, rig: RigDefinition, seed: int = 1) -> None:
         self.rig, self.path = rig, flow_path(rig)
         self.now_ns = 0
+        self.reagents = {liquid.id for liquid in rig.liquids if liquid.role is LiquidRole.REAGENT}
         self.random = random.Random(seed)
         self.pumps = {pump.id: self._pump(pump, self.path) for pump in rig.pumps}
         self.supplies = {
@@ -293,7 +294,7 @@ class KinematicRig:
         """When nearly pure reagent first came out of a pump's line."""
         passed_mL = 0.0
         for parcel in out:
-            pure = sum(share for liquid, share in parcel.mix if liquid.startswith("feed")) > 0.985
+            pure = self.reagent(parcel) > 0.985
             if pure and name not in self.reagent_at_switchover_s:
                 self.reagent_at_switchover_s[name] = self.now_ns / 1e9 + 60 * passed_mL / rate
             passed_mL += parcel.volume_mL
@@ -326,11 +327,15 @@ class KinematicRig:
         total = sum(pump.rate for pump in self.pumps.values() if pump.state is PumpState.DELIVERING)
         if total <= 0:
             return
-        seen = self.sections[-1].at(self.path.trunk_mL - self.path.past_part_mL("IR"))
-        wet = sum(share for liquid, share in seen.mix if liquid.startswith("feed")) if seen else 0.0
+        seen = self.sections[-1].at(self.path.trunk_mL - self.path.past_part_mL(self.rig.cells[0].id))
+        wet = self.reagent(seen) if seen else 0.0
         aim = (1 - math.exp(-0.6 / total)) * wet
         lag_s = 0.3 * self.path.residence_s(dict.fromkeys(self.pumps, total / len(self.pumps)))
         self.signal += (aim - self.signal) * (1 - math.exp(-dt_s / lag_s))
+
+    def reagent(self, parcel: Parcel) -> float:
+        """The part of a parcel that is reagent of any kind."""
+        return sum(share for liquid, share in parcel.mix if liquid in self.reagents)
 
     # ---- samples and orders
 
@@ -340,16 +345,26 @@ class KinematicRig:
         return {tag: Sample(tag, values[tag], self.now_ns) for tag in fresh}
 
     def _values(self) -> dict[str, float]:
+        values = self._feedback()
+        for tag in self.rig.tags:
+            if tag.id not in values:
+                values[tag.id] = self._reading(tag)
+        return values
+
+    def _reading(self, tag: Tag) -> float:
+        """What a sensor shows, by what it measures."""
         noise = self.random.gauss(0.0, 1.0)
-        values = {
-            "PT-1": self.pressure_bar + 0.003 * noise,
-            "TT-1": self.bath_degC - 0.2 + 0.02 * noise,
-            "TT-2": self.bath_degC + 0.02 * noise,
-            "CH.bath": self.bath_degC,
-            "CH.setpoint": self.set_degC,
-            "CH.circulating": float(self.circulating),
-            "IR.conversion": self.signal + 0.002 * noise,
-        }
+        if tag.measures == "pressure":
+            return self.pressure_bar + 0.003 * noise
+        if tag.measures == "temperature":
+            return self.bath_degC - (0.2 if tag.at.endswith(".middle") else 0.0) + 0.02 * noise
+        return self.signal + 0.002 * noise
+
+    def _feedback(self) -> dict[str, float]:
+        values: dict[str, float] = {}
+        for chiller in self.rig.chillers:
+            shown = {"bath": self.bath_degC, "setpoint": self.set_degC, "circulating": float(self.circulating)}
+            values |= {f"{chiller.id}.{key}": value for key, value in shown.items()}
         for name, pump in self.pumps.items():
             flow = pump.rate if pump.state is PumpState.DELIVERING else 0.0
             standby = pump.filling.level_mL if len(pump.syringes) > 1 else 0.0

@@ -319,8 +319,7 @@ def test_start_needs_the_permit() -> None:
 
 def test_start_needs_good_samples() -> None:
     run = waiting()
-    del run.samples["PU-A.level"]
-    run.plant.now_ns += 1
+    run.silence("PU-A.level")
     run.ask(Verb.CONFIRM, "*")
     assert "no good value: PU-A.level" in refusal(run)
 

@@ -115,8 +115,7 @@ def _swap_now(play: PumpLayout, track: PumpTrack, want: Want, now_ns: int) -> bo
         return want.urgent and spent and track.at_rest and want.may_fill and want.need_mL > 0.0
     if track.active != want.label:
         return want.urgent
-    enough_mL = 0.95 * min(want.level_mL, play.pump.stroke_mL)
-    return want.swap and track.standby_mL > max(level_mL + 0.05, enough_mL)
+    return want.swap
 
 
 def _dual_fill(play: PumpLayout, track: PumpTrack, want: Want, now_ns: int) -> float:

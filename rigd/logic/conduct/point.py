@@ -14,7 +14,15 @@ from dataclasses import dataclass, field, replace
 from rigd.logic.conduct.conditioning import NEVER_NS, band_since_ns
 from rigd.logic.conduct.means import Means, merged
 from rigd.logic.conduct.point_events import abandoned, collected, interrupted, settled_event, started, unsettled_event
-from rigd.logic.conduct.point_needs import another_try_mL, collect_mL, gated, point_mL, settle_rule, signal_s
+from rigd.logic.conduct.point_needs import (
+    another_try_mL,
+    collect_mL,
+    gated,
+    point_mL,
+    settle_mL,
+    settle_rule,
+    signal_s,
+)
 from rigd.logic.conduct.switchover import label
 from rigd.logic.conduct.wants import Move, PointResult, Prompt, Scene, Want, Wants
 from rigd.logic.estimators import turnovers
@@ -107,27 +115,64 @@ def broken_off(scene: Scene, memory: Memory) -> tuple[PointResult | None, tuple[
 
 
 def _wants(scene: Scene, memory: Memory, point: Point, outlet: str) -> Wants:
-    pumps = {name: _want(scene, memory, point, name) for name in point.flows_mL_min if name in scene.layout.pumps}
+    names = [name for name in point.flows_mL_min if name in scene.layout.pumps]
+    again = memory.step in ("set", "settle") and any(_short(scene, memory, point, name) for name in names)
+    pumps = {name: _want(scene, memory, point, name, again) for name in names}
     return Wants(pumps, outlet, point.temperature_degC, together=True)
 
 
-def _want(scene: Scene, memory: Memory, point: Point, name: str) -> Want:
-    """Liquid for this point; refills only where they do no harm."""
-    layout, play, track = scene.layout, scene.layout.pumps[name], scene.tracks[name]
+def _short(scene: Scene, memory: Memory, point: Point, name: str) -> bool:
+    """True when an active syringe no longer holds the fraction and it is too late to wait for a change-over."""
+    flow = point.flows_mL_min[name]
+    wanted_mL = collect_mL(scene.layout, point, name) + scene.layout.pumps[name].guard_mL(flow)
+    in_time = scene.layout.pumps[name].dual and _until_last_change_mL(scene, memory, point, name) > 0.0
+    return flow > 0 and not in_time and scene.tracks[name].level_at(scene.now_ns) < wanted_mL
+
+
+def _until_last_change_mL(scene: Scene, memory: Memory, point: Point, name: str) -> float:
+    """What a pump may still deliver before a change-over begins to cost time: one exchange must follow it."""
+    volumes = scene.layout.recipe.settle.volumes - 1.1
+    return settle_mL(scene.layout, point, name, max(volumes, 0.3)) - _passed_of(scene, memory, name)
+
+
+def _passed_of(scene: Scene, memory: Memory, name: str) -> float:
+    return scene.since_mL(memory.marks).get(name, 0.0) if memory.marks else 0.0
+
+
+def _want(scene: Scene, memory: Memory, point: Point, name: str, again: bool) -> Want:
+    """Liquid for this point; refills and change-overs only where they do no harm.
+
+    ``again``: a pump ran short at the end; all that cannot give another exchange and the fraction are charged together.
+    """
+    layout, play = scene.layout, scene.layout.pumps[name]
     liquid, flow = label(play, scene.spec.reagent), point.flows_mL_min[name]
+    later_mL = scene.needs_mL.get(name, 0.0)
+    if flow <= 0:
+        return Want(liquid, may_fill=False)
+    level_mL = scene.tracks[name].level_at(scene.now_ns)
+    if memory.step not in ("set", "settle"):
+        rest_mL = _rest(scene, memory, name)
+        return Want(liquid, flow, rest_mL + later_mL, rest_mL, may_fill=play.dual and rest_mL > level_mL)
     whole_mL, fraction_mL = point_mL(layout, point, name, scene.spec.reagent), collect_mL(layout, point, name)
-    passed_mL = scene.since_mL(memory.marks).get(name, 0.0) if memory.marks else 0.0
-    here_mL = max(whole_mL - passed_mL, fraction_mL) if memory.step in ("set", "settle") else _rest(scene, memory, name)
-    level_at = track.level_at(scene.now_ns)
-    short = memory.step in ("set", "settle") and level_at < fraction_mL + play.guard_mL(flow)
-    if short:
-        here_mL = another_try_mL(layout, point, name)
-    need_mL = here_mL + scene.needs_mL.get(name, 0.0) + (level_at if short and play.dual else 0.0)
-    asks = play.dual or (memory.step == "set" and name not in memory.topped)
-    level_mL = here_mL if asks else min(fraction_mL, here_mL)
-    swap = memory.step in ("set", "settle") and (short or (level_at < level_mL and _early(scene, memory)))
-    may_fill = memory.step in ("set", "settle") or (play.dual and here_mL > level_at)
-    return Want(liquid, flow, need_mL if flow > 0 else 0.0, level_mL, may_fill=may_fill, swap=swap)
+    here_mL = max(whole_mL - _passed_of(scene, memory, name), fraction_mL)
+    if not play.dual:  # filled at rest, so that all that was seen of the settling is lost: then for a whole point
+        asked_mL = whole_mL if memory.step == "set" and name not in memory.topped else fraction_mL
+        return Want(liquid, flow, (whole_mL if again else here_mL) + later_mL, asked_mL)
+    another_mL = another_try_mL(layout, point, name)
+    if again and level_mL < another_mL:
+        return Want(liquid, flow, another_mL + level_mL + later_mL, another_mL, swap=True)
+    swap = _better_first(scene, memory, point, name, here_mL)
+    return Want(liquid, flow, here_mL + later_mL, here_mL, swap=swap)
+
+
+def _better_first(scene: Scene, memory: Memory, point: Point, name: str, here_mL: float) -> bool:
+    """True when the standby syringe should deliver first, so that no change-over comes late in the settling."""
+    track = scene.tracks[name]
+    level_mL, standby_mL = track.level_at(scene.now_ns), track.standby_mL
+    in_time_mL = _until_last_change_mL(scene, memory, point, name)
+    if in_time_mL <= 0.0 or level_mL >= 0.95 * here_mL or level_mL + standby_mL < 0.95 * here_mL:
+        return False
+    return standby_mL >= 0.95 * here_mL or standby_mL <= in_time_mL < level_mL
 
 
 def _rest(scene: Scene, memory: Memory, name: str) -> float:
@@ -135,14 +180,6 @@ def _rest(scene: Scene, memory: Memory, name: str) -> float:
     point = scene.spec.point
     assert point is not None, "a point phase without a point"
     return max(0.0, collect_mL(scene.layout, point, name) - scene.since_mL(memory.at_divert).get(name, 0.0))
-
-
-def _early(scene: Scene, memory: Memory) -> bool:
-    """True while a change-over costs nothing, because more than one exchange is still to come."""
-    if memory.marks is None:
-        return True
-    done = turnovers(scene.layout.path, scene.since_mL(memory.marks))
-    return done < max(0.3, scene.layout.recipe.settle.volumes - 1.2)
 
 
 def _set(scene: Scene, memory: Memory, point: Point) -> Move[Memory]:

@@ -22,8 +22,8 @@ class Want:
 
     ``need_mL``: still wanted of this liquid before the next planned change; fills are never larger, so that little is
     left to run out then. ``level_mL``: wanted ready at hand; below it the pump fills (a single one stops for it).
-    ``batch_mL`` bounds one fill. ``urgent``: change over at once instead of running out. ``swap``: change to a fuller
-    standby of the same liquid now.
+    ``batch_mL`` bounds one fill. ``urgent``: change over at once instead of running out. ``swap``: change to a
+    standby of the same liquid, once it needs no filling.
     """
 
     label: str
