@@ -206,7 +206,18 @@ def charged(plant: RigPlant, species: str, mol_m3: float, mL: float = 50.0) -> N
     contents.cells[contents.slots(layout.edge_index["L-1"]), column] = mol_m3
 
 
-def outlet(plant: RigPlant, species: str) -> float:
-    """Concentration that leaves the column now [mol/m3]."""
+OUTLET_S = 4.0
+
+
+def outlet(plant: RigPlant, species: str, window_s: float = OUTLET_S) -> float:
+    """Concentration [mol/m3] of what leaves during the next ``window_s``, from what the flask collects.
+
+    (A node shows the mean of the last part of a step only, which leads by up to half a step.)
+    """
+    key = f"amount:flask:{species}"
     plant.settle()
-    return float(plant.contents.node_c[plant.layout.node_index["COL.out"], plant.contents.species.index(species)])
+    before = plant.truth()
+    plant.advance(plant.now_ns + round(window_s * S_NS))
+    plant.settle()
+    after = plant.truth()
+    return (after[key] - before[key]) / (after["volume:flask"] - before["volume:flask"]) * 1e3

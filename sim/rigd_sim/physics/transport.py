@@ -23,6 +23,8 @@ HELD, INFLOW, OUTFLOW, NODE_ROWS = 0, 1, 2, 3
 """Rows of ``node``: volume [m3] and, for one step, what enters and leaves."""
 ENDLESS, WAITING, DONE, MARK_ROWS = 0, 1, 2, 3
 """Rows of ``mark`` (integers): composition never changes; inflows not yet known; handled."""
+DIFFUSION_NUMBER = 1.0
+"""Largest D dt/dx^2 of one implicit step of dispersion."""
 EDGE, PLACE = 0, 1
 """Rows of ``bed`` (integers): edge of the column, its first place."""
 
@@ -131,10 +133,59 @@ def _react_rows(rows: Floats, dt: float, t: float, kin: Floats, species: int, wo
         react(rows, i, dt, kin, species, work)
 
 
+@inner
+def _diffuse_tubes(link: Ints, edge: Floats, cells: Floats, bed: Ints, part: float, axial: float, work: Floats) -> None:
+    """Radial exchange over ``part`` where liquid moves, diffusion along all tubes over ``axial`` seconds."""
+    for e in range(edge.shape[1]):
+        packed = 0
+        for b in range(bed.shape[1]):
+            if bed[EDGE, b] == e:
+                packed = 1
+        if packed or edge[EXCHANGE, e] <= 0.0:
+            continue
+        first = e == 0 or edge[RADIAL, e - 1] == 0.0
+        if edge[RADIAL, e] > 0.0 and first and (axial > 0.0 or edge[MOVED, e] != 0.0):
+            exchange_rings(cells, link, edge, e, part if edge[MOVED, e] != 0.0 else axial, work)
+        if axial > 0.0:
+            s, n, v = link[START, e], link[CELLS, e], edge[CELL_VOLUME, e]
+            disperse(cells, s, n, v, edge[FILL, e], edge[EXCHANGE, e] * axial, work)
+
+
+@inner
+def _work_bed(
+    b: int,
+    dt: float,
+    link: Ints,
+    edge: Floats,
+    cells: Floats,
+    bed: Ints,
+    bed_rate: Floats,
+    beads: Floats,
+    place: Floats,
+    activity: Floats,
+    kin: Floats,
+    species: int,
+    work: Floats,
+) -> None:
+    """Dispersion, exchange with the beads and reactions of one bed over ``dt``."""
+    e = bed[EDGE, b]
+    p = bed[PLACE, b]
+    s, n, v, fill = link[START, e], link[CELLS, e], edge[CELL_VOLUME, e], edge[FILL, e]
+    spread = edge[EXCHANGE, e] * dt
+    times = 1 + int(spread / v / DIFFUSION_NUMBER)  # backward Euler is first order in time
+    if spread > 0.0:
+        for _ in range(times):
+            disperse(cells, s, n, v, fill, spread / times, work)
+    exchange_beads(cells, s, n, v, fill, beads, p, bed_rate[0, b], bed_rate[1, b] * dt)
+    if kin.shape[0] > 0:
+        react_bed(cells, s, n, v, fill, dt, p, place, activity, kin, species, work)
+
+
 @compiled
 def transport_step(
     dt: float,
     parts: int,
+    bed_parts: int,
     link: Ints,
     edge: Floats,
     cells: Floats,
@@ -153,29 +204,22 @@ def transport_step(
     amount: Floats,
     work: Floats,
 ) -> None:
-    """Carry the edges' volumes through in ``parts`` equal parts, with dispersion, beads and reactions.
+    """Carry the edges' volumes through in ``parts`` equal parts; beads and bed reactions act ``bed_parts`` times.
 
     Reactions act on what is in the bed after each part; a portion that enters gains what a portion that leaves lacks,
     so the contact time is right to second order. ``bed_rate`` rows: bead liquid per place [m3], exchange [1/s].
     ``amount`` and ``work`` (8 rows as wide as columns, reactions or slots) are scratch.
     """
     part = dt / parts
-    for _ in range(parts):
+    bed_dt = 0.0
+    for step in range(parts):
         move(1.0 / parts, link, edge, cells, node, node_c, mark, amount, work)
-        for e in range(edge.shape[1]):
-            if edge[EXCHANGE, e] > 0.0:
-                s, n, v = link[START, e], link[CELLS, e], edge[CELL_VOLUME, e]
-                disperse(cells, s, n, v, edge[FILL, e], edge[EXCHANGE, e] * part, work)
-            if edge[RADIAL, e] > 0.0 and (e == 0 or edge[RADIAL, e - 1] == 0.0):
-                exchange_rings(cells, link, edge, e, part, work)
-        for b in range(bed.shape[1]):
-            e = bed[EDGE, b]
-            s, n, v = link[START, e], link[CELLS, e], edge[CELL_VOLUME, e]
-            exchange_beads(cells, s, n, v, edge[FILL, e], beads, bed[PLACE, b], bed_rate[0, b], bed_rate[1, b] * part)
-            if kin.shape[0] > 0:
-                react_bed(
-                    cells, s, n, v, edge[FILL, e], part, bed[PLACE, b], place, activity, kin, species, work
-                )  # fmt: skip
+        _diffuse_tubes(link, edge, cells, bed, part, dt if step == parts - 1 else 0.0, work)
+        bed_dt += part
+        if (step + 1) * bed_parts // parts > step * bed_parts // parts:
+            for b in range(bed.shape[1]):
+                _work_bed(b, bed_dt, link, edge, cells, bed, bed_rate, beads, place, activity, kin, species, work)
+            bed_dt = 0.0
         if in_tubes:
             _react_rows(cells, part, room, kin, species, work)
             _react_rows(node_c, part, room, kin, species, work)

@@ -41,6 +41,7 @@ BEAD_DIFFUSION_SHARE = 0.2
 PARTS_MAX = 24
 SUPPLY_COARSENESS = 8.0
 SMEARING = 0.2
+BED_CELLS = 2.0
 ADSORPTION_BLOCK = 3
 EMPTY_M3 = 1e-9
 NEARLY_EMPTY_M3 = 2e-6
@@ -268,14 +269,23 @@ class Contents:
         allowed = np.maximum(self._least, self._spread / np.sqrt(1.0 + 0.5 * peclet))
         return int(min(max(math.ceil(float((moved / allowed).max())), 1), PARTS_MAX))
 
+    def _bed_parts(self, parts: int) -> int:
+        """Beads and reactions act before the liquid in any bed has moved on by more than ``BED_CELLS`` cells."""
+        kernel = self.bed[0]
+        if not kernel.size:
+            return 1
+        cells = float((np.abs(self.moved[kernel]) / self.cell_volume[kernel]).max())
+        return min(parts, max(1, math.ceil(cells / BED_CELLS)))
+
     def advance(self, dt: float) -> None:
         """Carry the pending volumes through, react and disperse over ``dt``; pending is then zero."""
         k = self.kinetics
         np.multiply(self.pending[self.owner], self.share, out=self.moved)
         parts = self._parts(dt)
         transport_step(
-            dt, parts, self.link, self.edge, self.cells, self.node, self.node_c, self.mark, self.bed, self.bed_rate,
-            self.beads, self.place, self.activity, k.table, k.species, k.in_tubes, self.room_K, *self._scratch,
+            dt, parts, self._bed_parts(parts), self.link, self.edge, self.cells, self.node, self.node_c, self.mark,
+            self.bed, self.bed_rate, self.beads, self.place, self.activity, k.table, k.species, k.in_tubes,
+            self.room_K, *self._scratch,
         )  # fmt: skip
         self.pending[:] = 0.0
 
