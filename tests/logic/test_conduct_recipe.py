@@ -170,6 +170,7 @@ def test_returns_and_blanks() -> None:
     results = conduct.points(run.state)
     assert [(r.id, r.status) for r in results] == [(p.id, "collected") for p in points]
     assert results[2].temperature_degC == pytest.approx(49.8, abs=1.0)
+    assert math.isnan(results[1].conversion), "a blank has no conversion"
     assert results[3].conversion == pytest.approx(results[0].conversion, abs=0.01)
     blank = [p for p in run.plant.flask if reagent(p) < 0.5]
     assert sum(p.volume_mL for p in blank) == pytest.approx(0.5, rel=0.15)

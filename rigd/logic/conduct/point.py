@@ -84,7 +84,7 @@ def step(scene: Scene, memory: Memory) -> Move[Memory]:
 def result(scene: Scene, memory: Memory, point: Point, status: str) -> PointResult:
     """What is known of the point now."""
     signal = scene.layout.recipe.settle.signal
-    conversion = signal if signal.endswith(".conversion") else ""
+    measured = scene.spec.reagent and signal.endswith(".conversion")  # of solvent alone there is nothing to convert
     end_ns = memory.end_ns or (scene.now_ns if memory.collect_ns else 0)
     taken_mL = sum(scene.since_mL(memory.at_collect).values()) if memory.collect_ns and not memory.end_ns else 0.0
     return PointResult(
@@ -95,7 +95,7 @@ def result(scene: Scene, memory: Memory, point: Point, status: str) -> PointResu
         residence_time_s=memory.residence_s,
         settled=memory.settled,
         settle_s=(memory.settled_ns - memory.settle_ns) / 1e9 if memory.settled_ns else 0.0,
-        conversion=memory.means.mean(conversion) if conversion else math.nan,
+        conversion=memory.means.mean(signal) if measured else math.nan,
         values=memory.means.values(),
         collected_mL=memory.collected_mL or taken_mL,
         collect_start_ns=memory.collect_ns,
