@@ -30,6 +30,7 @@ from rigd_sim.plant.rig_plant import RigPlant
 
 S = 1_000_000_000
 BED_SHARE = 0.35
+STROKE_mL = 50.0
 Call = tuple[Any, ...]
 
 
@@ -83,7 +84,7 @@ def bench_rig() -> RigDefinition:
     more = (Species("ether", "diethyl ether", 74.12), Species("tracer", "tracer", 100.0))
     six = Chemistry("six species", (*chemistry.species, *more), (*chemistry.reactions, second), "acid", "ester")
     rig = two_pump_rig(six)
-    return replace(rig, pumps=tuple(replace(pump, stroke_mL=100.0, refill_rate_mL_min=800.0) for pump in rig.pumps))
+    return replace(rig, pumps=tuple(replace(pump, stroke_mL=STROKE_mL) for pump in rig.pumps))
 
 
 def running_plant(rig: RigDefinition, cells: int, flow_mL_min: float) -> RigPlant:
@@ -94,15 +95,17 @@ def running_plant(rig: RigDefinition, cells: int, flow_mL_min: float) -> RigPlan
     tell: Callable[[str, Action, float], str] = plant.tell
     for valve, position in (("V-A", 1.0), ("V-B", 1.0)):
         assert not tell(valve, Action.MOVE, position)
+    plant.advance(3 * S)  # a pump that draws from a valve on its way draws vapour
     for pump in ("PU-A", "PU-B"):
-        assert not tell(pump, Action.FILL, 100.0)
+        assert not tell(pump, Action.FILL, STROKE_mL)
     tell("CH", Action.SET_TEMPERATURE, 60.0)
     tell("CH", Action.CIRCULATE, 1.0)
-    plant.advance(30 * S)
+    plant.advance(400 * S)
     for pump in ("PU-A", "PU-B"):
         assert not tell(pump, Action.SWAP, 0.0)
         assert not tell(pump, Action.DELIVER, flow_mL_min)
-    plant.advance(90 * S)
+    plant.advance(500 * S)
+    assert plant.contents.gas_by_node() is None
     return plant
 
 
