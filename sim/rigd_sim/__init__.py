@@ -1,1 +1,1 @@
-"""The simulated rig: physics < plant < faults | emulators < bench. Imports nothing of the daemon but values and ports."""
+"""The simulated rig: physics < plant < faults | emulators < bench. Of the daemon it knows values and ports only."""
