@@ -7,3 +7,12 @@ every concrete part), ``console`` (the command line). DEVELOPERS.md tells who ma
 """
 
 __version__ = "0.1.0"
+
+
+def __getattr__(name: str) -> object:
+    """``rigd.open_run(path)``: a recorded run for a notebook. Loaded when asked for: ``import rigd`` stays light."""
+    if name == "open_run":
+        from importlib import import_module
+
+        return import_module("rigd.adapters.open_run").open_run
+    raise AttributeError(f"module 'rigd' has no attribute {name!r}")

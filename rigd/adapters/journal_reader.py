@@ -3,14 +3,17 @@
 from __future__ import annotations
 
 import json
+import math
 import sqlite3
-from collections.abc import Iterable, Iterator, Sequence
+from collections.abc import Callable, Iterable, Iterator, Sequence
 from dataclasses import dataclass
+from functools import partial
 from pathlib import Path
 from types import TracebackType
 from typing import Any, Self
 
 from rigd.adapters import journal_schema as schema
+from rigd.adapters.journal_minutes import MinuteRow, minutes_of
 from rigd.model.errors import JournalError
 from rigd.model.events import Event, EventKind
 from rigd.model.intake import Intake
@@ -115,12 +118,29 @@ class JournalReader:
 
     def series(self, tag: str) -> Series:
         """All samples of one tag; an empty series for a tag without any; ``KeyError`` for an unknown tag."""
-        numbers = [number for number, name in self._names.items() if name == tag]
-        if not numbers:
-            raise KeyError(tag)
-        rows = list(self._rows("SELECT t_ns, value, quality FROM samples WHERE tag = ? ORDER BY rowid", numbers))
-        values = [float("nan") if row[1] is None else row[1] for row in rows]
-        return Series([row[0] for row in rows], values, [row[2] for row in rows])
+        rows = list(self.sample_rows(tag, -math.inf, math.inf))
+        return Series([row[0] for row in rows], [row[1] for row in rows], [row[2] for row in rows])
+
+    def sample_rows(self, tag: str, start_s: float, end_s: float) -> Iterator[tuple[int, float, int]]:
+        """(time [ns], value or NaN, quality) of a tag within a span of process time [s]; both ends count. ``KeyError``
+        for an unknown tag. What lies outside of the span is not read."""
+        number = self._number(tag)
+        start_ns, end_ns = (round(min(max(at_s * 1e9, 0), _NO_MORE - 1024)) for at_s in (start_s, end_s))
+        for segment in self._segments:
+            yield from self._guarded(partial(_samples, segment, number, start_ns, end_ns))
+
+    def minute_rows(self, tag: str) -> Iterator[MinuteRow]:
+        """(start [s], low, mean, high, number, worst quality) of each minute of a tag; ``KeyError`` for an unknown
+        one."""
+        number = self._number(tag)
+        for segment in self._segments:
+            yield from self._guarded(partial(minutes_of, segment, number))
+
+    def _number(self, tag: str) -> int:
+        for number, name in self._names.items():
+            if name == tag:
+                return number
+        raise KeyError(tag)
 
     def spectra(self) -> Iterator[Spectrum]:
         """All raw spectra in order."""
@@ -142,9 +162,13 @@ class JournalReader:
 
     def _rows(self, sql: str, values: Iterable[Any] = ()) -> Iterator[Any]:
         values = tuple(values)
+        for segment in self._segments:
+            yield from self._guarded(partial(segment.execute, sql, values))
+
+    def _guarded(self, read: Callable[[], Iterable[Any]]) -> Iterator[Any]:
+        """Rows, with an error for people when the file is damaged."""
         try:
-            for segment in self._segments:
-                yield from segment.execute(sql, values)
+            yield from read()
         except sqlite3.DatabaseError as error:
             raise JournalError(f"{self.path} is damaged: {error}") from error
 
@@ -209,7 +233,24 @@ class _Grouped:
         self._number = _NO_MORE if row is None else row[0]
 
 
-_NO_MORE = 1 << 63
+_NO_MORE = (1 << 63) - 1
+_WAITING_NS = 60_000_000_000
+"""A sample is recorded with the next scan, which is never this late in a record that goes on."""
+
+
+def _samples(segment: sqlite3.Connection, tag: int, start_ns: int, end_ns: int) -> Iterator[tuple[int, float, int]]:
+    """Samples of a tag within a span, both ends included; only the rows around the span are read."""
+    first = rowid_after(segment, "scans", "now_ns", start_ns - 1)
+    last = rowid_after(segment, "scans", "now_ns", min(end_ns + _WAITING_NS, _NO_MORE))
+    rows = (rowid_after(segment, "samples", "scan", first - 1), rowid_after(segment, "samples", "scan", last - 1) - 1)
+    for t_ns, value, quality in segment.execute(_OF_TAG, (tag, start_ns, end_ns, *rows)):
+        yield t_ns, math.nan if value is None else value, quality
+
+
+_OF_TAG = (
+    "SELECT t_ns, value, quality FROM samples WHERE tag = ?1 AND t_ns BETWEEN ?2 AND ?3 AND rowid BETWEEN ?4 AND ?5 "
+    "ORDER BY rowid"
+)
 
 
 def rowid_after(connection: sqlite3.Connection, table: str, column: str, value: int) -> int:

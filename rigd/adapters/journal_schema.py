@@ -3,7 +3,8 @@
 A run is ``run.sqlite`` in the run folder, or several segments (``run.2.sqlite`` ...) when the disk failed in between.
 Process time is monotonic from the start of the run; each scan also holds the wall time in UTC; ``meta`` holds the
 origin on the computer's own monotonic clock. NaN is stored as NULL (SQLite does so itself). Rows stand in the order
-of arrival.
+of arrival. The table ``minutes`` and the views ``readings`` and ``overview`` are for reading; a replay needs none of
+them, and journals of version 1 from before they came lack them.
 """
 
 from __future__ import annotations
@@ -38,6 +39,13 @@ CREATE TABLE IF NOT EXISTS spectra (source TEXT NOT NULL, t_ns INTEGER NOT NULL,
     step_per_cm REAL NOT NULL, absorbance BLOB NOT NULL) STRICT;
 CREATE TABLE IF NOT EXISTS bytes (link TEXT NOT NULL, t_ns INTEGER NOT NULL, sent INTEGER NOT NULL,
     data BLOB NOT NULL) STRICT;
+CREATE TABLE IF NOT EXISTS minutes (tag INTEGER NOT NULL, minute INTEGER NOT NULL, number INTEGER NOT NULL, low REAL,
+    high REAL, mean REAL, worst INTEGER NOT NULL, PRIMARY KEY (tag, minute)) STRICT, WITHOUT ROWID;
+CREATE VIEW IF NOT EXISTS readings AS SELECT samples.t_ns / 1e9 AS t_s, tags.tag AS tag, samples.value AS value,
+    tags.unit AS unit, samples.quality AS quality FROM samples JOIN tags ON tags.id = samples.tag;
+CREATE VIEW IF NOT EXISTS overview AS SELECT minutes.minute * 60 AS t_s, tags.tag AS tag, minutes.low AS low,
+    minutes.mean AS mean, minutes.high AS high, tags.unit AS unit, minutes.number AS number, minutes.worst AS worst
+    FROM minutes JOIN tags ON tags.id = minutes.tag;
 """
 
 CAUSES = tuple(QualityCause)
@@ -67,6 +75,15 @@ def sample_row(scan: int, tag_id: int, sample: Sample) -> Row:
     """One row of ``samples``."""
     quality, cause = int(sample.quality), _CAUSE_NUMBER[sample.cause]
     return (scan, tag_id, sample.t_ns, sample.value, quality, cause, sample.raw)
+
+
+def sample_rows(scan: int, tag_ids: Mapping[str, int], samples: Sequence[Sample]) -> list[Row]:
+    """The rows of ``samples`` of one scan; ``tag_ids`` are those of the file."""
+    cause_number = _CAUSE_NUMBER
+    return [
+        (scan, tag_ids[one.tag], one.t_ns, one.value, int(one.quality), cause_number[one.cause], one.raw)
+        for one in samples
+    ]
 
 
 def sample_of(tag: str, t_ns: int, value: float | None, quality: int, cause: int, raw: int | None) -> Sample:

@@ -21,6 +21,7 @@ from queue import Empty, SimpleQueue
 from typing import Any
 
 from rigd.adapters import journal_schema as schema
+from rigd.adapters.journal_minutes import add_up
 from rigd.model.errors import JournalError
 from rigd.model.events import Event
 from rigd.model.intake import Intake
@@ -32,11 +33,14 @@ BACKLOG = 200_000
 """Entries that may wait in memory for a disk that is full; newer ones are counted and lost beyond that."""
 RETRY_S = 1.0
 FORCE_S = 1.0
+COUNT_S = 10.0
+"""How often the overview by the minute is brought up to date."""
 LATE = 5_000
 """With more entries than this waiting, the disk does not keep up."""
 
 Connect = Callable[[Path], sqlite3.Connection]
 Entry = tuple[str, tuple[Any, ...]]
+Rows = Iterable[tuple[str, Sequence[schema.Row]]]
 
 
 def connect(path: Path) -> sqlite3.Connection:
@@ -135,6 +139,8 @@ class _Writer:
     def __init__(self, journal: SqliteJournal) -> None:
         self._of = journal
         self._forced_s = 0.0
+        self._counted_s = time.monotonic()
+        self._counted_to = 0
 
     def run(self) -> None:
         while True:
@@ -191,9 +197,13 @@ class _Writer:
         connection.execute("BEGIN IMMEDIATE")
         for statement, values in rows:
             connection.executemany(statement, values)
+        count = now_s - self._counted_s >= COUNT_S
+        counted_to = add_up(connection, self._counted_to) if count else self._counted_to
         connection.execute("COMMIT")
         if force:
             self._forced_s = now_s
+        if count:
+            self._counted_s, self._counted_to = now_s, counted_to
 
     def _recover(self, error: sqlite3.Error) -> None:
         """Make the next try possible: the same file when it is only full or locked, a new segment otherwise."""
@@ -214,42 +224,40 @@ class _Writer:
             journal._trouble = f"no new segment of {journal._path.name} can be begun: {again}"
         else:
             journal._segment += 1
+            self._counted_to = 0
 
     def _rows(self, entries: list[Entry]) -> tuple[list[tuple[str, list[schema.Row]]], bool]:
         """Rows per statement in a fixed order, and whether any order or event is among them."""
         rows: dict[str, list[schema.Row]] = {}
         for kind, values in entries:
-            for statement, row in getattr(self, f"_{kind}_rows")(*values):
-                rows.setdefault(statement, []).append(row)
+            for statement, more in getattr(self, f"_{kind}_rows")(*values):
+                rows.setdefault(statement, []).extend(more)
         important = schema.INSERT_ORDER in rows or schema.INSERT_EVENT in rows
         return list(rows.items()), important
 
-    def _scan_rows(self, number: int, now_ns: int, utc: str, intake: Intake) -> Iterable[tuple[str, schema.Row]]:
-        yield schema.INSERT_SCAN, (number, now_ns, utc)
-        for sample in intake.samples:
-            yield schema.INSERT_SAMPLE, schema.sample_row(number, self._of._tags[sample.tag], sample)
-        for row in schema.input_rows(number, intake):
-            yield schema.INSERT_INPUT, row
+    def _scan_rows(self, number: int, now_ns: int, utc: str, intake: Intake) -> Rows:
+        yield schema.INSERT_SCAN, ((number, now_ns, utc),)
+        yield schema.INSERT_SAMPLE, schema.sample_rows(number, self._of._tags, intake.samples)
+        yield schema.INSERT_INPUT, schema.input_rows(number, intake)
 
-    def _decided_rows(
-        self, number: int, orders: tuple[Order, ...], events: tuple[Event, ...]
-    ) -> Iterable[tuple[str, schema.Row]]:
-        for order in orders:
-            yield schema.INSERT_ORDER, schema.order_row(number, order)
-        for event in events:
-            yield schema.INSERT_EVENT, schema.event_row(number, event)
+    def _decided_rows(self, number: int, orders: tuple[Order, ...], events: tuple[Event, ...]) -> Rows:
+        if orders:
+            yield schema.INSERT_ORDER, [schema.order_row(number, order) for order in orders]
+        if events:
+            yield schema.INSERT_EVENT, [schema.event_row(number, event) for event in events]
 
-    def _spectrum_rows(self, spectrum: Spectrum) -> Iterable[tuple[str, schema.Row]]:
-        yield schema.INSERT_SPECTRUM, schema.spectrum_row(spectrum)
+    def _spectrum_rows(self, spectrum: Spectrum) -> Rows:
+        yield schema.INSERT_SPECTRUM, (schema.spectrum_row(spectrum),)
 
-    def _bytes_rows(self, link: str, t_ns: int, sent: bool, data: bytes) -> Iterable[tuple[str, schema.Row]]:
-        yield schema.INSERT_BYTES, (link, t_ns, int(sent), data)
+    def _bytes_rows(self, link: str, t_ns: int, sent: bool, data: bytes) -> Rows:
+        yield schema.INSERT_BYTES, ((link, t_ns, int(sent), data),)
 
-    def _meta_rows(self, key: str, value: str) -> Iterable[tuple[str, schema.Row]]:
-        yield schema.INSERT_META, (key, value)
+    def _meta_rows(self, key: str, value: str) -> Rows:
+        yield schema.INSERT_META, ((key, value),)
 
     def _end(self) -> None:
         try:
+            add_up(self._of._connection, self._counted_to)
             self._of._connection.execute("PRAGMA journal_mode = DELETE")  # one file, easy to copy and to archive
             self._of._connection.close()
         except sqlite3.Error as error:

@@ -13,18 +13,20 @@ from rigd.model.units import UnitError, parse_quantity
 @click.command()
 @click.argument("run", type=click.Path(path_type=Path))
 @click.option("--csv", "as_csv", is_flag=True, help="Comma-separated values (the default).")
+@click.option("--parquet", is_flag=True, help="Parquet files with every sample, exactly; needs rigd[parquet].")
 @click.option(
     "--out", type=click.Path(path_type=Path, file_okay=False), help="Folder to write to; the run's own if not given."
 )
 @click.option("--every", default="1 s", show_default=True, metavar="TIME", help="One row per this much process time.")
 @json_option
 @click.pass_obj
-def export(output: Output, run: Path, as_csv: bool, out: Path | None, every: str) -> None:
-    """Write the samples and the events of RUN (its folder) as two tables that a spreadsheet opens."""
+def export(output: Output, run: Path, as_csv: bool, parquet: bool, out: Path | None, every: str) -> None:
+    """Write the samples and the events of RUN (its folder) as two tables that a spreadsheet or a notebook opens."""
     from rigd.adapters.journal_export import events_csv, export_csv
     from rigd.console.run_names import find_run
 
-    del as_csv  # the only format today; the flag says so in scripts
+    if as_csv and parquet:
+        raise click.UsageError("--csv and --parquet: one of them")
     try:
         period_s = parse_quantity(every, "time")
     except UnitError as error:
@@ -34,8 +36,14 @@ def export(output: Output, run: Path, as_csv: bool, out: Path | None, every: str
     folder = find_run(run)
     target = out or folder
     target.mkdir(parents=True, exist_ok=True)
-    samples, events = target / "samples.csv", target / "events.csv"
-    rows, happened = export_csv(folder, samples, period_s), events_csv(folder, events)
+    kind = "parquet" if parquet else "csv"
+    samples, events = target / f"samples.{kind}", target / f"events.{kind}"
+    if parquet:
+        from rigd.adapters.parquet_export import export_parquet
+
+        rows, happened = export_parquet(folder, target)
+    else:
+        rows, happened = export_csv(folder, samples, period_s), events_csv(folder, events)
     output.document(
         {"samples": {"path": str(samples), "rows": rows}, "events": {"path": str(events), "rows": happened}}
     )
