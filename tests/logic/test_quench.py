@@ -179,6 +179,16 @@ def test_a_condition_that_fails_in_the_middle_of_the_flush_is_a_cut(trouble: str
     assert rehearsal.pump("PU-B").state is PumpState.STOPPED
 
 
+@pytest.mark.parametrize("positions", [SOLVENT, REAGENT])
+def test_a_flush_that_ends_in_order_raises_no_alarm_about_pumps(positions: dict[str, str]) -> None:
+    """The patience with a pump counts from its own stop at the end of the flush, not from the quench minutes before."""
+    rehearsal = filled(positions)
+    rehearsal.ask(Verb.STOP)
+    rehearsal.run(900.0)
+    assert rehearsal.state.protect.stopping.done
+    assert not [event for event in rehearsal.happened(EventKind.ALARM) if event.subject == "STOP-UNCONFIRMED"]
+
+
 def test_nothing_delivered_means_nothing_to_flush() -> None:
     rehearsal = Rehearsal(program_of())
     rehearsal.ready()

@@ -39,7 +39,8 @@ _AT_REST = (PumpState.STOPPED, PumpState.STALLED, PumpState.EMPTY)
 
 @dataclass(frozen=True, slots=True)
 class Stopping:
-    """The stop in force. ``again``: pumps whose stop must be ordered again; ``overdue``: those that do not confirm."""
+    """The stop in force. ``since_ns``: when it last changed its demand; ``again``: pumps whose stop must be ordered
+    again; ``overdue``: those that do not confirm."""
 
     level: Stop
     source: str
@@ -164,9 +165,11 @@ def _flush_on(scene: Scene, stopping: Stopping, flush: Flush, events: list[Event
         text = f"The flush has ended after {done_mL:.1f} mL{short}; pumps stop."
         events.append(_event(scene, Stop.QUENCH, stopping.source, text))
         demand = rest(scene.program, Authority.QUENCH, stopping.source)
-        return replace(stopping, flush=None, demand=demand)
+        return replace(stopping, flush=None, demand=demand, since_ns=scene.now_ns)
     demand = rest(scene.program, Authority.QUENCH, stopping.source, pumps)
-    return replace(stopping, flush=flush, demand=stopping.demand if demand == stopping.demand else demand)
+    if demand == stopping.demand:
+        return replace(stopping, flush=flush)
+    return replace(stopping, flush=flush, demand=demand, since_ns=scene.now_ns)
 
 
 def _confirm(scene: Scene, stopping: Stopping) -> Stopping:
