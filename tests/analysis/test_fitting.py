@@ -118,6 +118,7 @@ def test_saturation_kinetics_of_puromycin():
     assert found.residual_sd == pytest.approx(10.933658, rel=1e-7)
 
 
+@pytest.mark.slow
 def test_error_bars_cover_the_truth_as_often_as_they_say():
     """400 seeds of a known line through noise: about 68 % within one standard error (binomial band of 3 sigma)."""
     x, chance, inside = np.linspace(1, 10, 30), np.random.default_rng(8), 0

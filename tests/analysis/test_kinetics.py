@@ -81,6 +81,7 @@ def test_a_sweep_gives_back_its_rate_constant(law):
     assert found.k_error < 1e-9
 
 
+@pytest.mark.slow
 def test_error_of_the_rate_constant_covers_the_truth():
     """300 seeds, 1 % noise: about 68 % of fits lie within one standard error of the truth (t with 5 degrees: 64 %)."""
     tau, feed = np.array([30.0, 45.0, 70.0, 110.0, 160.0, 240.0]), Feed(1.0, 16.0)

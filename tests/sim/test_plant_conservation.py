@@ -99,6 +99,7 @@ def test_energy(events: list[tuple[tuple[object, ...] | None, float]]) -> None:
     assert abs(plant.thermal.stored() - plant.thermal.crossed()) < 1e-6 * traffic
 
 
+@pytest.mark.slow
 def test_three_hours_keep_everything_and_no_memory_grows() -> None:
     """Three hours of alternating flow, refills and valve changes: balances to 1e-9, tables of the same size."""
     plant = with_byproduct()
