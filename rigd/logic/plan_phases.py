@@ -37,6 +37,7 @@ class Effort:
     refills: int = 0
     bath_degC: float = 22.0
     bath_s: float = 0.0
+    ready_mL: Mapping[str, float] = field(default_factory=dict)
 
     @classmethod
     def at_start(cls, layout: Layout) -> Effort:
@@ -177,17 +178,19 @@ def _point(layout: Layout, spec: PhaseSpec, before: Effort) -> Effort:
     valves_s = 2 * _valve_s(layout, layout.path.outlet_valve)
     running_s = LATENCY_S + before.bath_s + settle_s(layout, point, spec.reagent) + collect_s + valves_s
     refill_s, refills, left, volumes = 0.0, 0, dict(before.left_mL), {}
+    ready = {name: point_mL(layout, point, name, spec.reagent) for name in point.flows_mL_min}
     for name, flow in point.flows_mL_min.items():
         play = layout.pumps[name]
         volumes[name] = flow * running_s / 60.0
         left_mL = left.get(name, 0.0)
-        if left_mL < point_mL(layout, point, name, spec.reagent) + play.guard_mL(flow):
+        if left_mL < ready[name] + play.guard_mL(flow):
             refills += 1
             if not play.dual:
                 refill_s = max(refill_s, _fill_s(play, play.pump.stroke_mL - left_mL) + LATENCY_S)
             left_mL = play.pump.stroke_mL if not play.dual else left_mL + play.pump.stroke_mL
         left[name] = max(0.0, left_mL - volumes[name])
-    return Effort(running_s + refill_s, dict(point.flows_mL_min), volumes, {}, left, refills, before.bath_degC)
+    flows = dict(point.flows_mL_min)
+    return Effort(running_s + refill_s, flows, volumes, {}, left, refills, before.bath_degC, ready_mL=ready)
 
 
 def _flush(layout: Layout, spec: PhaseSpec, before: Effort) -> Effort:

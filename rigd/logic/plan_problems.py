@@ -68,6 +68,12 @@ def _point(layout: Layout, point: Point) -> list[Problem]:
             )
             remedy = "Collect less, settle for fewer volumes, or use a larger or a second syringe."
             found.append(Problem("syringe-short", message, remedy))
+        elif play.dual and need_mL > play.pump.stroke_mL:
+            message = (
+                f"point {point.id} takes both syringes of {name}, so neither is free to flush with solvent meanwhile"
+            )
+            remedy = "A stop with a flush may have to become a cut; collect less or use larger syringes."
+            found.append(Problem("flush-blocked", message, remedy, Severity.WARNING))
     needed = settle_volumes_99(layout, point)
     if needed > layout.recipe.settle.volumes:
         message = (

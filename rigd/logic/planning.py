@@ -23,7 +23,8 @@ from rigd.model.problems import Problem
 class PhasePlan:
     """One phase: when it starts and how long it takes [s], flows [mL/min] and what is delivered [mL], per pump.
 
-    ``volumes_mL`` counts the liquid that the phase is about; ``drawn_mL`` all liquids that it draws, by liquid id.
+    ``volumes_mL`` counts the liquid that the phase is about, ``ready_mL`` what is kept ready for it where that is more;
+    ``drawn_mL`` all liquids that it draws, by liquid id.
     """
 
     id: str
@@ -33,6 +34,7 @@ class PhasePlan:
     duration_s: float
     flows_mL_min: Mapping[str, float]
     volumes_mL: Mapping[str, float]
+    ready_mL: Mapping[str, float]
     drawn_mL: Mapping[str, float]
     reagent: bool
     refills: int = 0
@@ -51,15 +53,15 @@ class Plan:
     waste_mL: float
     problems: tuple[Problem, ...] = field(default=())
 
-    def needs_mL(self, index: int) -> dict[str, float]:
-        """Per pump, what the phases after this one draw of the liquid that flows in it, up to the next change."""
-        needs: dict[str, float] = {}
+    def following_mL(self, index: int) -> dict[str, tuple[tuple[float, float], ...]]:
+        """Per pump, for each phase after this one up to the next change of liquid: volume, and what to keep ready."""
+        found: dict[str, tuple[tuple[float, float], ...]] = {}
         for phase in self.phases[index + 1 :]:
             if phase.reagent is not self.phases[index].reagent or phase.kind is PhaseKind.SWITCHOVER:
                 break
             for pump, volume_mL in phase.volumes_mL.items():
-                needs[pump] = needs.get(pump, 0.0) + volume_mL
-        return needs
+                found[pump] = (*found.get(pump, ()), (volume_mL, phase.ready_mL.get(pump, volume_mL)))
+        return found
 
 
 def plan(program: Program) -> Plan:
@@ -84,6 +86,7 @@ def _phase_plan(layout: Layout, spec: PhaseSpec, effort: Effort, start_s: float)
         duration_s=effort.duration_s,
         flows_mL_min=effort.flows_mL_min,
         volumes_mL=effort.volumes_mL,
+        ready_mL=effort.ready_mL,
         drawn_mL=effort.drawn_mL(layout, spec.reagent),
         reagent=spec.reagent,
         refills=effort.refills,

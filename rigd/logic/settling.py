@@ -17,8 +17,11 @@ from rigd.logic.student import t_quantile
 RATIO_LIMIT = 1.44
 """95 % point of the ratio under white noise for the filter factors below (J. Process Control 7 (1997) 149-152)."""
 
-SHORT_LIMITS = ((16, 1.76), (30, 1.50), (48, 1.46))
-"""95 % points after fewer than so many values, own Monte Carlo (1e5 replicates at 12, 24 and 36)."""
+REJECT_LIMIT = 1.73
+"""99 % point under white noise, recomputed. What was accepted stays so up to here: two limits do not flicker."""
+
+SHORT_LIMITS = ((16, 1.75, 2.37), (30, 1.50, 1.85), (48, 1.46, 1.76))
+"""95 % and 99 % points after fewer than so many values, own Monte Carlo (2e5 replicates at 12, 24 and 36)."""
 
 RATIO_MEMORY = 60
 """Samples over which the gate takes the ratio, at most."""
@@ -67,7 +70,7 @@ def ratio_step(
 def ratio_over(values: tuple[float, ...]) -> float | None:
     """The ratio after these values; ``None`` when they do not move.
 
-    Of few values the start counts, so the filter begins at the mean of the first four, and ``ratio_limit`` is higher.
+    Of few values the start counts, so the filter begins at the mean of the first four, and ``ratio_limits`` are higher.
     """
     first = values[:4]
     state = RatioFilter(sum(first) / len(first), values[0])
@@ -76,9 +79,10 @@ def ratio_over(values: tuple[float, ...]) -> float | None:
     return state.ratio
 
 
-def ratio_limit(count: int) -> float:
-    """What white noise exceeds with a probability of 5 % after so many values."""
-    return next((limit for below, limit in SHORT_LIMITS if count < below), RATIO_LIMIT)
+def ratio_limits(count: int) -> tuple[float, float]:
+    """What white noise exceeds with a probability of 5 % and of 1 % after so many values."""
+    row = next((row for row in SHORT_LIMITS if count < row[0]), (0, RATIO_LIMIT, REJECT_LIMIT))
+    return row[1], row[2]
 
 
 @dataclass(frozen=True, slots=True)
@@ -185,6 +189,7 @@ def _verdict(settler: Settler, rule: SettleRule) -> str:
     if min(newest) == max(newest):
         return "frozen"
     ratio = ratio_over(settler.raw)
-    if ratio is None or ratio > ratio_limit(len(settler.raw)):
+    accept, reject = ratio_limits(len(settler.raw))
+    if ratio is None or ratio > (reject if settler.run else accept):
         return "moving"
     return "steady" if settler.trend.change_below(rule.tolerance, rule.horizon_s) else "unproven"

@@ -89,7 +89,7 @@ def test_restart_flushes_before_reagent_flows_again() -> None:
 
 
 def test_restart_keeps_the_reagent_in_the_standby_syringe() -> None:
-    run = at("P2", "settle")
+    run = at("P1", "settle")
     before = dict(run.plant.drawn)
     held = {name: pump.now.level_mL + pump.filling.level_mL for name, pump in run.plant.pumps.items()}
     run.ask(Verb.HOLD)

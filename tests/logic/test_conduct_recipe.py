@@ -102,6 +102,21 @@ def test_no_refill_or_change_over_during_a_collection(rig: str, request: pytest.
         assert not [t for t in (*fills, *moves) if start <= t <= end]
 
 
+def test_a_syringe_is_free_for_a_flush_most_of_the_time() -> None:
+    """A quench needs a pump whose standby syringe is empty; it holds reagent only shortly before a change-over."""
+    run = ConductRun(two_pumps(2), demo_recipe())
+    run.start()
+    run.until(lambda r: r.state.spec.id == "point-P1", 3000.0)
+    blocked_s = whole_s = last_s = 0.0
+    while run.state.spec.id.startswith("point"):
+        last_s = run.now_s
+        run.scan()
+        whole_s += run.now_s - last_s
+        if all(pump.filling.level_mL > 0.01 for pump in run.plant.pumps.values()):
+            blocked_s += run.now_s - last_s
+    assert blocked_s < 0.2 * whole_s
+
+
 @pytest.mark.parametrize("rig", ["dual", "single"])
 def test_no_pump_runs_empty(rig: str, request: pytest.FixtureRequest) -> None:
     assert request.getfixturevalue(rig).plant.ran_empty == []

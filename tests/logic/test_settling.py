@@ -18,7 +18,7 @@ from rigd.logic.settling import (
     Settler,
     SettleRule,
     is_steady,
-    ratio_limit,
+    ratio_limits,
     ratio_over,
     ratio_start,
     ratio_step,
@@ -123,12 +123,14 @@ def run(values: Any, rule: SettleRule = RULE) -> Settler:
 
 
 @pytest.mark.parametrize("count", [12, 24, 36, 60])
-def test_limit_of_a_short_memory_keeps_the_type_one_rate(count: int) -> None:
-    """5 %; 4000 replicates through the daemon's own function, so four standard errors are 0.014."""
+def test_limits_of_a_short_memory_keep_the_type_one_rates(count: int) -> None:
+    """5 % and 1 %; 4000 replicates through the daemon's own function, so four standard errors are 0.014 and 0.006."""
     rng = np.random.default_rng(4)
     rows = rng.standard_normal((4000, count)).tolist()
-    rejected = sum((ratio_over(tuple(row)) or 0.0) > ratio_limit(count) for row in rows) / 4000
-    assert rejected == pytest.approx(0.05, abs=0.014)
+    found = [ratio_over(tuple(row)) or 0.0 for row in rows]
+    accept, reject = ratio_limits(count)
+    assert sum(ratio > accept for ratio in found) / 4000 == pytest.approx(0.05, abs=0.014)
+    assert sum(ratio > reject for ratio in found) / 4000 == pytest.approx(0.01, abs=0.006)
 
 
 def noise(n: int, sigma: float, seed: int = 5) -> Any:

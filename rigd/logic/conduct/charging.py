@@ -69,9 +69,9 @@ def paused(charges: Mapping[str, Charge], before: Mapping[str, PumpTrack]) -> di
 
 def _broken(before: PumpTrack, track: PumpTrack) -> PumpTrack:
     """A pump that is stopped while it delivers also ends a filling that was under way. (A new one goes out after.)"""
-    if before.moving_ns < 0 or before.fill is None or before.fill is not track.fill:
+    if before.moving_ns < 0 or before.fill is None or track.fill is None or before.fill.ticket != track.fill.ticket:
         return track
-    return replace(track, fill=replace(before.fill, broken=True))
+    return replace(track, fill=replace(track.fill, broken=True))
 
 
 def _once(track: PumpTrack) -> OneShot | None:
@@ -97,11 +97,12 @@ def _fill_or_swap(play: PumpLayout, track: PumpTrack, want: Want, at: Callable[[
 
 
 def _still_wanted(track: PumpTrack, want: Want) -> PumpTrack:
-    """A filling with a liquid that is not wanted any more is given up; what was drawn stays and is remembered."""
+    """Note whether anybody wants the filling that is under way; what has been drawn stays and is remembered."""
     fill = track.fill
-    if fill is None or fill.label == want.label:
+    if fill is None:
         return track
-    return replace(track, fill=None)
+    unwanted = fill.label != want.label or not (want.may_fill or want.flow_mL_min > 0.0)
+    return track if unwanted is fill.unwanted else replace(track, fill=replace(fill, unwanted=unwanted))
 
 
 def _swap_now(play: PumpLayout, track: PumpTrack, want: Want, now_ns: int) -> bool:
@@ -136,11 +137,11 @@ def _dual_fill(play: PumpLayout, track: PumpTrack, want: Want, now_ns: int) -> f
     little = missing_mL < 0.25 * play.pump.stroke_mL and here_mL >= want.level_mL
     if held_mL > EMPTY_mL and not want.swap and little:
         return 0.0  # not worth a filling of its own
-    wanted_mL = max(min(want.level_mL, want.need_mL), _lead_mL(play, target_mL - held_mL, want.flow_mL_min))
+    wanted_mL = max(min(want.level_mL, want.need_mL), lead_mL(play, target_mL - held_mL, want.flow_mL_min))
     return target_mL if track.level_at(now_ns) <= wanted_mL + play.guard_mL(want.flow_mL_min) else 0.0
 
 
-def _lead_mL(play: PumpLayout, volume_mL: float, flow_mL_min: float) -> float:
+def lead_mL(play: PumpLayout, volume_mL: float, flow_mL_min: float) -> float:
     """What flows out while a filling of this volume is prepared and drawn."""
     return 1.2 * flow_mL_min * (play.refill_s(volume_mL) + 4.0) / 60.0
 

@@ -73,8 +73,8 @@ def _think(state: ConductState, view: View) -> ConductStep:
     events += more
     state, answers, granted = answer_all(state, view)
     events += answers
-    for command in granted:
-        state, more = _command(state, view, command, state.hold_reason or "a person")
+    for command, by in granted:
+        state, more = _command(state, view, command, by)
         events += more
     state, more = _hold_if_asked(state, view)
     events += more
@@ -263,21 +263,22 @@ def _finish(state: ConductState, view: View) -> Told:
 
 
 def _enter(state: ConductState, view: View, spec: PhaseSpec) -> Told:
-    needs = _needs_mL(state, spec)
-    state = replace(state, spec=spec, since_ns=view.now_ns, stage="", step="", left_s=None, needs_mL=needs)
+    following = _following_mL(state, spec)
+    state = replace(state, spec=spec, since_ns=view.now_ns, stage="", step="", left_s=None, following_mL=following)
     state = replace(state, memory=STARTS[spec.kind](scene_of(state, view)))
     return state, [_phase_event(spec, view.now_ns, "")]
 
 
-def _needs_mL(state: ConductState, spec: PhaseSpec) -> dict[str, float]:
+def _following_mL(state: ConductState, spec: PhaseSpec) -> dict[str, tuple[tuple[float, float], ...]]:
     """What comes after the phase; a restart's switchover also charges for the point that it leads to."""
     if spec.kind in (PhaseKind.HOLD, PhaseKind.RESTART):
         return {}
-    needs = state.plan.needs_mL(state.index)
+    found = state.plan.following_mL(state.index)
     if spec is not state.campaign[state.index]:
-        for pump, volume_mL in state.plan.phases[state.index].volumes_mL.items():
-            needs[pump] = needs.get(pump, 0.0) + volume_mL
-    return needs
+        phase = state.plan.phases[state.index]
+        for pump, volume_mL in phase.volumes_mL.items():
+            found[pump] = ((volume_mL, phase.ready_mL.get(pump, volume_mL)), *found.get(pump, ()))
+    return found
 
 
 def _phase_event(spec: PhaseSpec, now_ns: int, stage: str) -> Event:

@@ -45,7 +45,7 @@ def holding(scene: Scene, memory: Holding) -> Move[Holding]:
     stand = may_stand(scene)
     wants = _still(scene) if stand else _flushing(scene)
     valves = scene.outlet_at(scene.layout.recipe.collect.waste_position)
-    at_rest = all(track.at_rest for track in scene.tracks.values())
+    at_rest = all(track.at_rest and track.fill is None for track in scene.tracks.values())
     late = (scene.now_ns - memory.started_ns) / 1e9 > _GIVE_UP_S
     done = valves and ((stand and at_rest) or (stand and scene.clean) or late)
     step = "stopping" if stand else "flushing the bed with solvent"
@@ -136,8 +136,8 @@ def _flushed(scene: Scene, memory: Restarting, flows: Mapping[str, float]) -> Re
 
 def _restart_volumes(scene: Scene, flows: Mapping[str, float]) -> float:
     """One exchange of the trunk after the outlet lines have been pushed through."""
-    lines_mL = sum(scene.layout.pumps[name].feed.outlet_mL for name in flows)
-    return 1.0 + lines_mL / max(scene.layout.trunk_mL, 1e-9)
+    longest_min = max((scene.layout.pumps[name].feed.outlet_mL / flow for name, flow in flows.items()), default=0.0)
+    return 1.0 + longest_min * sum(flows.values()) / max(scene.layout.trunk_mL, 1e-9)
 
 
 def _restart_wants(scene: Scene, flows: Mapping[str, float]) -> Wants:

@@ -48,7 +48,7 @@ def scene_of(state: ConductState, view: View) -> Scene:
         spec=state.spec,
         tracks=state.tracks,
         prompts=state.prompts,
-        needs_mL=state.needs_mL,
+        following_mL=state.following_mL,
         positions=state.positions,
         histories=state.histories,
         clean=is_clean(state, view.now_ns),
@@ -107,6 +107,7 @@ def is_clean(state: ConductState, now_ns: int) -> bool:
     if state.soiled_mL is None:
         return True
     sheet = state.layout.recipe.sheet
-    lines_mL = sum(play.feed.outlet_mL for play in state.layout.pumps.values())
+    longest_mL = max((play.feed.outlet_mL for play in state.layout.pumps.values()), default=0.0)
+    lines_mL = longest_mL * len(state.layout.pumps)
     wanted_mL = (sheet.flush_volumes if sheet else 1.0) * state.layout.trunk_mL + lines_mL
     return _total_mL(state, now_ns) - state.soiled_mL >= wanted_mL

@@ -11,6 +11,7 @@ import math
 from collections.abc import Mapping
 from dataclasses import dataclass, field, replace
 
+from rigd.logic.conduct.charging import lead_mL
 from rigd.logic.conduct.conditioning import NEVER_NS, band_since_ns
 from rigd.logic.conduct.means import Means, merged
 from rigd.logic.conduct.point_events import abandoned, collected, interrupted, settled_event, started, unsettled_event
@@ -18,6 +19,7 @@ from rigd.logic.conduct.point_needs import (
     another_try_mL,
     collect_mL,
     gated,
+    least_mL,
     point_mL,
     settle_mL,
     settle_rule,
@@ -123,10 +125,19 @@ def _wants(scene: Scene, memory: Memory, point: Point, outlet: str) -> Wants:
 
 def _short(scene: Scene, memory: Memory, point: Point, name: str) -> bool:
     """True when an active syringe no longer holds the fraction and it is too late to wait for a change-over."""
-    flow = point.flows_mL_min[name]
-    wanted_mL = collect_mL(scene.layout, point, name) + scene.layout.pumps[name].guard_mL(flow)
-    in_time = scene.layout.pumps[name].dual and _until_last_change_mL(scene, memory, point, name) > 0.0
-    return flow > 0 and not in_time and scene.tracks[name].level_at(scene.now_ns) < wanted_mL
+    if point.flows_mL_min[name] <= 0 or (scene.layout.pumps[name].dual and not _late(scene, memory, point, name)):
+        return False
+    return scene.tracks[name].level_at(scene.now_ns) < _fraction_mL(scene, point, name)
+
+
+def _fraction_mL(scene: Scene, point: Point, name: str) -> float:
+    """Level that is needed to collect without a change-over."""
+    return collect_mL(scene.layout, point, name) + scene.layout.pumps[name].guard_mL(point.flows_mL_min[name])
+
+
+def _late(scene: Scene, memory: Memory, point: Point, name: str) -> bool:
+    """True when the one exchange that must follow a change-over would cost time."""
+    return _until_last_change_mL(scene, memory, point, name) <= 0.0
 
 
 def _until_last_change_mL(scene: Scene, memory: Memory, point: Point, name: str) -> float:
@@ -146,33 +157,57 @@ def _want(scene: Scene, memory: Memory, point: Point, name: str, again: bool) ->
     """
     layout, play = scene.layout, scene.layout.pumps[name]
     liquid, flow = label(play, scene.spec.reagent), point.flows_mL_min[name]
-    later_mL = scene.needs_mL.get(name, 0.0)
     if flow <= 0:
         return Want(liquid, may_fill=False)
-    level_mL = scene.tracks[name].level_at(scene.now_ns)
     if memory.step not in ("set", "settle"):
         rest_mL = _rest(scene, memory, name)
-        return Want(liquid, flow, rest_mL + later_mL, rest_mL, may_fill=play.dual and rest_mL > level_mL)
+        short = rest_mL > scene.tracks[name].level_at(scene.now_ns)
+        return Want(liquid, flow, rest_mL, rest_mL, may_fill=play.dual and short)
     whole_mL, fraction_mL = point_mL(layout, point, name, scene.spec.reagent), collect_mL(layout, point, name)
     here_mL = max(whole_mL - _passed_of(scene, memory, name), fraction_mL)
-    if not play.dual:  # filled at rest, so that all that was seen of the settling is lost: then for a whole point
-        asked_mL = whole_mL if memory.step == "set" and name not in memory.topped else fraction_mL
-        return Want(liquid, flow, (whole_mL if again else here_mL) + later_mL, asked_mL)
-    another_mL = another_try_mL(layout, point, name)
-    if again and level_mL < another_mL:
-        return Want(liquid, flow, another_mL + level_mL + later_mL, another_mL, swap=True)
-    swap = _better_first(scene, memory, point, name, here_mL)
-    return Want(liquid, flow, here_mL + later_mL, here_mL, swap=swap)
+    if play.dual:
+        return _dual_want(scene, memory, point, Want(liquid, flow, here_mL), name, again)
+    # Filled at rest, so that all that was seen of the settling is lost: then for a whole point.
+    asked_mL = whole_mL if memory.step == "set" and name not in memory.topped else fraction_mL
+    here_mL = whole_mL if again else here_mL
+    return Want(liquid, flow, here_mL + scene.later_mL(name, here_mL, flow), asked_mL)
+
+
+def _dual_want(scene: Scene, memory: Memory, point: Point, want: Want, name: str, again: bool) -> Want:
+    """Which syringe gives the last exchange and the fraction, and what is filled for it. ``want`` needs this point."""
+    play, level_mL = scene.layout.pumps[name], scene.tracks[name].level_at(scene.now_ns)
+    if _late(scene, memory, point, name):
+        another_mL = another_try_mL(scene.layout, point, name)
+        lead = lead_mL(play, another_mL, want.flow_mL_min)
+        if level_mL < (another_mL if again else _fraction_mL(scene, point, name) + lead):
+            return replace(want, need_mL=another_mL + level_mL, level_mL=another_mL, swap=again)
+        return replace(want, need_mL=min(want.need_mL, level_mL))
+    room_mL = play.pump.stroke_mL - play.reserve_mL(want.flow_mL_min)
+    here_mL = want.need_mL
+    if here_mL > room_mL and _least_left_mL(scene, memory, point, name) <= room_mL:
+        here_mL = room_mL  # one syringe will do, with less patience
+    if here_mL > room_mL:  # takes both syringes; neither is free for a flush meanwhile
+        both_mL = here_mL + scene.later_mL(name, here_mL, want.flow_mL_min)
+        return replace(want, need_mL=both_mL, level_mL=here_mL, swap=_better_first(scene, memory, point, name, here_mL))
+    if level_mL >= 0.95 * here_mL:
+        return replace(want, need_mL=min(here_mL, level_mL))
+    if level_mL > _until_last_change_mL(scene, memory, point, name):  # it would run out late: kept for the next point
+        return replace(want, need_mL=here_mL + level_mL, level_mL=here_mL, swap=True)
+    return replace(want, need_mL=here_mL + scene.later_mL(name, here_mL - level_mL, want.flow_mL_min))
+
+
+def _least_left_mL(scene: Scene, memory: Memory, point: Point, name: str) -> float:
+    """What the rest of the point takes when all goes well."""
+    return least_mL(scene.layout, point, name, scene.spec.reagent) - _passed_of(scene, memory, name)
 
 
 def _better_first(scene: Scene, memory: Memory, point: Point, name: str, here_mL: float) -> bool:
-    """True when the standby syringe should deliver first, so that no change-over comes late in the settling."""
+    """True when the standby syringe should deliver first, so that the fuller one gives the end of the point."""
     track = scene.tracks[name]
     level_mL, standby_mL = track.level_at(scene.now_ns), track.standby_mL
-    in_time_mL = _until_last_change_mL(scene, memory, point, name)
-    if in_time_mL <= 0.0 or level_mL >= 0.95 * here_mL or level_mL + standby_mL < 0.95 * here_mL:
+    if level_mL + standby_mL < 0.95 * here_mL:
         return False
-    return standby_mL >= 0.95 * here_mL or standby_mL <= in_time_mL < level_mL
+    return standby_mL <= _until_last_change_mL(scene, memory, point, name) < level_mL
 
 
 def _rest(scene: Scene, memory: Memory, name: str) -> float:

@@ -27,7 +27,8 @@ _NO_FRONT = Front(UNKNOWN, -1e9)
 class Fill:
     """A filling under way. ``moved_ns`` is when the liquid last rose, ``seen_mL`` how far.
 
-    ``broken``: a stop of the pump has ended it; it is asked for again once the pump rests.
+    ``broken``: a stop of the pump has ended it; it is asked for again once the pump rests. ``unwanted``: nobody wants
+    it any more; it may still end, for a feed valve never moves while liquid is drawn through it.
     """
 
     ticket: str
@@ -38,6 +39,7 @@ class Fill:
     seen_mL: float
     attempt: int = 1
     broken: bool = False
+    unwanted: bool = False
 
 
 @dataclass(frozen=True, slots=True)
@@ -158,10 +160,14 @@ def _filled(
     if now_mL >= fill.volume_mL - _FULL_mL and not moving:
         return _done(track, fill, play), (*events, *_refill_event(fill, play, now_ns))
     if fill.broken and track.at_rest:
+        if fill.unwanted:
+            return replace(track, fill=None), events
         return _again(track, replace(fill, attempt=fill.attempt - 1), play, now_ns), events
     if now_mL > fill.seen_mL + 1e-4:
         return replace(track, fill=replace(fill, seen_mL=now_mL, moved_ns=now_ns)), events
     if now_ns - fill.moved_ns > (4.0 + 4.0 * play.period_s) * 1e9:
+        if fill.unwanted:
+            return replace(track, fill=None), events
         return _again(track, fill, play, now_ns), events
     return track, events
 

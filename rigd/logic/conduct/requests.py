@@ -17,10 +17,10 @@ Answer = tuple[ConductState, str, tuple[Event, ...]]
 """New state, "" or why it is refused, events besides the answer."""
 
 
-def answer_all(state: ConductState, view: View) -> tuple[ConductState, tuple[Event, ...], tuple[str, ...]]:
-    """Answer what is new. The last result names the commands (START, HOLD, RESTART) that were granted."""
+def answer_all(state: ConductState, view: View) -> tuple[ConductState, tuple[Event, ...], tuple[tuple[str, str], ...]]:
+    """Answer what is new. The last result holds the commands (START, HOLD, RESTART) that were granted, and to whom."""
     events: list[Event] = []
-    granted: list[str] = []
+    granted: list[tuple[str, str]] = []
     for request in view.requests:
         if request.verb in (Verb.STOP, Verb.CUT):
             state = replace(state, called_off=state.called_off or state.run == run_states.IDLE)
@@ -31,8 +31,7 @@ def answer_all(state: ConductState, view: View) -> tuple[ConductState, tuple[Eve
         events += [*more, _answered(request, refusal, view.now_ns)]
         command = _COMMANDS.get(request.verb)
         if command and not refusal:
-            granted.append(command)
-            state = replace(state, hold_reason=f"{request.who} asked for it" if command == "HOLD" else "")
+            granted.append((command, f"asked for by {request.who or 'nobody'}"))
     return state, tuple(events), tuple(granted)
 
 

@@ -55,7 +55,7 @@ class ConductState:
     fronts: Fronts = field(default_factory=Fronts)
     soiled_mL: float | None = None
     results: tuple[PointResult, ...] = ()
-    needs_mL: Mapping[str, float] = field(default_factory=dict)
+    following_mL: Mapping[str, tuple[tuple[float, float], ...]] = field(default_factory=dict)
     bath_degC: float | None = None
     circulate: bool = True
     hold_reason: str = ""

@@ -129,7 +129,11 @@ def _charged(play: PumpLayout, track: PumpTrack, want: Want, now_ns: int) -> boo
 def _want(scene: Scene, name: str, flow: float, flows: Mapping[str, float]) -> Want:
     """The new liquid, for what the coming phases need of it."""
     play = scene.layout.pumps[name]
-    need_mL = max(scene.needs_mL.get(name, 0.0), 0.2) + play.feed.outlet_mL
+    need_mL = play.feed.outlet_mL + 0.2
+    later_mL = scene.later_mL(name, need_mL, flows[name])
+    if later_mL == 0.0 and name in scene.following_mL:
+        later_mL = play.pump.stroke_mL  # not even one phase fits into a syringe: as much as it holds
+    need_mL += later_mL
     level_mL = min(lead(play, flows[name], need_mL), need_mL) if play.dual else 0.0
     return Want(label(play, scene.spec.reagent), flow, need_mL, level_mL=level_mL)
 

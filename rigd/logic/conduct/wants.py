@@ -83,14 +83,14 @@ class PointResult:
 
 @dataclass(frozen=True, slots=True)
 class Scene:
-    """What a phase sees. ``needs_mL``: per pump, what the phases after this one draw of the same liquid."""
+    """What a phase sees. ``following_mL``: per pump, what each phase after this one draws of the same liquid."""
 
     layout: Layout
     view: View
     spec: PhaseSpec
     tracks: Mapping[str, PumpTrack]
     prompts: Mapping[str, Prompt]
-    needs_mL: Mapping[str, float]
+    following_mL: Mapping[str, tuple[tuple[float, float], ...]]
     positions: Mapping[str, str]
     histories: tuple[FlowHistory, ...]
     clean: bool
@@ -114,6 +114,22 @@ class Scene:
             return 0.0
         value = self.view.value(self.layout.jacket)
         return None if value is None else abs(value - wanted_degC)
+
+    def later_mL(self, name: str, here_mL: float, flow_mL_min: float) -> float:
+        """What one filling should hold for the phases after this one besides ``here_mL``: whole phases only.
+
+        So a syringe is used up where one point ends and the next begins, a change-over falls into the early settling,
+        and the standby syringe is empty, free for a flush, for most of the time.
+        """
+        play = self.layout.pumps[name]
+        room_mL = play.pump.stroke_mL - play.reserve_mL(flow_mL_min) - here_mL
+        before_mL = found_mL = 0.0
+        for volume_mL, ready_mL in self.following_mL.get(name, ()):
+            if before_mL + ready_mL > room_mL:
+                break
+            found_mL = before_mL + ready_mL
+            before_mL += volume_mL
+        return found_mL
 
     def residence_s(self) -> float:
         """Time that the liquid now at the signal spent in the columns, from integrated flow; ``nan`` if not known."""
