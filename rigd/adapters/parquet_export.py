@@ -21,7 +21,7 @@ def export_parquet(run: Path, folder: Path) -> tuple[int, int]:
     """Write ``samples.parquet`` (t_ns, tag, value, unit, quality, scan) and ``events.parquet``; returns their rows.
 
     The facts about the run stand in the files' metadata. A file that was there is replaced only by a whole one.
-    Raises ``RigError`` without pyarrow, ``JournalError`` for a journal that cannot be read.
+    Raises ``RigError`` without pyarrow or room, ``JournalError`` for a journal that cannot be read.
     """
     try:
         import pyarrow as pa
@@ -43,6 +43,8 @@ def export_parquet(run: Path, folder: Path) -> tuple[int, int]:
                         writer.write_table(table)
                         rows += table.num_rows
                 unfinished.replace(folder / f"{name}.parquet")
+            except OSError as error:
+                raise RigError(f"cannot write {folder / name}.parquet: {error}") from error
             finally:
                 unfinished.unlink(missing_ok=True)
             counts.append(rows)

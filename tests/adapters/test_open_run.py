@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import errno
 import json
 import math
 import subprocess
@@ -145,6 +146,19 @@ def test_parquet_holds_every_sample_exactly(tmp_path, capsys):
     assert table.schema.metadata[b"rigd.rig"] == b"two-pump-column"
     assert pq.read_table(tmp_path / "events.parquet").num_rows == facts["events"]["rows"]
     assert sorted(path.name for path in tmp_path.iterdir()) == ["events.parquet", "samples.parquet"]
+
+
+def test_a_full_disk_leaves_the_old_file_and_nothing_half_written(tmp_path, capsys, monkeypatch):
+    (tmp_path / "samples.parquet").write_bytes(b"the old one")
+
+    def full(*_: object) -> None:
+        raise OSError(errno.ENOSPC, "No space left on device")
+
+    monkeypatch.setattr(pq.ParquetWriter, "write_table", full)
+    assert call(["export", str(recorded()), "--parquet", "--out", str(tmp_path)]) == 1
+    assert "No space left" in capsys.readouterr().err
+    assert [path.name for path in tmp_path.iterdir()] == ["samples.parquet"]
+    assert (tmp_path / "samples.parquet").read_bytes() == b"the old one"
 
 
 def test_without_pyarrow_the_extra_is_named(tmp_path, capsys, monkeypatch):
