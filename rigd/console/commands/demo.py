@@ -20,8 +20,8 @@ from rigd.console.run_names import RUNS
 
 DEMO_PACE = 25.0
 """Process seconds per second: the sweep ends within about two minutes."""
-SERVED_S = 30.0
-"""Longest wait for the simulator to open its ports."""
+SERVED_S, PATIENT_S = 240.0, 5.0
+"""Longest wait for the simulator to open its ports (its first start on a computer compiles it), and when to say so."""
 ENDED_S = 10.0
 CONFIGS = Path(__file__).resolve().parents[3] / "configs"
 RIG, RECIPE = CONFIGS / "rigs" / "two-pump-column.toml", CONFIGS / "recipes" / "demo-sweep.toml"
@@ -50,7 +50,7 @@ def demo(output: Output, pace: float, runs: Path) -> int:
     folder = Path(tempfile.mkdtemp(prefix="rigd-demo-"))
     surroundings = {**os.environ, "RIGD_RUNTIME": str(folder)}
     try:
-        with _served(folder, pace, surroundings):
+        with _served(output, folder, pace, surroundings):
             run = [
                 sys.executable,
                 "-m",
@@ -69,12 +69,12 @@ def demo(output: Output, pace: float, runs: Path) -> int:
 
 
 @contextlib.contextmanager
-def _served(folder: Path, pace: float, surroundings: dict[str, str]) -> Iterator[None]:
+def _served(output: Output, folder: Path, pace: float, surroundings: dict[str, str]) -> Iterator[None]:
     """The simulated rig in a process of its own, in a session of its own so that Ctrl-C reaches the run first."""
     command = [sys.executable, "-m", "rigd", "sim", str(RIG), "--pace", f"{pace:g}", "--quiet"]
     simulator = subprocess.Popen(command, env=surroundings, start_new_session=True, stdout=subprocess.DEVNULL)
     try:
-        _until_served(folder, simulator)
+        _until_served(output, folder, simulator)
         yield
     finally:
         simulator.terminate()
@@ -84,14 +84,20 @@ def _served(folder: Path, pace: float, surroundings: dict[str, str]) -> Iterator
         simulator.wait()
 
 
-def _until_served(folder: Path, simulator: subprocess.Popen[bytes]) -> None:
+def _until_served(output: Output, folder: Path, simulator: subprocess.Popen[bytes]) -> None:
     from rigd.model.errors import RigError
 
-    deadline_s = time.monotonic() + SERVED_S
+    began_s, told = time.monotonic(), False
     while not list(folder.glob("*/ports.json")):
         if simulator.poll() is not None:
             raise RigError(f"the simulator ended at once with exit code {simulator.returncode}; try: rigd sim {RIG}")
-        if time.monotonic() > deadline_s:
+        waited_s = time.monotonic() - began_s
+        if waited_s > PATIENT_S and not told:
+            told = True
+            output.errors.print(
+                "preparing the simulated rig: its first start on a computer compiles it, up to a minute or two"
+            )
+        if waited_s > SERVED_S:
             raise RigError(f"the simulator did not open its ports within {SERVED_S:g} s; try: rigd sim {RIG}")
         time.sleep(0.05)
 
