@@ -72,7 +72,9 @@ def replay(run: Path, watch: Watch | None = None) -> Replayed:
         died = "outcome" not in recorded.meta
         _compare(result, recorded.program, journal.scans(), last if died else 0, watch)
     if died:
-        result.notes.append("the journal was never closed: the run goes on, or the daemon died; compared as far as the record goes")
+        result.notes.append(
+            "the journal was never closed: the run goes on, or the daemon died; compared as far as the record goes"
+        )
     if lost := recorded.meta.get("lost_records"):
         result.notes.append(f"{lost} records were lost while the disk was full")
     return result
