@@ -110,6 +110,8 @@ def _swap_now(play: PumpLayout, track: PumpTrack, want: Want, now_ns: int) -> bo
     if track.standby_mL <= EMPTY_mL or now_ns - track.refused_ns < 2_000_000_000:
         return False
     level_mL = track.level_at(now_ns)
+    if track.standby != want.label and track.active != want.label:
+        return want.urgent and track.active == liquid_of(want.label)  # kept: the other syringe runs out first
     if track.standby != want.label:
         # The wanted liquid is used up and the other one is in the way: change over at rest, fill, and change back.
         spent = track.active == want.label and level_mL <= play.guard_mL(want.flow_mL_min)

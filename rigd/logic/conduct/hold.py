@@ -71,19 +71,13 @@ def _still(scene: Scene) -> Wants:
 def _flushing(scene: Scene) -> Wants:
     """Solvent at once where the standby syringe is free for it."""
     flows = solvent_flows(scene.layout, scene.layout.rig.flush_mL_min)
-    volumes = _flush_volumes(scene)
     wants = dict(_still(scene).pumps)
     for name, flow in flows.items():
         play = scene.layout.pumps[name]
         part = flow / sum(flows.values())
-        need_mL = volumes * scene.layout.trunk_mL * part + play.feed.outlet_mL
+        need_mL = scene.soiled_mL * part + 0.05
         wants[name] = Want(play.solvent, flow, need_mL, level_mL=min(need_mL, lead(play, flow, need_mL)), urgent=True)
     return _outlet(scene, wants)
-
-
-def _flush_volumes(scene: Scene) -> float:
-    sheet = scene.layout.recipe.sheet
-    return sheet.flush_volumes if sheet else 1.0
 
 
 def _trickling(scene: Scene) -> Wants:

@@ -51,7 +51,7 @@ def scene_of(state: ConductState, view: View) -> Scene:
         following_mL=state.following_mL,
         positions=state.positions,
         histories=state.histories,
-        clean=is_clean(state, view.now_ns),
+        soiled_mL=soiled_mL(state, view.now_ns),
     )
 
 
@@ -102,12 +102,12 @@ def _soiled(state: ConductState, now_ns: int) -> float | None:
     return _total_mL(state, now_ns) if soiling else state.soiled_mL
 
 
-def is_clean(state: ConductState, now_ns: int) -> bool:
-    """True when enough solvent has gone through since, by the chemistry sheet, outlet lines included."""
+def soiled_mL(state: ConductState, now_ns: int) -> float:
+    """Solvent that must still go through before the bed counts as clean, by the chemistry sheet; lines included."""
     if state.soiled_mL is None:
-        return True
+        return 0.0
     sheet = state.layout.recipe.sheet
     longest_mL = max((play.feed.outlet_mL for play in state.layout.pumps.values()), default=0.0)
     lines_mL = longest_mL * len(state.layout.pumps)
     wanted_mL = (sheet.flush_volumes if sheet else 1.0) * state.layout.trunk_mL + lines_mL
-    return _total_mL(state, now_ns) - state.soiled_mL >= wanted_mL
+    return max(0.0, wanted_mL - (_total_mL(state, now_ns) - state.soiled_mL))

@@ -69,13 +69,21 @@ def _wants(scene: Scene, wants: Mapping[str, Want], **options: bool) -> Wants:
 
 def _rinse(scene: Scene, memory: Memory, flows: Mapping[str, float]) -> Move[Memory]:
     doses = _doses(scene, memory, flows)
-    dosing, wants, done = dose_all(scene, doses, memory.rinses, flows)
+    quick = _rinse_flows(scene, flows)
+    dosing, wants, done = dose_all(scene, doses, memory.rinses, quick)
     memory = replace(memory, rinses=dosing, stage="charge" if done else "rinse")
     if done and scene.spec.reagent:
         return _charge(scene, memory, flows)
     if done:
         return _meet(scene, replace(memory, stage="meet"), flows)
-    return Move(memory, _wants(scene, wants), "rinsing", due_ns=dose_due_ns(scene, doses, dosing, flows))
+    return Move(memory, _wants(scene, wants), "rinsing", due_ns=dose_due_ns(scene, doses, dosing, quick))
+
+
+def _rinse_flows(scene: Scene, flows: Mapping[str, float]) -> dict[str, float]:
+    """After a hold reagent is slowed down; solvent that has to run out first is not."""
+    full = flows_of(scene.layout, scene.spec.reagent, 1.0, scene.spec.point)
+    on_solvent = {name for name in flows if scene.tracks[name].active == scene.layout.pumps[name].solvent}
+    return {name: full[name] if name in on_solvent else flow for name, flow in flows.items()}
 
 
 def _doses(scene: Scene, memory: Memory, flows: Mapping[str, float]) -> dict[str, tuple[Dose, ...]]:

@@ -83,7 +83,10 @@ class PointResult:
 
 @dataclass(frozen=True, slots=True)
 class Scene:
-    """What a phase sees. ``following_mL``: per pump, what each phase after this one draws of the same liquid."""
+    """What a phase sees. ``following_mL``: per pump, what each phase after this one draws of the same liquid.
+
+    ``soiled_mL``: solvent that must still pass before the bed holds nothing else.
+    """
 
     layout: Layout
     view: View
@@ -93,7 +96,12 @@ class Scene:
     following_mL: Mapping[str, tuple[tuple[float, float], ...]]
     positions: Mapping[str, str]
     histories: tuple[FlowHistory, ...]
-    clean: bool
+    soiled_mL: float
+
+    @property
+    def clean(self) -> bool:
+        """True when only solvent is in the bed."""
+        return self.soiled_mL <= 0.0
 
     @property
     def now_ns(self) -> int:
