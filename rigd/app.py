@@ -41,7 +41,7 @@ from rigd.model.errors import JournalError, LinkError, RigError
 from rigd.model.recipe import Recipe
 from rigd.model.rig import RigDefinition
 from rigd.ports.driver import Driver
-from rigd.ports.plant import FaultSpec, Plant
+from rigd.ports.plant import EmulatedLine, FaultSpec, Plant
 from rigd.runtime.deep import DeepShell
 from rigd.runtime.dry import DryOptions, DryResult, DryShell
 from rigd.runtime.live import Live, Surroundings
@@ -308,15 +308,15 @@ def dry_run(rig_path: Path, recipe_path: Path, settings: DrySettings = DrySettin
     program = compile_program(pair.rig, pair.recipe)
     seed = settings.seed or pair.rig.simulation.seed
     plant = plant_maker().make(pair.rig, seed)
+    lines = simulator_maker().lines(pair.rig, plant, 1.0, seed) if settings.deep else {}
     for fault in settings.faults:
-        plant.inject(fault)
+        _suffering(fault, pair.rig, plant, lines).inject(fault)
     journal = None
     if settings.journal is not None:
         facts = _dry_facts(program, rig_path, recipe_path)
         journal = SqliteJournal(settings.journal, facts, pair.rig.tags)
     shell: DryShell | DeepShell
     if settings.deep:
-        lines = simulator_maker().lines(pair.rig, plant, 1.0, seed)
         shell = DeepShell(program, plant, lines, make_drivers(pair.rig), journal, settings.watch)
     else:
         shell = DryShell(program, plant, cell_readers(pair.rig), journal, settings.watch)
@@ -324,6 +324,16 @@ def dry_run(rig_path: Path, recipe_path: Path, settings: DrySettings = DrySettin
     if journal is not None:
         journal.close(result.outcome)
     return DryRun(program, plant, result)
+
+
+def _suffering(
+    fault: FaultSpec, rig: RigDefinition, plant: Plant, lines: Mapping[str, EmulatedLine]
+) -> Plant | EmulatedLine:
+    """Who takes a fault: the plant, or the line of the link or device that a fault of bytes names."""
+    if fault.kind in {kind.kind for kind in plant_maker().fault_kinds()}:
+        return plant
+    link = next((device.link for device in rig.devices if device.id == fault.target), fault.target)
+    return lines.get(link, plant)
 
 
 def _dry_facts(program: Program, rig_path: Path, recipe_path: Path) -> dict[str, str]:

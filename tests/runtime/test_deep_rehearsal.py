@@ -13,6 +13,7 @@ from fakes.recorded import BLOCK, RECIPE, RIG, S, recorded
 
 from rigd.adapters.journal_reader import JournalReader
 from rigd.app import DryRun, DrySettings, dry_run
+from rigd.model.errors import ConfigError
 from rigd.model.events import Event, EventKind
 from rigd.ports.plant import FaultSpec
 from rigd.runtime.dry import DryOptions
@@ -61,6 +62,16 @@ def test_the_same_seed_gives_the_same_digest_and_the_limit_ends_it():
     assert "was not over" in first.text
     assert first.end_ns == pytest.approx(15 * S, abs=S)
     assert first.scans > 100
+
+
+@pytest.mark.timeout(120)
+def test_a_fault_of_bytes_exists_only_where_there_are_bytes():
+    silent = FaultSpec("device-silent", "sensors", onset_s=8.0)
+    deep = rehearse(None, silent, limit_s=30).result
+    trips = {event.subject: event.t_ns / 1e9 for event in of_kind(deep.events, EventKind.TRIP)}
+    assert 8.0 < trips["PRESSURE-HIGH"] < trips["LINK-sensors"] < 12.0
+    with pytest.raises(ConfigError):
+        rehearse(None, silent, limit_s=30, deep=False)
 
 
 @pytest.mark.slow
