@@ -17,6 +17,7 @@ from rich.text import Text
 
 from rigd.logic.flow_path import Feed, FlowPath, Section
 from rigd.model.rig import RigDefinition, Tag
+from rigd.model.samples import QualityCause
 
 Values = Mapping[str, Mapping[str, Any]]
 
@@ -41,6 +42,8 @@ def drawing(rig: RigDefinition, path: FlowPath, values: Values, width: int) -> l
 def quantity(entry: Mapping[str, Any] | None, measures: str = "") -> str:
     """A value with its unit, as on the screen: fractions in per cent, a question mark when uncertain, the cause when
     bad, a dash when there is none."""
+    if measures == "fraction" and entry and entry.get("c") == QualityCause.NOT_A_NUMBER.value:
+        return "–"  # a conversion of nothing: no reactant has come yet
     if entry is None or entry.get("q") == "bad":
         return str(entry.get("c", "")) or "bad" if entry else "–"
     if entry.get("text"):

@@ -16,7 +16,11 @@ from rigd.console.watch_state import Told, Watched
 from rigd.logic.flow_path import FlowPath
 from rigd.model.rig import RigDefinition
 
-EVENTS_SHOWN = 6
+EVENTS_SHOWN, EVENTS_LEAST = 6, 3
+FRAME_ROWS = 5
+"""Rows besides parts, values and events: two more of the progress, two rules, the foot."""
+DRAWN = (".position", ".flow", ".state")
+"""Endings of tags that the flow path shows too, or that matter least, in the order in which they give way."""
 FOOT = "q leaves, the run goes on; in another terminal: rigd hold, resume, stop, cut"
 PRIORITY_STYLES = {1: "bold white on red", 2: "bold red", 3: "yellow", 4: "cyan"}
 STOP_STYLES = {"hold": "bold black on yellow", "quench": "bold white on dark_orange3", "cut": "bold white on red"}
@@ -25,9 +29,10 @@ GROUPS = ("pressure", "temperature", "flow", "fraction", "concentration", "volum
 
 
 def view(
-    state: Watched, rig: RigDefinition | None, path: FlowPath | None, width: int, foot: str = FOOT
+    state: Watched, rig: RigDefinition | None, path: FlowPath | None, width: int, foot: str = FOOT, height: int = 0
 ) -> RenderableType:
-    """The whole screen, with a line about the keys below."""
+    """The whole screen, with a line about the keys below. On a screen of ``height`` rows (0: endless) the events give
+    way first, then values that the flow path shows as well."""
     snapshot = state.snapshot
     if not snapshot:
         return Text("waiting for the first snapshot of the run ...", style="dim")
@@ -35,9 +40,11 @@ def view(
     parts: list[RenderableType] = [_headline(snapshot, width), _progress_rows(snapshot, width)]
     if rig is not None and path is not None:
         parts += [Rule(style="dim"), *drawing(rig, path, values, width)]
-    parts += [Rule(style="dim"), _values(values, rig, width)]
-    parts += _attention(snapshot)
-    parts += [Rule(style="dim"), *_events(state.events)]
+    attention = _attention(snapshot)
+    spare = height - len(parts) - len(attention) - FRAME_ROWS if height else len(values) + EVENTS_SHOWN
+    table = _values(values, rig, width, spare - EVENTS_LEAST)
+    parts += [Rule(style="dim"), table, *attention, Rule(style="dim")]
+    parts += _events(state.events, min(EVENTS_SHOWN, max(1, spare - table.row_count)))
     if state.end:
         parts.append(Text(f"The run has ended: {state.end}.", style="bold"))
     parts.append(Text(foot, "dim"))
@@ -115,10 +122,14 @@ def clock_words(seconds: Any) -> str:
     return f"{whole // 3600}:{whole % 3600 // 60:02d}:{whole % 60:02d}"
 
 
-def _values(values: Mapping[str, Any], rig: RigDefinition | None, width: int) -> Table:
-    """Tags in columns, by what they measure; bad ones say why."""
-    cells = [_value_cell(tag, _mapping(entry), measures) for tag, entry, measures in _ordered(values, rig)]
+def _values(values: Mapping[str, Any], rig: RigDefinition | None, width: int, most: int) -> Table:
+    """Tags in columns, by what they measure, in ``most`` rows if that can be; bad ones say why and always stay."""
     columns = max(1, width // 27)
+    shown = _ordered(values, rig)
+    for ending in DRAWN:
+        if len(shown) > most * columns:
+            shown = [one for one in shown if not one[0].endswith(ending) or _mapping(one[1]).get("q") == "bad"]
+    cells = [_value_cell(tag, _mapping(entry), measures) for tag, entry, measures in shown]
     table = Table.grid(padding=(0, 1), expand=True)
     for _ in range(columns):
         table.add_column(ratio=1, no_wrap=True, overflow="ellipsis")
@@ -144,7 +155,7 @@ def _ordered(values: Mapping[str, Any], rig: RigDefinition | None) -> list[tuple
 def _value_cell(tag: str, entry: Mapping[str, Any], measures: str) -> Text:
     style = {"bad": "bold red", "uncertain": "yellow"}.get(str(entry.get("q")), "default")
     shown = quantity(entry, measures)
-    if entry.get("q") == "bad":
+    if entry.get("q") == "bad" and shown != "–":
         shown = f"✗ {shown}"
     return Text.assemble((f"{tag} ", "dim"), (shown, style))
 
@@ -177,8 +188,8 @@ def _attention(snapshot: Mapping[str, Any]) -> list[RenderableType]:
     return [Rule(style="dim"), *found] if found else []
 
 
-def _events(events: Sequence[Told]) -> Iterable[Text]:
-    for event in events[-EVENTS_SHOWN:]:
+def _events(events: Sequence[Told], most: int) -> Iterable[Text]:
+    for event in events[-most:]:
         style = EVENT_STYLES.get(event.kind, "default")
         line = Text.assemble((f"{clock_words(event.t_s):>8} ", "dim"), (event.text or event.subject, style))
         line.no_wrap, line.overflow = True, "ellipsis"

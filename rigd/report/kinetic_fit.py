@@ -12,6 +12,7 @@ from rigd.analysis.fitting import FitError
 from rigd.analysis.kinetics import Feed, Law, RateFit, conversion, feed_after_tee, fit_rate_constant, law_of
 from rigd.model.recipe import PointKind
 from rigd.model.rig import LiquidRole, RigDefinition
+from rigd.report.cold_entry import ROOM_DEGC, cold_entry
 from rigd.report.data import PointRow, RunData
 
 CURVE_POINTS = 120
@@ -59,10 +60,27 @@ def kinetics_of(run: RunData) -> KineticsResult:
             fits.append(_fit(temperature, here, [_feed(run.rig, point, basis.partner) for point in here], basis))
         except FitError as error:
             remarks.append(f"No rate constant at {temperature:g} degC: {error}.")
+        else:
+            remarks += _entry_remark(temperature, here, basis)
     left_out = [point.id for point in run.points if point.kind != PointKind.BLANK and not _usable(point)]
     if left_out:
         remarks.append(f"Not in the fit (not settled, or no conversion read): {', '.join(left_out)}.")
     return KineticsResult(tuple(fits), tuple(remarks))
+
+
+def _entry_remark(temperature: float, points: list[PointRow], basis: _Basis) -> list[str]:
+    """What a cold entry does to k: an estimate in words, not applied."""
+    shares = cold_entry(points, temperature, basis.activation_kJ_mol) if basis.in_middle else None
+    if shares is None:
+        return []
+    low, high = (100 * (1 - share) for share in reversed(shares))
+    remark = (
+        f"Liquid enters the bed cold: the fastest point's sensor in mid-bed was below {temperature:g} °C. If it entered"
+        f" at {ROOM_DEGC:g} °C and warmed up evenly from the jacket, the mean rate in the bed was {low:.0f} to"
+        f" {high:.0f} % below that at the sensor, so k is too low by about as much. An estimate; k is not corrected"
+        " for it. A preheating length before the column removes it."
+    )
+    return [remark]
 
 
 def reagent_compositions(rig: RigDefinition) -> dict[str, dict[str, float]]:
@@ -94,13 +112,15 @@ def _feed(rig: RigDefinition | None, point: PointRow, partner: str) -> Feed:
 @dataclass(frozen=True, slots=True)
 class _Basis:
     """What the files say: rate law, partner, equilibrium constant, activation energy, and which part of the liquid in
-    the columns lies between the beads (``k`` refers to that liquid, as in the chemistry file)."""
+    the columns lies between the beads (``k`` refers to that liquid, as in the chemistry file); whether a sensor sits in
+    the middle of a bed."""
 
     law: Law = Law.APPARENT
     partner: str = ""
     constant: float = 0.0
     activation_kJ_mol: float = 0.0
     between_beads: float = 1.0
+    in_middle: bool = False
 
 
 def _basis(rig: RigDefinition | None) -> _Basis:
@@ -113,7 +133,8 @@ def _basis(rig: RigDefinition | None) -> _Basis:
     reactions = [one for one in rig.chemistry.reactions if one.stoichiometry.get(rig.chemistry.reactant, 0.0) < 0]
     energy = reactions[0].activation_energy_kJ_mol if len(reactions) == 1 else 0.0
     between = path.interstitial_mL / path.column_mL if path.column_mL else 1.0
-    return _Basis(law, partner, constant, energy, between)
+    in_middle = any(tag.measures == "temperature" and tag.at.endswith(".middle") for tag in rig.tags)
+    return _Basis(law, partner, constant, energy, between, in_middle)
 
 
 def _fit(temperature: float, points: list[PointRow], feeds: list[Feed], basis: _Basis) -> Kinetics:

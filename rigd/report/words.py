@@ -71,11 +71,18 @@ def number(value: float, digits: int = 2) -> str:
 
 
 def percent(value: float, scatter: float = math.nan) -> str:
-    """``63.4 ± 0.5`` of a fraction and its standard deviation, in per cent (the sign is in the heading)."""
+    """A fraction and its standard deviation in per cent (the sign is in the heading), both to the second digit of the
+    deviation, at most to a thousandth of a per cent.
+
+    >>> percent(0.634, 0.0123), percent(0.273304, 0.0000812), percent(0.634)
+    ('63.4 ± 1.2', '27.330 ± 0.008', '63.4')
+    """
     if not math.isfinite(value):
         return "–"
-    digits = 2 if scatter < 0.0005 else 1
-    return f"{100 * value:.{digits}f}" + (f" ± {100 * scatter:.{digits}f}" if math.isfinite(scatter) else "")
+    if not math.isfinite(scatter):
+        return f"{100 * value:.1f}"
+    digits = min(3, max(1, 1 - math.floor(math.log10(100 * scatter)))) if scatter > 0 else 1
+    return f"{100 * value:.{digits}f} ± {100 * scatter:.{digits}f}"
 
 
 def outcome_words(run: RunData) -> str:

@@ -14,6 +14,7 @@ from rich.console import Console
 from rigd.report.collect import read_run
 from rigd.report.page import render_page, write_page
 from rigd.report.summary import summary
+from rigd.report.words import percent
 
 
 @pytest.fixture(scope="module")
@@ -59,7 +60,7 @@ def test_simulated_is_said_in_title_banner_and_figures(run):
 def test_numbers_on_the_page_are_those_of_the_data(run):
     page = render_page(run)
     for point in run.points:
-        assert f"{100 * point.conversion:.1f} ± {100 * point.conversion_sd:.1f}" in page
+        assert percent(point.conversion, point.conversion_sd) in page
         assert f"{point.collected_mL:.2f}" in page
     assert "6 of 6 points collected" in page
     assert "nobody" in page

@@ -29,7 +29,8 @@ def runs(output: Output, folder: Path) -> None:
         output.say(f"no runs in {folder}")
         return
     table = Table(box=box.SIMPLE_HEAD, pad_edge=False)
-    for heading in ("run", "rig", "recipe", "started (UTC)", "lasted", "outcome"):
+    table.add_column("run", no_wrap=True)
+    for heading in ("rig", "recipe", "started (UTC)", "lasted", "outcome"):
         table.add_column(heading, overflow="fold")
     for facts in found:
         mark = " [red]simulated[/]" if facts["simulated"] else ""

@@ -62,7 +62,7 @@ async def _watch(console: Console, daemon: Daemon) -> None:
     ):
         listening = asyncio.create_task(listen())
         while not left.is_set() and not listening.done():
-            live.update(view(state, rig, path, console.width), refresh=True)
+            live.update(view(state, rig, path, console.width, height=console.height), refresh=True)
             with contextlib.suppress(TimeoutError):
                 await asyncio.wait_for(left.wait(), FRAME_S)
         listening.cancel()
