@@ -38,6 +38,7 @@ $(READY): pyproject.toml requirements.lock
 	@test -n "$(PYTHON)" || { echo "rigd needs Python 3.11 or newer: sudo apt-get install python3 python3-venv"; exit 1; }
 	@$(PYTHON) -c 'import ensurepip, venv' 2>/dev/null \
 		|| { echo "rigd needs Python's venv module: sudo apt-get install python3-venv"; exit 1; }
+	@echo "making the environment in $(VENV); once, a few minutes"
 	$(PYTHON) -m venv $(VENV)
 	$(BIN)/python -m pip install -q --disable-pip-version-check --require-hashes -r requirements.lock
 	$(BIN)/python -m pip install -q --disable-pip-version-check --no-deps --no-build-isolation -e .

@@ -147,7 +147,7 @@ def _fit(temperature: float, points: list[PointRow], feeds: list[Feed], basis: _
     common = sorted(feeds, key=lambda feed: feed.reactant)[len(feeds) // 2]
     order = np.argsort(tau)
     times = np.linspace(0.0, 1.12 * float(tau.max()), CURVE_POINTS)
-    own = np.interp(times, tau[order], speeds[order])
+    own = _between(times, tau[order], speeds[order])
 
     def drawn(factors: NDArray[np.float64]) -> tuple[tuple[float, float], ...]:
         dose = times * factors
@@ -160,6 +160,18 @@ def _fit(temperature: float, points: list[PointRow], feeds: list[Feed], basis: _
     even = drawn(np.full_like(times, basis.between_beads)) if differs else ()
     energy = basis.activation_kJ_mol if differs else 0.0
     return Kinetics(temperature, found, common, tuple(point.id for point in points), drawn(own), even, energy)
+
+
+def _between(times: NDArray[np.float64], tau: NDArray[np.float64], speeds: NDArray[np.float64]) -> NDArray[np.float64]:
+    """Speeds at other times: smooth and without overshoot between the points, the end points' own beyond them."""
+    from scipy.interpolate import PchipInterpolator
+
+    known, place = np.unique(tau, return_inverse=True)
+    if known.size < 2:
+        return np.full_like(times, speeds.mean())
+    means = np.bincount(place, speeds) / np.bincount(place)
+    within: NDArray[np.float64] = PchipInterpolator(known, means)(np.clip(times, known[0], known[-1]))
+    return within
 
 
 def _speed(beds_degC: NDArray[np.float64], at_degC: float, activation_kJ_mol: float) -> NDArray[np.float64]:

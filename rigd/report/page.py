@@ -10,6 +10,7 @@ from jinja2 import Environment, PackageLoader, StrictUndefined
 from markupsafe import Markup
 
 from rigd import __version__
+from rigd.analysis.kinetics import law_of
 from rigd.model.events import Event, EventKind
 from rigd.model.protection import ConditionKind
 from rigd.model.rig import TagKind
@@ -66,7 +67,7 @@ def _context(run: RunData) -> dict[str, Any]:
         "conversion_svg": Markup(conversion_figure(run, kinetics)) if _any_conversion(run) else "",
         "timeline_svg": Markup(timeline_figure(run)),
         "residence_note": _residence_note(run),
-        "fits": [_fit(fit) for fit in kinetics.fits],
+        "fits": [_fit(run, fit) for fit in kinetics.fits],
         "corrected": sorted({fit.activation_kJ_mol for fit in kinetics.fits if fit.activation_kJ_mol}),
         "remarks": kinetics.remarks,
         "points": [_point(point) for point in run.points],
@@ -117,10 +118,11 @@ def _event(event: Event) -> dict[str, str]:
     return {"t": when, "kind": event.kind.value, "subject": event.subject, "text": event.text}
 
 
-def _fit(fit: Kinetics) -> dict[str, Any]:
-    feed = f"{fit.feed.reactant:.3g} mol/L"
+def _fit(run: RunData, fit: Kinetics) -> dict[str, Any]:
+    reactant, partner = (run.rig.chemistry.reactant, law_of(run.rig.chemistry)[1]) if run.rig else ("", "")
+    feed = f"{reactant} {fit.feed.reactant:.3g} mol/L".lstrip()
     if fit.feed.partner:
-        feed += f" + {fit.feed.partner:.3g} mol/L"
+        feed += f" + {partner} {fit.feed.partner:.3g} mol/L"
     law = fit.fit.law.value + (f", K = {fit.fit.equilibrium_constant:g}" if fit.fit.equilibrium_constant else "")
     return {
         "temperature": f"{fit.temperature_degC:g}",

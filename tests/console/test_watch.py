@@ -153,3 +153,23 @@ def test_the_progress_line_is_one_line(width):
 def test_without_a_terminal_the_turning_points_are_printed():
     assert printed(told(event("phase", "prime", 61, "Priming begins."))).plain == "0:01:01 Priming begins."
     assert printed(told(event("valve", "V-A", 1, "moved"))) is None
+
+
+@pytest.mark.parametrize("height", [24, 30, 40])
+def test_a_screen_keeps_its_foot_its_last_event_and_every_bad_value(height):
+    tags = {f"PU-{n}.{what}": value(0.5, "mL/min") for n in range(4) for what in ("flow", "state", "position")}
+    values = {**snapshot()["values"], **tags, "PU-9.flow": value(None, "mL/min", "bad", "stale")}
+    state = heard(Watched(), snapshot(values=values))
+    for number in range(8):
+        state = heard(state, event("note", "x", number, f"event {number}"))
+    rig = two_pumps()
+    text = text_of(view(state, rig, flow_path(rig), 80, height=height))
+    assert len(text.splitlines()) <= height
+    for words in ("q leaves", "event 7", "✗ stale"):
+        assert words in text, words
+
+
+def test_a_conversion_of_nothing_is_a_dash_and_not_a_fault():
+    values = {**snapshot()["values"], "IR.conversion": value(None, "1", "bad", "not a number")}
+    text = screen(heard(Watched(), snapshot(values=values)))
+    assert "not a number" not in text
