@@ -24,6 +24,7 @@ from typing import Any, NoReturn
 
 from rigd import __version__
 from rigd.adapters import run_folder
+from rigd.adapters.build import core_digest
 from rigd.adapters.clock import PacedClock, boot_id, suspended_ns, wall_ns
 from rigd.adapters.door_server import DoorServer
 from rigd.adapters.guard_plan import helper, will_facts, with_folder
@@ -79,6 +80,8 @@ def start_run(rig_path: Path, recipe_path: Path, settings: RunSettings = RunSett
     plan = prepare_run(rig_path, recipe_path, settings)
     sys.stdout.flush()
     sys.stderr.flush()
+    # a signal during the change waits until the guard, and then control, can do what it asks
+    signal.pthread_sigmask(signal.SIG_BLOCK, (signal.SIGINT, signal.SIGTERM))
     os.execv(sys.executable, [sys.executable, "-m", "rigd.guard", str(plan)])
 
 
@@ -272,7 +275,7 @@ def _facts(plan: Mapping[str, Any], folder: Path, clock: PacedClock) -> dict[str
     facts["options"] = json.dumps(asdict(_run_options(plan)))
     computer = f"{platform.platform()}, Python {platform.python_version()}"
     started = {"started_utc": clock.utc(), "origin_monotonic_ns": str(clock.origin_ns), "boot_id": boot_id()}
-    return {**facts, **started, "version": __version__, "computer": computer}
+    return {**facts, **started, "version": __version__, "core": core_digest(), "computer": computer}
 
 
 def _descriptor(name: str) -> int:
@@ -340,7 +343,8 @@ def _dry_facts(program: Program, rig_path: Path, recipe_path: Path) -> dict[str,
     """What the journal of a rehearsal holds about it: enough to decide it all again."""
     rig, recipe = program.rig, program.recipe
     names = {"rig": rig.name, "recipe": recipe.name, "rig_digest": rig.digest, "recipe_digest": recipe.digest}
-    facts = {"simulated": "true", "version": __version__, "options": json.dumps(asdict(program.options))}
+    facts = {"simulated": "true", "version": __version__, "core": core_digest()}
+    facts["options"] = json.dumps(asdict(program.options))
     return {**names, **facts, **run_folder.frozen_texts(rig_path, recipe_path)}
 
 

@@ -256,7 +256,9 @@ _OF_TAG = (
 def rowid_after(connection: sqlite3.Connection, table: str, column: str, value: int) -> int:
     """The first rowid whose ``column`` is above ``value``, by halving: rows stand in the order of arrival, so that the
     order of the file is the index, and it costs the writer nothing."""
-    (low, high) = connection.execute(f"SELECT coalesce(min(rowid), 1), coalesce(max(rowid), 0) FROM {table}").fetchone()
+    # two look-ups: SQLite walks the whole table for a lowest and a highest in one
+    (low,) = connection.execute(f"SELECT coalesce(min(rowid), 1) FROM {table}").fetchone()
+    (high,) = connection.execute(f"SELECT coalesce(max(rowid), 0) FROM {table}").fetchone()
     while low <= high:
         middle = (low + high) // 2
         row = connection.execute(f"SELECT {column} FROM {table} WHERE rowid >= ? LIMIT 1", (middle,)).fetchone()

@@ -11,6 +11,7 @@ from pathlib import Path
 
 from rigd import __version__
 from rigd.adapters import run_folder
+from rigd.adapters.build import core_digest
 from rigd.adapters.journal_reader import JournalReader
 from rigd.config.load import load_pair
 from rigd.logic.program import Program, RunOptions, compile_program
@@ -89,6 +90,8 @@ def _notes(meta: Mapping[str, str], digests: tuple[str, str]) -> tuple[str, ...]
     found = []
     if (version := meta.get("version", "unknown")) != __version__:
         found.append(f"recorded by rigd {version}, decided again by rigd {__version__}: differences may come from that")
+    elif meta.get("core", "") not in ("", core_digest()):
+        found.append(f"recorded by another build of rigd {version}: differences may come from that")
     for what, digest in zip(("rig", "recipe"), digests, strict=True):
         if meta.get(f"{what}_digest", digest) != digest:
             found.append(f"this version reads the run's {what} file differently: its digest is another one")

@@ -5,6 +5,7 @@ from __future__ import annotations
 import errno
 import json
 import math
+import sqlite3
 import subprocess
 import sys
 
@@ -14,7 +15,7 @@ import pytest
 from fakes.recorded import BLOCK, S, copy_of, recorded, spoilt
 
 import rigd
-from rigd.adapters import journal_reader, journal_sqlite
+from rigd.adapters import journal_sqlite
 from rigd.adapters.journal_reader import JournalReader
 from rigd.adapters.journal_sqlite import SqliteJournal
 from rigd.adapters.open_run import Table, open_run
@@ -117,21 +118,24 @@ def test_the_overview_adds_up_over_several_commits_and_leaves_bad_values_out(tmp
     assert minutes["mean"][1] == pytest.approx(sum(good) / len(good))
 
 
-def test_opening_and_a_span_read_next_to_nothing(monkeypatch):
-    """Halving finds the rows: a handful of look-ups for the whole span, and only rows around it are walked."""
-    rows = []
-    real = journal_reader._samples
-
-    def counted(*arguments):
-        for row in real(*arguments):
-            rows.append(row)
-            yield row
-
-    monkeypatch.setattr(journal_reader, "_samples", counted)
-    with open_run(recorded()) as run:
-        assert not rows
-        run.samples("PT-1", 10.0, 11.0)
-    assert 3 <= len(rows) <= 8
+def test_a_span_costs_the_same_in_a_long_run(tmp_path):
+    """Counted in steps of SQLite's machine, not in time: ten times as many rows cost a few more look-ups."""
+    steps = []
+    for scans in (2_000, 20_000):
+        path = tmp_path / f"{scans}.sqlite"
+        SqliteJournal(path, {}, (TAG,)).close("done")
+        with sqlite3.connect(path) as tables:
+            numbers = range(1, scans + 1)
+            tables.executemany("INSERT INTO scans VALUES (?, ?, '')", ((n, n * S) for n in numbers))
+            rows = ((n, n * S, 0.5 * n) for n in numbers)
+            tables.executemany("INSERT INTO samples VALUES (?, 1, ?, ?, 0, 0, NULL)", rows)
+        tables.close()
+        ticks = []
+        with open_run(path) as run:
+            run._journal._segments[0].set_progress_handler(lambda ticks=ticks: ticks.append(1), 10)
+            assert run.samples("T", 1000.0, 1009.0)["value"].tolist() == [0.5 * n for n in range(1000, 1010)]
+        steps.append(len(ticks))
+    assert steps[1] < 1.5 * steps[0]
 
 
 def test_parquet_holds_every_sample_exactly(tmp_path, capsys):

@@ -169,6 +169,14 @@ def test_another_version_of_the_program_is_said(tmp_path):
     assert any("rig file differently" in note for note in found.notes)
 
 
+def test_another_build_of_the_same_version_is_said(tmp_path):
+    run = copy_of(recorded(), tmp_path)
+    assert not replay(run).notes
+    with spoilt(run) as tables:
+        tables.execute("UPDATE meta SET value = 'abc' WHERE key = 'core'")
+    assert any("another build" in note for note in replay(run).notes)
+
+
 def test_the_options_of_the_run_are_those_that_were_recorded(tmp_path):
     run = copy_of(recorded(), tmp_path)
     with spoilt(run) as tables:
