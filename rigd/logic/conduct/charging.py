@@ -113,9 +113,10 @@ def _swap_now(play: PumpLayout, track: PumpTrack, want: Want, now_ns: int) -> bo
     if track.standby != want.label and track.active != want.label:
         return want.urgent and track.active == liquid_of(want.label)  # kept: the other syringe runs out first
     if track.standby != want.label:
-        # The wanted liquid is used up and the other one is in the way: change over at rest, fill, and change back.
-        spent = track.active == want.label and level_mL <= play.guard_mL(want.flow_mL_min)
-        return want.urgent and spent and track.at_rest and want.may_fill and want.need_mL > 0.0
+        # The wanted liquid is used up and another is in the way: change over at rest, then fill and change back when
+        # it is to be kept, or let it run out when not.
+        spent = level_mL <= play.guard_mL(want.flow_mL_min)
+        return spent and track.at_rest and want.may_fill and want.need_mL > 0.0
     if track.active != want.label:
         return want.urgent
     return want.swap

@@ -18,6 +18,7 @@ from rigd.model.orders import Action, Outcome, Result
 EMPTY_mL = 0.01
 _CHANGE_mL = 0.01
 _FULL_mL = 0.02
+_EXACT_mL = 0.002
 ATTEMPTS = 4
 Fields = dict[str, str | float | int | bool]
 _NO_FRONT = Front(UNKNOWN, -1e9)
@@ -157,7 +158,8 @@ def _filled(
         return track, events
     now_mL = track.standby_mL if play.dual else track.level_mL
     moving = not play.dual and track.state is PumpState.REFILLING
-    if now_mL >= fill.volume_mL - _FULL_mL and not moving:
+    near = now_mL >= fill.volume_mL - _FULL_mL and now_mL <= fill.seen_mL + 1e-4
+    if (near or now_mL >= fill.volume_mL - _EXACT_mL) and not moving:
         return _done(track, fill, play), (*events, *_refill_event(fill, play, now_ns))
     if fill.broken and track.at_rest:
         if fill.unwanted:
