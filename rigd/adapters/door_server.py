@@ -3,6 +3,8 @@
 A client can never hold up the daemon: what it does not read waits for it, snapshots only the newest, events up to
 ``EVENT_BACKLOG``; then it is dropped. What it sends is checked before it becomes a request, and each request is
 answered exactly once: with the core's REQUEST event, or, when none came in ``ANSWER_S``, with a refusal that says so.
+A client that asks faster than it reads is not listened to meanwhile. Clients that say nothing cannot keep others out:
+subscribers never fill all places, and of the others the one that was silent longest makes room.
 """
 
 from __future__ import annotations
@@ -14,6 +16,7 @@ import math
 import os
 from collections import deque
 from collections.abc import Callable, Mapping, Sequence
+from itertools import count
 from pathlib import Path
 from typing import Any
 
@@ -26,6 +29,13 @@ LINE_MAX = 16_384
 ANSWER_S = 10.0
 SNAPSHOT_S = 0.2
 CLIENTS_MAX = 32
+SUBSCRIBERS_MAX = 24
+OWED_MAX = 64
+"""Lines that may wait for a client before no more is read from it."""
+ASKING_S = 0.002
+"""Pause after each line of a client, so that a flood of them leaves the loop to the scans."""
+TEXT_MAX = 400
+"""Longest name, target or text of a request [characters]."""
 
 Message = Mapping[str, object]
 
@@ -50,6 +60,7 @@ class DoorServer:
         self._recent: deque[bytes] = deque(maxlen=EVENT_BACKLOG)
         self._count = 0
         self._requests = 0
+        self._turns = count()  # the order in which clients were last heard
 
     async def open(self) -> None:
         """Listen; the socket is the user's alone. ``DoorError`` when that is not possible."""
@@ -113,8 +124,8 @@ class DoorServer:
                     await client.done.wait()
 
     async def _serve(self, reader: asyncio.StreamReader, writer: asyncio.StreamWriter) -> None:
-        client = _Client(writer)
-        if len(self._clients) >= CLIENTS_MAX:
+        client = _Client(writer, next(self._turns))
+        if len(self._clients) >= CLIENTS_MAX and not self._make_room():
             writer.write(_line(_no("", f"{CLIENTS_MAX} clients are connected already")))
             writer.close()
             return
@@ -122,8 +133,8 @@ class DoorServer:
         listener = asyncio.ensure_future(self._listen(reader, client))
         try:
             await client.send_all()
-        except OSError:
-            pass  # the client went away
+        except (OSError, asyncio.CancelledError):
+            pass  # the client went away, or the daemon ends
         finally:
             listener.cancel()
             client.done.set()
@@ -133,7 +144,10 @@ class DoorServer:
     async def _listen(self, reader: asyncio.StreamReader, client: _Client) -> None:
         try:
             while line := await reader.readline():
+                client.heard = next(self._turns)
                 client.say(self._heard(line, client))
+                await asyncio.sleep(ASKING_S)
+                await client.has_room()
         except ValueError:
             client.say(_no("", f"a line may hold {LINE_MAX} bytes"))
         except OSError:
@@ -145,11 +159,13 @@ class DoorServer:
         try:
             message = json.loads(line)
             do = message["do"]
-        except (ValueError, TypeError, KeyError):
+        except (ValueError, TypeError, KeyError, RecursionError):
             return _no("", 'send one JSON object per line, such as {"do": "snapshot"}')
         if do == "snapshot":
             return {"say": "snapshot", **self._snapshot()}
         if do == "subscribe":
+            if sum(one.subscribed for one in self._clients) >= SUBSCRIBERS_MAX:
+                return _no("", f"{SUBSCRIBERS_MAX} clients are watching already; close one of them")
             client.subscribe(self._recent)
             return None
         if do == "request":
@@ -178,11 +194,19 @@ class DoorServer:
             raise DoorError("a request needs the name of the person who asks, as who")
         if not isinstance(target, str) or not isinstance(args, dict):
             raise DoorError("target must be text and args an object")
-        if not all(isinstance(value, str | int | float) for value in args.values()):
-            raise DoorError("the values of args must be texts or numbers")
+        args = {_plain(str(key)): _argument(value) for key, value in args.items()}
+        who, target = _plain(who.strip()), _plain(target)
         self._requests += 1
-        args = {str(key): value if isinstance(value, str) else float(value) for key, value in args.items()}
-        return Request(f"door-{self._requests}", verb, who.strip(), self._now_ns(), target, args)
+        return Request(f"door-{self._requests}", verb, who, self._now_ns(), target, args)
+
+    def _make_room(self) -> bool:
+        """Send away the client that was silent longest; False when all of them watch."""
+        silent = [client for client in self._clients if not client.subscribed]
+        if silent:
+            away = min(silent, key=lambda client: client.heard)
+            self._clients.discard(away)
+            away.drop()
+        return bool(silent)
 
     def _answer(self, event: Event) -> None:
         asked = self._asked.pop(str(event.fields.get("request_id", "")), None)
@@ -203,19 +227,31 @@ class DoorServer:
 class _Client:
     """What one client is still owed."""
 
-    def __init__(self, writer: asyncio.StreamWriter) -> None:
+    def __init__(self, writer: asyncio.StreamWriter, heard: int) -> None:
         self._writer = writer
+        self.heard = heard
         self._lines: deque[bytes] = deque()
         self._snapshot: bytes | None = None
         self._subscribed = False
         self._ending = False
         self._wake = asyncio.Event()
+        self._room = asyncio.Event()
         self.done = asyncio.Event()
         writer.transport.set_write_buffer_limits(high=LINE_MAX)
 
     @property
     def wants_snapshot(self) -> bool:
         return self._subscribed and self._snapshot is None and not self._ending
+
+    @property
+    def subscribed(self) -> bool:
+        return self._subscribed
+
+    async def has_room(self) -> None:
+        """Wait until the client has read most of what it is owed, or is gone."""
+        while len(self._lines) > OWED_MAX and not self._subscribed and not self._ending:
+            self._room.clear()
+            await self._room.wait()
 
     def subscribe(self, recent: deque[bytes]) -> None:
         if not self._subscribed:
@@ -267,6 +303,7 @@ class _Client:
             await self._wake.wait()
 
     def _next(self) -> bytes:
+        self._room.set()
         if self._lines:
             return self._lines.popleft()
         line, self._snapshot = self._snapshot or b"", None
@@ -278,7 +315,7 @@ def _line(message: Message) -> bytes:
         text = json.dumps(message, ensure_ascii=False, separators=(",", ":"), allow_nan=False)
     except ValueError:  # not-a-number and infinity are no JSON
         text = json.dumps(_finite(message), ensure_ascii=False, separators=(",", ":"))
-    return text.encode() + b"\n"
+    return text.encode(errors="replace") + b"\n"
 
 
 def _finite(value: object) -> object:
@@ -287,6 +324,26 @@ def _finite(value: object) -> object:
     if isinstance(value, list | tuple):
         return [_finite(inner) for inner in value]
     return None if isinstance(value, float) and not math.isfinite(value) else value
+
+
+def _plain(text: str) -> str:
+    """Text that a journal, a message and a terminal can hold: printable, of one line, not endless; or ``DoorError``."""
+    if len(text) > TEXT_MAX or not text.isprintable():
+        raise DoorError(f"names and texts of a request are printable, of one line and at most {TEXT_MAX} characters")
+    return text
+
+
+def _argument(value: object) -> str | float:
+    """An argument of a request: text or a finite number; or ``DoorError``."""
+    if isinstance(value, str):
+        return _plain(value)
+    try:
+        number = float(value) if isinstance(value, int | float) else math.nan
+    except OverflowError:
+        number = math.nan
+    if not math.isfinite(number):
+        raise DoorError("the values of args must be texts or numbers, and the numbers finite")
+    return number
 
 
 def _no(own_id: str, detail: str) -> Message:

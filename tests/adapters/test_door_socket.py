@@ -150,3 +150,53 @@ async def count_events(stream: AsyncIterator[object]) -> int:
 async def test_nobody_home(tmp_path: Path) -> None:
     with pytest.raises(DoorError, match="no daemon listens"):
         await SocketDoor(tmp_path / "none.sock").request("stop", "ann")
+
+
+@pytest.mark.parametrize(
+    "line",
+    [
+        b"[" * 16000,
+        b'{"do": "request", "verb": "hold", "who": "\\ud800"}',
+        b'{"do": "request", "verb": "hold", "who": "\\u001b[2J"}',
+        b'{"do": "request", "verb": "hold", "who": "ann", "target": "' + b"x" * 5000 + b'"}',
+        b'{"do": "request", "verb": "bypass", "who": "ann", "args": {"duration_s": NaN}}',
+        b'{"do": "request", "verb": "bypass", "who": "ann", "args": {"duration_s": 1' + b"0" * 400 + b"}}",
+    ],
+)
+async def test_what_no_journal_or_terminal_can_hold_never_becomes_a_request(house: House, line: bytes) -> None:
+    reader, writer = await asyncio.open_unix_connection(house.path)
+    writer.write(line + b"\n")
+    async with asyncio.timeout(2):
+        reply = json.loads(await reader.readline())
+        writer.close()
+        assert (reply["say"], reply["ok"], house.requests) == ("answer", False, [])
+        assert (await SocketDoor(house.path).snapshot())["t_s"] == 1.5
+
+
+async def test_a_flood_of_questions_whose_answers_nobody_reads_is_not_stored(house: House) -> None:
+    _, writer = await asyncio.open_unix_connection(house.path)
+    with pytest.raises(TimeoutError):  # the daemon reads no more from it
+        await asyncio.wait_for(flood(writer), 2)
+    assert max(len(client._lines) for client in house.door._clients) <= door_server.OWED_MAX + 1
+    assert await SocketDoor(house.path).request("stop", "ann") == "accepted it"
+    writer.transport.abort()
+
+
+async def flood(writer: asyncio.StreamWriter) -> None:
+    while True:
+        writer.write(b'{"do": "snapshot"}\n' * 500)
+        await writer.drain()
+
+
+async def test_clients_that_say_nothing_or_only_watch_do_not_keep_a_stop_out(house: House) -> None:
+    silent = [await asyncio.open_unix_connection(house.path) for _ in range(2 * door_server.CLIENTS_MAX)]
+    assert await SocketDoor(house.path).request("stop", "ann") == "accepted it"
+    watching = [await asyncio.open_unix_connection(house.path) for _ in range(door_server.SUBSCRIBERS_MAX + 1)]
+    for _, writer in watching:
+        writer.write(b'{"do": "subscribe"}\n')
+        await writer.drain()
+        await asyncio.sleep(0.01)
+    assert b"watching already" in await watching[-1][0].readline()
+    assert await SocketDoor(house.path).request("cut", "ann") == "accepted it"
+    for _, writer in silent + watching:
+        writer.transport.abort()
