@@ -127,18 +127,20 @@ def _print(console: Console, event: Told) -> None:
 
 
 async def _daemon(folder: Path) -> Daemon | None:
-    """The daemon of a run folder, once its door is there."""
+    """The daemon of a run folder, once its door is there; ``None`` when it has ended and no door will come."""
     for _ in range(round(APPEAR_S / 0.1)):
-        if (daemon := _open_door(folder)) is not None:
+        daemon, listens = _announced(folder)
+        if daemon is None or listens:
             return daemon
         await asyncio.sleep(0.1)
     return None
 
 
-def _open_door(folder: Path) -> Daemon | None:
+def _announced(folder: Path) -> tuple[Daemon | None, bool]:
+    """The living daemon of a run folder, and whether its door is there."""
     wanted = folder.resolve()
-    found = [one for one in running_daemons() if Path(one.folder).resolve() == wanted and Path(one.door).exists()]
-    return found[0] if found else None
+    found = next((one for one in running_daemons() if Path(one.folder).resolve() == wanted), None)
+    return found, found is not None and Path(found.door).exists()
 
 
 def _folder(given: Path) -> Path:

@@ -3,7 +3,8 @@
 House rules. (1) Control has permission as long as its tickets come in time (not late, not early) and prove their scans
 (``rigd.model.ticket``). (2) Control may end by itself only after it has said so: ``D <exit code> <sentence>``. (3) In
 every other case it is killed first, so that it cannot send anything after the last wills. (4) Signals are control's
-business (first: orderly stop, second: cut); the guard hands them on. (5) A closed terminal (SIGHUP) ends nothing.
+business (first: orderly stop, second: cut); the guard hands them on, and what comes before control is ready waits
+for it. (5) A closed terminal (SIGHUP) ends nothing.
 (6) The
 pipe of ``RIGD_LIFE_FD``, from which control reads nothing, tells it by its end that the guard is gone.
 """
@@ -25,6 +26,7 @@ from rigd.guard.wills import Log, send_wills
 from rigd.model.ticket import Window, read_ticket
 
 FAREWELL_S = 15.0
+SIGNALS = (signal.SIGINT, signal.SIGTERM)
 
 
 class Guard:
@@ -36,14 +38,17 @@ class Guard:
         self.log = Log(self.folder / "guard.log")
         self.signals = 0
         self.control: subprocess.Popen[bytes] | None = None
-        for number in (signal.SIGINT, signal.SIGTERM):
+        signal.pthread_sigmask(signal.SIG_BLOCK, SIGNALS)
+        for number in SIGNALS:
             signal.signal(number, self._signal)
         signal.signal(signal.SIGHUP, signal.SIG_IGN)
         self.end: tuple[int, str] | None = None
         self.wrong = ""
         self._window = Window(self.plan["first_s"], self.plan["early_s"], self.plan["late_s"], time.monotonic_ns())
         self._buffer = b""
+        self.began = False
         self.control, self._tickets, self._life = self._start_control(plan_path)
+        signal.pthread_sigmask(signal.SIG_UNBLOCK, SIGNALS)
         self.helpers: list[subprocess.Popen[bytes]] = []
         for command in self.plan["helpers"]:
             with contextlib.suppress(OSError):
@@ -114,7 +119,7 @@ class Guard:
     def _read(self) -> None:
         data = os.read(self._tickets, 65536)
         if not data:
-            self.wrong = "ended without a word"
+            self.wrong = "was ended by a third signal" if self.signals > 2 else "ended without a word"
             return
         *lines, self._buffer = (self._buffer + data).split(b"\n")
         for line in lines:
@@ -125,6 +130,7 @@ class Guard:
             _, code, sentence = line.decode(errors="replace").split(" ", 2)
             self.end = (int(code), sentence)
         elif ticket := read_ticket(line):
+            self.began = True
             self.wrong = self.wrong or self._window.judge(ticket, time.monotonic_ns())
         else:
             self.wrong = self.wrong or f"said something that is no ticket ({line[:40]!r})"
@@ -140,7 +146,7 @@ def guard(plan_path: str) -> int:
     one.finish_helpers()
     for path in one.plan["cleanup"]:
         Path(path).unlink(missing_ok=True)
-    if one.plan["after"]:
+    if one.plan["after"] and one.began:
         subprocess.run(one.plan["after"], check=False)
     return code
 

@@ -105,6 +105,7 @@ class Live:
         if self.given.handle_signals:
             for number in SIGNALS:
                 asyncio.get_running_loop().add_signal_handler(number, self.signalled)
+            signal.pthread_sigmask(signal.SIG_UNBLOCK, SIGNALS)  # the guard starts control with them blocked
         async with asyncio.TaskGroup() as group:
             tasks = [group.create_task(owner.run(), name=f"link[{owner.spec.id}]") for owner in self.owners]
             tasks += [

@@ -28,6 +28,7 @@ mode, tickets, life = sys.argv[1], int(os.environ["RIGD_TICKET_FD"]), int(os.env
 asked = []
 for number in (signal.SIGINT, signal.SIGTERM):
     signal.signal(number, lambda *_: asked.append(1))
+signal.pthread_sigmask(signal.SIG_UNBLOCK, (signal.SIGINT, signal.SIGTERM))
 proof, scan = 0, 0
 def tell():
     global proof, scan
@@ -226,6 +227,15 @@ def test_signals_are_handed_on_and_end_nothing_by_themselves(tmp_path: Path, pee
         assert guard.stderr.read() == "rigd: stopped as asked\n"
         assert guard.wait(10) == 1
     assert peer.heard == 0
+
+
+def test_a_control_that_ends_before_its_first_scan_has_nothing_to_report(tmp_path: Path) -> None:
+    path = plan(tmp_path, "done", {}, after=[sys.executable, "-c", "print('after')"])
+    facts = json.loads(path.read_text())
+    path.write_text(json.dumps({**facts, "control": [sys.executable, "-c", "raise SystemExit(1)"]}))
+    done = run_guard(path)
+    assert (done.returncode, done.stdout) == (1, "")
+    assert "ended without a word" in done.stderr
 
 
 def test_control_sees_the_end_of_a_killed_guard(tmp_path: Path) -> None:
