@@ -89,11 +89,16 @@ def _source_lines(problem: Problem) -> list[Text]:
 
 
 def _span(line: str, key: str) -> tuple[int, int]:
-    """Columns of the value that a problem is about: after ``last part of key =``; the text of the line otherwise."""
+    """Columns of the value that a problem is about: after ``last part of key =``; the text of the line otherwise.
+
+    A list of inline tables on one line holds the key several times; the number before the last part says which one.
+    """
     name = re.sub(r"\[[^\]]*\]$", "", key).rsplit(".", 1)[-1] if key else ""
     pattern = rf"(?:^|[\s{{,]){re.escape(name)}\s*=\s*(\"[^\"]*\"|'[^']*'|\[[^\]]*\]|\{{[^}}]*\}}|[^,#}}]+)"
-    found = re.search(pattern, line) if name else None
-    if found is not None:
+    number = re.search(r"\[(\d+)\]\.[^.\[\]]+$", key)
+    places = list(re.finditer(pattern, line)) if name else []
+    if places:
+        found = places[min(int(number[1]) - 1 if number else 0, len(places) - 1)]
         value = found[1].rstrip()
         return found.start(1), found.start(1) + len(value)
     body = line.split("#")[0].rstrip()

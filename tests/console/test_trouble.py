@@ -15,7 +15,7 @@ def shown(*problems: Problem, width: int = 100) -> list[str]:
     out = StringIO()
     console = Console(file=out, width=width, force_terminal=False)
     if len(problems) == 1:
-        console.print(problem_block(problems[0]))
+        console.print(problem_block(problems[0]), crop=False)
     else:
         print_problems(console, problems)
     return [line.rstrip() for line in out.getvalue().splitlines()]
@@ -59,6 +59,16 @@ def test_a_file_that_cannot_be_shown_still_gives_its_message():
         "  found x",
         "  do: do y",
     ]
+
+
+def test_the_caret_finds_its_table_in_a_list_on_one_line(tmp_path):
+    path = tmp_path / "r.toml"
+    line = 'trip_when = [{ tag = "PT-1", above = "8 bar" }, { tag = "PT-2", above = "22 bar" }]'
+    path.write_text(line + "\n")
+    key = "interlocks[P].trip_when[2].above"
+    rows = shown(Problem("c", "found x", "do y", file=str(path), line=1, key=key))
+    assert rows[2].index("^") - rows[1].index("trip_when") == line.index('"22 bar"')
+    assert rows[2].count("^") == len('"22 bar"')
 
 
 def test_square_brackets_of_files_are_not_taken_for_markup(tmp_path):
