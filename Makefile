@@ -43,7 +43,7 @@ $(READY): pyproject.toml requirements.lock
 	$(BIN)/python -m pip install -q --disable-pip-version-check --require-hashes -r requirements.lock
 	$(BIN)/python -m pip install -q --disable-pip-version-check --no-deps --no-build-isolation -e .
 	@echo "compiling the simulator's kernels once"
-	@$(BIN)/rigd dry-run configs/rigs/two-pump-column.toml configs/recipes/demo-sweep.toml --json >/dev/null
+	@$(BIN)/rigd dry-run configs/rigs/two-pump-column.toml configs/recipes/demo-sweep.toml --json >/dev/null 2>&1
 	@touch $(READY)
 
 # Pins and hashes only, no addresses.

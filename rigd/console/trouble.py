@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import errno
 import os
 import re
 import tempfile
@@ -21,6 +22,13 @@ STYLES = {Severity.ERROR: "bold red", Severity.WARNING: "bold yellow", Severity.
 
 EXIT_NOT_DONE, EXIT_WRONG_INPUT, EXIT_OWN_FAULT = 1, 2, 3
 
+STORAGE = {
+    errno.ENOSPC: "free some space on the disk",
+    errno.EDQUOT: "free some space within your quota",
+    errno.EROFS: "choose a folder that is not read-only",
+}
+"""What to do when a file cannot be written: the disk's fault and not the program's."""
+
 
 def explain(error: Exception, output: Output) -> int:
     """Print what happened, on stderr (and as JSON if asked for); returns the exit code."""
@@ -36,6 +44,12 @@ def explain(error: Exception, output: Output) -> int:
         _sentence(output.errors, str(error))
         _json_error(output, str(error))
         return EXIT_WRONG_INPUT if isinstance(error, PluginError) else EXIT_NOT_DONE
+    if isinstance(error, OSError) and error.errno in STORAGE:
+        where = f"{error.filename}: " if error.filename else ""
+        text = f"{where}nothing could be written there ({error.strerror}); {STORAGE[error.errno]}, then try again."
+        _sentence(output.errors, text)
+        _json_error(output, text)
+        return EXIT_NOT_DONE
     place = _write_details(error)
     reason = " ".join(str(error).split()) or "no reason given"
     text = f"rigd itself failed ({type(error).__name__}: {reason}). Details for a bug report are in {place}."

@@ -216,7 +216,7 @@ class Rewind:
 
     async def stopped(self) -> None:
         """Return when every pump has agreed to its stop."""
-        while not self._agreed():  # noqa: ASYNC110 - the core tells nobody
+        while not self._agreed():
             await asyncio.sleep(0.002)
 
     def _agreed(self) -> bool:

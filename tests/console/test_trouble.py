@@ -2,12 +2,14 @@
 
 from __future__ import annotations
 
+import errno
 from io import StringIO
 
 import pytest
 from rich.console import Console
 
-from rigd.console.trouble import print_problems, problem_block
+from rigd.console.output import Output
+from rigd.console.trouble import explain, print_problems, problem_block
 from rigd.model.problems import Problem, Severity
 
 
@@ -84,3 +86,10 @@ def test_square_brackets_of_files_are_not_taken_for_markup(tmp_path):
 def test_many_are_counted():
     problems = [Problem("a", "1"), Problem("b", "2"), Problem("c", "3", severity=Severity.WARNING)]
     assert shown(*problems)[-1] == "2 errors, 1 warning or note"
+
+
+def test_a_full_disk_is_no_fault_of_the_program(capsys):
+    assert explain(OSError(errno.ENOSPC, "No space left on device", "report.html"), Output()) == 1
+    said = " ".join(capsys.readouterr().err.split())
+    assert "report.html: nothing could be written there (No space left on device); free some space" in said
+    assert "bug report" not in said

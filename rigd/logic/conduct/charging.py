@@ -136,7 +136,8 @@ def _dual_fill(play: PumpLayout, track: PumpTrack, want: Want, now_ns: int) -> f
         return 0.0
     if track.active != want.label:
         enough_mL = 0.6 * min(want.need_mL, play.pump.stroke_mL, want.batch_mL)
-        return 0.0 if here_mL >= max(enough_mL, EMPTY_mL) else target_mL
+        least_mL = play.guard_mL(want.flow_mL_min) + _WORTH_mL  # or it would be spent as soon as it delivers
+        return 0.0 if here_mL >= max(enough_mL, least_mL) else target_mL
     little = missing_mL < 0.25 * play.pump.stroke_mL and here_mL >= want.level_mL
     if held_mL > EMPTY_mL and not want.swap and little:
         return 0.0  # not worth a filling of its own
