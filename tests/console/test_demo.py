@@ -68,3 +68,22 @@ def test_ctrl_c_twice_cuts_and_leaves_no_process_behind(tmp_path):
             assert demo.wait(60) == 1, rest
         assert "Traceback" not in rest
         assert living_with(short) == []
+
+
+@pytest.mark.slow
+@pytest.mark.skipif(not Path("/proc/self/environ").exists(), reason="looks at processes through /proc")
+@pytest.mark.parametrize(("number", "seconds"), [(signal.SIGTERM, 15), (signal.SIGKILL, 15)])
+def test_a_demo_that_is_ended_before_its_run_leaves_no_simulator(number, seconds):
+    """Its pipe ends with it, however it ends."""
+    command = [sys.executable, "-m", "rigd", "demo"]
+    with tempfile.TemporaryDirectory(prefix="rigd-t-") as short:
+        surroundings = {**os.environ, "TMPDIR": short}
+        with subprocess.Popen(command, cwd=short, stderr=subprocess.DEVNULL, env=surroundings) as demo:
+            end_s = time.monotonic() + seconds
+            while not any(" sim " in line for line in living_with(short)):
+                assert time.monotonic() < end_s
+                time.sleep(0.002)
+            demo.send_signal(number)
+        while living_with(short):
+            assert time.monotonic() < end_s, living_with(short)
+            time.sleep(0.1)

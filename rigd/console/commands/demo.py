@@ -50,7 +50,7 @@ def demo(output: Output, pace: float, runs: Path) -> int:
     folder = Path(tempfile.mkdtemp(prefix="rigd-demo-"))
     surroundings = {**os.environ, "RIGD_RUNTIME": str(folder)}
     try:
-        with _served(output, folder, pace, surroundings):
+        with _served(output, folder, pace, surroundings) as life:
             run = [
                 sys.executable,
                 "-m",
@@ -63,20 +63,29 @@ def demo(output: Output, pace: float, runs: Path) -> int:
                 "--runs",
                 str(runs),
             ]
-            return _wait(subprocess.Popen([*run, *(["--json"] if output.json else [])], env=surroundings))
+            run += ["--json"] if output.json else []
+            return _wait(subprocess.Popen(run, env=surroundings, pass_fds=(life,)))
     finally:
         shutil.rmtree(folder, ignore_errors=True)
 
 
 @contextlib.contextmanager
-def _served(output: Output, folder: Path, pace: float, surroundings: dict[str, str]) -> Iterator[None]:
-    """The simulated rig in a process of its own, in a session of its own so that Ctrl-C reaches the run first."""
-    command = [sys.executable, "-m", "rigd", "sim", str(RIG), "--pace", f"{pace:g}", "--quiet"]
-    simulator = subprocess.Popen(command, env=surroundings, start_new_session=True, stdout=subprocess.DEVNULL)
+def _served(output: Output, folder: Path, pace: float, surroundings: dict[str, str]) -> Iterator[int]:
+    """The simulated rig in a process of its own, in a session of its own so that Ctrl-C reaches the run first.
+
+    It ends with the last process that holds the descriptor given: this one, and the run, which must not lose its rig.
+    """
+    command = [sys.executable, "-m", "rigd", "sim", str(RIG), "--pace", f"{pace:g}", "--quiet", "--with-stdin"]
+    its_end, life = os.pipe()
+    simulator = subprocess.Popen(
+        command, env=surroundings, start_new_session=True, stdin=its_end, stdout=subprocess.DEVNULL
+    )
+    os.close(its_end)
     try:
         _until_served(output, folder, simulator)
-        yield
+        yield life
     finally:
+        os.close(life)
         simulator.terminate()
         with contextlib.suppress(subprocess.TimeoutExpired):
             simulator.wait(ENDED_S)

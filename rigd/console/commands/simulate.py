@@ -2,6 +2,10 @@
 
 from __future__ import annotations
 
+import os
+import signal
+import sys
+import threading
 from pathlib import Path
 
 import click
@@ -23,9 +27,17 @@ from rigd.console.output import Output
 @click.option("--seed", type=int, default=None, help="Seed of noise and scatter; the rig file's if not given.")
 @click.option("--fault", "faults", multiple=True, metavar="FAULT", help=f"Inject a fault: {FORM}. May be repeated.")
 @click.option("--quiet", is_flag=True, help="Say nothing but errors.")
+@click.option("--with-stdin", is_flag=True, help="End when standard input ends, so with the program that started it.")
 @click.pass_obj
 def sim(
-    output: Output, rig: Path, pace: float, tcp: bool, seed: int | None, faults: tuple[str, ...], quiet: bool
+    output: Output,
+    rig: Path,
+    pace: float,
+    tcp: bool,
+    seed: int | None,
+    faults: tuple[str, ...],
+    quiet: bool,
+    with_stdin: bool,
 ) -> int:
     """Serve the simulated rig of RIG on serial lines until stopped (Ctrl-C).
 
@@ -46,4 +58,13 @@ def sim(
         faults=specs,
         quiet=quiet,
     )
+    if with_stdin:
+        threading.Thread(target=_end_with_stdin, name="stdin", daemon=True).start()
     return simulator_maker().serve(definition, options)
+
+
+def _end_with_stdin() -> None:
+    """Wait for the end of standard input, then end as on SIGTERM."""
+    while os.read(sys.stdin.fileno(), 4096):
+        pass
+    os.kill(os.getpid(), signal.SIGTERM)
