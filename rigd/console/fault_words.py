@@ -9,7 +9,7 @@ import click
 from rigd.model.units import UnitError, parse_quantity
 from rigd.ports.plant import FaultSpec
 
-FORM = 'KIND@TARGET[,at=TIME][,for=TIME][,size=NUMBER], e.g. "blockage@L-4,at=12 min"'
+FORM = 'KIND@TARGET[,at=TIME][,for=TIME][,size=NUMBER], e.g. "block@L-4,at=12 min"'
 
 
 def parse_fault(text: str) -> FaultSpec:

@@ -72,7 +72,7 @@ class Program:
     outlet valve) to the vessel behind it, "" when closed. ``tags_of`` lists the tags of a device, ``carries`` is the
     inverse of ``feedback``, ``counting`` the tags that the volume ledger follows. The rest serves protect: ``watches``
     are all conditions, found by tag (``watching``), by device or fault (``untagged``) or by interlock or alarm
-    (``causes``); ``ringed`` tags keep their recent past.
+    (``causes``); ``ringed`` tags keep their recent past, and the ``noisy`` ones of them may not stand still.
     """
 
     rig: RigDefinition
@@ -102,6 +102,7 @@ class Program:
     untagged: Mapping[tuple[ConditionKind, str], tuple[Watch, ...]]
     causes: Mapping[str, tuple[Watch, ...]]
     ringed: frozenset[str]
+    noisy: frozenset[str]
 
     def is_solvent(self, liquid: str) -> bool:
         """True for a declared solvent; an unknown liquid counts as reagent."""
@@ -147,7 +148,12 @@ def compile_program(rig: RigDefinition, recipe: Recipe, options: RunOptions | No
         untagged=_grouped(((w.condition.kind, w.condition.tag), w) for w in watches if not w.tag),
         causes=_grouped((watch.owner, watch) for watch in watches),
         ringed=frozenset(watch.tag for watch in watches if watch.tag),
+        noisy=frozenset(watch.tag for watch in watches if watch.tag and _is_noisy(rig, watch.tag)),
     )
+
+
+def _is_noisy(rig: RigDefinition, tag_id: str) -> bool:
+    return any(tag.id == tag_id and tag.kind is TagKind.MEASURED and tag.noise > 0 for tag in rig.tags)
 
 
 def _grouped(pairs: Iterable[tuple[K, V]]) -> dict[K, tuple[V, ...]]:

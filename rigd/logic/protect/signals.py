@@ -1,7 +1,8 @@
 """From samples as they arrive to samples that may be believed: span, age, links, and the recent past of each.
 
 Bad is: what the driver says is bad, what is not a finite number, what lies beyond the span of its instrument, what is
-older than its tag allows, and everything of a device whose link is lost. A bad sample stays bad until a good one comes.
+older than its tag allows, what stands still though its instrument is noisy, and everything of a device whose link is
+lost. A bad sample stays bad until a good one comes.
 """
 
 from __future__ import annotations
@@ -24,6 +25,11 @@ RING = 20
 
 MARGIN_NS = 1_000_000_000
 """A value at the very end of its span is uncertain for this long, then bad."""
+
+STANDS_STILL = 30
+"""So many equal raw codes in a row of a tag with declared noise mean a frozen signal. With a chance p that noise leaves
+the code unchanged, k equal codes come by chance with p^(k-1): below 1e-8 for p = 0.5. A pressure shut in is truly
+constant, but its noisy instrument is not. Declare no noise for an instrument whose last digit hides it."""
 
 GRACE_NS = 10_000_000_000
 """After the start every device has this long to answer and every tag to be seen. Until then nobody can reset."""
@@ -55,7 +61,8 @@ def gate(tag: Tag) -> Gate:
 
 @dataclass(frozen=True, slots=True)
 class Signals:
-    """The judged image. ``marginal`` says since when a tag is at the end of its span; ``due_ns`` when to look again."""
+    """The judged image. ``marginal`` says since when a tag is at the end of its span, ``still`` how many equal codes
+    came in a row, ``due_ns`` when to look again."""
 
     samples: Mapping[str, Sample]
     started_ns: int
@@ -64,6 +71,7 @@ class Signals:
     rings: Mapping[str, tuple[Sample, ...]] = field(default_factory=dict)
     devices: Mapping[str, DeviceStatus] = field(default_factory=dict)
     identities: Mapping[str, DeviceIdentity] = field(default_factory=dict)
+    still: Mapping[str, int] = field(default_factory=dict)
 
 
 def initial(now_ns: int) -> Signals:
@@ -84,6 +92,7 @@ def take(
     rings = dict(signals.rings)
     gates, ringed, good, bad, unmarked = program.gates, program.ringed, Quality.GOOD, Quality.BAD, QualityCause.NONE
     marginal: dict[str, int] | None = None
+    still = signals.still
     due_ns = signals.due_ns
     taken: dict[str, Sample] = {}
     for sample in arrived:
@@ -99,6 +108,8 @@ def take(
             marginal = dict(signals.marginal) if marginal is None else marginal
             sample = _judge(bounds, sample, marginal, now_ns)
             due_ns = min(due_ns, now_ns + MARGIN_NS)
+        if tag in program.noisy and held is not None and sample.t_ns > held.t_ns:
+            still, sample = _stands_still(still, held, sample)
         if held is None or held.quality is bad:
             due_ns = min(due_ns, sample.t_ns + program.stale_ns.get(tag, NEVER_NS))
         samples[tag] = sample
@@ -116,9 +127,21 @@ def take(
             rings,
             signals.devices,
             signals.identities,
+            still,
         ),
         taken,
     )
+
+
+def _stands_still(still: Mapping[str, int], held: Sample, sample: Sample) -> tuple[Mapping[str, int], Sample]:
+    """Count equal raw codes in a row; from ``STANDS_STILL`` on the sample is bad, until the code moves."""
+    tag = sample.tag
+    if sample.raw is None or sample.raw != held.raw:
+        return ({name: count for name, count in still.items() if name != tag} if tag in still else still), sample
+    count = still.get(tag, 1) + 1
+    if count >= STANDS_STILL and sample.quality is not Quality.BAD:
+        sample = replace(sample, quality=Quality.BAD, cause=QualityCause.FROZEN)
+    return {**still, tag: count}, sample
 
 
 def _judge(bounds: Gate, sample: Sample, marginal: dict[str, int], now_ns: int) -> Sample:
