@@ -108,11 +108,12 @@ def call(arguments: Sequence[str]) -> int:
     the program itself. Never raises and never shows a traceback."""
     output = Output()
     try:
-        code = rigd.main(args=list(arguments), prog_name="rigd", standalone_mode=False, obj=output)
+        code = rigd.main(args=list(arguments) or ["--help"], prog_name="rigd", standalone_mode=False, obj=output)
         return code if isinstance(code, int) else 0
     except click.exceptions.Exit as leaving:
         return leaving.exit_code
     except (click.Abort, KeyboardInterrupt):
+        print("rigd: interrupted", file=sys.stderr)
         return 130
     except BrokenPipeError:
         return _reader_went_away()

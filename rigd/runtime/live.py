@@ -149,9 +149,8 @@ class Live:
             self._end(end)
 
     def _guard_lost(self) -> None:
-        """Stop at once, and end also when the stop is not confirmed: nobody is left to take over."""
+        """The next scan cuts (``FAULT-GUARD``); end also when that is not confirmed: nobody is left to take over."""
         self._vigil.guard_lost = True
-        self._wish(Verb.CUT, "guard lost")
         gone = RunEnd("stopped", 1, "the guard process is gone and the stop was not confirmed; look at the rig")
         asyncio.get_running_loop().call_later(GIVE_UP_S, self._end, gone)
 
