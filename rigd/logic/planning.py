@@ -6,13 +6,11 @@ by its power, the signal gate by its shortest time, the pressure rise by the dec
 
 from __future__ import annotations
 
-import math
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 
 from rigd.logic.conduct.campaign import PhaseKind, PhaseSpec, campaign
-from rigd.logic.conduct.layout import Layout, liquid_of, make_layout
-from rigd.logic.conduct.switchover import label
+from rigd.logic.conduct.layout import Layout, make_layout
 from rigd.logic.plan_phases import ESTIMATES, Effort
 from rigd.logic.plan_problems import find_problems
 from rigd.logic.program import Program
@@ -111,18 +109,3 @@ def _summed(program: Program, layout: Layout, phases: tuple[PhasePlan, ...]) -> 
     )
     problems = find_problems(layout, found.used_mL, found.collected_mL, found.waste_mL)
     return Plan(found.phases, found.duration_s, used, found.refills, collected_mL, found.waste_mL, problems)
-
-
-def liquid_drawn(layout: Layout, pump: str, reagent: bool) -> str:
-    """The liquid that a pump draws in a phase."""
-    return liquid_of(label(layout.pumps[pump], reagent))
-
-
-def hours(seconds: float) -> str:
-    """A duration for people: "7 h 42 min", "12 min", "40 s"."""
-    if not math.isfinite(seconds):
-        return "for ever"
-    if seconds < 90:
-        return f"{seconds:.0f} s"
-    minutes = round(seconds / 60)
-    return f"{minutes} min" if minutes < 60 else f"{minutes // 60} h {minutes % 60} min"

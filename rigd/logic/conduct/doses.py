@@ -24,10 +24,14 @@ class Dose:
 
 @dataclass(frozen=True, slots=True)
 class Dosing:
-    """How far one pump is: index of the dose, and its counter when that dose began to leave (``None``: not yet)."""
+    """How far one pump is: index of the dose, and its counter when that dose began to leave (``None``: not yet).
+
+    ``done_mL`` had left before another liquid came between, as a hold can make it.
+    """
 
     index: int = 0
     mark_mL: float | None = None
+    done_mL: float = 0.0
 
 
 def dose_all(
@@ -45,7 +49,8 @@ def dose_all(
 
 def passed_mL(dosing: Dosing, track: PumpTrack, now_ns: int) -> float:
     """How much of the present dose has left the syringe."""
-    return 0.0 if dosing.mark_mL is None else max(0.0, track.delivered_at(now_ns) - dosing.mark_mL)
+    since_mL = 0.0 if dosing.mark_mL is None else track.delivered_at(now_ns) - dosing.mark_mL
+    return dosing.done_mL + max(0.0, since_mL)
 
 
 def left_s(
@@ -62,8 +67,13 @@ def left_s(
 
 
 def _advanced(dosing: Dosing, row: Sequence[Dose], track: PumpTrack, now_ns: int) -> Dosing:
-    if dosing.index >= len(row) or track.active != row[dosing.index].label:
+    if dosing.index >= len(row):
         return dosing
+    if track.active != row[dosing.index].label:
+        if dosing.mark_mL is None:
+            return dosing
+        done_mL = dosing.done_mL + max(0.0, track.front.start_mL - dosing.mark_mL)
+        return Dosing(dosing.index, None, done_mL)
     if dosing.mark_mL is None:
         start_mL = track.delivered_at(now_ns) if dosing.index == 0 else track.front.start_mL
         dosing = replace(dosing, mark_mL=start_mL)
