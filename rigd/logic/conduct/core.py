@@ -13,6 +13,7 @@ from rigd.logic.conduct.demands import demand_for
 from rigd.logic.conduct.layout import make_layout
 from rigd.logic.conduct.observe import observe, scene_of
 from rigd.logic.conduct.phases import STARTS, STEPS
+from rigd.logic.conduct.point_memory import Memory
 from rigd.logic.conduct.pumps import PumpTrack
 from rigd.logic.conduct.requests import answer_all, prompt_event
 from rigd.logic.conduct.state import HOLD_SPEC, ConductState, ConductStep
@@ -223,7 +224,7 @@ def _command(state: ConductState, view: View, command: str, by: str) -> Told:
 
 
 def _break_off(state: ConductState, view: View) -> Told:
-    if state.spec.kind is not PhaseKind.POINT or not isinstance(state.memory, point.Memory):
+    if state.spec.kind is not PhaseKind.POINT or not isinstance(state.memory, Memory):
         return state, ()
     found, events = point.broken_off(scene_of(state, view), state.memory)
     return replace(state, results=_with_result(state.results, found)), events

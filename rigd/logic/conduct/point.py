@@ -9,24 +9,16 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping
-from dataclasses import dataclass, field, replace
+from dataclasses import replace
 
-from rigd.logic.conduct.charging import lead_mL
 from rigd.logic.conduct.conditioning import NEVER_NS, band_since_ns
 from rigd.logic.conduct.means import Means, merged
 from rigd.logic.conduct.point_events import abandoned, collected, interrupted, settled_event, started, unsettled_event
-from rigd.logic.conduct.point_needs import (
-    another_try_mL,
-    collect_mL,
-    gated,
-    least_mL,
-    point_mL,
-    settle_mL,
-    settle_rule,
-    signal_s,
-)
+from rigd.logic.conduct.point_memory import Memory
+from rigd.logic.conduct.point_needs import gated, settle_rule, signal_s
+from rigd.logic.conduct.point_supply import liquid_for_fraction, point_wants, quiet_since_change, topped
 from rigd.logic.conduct.switchover import label
-from rigd.logic.conduct.wants import Move, PointResult, Prompt, Scene, Want, Wants
+from rigd.logic.conduct.wants import Move, PointResult, Prompt, Scene
 from rigd.logic.estimators import turnovers
 from rigd.logic.settling import Settler, is_steady, settle_step
 from rigd.model.events import Event
@@ -34,39 +26,6 @@ from rigd.model.recipe import Point
 
 _FLOW_OFF = 0.02
 _WARM_S_MAX = 3600.0
-
-
-@dataclass(frozen=True, slots=True)
-class Memory:
-    """``step``: set, settle, divert, collect, back. ``marks``: counters since when volumes count. ``entered_mL``:
-    counters when the present setting of flows began; ``topped``: pumps that hold enough or were filled since.
-
-    ``first`` are those when they first counted (they start anew after a refill), ``at_divert`` and ``at_collect`` those
-    when it was settled and when the fraction began. ``window`` holds the means of the blocks that the settling was
-    judged by, ``means`` those of the present block and later of the whole steady stretch.
-    """
-
-    step: str = "set"
-    started_ns: int = 0
-    in_band_ns: int = NEVER_NS
-    entered_mL: Mapping[str, float] = field(default_factory=dict)
-    topped: frozenset[str] = frozenset()
-    marks: Mapping[str, float] | None = None
-    first: Mapping[str, float] | None = None
-    settle_ns: int = 0
-    settler: Settler = field(default_factory=Settler)
-    judged: bool = False
-    settled: bool = False
-    settled_ns: int = 0
-    at_divert: Mapping[str, float] = field(default_factory=dict)
-    at_collect: Mapping[str, float] = field(default_factory=dict)
-    turned_ns: int = 0
-    collect_ns: int = 0
-    end_ns: int = 0
-    collected_mL: float = 0.0
-    means: Means = field(default_factory=Means)
-    window: tuple[Means, ...] = ()
-    residence_s: float = math.nan
 
 
 def start(scene: Scene) -> Memory:
@@ -116,114 +75,13 @@ def broken_off(scene: Scene, memory: Memory) -> tuple[PointResult | None, tuple[
     return found, (interrupted(found, scene.now_ns),)
 
 
-def _wants(scene: Scene, memory: Memory, point: Point, outlet: str) -> Wants:
-    names = [name for name in point.flows_mL_min if name in scene.layout.pumps]
-    again = memory.step in ("set", "settle") and any(_short(scene, memory, point, name) for name in names)
-    pumps = {name: _want(scene, memory, point, name, again) for name in names}
-    return Wants(pumps, outlet, point.temperature_degC, together=True)
-
-
-def _short(scene: Scene, memory: Memory, point: Point, name: str) -> bool:
-    """True when an active syringe no longer holds the fraction and it is too late to wait for a change-over."""
-    if point.flows_mL_min[name] <= 0 or (scene.layout.pumps[name].dual and not _late(scene, memory, point, name)):
-        return False
-    return scene.tracks[name].level_at(scene.now_ns) < _fraction_mL(scene, point, name)
-
-
-def _fraction_mL(scene: Scene, point: Point, name: str) -> float:
-    """Level that is needed to collect without a change-over."""
-    return collect_mL(scene.layout, point, name) + scene.layout.pumps[name].guard_mL(point.flows_mL_min[name])
-
-
-def _late(scene: Scene, memory: Memory, point: Point, name: str) -> bool:
-    """True when the one exchange that must follow a change-over would cost time."""
-    return _until_last_change_mL(scene, memory, point, name) <= 0.0
-
-
-def _until_last_change_mL(scene: Scene, memory: Memory, point: Point, name: str) -> float:
-    """What a pump may still deliver before a change-over begins to cost time: one exchange must follow it."""
-    volumes = scene.layout.recipe.settle.volumes - 1.1
-    return settle_mL(scene.layout, point, name, max(volumes, 0.3)) - _passed_of(scene, memory, name)
-
-
-def _passed_of(scene: Scene, memory: Memory, name: str) -> float:
-    return scene.since_mL(memory.marks).get(name, 0.0) if memory.marks else 0.0
-
-
-def _want(scene: Scene, memory: Memory, point: Point, name: str, again: bool) -> Want:
-    """Liquid for this point; refills and change-overs only where they do no harm.
-
-    ``again``: a pump ran short at the end; all that cannot give another exchange and the fraction are charged together.
-    """
-    layout, play = scene.layout, scene.layout.pumps[name]
-    liquid, flow = label(play, scene.spec.reagent), point.flows_mL_min[name]
-    if flow <= 0:
-        return Want(liquid, may_fill=False)
-    if memory.step not in ("set", "settle"):
-        rest_mL = _rest(scene, memory, name)
-        short = rest_mL > scene.tracks[name].level_at(scene.now_ns)
-        return Want(liquid, flow, rest_mL, rest_mL, may_fill=play.dual and short)
-    whole_mL, fraction_mL = point_mL(layout, point, name, scene.spec.reagent), collect_mL(layout, point, name)
-    here_mL = max(whole_mL - _passed_of(scene, memory, name), fraction_mL)
-    if play.dual:
-        return _dual_want(scene, memory, point, Want(liquid, flow, here_mL), name, again)
-    # Filled at rest, so that all that was seen of the settling is lost: then for a whole point.
-    asked_mL = whole_mL if memory.step == "set" and name not in memory.topped else fraction_mL
-    here_mL = whole_mL if again else here_mL
-    return Want(liquid, flow, here_mL + scene.later_mL(name, here_mL, flow), asked_mL)
-
-
-def _dual_want(scene: Scene, memory: Memory, point: Point, want: Want, name: str, again: bool) -> Want:
-    """Which syringe gives the last exchange and the fraction, and what is filled for it. ``want`` needs this point."""
-    play, level_mL = scene.layout.pumps[name], scene.tracks[name].level_at(scene.now_ns)
-    if _late(scene, memory, point, name):
-        another_mL = another_try_mL(scene.layout, point, name)
-        lead = lead_mL(play, another_mL, want.flow_mL_min)
-        if level_mL < (another_mL if again else _fraction_mL(scene, point, name) + lead):
-            return replace(want, need_mL=another_mL + level_mL, level_mL=another_mL, swap=again)
-        return replace(want, need_mL=min(want.need_mL, level_mL))
-    room_mL = play.pump.stroke_mL - play.reserve_mL(want.flow_mL_min)
-    here_mL = want.need_mL
-    if here_mL > room_mL and _least_left_mL(scene, memory, point, name) <= room_mL:
-        here_mL = room_mL  # one syringe will do, with less patience
-    if here_mL > room_mL:  # takes both syringes; neither is free for a flush meanwhile
-        both_mL = here_mL + scene.later_mL(name, here_mL, want.flow_mL_min)
-        return replace(want, need_mL=both_mL, level_mL=here_mL, swap=_better_first(scene, memory, point, name, here_mL))
-    if level_mL >= 0.95 * here_mL:
-        return replace(want, need_mL=min(here_mL, level_mL))
-    if level_mL > _until_last_change_mL(scene, memory, point, name):  # it would run out late: kept for the next point
-        return replace(want, need_mL=here_mL + level_mL, level_mL=here_mL, swap=True)
-    return replace(want, need_mL=here_mL + scene.later_mL(name, here_mL - level_mL, want.flow_mL_min))
-
-
-def _least_left_mL(scene: Scene, memory: Memory, point: Point, name: str) -> float:
-    """What the rest of the point takes when all goes well."""
-    return least_mL(scene.layout, point, name, scene.spec.reagent) - _passed_of(scene, memory, name)
-
-
-def _better_first(scene: Scene, memory: Memory, point: Point, name: str, here_mL: float) -> bool:
-    """True when the standby syringe should deliver first, so that the fuller one gives the end of the point."""
-    track = scene.tracks[name]
-    level_mL, standby_mL = track.level_at(scene.now_ns), track.standby_mL
-    if level_mL + standby_mL < 0.95 * here_mL:
-        return False
-    return standby_mL <= _until_last_change_mL(scene, memory, point, name) < level_mL
-
-
-def _rest(scene: Scene, memory: Memory, name: str) -> float:
-    """What a pump still has to deliver for the fraction that is being diverted or collected."""
-    point = scene.spec.point
-    assert point is not None, "a point phase without a point"
-    return max(0.0, collect_mL(scene.layout, point, name) - scene.since_mL(memory.at_divert).get(name, 0.0))
-
-
 def _set(scene: Scene, memory: Memory, point: Point) -> Move[Memory]:
     """Flows right, fronts past their merges, jacket in its band: from here volumes count."""
     waste = scene.layout.recipe.collect.waste_position
     first = memory.started_ns == scene.now_ns
-    memory = replace(memory, topped=_topped(scene, memory, point))
+    memory = replace(memory, topped=topped(scene, memory, point))
     events = (started(point, scene.now_ns),) if first else ()
-    wants = _wants(scene, memory, point, waste)
+    wants = point_wants(scene, memory, point, waste)
     warm = memory.in_band_ns != NEVER_NS
     if not first and warm and _streams_right(scene, point):
         marks = scene.delivered_mL()
@@ -244,18 +102,6 @@ def _set(scene: Scene, memory: Memory, point: Point) -> Move[Memory]:
     )
 
 
-def _topped(scene: Scene, memory: Memory, point: Point) -> frozenset[str]:
-    """Pumps that need no more filling before they run: they hold what the point takes, or have just been filled."""
-    found = set(memory.topped)
-    for name, flow in point.flows_mL_min.items():
-        play, track = scene.layout.pumps[name], scene.tracks[name]
-        enough = track.level_at(scene.now_ns) >= point_mL(scene.layout, point, name, scene.spec.reagent)
-        filled = track.swapped_mL >= memory.entered_mL.get(name, 0.0) - 1e-6 and track.fill is None
-        if flow <= 0 or play.dual or enough or filled:
-            found.add(name)
-    return frozenset(found)
-
-
 def _streams_right(scene: Scene, point: Point) -> bool:
     """True when every pump delivers what the point says, of the liquid that it says, up to its merge."""
     for name, flow in point.flows_mL_min.items():
@@ -273,12 +119,12 @@ def _settle(scene: Scene, memory: Memory, point: Point) -> Move[Memory]:
     waste = scene.layout.recipe.collect.waste_position
     if not _streams_right(scene, point) or memory.in_band_ns == NEVER_NS:
         memory = _anew(scene, memory)
-        return Move(memory, _wants(scene, memory, point, waste), "settling starts anew")
+        return Move(memory, point_wants(scene, memory, point, waste), "settling starts anew")
     rule, path = scene.layout.recipe.settle, scene.layout.path
     passed = turnovers(path, scene.since_mL(memory.marks or {}))
     memory = _judged(scene, memory, point, passed)
     steady = not gated(scene.layout, scene.spec.reagent) or is_steady(memory.settler, settle_rule(scene.layout, point))
-    ready = _liquid_for_fraction(scene, point) and _quiet_since_change(scene)
+    ready = liquid_for_fraction(scene, point) and quiet_since_change(scene)
     events: tuple[Event, ...] = ()
     if passed >= rule.volumes and ready:
         if steady:
@@ -289,7 +135,7 @@ def _settle(scene: Scene, memory: Memory, point: Point) -> Move[Memory]:
             if rule.on_timeout != "collect":
                 return _given_up(scene, memory, point, events)
             memory = _settled(scene, memory, False)
-    wants = _wants(scene, memory, point, waste)
+    wants = point_wants(scene, memory, point, waste)
     due_ns = scene.now_ns + _ns(scene, point, rule.volumes - passed) if passed < rule.volumes else None
     text = f"settling: {passed:.1f} of {rule.volumes:g} volumes, signal {memory.settler.verdict}"
     left_s = _left_s(scene, memory, point, passed)
@@ -333,27 +179,6 @@ def _judged(scene: Scene, memory: Memory, point: Point, passed: float) -> Memory
     return replace(memory, means=Means(), window=kept)
 
 
-def _liquid_for_fraction(scene: Scene, point: Point) -> bool:
-    """True when each active syringe holds the whole fraction (or as much as one syringe can)."""
-    for name, flow in point.flows_mL_min.items():
-        play = scene.layout.pumps[name]
-        guard_mL = play.guard_mL(flow)
-        wanted_mL = min(collect_mL(scene.layout, point, name) + guard_mL, play.pump.stroke_mL * 0.9)
-        if flow > 0 and scene.tracks[name].level_at(scene.now_ns) < wanted_mL:
-            return False
-    return True
-
-
-def _quiet_since_change(scene: Scene) -> bool:
-    """True when no pump has changed over or been refilled within the last exchange of the trunk."""
-    since = scene.since_mL({name: track.swapped_mL for name, track in scene.tracks.items()})
-    point = scene.spec.point
-    assert point is not None, "a point phase without a point"
-    shares = {name: since[name] / flow for name, flow in point.flows_mL_min.items() if flow > 0}
-    minutes = min(shares.values(), default=0.0)
-    return 60.0 * minutes >= scene.layout.path.residence_s(point.flows_mL_min)
-
-
 def _settled(scene: Scene, memory: Memory, settled: bool) -> Memory:
     return replace(
         memory,
@@ -369,7 +194,7 @@ def _settled(scene: Scene, memory: Memory, settled: bool) -> Memory:
 def _given_up(scene: Scene, memory: Memory, point: Point, events: tuple[Event, ...]) -> Move[Memory]:
     waste = scene.layout.recipe.collect.waste_position
     found = result(scene, memory, point, "abandoned")
-    wants = _wants(scene, memory, point, waste)
+    wants = point_wants(scene, memory, point, waste)
     return Move(memory, wants, "abandoned", (*events, abandoned(found, scene.now_ns)), done=True, result=found)
 
 
@@ -391,7 +216,7 @@ def _divert(scene: Scene, memory: Memory, point: Point) -> Move[Memory]:
     due_ns = scene.now_ns + int(60e9 * left_mL / point.total_mL_min) + 1_000_000 if left_mL > 0 else None
     left_s = 60.0 * (max(left_mL, 0.0) + recipe.collect.volume_mL) / point.total_mL_min
     text = "letting the dead volume pass"
-    return Move(memory, _wants(scene, memory, point, outlet), text, due_ns=due_ns, left_s=left_s)
+    return Move(memory, point_wants(scene, memory, point, outlet), text, due_ns=due_ns, left_s=left_s)
 
 
 def _begun(scene: Scene, memory: Memory, point: Point) -> Memory:
@@ -417,13 +242,13 @@ def _collect(scene: Scene, memory: Memory, point: Point) -> Move[Memory]:
     due_ns = scene.now_ns + int(1e9 * left_s) + 1_000_000 if left_mL > 0 else None
     text = f"collecting, {max(left_mL, 0.0):.2f} mL to go"
     calm = memory.step == "collect"
-    return Move(memory, _wants(scene, memory, point, outlet), text, due_ns=due_ns, left_s=left_s, calm=calm)
+    return Move(memory, point_wants(scene, memory, point, outlet), text, due_ns=due_ns, left_s=left_s, calm=calm)
 
 
 def _back(scene: Scene, memory: Memory, point: Point) -> Move[Memory]:
     """Nothing else changes before the outlet is confirmed at waste."""
     waste = scene.layout.recipe.collect.waste_position
-    wants = _wants(scene, memory, point, waste)
+    wants = point_wants(scene, memory, point, waste)
     if not scene.outlet_at(waste):
         return Move(memory, wants, "turning the outlet to waste")
     found = result(scene, memory, point, "collected" if memory.settled else "unsettled")
