@@ -8,7 +8,7 @@ import pytest
 from fakes.conduct_rigs import demo_recipe, sweep_point, two_pumps
 from fakes.conduct_run import ConductRun
 from fakes.kinematic_rig import Parcel
-from hypothesis import given, settings
+from hypothesis import example, given, settings
 from hypothesis import strategies as st
 
 from rigd.logic import conduct
@@ -384,6 +384,7 @@ def test_unsettled_point_is_collected_or_abandoned_as_the_recipe_says() -> None:
     syringes=st.sampled_from([1, 2]),
     safe=st.booleans(),
 )
+@example(hold_s=[150.90319505210704, 1197.2155027621307, 62.64169093278228], wait_s=1.5, syringes=1, safe=False)
 def test_holds_at_any_time_never_spoil_a_fraction(
     hold_s: list[float], wait_s: float, syringes: int, safe: bool
 ) -> None:

@@ -18,6 +18,7 @@ from rigd.model.recipe import Point
 
 
 def point_wants(scene: Scene, memory: Memory, point: Point, outlet: str) -> Wants:
+    """What every pump of the point, the outlet and the bath should be doing now; a short syringe sets all anew."""
     names = [name for name in point.flows_mL_min if name in scene.layout.pumps]
     again = memory.step in ("set", "settle") and any(_short(scene, memory, point, name) for name in names)
     pumps = {name: _want(scene, memory, point, name, again) for name in names}
