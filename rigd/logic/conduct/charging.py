@@ -75,6 +75,9 @@ def _broken(before: PumpTrack, track: PumpTrack) -> PumpTrack:
 
 
 def _once(track: PumpTrack) -> OneShot | None:
+    """A broken filling is not asked for: a repeat of the old order and the new one would cross each other."""
+    if track.fill and track.fill.broken:
+        return None
     if track.fill:
         return OneShot(track.fill.ticket, Action.FILL, track.fill.volume_mL)
     return OneShot(track.swap, Action.SWAP, 0.0) if track.swap else None

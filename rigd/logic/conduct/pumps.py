@@ -20,6 +20,7 @@ _CHANGE_mL = 0.01
 _FULL_mL = 0.02
 _EXACT_mL = 0.002
 ATTEMPTS = 4
+_REFUSED_NS = 2_000_000_000
 Fields = dict[str, str | float | int | bool]
 _NO_FRONT = Front(UNKNOWN, -1e9)
 
@@ -167,11 +168,16 @@ def _filled(
         return _again(track, replace(fill, attempt=fill.attempt - 1), play, now_ns), events
     if now_mL > fill.seen_mL + 1e-4:
         return replace(track, fill=replace(fill, seen_mL=now_mL, moved_ns=now_ns)), events
-    if now_ns - fill.moved_ns > (4.0 + 4.0 * play.period_s) * 1e9:
+    if now_ns - fill.moved_ns > _patience_ns(play):
         if fill.unwanted:
             return replace(track, fill=None), events
         return _again(track, fill, play, now_ns), events
     return track, events
+
+
+def _patience_ns(play: PumpLayout) -> int:
+    """How long a filling may stand still before it is asked for again."""
+    return int((4.0 + 4.0 * play.period_s) * 1e9)
 
 
 def _done(track: PumpTrack, fill: Fill, play: PumpLayout) -> PumpTrack:
@@ -198,13 +204,17 @@ def _again(track: PumpTrack, fill: Fill, play: PumpLayout, now_ns: int) -> PumpT
 
 
 def _answers(track: PumpTrack, play: PumpLayout, outcomes: tuple[Outcome, ...], now_ns: int) -> PumpTrack:
-    """What the pump said to a filling or a change-over. One that it refused is asked for anew, with a new ticket."""
+    """What the pump said to a filling or a change-over. One that it refused is asked for anew, with a new ticket.
+
+    Not at once: a pump that is busy says no to each attempt within a moment. Unless the liquid rises meanwhile.
+    """
     for outcome in outcomes:
         if outcome.unit != play.id:
             continue
         refused = outcome.result is Result.REFUSED
         if outcome.action is Action.FILL and track.fill and refused:
-            track = _again(track, track.fill, play, now_ns)
+            moved_ns = now_ns + _REFUSED_NS - _patience_ns(play)
+            track = replace(track, fill=replace(track.fill, moved_ns=moved_ns))
         elif outcome.action is Action.SWAP and track.swap and refused:
             track = replace(track, swap="", refused_ns=now_ns)
         elif outcome.action is Action.SWAP and track.swap and outcome.result is Result.DONE:
