@@ -139,7 +139,7 @@ _FAULTS = (
     _fault(
         "STOP-REQUEST", "STOP-REQUEST", "Stop asked for by a person", Stop.QUENCH,
         "the run goes on although somebody wants it ended",
-        "Wait for the flush to end; then look at the rig before a new start.",
+        "Let the flush end, if one runs; then look at the rig before a new start.",
     ),
     _fault(
         "CUT-REQUEST", "CUT-REQUEST", "Cut asked for by a person", Stop.CUT,

@@ -32,7 +32,7 @@ BYPASS_DEMAND = "BYPASS-DEMAND"
 
 _BUILT_IN = (
     # id, title, fault, stop, on-delay, what to do
-    (STOP_REQUEST, "Stop asked for", STOP_REQUEST, Stop.QUENCH, 0, "Wait for the flush, then look at the rig."),
+    (STOP_REQUEST, "Stop asked for", STOP_REQUEST, Stop.QUENCH, 0, "Let the flush end, if one runs, then look at the rig."),
     (CUT_REQUEST, "Cut asked for", CUT_REQUEST, Stop.CUT, 0, "Look at the rig before a new start."),
     ("FAULT-CONDUCT", "The sequence failed", "conduct", Stop.CUT, 0, "Keep the journal and start the daemon anew."),
     ("FAULT-SCAN", "The scan came late", "scan", Stop.CUT, 0, "Find what slowed the computer before a new start."),
