@@ -38,11 +38,17 @@ def _report(model: type[Table], source: Source, found: Findings, errors: Iterabl
     reported: set[Path] = set()
     for error in errors:
         path = _path(source.data, error)
-        if path in reported:
+        if path in reported or _follows(source, path, error):
             continue  # one value, one finding: the other members of a union say the same again
         reported.add(path)
         code, message, remedy = explain(model, source, path, error)
         found.error(code, path, message, remedy)
+
+
+def _follows(source: Source, path: Path, error: ErrorDetails) -> bool:
+    """True for a list that is too short only because its members have findings of their own."""
+    value = source.value_at(path) if error["type"] == "too_short" else None
+    return isinstance(value, list) and len(value) >= error.get("ctx", {}).get("min_length", 0)
 
 
 def _path(data: Mapping[str, Any], error: ErrorDetails) -> Path:

@@ -211,3 +211,12 @@ def test_structural_findings_in_a_recipe(code: str, key: str, edits: tuple[Edit,
     problems = problems_of(tmp_path, recipe=recipe)
 
     assert (code, key) in [(problem.code, problem.key) for problem in problems], [str(p) for p in problems]
+
+
+def test_a_list_whose_members_are_all_wrong_is_not_called_too_short(tmp_path: Path) -> None:
+    problems = rig_problems_of(tmp_path, RIG.replace('bore = "10.30 mm"', 'bohre = "10.30 mm"'))
+    assert "list-length" not in {problem.code for problem in problems}
+    assert [problem.key for problem in problems if problem.code == "key-unknown"] == [
+        "pumps[PU-A].bohre",
+        "pumps[PU-B].bohre",
+    ]
