@@ -9,8 +9,10 @@ Axial dispersion acts between the slots with nothing passing the ends (closed-cl
 Chem. Eng. Sci. 2 (1953) 1-13), implicitly in time: the second moment grows by exactly 2 D dt and no
 concentration can become negative.
 
-All conveyors lie in one table ``cells``; ``s`` is the row of a conveyor's first slot. (Plain indices, because slices
-make the just-in-time compiler slow.)
+All conveyors lie in one table ``cells``; ``s`` is the row of a conveyor's first slot. Each has twice the rows that it
+needs: when the slots move up, the window moves instead of the liquid, and only when it reaches the end of its rows
+are they carried back to the middle. So a step costs in proportion to the cells that pass, whatever their number.
+(Plain indices, because slices make the just-in-time compiler slow.)
 """
 
 from __future__ import annotations
@@ -21,50 +23,54 @@ from rigd_sim.physics.compiled import Floats, Ints, inner
 
 
 @inner
-def push_forward(cells: Floats, s: int, n: int, v: float, fill: float, amount: float, work: Floats) -> float:
-    """Push a volume ``amount`` of composition ``work[0]`` in; add what leaves to ``work[1]``; return the new fill."""
-    width = cells.shape[1]
-    left = amount
-    while left > 0.0:
-        room = v - fill
-        take = left if left < room else room
-        total = fill + take
-        for k in range(width):
-            work[1, k] += take * cells[s + n, k]
-            cells[s, k] = (cells[s, k] * fill + work[0, k] * take) / total
-        left -= take
-        fill = total
-        if take == room:
-            for j in range(s + n, s, -1):
-                for k in range(width):
-                    cells[j, k] = cells[j - 1, k]
-            for k in range(width):
-                cells[s, k] = work[0, k]
-            fill = 0.0
-    return fill
+def _recentre(cells: Floats, s: int, base: int, n: int) -> int:
+    """Carry the ``n + 1`` slots from row ``s`` to the middle of the rows from ``base``; their new first row."""
+    to = base + (n + 1) // 2
+    up = to > s
+    for j in range(n + 1):
+        i = n - j if up else j
+        for k in range(cells.shape[1]):
+            cells[to + i, k] = cells[s + i, k]
+    return to
 
 
 @inner
-def push_backward(cells: Floats, s: int, n: int, v: float, fill: float, amount: float, work: Floats) -> float:
-    """The same from the other end: liquid enters the last slot and leaves the first."""
-    width = cells.shape[1]
-    left = amount
+def push(
+    cells: Floats, s: int, base: int, n: int, v: float, fill: float, amount: float, work: Floats
+) -> tuple[int, float]:
+    """Push a volume ``amount`` (negative: from the other end) of composition ``work[0]`` in; add what leaves to
+    ``work[1]``; return the new first row and fill."""
+    forward = amount > 0.0
+    left = amount if forward else -amount
     while left > 0.0:
-        if fill <= 0.0:
-            for j in range(s, s + n):
-                for k in range(width):
-                    cells[j, k] = cells[j + 1, k]
-            for k in range(width):
-                cells[s + n, k] = work[0, k]
+        if not forward and fill <= 0.0:
+            if s == base + n + 1:
+                s = _recentre(cells, s, base, n)
+            s += 1
             fill = v
-        take = left if left < fill else fill
-        held = v - fill
-        for k in range(width):
-            work[1, k] += take * cells[s, k]
-            cells[s + n, k] = (cells[s + n, k] * held + work[0, k] * take) / (held + take)
+            for k in range(cells.shape[1]):
+                cells[s + n, k] = work[0, k]
+        room = v - fill if forward else fill
+        take = left if left < room else room
+        enters = s if forward else s + n
+        leaves = s + n if forward else s
+        held = fill if forward else v - fill
+        for k in range(cells.shape[1]):
+            work[1, k] += take * cells[leaves, k]
+            cells[enters, k] = (cells[enters, k] * held + work[0, k] * take) / (held + take)
         left -= take
-        fill = fill - take if take < fill else 0.0
-    return fill
+        if not forward:
+            fill = fill - take if take < fill else 0.0
+        elif take < room:
+            fill += take
+        else:
+            if s == base:
+                s = _recentre(cells, s, base, n)
+            s -= 1
+            fill = 0.0
+            for k in range(cells.shape[1]):
+                cells[s, k] = work[0, k]
+    return s, fill
 
 
 @inner

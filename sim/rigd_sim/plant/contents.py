@@ -13,7 +13,7 @@ import numpy as np
 from rigd.model.chemistry import RateLaw, Reaction, ReactionPlace
 from rigd.model.rig import Column, RigDefinition
 from rigd_sim.physics.bed import PLACE_ROWS, RELEASED, TEMPERATURE, TURNOVER
-from rigd_sim.physics.compiled import Floats
+from rigd_sim.physics.compiled import Floats, Ints
 from rigd_sim.physics.constants import GAS_CONSTANT_J_MOL_K, ML_M3, ZERO_CELSIUS_K
 from rigd_sim.physics.packing_transfer import bead_rate, chung_wen
 from rigd_sim.physics.properties import SOLVENTS, Solvent
@@ -30,7 +30,19 @@ from rigd_sim.physics.reaction import (
     REVERSIBLE,
     T_REF,
 )
-from rigd_sim.physics.transport import EDGE_ROWS, LINK_ROWS, MARK_ROWS, NODE_ROWS, transport_step
+from rigd_sim.physics.transport import (
+    BASE,
+    EDGE_ROWS,
+    LEAST,
+    LINK_ROWS,
+    MARK_ROWS,
+    MIXING,
+    NODE_ROWS,
+    PACKED,
+    SPREAD,
+    WARMTH,
+    transport_step,
+)
 from rigd_sim.physics.tubing import area, ring_exchange, ring_velocities
 from rigd_sim.plant.layout import Layout
 
@@ -38,10 +50,8 @@ LAWS = {RateLaw.POWER: POWER, RateLaw.REVERSIBLE: REVERSIBLE, RateLaw.LHHW: LHHW
 DEFAULT_DIFFUSIVITY = 1e-9
 BEAD_DIFFUSION_SHARE = 0.2
 """Diffusion inside a swollen gel bead is 0.1 to 0.3 of the free one (common practice, no source)."""
-PARTS_MAX = 24
 SUPPLY_COARSENESS = 8.0
 SMEARING = 0.2
-BED_CELLS = 2.0
 ADSORPTION_BLOCK = 3
 EMPTY_M3 = 1e-9
 NEARLY_EMPTY_M3 = 2e-6
@@ -115,6 +125,7 @@ class Contents:
         self.gas = self.width - 1
         self.kinetics = Kinetics(rig)
         self.room_K = rig.simulation.ambient_degC + ZERO_CELSIUS_K
+        self.gas_share = 0.0
         self.diffusivity = max((s.diffusivity_m2_s for s in rig.chemistry.species), default=DEFAULT_DIFFUSIVITY)
         self._make_edges()
         self._make_nodes(rig)
@@ -136,26 +147,27 @@ class Contents:
         count = len(self.owner)
         self.link = np.zeros((LINK_ROWS, count), dtype=np.int64)
         self.edge = np.zeros((EDGE_ROWS, count))
-        self.ea, self.eb, self.cell_count, self.cell_start = self.link
-        self.cell_volume, self.fill, self.moved, self.exchange, self.radial = self.edge
+        self.ea, self.eb, self.cell_count, self.cell_start = self.link[:BASE]
+        self.cell_volume, self.fill, self.moved, self.exchange, self.radial = self.edge[:LEAST]
         self.share = np.concatenate([np.array(ring_velocities(e.rings)) / e.rings for e in edges])
         for i, e in enumerate(self.owner):
             edge = edges[e]
             self.ea[i], self.eb[i], self.cell_count[i] = edge.a, edge.b, edge.cells
             self.cell_volume[i] = edge.volume / edge.cells / edge.rings if edge.cells else 0.0
+            self.link[PACKED, i] = edge.kind == "column"
+            self.edge[LEAST, i] = self.cell_volume[i] * (SUPPLY_COARSENESS if edge.supply else edge.rings)
         slots = np.where(self.cell_count > 0, self.cell_count + 1, 0)
-        self.cell_start[1:] = np.cumsum(slots)[:-1]
-        self.cells = np.zeros((int(slots.sum()), self.width))
-        self._long = np.flatnonzero(self.cell_count)
-        coarse = np.array([SUPPLY_COARSENESS if edges[e].supply else float(edges[e].rings) for e in self.owner])
-        self._least = (self.cell_volume * coarse)[self._long]
-        self._spread = SMEARING**0.5 * (self.cell_volume * self.cell_count)[self._long]
+        self.link[BASE, 1:] = np.cumsum(2 * slots)[:-1]
+        self.cell_start[:] = self.link[BASE] + slots // 2
+        self.cells = np.zeros((int(2 * slots.sum()), self.width))
+        self.edge[SPREAD] = SMEARING**0.5 * self.cell_volume * self.cell_count
+        self.edge[WARMTH] = self.room_K
 
-    def slots(self, e: int) -> slice:
-        """Rows of ``cells`` that belong to layout edge ``e``, all rings."""
-        i = int(self.first[e])
-        rings = self.layout.edges[e].rings
-        return slice(int(self.cell_start[i]), int(self.cell_start[i]) + rings * (int(self.cell_count[i]) + 1))
+    def slots(self, e: int) -> Ints:
+        """Rows of ``cells`` that hold the liquid of layout edge ``e`` now, all rings."""
+        first = int(self.first[e])
+        rings = range(first, first + self.layout.edges[e].rings)
+        return np.concatenate([np.arange(self.cell_count[i] + 1) + self.cell_start[i] for i in rings])
 
     def _make_nodes(self, rig: RigDefinition) -> None:
         nodes = self.layout.nodes
@@ -245,6 +257,8 @@ class Contents:
                 rings = slice(i, i + edge.rings)
                 section, dx = edge.volume / edge.length / edge.rings, edge.length / edge.cells
                 self.exchange[rings] = self.diffusivity * section / dx
+                if edge.rings > 1:
+                    self.edge[MIXING, rings] = self.diffusivity / (0.5 * edge.diameter) ** 2
                 self.radial[i : i + edge.rings - 1] = ring_exchange(self.diffusivity, edge.diameter, edge.rings)
 
     def disperse(self, flow: Floats) -> None:
@@ -258,34 +272,13 @@ class Contents:
             coefficient = chung_wen(re, mu, rho) + TORTUOUS * self.diffusivity
             self.exchange[bed.kernel] = coefficient * edge.volume / edge.length / (edge.length / edge.cells)
 
-    def _parts(self, dt: float) -> int:
-        """How many parts the pending volumes must be carried in.
-
-        A part of volume dV smears a front by dV^2/12. It may be one cell of an edge, or as much as keeps that below
-        ``SMEARING``/12 of the variance that dispersion makes in the edge anyway, about V^2/(1 + Pe/2).
-        """
-        moved = np.abs(self.moved[self._long])
-        peclet = moved / dt * self.cell_count[self._long] / (self.exchange[self._long] + 1e-30)
-        allowed = np.maximum(self._least, self._spread / np.sqrt(1.0 + 0.5 * peclet))
-        return int(min(max(math.ceil(float((moved / allowed).max())), 1), PARTS_MAX))
-
-    def _bed_parts(self, parts: int) -> int:
-        """Beads and reactions act before the liquid in any bed has moved on by more than ``BED_CELLS`` cells."""
-        kernel = self.bed[0]
-        if not kernel.size:
-            return 1
-        cells = float((np.abs(self.moved[kernel]) / self.cell_volume[kernel]).max())
-        return min(parts, max(1, math.ceil(cells / BED_CELLS)))
-
     def advance(self, dt: float) -> None:
         """Carry the pending volumes through, react and disperse over ``dt``; pending is then zero."""
         k = self.kinetics
         np.multiply(self.pending[self.owner], self.share, out=self.moved)
-        parts = self._parts(dt)
-        transport_step(
-            dt, parts, self._bed_parts(parts), self.link, self.edge, self.cells, self.node, self.node_c, self.mark,
-            self.bed, self.bed_rate, self.beads, self.place, self.activity, k.table, k.species, k.in_tubes,
-            self.room_K, *self._scratch,
+        self.gas_share = transport_step(
+            dt, self.link, self.edge, self.cells, self.node, self.node_c, self.mark, self.bed, self.bed_rate,
+            self.beads, self.place, self.activity, k.table, k.species, k.in_tubes, self.room_K, *self._scratch,
         )  # fmt: skip
         self.pending[:] = 0.0
 
@@ -318,6 +311,7 @@ class Contents:
                 self.node_c[i] *= held / (held + short)
                 self.node_c[i, self.gas] += short / (held + short)
                 self.node_volume[i] = held + short
+                self.gas_share = 1.0
 
     def spill(self, capacity: dict[str, float]) -> None:
         """What does not fit into a vessel runs to the floor."""
@@ -332,11 +326,11 @@ class Contents:
 
     def gas_by_node(self) -> Floats | None:
         """Gas at each node: its own, and half of what is in each edge that ends there; ``None`` without any."""
+        if self.gas_share <= 0.0:
+            return None
         in_cells = self.cells[:, self.gas]
         own: Floats = self.node_c[:, self.gas] * self.node_volume
         own[self.endless != 0] = 0.0
-        if not in_cells.any() and not own.any():
-            return None
         for e in np.flatnonzero(self.cell_count):
             n, s = int(self.cell_count[e]), int(self.cell_start[e])
             half = 0.5 * self.cell_volume[e] * float(in_cells[s : s + n + 1].sum())
