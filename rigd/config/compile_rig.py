@@ -152,7 +152,10 @@ def _rating(rig: RigDefinition, tags: set[str]) -> float:
 
 def _alarm(table: AlarmTable, maker: ConditionMaker) -> Alarm | None:
     condition = maker.make(table.when, (*table.key_path, "when"))
-    if condition is None:
+    suppress = None
+    if table.suppress_when is not None:
+        suppress = maker.make(table.suppress_when, (*table.key_path, "suppress_when"))
+    if condition is None or (suppress is None and table.suppress_when is not None):
         return None
     return Alarm(
         id=table.id,
@@ -167,6 +170,9 @@ def _alarm(table: AlarmTable, maker: ConditionMaker) -> Alarm | None:
         latching=table.latching,
         needs_acknowledge=table.acknowledge,
         hold=table.hold,
+        suppress=suppress,
+        realarm_ns=0 if table.realarm is None else ns(table.realarm),
+        shelve_max_ns=ns(table.shelve_max),
     )
 
 

@@ -159,7 +159,11 @@ class InterlockTable(Table):
 
 
 class AlarmTable(Table):
-    """A condition that needs a person; ``action`` says what to do."""
+    """A condition that needs a person; ``action`` says what to do.
+
+    ``suppress_when`` hides it as long as that holds; ``realarm`` tells it again while it stands; ``shelve_max`` is the
+    longest that a person may shelve it (an alarm of the highest priority is never shelved).
+    """
 
     id: Id
     title: Text
@@ -176,6 +180,9 @@ class AlarmTable(Table):
     latching: Flag = False
     acknowledge: Flag = True
     hold: Flag = False
+    suppress_when: ConditionTable | None = None
+    realarm: Duration | None = None
+    shelve_max: Delay = 8 * 3600.0
 
 
 class LinkTable(Table):

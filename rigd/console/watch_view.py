@@ -173,6 +173,9 @@ def _attention(snapshot: Mapping[str, Any]) -> list[RenderableType]:
     if bypassed:
         found.append(Text(f"BYPASSED: {', '.join(bypassed)}", style="bold magenta"))
     for alarm in sorted(_list(snapshot.get("alarms")), key=lambda one: one.get("priority", 9)):
+        if alarm.get("hidden"):
+            found.append(Text(f"{alarm.get('id', '')} is {alarm.get('state', '')}", style="magenta"))
+            continue
         style = PRIORITY_STYLES.get(alarm.get("priority", 4), "yellow")
         what = str(alarm.get("text") or alarm.get("title") or "")
         found.append(

@@ -40,7 +40,7 @@ def _priority(event: Mapping[str, Any]) -> int | None:
     if kind == "trip":
         return 1
     if kind == "alarm":
-        annunciated = fields.get("state") in {"unacknowledged", "B"} or bool(fields.get("new"))
+        annunciated = fields.get("announce") in {"new", "again"}
         return int(fields.get("priority", 3)) if annunciated else None
     if kind == "fault":
         return 2

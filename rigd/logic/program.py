@@ -25,6 +25,9 @@ V = TypeVar("V")
 
 SECOND_NS = 1_000_000_000
 
+UNATTENDED_REALARM_NS = 1800 * SECOND_NS
+"""An urgent alarm of an unattended run is told again this often while it stands (proposal; no source)."""
+
 STOP_REQUEST = "STOP-REQUEST"
 CUT_REQUEST = "CUT-REQUEST"
 STOP_UNCONFIRMED = "STOP-UNCONFIRMED"
@@ -32,7 +35,14 @@ BYPASS_DEMAND = "BYPASS-DEMAND"
 
 _BUILT_IN = (
     # id, title, fault, stop, on-delay, what to do
-    (STOP_REQUEST, "Stop asked for", STOP_REQUEST, Stop.QUENCH, 0, "Let the flush end, if one runs, then look at the rig."),
+    (
+        STOP_REQUEST,
+        "Stop asked for",
+        STOP_REQUEST,
+        Stop.QUENCH,
+        0,
+        "Let the flush end, if one runs, then look at the rig.",
+    ),
     (CUT_REQUEST, "Cut asked for", CUT_REQUEST, Stop.CUT, 0, "Look at the rig before a new start."),
     ("FAULT-CONDUCT", "The sequence failed", "conduct", Stop.CUT, 0, "Keep the journal and start the daemon anew."),
     ("FAULT-SCAN", "The scan came late", "scan", Stop.CUT, 0, "Find what slowed the computer before a new start."),
@@ -119,6 +129,8 @@ def compile_program(rig: RigDefinition, recipe: Recipe, options: RunOptions | No
     units = {part.id: part.device for part in parts if part.device}
     feedback = _feedback(rig, tags)
     interlocks, alarms = _with_built_in(rig.interlocks), _with_built_in_alarms(rig.alarms)
+    if options.unattended:
+        alarms = tuple(_repeated(alarm) for alarm in alarms)
     watches = conditions.watches(interlocks, alarms, lambda condition: _watched_tag(condition, tags, feedback))
     return Program(
         rig=rig,
@@ -198,6 +210,12 @@ def _with_built_in_alarms(declared: tuple[Alarm, ...]) -> tuple[Alarm, ...]:
         condition = Condition(ConditionKind.FAULT, name)
         found.setdefault(name, Alarm(name, title, condition, Priority.HIGHEST, action))
     return tuple(found.values())
+
+
+def _repeated(alarm: Alarm) -> Alarm:
+    """An urgent alarm comes back when nobody is there, unless the rig file says how often it does."""
+    repeats = alarm.priority <= Priority.HIGH and not alarm.realarm_ns
+    return replace(alarm, realarm_ns=UNATTENDED_REALARM_NS) if repeats else alarm
 
 
 def _feedback(rig: RigDefinition, tags: Mapping[str, Tag]) -> dict[tuple[str, str], str]:

@@ -17,7 +17,7 @@ class Verdict:
     ``permit`` is False while any interlock is tripped or not yet reset after the start. ``quench_active`` tells that
     the flush of a quench is under way; ``stop_done`` that the stop in force has reached its end state (confirmed).
     ``first_out`` is the interlock that tripped first, "" without one. ``hold_wanted`` names an alarm or interlock that
-    asks for a hold, "" if none.
+    asks for a hold, "" if none. ``hidden_alarm`` names an alarm on an interlocked signal that a person hides.
     """
 
     stop: Stop = Stop.NONE
@@ -26,6 +26,7 @@ class Verdict:
     stop_done: bool = False
     first_out: str = ""
     hold_wanted: str = ""
+    hidden_alarm: str = ""
 
 
 @dataclass(frozen=True, slots=True)

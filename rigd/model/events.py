@@ -20,7 +20,7 @@ class EventKind(StrEnum):
     POINT = "point"  # subject: point id; status started|settled|collecting|collected|abandoned|unsettled, values
     TRIP = "trip"  # subject: interlock; first_out, tag, value, limit, unit, stop, did, do
     INTERLOCK = "interlock"  # subject: interlock; state, from
-    ALARM = "alarm"  # subject: alarm; state, from, priority, value, limit, unit, do
+    ALARM = "alarm"  # subject: alarm; state, from, event, priority, tag, value, quality, limit, unit, do, announce, by
     STOP = "stop"  # subject: cut|quench|hold|none; cause
     REQUEST = "request"  # subject: verb; request_id, who, result accepted|refused, detail
     PROMPT = "prompt"  # subject: prompt id; text, status open|confirmed|withdrawn, who

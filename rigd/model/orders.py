@@ -75,6 +75,10 @@ class Verb(StrEnum):
     ACKNOWLEDGE = "acknowledge"
     BYPASS = "bypass"
     END_BYPASS = "end bypass"
+    SHELVE = "shelve"  # hide an alarm for a time
+    UNSHELVE = "unshelve"
+    REMOVE = "take out of service"  # hide an alarm until it is returned
+    RETURN = "return to service"
     CONFIRM = "confirm"  # sign a checklist item or answer a prompt
 
 
@@ -83,7 +87,7 @@ class Request:
     """A wish; the core answers each with exactly one ``RequestAnswered`` event, also when it refuses.
 
     ``target`` is an interlock, alarm, checklist item or prompt id ("*" for all where that makes sense);
-    ``args`` holds e.g. ``reason`` and ``duration_s`` of a bypass.
+    ``args`` holds e.g. ``reason`` and ``duration_s`` of a bypass or of shelving.
     """
 
     id: str

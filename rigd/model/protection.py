@@ -95,7 +95,11 @@ class Priority(IntEnum):
 
 @dataclass(frozen=True, slots=True)
 class Alarm:
-    """A condition that needs a person. An alarm without ``action`` is an event and is refused by the loader."""
+    """A condition that needs a person. An alarm without ``action`` is an event and is refused by the loader.
+
+    ``suppress`` hides it by design as long as it holds; ``realarm_ns`` repeats it while it stands (0: never);
+    ``shelve_max_ns`` is the longest that a person may shelve it, in all.
+    """
 
     id: str
     title: str
@@ -109,3 +113,11 @@ class Alarm:
     latching: bool = False
     needs_acknowledge: bool = True
     hold: bool = False
+    suppress: Condition | None = None
+    realarm_ns: int = 0
+    shelve_max_ns: int = 8 * 3600 * 1_000_000_000
+
+    @property
+    def shelvable(self) -> bool:
+        """False for an alarm that tells of a trip or of lost protection."""
+        return self.priority > Priority.HIGHEST

@@ -54,8 +54,10 @@ def test_simulated_is_said_first() -> None:
         ("prompt", "refill", {"status": "confirmed"}, None),
         ("run state", "complete", {}, 3),
         ("run state", "running", {}, None),
-        ("alarm", "A1", {"state": "unacknowledged", "priority": 2}, 2),
-        ("alarm", "A1", {"state": "acknowledged", "priority": 2}, None),
+        ("alarm", "A1", {"state": "unacknowledged", "announce": "new", "priority": 2}, 2),
+        ("alarm", "A1", {"state": "unacknowledged", "announce": "again", "priority": 2}, 2),
+        ("alarm", "A1", {"state": "acknowledged", "announce": "off", "priority": 2}, None),
+        ("alarm", "A1", {"state": "shelved", "announce": "-", "priority": 2}, None),
     ],
 )
 def test_who_is_told(kind: str, subject: str, fields: dict[str, Any], priority: int | None) -> None:

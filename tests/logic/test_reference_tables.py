@@ -7,8 +7,9 @@ from pathlib import Path
 
 import pytest
 
-from rigd.logic.protect import alarms, latch
-from rigd.logic.protect.alarms import AlarmEvent, AlarmState
+from rigd.logic.protect import alarm_core, alarm_overlay, latch
+from rigd.logic.protect.alarm_core import AlarmEvent, AlarmState
+from rigd.logic.protect.alarm_overlay import Flag, FlagEvent
 from rigd.logic.protect.latch import LatchEvent, LatchState
 from rigd.logic.protect.voting import rule
 from rigd.model.protection import OnBad
@@ -72,7 +73,7 @@ GUARDS = {
 @pytest.mark.parametrize("row", rows("alarm_core"), ids=lambda row: f"{row['from']}-{row['event']}-{row['guard']}")
 def test_alarm_core(row: dict[str, str]) -> None:
     for latching, needs in GUARDS[row["guard"]]:
-        found = alarms.move(
+        found = alarm_core.move(
             AlarmState(row["from"]), AlarmEvent(row["event"]), latching=latching, needs_acknowledge=needs
         )
         assert (str(found.to), str(found.announce), found.result) == (row["to"], row["ann"], row["result"])
@@ -81,3 +82,53 @@ def test_alarm_core(row: dict[str, str]) -> None:
 def test_alarm_core_reference_is_complete() -> None:
     covered = [(row["from"], row["event"], guard) for row in rows("alarm_core") for guard in GUARDS[row["guard"]]]
     assert len(covered) == len(set(covered)) == 6 * 5 * 3
+
+
+FLAG_GUARDS = {"*": [False, True], "otherwise": [False]}
+"""Every other guard is a condition that holds."""
+
+
+@pytest.mark.parametrize("row", rows("alarm_overlay"), ids=lambda row: f"{row['flag']}-{row['event']}-{row['guard']}")
+def test_alarm_overlay(row: dict[str, str]) -> None:
+    for guard in FLAG_GUARDS.get(row["guard"], [True]):
+        found = alarm_overlay.turn(Flag(row["flag"]), row["value"] == "1", FlagEvent(row["event"]), guard)
+        assert (found.up, found.result) == (row["to"] == "1", row["result"])
+
+
+def test_alarm_overlay_has_each_row_once_and_none_besides() -> None:
+    covered = [
+        (Flag(row["flag"]), row["value"] == "1", FlagEvent(row["event"]), guard)
+        for row in rows("alarm_overlay")
+        for guard in FLAG_GUARDS.get(row["guard"], [True])
+    ]
+    assert len(covered) == len(set(covered))
+    assert {row[:3] for row in covered} == set(alarm_overlay.TABLE)
+
+
+@pytest.mark.parametrize("row", rows("alarm_resync"), ids=lambda row: row["core"])
+def test_alarm_resync(row: dict[str, str]) -> None:
+    state, announce = alarm_overlay.RESYNC[AlarmState(row["core"])]
+    assert (str(state), str(announce)) == (row["to"], row["ann"])
+
+
+def test_alarm_resync_is_complete() -> None:
+    assert [row["core"] for row in rows("alarm_resync")] == [str(state) for state in AlarmState]
+
+
+@pytest.mark.parametrize("row", rows("alarm_core"), ids=lambda row: f"{row['from']}-{row['event']}-{row['guard']}")
+def test_alarm_core_while_hidden(row: dict[str, str]) -> None:
+    """Nothing is announced; B goes to A and not to D; ACK and RESET are rejected (text beside the overlay table)."""
+    for latching, needs in GUARDS[row["guard"]]:
+        found = alarm_overlay.hidden_move(
+            AlarmState(row["from"]), AlarmEvent(row["event"]), latching=latching, needs_acknowledge=needs
+        )
+        assert str(found.announce) == "-"
+        if row["event"] in ("ACK", "RESET"):
+            assert (str(found.to), found.result) == (row["from"], "rejected")
+        elif row["event"] == "REALARM":
+            assert (str(found.to), found.result) == (row["from"], "ignored")
+        else:
+            assert (str(found.to), found.result) == (
+                "A" if row["to"] == "D" != row["from"] else row["to"],
+                row["result"],
+            )

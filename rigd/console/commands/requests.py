@@ -104,8 +104,47 @@ def bypass(output: Output, interlock: str, reason: str, duration: str, end: bool
         return
     if not reason.strip() or not duration:
         raise click.UsageError('a bypass needs --reason and --for, e.g. --for "10 min" --reason "sensor exchanged"')
+    _ask(output, Verb.BYPASS, name, who, interlock, {"reason": reason.strip(), "duration_s": _seconds(duration)})
+
+
+def _seconds(duration: str) -> float:
+    """A time as it was typed; ``UsageError`` when it is none."""
     try:
-        seconds = parse_quantity(duration, "time")
+        return parse_quantity(duration, "time")
     except UnitError as error:
         raise click.UsageError(f"--for: {error}") from error
-    _ask(output, Verb.BYPASS, name, who, interlock, {"reason": reason.strip(), "duration_s": seconds})
+
+
+@click.command()
+@click.argument("alarm")
+@click.option("--reason", default="", help="Why. Needed.")
+@click.option("--for", "duration", default="", metavar="TIME", help='How long, with its unit: "30 min". Needed.')
+@_common
+def shelve(output: Output, alarm: str, reason: str, duration: str, name: str, who: str) -> None:
+    """Hide ALARM for a stated time and reason; it counts again by itself. Interlocks do not notice."""
+    if not reason.strip() or not duration:
+        raise click.UsageError('shelving needs --reason and --for, e.g. --for "30 min" --reason "flask is exchanged"')
+    _ask(output, Verb.SHELVE, name, who, alarm, {"reason": reason.strip(), "duration_s": _seconds(duration)})
+
+
+@click.command()
+@click.argument("alarm")
+@_common
+def unshelve(output: Output, alarm: str, name: str, who: str) -> None:
+    """Show ALARM again before its time; what still stands is told anew."""
+    _ask(output, Verb.UNSHELVE, name, who, alarm)
+
+
+@click.command("out-of-service")
+@click.argument("alarm")
+@click.option("--reason", default="", help="Why. Needed, unless --return.")
+@click.option("--return", "back", is_flag=True, help="Put it into service again.")
+@_common
+def out_of_service(output: Output, alarm: str, reason: str, back: bool, name: str, who: str) -> None:
+    """Hide ALARM for maintenance until it is returned. A restart returns it too."""
+    if back:
+        _ask(output, Verb.RETURN, name, who, alarm)
+        return
+    if not reason.strip():
+        raise click.UsageError('an alarm goes out of service for a --reason, e.g. --reason "level switch is exchanged"')
+    _ask(output, Verb.REMOVE, name, who, alarm, {"reason": reason.strip()})

@@ -27,6 +27,8 @@ def not_ready(layout: Layout, view: View, prompts: Mapping[str, Prompt]) -> list
     found = [never] if never else []
     if not view.verdict.permit:
         found.append("an interlock is tripped or was not reset")
+    if view.verdict.hidden_alarm and layout.program.options.unattended:
+        found.append(f"alarm {view.verdict.hidden_alarm} is hidden, and nobody will be there")
     if view.verdict.hold_wanted:
         found.append(f"{view.verdict.hold_wanted} asks for a hold")
     offline = [device.id for device in layout.rig.devices if not view.online(device.id)]

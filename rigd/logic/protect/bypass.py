@@ -7,6 +7,7 @@ the same quantity (two on pressure, two on temperature): while one is bypassed o
 
 from __future__ import annotations
 
+import math
 from dataclasses import replace
 from typing import TYPE_CHECKING
 
@@ -37,10 +38,10 @@ def grant(
         refusal = "its cause is present"
     if refusal:
         return interlocks, [], f"{interlock.id}: {refusal}"
-    until_ns = now_ns + int(_duration_s(request) * 1e9)
+    until_ns = now_ns + int(duration_s(request) * 1e9)
     reason = str(request.args["reason"])
     after = move(state.latch, LatchEvent.BYP_ON, guard=True).to
-    note = f"bypassed by {request.who} for {_duration_s(request):g} s: {reason}"
+    note = f"bypassed by {request.who} for {duration_s(request):g} s: {reason}"
     change = Change(interlock, state.latch, after, LatchEvent.BYP_ON, note=note)
     bypassed = replace(state, latch=after, bypass=Bypass(request.who, reason, until_ns))
     states = {**interlocks.states, interlock.id: bypassed}
@@ -74,7 +75,7 @@ def _refusal(program: Program, interlocks: Interlocks, interlock: Interlock, req
         return "a bypass needs the name of the person who asks for it"
     if not str(request.args.get("reason", "")).strip():
         return "a bypass needs a reason"
-    if not 0.0 < _duration_s(request) <= LONGEST_S:
+    if not 0.0 < duration_s(request) <= LONGEST_S:
         return f"a bypass needs a duration of at most {LONGEST_S:g} s"
     for partner in partners(program, interlock):
         if interlocks.states[partner.id].latch is not LatchState.HEALTHY:
@@ -82,12 +83,13 @@ def _refusal(program: Program, interlocks: Interlocks, interlock: Interlock, req
     return ""
 
 
-def _duration_s(request: Request) -> float:
-    """Duration asked for; 0 when it is missing or not a number."""
+def duration_s(request: Request) -> float:
+    """Duration that a request asks for [s]; 0 when it is missing, not a number or not finite."""
     try:
-        return float(request.args.get("duration_s", 0.0))
+        found = float(request.args.get("duration_s", 0.0))
     except ValueError:
         return 0.0
+    return found if math.isfinite(found) else 0.0
 
 
 def partners(program: Program, interlock: Interlock) -> tuple[Interlock, ...]:

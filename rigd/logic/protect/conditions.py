@@ -75,7 +75,8 @@ def watches(
 ) -> tuple[Watch, ...]:
     """All conditions of a rig in a fixed order, interlocks first."""
     found = [(interlock.id, condition) for interlock in interlocks for condition in interlock.causes]
-    found += [(alarm.id, alarm.condition) for alarm in alarms]
+    for alarm in alarms:
+        found += [(alarm.id, alarm.condition), *([(alarm.id, alarm.suppress)] if alarm.suppress else [])]
     return tuple(Watch(index, condition, owner, tag_of(condition)) for index, (owner, condition) in enumerate(found))
 
 

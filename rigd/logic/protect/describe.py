@@ -6,7 +6,8 @@ import math
 from typing import TYPE_CHECKING
 
 from rigd.logic.protect import alarms, interlocks
-from rigd.logic.protect.alarms import AlarmState
+from rigd.logic.protect.alarm_core import AlarmEvent, AlarmState
+from rigd.logic.protect.alarm_overlay import FlagEvent
 from rigd.logic.protect.conditions import Conditions, Watch, slope_per_s
 from rigd.logic.protect.faults import Faults
 from rigd.logic.protect.latch import LatchState
@@ -77,24 +78,46 @@ class Words:
         }
 
     def alarm(self, change: alarms.Change) -> Event:
-        """The event of one transition of an alarm."""
-        found = change.alarm
+        """The event of one change of an alarm."""
+        found, after = change.alarm, change.after
         watch = self._program.causes[found.id][0]
-        stands = change.after in (AlarmState.UNACKNOWLEDGED, AlarmState.ACKNOWLEDGED)
-        by = f" by {change.by}" if change.by else ""
-        what = f", {self.cause(watch)}. {found.action}" if stands else "."
+        sample = self._signals.samples.get(watch.tag)
         fields: Fields = {
-            "state": change.after.words,
+            "state": after.words,
             "from": change.before.words,
+            "event": str(change.event),
             "priority": int(found.priority),
+            "type": str(watch.condition.kind),
+            "tag": watch.tag or watch.condition.tag,
             "value": self._value(watch),
+            "quality": "" if sample is None else sample.quality.name.lower(),
             "limit": watch.condition.limit,
             "unit": self._unit(watch),
+            "deadband": watch.condition.deadband,
+            "on_delay_s": found.on_delay_ns / 1e9,
+            "off_delay_s": found.off_delay_ns / 1e9,
             "do": found.action,
             "announce": str(change.announce),
+            "by": change.by,
+            "reason": change.reason,
         }
-        text = f"{found.title} ({found.id}): {change.after.words}{by}{what}"
-        return Event(EventKind.ALARM, found.id, self._now_ns, text, fields)
+        if after.flag is not None:
+            fields["hidden"] = after.state.words
+        if after.shelved is not None:
+            fields["left_s"] = (after.shelved.until_ns - self._now_ns) / 1e9
+        return Event(EventKind.ALARM, found.id, self._now_ns, self._alarm_words(change, watch), fields)
+
+    def _alarm_words(self, change: alarms.Change, watch: Watch) -> str:
+        found, after = change.alarm, change.after
+        by = f" by {change.by}" if change.by else ""
+        head = f"{found.title} ({found.id}): {after.words}{by}"
+        if after.flag is None:
+            stands = after.state in (AlarmState.UNACKNOWLEDGED, AlarmState.ACKNOWLEDGED)
+            return head + (f", {self.cause(watch)}. {found.action}" if stands else ".")
+        if isinstance(change.event, AlarmEvent):
+            return f"{head}; {after.state.words} behind that, {self.cause(watch)}."
+        span = f" for {(after.until_ns - self._now_ns) / 60e9:.3g} min" if change.event is FlagEvent.SHELVE else ""
+        return f"{head}{span}{f': {change.reason}' if change.reason else ''}."
 
     def request(self, request: Request, refusal: str, detail: str) -> Event:
         """The one event that answers a request."""

@@ -6,7 +6,7 @@ import math
 from collections.abc import Mapping
 from typing import TYPE_CHECKING
 
-from rigd.logic.protect.alarms import AlarmState
+from rigd.logic.protect.alarm_core import AlarmState
 from rigd.logic.protect.describe import label
 from rigd.logic.protect.protection import ProtectState
 from rigd.model.samples import Sample
@@ -29,15 +29,16 @@ def shown_state(program: Program, state: ProtectState, now_ns: int) -> dict[str,
 
 
 def standing(program: Program, state: ProtectState, now_ns: int) -> list[dict[str, object]]:
-    """The alarms that are not normal, most urgent first."""
+    """The alarms that are not normal, or hidden, most urgent first."""
     found = []
     for alarm in sorted(program.alarms, key=lambda alarm: alarm.priority):
         running = state.alarms.states[alarm.id]
-        if running.state is not AlarmState.NORMAL:
+        if running.state is not AlarmState.NORMAL or running.flag is not None:
             found.append(
                 {
                     "id": alarm.id,
-                    "state": running.state.words,
+                    "state": running.words,
+                    "hidden": running.flag is not None,
                     "priority": int(alarm.priority),
                     "title": alarm.title,
                     "text": alarm.consequence or alarm.title,

@@ -12,7 +12,10 @@ from typing import TYPE_CHECKING
 from rigd.logic.arbitration import Aspect, Memory
 from rigd.logic.demand import Demand
 from rigd.logic.protect import alarms, bypass, conditions, faults, interlocks, ledger, signals, stops
-from rigd.logic.protect.alarms import AlarmEvent, Alarms
+from rigd.logic.protect.alarm_core import AlarmEvent
+from rigd.logic.protect.alarm_overlay import FlagEvent
+from rigd.logic.protect.alarms import Alarms, Wish
+from rigd.logic.protect.bypass import duration_s
 from rigd.logic.protect.conditions import Conditions, Judge, Told
 from rigd.logic.protect.describe import Words
 from rigd.logic.protect.faults import Faults
@@ -34,7 +37,15 @@ from rigd.model.samples import Sample
 if TYPE_CHECKING:
     from rigd.logic.program import Program
 
-PROTECT_VERBS = frozenset({Verb.STOP, Verb.CUT, Verb.RESET, Verb.ACKNOWLEDGE, Verb.BYPASS, Verb.END_BYPASS})
+HIDING = {
+    Verb.SHELVE: (FlagEvent.SHELVE, "shelved; it counts again by itself when the time is over"),
+    Verb.UNSHELVE: (FlagEvent.UNSHELVE, "no longer shelved"),
+    Verb.REMOVE: (FlagEvent.REMOVE, "out of service until it is returned"),
+    Verb.RETURN: (FlagEvent.RETURN, "in service again"),
+}
+"""What a person asks of the flags of an alarm, and the answer when it is granted."""
+
+PROTECT_VERBS = frozenset({Verb.STOP, Verb.CUT, Verb.RESET, Verb.ACKNOWLEDGE, Verb.BYPASS, Verb.END_BYPASS, *HIDING})
 
 UNANSWERED_NS = 2_000_000_000
 """An order whose answer is still out is taken to reach its device within this time."""
@@ -236,10 +247,20 @@ class _Scan:
                 )
                 self._tell(changes, [])
                 return refusal, "bypassed"
+            case Verb.SHELVE | Verb.UNSHELVE | Verb.REMOVE | Verb.RETURN:
+                return self._hide(request)
             case _:
                 self._interlocks, refusal = bypass.end(self._program, self._interlocks, request, self._now_ns)
                 self._trip(set() if refusal else {request.target})
                 return refusal, "the bypass has ended"
+
+    def _hide(self, request: Request) -> tuple[str, str]:
+        event, granted = HIDING[request.verb]
+        duration_ns = int(duration_s(request) * 1e9)
+        wish = Wish(event, request.target, request.who, str(request.args.get("reason", "")), duration_ns)
+        self._alarms, raised, refusal = alarms.ask(self._program, self._alarms, wish, self._now_ns)
+        self._tell([], raised)
+        return refusal, granted
 
     def _reset(self, request: Request) -> tuple[str, str]:
         """Reset an interlock, a latched alarm, or everything."""
@@ -290,6 +311,7 @@ class _Scan:
             stopping is before.stopping
             and self._interlocks is before.interlocks
             and self._alarms.hold_wanted == before.alarms.hold_wanted
+            and self._alarms.hidden == before.alarms.hidden
         ):
             return before.verdict
         held_by = self._interlocks.first_out if self._interlocks.level is Stop.HOLD else self._alarms.hold_wanted
@@ -300,6 +322,7 @@ class _Scan:
             stop_done=stopping.level >= Stop.QUENCH and stopping.done,
             first_out=self._interlocks.first_out,
             hold_wanted=held_by,
+            hidden_alarm=self._alarms.hidden,
         )
 
     def _wake_ns(self, stopping: Stopping) -> int:
