@@ -385,6 +385,8 @@ def test_unsettled_point_is_collected_or_abandoned_as_the_recipe_says() -> None:
     safe=st.booleans(),
 )
 @example(hold_s=[150.90319505210704, 1197.2155027621307, 62.64169093278228], wait_s=1.5, syringes=1, safe=False)
+@example(hold_s=[258.3870219995864, 1124.128714481853], wait_s=129.7, syringes=2, safe=False)
+@example(hold_s=[861.4382983184856, 521.1555068789817, 138.63833568743536], wait_s=199.757, syringes=2, safe=False)
 def test_holds_at_any_time_never_spoil_a_fraction(
     hold_s: list[float], wait_s: float, syringes: int, safe: bool
 ) -> None:

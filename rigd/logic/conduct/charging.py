@@ -183,14 +183,20 @@ def _flow(play: PumpLayout, track: PumpTrack, want: Want, now_ns: int) -> tuple[
 
 
 def _dual_flow(play: PumpLayout, track: PumpTrack, want: Want, now_ns: int) -> tuple[float, int | None]:
+    """As ``_flow``. Two rests need care: the change-over and the end of the second one may come within one sample."""
     wanted, level_mL = want.flow_mL_min, track.level_at(now_ns)
     own = track.active == want.label
     if want.urgent and not own and track.standby == want.label:
         return 0.0, None
+    guard_mL = play.guard_mL(wanted)
     follows = track.standby_mL > EMPTY_mL and track.fill is None and (track.standby == want.label or not own)
+    rests_mL = level_mL + track.standby_mL
+    if follows and track.standby != want.label and rests_mL <= guard_mL:
+        return _slow(play, wanted, rests_mL), now_ns + int(play.period_s * 1e9)
+    if follows and own and rests_mL <= guard_mL:
+        return 0.0, None
     if follows:
         return wanted, None
-    guard_mL = play.guard_mL(wanted)
     if level_mL <= guard_mL or (_filling_outlasts(play, track, level_mL - guard_mL, wanted) and track.at_rest):
         return 0.0, None
     return wanted, now_ns + int(60e9 * (level_mL - guard_mL) / wanted)
@@ -215,8 +221,12 @@ def _single_flow(play: PumpLayout, track: PumpTrack, want: Want, now_ns: int) ->
         return wanted, now_ns + int(60e9 * (level_mL - floor_mL) / wanted)
     if level_mL <= _RUN_OUT_mL:
         return 0.0, None
-    slow = 60.0 * level_mL / (3.0 * max(play.period_s, 0.5))
-    return min(wanted, slow), now_ns + int(play.period_s * 1e9)
+    return _slow(play, wanted, level_mL), now_ns + int(play.period_s * 1e9)
+
+
+def _slow(play: PumpLayout, wanted_mL_min: float, level_mL: float) -> float:
+    """A flow that takes a rest out without coming to the end of it between two samples."""
+    return min(wanted_mL_min, 60.0 * level_mL / (3.0 * max(play.period_s, 0.5)))
 
 
 def _ramped(flow: float, track: PumpTrack, ramp: Ramp, now_ns: int) -> tuple[float, int | None, PumpTrack]:
