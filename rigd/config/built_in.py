@@ -18,6 +18,8 @@ from rigd.model.rig import Chiller, Pump, RigDefinition, Valve
 BUILT_IN_BASIS = "built in: an actuator in an unknown state is stopped (tests/reference/cause_effect.csv)"
 
 CHILLER_LINK_S = 10.0
+SETPOINT_K = 0.5
+SETPOINT_S = 10.0
 MISMATCH_S = 1.0
 JOURNAL_S = 5.0
 
@@ -33,23 +35,42 @@ def built_in_interlocks(rig: RigDefinition, devices: Iterable[DeviceSpec]) -> tu
         found.append(_power(device))
     found += [_stall(pump.id) for pump in rig.pumps]
     found += [_mismatch(valve.id) for valve in rig.valves if valve.device]
+    found += [_adrift(chiller.id) for chiller in rig.chillers if chiller.device]
     return (*found, *_FAULTS)
 
 
 def built_in_alarms(rig: RigDefinition) -> tuple[Alarm, ...]:
-    """One alarm with hold for each pump that has run empty."""
-    return tuple(
-        Alarm(
-            id=f"EMPTY-{pump.id}",
-            title=f"{pump.id} has no liquid left to deliver",
-            condition=Condition(ConditionKind.EQUALS, f"{pump.id}.state", float(PumpState.EMPTY)),
-            priority=Priority.HIGH,
-            action=f"Look whether the bottle of {pump.id} is empty or its inlet line holds gas; refill, then resume.",
-            cause="bottle empty, refill late or gas drawn in",
-            consequence="the other pumps alone set the composition",
-            hold=True,
-        )
-        for pump in rig.pumps
+    """One alarm with hold for each pump that has run empty; one for each pair of channels that disagree."""
+    witnesses = [(lock, witness) for lock in rig.interlocks for witness in lock.witnesses]
+    disagree = [_disagree(lock, witness) for lock, witness in witnesses]
+    return (*disagree, *(_empty(pump) for pump in rig.pumps))
+
+
+def _disagree(lock: Interlock, witness: Condition) -> Alarm:
+    pair = f"{witness.tag}-{witness.reference}"
+    return Alarm(
+        id=f"DISAGREE-{lock.id}-{pair}",
+        title=f"{witness.tag} and {witness.reference} disagree",
+        condition=witness,
+        priority=Priority.HIGH,
+        action=f"Find out which of the two is wrong before {lock.id} has to do without it.",
+        cause="one of two instruments is out of calibration, detached or blocked",
+        consequence=f"{lock.id} believes the worse of them",
+        on_delay_ns=lock.discord_ns,
+        off_delay_ns=lock.clear_delay_ns,
+    )
+
+
+def _empty(pump: Pump) -> Alarm:
+    return Alarm(
+        id=f"EMPTY-{pump.id}",
+        title=f"{pump.id} has no liquid left to deliver",
+        condition=Condition(ConditionKind.EQUALS, f"{pump.id}.state", float(PumpState.EMPTY)),
+        priority=Priority.HIGH,
+        action=f"Look whether the bottle of {pump.id} is empty or its inlet line holds gas; refill, then resume.",
+        cause="bottle empty, refill late or gas drawn in",
+        consequence="the other pumps alone set the composition",
+        hold=True,
     )
 
 
@@ -114,6 +135,20 @@ def _mismatch(valve: str) -> Interlock:
         on_delay_ns=ns(MISMATCH_S),
         consequence="a pump runs against a closed port, or the wrong liquid reaches the bed",
         response=f"See by eye where {valve} stands. Release the pressure, free the valve, then reset.",
+        basis=BUILT_IN_BASIS,
+        built_in=True,
+    )
+
+
+def _adrift(chiller: str) -> Interlock:
+    return Interlock(
+        id=f"MISMATCH-{chiller}",
+        title=f"{chiller} has another set-point than it was told",
+        causes=(Condition(ConditionKind.MISMATCH, f"{chiller}.setpoint", SETPOINT_K),),
+        stop=Stop.QUENCH,
+        on_delay_ns=ns(SETPOINT_S),
+        consequence="the bath goes to a temperature that nobody asked for, after a silent restart of the chiller",
+        response=f"See by eye what {chiller} shows. Check its power and that nobody turned its knob; then reset.",
         basis=BUILT_IN_BASIS,
         built_in=True,
     )

@@ -26,7 +26,7 @@ from rigd.config.table import ns
 from rigd.model.chemistry import Chemistry
 from rigd.model.devices import DeviceSpec
 from rigd.model.orders import Stop
-from rigd.model.protection import Alarm, ConditionKind, Interlock, Priority
+from rigd.model.protection import Alarm, Condition, ConditionKind, Interlock, Priority
 from rigd.model.rig import Cell, Chiller, Outside, Pump, RigDefinition, Simulation, Tag, TagKind, Valve
 
 _STOPS = {"cut": Stop.CUT, "quench": Stop.QUENCH, "hold": Stop.HOLD}
@@ -128,6 +128,9 @@ def _interlock(table: InterlockTable, maker: ConditionMaker, rig: RigDefinition)
     causes = tuple(cause for cause in made if cause is not None)
     if len(causes) < len(made):
         return None
+    witnesses: tuple[Condition, ...] = ()
+    if table.disagree_by is not None:
+        witnesses = maker.witnesses(causes, table.disagree_by, table.key_path)
     return Interlock(
         id=table.id,
         title=table.title,
@@ -142,6 +145,10 @@ def _interlock(table: InterlockTable, maker: ConditionMaker, rig: RigDefinition)
         response=table.response,
         basis=table.basis,
         rating=_rating(rig, {cause.tag for cause in causes if cause.kind is ConditionKind.HIGH}),
+        witnesses=witnesses,
+        discord_ns=ns(table.disagree_for) if witnesses else 0,
+        startup_ns=ns(table.startup),
+        proof_interval_s=table.proof_test or 0.0,
     )
 
 

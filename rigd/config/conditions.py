@@ -2,17 +2,18 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
+from itertools import combinations
 
 from pydantic_core import PydanticCustomError
 
 from rigd.config.findings import Findings, listed, nearest
 from rigd.config.lines import Path
 from rigd.config.quantity import Sign, read_quantity
-from rigd.config.rule_tables import ConditionTable, difference
+from rigd.config.rule_tables import COMPARISONS, ConditionTable, difference
 from rigd.config.table import ns
 from rigd.model.protection import Condition, ConditionKind
-from rigd.model.rig import Tag
+from rigd.model.rig import Tag, TagKind
 from rigd.model.units import HOUSE
 
 DIMENSIONS = {unit: dimension for dimension, unit in HOUSE.items()}
@@ -56,36 +57,61 @@ class ConditionMaker:
     def _compared(self, table: ConditionTable, tag: Tag, place: Path, settling_s: float) -> Condition | None:
         if table.equals is not None:
             return Condition(ConditionKind.EQUALS, tag.id, _state(tag, table.equals))
+        if table.quality is not None:
+            return Condition(ConditionKind(table.quality), tag.id)
         dimension = DIMENSIONS.get(tag.unit, "")
         if not dimension:
-            key = next(
-                key for key in ("above", "below", "differs_from", "rate_above") if getattr(table, key) is not None
-            )
+            key = next(key for key in COMPARISONS if getattr(table, key) is not None)
             text = f"{tag.id} is a position or state and cannot be compared with {key!r}"
             raise _wrong("comparison-wrong", text, key)
         deadband = 0.0
         if table.deadband is not None:
             deadband = _read(table.deadband, difference(dimension), "deadband", "not negative")
-        if table.differs_from is not None:
-            return self._deviation(table, tag, dimension, deadband, (place, settling_s))
+        if table.other is not None:
+            return self._apart(table, tag, dimension, deadband, (place, settling_s))
+        if table.mismatch_by is not None:
+            return _mismatch(table.mismatch_by, tag, dimension)
         if table.rate_above is not None:
             return self._rate(table, tag, dimension, deadband)
         if table.above is not None:
             return Condition(ConditionKind.HIGH, tag.id, _read(table.above, dimension, "above"), deadband)
         return Condition(ConditionKind.LOW, tag.id, _read(table.below or "", dimension, "below"), deadband)
 
-    def _deviation(
+    def _apart(
         self, table: ConditionTable, tag: Tag, dimension: str, deadband: float, at: tuple[Path, float]
     ) -> Condition | None:
+        """A comparison with another tag: a set-point that may move, or a partner that should agree."""
         place, settling_s = at
-        other = self.tag(table.differs_from or "", (*place, "differs_from"))
+        key = "differs_from" if table.differs_from is not None else "disagrees_with"
+        other = self.tag(table.other or "", (*place, key))
         if other is None:
             return None
         if other.unit != tag.unit:
             text = f"{tag.id} is in {tag.unit}, but {other.id} is in {other.unit or 'positions or states'}"
-            raise _wrong("unit-wrong", text, "differs_from")
+            raise _wrong("unit-wrong", text, key)
+        if other.id == tag.id:
+            raise _wrong("comparison-wrong", f"{tag.id} always agrees with itself", key)
         limit = _read(table.by or "", difference(dimension), "by", "positive")
+        if key == "disagrees_with":
+            return Condition(ConditionKind.DISCREPANCY, tag.id, limit, deadband, other.id)
         return Condition(ConditionKind.DEVIATION, tag.id, limit, deadband, other.id, settling_ns=ns(settling_s))
+
+    def witnesses(self, causes: Sequence[Condition], by: str, place: Path) -> tuple[Condition, ...]:
+        """Every pair of channels of an interlock, compared; a finding and nothing when they cannot be."""
+        tags = [self._tags[name] for name in dict.fromkeys(cause.tag for cause in causes)]
+        try:
+            if len(tags) < 2 or len({tag.unit for tag in tags}) > 1:
+                text = "'disagree_by' compares channels: trip_when needs two tags of the same unit"
+                raise _wrong("comparison-wrong", text, "disagree_by")
+            dimension = DIMENSIONS.get(tags[0].unit, "")
+            if not dimension:
+                raise _wrong("comparison-wrong", f"{tags[0].id} is a position or state", "disagree_by")
+            limit = _read(by, difference(dimension), "disagree_by", "positive")
+        except PydanticCustomError as error:
+            self._found.error(error.type, (*place, "disagree_by"), error.message(), "remove it, or add a second sensor")
+            return ()
+        kind = ConditionKind.DISCREPANCY
+        return tuple(Condition(kind, a.id, limit, reference=b.id) for a, b in combinations(tags, 2))
 
     def _rate(self, table: ConditionTable, tag: Tag, dimension: str, deadband: float) -> Condition:
         slope, factor = _SLOPES.get(dimension, ("", 0.0))
@@ -101,6 +127,18 @@ class ConditionMaker:
             raise _wrong("window-short", text, "window")
         limit = _read(table.rate_above or "", slope, "rate_above") * factor
         return Condition(ConditionKind.RATE, tag.id, limit, deadband * factor, window_ns=window_ns)
+
+
+_FOLLOWS = ("flow", "setpoint")
+"""Feedback of a quantity that a unit was told; positions have their own built-in interlocks."""
+
+
+def _mismatch(text: str, tag: Tag, dimension: str) -> Condition:
+    if tag.kind is not TagKind.FEEDBACK or tag.channel not in _FOLLOWS:
+        reason = f"{tag.id} is not the feedback of an order; a pump has '.flow', a chiller '.setpoint'"
+        raise _wrong("comparison-wrong", reason, "mismatch_by")
+    limit = _read(text, difference(dimension), "mismatch_by", "positive")
+    return Condition(ConditionKind.MISMATCH, tag.id, limit)
 
 
 def _state(tag: Tag, value: str | int) -> float:

@@ -14,7 +14,7 @@ from rigd.model.rig import AlertChannel, MqttSpec
 DIMENSION_OF = {"pressure": "pressure", "temperature": "temperature", "flow": "flow", "volume": "volume", "state": ""}
 """What a sensor may measure, and the dimension of its value ("" = a state with labels)."""
 
-COMPARISONS = ("above", "below", "equals", "differs_from", "rate_above")
+COMPARISONS = ("above", "below", "equals", "differs_from", "disagrees_with", "rate_above", "mismatch_by", "quality")
 
 EndOrPart = Annotated[str, Field(pattern=r"^[A-Za-z][A-Za-z0-9_-]*(\.[a-z]+)?$")]
 TagText = Annotated[str, Field(min_length=1, max_length=120)]
@@ -106,11 +106,19 @@ class SensorTable(Table):
 
 def _one_comparison(schema: dict[str, Any]) -> None:
     schema["oneOf"] = [{"required": [name]} for name in COMPARISONS]
-    schema["dependentRequired"] = {"differs_from": ["by"], "by": ["differs_from"], "window": ["rate_above"]}
+    schema["dependentRequired"] = {"differs_from": ["by"], "disagrees_with": ["by"], "window": ["rate_above"]}
+    schema["dependentSchemas"] = {
+        "by": {"anyOf": [{"required": [name]} for name in ("differs_from", "disagrees_with")]}
+    }
 
 
 class ConditionTable(Table):
-    """A tag and exactly one comparison: above, below, equals, differs_from (with by), rate_above (with window)."""
+    """A tag and exactly one comparison.
+
+    above, below, equals; differs_from another tag, such as a set-point, ``by`` so much; disagrees_with a second
+    instrument of the same quantity ``by`` so much; rate_above (with window); mismatch_by: not what the unit was told;
+    quality: what makes the signal unbelievable.
+    """
 
     model_config = ConfigDict(json_schema_extra=_one_comparison)
 
@@ -119,9 +127,12 @@ class ConditionTable(Table):
     below: Written | None = None
     equals: Text | Whole | None = None
     differs_from: TagText | None = None
+    disagrees_with: TagText | None = None
     by: Written | None = None
     rate_above: Written | None = None
     window: Duration | None = None
+    mismatch_by: Written | None = None
+    quality: Literal["bad", "stale", "frozen", "out of span", "diagnostic"] | None = None
     deadband: Written | None = None
 
     @model_validator(mode="after")
@@ -131,17 +142,28 @@ class ConditionTable(Table):
         if len(given) != 1:
             found = " and ".join(given) or "none"
             text = f"found {found}; a condition needs exactly one of {', '.join(COMPARISONS)}"
-        elif (self.by is None) == (self.differs_from is not None):
-            text = "'differs_from' and 'by' belong together: {tag, differs_from = another tag, by = how much}"
+        elif (self.by is None) == (self.other is not None):
+            pair = "{tag, differs_from = another tag, by = how much}"
+            text = f"'differs_from' (or 'disagrees_with') and 'by' belong together: {pair}"
         elif self.window is not None and self.rate_above is None:
             text = "'window' belongs to 'rate_above' only"
         if text:
             raise PydanticCustomError("condition-wrong", "{text}", {"text": text})
         return self
 
+    @property
+    def other(self) -> str | None:
+        """The tag with which this one is compared."""
+        return self.differs_from or self.disagrees_with
+
 
 class InterlockTable(Table):
-    """A rule that stops the rig and latches until a person resets it."""
+    """A rule that stops the rig and latches until a person resets it.
+
+    ``disagree_by`` and ``disagree_for``: channels of one quantity that are this far apart for so long; the one that
+    disagrees with all others counts as bad. ``startup``: limits do not count for so long after the first movement since
+    a reset. ``proof_test``: time between two proof tests, without which no unattended run starts.
+    """
 
     id: Id
     title: Text
@@ -153,6 +175,10 @@ class InterlockTable(Table):
     settling: Delay = 0.0
     stop: Literal["cut", "quench", "hold"]
     armed: Armed = Armed.ALWAYS
+    disagree_by: Written | None = None
+    disagree_for: Duration = 10.0
+    startup: Delay = 0.0
+    proof_test: Duration | None = None
     consequence: Annotated[Text, IfMissing("key-missing", "say what would happen without this interlock")]
     response: Annotated[Text, IfMissing("key-missing", "say what the person should do after the trip")]
     basis: Text

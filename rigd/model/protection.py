@@ -19,6 +19,11 @@ class ConditionKind(StrEnum):
     DIFFERS = "differs"  # value != limit (discrete)
     MISMATCH = "mismatch"  # feedback of a unit is not what it was told, for longer than its travel time
     BAD = "bad"  # quality of the tag is bad, whatever the cause
+    STALE = "stale"  # bad because it was not renewed in time
+    FROZEN = "frozen"  # bad because its raw code stands still
+    OUT_OF_SPAN = "out of span"  # bad because it lies beyond the span of its instrument
+    DIAGNOSTIC = "diagnostic"  # bad because the instrument itself says so
+    DISCREPANCY = "discrepancy"  # |value - partner| > limit; ``reference`` is the partner, a second instrument
     LINK = "link"  # device named in ``tag`` not online
     POWER_CYCLED = "power cycled"  # device named in ``tag`` restarted or changed its identity
     FAULT = "fault"  # the daemon's own fault named in ``tag`` (scan late, conduct error, journal, suspended)
@@ -60,7 +65,10 @@ class Interlock:
     """``votes`` of the ``causes`` for ``on_delay_ns`` trip it; it latches and orders ``stop``.
 
     ``consequence`` says what it prevents, ``response`` what the person should do, ``basis`` where the limit comes from.
-    ``rating`` (house unit of the causes, 0 = none) is the weakest part that it protects.
+    ``rating`` (house unit of the causes, 0 = none) is the weakest part that it protects. ``witnesses`` compare the
+    channels with each other; a channel that disagrees with all others for ``discord_ns`` counts as bad. For
+    ``startup_ns`` after the first movement since a reset its limits do not count yet; bad channels do.
+    ``proof_interval_s`` is the time between two proof tests (0: no one asks for them).
     """
 
     id: str
@@ -77,6 +85,10 @@ class Interlock:
     basis: str = ""
     rating: float = 0.0
     built_in: bool = False
+    witnesses: tuple[Condition, ...] = ()
+    discord_ns: int = 0
+    startup_ns: int = 0
+    proof_interval_s: float = 0.0
 
     @property
     def architecture(self) -> str:

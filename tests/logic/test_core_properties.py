@@ -18,7 +18,7 @@ from hypothesis import strategies as st
 
 from rigd.logic.demand import PumpDemand
 from rigd.logic.program import Program, compile_program
-from rigd.logic.protect import conditions, interlocks, signals
+from rigd.logic.protect import conditions, interlock_vote, signals
 from rigd.logic.protect.bypass import LONGEST_S
 from rigd.logic.protect.conditions import Judge
 from rigd.model.orders import Authority, Stop, Verb
@@ -86,7 +86,7 @@ def demanded(votes: int, on_bad: OnBad, kind: ConditionKind, limit: float, value
     for tag in taken:
         for watch in program.watching[tag]:
             judge.tag(watch)
-    heard = interlocks.vote(program, lock, judge.result(), running=True)
+    heard = interlock_vote.vote(program, lock, judge.result(), running=True)
     return heard.demand
 
 

@@ -83,6 +83,47 @@ def test_bad_is_a_condition_of_its_own() -> None:
     assert bench.give(1.0) is Channel.CLEAR
 
 
+@pytest.mark.parametrize(
+    ("kind", "cause"),
+    [
+        (K.STALE, QualityCause.STALE),
+        (K.FROZEN, QualityCause.FROZEN),
+        (K.OUT_OF_SPAN, QualityCause.OUT_OF_SPAN),
+        (K.DIAGNOSTIC, QualityCause.SENSOR_FAULT),
+    ],
+)
+def test_one_cause_of_bad_quality_is_a_condition_and_any_other_a_bad_channel(
+    kind: ConditionKind, cause: QualityCause
+) -> None:
+    bench = Bench(Condition(kind, "T"))
+    assert bench.give(1.0) is Channel.CLEAR
+    assert bench.give(1.0, 1, quality=Quality.BAD, cause=QualityCause.LINK_LOST) is Channel.BAD
+    assert bench.give(1.0, 2, quality=Quality.BAD, cause=cause) is Channel.ACTIVE
+    assert bench.give(1.0, 3, quality=Quality.BAD, cause=QualityCause.LINK_LOST) is Channel.BAD_ACTIVE
+    assert bench.give(1.0, 4, quality=Quality.UNCERTAIN, cause=cause) is Channel.CLEAR
+
+
+def test_discrepancy_is_live_at_once_however_the_partner_moves() -> None:
+    bench = Bench(Condition(K.DISCREPANCY, "T", 2.0, deadband=0.5, reference="P", settling_ns=100 * S))
+    bench.samples["P"] = Sample("P", 3.0, 0)
+    assert bench.give(6.5) is Channel.ACTIVE
+    assert bench.give(4.6, 1) is Channel.ACTIVE
+    assert bench.give(4.5, 2) is Channel.CLEAR
+    bench.samples["P"] = Sample("P", 9.0, 3)
+    assert bench.give(4.5, 4) is Channel.ACTIVE
+    bench.samples["P"] = Sample("P", 9.0, 5, Quality.BAD, QualityCause.FROZEN)
+    assert bench.give(4.5, 6) is Channel.BAD_ACTIVE
+
+
+def test_a_mismatch_of_a_quantity_has_a_limit_and_no_lost_position() -> None:
+    bench = Bench(Condition(K.MISMATCH, "T", 0.5))
+    assert bench.give(-2.0) is Channel.CLEAR  # a set-point of -2 degC before anything was told
+    bench.told = Told(20.0, settled_ns=10 * S)
+    assert bench.give(-2.0, 9 * S) is Channel.CLEAR
+    assert bench.give(20.5, 10 * S) is Channel.CLEAR
+    assert bench.give(20.6, 11 * S) is Channel.ACTIVE
+
+
 def test_slope_is_the_least_squares_slope_of_numpy() -> None:
     rng = np.random.default_rng(5)
     times_s = np.sort(rng.uniform(0, 10, 25))

@@ -21,8 +21,12 @@ _KEYS = {
     ConditionKind.LOW: "below",
     ConditionKind.RATE: "rate_above",
     ConditionKind.DEVIATION: "by",
+    ConditionKind.DISCREPANCY: "by",
+    ConditionKind.MISMATCH: "mismatch_by",
     ConditionKind.EQUALS: "equals",
 }
+_QUALITY = "quality"
+"""The key of every other condition that a rig file can state."""
 
 
 def check_limits(context: RigContext) -> None:
@@ -32,12 +36,12 @@ def check_limits(context: RigContext) -> None:
     tags = {tag.id: tag for tag in context.rig.tags}
     for lock in context.rig.interlocks:
         for index, cause in enumerate(lock.causes if not lock.built_in else ()):
-            place = context.at("interlocks", lock.id, "trip_when", index, _KEYS[cause.kind])
+            place = context.at("interlocks", lock.id, "trip_when", index, _KEYS.get(cause.kind, _QUALITY))
             _limit(context, cause, tags.get(cause.tag), place)
         if not lock.built_in:
             _pressure_stop(context, lock, tags)
     for alarm in context.rig.alarms:
-        place = context.at("alarms", alarm.id, "when", _KEYS[alarm.condition.kind])
+        place = context.at("alarms", alarm.id, "when", _KEYS.get(alarm.condition.kind, _QUALITY))
         if place != ("alarms",):
             _limit(context, alarm.condition, tags.get(alarm.condition.tag), place)
     _unprotected(context, tags)
@@ -59,6 +63,9 @@ def _votes(context: RigContext, table: InterlockTable) -> None:
         message = 'with one cause and on_bad = "ignore" a bad signal leaves no protection'
         remedy = 'write on_bad = "trip", or add a second sensor to trip_when'
         context.found.error("no-protection", (*table.key_path, "on_bad"), message, remedy)
+    if table.startup and any(condition.above is not None for condition in table.trip_when):
+        message = "an upper limit is absolute and counts from the first movement on"
+        context.found.error("startup-on-limit", (*table.key_path, "startup"), message, "remove startup")
     if table.settling and not any(condition.differs_from for condition in table.trip_when):
         message = "settling belongs to a comparison with another tag (differs_from); absolute limits are always live"
         context.found.error("settling-unused", (*table.key_path, "settling"), message, "remove settling")

@@ -12,7 +12,7 @@ from dataclasses import replace
 from typing import TYPE_CHECKING
 
 from rigd.logic.protect.conditions import Conditions
-from rigd.logic.protect.interlocks import Bypass, Change, Interlocks, settle, vote
+from rigd.logic.protect.interlocks import Bypass, Change, Interlocks, ballot, settle
 from rigd.logic.protect.latch import LatchEvent, LatchState, move
 from rigd.model.orders import Request
 from rigd.model.protection import Interlock
@@ -34,7 +34,7 @@ def grant(
     state = interlocks.states[interlock.id]
     refusal = _refusal(program, interlocks, interlock, request)
     refusal = move(state.latch, LatchEvent.BYP_ON, guard=True).rejected or refusal
-    if not refusal and vote(program, interlock, conditions, interlocks.running).demand:
+    if not refusal and ballot(program, interlock, conditions, interlocks.running, state).demand:
         refusal = "its cause is present"
     if refusal:
         return interlocks, [], f"{interlock.id}: {refusal}"

@@ -74,7 +74,7 @@ def watches(
     interlocks: tuple[Interlock, ...], alarms: tuple[Alarm, ...], tag_of: Callable[[Condition], str]
 ) -> tuple[Watch, ...]:
     """All conditions of a rig in a fixed order, interlocks first."""
-    found = [(interlock.id, condition) for interlock in interlocks for condition in interlock.causes]
+    found = [(one.id, condition) for one in interlocks for condition in (*one.causes, *one.witnesses)]
     for alarm in alarms:
         found += [(alarm.id, alarm.condition), *([(alarm.id, alarm.suppress)] if alarm.suppress else [])]
     return tuple(Watch(index, condition, owner, tag_of(condition)) for index, (owner, condition) in enumerate(found))
@@ -177,7 +177,7 @@ class Judge:
         kind = condition.kind
         held = channel is _ACTIVE or channel is _BAD_ACTIVE
         if sample.quality is Quality.BAD:
-            if kind is ConditionKind.BAD:
+            if kind is ConditionKind.BAD or _OF_QUALITY.get(kind) is sample.cause:
                 return _ACTIVE
             beyond = sample.cause is QualityCause.OUT_OF_SPAN or math.isinf(sample.value)
             if not (beyond and kind in _ONE_SIDED and _ONE_SIDED[kind](condition, sample.value, held)):
@@ -199,7 +199,7 @@ class Judge:
                 demand = self._rate(watch, held, sample)
             case ConditionKind.MISMATCH:
                 demand = self._mismatch(watch, sample)
-            case ConditionKind.DEVIATION:
+            case ConditionKind.DEVIATION | ConditionKind.DISCREPANCY:
                 return self._deviation(watch, held, sample)
             case _:
                 demand = False
@@ -226,23 +226,35 @@ class Judge:
             return Channel.UNKNOWN
         if reference.quality is Quality.BAD:
             return _BAD_ACTIVE if held else Channel.BAD
+        if condition.kind is ConditionKind.DEVIATION and self._settling(watch, reference, sample):
+            return _CLEAR
+        threshold = condition.limit - (condition.deadband if held else 0.0)
+        return _ACTIVE if abs(sample.value - reference.value) > threshold else _CLEAR
+
+    def _settling(self, watch: Watch, reference: Sample, sample: Sample) -> bool:
+        """True for a stated time after the reference moved by more than half the limit."""
+        condition = watch.condition
         anchors = self._before.anchors if self._anchors is None else self._anchors
         anchor = anchors.get(watch.index)
         if anchor is None or abs(reference.value - anchor[0]) > 0.5 * condition.limit:
             anchor = (reference.value, reference.t_ns)
             self._anchors = {**anchors, watch.index: anchor}
-        newest_ns = max(sample.t_ns, reference.t_ns)
-        if newest_ns - anchor[1] < condition.settling_ns:
-            return _CLEAR
-        threshold = condition.limit - (condition.deadband if held else 0.0)
-        return _ACTIVE if abs(sample.value - reference.value) > threshold else _CLEAR
+        return max(sample.t_ns, reference.t_ns) - anchor[1] < condition.settling_ns
 
     def _mismatch(self, watch: Watch, sample: Sample) -> bool:
-        told = self._told(watch.tag)
+        told, limit = self._told(watch.tag), watch.condition.limit
         if told is None or sample.t_ns < told.settled_ns:
-            return sample.value == LOST
-        return abs(sample.value - told.value) > watch.condition.limit
+            return limit == 0.0 and sample.value == LOST  # a position; of a quantity it would be a value like others
+        return abs(sample.value - told.value) > limit
 
+
+_OF_QUALITY = {
+    ConditionKind.STALE: QualityCause.STALE,
+    ConditionKind.FROZEN: QualityCause.FROZEN,
+    ConditionKind.OUT_OF_SPAN: QualityCause.OUT_OF_SPAN,
+    ConditionKind.DIAGNOSTIC: QualityCause.SENSOR_FAULT,
+}
+"""Conditions on one cause of bad quality; bad for another cause is a bad channel, as everywhere."""
 
 MIN_RATE_SAMPLES = 5
 """Fewer samples in the window say nothing about a slope (proposal after ISA-18.2 practice; no source)."""

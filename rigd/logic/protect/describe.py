@@ -160,7 +160,7 @@ class Words:
             case ConditionKind.RATE:
                 slope = f"{slope_per_s(self._conditions.windows.get(watch.index, ())):.4g}"
                 return f"{watch.tag} changes by {slope} {self._unit(watch)}, limit {condition.limit:g}"
-            case ConditionKind.DEVIATION:
+            case ConditionKind.DEVIATION | ConditionKind.DISCREPANCY:
                 reference = self._signals.samples.get(condition.reference)
                 if reference is None or reference.quality is Quality.BAD:
                     why = "never seen" if reference is None else str(reference.cause)

@@ -4,7 +4,9 @@ House rules: a cause only ever adds a demand; nothing but a reset by a named per
 a group (everything since no interlock was tripped) keeps the name first-out, later ones are numbered. When two trip in
 one scan, the cause whose sample was acquired earlier comes first, then the order of the rig file.
 Bad quality: by the interlock's policy; too few healthy channels trip under either policy. Restart: all start tripped.
-A voting left degraded under policy N is announced and ends in a trip after ``DEGRADED_NS``, unattended at once.
+A voting left degraded under policy N is announced and ends in a trip after ``DEGRADED_NS``, unattended at once. A
+channel that disagrees with its partners for too long is bad. A start-up override begins once after a reset, with the
+first movement, and can only end.
 """
 
 from __future__ import annotations
@@ -14,9 +16,9 @@ from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING
 
 from rigd.logic.protect.conditions import Channel, Conditions
+from rigd.logic.protect.interlock_vote import Vote, vote
 from rigd.logic.protect.latch import LatchEvent, LatchState, move
 from rigd.logic.protect.timers import NEVER_NS, QUIET, Delay
-from rigd.logic.protect.voting import Rule, rule
 from rigd.model.orders import Stop
 from rigd.model.protection import Armed, Interlock, OnBad
 
@@ -44,19 +46,29 @@ class Bypass:
 
 @dataclass(frozen=True, slots=True)
 class Running:
-    """Running state of one interlock. ``numbered`` are the causes already recorded in this group of trips."""
+    """Running state of one interlock. ``numbered`` are the causes already recorded in this group of trips.
+
+    ``discord`` is on while partners disagree; ``override_ns`` is when the start-up override ends (``NEVER_NS``: it has
+    not begun since the last reset, in the past: it is over).
+    """
 
     latch: LatchState = LatchState.TRIPPED_CLEAR
     delay: Delay = QUIET
     bypass: Bypass | None = None
     numbered: frozenset[int] = frozenset()
     degraded_ns: int = NEVER_NS
+    discord: Delay = QUIET
+    override_ns: int = NEVER_NS
+    overridden: bool = False
 
     def due_ns(self, interlock: Interlock) -> int:
         """The next time at which this state changes by itself."""
         due_ns = self.delay.due_ns(interlock.on_delay_ns, interlock.clear_delay_ns)
+        due_ns = min(due_ns, self.discord.due_ns(interlock.discord_ns, interlock.clear_delay_ns))
         if self.bypass is not None:
             due_ns = min(due_ns, self.bypass.until_ns)
+        if self.overridden:
+            due_ns = min(due_ns, self.override_ns)
         return min(due_ns, self.degraded_ns) if self.delay == QUIET else due_ns
 
 
@@ -96,43 +108,16 @@ class Interlocks:
     permit: bool = False
 
 
-@dataclass(frozen=True, slots=True)
-class Vote:
-    """What the channels of one interlock say now."""
-
-    demand: bool
-    protected: bool
-    rule: Rule
-    causes: tuple[int, ...]  # oldest first
-    bad: tuple[int, ...] = ()
-    unknown: tuple[str, ...] = ()
-
-
 def initial(program: Program, now_ns: int) -> Interlocks:
     """Start-up is a trip: every interlock needs a reset."""
     started = move(LatchState.INIT, LatchEvent.PWR).to
     return Interlocks({interlock.id: Running(started) for interlock in program.interlocks}, now_ns)
 
 
-def vote(program: Program, interlock: Interlock, conditions: Conditions, running: bool) -> Vote:
-    """Count the channels of an interlock by its voting."""
-    channels = conditions.channels
-    active, bad, unknown = [], [], []
-    for watch in program.causes[interlock.id]:
-        state = channels[watch.index]
-        if state is Channel.ACTIVE:
-            active.append(watch.index)
-        elif state is Channel.UNKNOWN:
-            unknown.append(watch.tag or watch.condition.tag)
-        elif state is not Channel.CLEAR:
-            bad.append(watch.index)
-    left = rule(interlock.votes, len(interlock.causes), len(bad), interlock.on_bad)
-    armed = running or interlock.armed is Armed.ALWAYS
-    protected = left.need is not None
-    causes = active + (bad if interlock.on_bad is OnBad.TRIP or not protected else [])
-    demand = armed and bool(causes) and (not protected or left.demands(len(active)))
-    causes.sort(key=lambda cause: conditions.since_ns.get(cause, 0))
-    return Vote(demand, protected, left, tuple(causes), tuple(bad), tuple(unknown))
+def ballot(program: Program, interlock: Interlock, conditions: Conditions, running: bool, state: Running) -> Vote:
+    """The vote of an interlock in its present state."""
+    discord, overridden = state.discord.output, state.overridden
+    return vote(program, interlock, conditions, running=running, discord=discord, overridden=overridden)
 
 
 def advance(
@@ -148,15 +133,15 @@ def advance(
     if now_ns >= interlocks.due_ns:
         names.update(i.id for i in program.interlocks if interlocks.states[i.id].due_ns(i) <= now_ns)
     if running is not interlocks.running:
-        names.update(i.id for i in program.interlocks if i.armed is Armed.RUNNING)
+        names.update(i.id for i in program.interlocks if i.armed is Armed.RUNNING or i.startup_ns)
     if not names:
         return interlocks, []
     states = dict(interlocks.states)
     changes: list[Change] = []
     for interlock in program.interlocks:
         if interlock.id in names:
-            heard = vote(program, interlock, conditions, running)
-            before = states[interlock.id]
+            before = _prepare(program, interlock, states[interlock.id], conditions, (running, now_ns), changes)
+            heard = ballot(program, interlock, conditions, running, before)
             states[interlock.id] = after = _step(program, interlock, before, heard, now_ns, changes)
             assert after.latch.permits or after.bypass is None, "a tripped interlock is never bypassed"
     changes.sort(key=lambda change: _earliest(change, conditions, now_ns))
@@ -210,6 +195,33 @@ def _step(
         return _apply(interlock, state, event, changes, causes=fresh or heard.causes or heard.bad, note=note)
     if fell:
         return replace(_apply(interlock, state, LatchEvent.CLEAR, changes), numbered=frozenset())
+    return state
+
+
+def _prepare(
+    program: Program,
+    interlock: Interlock,
+    state: Running,
+    conditions: Conditions,
+    at: tuple[bool, int],
+    changes: list[Change],
+) -> Running:
+    """What must be known before the votes are counted: do the channels agree, and does a start-up override count."""
+    running, now_ns = at
+    if interlock.witnesses:
+        witnesses = program.causes[interlock.id][len(interlock.causes) :]
+        apart = any(conditions.channels[watch.index] is Channel.ACTIVE for watch in witnesses)
+        discord = state.discord.advance(apart, now_ns, interlock.discord_ns, interlock.clear_delay_ns)
+        state = state if discord is state.discord else replace(state, discord=discord)
+    if not interlock.startup_ns:
+        return state
+    if running and state.override_ns == NEVER_NS and state.latch.permits:
+        note = f"start-up override for {interlock.startup_ns / 1e9:g} s"
+        changes.append(Change(interlock, state.latch, state.latch, LatchEvent.CLEAR, note=note))
+        return replace(state, override_ns=now_ns + interlock.startup_ns, overridden=True)
+    if state.overridden and now_ns >= state.override_ns:
+        changes.append(Change(interlock, state.latch, state.latch, LatchEvent.CLEAR, note="end of its override"))
+        return replace(state, overridden=False)
     return state
 
 
@@ -290,13 +302,13 @@ def reset(
     changes: list[Change] = []
     for interlock in chosen:
         after = _apply(interlock, states[interlock.id], LatchEvent.RESET, changes, guard=True, note=f"reset by {who}")
-        states[interlock.id] = replace(after, numbered=frozenset())
+        states[interlock.id] = replace(after, numbered=frozenset(), override_ns=NEVER_NS, overridden=False)
     return settle(program, replace(interlocks, states=states)), changes, ""
 
 
 def _reset_refusal(program: Program, interlock: Interlock, interlocks: Interlocks, conditions: Conditions) -> str:
     """Why an interlock cannot be reset now: the table, and a cause that is present but still within its delay."""
-    heard = vote(program, interlock, conditions, interlocks.running)
+    heard = ballot(program, interlock, conditions, interlocks.running, interlocks.states[interlock.id])
     rejected = move(interlocks.states[interlock.id].latch, LatchEvent.RESET, guard=True).rejected
     if heard.demand:
         rejected = "its cause is still present"
