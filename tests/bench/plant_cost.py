@@ -20,10 +20,10 @@ from fakes.sim_rigs import esterification, two_pump_rig
 from rigd.model.chemistry import Chemistry, RateLaw, Reaction, ReactionPlace, Species
 from rigd.model.orders import Action
 from rigd.model.rig import RigDefinition
-from rigd_sim.physics.bed import heat_bed
 from rigd_sim.physics.compiled import compiled
-from rigd_sim.physics.network import VOLUME, advance_pressures
+from rigd_sim.physics.network import advance_pressures
 from rigd_sim.physics.transport import MOVED, transport_step
+from rigd_sim.physics.warmth import heat_step
 from rigd_sim.plant import contents, flows, rig_plant, thermal
 from rigd_sim.plant.layout import Layout, build_layout
 from rigd_sim.plant.rig_plant import RigPlant
@@ -35,15 +35,14 @@ Call = tuple[Any, ...]
 
 
 @compiled
-def one_loop(n, passed, pending, moved, pressures, transport, heat):  # type: ignore[no-untyped-def]
-    """The floor: ``n`` seconds of pressures, transport with reactions, and heat of the bed. ``passed`` and ``pending``
-    are the rows that one step fills and the next one empties; ``moved`` is what a second moves."""
+def one_loop(n, pending, moved, pressures, transport, heat):  # type: ignore[no-untyped-def]
+    """The floor: ``n`` seconds of pressures, transport with reactions, and heat of bed and tubes. ``pending`` is the
+    row that one step fills and the next one empties; ``moved`` is what a second moves."""
     for _ in range(n):
-        passed[:] = 0.0
         advance_pressures(*pressures)
         pending[:] = moved
         transport_step(*transport)
-        heat_bed(*heat)
+        heat_step(*heat)
 
 
 def plant_figures(scale: Scale) -> Iterator[Figure]:
@@ -124,7 +123,6 @@ def with_cells(layout: Layout, cells: int) -> Layout:
 class Second:
     """What one second of the plant gave to its kernels; arrays are copies and go on living in ``run``."""
 
-    passed: Any
     pending: Any
     moved: Any
     pressures: Call
@@ -133,7 +131,7 @@ class Second:
 
     def run(self, seconds: int) -> None:
         """The floor."""
-        one_loop(seconds, self.passed, self.pending, self.moved, self.pressures, self.transport, self.heat)
+        one_loop(seconds, self.pending, self.moved, self.pressures, self.transport, self.heat)
 
 
 def recorded_second(plant: RigPlant) -> Second:
@@ -151,15 +149,14 @@ def recorded_second(plant: RigPlant) -> Second:
     with (
         patch.object(flows, "advance_pressures", noted("pressures", advance_pressures)),
         patch.object(contents, "transport_step", noted("transport", transport_step)),
-        patch.object(thermal, "heat_bed", noted("heat", heat_bed)),
+        patch.object(thermal, "heat_step", noted("heat", heat_step)),
     ):
         _advance(plant, 1)
     counts = {name: len(found) for name, found in calls.items()}
     assert counts == {"pressures": 1, "transport": 1, "heat": 1}, counts
     pressures, transport = calls["pressures"][0], calls["transport"][0]
-    passed = pressures[_place(advance_pressures, "edge")][VOLUME]
     pending = transport[_place(transport_step, "edge")][MOVED]
-    return Second(passed, pending, pending.copy(), pressures, transport, calls["heat"][0])
+    return Second(pending, pending.copy(), pressures, transport, calls["heat"][0])
 
 
 def _place(kernel: Any, argument: str) -> int:

@@ -138,3 +138,30 @@ def test_mesh_and_step_do_not_matter_for_the_profile(monkeypatch: pytest.MonkeyP
         middles.append(plant.truth()["temperature:COL"])
     assert np.ptp(middles) < 0.3
     assert isinstance(plant.rig.columns[0], Column)
+
+
+@pytest.mark.parametrize("flow", [0.2, 0.5, 2.0])
+def test_hot_outlet_cools_along_the_line(flow: float) -> None:
+    """T(L) = T_room + (T_0 - T_room) exp(-NTU), NTU = UA/(rho cp Q): 250 mm of 0.5 mm tube after the warm column.
+
+    Plug with a constant coefficient to the room (any textbook of heat transfer); UA summed here from its three films.
+    """
+    plant = hot(30.0)
+    for _ in range(2):  # the other syringe is full by now
+        plant.tell("PU-A", Action.SWAP, 0.0)
+        plant.tell("PU-A", Action.FILL, 5.0)
+        plant.advance(plant.now_ns + 60 * S_NS)
+    plant.tell("PU-A", Action.DELIVER, flow)
+    plant.advance(plant.now_ns + 120 * S_NS)
+    node_K, layout = plant.thermal.node_K - 273.15, plant.layout
+    start, end = node_K[layout.node_index["COL.out"]], node_K[layout.node_index["IR"]]
+    resistances = (
+        1.0 / (3.66 * 0.167 * math.pi),
+        math.log(1.5875 / 0.5) / (2 * math.pi * 0.25),
+        1.0 / (25.0 * math.pi * 1.5875e-3),
+    )
+    ethanol = SOLVENTS["ethanol"]
+    rho_cp = ethanol.density(295.15) * ethanol.heat_capacity_J_kg_K
+    ntu = 0.25 / sum(resistances) / (rho_cp * flow * 1e-6 / 60)
+    assert start > 35.0
+    assert end - 22.0 == pytest.approx((start - 22.0) * math.exp(-ntu), rel=1e-3, abs=1e-3)

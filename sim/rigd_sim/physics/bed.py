@@ -4,16 +4,14 @@ Place ``i`` of the bed (fixed) holds the part ``fill`` of slot ``i`` and the par
 Liquid inside beads exchanges with the liquid passing by at a linear driving force (E. Glueckauf, Trans. Faraday Soc. 51
 (1955) 1540-1551: 15 De/R^2), solved exactly over the step. Reactions on the packing run in the moving liquid at the
 temperature and activity of the place (rate constants are per litre of interstitial liquid).
-
-Heat, one temperature per place (liquid and beads in equilibrium, closed ends, upwind, implicit):
-    H dT_i/dt = rho cp Q (T_up - T_i) + conduction + g_wall (T_jacket - T_i) + g_end (T_room - T_end) + heat of reaction
+Their heat is in ``warmth``.
 """
 
 from __future__ import annotations
 
 import numpy as np
 
-from rigd_sim.physics.compiled import Floats, compiled, inner
+from rigd_sim.physics.compiled import Floats, inner
 from rigd_sim.physics.reaction import EA_OVER_R, HEAT, K_REF, ON_BED, T_REF, react
 
 TEMPERATURE, RELEASED, TURNOVER, PLACE_ROWS = 0, 1, 2, 3
@@ -90,54 +88,3 @@ def react_bed(
             if kin[r, ON_BED] != 0.0:
                 place[TURNOVER, before] += (1.0 - w) * turned
                 place[TURNOVER, after] += w * turned
-
-
-@compiled
-def heat_bed(
-    place: Floats,
-    p: int,
-    n: int,
-    dt: float,
-    capacity: float,
-    stream: float,
-    inlet: float,
-    conduction: float,
-    wall: float,
-    jacket: float,
-    ends: float,
-    room: float,
-    work: Floats,
-) -> float:
-    """Advance ``n`` bed temperatures from row ``p`` by ``dt``; return the heat that the wall gave to the bed [J].
-
-    ``capacity`` J/K, ``conduction`` W/K between neighbours, ``wall`` W/K to the jacket are per place; ``stream`` =
-    rho cp Q [W/K], negative when the liquid flows backward; ``ends`` W/K to the room at the first and last place.
-    """
-    forward = stream if stream > 0.0 else 0.0
-    backward = -stream if stream < 0.0 else 0.0
-    factor = 0.0
-    for i in range(n):
-        left = conduction if i > 0 else 0.0
-        right = conduction if i < n - 1 else 0.0
-        diagonal = capacity / dt + forward + backward + left + right + wall
-        rhs = capacity / dt * place[TEMPERATURE, p + i] + wall * jacket + place[RELEASED, p + i] / dt
-        place[RELEASED, p + i] = 0.0
-        if i == 0:
-            rhs += forward * inlet + ends * room
-            diagonal += ends
-        else:
-            rhs += factor * (left + forward) * place[TEMPERATURE, p + i - 1]
-            diagonal -= factor * (left + forward) * work[0, i - 1]
-        if i == n - 1:
-            rhs += backward * inlet + ends * room
-            diagonal += ends
-        work[0, i] = right + backward if i < n - 1 else 0.0
-        factor = 1.0 / diagonal
-        work[1, i] = factor
-        place[TEMPERATURE, p + i] = rhs
-    given = 0.0
-    for i in range(n - 1, -1, -1):
-        above = place[TEMPERATURE, p + i + 1] if i < n - 1 else 0.0
-        place[TEMPERATURE, p + i] = (place[TEMPERATURE, p + i] + work[0, i] * above) * work[1, i]
-        given += wall * (jacket - place[TEMPERATURE, p + i]) * dt
-    return given

@@ -105,8 +105,12 @@ def _flow(node: Floats, edge: Floats, link: Ints, e: int, row: int, state: int) 
 
 
 @inner
-def _accept(node: Floats, edge: Floats, link: Ints, sensor: Floats, sensor_node: Ints, h: float) -> None:
-    """Book the volumes of a step of ``h``, let sensors follow (exact on a straight line), take the new pressures."""
+def _accept(node: Floats, edge: Floats, link: Ints, sensor: Floats, sensor_node: Ints, h: float) -> float:
+    """Book the volumes of a step of ``h``, let sensors follow (exact on a straight line), take the new pressures.
+
+    Returns the largest slope [Pa/s] or lag of a reading [Pa].
+    """
+    restless = 0.0
     for e in range(edge.shape[1]):
         first = _flow(node, edge, link, e, FIRST, OPEN_FIRST)
         second = _flow(node, edge, link, e, SECOND, OPEN_SECOND)
@@ -119,11 +123,14 @@ def _accept(node: Floats, edge: Floats, link: Ints, sensor: Floats, sensor_node:
         behind = (p1 - p0) / h * lag
         keep = np.exp(-h / lag) if lag > 0.0 else 0.0
         sensor[SHOWN, s] = p1 - behind + (sensor[SHOWN, s] - p0 + behind) * keep
+        restless = max(restless, abs(sensor[SHOWN, s] - p1))
     for i in range(node.shape[1]):
         p = node[SECOND, i]
+        restless = max(restless, abs(p - node[PRESSURE, i]) / h)
         node[PRESSURE, i] = p
         if p > node[PEAK, i]:
             node[PEAK, i] = p
+    return restless
 
 
 @compiled
@@ -137,13 +144,17 @@ def advance_pressures(
     sensor: Floats,
     sensor_node: Ints,
     matrix: Floats,
-) -> float:
-    """Advance all pressures by ``h_total`` and add the volume that passed each edge to its ``VOLUME`` row.
+) -> tuple[float, float]:
+    """Advance all pressures by ``h_total`` and set the ``VOLUME`` row to the volume that passed each edge.
 
     ``PEAK`` keeps the highest pressure of each node, ``SHOWN`` the lagged readings. Returns the last internal step as a
-    first guess for the next call.
+    first guess for the next call, and how far anything is from rest: the largest change of a pressure per second in
+    the last internal step, or distance of a reading from its pressure [Pa].
     """
     n = node.shape[1]
+    restless = 0.0
+    for e in range(edge.shape[1]):
+        edge[VOLUME, e] = 0.0
     left = h_total
     h = h_start if h_start < h_total else h_total
     while left > 0.0:
@@ -174,7 +185,7 @@ def advance_pressures(
             if h < SMALLEST_STEP_S:
                 h = SMALLEST_STEP_S
             continue
-        _accept(node, edge, link, sensor, sensor_node, h)
+        restless = _accept(node, edge, link, sensor, sensor_node, h)
         left -= h
         h *= scale if scale < 4.0 else 4.0
-    return h
+    return h, restless

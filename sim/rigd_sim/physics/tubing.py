@@ -42,6 +42,23 @@ def pure_convection_step(theta: float) -> float:
     return 0.0 if theta <= 0.5 else 1.0 - 0.25 / theta**2
 
 
+OUTER_MIN = 1.5875e-3
+"""Outside diameter of common tubing, 1/16 in, up to 1 mm bore; beyond that the bore and 1.6 mm (common practice)."""
+WALL_CONDUCTIVITY_W_M_K = 0.25
+"""Fluoropolymers (common practice, no source)."""
+ROOM_COEFFICIENT_W_M2_K = 25.0
+"""Still air and radiation at a thin tube: about 15 + 6, up to 40 in a draught (common practice, no source)."""
+
+
+def loss_conductance(conductivity: float, length: float, diameter: float) -> float:
+    """U A of an unjacketed tube to the room [W/K]: laminar film (Nu = 3.66), polymer wall and air in series."""
+    outer = max(OUTER_MIN, diameter + 1.6e-3 if diameter > 1e-3 else 0.0)
+    inside = 1.0 / (3.66 * conductivity * math.pi)
+    wall = math.log(outer / diameter) / (2.0 * math.pi * WALL_CONDUCTIVITY_W_M_K)
+    outside = 1.0 / (ROOM_COEFFICIENT_W_M2_K * math.pi * outer)
+    return length / (inside + wall + outside)
+
+
 RINGS = 4
 
 

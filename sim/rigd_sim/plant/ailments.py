@@ -61,6 +61,10 @@ class Ailments:
         """Forget all faults of this kind on this target."""
         self._entries = [e for e in self._entries if (e.spec.kind, e.spec.target) != (kind, target)]
 
+    def any(self) -> bool:
+        """True when a fault was ever injected and not cleared."""
+        return bool(self._entries)
+
     def next_change(self, now_s: float) -> float:
         """Seconds until a fault begins or ends; infinity if none will."""
         times = [t - now_s for e in self._entries for t in (e.onset_s, e.end_s)]

@@ -104,6 +104,9 @@ class Bed:
         bore, length = column.bore_mm * 1e-3, column.length_mm * 1e-3
         packing = column.packing
         self.section, self.length = area(bore), length
+        self.bead_diameter = packing.bead_diameter_mm * 1e-3
+        self.per_dx = 0.0  # open section over length of a cell
+        self.dispersed_at = -1.0  # velocity of the dispersion coefficient in force
         self.empty_volume = self.section * length
         self.bead_liquid = self.empty_volume * (1.0 - packing.voidage) * packing.bead_liquid_fraction
         polymer = self.empty_volume * (1.0 - packing.voidage) * (1.0 - packing.bead_liquid_fraction)
@@ -126,11 +129,15 @@ class Contents:
         self.kinetics = Kinetics(rig)
         self.room_K = rig.simulation.ambient_degC + ZERO_CELSIUS_K
         self.gas_share = 0.0
+        self.line_K = np.full(len(layout.edges), self.room_K)
+        self.line_seen_K = np.zeros(len(layout.edges))
+        self.warmed_K = math.inf
         self.diffusivity = max((s.diffusivity_m2_s for s in rig.chemistry.species), default=DEFAULT_DIFFUSIVITY)
         self._make_edges()
         self._make_nodes(rig)
         self._make_beds()
         self._make_dispersion()
+        self._rho, self._mu = self.fluid().density(self.room_K), self.fluid().viscosity(self.room_K)
         wide = max(self.width, self.kinetics.count, int(self.cell_count.max()) + 1)
         self._scratch = (np.zeros((len(layout.nodes), self.width)), np.zeros((8, wide)))
 
@@ -184,7 +191,7 @@ class Contents:
             (self.layout.node_index[v.id], v.id, v.capacity_mL * ML_M3) for v in self.layout.vessels.values()
         ]
         starts = np.array([e.a for e in self.layout.edges])
-        self._bottles = [(i, np.flatnonzero(starts == i)) for i, _, _ in self._vessels]
+        self._bottles = [(i, np.flatnonzero(starts == i)) for i, _, _ in self._vessels if (starts == i).any()]
         for vessel in rig.vessels:
             if vessel.liquid:
                 self.node_c[self.layout.node_index[vessel.id]] = self.composition(rig, vessel.liquid)
@@ -208,6 +215,8 @@ class Contents:
             edge = self.layout.edge_index[column.id]
             cells = self.layout.edges[edge].cells
             self.beds[column.id] = Bed(column, edge, int(self.first[edge]), start, cells)
+            volume, length = self.layout.edges[edge].volume, self.layout.edges[edge].length
+            self.beds[column.id].per_dx = volume / length / (length / cells)
             start += cells
         beds = list(self.beds.values())
         self.bed = np.array([[b.kernel for b in beds], [b.start for b in beds]], dtype=np.int64)
@@ -263,19 +272,20 @@ class Contents:
 
     def disperse(self, flow: Floats) -> None:
         """Set the dispersion coefficients of the beds from the flows [m3/s] of the last step."""
-        fluid = self.fluid()
         for bed in self.beds.values():
-            rho, mu = fluid.density(self.room_K), fluid.viscosity(self.room_K)
-            edge = self.layout.edges[bed.edge]
-            superficial = abs(float(flow[bed.edge])) / bed.section
-            re = rho * superficial * bed.column.packing.bead_diameter_mm * 1e-3 / mu
-            coefficient = chung_wen(re, mu, rho) + TORTUOUS * self.diffusivity
-            self.exchange[bed.kernel] = coefficient * edge.volume / edge.length / (edge.length / edge.cells)
+            superficial = abs(flow.item(bed.edge)) / bed.section
+            if superficial != bed.dispersed_at:
+                bed.dispersed_at = superficial
+                re = self._rho / self._mu * superficial * bed.bead_diameter
+                coefficient = chung_wen(re, self._mu, self._rho) + TORTUOUS * self.diffusivity
+                self.exchange[bed.kernel] = coefficient * bed.per_dx
 
     def advance(self, dt: float) -> None:
         """Carry the pending volumes through, react and disperse over ``dt``; pending is then zero."""
         k = self.kinetics
         np.multiply(self.pending[self.owner], self.share, out=self.moved)
+        if k.in_tubes:
+            self.edge[WARMTH] = self.line_K[self.owner]
         self.gas_share = transport_step(
             dt, self.link, self.edge, self.cells, self.node, self.node_c, self.mark, self.bed, self.bed_rate,
             self.beads, self.place, self.activity, k.table, k.species, k.in_tubes, self.room_K, *self._scratch,
@@ -301,8 +311,9 @@ class Contents:
 
     def admit_air(self) -> None:
         """Let air into bottles that the pending volumes would draw below empty."""
+        held_in = self.node_volume.item
         for i, leaving in self._bottles:
-            if self.node_volume[i] > NEARLY_EMPTY_M3:
+            if held_in(i) > NEARLY_EMPTY_M3:
                 continue
             wanted = float(self.pending[leaving].sum())
             short = wanted + EMPTY_M3 - self.node_volume[i]
@@ -316,8 +327,9 @@ class Contents:
     def spill(self, capacity: dict[str, float]) -> None:
         """What does not fit into a vessel runs to the floor."""
         floor = self.layout.node_index["floor"]
+        held_in = self.node_volume.item
         for i, name, size in self._vessels:
-            excess = float(self.node_volume[i]) - capacity.get(name, size)
+            excess = held_in(i) - capacity.get(name, size)
             if excess > 0.0 and not self.endless[i]:
                 held = self.node_volume[floor]
                 self.node_c[floor] = (held * self.node_c[floor] + excess * self.node_c[i]) / (held + excess)

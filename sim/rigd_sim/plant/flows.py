@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 
 import numpy as np
@@ -17,6 +18,8 @@ from rigd_sim.plant.layout import Layout
 from rigd_sim.plant.levers import Levers
 
 SMALLEST_VELOCITY = 1e-9
+LINE_STEP_K = 0.5
+"""The viscosity in a line is found anew when its liquid is warmer or colder by this (about 1 %)."""
 
 
 @dataclass(slots=True)
@@ -64,7 +67,9 @@ class Flows:
         self.gate = np.ones(len(edges))
         self.flow = np.zeros(len(layout.edges))
         self.step = 0.05
-        self._lines_done = False
+        self._lines = [e for e, edge in enumerate(edges) if edge.kind == "line"]
+        self._stale = True
+        self.restless = 0.0
 
     def _gel(self, bed: Bed, truth: dict[str, float]) -> GelState:
         """Packed swollen (default) or dry (``truth`` "COL.packed_dry" = 1), with ``COL.headspace`` of free volume."""
@@ -87,11 +92,15 @@ class Flows:
         """Conductances of lines and beds from the liquid in them; call after each transport step."""
         contents = self.contents
         many = len(contents.solvents) > 1
-        if many or not self._lines_done:
-            self._lines_done = True
-            for e, edge in enumerate(self.layout.edges[: self.layout.passive]):
-                if edge.kind == "line":
-                    self.base[e] = 1.0 / resistance(self._viscosity(e, contents.room_K), edge.length, edge.diameter)
+        if many or contents.warmed_K > LINE_STEP_K:
+            now_K = contents.line_K
+            for e in self._lines:
+                if many or abs(now_K[e] - contents.line_seen_K[e]) > LINE_STEP_K:
+                    edge = self.layout.edges[e]
+                    mu = self._viscosity(e, float(now_K[e]))
+                    self.base[e] = 1.0 / resistance(mu, edge.length, edge.diameter)
+                    contents.line_seen_K[e] = now_K[e]
+            self._stale = True
         for bed in contents.beds.values():
             self._update_bed(bed, many)
 
@@ -105,15 +114,19 @@ class Flows:
     def _update_bed(self, bed: Bed, many: bool) -> None:
         """Recompute a bed's conductance when what it depends on has changed by more than a thousandth."""
         e = bed.edge
-        t_mean = float(self.contents.temperature[bed.start : bed.start + bed.cells].mean())
-        drop = float(self.pressure[self.ea[e]] - self.pressure[self.eb[e]]) if self.conductance[e] else 0.0
+        t_mean = self.contents.line_K.item(e)
+        drop = 0.0
+        if self.conductance.item(e):
+            drop = self.pressure.item(self.ea.item(e)) - self.pressure.item(self.eb.item(e))
         gel = self.gels[bed.column.id]
-        state = (t_mean, gel.ratio, float(self.flow[e]), drop)
-        if not many and all(abs(new - old) <= 1e-3 * scale for new, old, scale in zip(
-            state, gel.seen, (30.0, 1.0, 1e-8, 1e5), strict=True
-        )):  # fmt: skip
+        flow = self.flow.item(e)
+        state = (t_mean, gel.ratio, flow, drop)
+        old = gel.seen
+        same = abs(t_mean - old[0]) <= 0.03 and abs(gel.ratio - old[1]) <= 1e-3 and abs(flow - old[2]) <= 1e-11
+        if same and not many and abs(drop - old[3]) <= 100.0:
             return
         gel.seen = state
+        self._stale = True
         packing = bed.column.packing
         mu, rho = self._viscosity(e, t_mean), self.contents.fluid().density(t_mean)
         shape = settled(
@@ -143,6 +156,7 @@ class Flows:
 
     def apply(self, levers: Levers) -> None:
         """Combine geometry, valve gates and faults into the conductances of the next step."""
+        self._stale, self.restless = False, math.inf
         np.multiply(self.base, self.gate, out=self.conductance)
         for e, factor in levers.flow_factor.items():
             if e < self.layout.passive:
@@ -150,6 +164,11 @@ class Flows:
         for e, conductance in levers.conductance.items():
             self.conductance[e] = conductance
         self._gas_compliance()
+
+    def reapply(self, levers: Levers) -> None:
+        """The same, if there is any liquid property or gas that may have changed."""
+        if self._stale or self.contents.gas_share > 0.0:
+            self.apply(levers)
 
     def _gas_compliance(self) -> None:
         """Gas adds V/P to the compliance of the node where it is, or of the nodes at the ends of its edge."""
@@ -163,8 +182,7 @@ class Flows:
 
     def advance(self, h: float) -> None:
         """Move the pressures on by ``h`` seconds with the present sources; volumes are added up for the transport."""
-        self.volume[:] = 0.0
-        self.step = advance_pressures(
+        self.step, self.restless = advance_pressures(
             h, self.step, self.node, self.edge, self.link, self.ground, self.sensor, self.sensor_node, self._matrix
         )
         passive = self.layout.passive

@@ -55,13 +55,12 @@ class Sensor:
     frozen_code: int | None = None
 
     def advance(self, dt: float) -> None:
-        """First-order lag towards the truth (slots of the pressure solver look after themselves)."""
-        if self.slot < 0:
-            now = self.truth()
-            if math.isnan(self.shown) or self.tag.lag_s <= 0.0:
-                self.shown = now
-            else:
-                self.shown = now + (self.shown - now) * math.exp(-dt / self.tag.lag_s)
+        """First-order lag towards the truth (not for a slot of the pressure solver, which lags by itself)."""
+        now = self.truth()
+        if math.isnan(self.shown) or self.tag.lag_s <= 0.0:
+            self.shown = now
+        else:
+            self.shown = now + (self.shown - now) * math.exp(-dt / self.tag.lag_s)
 
     def read(self, value: float, noise: Noise, lever: SensorLever, room: float) -> Reading:
         """Convert a lagged value to what the module reports."""
@@ -103,14 +102,17 @@ class Instruments:
         self.noise = Noise(seed)
         self.by_device: dict[str, dict[str, Sensor]] = {}
         self.by_tag: dict[str, Sensor] = {}
+        self._lagging: list[Sensor] = []
         self._rig = rig
 
     def add(self, sensor: Sensor) -> None:
         """Put a sensor on its device's channel."""
         self.by_device.setdefault(sensor.tag.device, {})[sensor.tag.channel] = sensor
         self.by_tag[sensor.tag.id] = sensor
+        if sensor.slot < 0:
+            self._lagging.append(sensor)
 
     def advance(self, dt: float) -> None:
         """Let all lags run."""
-        for sensor in self.by_tag.values():
+        for sensor in self._lagging:
             sensor.advance(dt)

@@ -53,7 +53,11 @@ def _temperature(plant: RigPlant, at: str) -> Truth:
         return lambda: float(contents.temperature[bed.start + offset]) - ZERO_CELSIUS_K
     if part in plant.baths:
         return lambda: plant.baths[part].bath_K - ZERO_CELSIUS_K
-    return lambda: contents.room_K - ZERO_CELSIUS_K
+    try:
+        node = plant.layout.point(at)
+    except KeyError:  # not on the way of the liquid: the room
+        return lambda: contents.room_K - ZERO_CELSIUS_K
+    return lambda: float(plant.thermal.node_K[node]) - ZERO_CELSIUS_K
 
 
 def _flow(plant: RigPlant, at: str) -> Truth:

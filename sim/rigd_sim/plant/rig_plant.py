@@ -1,9 +1,10 @@
 """The simulated rig: one object behind the port ``rigd.ports.plant.Plant``.
 
-Time is integer nanoseconds and moves only by ``advance``. Pressures are integrated in every call; liquid, reaction
-and heat are
-carried on in steps of at most one second, cut where a valve, a syringe or a fault changes something, never by the
-caller's dt.
+Time is integer nanoseconds and moves only by ``advance``. Liquid, reaction and heat are carried on in steps of at most
+one second, cut where a valve, a syringe or a fault changes something, never by the caller's dt. Pressures are
+integrated whenever the caller may look at them, except in calm: when no pressure changes by more than ``CALM_PA`` in a
+second and nothing is ordered, they stand still until the next step of the liquid, which then integrates the whole
+interval.
 """
 
 from __future__ import annotations
@@ -35,6 +36,8 @@ NS = 1_000_000_000
 CHEMISTRY_NS = NS
 FAR_S = 1e6
 SMALL_GAS_M3 = 1e-9
+CALM_PA = 20.0
+"""How far a reading may be behind its pressure in calm: 0.2 mbar, a hundredth of what such a sensor's noise is."""
 
 _PUMP, _VALVE, _BATH, _CELL = PumpLever(), ValveLever(), BathLever(), CellLever()
 
@@ -60,7 +63,7 @@ class RigPlant:
         self._units = {d.id: d.unit for d in rig.devices}
         self._device_of = {d.unit: d.id for d in rig.devices if d.unit}
         self._chemistry_ns = min([CHEMISTRY_NS, *(c.period_ns for c in rig.cells)])
-        self._carried_ns = 0
+        self._carried_ns = self._solved_ns = self._calm_ns = 0
         self._headspace: dict[str, float] = {}
         self.initial = self.contents.totals()
         self._refresh_levers()
@@ -71,21 +74,44 @@ class RigPlant:
         """Move the physics to ``to_ns``; ``ValueError`` for a time in the past."""
         if to_ns < self.now_ns:
             raise ValueError(f"the plant is at {self.now_ns} ns and cannot go back to {to_ns} ns")
-        while self.now_ns < to_ns:
+        if to_ns < self._calm_ns:
+            self.now_ns = to_ns
+            return
+        while self._solved_ns < to_ns:
             grid = (self._carried_ns // self._chemistry_ns + 1) * self._chemistry_ns
-            step = max(1, min(to_ns, grid, self._next_event_ns()) - self.now_ns)
-            self._hydraulics(step / NS)
-            self.now_ns += step
+            if to_ns < grid and self._is_calm():
+                self._calm_ns = min(grid, self._next_event_ns())
+                if to_ns < self._calm_ns:
+                    self.now_ns = to_ns
+                    return
+            self._solve(min(to_ns, grid, self._next_event_ns()))
             self._events()
             if self.now_ns >= grid:
                 self._chemistry()
 
+    def _solve(self, to_ns: int) -> None:
+        """Integrate the pressures to this time, or by a nanosecond if it is past."""
+        step = max(1, to_ns - self._solved_ns)
+        self._hydraulics(step / NS)
+        self._solved_ns += step
+        self.now_ns = max(self.now_ns, self._solved_ns)
+
+    def _is_calm(self) -> bool:
+        """True when pressures stand still and will go on to do so until something is ordered or happens."""
+        if self.flows.restless > CALM_PA or self.levers.air:
+            return False
+        levers = self.levers.pumps
+        return all(
+            not pump.moving or (pump.slack <= 0.0 and levers.get(name, _PUMP).ripple == 0.0)
+            for name, pump in self.pumps.items()
+        )
+
     def _next_event_ns(self) -> int:
         """When a pump, a valve or a fault changes by itself."""
-        now = self.now_ns
-        nearest = self.ailments.next_change(now / NS)
+        now = self._solved_ns
+        nearest = self.ailments.next_change(now / NS) if self.ailments.any() else FAR_S
         for pump in self.pumps.values():
-            if pump.moving or pump.filling >= 0:
+            if pump.filling >= 0 or pump.moving:
                 nearest = min(nearest, pump.next_event())
         event = now + math.ceil(nearest * NS) if nearest < FAR_S else NEVER_NS
         for valve in self.valves.values():
@@ -121,9 +147,9 @@ class RigPlant:
 
     def _push(self, syringe: SyringeEdges, volume: float, h: float) -> None:
         """Deliver to the outlet, never more than the syringe truly holds."""
-        pending = self.contents.pending
-        held = self.contents.node_volume[syringe.node] + pending[syringe.draw] - pending[syringe.deliver]
-        volume = min(volume, float(held))
+        pending = self.contents.pending.item
+        held = self.contents.node_volume.item(syringe.node) + pending(syringe.draw) - pending(syringe.deliver)
+        volume = min(volume, held)
         self.flows.add(syringe.deliver, volume, h)
         self.flows.source[self.flows.rank[self.layout.edges[syringe.deliver].b]] += volume / h
 
@@ -134,7 +160,8 @@ class RigPlant:
                 node = self.flows.rank[self.layout.node_index[f"{name}.out"]]
                 lever = self.levers.pumps.get(name, _PUMP)
                 before = pump.active
-                pump.settle(float(self.flows.pressure[node]), lever)
+                if pump.settle(self.flows.pressure.item(node), lever):
+                    self.flows.restless = math.inf
                 if pump.active != before:
                     self._carry()
         moving = [v for v in self.valves.values() if v.position != v.target]
@@ -143,7 +170,7 @@ class RigPlant:
             for valve in moving:
                 valve.settle(self.now_ns)
             self._regate()
-        if self.ailments.next_change(self.now_ns / NS - 2e-9) <= 3e-9:
+        if self.ailments.any() and self.ailments.next_change(self.now_ns / NS - 2e-9) <= 3e-9:
             self._carry()
             self._refresh_levers()
 
@@ -155,6 +182,9 @@ class RigPlant:
 
     def _carry(self) -> None:
         """Carry pending volumes, reactions and heat to the present time."""
+        self._calm_ns = 0
+        if self._solved_ns < self.now_ns:
+            self._solve(self.now_ns)
         dt = (self.now_ns - self._carried_ns) / NS
         if dt <= 0.0:
             return
@@ -183,7 +213,7 @@ class RigPlant:
         if self.ailments.active(self.now_ns / NS):
             self._refresh_levers()
         else:
-            self.flows.apply(self.levers)
+            self.flows.reapply(self.levers)
 
     def _close_flasks(self) -> None:
         """Headspace gas of closed vessels (isothermal ideal gas): p V stays what it was when they were closed."""
@@ -249,6 +279,7 @@ class RigPlant:
             return "no answer"
         if unit in self.pumps:
             self._carry()
+            self.flows.restless = math.inf
             return self.pumps[unit].tell(action, value, self.levers.pumps.get(unit, _PUMP))
         if unit in self.valves and action is Action.MOVE:
             self._carry()
@@ -265,6 +296,8 @@ class RigPlant:
             return [Reading(c, math.nan, fault="no answer") for c in channels]
         unit = self._units.get(device, "")
         if unit in self.pumps:
+            if self._solved_ns < self.now_ns:  # a counter is exact, in calm too
+                self._solve(self.now_ns)
             return [Reading(c, self._pump_channel(unit, c)) for c in channels]
         if unit in self.valves:
             lever = self.levers.valves.get(unit, _VALVE)

@@ -1,4 +1,4 @@
-"""Heat of the rig: baths, jackets, beds; and the book that shows where every joule went."""
+"""Heat of the rig: baths, jackets, beds, tubes; and the book that shows where every joule went."""
 
 from __future__ import annotations
 
@@ -7,7 +7,25 @@ from dataclasses import dataclass
 import numpy as np
 
 from rigd.model.rig import RigDefinition
-from rigd_sim.physics.bed import heat_bed
+from rigd_sim.physics.tubing import loss_conductance
+from rigd_sim.physics.warmth import (
+    CAPACITY,
+    CONDUCTION,
+    END,
+    EXTRA,
+    GIVEN,
+    HEAT_ROWS,
+    INLET,
+    JACKET,
+    LINE_ROWS,
+    LOST,
+    MEAN,
+    MIDDLE,
+    SEEN,
+    TRANSFER,
+    WALL,
+    heat_step,
+)
 from rigd_sim.plant.bath_unit import JACKET_M3, RHO_CP_J_M3_K, BathUnit
 from rigd_sim.plant.contents import Bed, Contents
 from rigd_sim.plant.levers import BathLever, Levers
@@ -28,7 +46,12 @@ class HeatBook:
 
 
 class Thermal:
-    """Temperatures of beds and baths, moved on after each transport step."""
+    """Temperatures of beds, tubes and baths, moved on after each transport step.
+
+    ``node_K`` is the temperature of every node of the layout, ``contents.line_K`` the mean one of every edge. Heat
+    capacity per volume is that of the solvent at the declared room temperature, everywhere and always, so that no
+    energy is made.
+    """
 
     def __init__(self, rig: RigDefinition, contents: Contents, baths: dict[str, BathUnit]) -> None:
         self.contents, self.baths = contents, baths
@@ -37,7 +60,35 @@ class Thermal:
             baths[chiller].jackets[column] = contents.room_K
         self.book = HeatBook()
         self._reference_K = contents.room_K
-        self._work = np.empty((2, max([b.cells for b in contents.beds.values()], default=1)))
+        fluid = contents.fluid()
+        self.rho_cp = fluid.density(contents.room_K) * fluid.heat_capacity_J_kg_K
+        self._make_tables(fluid.conductivity_W_m_K)
+
+    def _make_tables(self, conductivity: float) -> None:
+        layout, room = self.contents.layout, self.contents.room_K
+        self._beds = list(self.contents.beds.values())
+        self._ends = np.array([[e.a for e in layout.edges], [e.b for e in layout.edges]], dtype=np.int64)
+        self._line = np.zeros((LINE_ROWS, len(layout.edges)))
+        self._line[INLET:SEEN] = room
+        self.contents.line_K, self.contents.line_seen_K = self._line[MIDDLE], self._line[SEEN]
+        for e, edge in enumerate(layout.edges):
+            if edge.kind == "line":
+                self._line[TRANSFER, e] = loss_conductance(conductivity, edge.length, edge.diameter)
+            elif edge.kind == "column":
+                self._line[TRANSFER, e] = -1.0
+        self.node_K = np.full(len(layout.nodes), room)
+        self._sums = np.zeros((2, len(layout.nodes)))
+        self._stretch = np.array(
+            [[b.edge for b in self._beds], [b.start for b in self._beds], [b.cells for b in self._beds]], dtype=np.int64
+        ).reshape(3, len(self._beds))
+        self._heat = np.zeros((HEAT_ROWS, len(self._beds)))
+        for b, bed in enumerate(self._beds):
+            self._heat[CAPACITY, b] = self.capacity(bed)
+            self._heat[CONDUCTION, b] = BED_CONDUCTIVITY_W_M_K * bed.section / (bed.length / bed.cells)
+            self._heat[WALL, b] = bed.column.wall_conductance_W_K / bed.cells
+            self._heat[END, b] = END_LOSS_W_K
+            self._heat[MEAN, b] = room
+        self._work = np.empty((2, max([b.cells for b in self._beds], default=1)))
 
     def jacket(self, column: str) -> float:
         """Jacket temperature of a column [K]; the room's if it has none."""
@@ -46,43 +97,29 @@ class Thermal:
 
     def capacity(self, bed: Bed) -> float:
         """Heat capacity of one place [J/K]: liquid between and inside the beads, polymer, inner wall."""
-        fluid = self.contents.fluid()
         liquid = self.contents.layout.edges[bed.edge].volume + bed.bead_liquid
-        rho_cp = fluid.density(self.contents.room_K) * fluid.heat_capacity_J_kg_K
-        return (liquid * rho_cp + bed.solid_J_K) / bed.cells
+        return (liquid * self.rho_cp + bed.solid_J_K) / bed.cells
 
     def advance(self, dt: float, flow_m3_s: np.ndarray, levers: Levers) -> None:
-        """Move beds, jackets and baths on by ``dt``."""
-        room = self.contents.room_K
+        """Move beds, jackets and baths on by ``dt``; tubes follow at once."""
+        room, heat = self.contents.room_K, self._heat
+        for b, bed in enumerate(self._beds):
+            heat[JACKET, b] = self.jacket(bed.column.id)
+            heat[EXTRA, b] = levers.exotherm_W.get(bed.column.id, 0.0)
+        self.contents.warmed_K = heat_step(
+            dt, self.rho_cp, room, flow_m3_s, self._ends, self._line, self.node_K, self._stretch, heat,
+            self.contents.place, self._work, self._sums,
+        )  # fmt: skip
         taken: dict[str, float] = {}
-        for bed in self.contents.beds.values():
-            taken[bed.column.id] = self._bed(bed, dt, float(flow_m3_s[bed.edge]), room, levers)
+        book = self.book
+        for b, bed in enumerate(self._beds):
+            given, reacted, stream, lost = heat[GIVEN : LOST + 1, b].tolist()
+            taken[bed.column.id] = given
+            book.reaction += reacted
+            book.stream += stream
+            book.room += lost + (0.0 if bed.column.id in self.jacket_of else given)
         for name, bath in self.baths.items():
             bath.advance(dt, taken, levers.baths.get(name, HEALTHY), room)
-
-    def _bed(self, bed: Bed, dt: float, flow: float, room: float, levers: Levers) -> float:
-        contents = self.contents
-        rows = slice(bed.start, bed.start + bed.cells)
-        released = contents.released[rows]
-        extra = levers.exotherm_W.get(bed.column.id, 0.0)
-        if extra:
-            released += extra * dt / bed.cells
-        self.book.reaction += float(released.sum())
-        fluid = contents.fluid()
-        stream = fluid.density(room) * fluid.heat_capacity_J_kg_K * flow
-        t = contents.temperature[rows]
-        wall = bed.column.wall_conductance_W_K / bed.cells
-        axial = BED_CONDUCTIVITY_W_M_K * bed.section / (bed.length / bed.cells)
-        given = heat_bed(
-            contents.place, bed.start, bed.cells, dt, self.capacity(bed), stream, room, axial, wall,
-            self.jacket(bed.column.id), END_LOSS_W_K, room, self._work,
-        )  # fmt: skip
-        outlet = t[-1] if stream >= 0.0 else t[0]
-        self.book.stream += abs(stream) * (room - float(outlet)) * dt
-        self.book.room += END_LOSS_W_K * (2.0 * room - float(t[0]) - float(t[-1])) * dt
-        if bed.column.id not in self.jacket_of:
-            self.book.room += given
-        return given
 
     def stored(self) -> float:
         """Heat held by beds, jackets and baths above the room temperature of the start [J]."""
