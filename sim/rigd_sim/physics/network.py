@@ -16,7 +16,7 @@ from __future__ import annotations
 
 import numpy as np
 
-from rigd_sim.physics.compiled import Floats, Ints, compiled, inner
+from rigd_sim.physics.compiled import Floats, IntRow, Ints, compiled, inner
 
 PRESSURE, COMPLIANCE, SOURCE, PEAK, CAPACITY, BASE, FIRST, SECOND, NODE_ROWS = 0, 1, 2, 3, 4, 5, 6, 7, 8
 CONDUCTANCE, CRACK, VOLUME, EDGE_ROWS = 0, 1, 2, 3
@@ -30,7 +30,7 @@ SMALLEST_STEP_S = 1e-4
 
 
 @inner
-def _assemble(matrix: Floats, node: Floats, edge: Floats, link: Ints, ground: Ints, state: int, out: int) -> None:
+def _assemble(matrix: Floats, node: Floats, edge: Floats, link: Ints, ground: IntRow, state: int, out: int) -> None:
     """Fill the stage matrix C/(gamma h) + L and the right side in row ``out``; a ground node keeps its pressure."""
     nodes = ground.shape[0]
     for i in range(nodes):
@@ -79,7 +79,7 @@ def _solve(matrix: Floats, node: Floats, out: int) -> None:
 
 
 @inner
-def _stage(matrix: Floats, node: Floats, edge: Floats, link: Ints, ground: Ints, state: int, out: int) -> None:
+def _stage(matrix: Floats, node: Floats, edge: Floats, link: Ints, ground: IntRow, state: int, out: int) -> None:
     """One implicit stage; valves that open or shut by pressure are iterated until their state fits the answer."""
     for _ in range(6):
         _assemble(matrix, node, edge, link, ground, state, out)
@@ -105,7 +105,7 @@ def _flow(node: Floats, edge: Floats, link: Ints, e: int, row: int, state: int) 
 
 
 @inner
-def _accept(node: Floats, edge: Floats, link: Ints, sensor: Floats, sensor_node: Ints, h: float) -> float:
+def _accept(node: Floats, edge: Floats, link: Ints, sensor: Floats, sensor_node: IntRow, h: float) -> float:
     """Book the volumes of a step of ``h``, let sensors follow (exact on a straight line), take the new pressures.
 
     Returns the largest slope [Pa/s] or lag of a reading [Pa].
@@ -140,9 +140,9 @@ def advance_pressures(
     node: Floats,
     edge: Floats,
     link: Ints,
-    ground: Ints,
+    ground: IntRow,
     sensor: Floats,
-    sensor_node: Ints,
+    sensor_node: IntRow,
     matrix: Floats,
 ) -> tuple[float, float]:
     """Advance all pressures by ``h_total`` and set the ``VOLUME`` row to the volume that passed each edge.

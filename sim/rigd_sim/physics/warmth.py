@@ -14,7 +14,7 @@ from __future__ import annotations
 import numpy as np
 
 from rigd_sim.physics.bed import RELEASED, TEMPERATURE
-from rigd_sim.physics.compiled import Floats, Ints, compiled, inner
+from rigd_sim.physics.compiled import Floats, Ints, Row, compiled, inner
 
 EDGE, PLACE, CELLS, STRETCH_ROWS = 0, 1, 2, 3
 """Rows of ``stretch`` (integers), one column per bed: its edge in ``ends``, its first row of ``place``, its cells."""
@@ -76,9 +76,7 @@ def _heat_bed(
 
 
 @inner
-def _warm_lines(
-    rho_cp: float, room: float, flow: Floats, ends: Ints, line: Floats, node_t: Floats, sums: Floats
-) -> float:
+def _warm_lines(rho_cp: float, room: float, flow: Row, ends: Ints, line: Floats, node_t: Row, sums: Floats) -> float:
     """Temperatures of tubes and nodes from those of the beds, sweep by sweep along the flow."""
     for _ in range(SWEEPS):
         worst = 0.0
@@ -114,10 +112,10 @@ def heat_step(
     dt: float,
     rho_cp: float,
     room: float,
-    flow: Floats,
+    flow: Row,
     ends: Ints,
     line: Floats,
-    node_t: Floats,
+    node_t: Row,
     stretch: Ints,
     heat: Floats,
     place: Floats,
