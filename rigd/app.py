@@ -198,7 +198,7 @@ async def _live(live: Live, plan: dict[str, Any], clock: PacedClock, journal: Sq
     door = DoorServer(
         Path(plan["door"]),
         live.submit,
-        lambda: {"run": run, "utc": clock.utc(), **live.loop.snapshot()},
+        lambda: {"run": run, "utc": clock.utc(), "record": journal.head(), **live.loop.snapshot()},
         clock.now_ns,
     )
     await door.open()

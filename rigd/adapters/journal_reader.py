@@ -65,7 +65,7 @@ class JournalReader:
         if not first.is_file():
             raise JournalError(f"there is no journal {first}")
         self.path = first
-        self._segments = [_open(segment) for segment in _segments(first)]
+        self._segments = [open_segment(segment) for segment in segments(first)]
         try:
             self.meta = self._meta()
             self.tags = {row[1]: _tag_info(row) for row in self._rows("SELECT * FROM tags ORDER BY id")}
@@ -146,6 +146,15 @@ class JournalReader:
         """All raw spectra in order."""
         for row in self._rows("SELECT * FROM spectra ORDER BY rowid"):
             yield schema.spectrum_of(*row)
+
+    def head(self) -> str:
+        """Number and hash of the last record of the chain as "n hash"; "" for a journal without one."""
+        last = ""
+        for segment in self._segments:
+            if segment.execute("SELECT 1 FROM sqlite_master WHERE name = 'audit'").fetchone():
+                row = segment.execute("SELECT seq, hash FROM audit ORDER BY seq DESC LIMIT 1").fetchone()
+                last = f"{row[0]} {row[1]}" if row else last
+        return last
 
     def clock(self) -> list[tuple[int, str]]:
         """(process time [ns], UTC) of every scan."""
@@ -269,12 +278,13 @@ def rowid_after(connection: sqlite3.Connection, table: str, column: str, value: 
     return int(low)
 
 
-def _segments(first: Path) -> list[Path]:
+def segments(first: Path) -> list[Path]:
+    """The files of a journal in order."""
     later = sorted(first.parent.glob(f"{first.stem}.*{first.suffix}"), key=lambda path: (len(path.name), path.name))
     return [first, *later]
 
 
-def _open(path: Path) -> sqlite3.Connection:
+def open_segment(path: Path) -> sqlite3.Connection:
     """Read-only; when the folder cannot be written either (an archive), without the write-ahead log's side files."""
     failure: sqlite3.Error | None = None
     for query in ("mode=ro", "immutable=1"):

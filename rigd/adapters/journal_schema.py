@@ -2,9 +2,10 @@
 
 A run is ``run.sqlite`` in the run folder, or several segments (``run.2.sqlite`` ...) when the disk failed in between.
 Process time is monotonic from the start of the run; each scan also holds the wall time in UTC; ``meta`` holds the
-origin on the computer's own monotonic clock. NaN is stored as NULL (SQLite does so itself). Rows stand in the order
-of arrival. The table ``minutes`` and the views ``readings`` and ``overview`` are for reading; a replay needs none of
-them, and journals of version 1 from before they came lack them.
+origin on the computer's own monotonic clock. NaN is stored as NULL. Rows stand in the order
+of arrival. The table ``audit`` is the chain of hashes over the others (``rigd.adapters.journal_chain``). The table
+``minutes`` and the views ``readings`` and ``overview`` are for reading and not part of the chain. A replay needs none
+of these, and journals of version 1 from before they came lack them.
 """
 
 from __future__ import annotations
@@ -39,6 +40,7 @@ CREATE TABLE IF NOT EXISTS spectra (source TEXT NOT NULL, t_ns INTEGER NOT NULL,
     step_per_cm REAL NOT NULL, absorbance BLOB NOT NULL) STRICT;
 CREATE TABLE IF NOT EXISTS bytes (link TEXT NOT NULL, t_ns INTEGER NOT NULL, sent INTEGER NOT NULL,
     data BLOB NOT NULL) STRICT;
+CREATE TABLE IF NOT EXISTS audit (seq INTEGER PRIMARY KEY, body TEXT NOT NULL, hash TEXT NOT NULL) STRICT;
 CREATE TABLE IF NOT EXISTS minutes (tag INTEGER NOT NULL, minute INTEGER NOT NULL, number INTEGER NOT NULL, low REAL,
     high REAL, mean REAL, worst INTEGER NOT NULL, PRIMARY KEY (tag, minute)) STRICT, WITHOUT ROWID;
 CREATE VIEW IF NOT EXISTS readings AS SELECT samples.t_ns / 1e9 AS t_s, tags.tag AS tag, samples.value AS value,
@@ -62,6 +64,7 @@ INSERT_ORDER = "INSERT INTO orders VALUES (?, ?, ?, ?, ?, ?, ?, ?)"
 INSERT_EVENT = "INSERT INTO events VALUES (?, ?, ?, ?, ?, ?)"
 INSERT_SPECTRUM = "INSERT INTO spectra VALUES (?, ?, ?, ?, ?)"
 INSERT_BYTES = "INSERT INTO bytes VALUES (?, ?, ?, ?)"
+INSERT_AUDIT = "INSERT INTO audit VALUES (?, ?, ?)"
 
 Row = tuple[Any, ...]
 
@@ -81,7 +84,15 @@ def sample_rows(scan: int, tag_ids: Mapping[str, int], samples: Sequence[Sample]
     """The rows of ``samples`` of one scan; ``tag_ids`` are those of the file."""
     cause_number = _CAUSE_NUMBER
     return [
-        (scan, tag_ids[one.tag], one.t_ns, one.value, int(one.quality), cause_number[one.cause], one.raw)
+        (
+            scan,
+            tag_ids[one.tag],
+            one.t_ns,
+            value if (value := one.value) == value else None,
+            int(one.quality),
+            cause_number[one.cause],
+            one.raw,
+        )
         for one in samples
     ]
 

@@ -21,6 +21,7 @@ from queue import Empty, SimpleQueue
 from typing import Any
 
 from rigd.adapters import journal_schema as schema
+from rigd.adapters.journal_chain import Chain
 from rigd.adapters.journal_minutes import add_up
 from rigd.model.errors import JournalError
 from rigd.model.events import Event
@@ -65,6 +66,7 @@ class SqliteJournal:
         self._trouble = ""
         self._lost = 0
         self._segment = 1
+        self._chain = Chain(self._meta)
         self._writer = _Writer(self)
         try:
             self._connection = self.open_segment(path)
@@ -106,6 +108,10 @@ class SqliteJournal:
         """True while so much waits that whoever can wait should."""
         return self._queue.qsize() > LATE // 2 and self._thread.is_alive() and not self._trouble
 
+    def head(self) -> tuple[int, str]:
+        """Number and hash of the last record of the chain that is in the file."""
+        return self._chain.head
+
     def close(self, outcome: str) -> None:
         """Write what is queued and the outcome, end the file; waits up to 10 s, then gives up with ``JournalError``."""
         if self._lost:
@@ -121,9 +127,12 @@ class SqliteJournal:
         connection = self._connect(path)
         connection.executescript(schema.TABLES)
         connection.execute("BEGIN")
-        connection.executemany(schema.INSERT_META, [*self._meta.items(), ("segment", str(self._segment))])
+        meta = [*self._meta.items(), ("segment", str(self._segment))]
+        connection.executemany(schema.INSERT_META, meta)
         connection.executemany(schema.INSERT_TAG, self._tag_rows)
+        connection.executemany(schema.INSERT_AUDIT, self._chain.begin(self._segment, meta, self._tag_rows))
         connection.execute("COMMIT")
+        self._chain.keep()
         return connection
 
     def _put(self, entry: Entry) -> None:
@@ -197,9 +206,11 @@ class _Writer:
         connection.execute("BEGIN IMMEDIATE")
         for statement, values in rows:
             connection.executemany(statement, values)
+        connection.executemany(schema.INSERT_AUDIT, self._of._chain.extend(rows))
         count = now_s - self._counted_s >= COUNT_S
         counted_to = add_up(connection, self._counted_to) if count else self._counted_to
         connection.execute("COMMIT")
+        self._of._chain.keep()
         if force:
             self._forced_s = now_s
         if count:
@@ -217,13 +228,14 @@ class _Writer:
             journal._connection.close()
         except sqlite3.Error:
             pass  # a broken connection may refuse even this; it is replaced below
-        path = journal._path.with_name(f"{journal._path.stem}.{journal._segment + 1}{journal._path.suffix}")
+        journal._segment += 1
+        path = journal._path.with_name(f"{journal._path.stem}.{journal._segment}{journal._path.suffix}")
         try:
             journal._connection = journal.open_segment(path)
         except sqlite3.Error as again:
+            journal._segment -= 1
             journal._trouble = f"no new segment of {journal._path.name} can be begun: {again}"
         else:
-            journal._segment += 1
             self._counted_to = 0
 
     def _rows(self, entries: list[Entry]) -> tuple[list[tuple[str, list[schema.Row]]], bool]:
@@ -266,4 +278,4 @@ class _Writer:
 
 def _tag_row(number: int, tag: Tag) -> schema.Row:
     labels = schema.compact(list(tag.labels))
-    return (number, tag.id, tag.title, tag.kind.value, tag.measures, tag.unit, tag.low, tag.high, labels)
+    return (number, tag.id, tag.title, tag.kind.value, tag.measures, tag.unit, float(tag.low), float(tag.high), labels)

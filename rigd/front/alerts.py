@@ -1,7 +1,8 @@
 """Which events become alerts, and in what words. Pure.
 
 An alert says what happened, the value and the limit, what the rig did and what the person should do; it names the rig
-and the run, and says so when the rig is simulated. A sleeping person is woken by priority 1 and 2 only (advice of
+and the run, and says so when the rig is simulated. It carries the head of the journal's chain of hashes, so that a
+record that is written anew afterwards can be told. A sleeping person is woken by priority 1 and 2 only (advice of
 ANSI/ISA-18.2 on few, meaningful priorities; the wording is ours).
 """
 
@@ -72,6 +73,8 @@ def _body(event: Mapping[str, Any]) -> str:
         lines.append(f"You should: {fields['do']}")
     if event.get("utc"):
         lines.append(f"At {event['utc']}.")
+    if record := event.get("record"):
+        lines.append(f"Record {record[0]}: {record[1]}")
     return "\n".join(dict.fromkeys(line for line in lines if line))
 
 

@@ -55,6 +55,7 @@ class Front:
         self._letters: list[tuple[Sender, Outbox[_Letter]]] = [(sender, Outbox()) for sender in senders]
         self._simulated = False
         self._run_id = ""
+        self._record: object = None
         self._next_snapshot_s = 0.0
         self._last_event = 0
 
@@ -91,6 +92,7 @@ class Front:
     def _snapshot(self, message: Mapping[str, Any]) -> None:
         run = message.get("run", {})
         self._simulated, self._run_id = bool(run.get("simulated")), str(run.get("id", ""))
+        self._record = message.get("record")
         now_s = asyncio.get_running_loop().time()
         if self._topics and now_s >= self._next_snapshot_s:
             self._next_snapshot_s = now_s + SNAPSHOT_PERIOD_S
@@ -98,7 +100,8 @@ class Front:
                 self._publications.put(publication)
 
     def _event(self, message: Mapping[str, Any]) -> None:
-        event = {"run": self._run_id, **{key: value for key, value in message.items() if key != "say"}}
+        told = {key: value for key, value in message.items() if key != "say"}
+        event = {"run": self._run_id, "record": self._record, **told}
         self._last_event = int(event["n"])
         alert = alert_of(event, self._rig, self._simulated)
         if self._topics:

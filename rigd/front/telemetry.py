@@ -3,7 +3,7 @@
 All topics start with ``<prefix>/<rig name>/``:
 
 - ``status``     "online" or "offline" (retained; "offline" is also the last will, "finished" a clean end)
-- ``state``      run state, stop in force, phase, progress (retained JSON with time and a rising number)
+- ``state``      run state, stop in force, phase, progress, head of the record (retained JSON with time and number)
 - ``alarms``     the list of standing alarms and tripped interlocks (retained JSON)
 - ``value/<tag>``  value, quality, unit (JSON, not retained)
 - ``event``      each event (JSON)
@@ -42,7 +42,7 @@ class Topics:
 
     def of_snapshot(self, snapshot: Mapping[str, Any]) -> Iterator[Publication]:
         """State and alarms (retained) and one message per value."""
-        keys = ("run", "t_s", "utc", "state", "stop", "phase", "campaign", "n")
+        keys = ("run", "record", "t_s", "utc", "state", "stop", "phase", "campaign", "n")
         state = {key: snapshot[key] for key in keys if key in snapshot}
         yield Publication(f"{self.root}/state", _json(state), retain=True)
         tripped = {key: value for key, value in snapshot.get("interlocks", {}).items() if "trip" in str(value).lower()}

@@ -16,6 +16,7 @@ EVENT_BACKLOG = 2000
 
 SNAPSHOT_KEYS = (
     "run",  # id, folder, rig, recipe, simulated, pace, pid
+    "record",  # number and hash of the last record of the journal's chain that is on the disk
     "t_s",  # process seconds since the start of the run
     "utc",
     "state",  # run state
@@ -24,7 +25,7 @@ SNAPSHOT_KEYS = (
     "campaign",  # points done, points total, left_s or null
     "values",  # tag -> {"v": number|null, "q": "good"|"uncertain"|"bad", "c": cause, "u": unit, "text": label|""}
     "interlocks",  # id -> state
-    "alarms",  # list of {"id", "state", "priority", "title", "text", "do", "since_s"} that stand
+    "alarms",  # list of {"id", "state", "hidden", "priority", "title", "text", "do", "since_s"} that stand
     "prompts",  # list of {"id", "text"} waiting for a person
     "devices",  # id -> {"link", "detail"}
     "used_mL",  # liquid -> mL drawn

@@ -12,7 +12,7 @@ from rigd.model.events import Event, EventKind
 from rigd.model.recipe import Recipe
 from rigd.model.rig import RigDefinition
 from rigd.model.samples import Quality
-from rigd.report.data import PhaseSpan, RunData, Trace
+from rigd.report.data import CHAIN_HEAD, PhaseSpan, RunData, Trace
 from rigd.report.points import point_rows
 from rigd.report.usage import used_mL
 from rigd.report.words import simulated
@@ -26,6 +26,8 @@ def read_run(folder: Path, rig: RigDefinition | None = None, recipe: Recipe | No
     read. Raises ``JournalError``."""
     with JournalReader(folder) as journal:
         meta, clock, events = dict(journal.meta), journal.clock(), tuple(journal.events())
+        if head := journal.head():
+            meta[CHAIN_HEAD] = head
         traces = {tag: _trace(info, journal.series(tag)) for tag, info in journal.tags.items()}
     end_s = clock[-1][0] / 1e9 if clock else 0.0
     phases = phase_spans(events, end_s)

@@ -13,6 +13,9 @@ from rigd.model.events import Event
 from rigd.model.recipe import Recipe
 from rigd.model.rig import RigDefinition
 
+CHAIN_HEAD = "chain head"
+"""Key of the head of the journal's chain of hashes among the facts of a run."""
+
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Trace:

@@ -2,8 +2,11 @@
 
 from __future__ import annotations
 
+from dataclasses import asdict
+
 from rigd.model.events import Event, EventKind
-from rigd.report.data import PointRow, RunData
+from rigd.report.alarm_load import alarm_load
+from rigd.report.data import CHAIN_HEAD, PointRow, RunData
 from rigd.report.kinetic_fit import kinetics_of
 from rigd.report.words import first_out
 
@@ -34,6 +37,8 @@ def report_facts(run: RunData) -> dict[str, object]:
         "used_mL": dict(run.used_mL),
         "trips": trip_facts(run.events),
         "alarms": alarm_facts(run.events),
+        "alarm_load": asdict(alarm_load(run.events, run.duration_s)),
+        "chain_head": run.facts.get(CHAIN_HEAD, ""),
     }
 
 

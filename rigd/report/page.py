@@ -14,6 +14,7 @@ from rigd.analysis.kinetics import law_of
 from rigd.model.events import Event, EventKind
 from rigd.model.protection import ConditionKind
 from rigd.model.rig import TagKind
+from rigd.report.alarm_load import alarm_load
 from rigd.report.collect import UNFINISHED
 from rigd.report.data import PointRow, RunData, Trace
 from rigd.report.figures import conversion_figure, timeline_figure, with_error
@@ -80,6 +81,7 @@ def _context(run: RunData) -> dict[str, Any]:
         "used": _used(run),
         "happened": [_event(event) for event in of_kind(run, *_TOLD)],
         "all_events": [_event(event) for event in run.events],
+        "alarm_load": alarm_load(run.events, run.duration_s),
         "signed": _signed(run),
         "sheet": _sheet(run),
         "permit": _permit(run),

@@ -9,7 +9,8 @@ from rich.table import Table
 from rich.text import Text
 
 from rigd.model.events import EventKind
-from rigd.report.data import RunData
+from rigd.report.alarm_load import alarm_load
+from rigd.report.data import CHAIN_HEAD, RunData
 from rigd.report.figures import with_error
 from rigd.report.kinetic_fit import kinetics_of
 from rigd.report.words import (
@@ -45,6 +46,11 @@ def summary(run: RunData) -> RenderableType:
     if run.used_mL:
         used = ", ".join(f"{number(volume, 1)} mL {liquid}" for liquid, volume in run.used_mL.items())
         parts.append(Text(f"used: {used}"))
+    load = alarm_load(run.events, run.duration_s)
+    if load.told:
+        parts.append(Text(f"alarms: {load.words}"))
+    if head := run.facts.get(CHAIN_HEAD):
+        parts.append(Text(f"record: chain head {head}", style="dim"))
     return Group(*parts)
 
 

@@ -14,57 +14,16 @@ import time
 from pathlib import Path
 
 import pytest
+from fakes.journal_rows import TAGS, UTC, S, decisions, filled, rich_intake
 
 from rigd.adapters import journal_sqlite
 from rigd.adapters.journal_export import events_csv, export_csv
 from rigd.adapters.journal_reader import JournalReader
 from rigd.adapters.journal_sqlite import SqliteJournal
-from rigd.model.devices import DeviceIdentity, DeviceStatus, LinkState
 from rigd.model.errors import JournalError
 from rigd.model.events import Event, EventKind
 from rigd.model.intake import Intake
-from rigd.model.orders import Action, Authority, Order, Outcome, Request, Result, Verb
-from rigd.model.rig import Tag, TagKind
 from rigd.model.samples import Quality, QualityCause, Sample, Spectrum
-
-S = 1_000_000_000
-TAGS = (
-    Tag("PT-1", "pressure", TagKind.MEASURED, "pressure", "bar", 0.0, 25.0, "sensors", "p1", S, S),
-    Tag("V-A.position", "valve", TagKind.FEEDBACK, "position", "", -2, 2, "v", "position", S, S, labels=("a", "b")),
-)
-UTC = "2026-03-04T05:06:07.000+00:00"
-
-
-def rich_intake(number: int) -> Intake:
-    """Something of every kind, with values that a careless encoding would change."""
-    who = DeviceIdentity("bench", "SP2", "77", "1.0", simulated=True)
-    return Intake(
-        samples=(
-            Sample("PT-1", 0.1 + 0.2, number * S, raw=10244),
-            Sample("PT-1", math.inf, number * S, Quality.UNCERTAIN, QualityCause.OUT_OF_SPAN),
-            Sample("V-A.position", 1.0, number * S + 1),
-        ),
-        outcomes=(Outcome(4, "PU-A", Action.DELIVER, Result.REFUSED, number * S, "no value"),),
-        links=(DeviceStatus("pump-a", LinkState.ONLINE, number * S, "µ°", who, power_cycled=True),),
-        requests=(Request("c1-1", Verb.BYPASS, "ann", number * S, "PT", {"reason": "proof test", "duration_s": 60.5}),),
-        faults=(("scan", "late"),),
-    )
-
-
-def decisions(number: int) -> tuple[list[Order], list[Event]]:
-    order = Order(number, "PU-A", Action.STOP, 0.1 * number, Authority.CUT, "PRESSURE-HIGH", number * S)
-    event = Event(EventKind.TRIP, "PRESSURE-HIGH", number * S, "Too high.", {"value": 8.25, "first_out": True, "n": 3})
-    return [order], [event]
-
-
-def filled(path: Path, count: int = 20) -> None:
-    journal = SqliteJournal(path, {"simulated": "yes"}, TAGS)
-    for number in range(1, count + 1):
-        journal.scan(number, number * S, UTC, rich_intake(number))
-        journal.decided(number, *decisions(number))
-    journal.spectrum(Spectrum("ir", 5, 860.0, 4.0, (0.5, -0.25, 1.0)))
-    journal.bytes_seen("bus-1", 7, True, b"\x00\xff")
-    journal.close("done")
 
 
 def test_everything_comes_back_as_it_went_in(tmp_path: Path) -> None:
@@ -96,7 +55,7 @@ VICTIM = """
 import sys, time
 from pathlib import Path
 sys.path.insert(0, sys.argv[2])
-from test_journal_sqlite import TAGS, UTC, S, decisions, rich_intake
+from fakes.journal_rows import TAGS, UTC, S, decisions, rich_intake
 from rigd.adapters.journal_sqlite import SqliteJournal
 journal = SqliteJournal(Path(sys.argv[1]), {}, TAGS)
 number = 0
@@ -111,7 +70,7 @@ while True:
 
 def test_kill_9_loses_one_scan_at_most(tmp_path: Path) -> None:
     path = tmp_path / "run.sqlite"
-    command = [sys.executable, "-c", textwrap.dedent(VICTIM), str(path), str(Path(__file__).parent)]
+    command = [sys.executable, "-c", textwrap.dedent(VICTIM), str(path), str(Path(__file__).parents[1])]
     with subprocess.Popen(command, stdout=subprocess.PIPE) as victim:
         assert victim.stdout is not None
         told = [int(victim.stdout.readline()) for _ in range(60)]

@@ -63,3 +63,10 @@ def test_simulated_is_said_first() -> None:
 def test_who_is_told(kind: str, subject: str, fields: dict[str, Any], priority: int | None) -> None:
     alert = alert_of({"n": 1, "kind": kind, "subject": subject, "text": "x", "fields": fields}, "r", False)
     assert (alert.priority if alert else None) == priority
+
+
+def test_an_alert_carries_the_head_of_the_record() -> None:
+    event = {"n": 1, "kind": "trip", "subject": "X", "text": "x", "fields": {}, "record": [41, "ab" * 32]}
+    alert = alert_of(event, "r", False)
+    assert alert is not None
+    assert f"Record 41: {'ab' * 32}" in alert.text

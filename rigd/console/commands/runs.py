@@ -1,4 +1,4 @@
-"""``rigd runs``: what was run."""
+"""``rigd runs``: what was run; ``rigd runs verify``: is the record of a run what it was."""
 
 from __future__ import annotations
 
@@ -7,17 +7,56 @@ from pathlib import Path
 import click
 
 from rigd.console.output import Output, json_option
-from rigd.console.run_names import RUNS
+from rigd.console.run_names import LAST, RUNS, find_run
 
 
-@click.command()
+@click.group(invoke_without_command=True)
 @click.option(
     "--runs", "folder", type=click.Path(path_type=Path), default=RUNS, show_default=True, help="Where to look."
 )
 @json_option
-@click.pass_obj
-def runs(output: Output, folder: Path) -> None:
+@click.pass_context
+def runs(ctx: click.Context, folder: Path) -> None:
     """List the runs in a folder, oldest first."""
+    ctx.meta["runs"] = folder
+    if ctx.invoked_subcommand is None:
+        list_runs(ctx.obj, folder)
+
+
+@runs.command()
+@click.argument("run", default=LAST)
+@click.option("--head", default="", metavar="HASH", help="A head of the chain from an alert or a printed page.")
+@json_option
+@click.pass_context
+def verify(ctx: click.Context, run: str, head: str) -> int:
+    """Check the journal of RUN (the last one, if not named) against its chain of hashes.
+
+    Exit code 0: whole, or torn off at its end with everything before that true. 1: something was changed, dropped or
+    added, or the head given is not in the chain. 2: it cannot be read.
+    """
+    from rigd.adapters.journal_verify import Finding
+    from rigd.adapters.journal_verify import verify as verified
+
+    output: Output = ctx.obj
+    folder = find_run(run, ctx.meta["runs"])
+    found = verified(folder, head.strip())
+    facts = {name: getattr(found, name) for name in ("head", "records", "rows", "words", "outcome", "anchor", "notes")}
+    output.document({"run": folder.name, "finding": found.finding.value, **facts})
+    style = {Finding.INTACT: "green", Finding.TORN: "yellow", Finding.UNSEALED: "yellow"}.get(found.finding, "bold red")
+    output.say(f"[{style}]{found.finding}[/] {folder.name}: {found.words or 'every row is as it was written'}")
+    for note in found.notes:
+        output.say(f"note: {note}")
+    output.say(f"{found.records} records seal {found.rows} rows; head of the chain: {found.head}")
+    if found.anchor is not None:
+        output.say("the head given stands in it" if found.anchor else "[bold red]the head given is not in it[/]: the "
+                   "record was cut or written anew after that head went out, or it belongs to another run")  # fmt: skip
+    if found.finding is Finding.TAMPERED or found.anchor is False:
+        return 1
+    return 2 if found.finding in (Finding.DAMAGED, Finding.UNSEALED) else 0
+
+
+def list_runs(output: Output, folder: Path) -> None:
+    """The list, as a table or one JSON document."""
     from rich import box
     from rich.table import Table
 
