@@ -40,7 +40,12 @@ class SpeciesTable(Table):
 
 
 class ReactionTable(Table):
-    """One reaction. ``stoichiometry`` is negative for what is used up; ``rate_constant`` carries its unit."""
+    """One reaction. ``stoichiometry`` is negative for what is used up; ``rate_constant`` carries its unit.
+
+    On the packing only: ``diffusion_limits`` (the constant is intrinsic), ``deactivation`` with its
+    ``deactivation_energy``, ``deactivation_turnovers`` (per site, leaving 1/e), ``leaching`` (part of the sites per
+    volume of liquid between the beads that passes) into ``leached_species``.
+    """
 
     id: Name
     law: RateLaw
@@ -58,6 +63,11 @@ class ReactionTable(Table):
     heat: Annotated[float, Quantity("molar energy")] = 0.0
     per_gram: Flag = False
     deactivation: Annotated[float, Quantity("rate", "not negative")] = 0.0
+    deactivation_energy: Annotated[float, Quantity("molar energy", "not negative")] = 0.0
+    deactivation_turnovers: NotNegative = 0.0
+    leaching: Annotated[float, Quantity("fraction", "not negative")] = 0.0
+    leached_species: str = ""
+    diffusion_limits: Flag = False
 
     @property
     def rate(self) -> tuple[float, str]:
@@ -86,6 +96,11 @@ class ReactionTable(Table):
             heat_kJ_mol=self.heat,
             per_gram=self.per_gram,
             deactivation_per_h=self.deactivation * 3600.0,
+            deactivation_energy_kJ_mol=self.deactivation_energy,
+            deactivation_turnovers=self.deactivation_turnovers,
+            leaching_per_volume=self.leaching,
+            leached_species=self.leached_species,
+            diffusion_limits=self.diffusion_limits,
         )
 
 

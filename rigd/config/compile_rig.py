@@ -85,6 +85,7 @@ def _parts(file: RigFile, chemistry: Chemistry, digest: str) -> RigDefinition:
         simulation=Simulation(file.simulation.seed, file.simulation.ambient, file.simulation.truth),
         flush_mL_min=file.flush_flow,
         digest=digest,
+        reliefs=tuple(table.value() for table in file.reliefs),
     )
 
 

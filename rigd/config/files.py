@@ -27,6 +27,7 @@ from rigd.config.rig_tables import (
     LiquidTable,
     PumpTable,
     RegulatorTable,
+    ReliefTable,
     SimulationTable,
     TeeTable,
     ValveTable,
@@ -61,6 +62,7 @@ class RigFile(Table):
     columns: tuple[ColumnTable, ...] = ()
     cells: tuple[CellTable, ...] = ()
     regulators: tuple[RegulatorTable, ...] = ()
+    reliefs: tuple[ReliefTable, ...] = ()
     chillers: tuple[ChillerTable, ...] = ()
     lines: Annotated[tuple[LineTable, ...], Field(min_length=1)]
     sensors: tuple[SensorTable, ...] = ()

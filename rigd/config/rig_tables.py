@@ -1,6 +1,6 @@
 """The parts of a rig file: liquids, vessels, valves, pumps, tees, columns, cells, regulators, chillers, lines."""
 
-from typing import Annotated
+from typing import Annotated, Literal
 
 from pydantic import Field
 
@@ -16,7 +16,7 @@ from rigd.config.quantity import (
     Volume,
     VolumeOrNone,
 )
-from rigd.config.table import Flag, Id, Name, Number, Table, Text, ns
+from rigd.config.table import Flag, Id, Name, NotNegative, Number, Table, Text, ns
 from rigd.model.rig import (
     Cell,
     Chiller,
@@ -28,6 +28,7 @@ from rigd.model.rig import (
     Packing,
     Pump,
     Regulator,
+    Relief,
     Tee,
     Valve,
     Vessel,
@@ -67,9 +68,10 @@ class VesselTable(Table):
     content: VolumeOrNone = 0.0
     liquid: str = ""
     vented: Flag = True
+    height: Annotated[float, Quantity("length")] = 0.0
 
     def value(self) -> Vessel:
-        return Vessel(self.id, self.role, self.capacity, self.content, self.liquid, self.vented)
+        return Vessel(self.id, self.role, self.capacity, self.content, self.liquid, self.vented, self.height)
 
 
 class ValveTable(Table):
@@ -131,7 +133,11 @@ class TeeTable(Table):
 
 
 class PackingTable(Table):
-    """What is in a column. ``voidage`` is of the swollen bed; ``bead_liquid`` the liquid fraction inside beads."""
+    """What is in a column. ``voidage`` is of the swollen bed; ``bead_liquid`` the liquid fraction inside beads.
+
+    ``pore_diffusion``: diffusivity inside a bead over the free one. ``retention``: by species, amount adsorbed per
+    volume of solid over the concentration in the liquid (linear isotherm); only the simulator uses both.
+    """
 
     name: Text
     catalyst: Flag
@@ -143,6 +149,10 @@ class PackingTable(Table):
     swell_time: Duration = 300.0
     compressibility: Annotated[float, Quantity("compressibility", "not negative")] = 0.0
     active_sites: Annotated[float, Quantity("site density", "not negative")] = 0.0
+    correlation: Literal["ergun", "carman-kozeny", "erdim"] = "ergun"
+    hysteresis: Fraction = 0.5
+    pore_diffusion: Annotated[Fraction, Field(gt=0, le=1)] = 0.2
+    retention: dict[Name, NotNegative] = Field(default_factory=dict)
 
     def value(self) -> Packing:
         return Packing(
@@ -156,6 +166,10 @@ class PackingTable(Table):
             swell_s=self.swell_time,
             compressibility_per_bar=self.compressibility,
             active_sites_mmol_g=self.active_sites,
+            correlation=self.correlation,
+            hysteresis=self.hysteresis,
+            pore_diffusion=self.pore_diffusion,
+            retention=self.retention,
         )
 
 
@@ -198,6 +212,24 @@ class RegulatorTable(Table):
 
     def value(self) -> Regulator:
         return Regulator(self.id, self.set_pressure, self.rating)
+
+
+class ReliefTable(Table):
+    """A relief valve at a part. It lets out into the vessel ``to`` ("" = floor), ``capacity`` at its set pressure.
+
+    Without ``reseat_pressure`` it shuts at nine tenths of the set pressure (common practice, no source).
+    """
+
+    id: Id
+    at: Text
+    set_pressure: Pressure
+    reseat_pressure: Pressure | None = None
+    to: str = ""
+    capacity: Flow = 20.0
+
+    def value(self) -> Relief:
+        reseat = 0.9 * self.set_pressure if self.reseat_pressure is None else self.reseat_pressure
+        return Relief(self.id, self.at, self.set_pressure, reseat, self.to, self.capacity)
 
 
 class ChillerTable(Table):

@@ -47,6 +47,9 @@ class ReactionPlace(StrEnum):
 class Reaction:
     """One reaction with its rate law.
 
+    ``diffusion_limits``: the constant is the intrinsic one, pores and films slow it; else it is the apparent one.
+    ``deactivation_turnovers``: mol converted per mol of sites that leave 1/e; ``leaching_per_volume``: part of the
+    sites lost per volume of liquid between the beads that passes, found again as ``leached_species`` ("" = not seen).
     ``rate_constant`` is at ``reference_degC`` in mol, L and s of interstitial liquid (or per gram of catalyst when
     ``per_gram``), with the power of L/mol that ``orders`` ask for. ``stoichiometry`` is negative for what is used up.
     """
@@ -65,6 +68,11 @@ class Reaction:
     heat_kJ_mol: float = 0.0
     per_gram: bool = False
     deactivation_per_h: float = 0.0
+    deactivation_energy_kJ_mol: float = 0.0
+    deactivation_turnovers: float = 0.0
+    leaching_per_volume: float = 0.0
+    leached_species: str = ""
+    diffusion_limits: bool = False
 
 
 @dataclass(frozen=True, slots=True)

@@ -44,7 +44,7 @@ class VesselRole(StrEnum):
 
 @dataclass(frozen=True, slots=True)
 class Vessel:
-    """Bottle, flask or waste. ``liquid`` is "" unless it supplies one."""
+    """Bottle, flask or waste. ``liquid`` is "" unless it supplies one; ``height_mm`` is its level above the bench."""
 
     id: str
     role: VesselRole
@@ -52,6 +52,7 @@ class Vessel:
     content_mL: float = 0.0
     liquid: str = ""
     vented: bool = True
+    height_mm: float = 0.0
 
 
 @dataclass(frozen=True, slots=True)
@@ -106,7 +107,12 @@ class Tee:
 class Packing:
     """What is in a column. ``voidage`` is of the swollen bed; ``bead_liquid_fraction`` the liquid inside beads.
 
+    ``correlation`` of pressure drop: "ergun", "carman-kozeny" or "erdim". ``hysteresis`` is the share of a compression
+    that stays when the pressure falls again (0 = springs back).
+
     ``swelling`` = settled volume wet/dry; ``swell_s`` the time constant of swelling after first wetting.
+    ``pore_diffusion`` = diffusivity inside a bead over the free one (0.1 to 0.3 in swollen gels: common practice, no
+    source); ``retention`` = by species, amount adsorbed per volume of solid over the concentration in the liquid.
     """
 
     name: str
@@ -119,6 +125,10 @@ class Packing:
     swell_s: float = 300.0
     compressibility_per_bar: float = 0.0
     active_sites_mmol_g: float = 0.0
+    correlation: str = "ergun"
+    hysteresis: float = 0.5
+    pore_diffusion: float = 0.2
+    retention: Mapping[str, float] = field(default_factory=dict)
 
 
 @dataclass(frozen=True, slots=True)
@@ -153,6 +163,19 @@ class Regulator:
     id: str
     set_bar: float
     rating_bar: float
+
+
+@dataclass(frozen=True, slots=True)
+class Relief:
+    """A relief valve at the part ``at``. It opens above ``set_bar``, lets out into the vessel ``to`` ("" = floor) and
+    shuts again below ``reseat_bar``. ``capacity_mL_min`` passes at the set pressure."""
+
+    id: str
+    at: str
+    set_bar: float
+    reseat_bar: float
+    to: str = ""
+    capacity_mL_min: float = 20.0
 
 
 @dataclass(frozen=True, slots=True)
@@ -295,6 +318,7 @@ class RigDefinition:
     simulation: Simulation = Simulation()
     flush_mL_min: float = 1.0
     digest: str = ""
+    reliefs: tuple[Relief, ...] = ()
 
     def tag(self, tag_id: str) -> Tag:
         """The tag with this id; ``KeyError`` if there is none."""

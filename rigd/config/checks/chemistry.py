@@ -7,10 +7,16 @@ from rigd.config.chemistry_tables import ChemistryFile, ReactionTable
 from rigd.config.findings import Findings, listed, nearest
 from rigd.config.lines import Path
 from rigd.config.structure import declared
-from rigd.model.chemistry import RateLaw
+from rigd.model.chemistry import RateLaw, ReactionPlace
 
 RESERVED = ("conversion", "residual")
 """A cell has a tag of each species, and these two."""
+
+ON_PACKING = (
+    "per_gram", "deactivation", "deactivation_energy", "deactivation_turnovers", "leaching", "leached_species",
+    "diffusion_limits",
+)  # fmt: skip
+"""Keys that mean nothing for a reaction that needs no packing."""
 
 BALANCE = 0.005
 """Masses of both sides of a reaction may differ by this fraction (rounded molar masses)."""
@@ -47,6 +53,7 @@ def _reaction(found: Findings, table: ReactionTable, known: frozenset[str], mass
     for key in ("stoichiometry", "orders", "reverse_orders", "adsorption"):
         for name in getattr(table, key):
             _species(found, known, name, (*place, key, name))
+    _packing_keys(found, table, known)
     _balance(found, table, masses)
     unit = table.rate[1]
     if unit != table.rate_unit:
@@ -56,6 +63,21 @@ def _reaction(found: Findings, table: ReactionTable, known: frozenset[str], mass
     if table.law is RateLaw.REVERSIBLE and table.equilibrium_constant <= 0:
         message = "a reversible reaction needs an equilibrium_constant above zero"
         found.error("key-missing", (*place, "equilibrium_constant"), message, 'give it, or write law = "power"')
+
+
+def _packing_keys(found: Findings, table: ReactionTable, known: frozenset[str]) -> None:
+    place = table.key_path
+    _species(found, known, table.leached_species, (*place, "leached_species"))
+    for key in ON_PACKING:
+        if table.place is not ReactionPlace.CATALYST and getattr(table, key):
+            message = f"{key} belongs to the packing, but this reaction runs in the liquid"
+            found.error("key-out-of-place", (*place, key), message, f'remove {key}, or write place = "catalyst"')
+    if table.leached_species and not table.leaching:
+        message = "leached_species without leaching: nothing is lost"
+        found.error("key-missing", (*place, "leached_species"), message, 'write leaching = "0.001 %" or remove it')
+    if table.deactivation_energy and not table.deactivation:
+        message = "deactivation_energy without deactivation: nothing to speed up"
+        found.error("key-missing", (*place, "deactivation_energy"), message, 'write deactivation = "0.01 1/h"')
 
 
 def _balance(found: Findings, table: ReactionTable, masses: dict[str, float]) -> None:

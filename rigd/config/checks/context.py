@@ -13,7 +13,7 @@ from rigd.config.structure import declared
 from rigd.config.table import Table
 from rigd.model.rig import RigDefinition
 
-PART_SECTIONS = ("vessels", "valves", "pumps", "tees", "columns", "cells", "regulators", "chillers")
+PART_SECTIONS = ("vessels", "valves", "pumps", "tees", "columns", "cells", "regulators", "reliefs", "chillers")
 
 
 @dataclass(frozen=True)

@@ -11,6 +11,8 @@ from rigd.model.rig import End, Line, VesselRole
 
 _THROUGH = ("pumps", "columns", "cells", "regulators")
 """Parts with exactly one line in and one line out."""
+_DRY = ("chillers", "reliefs")
+"""Parts that no line joins: a relief valve says itself where it stands."""
 
 
 def check_lines(context: RigContext) -> None:
@@ -37,8 +39,8 @@ def check_lines(context: RigContext) -> None:
 
 def _end(context: RigContext, parts: Mapping[str, str], end: End, place: Path) -> None:
     section = parts.get(end.part)
-    if section is None or section == "chillers":
-        known = [name for name, kind in parts.items() if kind != "chillers"]
+    if section is None or section in _DRY:
+        known = [name for name, kind in parts.items() if kind not in _DRY]
         message = f"no part {end.part!r} that a line can join{nearest(end.part, known)}"
         context.found.error("line-end-unknown", place, message, f"known parts: {listed(sorted(known))}")
     elif end.port and section != "valves":

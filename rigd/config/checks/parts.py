@@ -6,6 +6,7 @@ from dataclasses import fields
 
 from rigd.config.checks.context import RigContext
 from rigd.config.checks.identity import report_duplicates
+from rigd.config.checks.reliefs import check_reliefs
 from rigd.config.findings import listed, nearest
 from rigd.model.rig import VesselRole
 
@@ -18,7 +19,9 @@ def check_parts(context: RigContext) -> None:
     _valves(context)
     _pumps(context)
     _columns(context)
+    _packing_and_chemistry(context)
     _chillers(context)
+    check_reliefs(context)
     _places(context)
     _truths(context)
 
@@ -91,6 +94,25 @@ def _columns(context: RigContext) -> None:
             context.found.error("beads-too-large", place, message, "check both units (um, mm)")
 
 
+def _packing_and_chemistry(context: RigContext) -> None:
+    """What the chemistry asks of the packing, and the packing of the chemistry."""
+    for column in context.rig.columns:
+        for species in column.packing.retention:
+            if context.species and species not in context.species:
+                message = f"the chemistry has no species {species!r}{nearest(species, context.species)}"
+                place = context.at("columns", column.id, "packing", "retention", species)
+                context.found.error(
+                    "species-unknown", place, message, f"its species: {listed(sorted(context.species))}"
+                )
+    counted = [r.id for r in context.rig.chemistry.reactions if r.deactivation_turnovers or r.leaching_per_volume]
+    for column in context.rig.columns if counted else ():
+        packing = column.packing
+        if packing.catalyst and packing.mass_g * packing.active_sites_mmol_g <= 0.0:
+            message = f"{counted[0]} counts active sites (turnovers, leaching), but {column.id} declares none"
+            place = context.at("columns", column.id, "packing", "active_sites")
+            context.found.error("sites-missing", place, message, 'write mass and active_sites, such as "4.7 mmol/g"')
+
+
 def _chillers(context: RigContext) -> None:
     jackets = {column.jacket for column in context.rig.columns}
     for chiller in context.rig.chillers:
@@ -127,7 +149,7 @@ def _truths(context: RigContext) -> None:
     """Only what the rig has can be otherwise in the simulator."""
     rig = context.rig
     numbers: dict[str, set[str]] = {}
-    for parts in (rig.pumps, rig.valves, rig.tees, rig.columns, rig.cells, rig.regulators, rig.chillers, rig.lines):
+    for parts in (rig.pumps, rig.valves, rig.tees, rig.columns, rig.cells, rig.regulators, rig.reliefs, rig.chillers, rig.lines):
         for part in parts:
             holders = [part, part.packing] if hasattr(part, "packing") else [part]
             numbers[part.id] = {

@@ -2,6 +2,8 @@
 
     C_i dP_i/dt = q_i - sum_e Q_e,     Q_e = G_e (P_a - P_b)           (tube, bed: G = 1/resistance)
                                        Q_e = G_e (P_a - P_b - crack)   (check valve, back-pressure regulator: never < 0)
+                                       Q_e = G_e (P_a - P_b)    (relief valve once open; it opens at crack and shuts
+                                                                 at a lower pressure)
 
 Integrated by the two-stage, stiffly accurate, L-stable diagonally implicit Runge-Kutta method with gamma =
 1 - 1/sqrt(2) (R. Alexander, SIAM J. Numer. Anal. 14 (1977) 1006-1021). Stages and volumes use the same flows, so liquid
@@ -19,7 +21,7 @@ import numpy as np
 from rigd_sim.physics.compiled import Floats, IntRow, Ints, compiled, inner
 
 PRESSURE, COMPLIANCE, SOURCE, PEAK, CAPACITY, BASE, FIRST, SECOND, NODE_ROWS = 0, 1, 2, 3, 4, 5, 6, 7, 8
-CONDUCTANCE, CRACK, VOLUME, EDGE_ROWS = 0, 1, 2, 3
+CONDUCTANCE, CRACK, SHUT, BIAS, VOLUME, EDGE_ROWS = 0, 1, 2, 3, 4, 5
 FROM, TO, OPEN, OPEN_FIRST, OPEN_SECOND, LINK_ROWS = 0, 1, 2, 3, 4, 5
 LAG, SHOWN, SENSOR_ROWS = 0, 1, 2
 
@@ -49,7 +51,7 @@ def _assemble(matrix: Floats, node: Floats, edge: Floats, link: Ints, ground: In
             continue
         a = link[FROM, e]
         b = link[TO, e]
-        push = g * crack if crack > 0.0 else 0.0
+        push = g * edge[BIAS, e] if crack > 0.0 else 0.0
         if not ground[a]:
             matrix[a, a] += g
             matrix[a, b] -= g
@@ -87,7 +89,8 @@ def _stage(matrix: Floats, node: Floats, edge: Floats, link: Ints, ground: IntRo
         changed = 0
         for e in range(edge.shape[1]):
             if edge[CRACK, e] >= 0.0:
-                wanted = 1 if node[out, link[FROM, e]] - node[out, link[TO, e]] > edge[CRACK, e] else 0
+                limit = edge[SHUT, e] if link[state, e] else edge[CRACK, e]
+                wanted = 1 if node[out, link[FROM, e]] - node[out, link[TO, e]] > limit else 0
                 if wanted != link[state, e]:
                     link[state, e] = wanted
                     changed = 1
@@ -100,7 +103,7 @@ def _flow(node: Floats, edge: Floats, link: Ints, e: int, row: int, state: int) 
     """Flow through edge ``e`` at the pressures of ``row``, in the linear branch that was assumed."""
     drop = node[row, link[FROM, e]] - node[row, link[TO, e]]
     if edge[CRACK, e] >= 0.0:
-        drop = drop - edge[CRACK, e] if link[state, e] else 0.0
+        drop = drop - edge[BIAS, e] if link[state, e] else 0.0
     return float(edge[CONDUCTANCE, e] * drop)
 
 

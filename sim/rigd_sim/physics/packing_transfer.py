@@ -20,6 +20,12 @@ def wilson_geankoplis(reynolds: float, schmidt: float, voidage: float, diffusivi
     return sherwood * diffusivity / diameter
 
 
+def film_coefficient(reynolds: float, schmidt: float, voidage: float, diffusivity: float, diameter: float) -> float:
+    """k_c [m/s] at any flow: Wilson and Geankoplis, never below diffusion into still liquid (Sh = 2)."""
+    still = 2.0 * diffusivity / diameter
+    return max(wilson_geankoplis(reynolds, schmidt, voidage, diffusivity, diameter), still) if reynolds > 0.0 else still
+
+
 def bead_rate(diffusivity_in_bead: float, radius: float) -> float:
     """Linear driving force 15 De / R^2 [1/s] per bead liquid (E. Glueckauf, Trans. Faraday Soc. 51 (1955) 1540)."""
     return 15.0 * diffusivity_in_bead / radius**2

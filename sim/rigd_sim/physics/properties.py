@@ -56,6 +56,10 @@ class Solvent:
         """Density [kg/m3]."""
         return _quadratic(t_K, _POINTS_K, self.density_kg_m3)
 
+    def expansion(self, t_K: float) -> float:
+        """Thermal expansion -(d rho/dT)/rho [1/K], from the density curve."""
+        return (self.density(t_K - 1.0) - self.density(t_K + 1.0)) / (2.0 * self.density(t_K))
+
     def viscosity(self, t_K: float) -> float:
         """Dynamic viscosity [Pa s]."""
         return 1e-3 * _exponential(t_K, self.viscosity_mPa_s)

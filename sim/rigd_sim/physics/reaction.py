@@ -20,9 +20,10 @@ GENTLE = 0.03
 PARTS_MAX = 400
 TRACE = 1e-3
 
-K_REF, T_REF, EA_OVER_R, HEAT, EQUILIBRIUM, LAW, ON_BED, HEAD = 0, 1, 2, 3, 4, 5, 6, 7
+K_REF, T_REF, EA_OVER_R, HEAT, EQUILIBRIUM, LAW, ON_BED, DIFFUSIVITY, HEAD = 0, 1, 2, 3, 4, 5, 6, 7, 8
 """Columns of the reaction table ``kin`` (one row per reaction); after ``HEAD`` follow four blocks as wide as the
-species: stoichiometry, orders, reverse orders, adsorption constants."""
+species: stoichiometry, orders, reverse orders, adsorption constants. ``DIFFUSIVITY`` [m2/s] is above zero where the
+rate constant is the intrinsic one, so that pores and films slow the reaction (``rigd_sim.physics.diffusion``)."""
 
 
 @inner
@@ -44,21 +45,25 @@ def _product(c: Floats, i: int, kin: Floats, r: int, at: int, species: int) -> f
 
 
 @inner
+def law(c: Floats, i: int, kin: Floats, r: int, species: int) -> float:
+    """Rate of reaction ``r`` in row ``i`` over its rate constant."""
+    value = _product(c, i, kin, r, HEAD + species, species)
+    if kin[r, LAW] != POWER and kin[r, EQUILIBRIUM] > 0.0:
+        value -= _product(c, i, kin, r, HEAD + 2 * species, species) / kin[r, EQUILIBRIUM]
+    if kin[r, LAW] == LHHW:
+        below = 1.0
+        for j in range(species):
+            below += kin[r, HEAD + 3 * species + j] * (c[i, j] if c[i, j] > 0.0 else 0.0)
+        value /= below * below
+    return value
+
+
+@inner
 def rates(c: Floats, i: int, kin: Floats, species: int, work: Floats, out: int) -> None:
     """Rates [mol/(m3 s)] of all reactions in row ``i``, constants from ``work[5]``, to row ``out`` of ``work``."""
     for r in range(kin.shape[0]):
         k = work[5, r]
-        value = 0.0
-        if k != 0.0:
-            value = _product(c, i, kin, r, HEAD + species, species)
-            if kin[r, LAW] != POWER and kin[r, EQUILIBRIUM] > 0.0:
-                value -= _product(c, i, kin, r, HEAD + 2 * species, species) / kin[r, EQUILIBRIUM]
-            if kin[r, LAW] == LHHW:
-                below = 1.0
-                for j in range(species):
-                    below += kin[r, HEAD + 3 * species + j] * (c[i, j] if c[i, j] > 0.0 else 0.0)
-                value /= below * below
-        work[out, r] = k * value
+        work[out, r] = k * law(c, i, kin, r, species) if k != 0.0 else 0.0
 
 
 @inner

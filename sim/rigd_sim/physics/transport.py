@@ -8,10 +8,10 @@ from __future__ import annotations
 
 import numpy as np
 
-from rigd_sim.physics.bed import RELEASED, TEMPERATURE, exchange_beads, react_bed
+from rigd_sim.physics.bed import FILM, HOLD, LIQUID, RELEASED, SIZE, TEMPERATURE, exchange_beads, react_bed
 from rigd_sim.physics.compiled import Floats, Ints, compiled, inner
 from rigd_sim.physics.conveyor import disperse, exchange_rings, mix, push
-from rigd_sim.physics.reaction import EA_OVER_R, HEAT, K_REF, ON_BED, T_REF, react
+from rigd_sim.physics.reaction import EA_OVER_R, HEAD, HEAT, K_REF, ON_BED, T_REF, react
 
 FROM, TO, CELLS, START, BASE, PACKED, LINK_ROWS = 0, 1, 2, 3, 4, 5, 6
 """Rows of ``link`` (integers): end nodes, cells, first slot of each edge now and first row it may use, 1 = packed."""
@@ -212,14 +212,19 @@ def _work_bed(
     if spread > 0.0:
         for _ in range(times):
             disperse(cells, s, n, v, fill, spread / times, work)
-    exchange_beads(cells, s, n, v, fill, beads, p, bed_rate[0, b], bed_rate[1, b] * dt)
+    exchange_beads(cells, s, n, v, fill, beads, p, bed_rate, b, dt, work)
     if kin.shape[0] > 0:
-        react_bed(cells, s, n, v, fill, dt, p, place, activity, kin, species, work)
-    if in_beads and bed_rate[0, b] > 0.0:
+        size, film = bed_rate[SIZE, b], bed_rate[FILM, b]
+        react_bed(cells, s, n, v, fill, dt, p, place, activity, kin, species, size, film, work)
+    if in_beads and bed_rate[LIQUID, b] > 0.0:
         for i in range(p, p + n):
             _react_rows(beads, i, 1, dt, place[TEMPERATURE, i], kin, species, work)
             for r in range(kin.shape[0]):
-                place[RELEASED, i] -= kin[r, HEAT] * work[6, r] * bed_rate[0, b]
+                made = work[6, r] * bed_rate[LIQUID, b]
+                place[RELEASED, i] -= kin[r, HEAT] * made
+                for k in range(species):  # what is retained changes less than the liquid alone would
+                    less = made / bed_rate[HOLD + k, b] - work[6, r]
+                    beads[i, k] += kin[r, HEAD + k] * less
 
 
 @compiled
@@ -246,7 +251,7 @@ def transport_step(
     """Carry the edges' volumes through in as many equal parts as the smearing bound asks for (``_parts``).
 
     Reactions act on what is in the bed after each part; a portion that enters gains what a portion that leaves lacks,
-    so the contact time is right to second order. ``bed_rate`` rows: bead liquid per place [m3], exchange [1/s].
+    so the contact time is right to second order. ``bed_rate``: rows as in ``bed``.
     ``amount`` and ``work`` (8 rows as wide as columns, reactions or slots) are scratch. Returns the largest gas
     fraction (last column) in any node that is not endless or any slot.
     """

@@ -10,26 +10,12 @@ import math
 
 import numpy as np
 
-from rigd.model.chemistry import RateLaw, Reaction, ReactionPlace
-from rigd.model.rig import Column, RigDefinition
-from rigd_sim.physics.bed import PLACE_ROWS, RELEASED, TEMPERATURE, TURNOVER
+from rigd.model.rig import RigDefinition
+from rigd_sim.physics.bed import FILM, HOLD, LIQUID, PLACE_ROWS, RATE, RELEASED, SIZE, TEMPERATURE, TURNOVER
 from rigd_sim.physics.compiled import Floats, Ints
-from rigd_sim.physics.constants import GAS_CONSTANT_J_MOL_K, ML_M3, ZERO_CELSIUS_K
-from rigd_sim.physics.packing_transfer import bead_rate, chung_wen
+from rigd_sim.physics.constants import ML_M3, ZERO_CELSIUS_K
+from rigd_sim.physics.packing_transfer import bead_rate, chung_wen, film_coefficient
 from rigd_sim.physics.properties import SOLVENTS, Solvent
-from rigd_sim.physics.reaction import (
-    EA_OVER_R,
-    EQUILIBRIUM,
-    HEAD,
-    HEAT,
-    K_REF,
-    LAW,
-    LHHW,
-    ON_BED,
-    POWER,
-    REVERSIBLE,
-    T_REF,
-)
 from rigd_sim.physics.transport import (
     BASE,
     EDGE_ROWS,
@@ -43,77 +29,18 @@ from rigd_sim.physics.transport import (
     WARMTH,
     transport_step,
 )
-from rigd_sim.physics.tubing import area, ring_exchange, ring_velocities
+from rigd_sim.physics.tubing import ring_exchange, ring_velocities
+from rigd_sim.plant.ageing import age
 from rigd_sim.plant.layout import Layout
+from rigd_sim.plant.packing import Bed, Kinetics
 
-LAWS = {RateLaw.POWER: POWER, RateLaw.REVERSIBLE: REVERSIBLE, RateLaw.LHHW: LHHW}
 DEFAULT_DIFFUSIVITY = 1e-9
-BEAD_DIFFUSION_SHARE = 0.2
-"""Diffusion inside a swollen gel bead is 0.1 to 0.3 of the free one (common practice, no source)."""
 SUPPLY_COARSENESS = 8.0
 SMEARING = 0.2
-ADSORPTION_BLOCK = 3
 EMPTY_M3 = 1e-9
 NEARLY_EMPTY_M3 = 2e-6
 TORTUOUS = 0.7
 """1/tortuosity of a packed bed at rest (common practice, no source)."""
-
-
-class Kinetics:
-    """The chemistry sheet as one table in mol, m3, s, K (columns: ``rigd_sim.physics.reaction``)."""
-
-    def __init__(self, rig: RigDefinition) -> None:
-        chemistry = rig.chemistry
-        species = [s.id for s in chemistry.species]
-        self.species = len(species)
-        self.count = len(chemistry.reactions)
-        self.table = np.zeros((self.count, HEAD + 4 * self.species))
-        for r, reaction in enumerate(chemistry.reactions):
-            row = self.table[r]
-            row[K_REF], row[T_REF] = _rate_constant(reaction), reaction.reference_degC + ZERO_CELSIUS_K
-            row[EA_OVER_R] = reaction.activation_energy_kJ_mol * 1e3 / GAS_CONSTANT_J_MOL_K
-            row[HEAT], row[EQUILIBRIUM] = reaction.heat_kJ_mol * 1e3, _equilibrium(reaction)
-            row[LAW], row[ON_BED] = LAWS[reaction.law], reaction.place is ReactionPlace.CATALYST
-            blocks = (reaction.stoichiometry, reaction.orders, reaction.reverse_orders, reaction.adsorption_L_mol)
-            for block, table in enumerate(blocks):
-                for name, value in table.items():
-                    column = HEAD + block * self.species + species.index(name)
-                    row[column] = value * (1e-3 if block == ADSORPTION_BLOCK else 1.0)
-        self.on_bed = self.table[:, ON_BED] != 0.0
-        self.decay_per_s = np.array([r.deactivation_per_h / 3600.0 for r in chemistry.reactions])
-        self.per_gram = [r.per_gram for r in chemistry.reactions]
-        self.in_tubes = int(not self.on_bed.all())
-
-
-def _rate_constant(reaction: Reaction) -> float:
-    """From mol/L to mol/m3: r [mol/(m3 s)] = 1000 k prod (c/1000)^n."""
-    return float(reaction.rate_constant * 1000.0 ** (1.0 - sum(reaction.orders.values())))
-
-
-def _equilibrium(reaction: Reaction) -> float:
-    """Equilibrium constant in powers of mol/m3, so that forward and reverse terms keep their ratio."""
-    power = sum(reaction.reverse_orders.values()) - sum(reaction.orders.values())
-    return float(reaction.equilibrium_constant * 1000.0**power)
-
-
-class Bed:
-    """One column's places: its edge in layout and kernel, first place, heat and exchange figures."""
-
-    def __init__(self, column: Column, edge: int, kernel: int, start: int, cells: int) -> None:
-        self.column, self.edge, self.kernel, self.start, self.cells = column, edge, kernel, start, cells
-        bore, length = column.bore_mm * 1e-3, column.length_mm * 1e-3
-        packing = column.packing
-        self.section, self.length = area(bore), length
-        self.bead_diameter = packing.bead_diameter_mm * 1e-3
-        self.per_dx = 0.0  # open section over length of a cell
-        self.dispersed_at = -1.0  # velocity of the dispersion coefficient in force
-        self.empty_volume = self.section * length
-        self.bead_liquid = self.empty_volume * (1.0 - packing.voidage) * packing.bead_liquid_fraction
-        polymer = self.empty_volume * (1.0 - packing.voidage) * (1.0 - packing.bead_liquid_fraction)
-        self.solid_J_K = polymer * 1.5e6 + column.wall_conductance_W_K * 2.0  # polymer, and the inner glass wall
-        self.wet = 0.0
-        self.swollen = 0.0
-        self.voidage = packing.voidage
 
 
 class Contents:
@@ -221,10 +148,17 @@ class Contents:
         beds = list(self.beds.values())
         self.bed = np.array([[b.kernel for b in beds], [b.start for b in beds]], dtype=np.int64)
         self.beads = np.tile(self.cells[0], (start, 1)) if start else np.zeros((0, self.width))
-        radius = [b.column.packing.bead_diameter_mm * 0.5e-3 for b in beds]
-        rates = [bead_rate(BEAD_DIFFUSION_SHARE * self.diffusivity, r) for r in radius]
-        self.bed_rate = np.array([[b.bead_liquid / b.cells for b in beds], rates], dtype=float)
-        self.bead_volume = self.bed_rate[0]
+        self.bed_rate = np.zeros((HOLD + self.width, len(beds)))
+        for b, bed in enumerate(beds):
+            self.bed_rate[LIQUID, b] = bed.bead_liquid / bed.cells
+            self.bed_rate[RATE, b] = bead_rate(
+                bed.column.packing.pore_diffusion * self.diffusivity, bed.bead_diameter / 2
+            )
+            self.bed_rate[SIZE, b] = bed.pore_size
+            self.bed_rate[HOLD : HOLD + self.gas, b] = self.bed_rate[LIQUID, b]
+            for name, constant in bed.column.packing.retention.items():
+                self.bed_rate[HOLD + self.species.index(name), b] += constant * bed.solid / bed.cells
+        self.bead_volume = self.bed_rate[LIQUID]
         self.place = np.zeros((PLACE_ROWS, start))
         self.temperature, self.released, self.turnover = (
             self.place[TEMPERATURE],
@@ -236,6 +170,7 @@ class Contents:
         self.base_activity = np.ones((start, self.kinetics.count))
         for bed in beds:
             self._rest_activity(bed)
+        self.fresh = self.base_activity.copy()
 
     def _rest_activity(self, bed: Bed) -> None:
         """Fresh packing: 1 where it is a catalyst, its mass per interstitial litre where a rate is per gram."""
@@ -272,13 +207,17 @@ class Contents:
 
     def disperse(self, flow: Floats) -> None:
         """Set the dispersion coefficients of the beds from the flows [m3/s] of the last step."""
-        for bed in self.beds.values():
+        for b, bed in enumerate(self.beds.values()):
             superficial = abs(flow.item(bed.edge)) / bed.section
             if superficial != bed.dispersed_at:
                 bed.dispersed_at = superficial
                 re = self._rho / self._mu * superficial * bed.bead_diameter
                 coefficient = chung_wen(re, self._mu, self._rho) + TORTUOUS * self.diffusivity
                 self.exchange[bed.kernel] = coefficient * bed.per_dx
+                schmidt = self._mu / self._rho / self.diffusivity
+                packing = bed.column.packing
+                film = film_coefficient(re, schmidt, packing.voidage, self.diffusivity, bed.bead_diameter)
+                self.bed_rate[FILM, b] = film * bed.surface
 
     def advance(self, dt: float) -> None:
         """Carry the pending volumes through, react and disperse over ``dt``; pending is then zero."""
@@ -293,13 +232,9 @@ class Contents:
         self.pending[:] = 0.0
 
     def age(self, dt: float) -> None:
-        """First-order loss of activity with time, while wet: da/dt = -kd a (O. Levenspiel, ch. 21)."""
-        for j in range(self.kinetics.count):
-            decay = self.kinetics.decay_per_s[j]
-            if decay and self.kinetics.on_bed[j]:
-                keep = math.exp(-decay * dt)
-                self.base_activity[:, j] *= keep
-                self.activity[:, j] *= keep
+        """Loss of activity over ``dt`` (``rigd_sim.plant.ageing``); what is leached goes into the liquid."""
+        if self.kinetics.ages:
+            age(self, dt)
 
     def poison(self, factors: dict[str, float]) -> None:
         """Set the activity of whole columns to a share of what ageing has left (faults)."""
@@ -386,6 +321,7 @@ class Contents:
             result[:-1] += held @ self.cells[s : s + n + 1]
             result[-1] += held.sum()
         for b, bed in enumerate(self.beds.values()):
-            result[:-1] += self.bead_volume[b] * self.beads[bed.start : bed.start + bed.cells].sum(axis=0)
+            held = self.bed_rate[HOLD : HOLD + self.width, b]
+            result[:-1] += held * self.beads[bed.start : bed.start + bed.cells].sum(axis=0)
             result[-1] += self.bead_volume[b] * bed.cells
         return result

@@ -10,12 +10,13 @@ import numpy as np
 from rigd_sim.physics.constants import ATMOSPHERE_PA, BAR_PA
 from rigd_sim.physics.gel_bed import relax, settled
 from rigd_sim.physics.network import EDGE_ROWS, LAG, LINK_ROWS, NODE_ROWS, PEAK, SENSOR_ROWS, SHOWN, advance_pressures
-from rigd_sim.physics.packed_bed import ergun_gradient, pressed_voidage
+from rigd_sim.physics.packed_bed import gradient, pressed_voidage
 from rigd_sim.physics.properties import SOLVENTS, mixture_viscosity
 from rigd_sim.physics.tubing import resistance
-from rigd_sim.plant.contents import Bed, Contents
+from rigd_sim.plant.contents import Contents
 from rigd_sim.plant.layout import Layout
 from rigd_sim.plant.levers import Levers
+from rigd_sim.plant.packing import Bed
 
 SMALLEST_VELOCITY = 1e-9
 LINE_STEP_K = 0.5
@@ -29,7 +30,21 @@ class GelState:
     ratio: float
     dry_volume: float
     passed: float = 0.0
+    highest: float = 0.0
     seen: tuple[float, float, float, float] = (0.0, 0.0, 0.0, 0.0)
+
+
+@dataclass(slots=True)
+class Expansion:
+    """Liquid that heat drives out of one bed: edge of its reserve, node that gets it, m3/K, what is still to flow."""
+
+    edge: int
+    node: int
+    bed: int
+    per_K: float
+    seen_K: float
+    left: float = 0.0
+    rate: float = 0.0
 
 
 class Flows:
@@ -60,9 +75,11 @@ class Flows:
         self.link = np.zeros((LINK_ROWS, len(edges)), dtype=np.int64)
         self.edge = np.zeros((EDGE_ROWS, len(edges)))
         self.ea, self.eb = self.link[:2]
-        self.conductance, self.crack, self.volume = self.edge
+        self.conductance, self.crack, self.shut, self.bias, self.volume = self.edge
         self.ea[:], self.eb[:] = [self.rank[e.a] for e in edges], [self.rank[e.b] for e in edges]
         self.crack[:] = [e.crack for e in edges]
+        self.shut[:] = [e.crack if e.shut < 0.0 else e.shut for e in edges]
+        self.bias[:] = [e.crack if e.shut < 0.0 else 0.0 for e in edges]
         self.base = np.array([e.conductance for e in edges])
         self.gate = np.ones(len(edges))
         self.flow = np.zeros(len(layout.edges))
@@ -70,6 +87,10 @@ class Flows:
         self._lines = [e for e, edge in enumerate(edges) if edge.kind == "line"]
         self._stale = True
         self.restless = 0.0
+        self.expansion = [
+            Expansion(edge, self.rank[layout.edges[edge].b], layout.edge_index[name], per_K, self.contents.room_K)
+            for name, (edge, per_K) in layout.expansion.items()
+        ]
 
     def _gel(self, bed: Bed, truth: dict[str, float]) -> GelState:
         """Packed swollen (default) or dry (``truth`` "COL.packed_dry" = 1), with ``COL.headspace`` of free volume."""
@@ -133,10 +154,13 @@ class Flows:
             gel.ratio, packing.swelling, gel.dry_volume, bed.empty_volume, bed.length, packing.voidage,
             packing.bead_diameter_mm * 1e-3,
         )  # fmt: skip
-        bed.voidage = pressed_voidage(shape.voidage, packing.compressibility_per_bar / BAR_PA, drop)
+        gel.highest = max(gel.highest, abs(drop))
+        bed.voidage = pressed_voidage(
+            shape.voidage, packing.compressibility_per_bar / BAR_PA, abs(drop), gel.highest, packing.hysteresis
+        )
         velocity = max(abs(float(self.flow[e])) / bed.section, SMALLEST_VELOCITY)
-        gradient = ergun_gradient(mu, rho, velocity, shape.bead_diameter, bed.voidage)
-        self.base[e] = velocity * bed.section / (gradient * shape.length)
+        per_length = gradient(packing.correlation, mu, rho, velocity, shape.bead_diameter, bed.voidage)
+        self.base[e] = velocity * bed.section / (per_length * shape.length)
 
     def swell(self, dt: float) -> None:
         """Swelling goes on where liquid has reached the bed, towards the ratio of the solvent in it."""
@@ -153,6 +177,17 @@ class Flows:
                 reference = SOLVENTS[contents.solvents[0]].swelling_mL_g
                 target *= sum(f * SOLVENTS[s].swelling_mL_g for s, f in inside.items()) / total / reference
             gel.ratio = relax(gel.ratio, max(target, 1.0), dt, packing.swell_s)
+
+    def expand(self, dt: float) -> None:
+        """Give the liquid that heat has driven out of the beds since the last step an even flow over about ``dt``.
+
+        Blocked in, it raises the pressure by beta V dT / C; on cooling the bed takes it back.
+        """
+        for swell in self.expansion:
+            warm = self.contents.line_K.item(swell.bed)
+            swell.left += swell.per_K * (warm - swell.seen_K)
+            swell.seen_K = warm
+            swell.rate = swell.left / dt
 
     def apply(self, levers: Levers) -> None:
         """Combine geometry, valve gates and faults into the conductances of the next step."""
@@ -182,6 +217,12 @@ class Flows:
 
     def advance(self, h: float) -> None:
         """Move the pressures on by ``h`` seconds with the present sources; volumes are added up for the transport."""
+        for swell in self.expansion:
+            if swell.left:
+                volume = swell.rate * h if abs(swell.rate) * h < abs(swell.left) else swell.left
+                swell.left -= volume
+                self.add(swell.edge, volume, h)
+                self.source[swell.node] += volume / h
         self.step, self.restless = advance_pressures(
             h, self.step, self.node, self.edge, self.link, self.ground, self.sensor, self.sensor_node, self._matrix
         )

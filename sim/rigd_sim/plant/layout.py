@@ -6,8 +6,9 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field, replace
 from typing import TypeVar
 
-from rigd.model.rig import Column, End, Line, Pump, RigDefinition, Vessel, VesselRole
-from rigd_sim.physics.constants import ATMOSPHERE_PA, BAR_PA, ML_M3
+from rigd.model.rig import Column, End, Line, LiquidRole, Pump, Relief, RigDefinition, Vessel, VesselRole
+from rigd_sim.physics.constants import ATMOSPHERE_PA, BAR_PA, ML_M3, ML_MIN_M3_S, ZERO_CELSIUS_K
+from rigd_sim.physics.properties import SOLVENTS
 from rigd_sim.physics.tubing import RINGS, area
 
 LIQUID_COMPRESSIBILITY_PER_PA = 1e-9
@@ -20,7 +21,10 @@ JOINT_NODE_M3 = 1e-10
 CAVITATION_PA = 0.9e5
 REGULATOR_CONDUCTANCE = 1e-6 / 60 / 0.05e5  # 1 mL/min at 50 mbar above the set pressure: common practice, no source
 
-P = TypeVar("P", Pump, Column, Vessel)
+EXPANSION_K = 150.0
+"""A bed's reserve of liquid for thermal expansion is enough for this rise of temperature."""
+
+P = TypeVar("P", Pump, Column, Vessel, Relief)
 
 
 def with_truth(part: P, truth: Mapping[str, float], nested: str = "") -> P:
@@ -60,6 +64,7 @@ class Edge:
     diameter: float = 0.0
     length: float = 0.0
     crack: float = -1.0
+    shut: float = -1.0  # where a relief valve closes again; ``crack`` for all others
     conductance: float = 0.0
     gates: tuple[tuple[str, str], ...] = ()  # (valve, position) that must all be open
     supply: bool = False
@@ -87,6 +92,7 @@ class Layout:
     syringes: dict[str, list[SyringeEdges]] = field(default_factory=dict)
     leak_edge: dict[int, int] = field(default_factory=dict)
     air_edge: dict[int, int] = field(default_factory=dict)
+    expansion: dict[str, tuple[int, float]] = field(default_factory=dict)  # column -> edge, m3 per K
     pumps: dict[str, Pump] = field(default_factory=dict)
     columns: dict[str, Column] = field(default_factory=dict)
     vessels: dict[str, Vessel] = field(default_factory=dict)
@@ -147,12 +153,14 @@ def build_layout(rig: RigDefinition) -> Layout:
             Edge(f"{pump.id}.vapour", layout.node_index["air"], layout.node_index[f"{pump.id}.in"], "vapour",
                  crack=CAVITATION_PA, conductance=1e-8 / 1e3)
         )  # fmt: skip
+    _add_reliefs(layout, rig)
     _add_leaks(layout)
     _add_shunts(layout)
     layout.passive = len(layout.edges)
     for pump in layout.pumps.values():
         _add_syringes(layout, pump)
     _add_air_inlets(layout)
+    _add_expansion(layout, rig)
     _share_compliance(layout)
     return layout
 
@@ -216,6 +224,37 @@ def _column_edge(layout: Layout, column: Column) -> Edge:
     volume = area(bore) * length * column.packing.voidage
     ends = layout.node_index[f"{column.id}.in"], layout.node_index[f"{column.id}.out"]
     return Edge(column.id, *ends, "column", volume, CELLS_BED, bore, length)
+
+
+def _add_reliefs(layout: Layout, rig: RigDefinition) -> None:
+    """A way from the part that a relief valve stands at into its vessel, or to the floor."""
+    for declared in rig.reliefs:
+        relief = with_truth(declared, rig.simulation.truth)
+        out = layout.node_index[relief.to or "floor"]
+        opens, shuts = relief.set_bar * BAR_PA, relief.reseat_bar * BAR_PA
+        conductance = relief.capacity_mL_min * ML_MIN_M3_S / opens
+        layout.add_edge(
+            Edge(relief.id, layout.point(relief.at), out, "relief", crack=opens, shut=shuts, conductance=conductance)
+        )
+
+
+def _add_expansion(layout: Layout, rig: RigDefinition) -> None:
+    """What a bed's liquid gives off when it warms and takes back when it cools: a reserve that only heat moves."""
+    solvent = SOLVENTS[next(liquid.properties for liquid in rig.liquids if liquid.role is LiquidRole.SOLVENT)]
+    per_K = solvent.expansion(rig.simulation.ambient_degC + ZERO_CELSIUS_K)
+    for column in layout.columns.values():
+        liquid = column_liquid(column)
+        name = f"{column.id}.expansion"
+        node = layout.add_node(Node(name, column.id, liquid * per_K * EXPANSION_K, 0.0, hydraulic=False))
+        out = layout.node_index[f"{column.id}.out"]
+        layout.expansion[column.id] = (layout.add_edge(Edge(name, node, out, "expansion")), liquid * per_K)
+
+
+def column_liquid(column: Column) -> float:
+    """Liquid between and inside the beads of a column [m3]."""
+    packing = column.packing
+    share = packing.voidage + (1.0 - packing.voidage) * packing.bead_liquid_fraction
+    return area(column.bore_mm * 1e-3) * column.length_mm * 1e-3 * share
 
 
 def _add_leaks(layout: Layout) -> None:

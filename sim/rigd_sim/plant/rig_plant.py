@@ -36,6 +36,7 @@ NS = 1_000_000_000
 CHEMISTRY_NS = NS
 FAR_S = 1e6
 SMALL_GAS_M3 = 1e-9
+GRAVITY_M_S2 = 9.80665
 CALM_PA = 20.0
 """How far a reading may be behind its pressure in calm: 0.2 mbar, a hundredth of what such a sensor's noise is."""
 
@@ -65,6 +66,7 @@ class RigPlant:
         self._chemistry_ns = min([CHEMISTRY_NS, *(c.period_ns for c in rig.cells)])
         self._carried_ns = self._solved_ns = self._calm_ns = 0
         self._headspace: dict[str, float] = {}
+        self._head = self.contents.fluid().density(self.contents.room_K) * GRAVITY_M_S2 * 1e-3  # Pa per mm
         self.initial = self.contents.totals()
         self._refresh_levers()
 
@@ -196,6 +198,7 @@ class RigPlant:
         contents.disperse(mean_flow)
         contents.advance(dt)
         self.thermal.advance(dt, mean_flow, self.levers)
+        self.flows.expand(dt)
         self.flows.swell(dt)
         contents.age(dt)
         contents.spill(self.levers.capacity)
@@ -266,7 +269,7 @@ class RigPlant:
         elif not closed:
             self._headspace.pop(name, None)
             self.flows.ground[r] = 1
-            self.flows.pressure[r] = self.levers.head_Pa.get(name, 0.0)
+            self.flows.pressure[r] = self.levers.head_Pa.get(name, 0.0) + self.layout.vessels[name].height_mm * self._head
         self._close_flasks()
 
     # the port -----------------------------------------------------------------------------------------------------

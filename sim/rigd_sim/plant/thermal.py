@@ -27,8 +27,9 @@ from rigd_sim.physics.warmth import (
     heat_step,
 )
 from rigd_sim.plant.bath_unit import JACKET_M3, RHO_CP_J_M3_K, BathUnit
-from rigd_sim.plant.contents import Bed, Contents
+from rigd_sim.plant.contents import Contents
 from rigd_sim.plant.levers import BathLever, Levers
+from rigd_sim.plant.packing import Bed
 
 BED_CONDUCTIVITY_W_M_K = 0.3
 END_LOSS_W_K = 0.004

@@ -20,7 +20,7 @@ def true_state(plant: RigPlant) -> dict[str, float]:
     _temperatures(plant, state)
     contents, layout = plant.contents, plant.layout
     for e, edge in enumerate(layout.edges):
-        if edge.kind in ("line", "column", "regulator"):
+        if edge.kind in ("line", "column", "regulator", "relief"):
             state[f"flow:{edge.id}"] = float(plant.flows.flow[e]) / ML_MIN_M3_S
     for vessel in (*layout.vessels, "floor"):
         node = layout.node_index[vessel]
