@@ -2,9 +2,10 @@
 
 Each record of the table ``audit`` is one line of JSON, and ``hash`` is H(n) = SHA-256(H(n-1) || the bytes of the line),
 H(0) being 32 zero bytes. The first record of a file (``begin``) holds the digest of every fact and of the tag list;
-``audit`` records tell who did what, with both clocks; a ``seal`` ends each transaction and holds the number of rows and
-their digest for every table that it wrote to, so that no row can be changed, dropped, added or moved unseen; ``end``
-comes with the outcome. A chain does not show that its tail was cut, or that everything was written anew by somebody
+``audit`` records tell who did what, with both clocks; a ``seal`` comes with each transaction that is forced to the disk
+(at least one a second, and each with an order or event) and holds, for every table, how many rows were written since
+the last one and their digest, so that no row can be changed, dropped, added or moved unseen; ``end`` comes with the
+outcome. A chain does not show that its tail was cut, or that everything was written anew by somebody
 who can write the file: therefore its head leaves the computer with each alert and is printed at the end.
 Literature: Haber & Stornetta, J. Cryptology 3 (1991) 99; Schneier & Kelsey, ACM TISSEC 2 (1999) 159 (from memory).
 """
@@ -15,9 +16,8 @@ import hashlib
 import json
 import math
 import struct
-import sys
-from array import array
-from collections.abc import Iterable, Mapping, Sequence
+from collections.abc import Callable, Iterable, Mapping, Sequence
+from dataclasses import dataclass, field
 from itertools import starmap
 from pathlib import Path
 from typing import Any
@@ -30,7 +30,7 @@ START = bytes(32)
 
 COLUMNS = {
     "scans": "iit",
-    "samples": "iiifiio",  # packed row by row: there are so many of them
+    "samples": "iiifiio",
     "inputs": "itt",
     "orders": "iittfiti",
     "events": "ittitt",
@@ -68,15 +68,12 @@ def linked(previous: bytes, record: bytes) -> bytes:
     return hashlib.sha256(previous + record).digest()
 
 
-def digest(table: str, rows: Sequence[schema.Row]) -> str:
-    """SHA-256 over rows of a table; equal for rows as they were written and as they are read."""
-    whole = hashlib.sha256(f"{table} {len(rows)}\n".encode())
+def encoded(table: str, rows: Sequence[schema.Row]) -> bytes:
+    """Rows of a table as bytes, row after row; equal for rows as they were written and as they are read."""
     if table == "samples":
-        whole.update(_samples(rows))
-        return whole.hexdigest()
-    for kind, column in zip(COLUMNS[table], zip(*rows, strict=True), strict=True):
-        whole.update(_BYTES_OF[kind](column))
-    return whole.hexdigest()
+        return _samples(rows)
+    kinds = COLUMNS[table]
+    return b"".join([_BYTES_OF[kind](value) for row in rows for kind, value in zip(kinds, row, strict=True)])
 
 
 def text_digest(text: str) -> str:
@@ -108,29 +105,33 @@ def _samples(rows: Sequence[schema.Row]) -> bytes:
         )
 
 
-def _native(numbers: array[Any]) -> bytes:
-    if sys.byteorder == "big":
-        numbers.byteswap()
-    return numbers.tobytes()
+def _text(value: str) -> bytes:
+    return _blob(value.encode(errors="surrogatepass"))
 
 
-def _integers(column: Sequence[Any]) -> bytes:
-    return _native(array("q", column))
+def _blob(value: bytes) -> bytes:
+    return _integer(len(value)) + value
 
 
-def _numbers(column: Sequence[Any]) -> bytes:
-    return _native(array("d", [value if value is not None and value == value else math.nan for value in column]))
+_integer = struct.Struct("<q").pack
+_number = struct.Struct("<d").pack
+_BYTES_OF: dict[str, Callable[[Any], bytes]] = {"i": _integer, "f": _number, "t": _text, "b": _blob}
 
 
-def _texts(column: Sequence[Any]) -> bytes:
-    return _blobs([value.encode(errors="surrogatepass") for value in column])
+@dataclass(slots=True)
+class _Unsealed:
+    """What was written since the last seal."""
 
+    tables: dict[str, tuple[int, Any]] = field(default_factory=dict)
+    meta: dict[str, str] = field(default_factory=dict)
 
-def _blobs(column: Sequence[Any]) -> bytes:
-    return _integers([len(value) for value in column]) + b"".join(column)
+    def copy(self) -> _Unsealed:
+        return _Unsealed({name: (count, whole.copy()) for name, (count, whole) in self.tables.items()}, dict(self.meta))
 
-
-_BYTES_OF = {"i": _integers, "f": _numbers, "t": _texts, "b": _blobs}
+    def add(self, table: str, rows: Sequence[schema.Row]) -> None:
+        count, whole = self.tables.get(table) or (0, hashlib.sha256())
+        whole.update(encoded(table, rows))
+        self.tables[table] = (count + len(rows), whole)
 
 
 class Chain:
@@ -149,6 +150,7 @@ class Chain:
         }
         self._kept = (START, 0)
         self._head, self._seq = self._kept
+        self._kept_unsealed = self._unsealed = _Unsealed()
         self._utc = ""
         self._step = ""
 
@@ -159,11 +161,12 @@ class Chain:
 
     def keep(self) -> None:
         """The transaction was committed."""
-        self._kept = (self._head, self._seq)
+        self._kept, self._kept_unsealed = (self._head, self._seq), self._unsealed
 
     def begin(self, segment: int, meta: Iterable[tuple[str, str]], tags: Sequence[schema.Row]) -> list[schema.Row]:
         """The first record of a file."""
         self._head, self._seq = self._kept
+        self._unsealed = _Unsealed()
         body = {
             "kind": "begin",
             "segment": segment,
@@ -177,30 +180,34 @@ class Chain:
         }
         return [self._record(body)]
 
-    def extend(self, rows: Iterable[tuple[str, list[schema.Row]]]) -> list[schema.Row]:
-        """The records of a transaction: what people and protection did, then the seal."""
+    def extend(self, rows: Iterable[tuple[str, list[schema.Row]]], *, seal: bool) -> list[schema.Row]:
+        """The records of a transaction: what people and protection did, and with ``seal`` a seal over all rows since
+        the last one."""
         self._head, self._seq = self._kept
+        self._unsealed = unsealed = self._kept_unsealed.copy()
         found: list[schema.Row] = []
-        sealed: dict[str, object] = {}
-        meta: dict[str, str] = {}
         for statement, values in rows:
             if statement == schema.INSERT_META:
-                meta |= dict(values)
-                continue
-            if not values:
-                continue
-            table = _TABLE_OF[statement]
-            sealed[table] = [len(values), digest(table, values)]
-            if table == "scans":
-                self._utc = values[-1][2]
-            elif table == "events":
-                found += [self._record(body) for row in values if (body := self._deed(row)) is not None]
-        seal = {"kind": "seal", "utc": self._utc, "rows": sealed}
-        if meta:
-            seal["meta"] = {key: text_digest(value) for key, value in meta.items()}
-        found.append(self._record(seal))
-        if "outcome" in meta:
-            found.append(self._record({"kind": "end", "utc": self._utc, "outcome": meta["outcome"], **self._always}))
+                unsealed.meta |= dict(values)
+            elif values:
+                table = _TABLE_OF[statement]
+                unsealed.add(table, values)
+                if table == "scans":
+                    self._utc = values[-1][2]
+                elif table == "events":
+                    found += [self._record(body) for row in values if (body := self._deed(row)) is not None]
+        return [*found, *self._seal(unsealed)] if seal or unsealed.meta else found
+
+    def _seal(self, unsealed: _Unsealed) -> list[schema.Row]:
+        self._unsealed = _Unsealed()
+        tables = {table: [count, whole.hexdigest()] for table, (count, whole) in unsealed.tables.items()}
+        body: dict[str, object] = {"kind": "seal", "utc": self._utc, "rows": tables}
+        if unsealed.meta:
+            body["meta"] = {key: text_digest(value) for key, value in unsealed.meta.items()}
+        found = [self._record(body)]
+        if "outcome" in unsealed.meta:
+            outcome = unsealed.meta["outcome"]
+            found.append(self._record({"kind": "end", "utc": self._utc, "outcome": outcome, **self._always}))
         return found
 
     def _deed(self, row: schema.Row) -> dict[str, object] | None:

@@ -206,7 +206,7 @@ class _Writer:
         connection.execute("BEGIN IMMEDIATE")
         for statement, values in rows:
             connection.executemany(statement, values)
-        connection.executemany(schema.INSERT_AUDIT, self._of._chain.extend(rows))
+        connection.executemany(schema.INSERT_AUDIT, self._of._chain.extend(rows, seal=force))
         count = now_s - self._counted_s >= COUNT_S
         counted_to = add_up(connection, self._counted_to) if count else self._counted_to
         connection.execute("COMMIT")

@@ -9,6 +9,7 @@ written anew. For that compare a head that left the computer with an alert, or w
 
 from __future__ import annotations
 
+import hashlib
 import json
 import sqlite3
 import struct
@@ -18,7 +19,7 @@ from pathlib import Path
 from typing import Any
 
 from rigd.adapters import journal_schema as schema
-from rigd.adapters.journal_chain import COLUMNS, START, digest, linked, text_digest
+from rigd.adapters.journal_chain import COLUMNS, START, encoded, linked, text_digest
 from rigd.adapters.journal_minutes import UP_TO
 from rigd.adapters.journal_reader import open_segment, segments
 from rigd.model.errors import JournalError
@@ -36,7 +37,8 @@ class Finding(StrEnum):
 
 @dataclass(slots=True)
 class Verified:
-    """What was found: the last head that holds, how many records and rows it covers, and in words what is wrong.
+    """What was found: the last head that holds, how many records and rows it covers, how many rows of a torn record
+    came after its last seal, and in words what is wrong.
 
     ``anchor`` tells whether the head that was asked for stands in the chain; ``None`` when none was asked for.
     """
@@ -45,6 +47,7 @@ class Verified:
     head: str = START.hex()
     records: int = 0
     rows: int = 0
+    unsealed: int = 0
     words: str = ""
     outcome: str = ""
     anchor: bool | None = None
@@ -82,7 +85,9 @@ def verify(run: Path, anchor: str = "") -> Verified:
             return found
     if found.finding is Finding.INTACT and not found.outcome:
         found.finding = Finding.TORN
-        found.words = "it ends without its end: the run goes on, or the daemon died; all that was recorded is true"
+        found.words = "it ends without its end: the run goes on, or the daemon died; all that was sealed is true"
+        if found.unsealed:
+            found.words += f", {found.unsealed} rows after the last seal (a second at most) cannot be judged"
     return found
 
 
@@ -194,8 +199,10 @@ class _Walk:
         if "outcome" in self._meta and not self._ended:
             raise _Broken("it was ended, but its last record is missing")
         for table, rows in self._rows.items():
-            if rows.fetchone():
-                raise _Broken(f"{table} holds rows that no record seals")
+            if left := sum(1 for _ in rows):
+                if self._ended:
+                    raise _Broken(f"{table} holds {left} rows that no record seals")
+                self._found.unsealed += left
         for key, value in self._connection.execute("SELECT key, value FROM meta"):
             if key != UP_TO and self._meta.get(key) != text_digest(value):
                 raise _Broken(f"the fact {key!r} is not what it was, or was not there")
@@ -206,6 +213,6 @@ class _Walk:
 
 def _digest(table: str, rows: list[Any]) -> str:
     try:
-        return digest(table, rows)
+        return hashlib.sha256(encoded(table, rows)).hexdigest()
     except (TypeError, ValueError, AttributeError, OverflowError, struct.error):
         return ""  # a value of a kind that rigd does not write

@@ -16,7 +16,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from rigd.adapters import journal_schema as schema
-from rigd.adapters.journal_chain import COLUMNS, START, digest, linked
+from rigd.adapters.journal_chain import COLUMNS, START, encoded, linked
 from rigd.adapters.journal_sqlite import SqliteJournal
 from rigd.adapters.journal_verify import Finding, verify
 from rigd.model.errors import JournalError
@@ -267,6 +267,27 @@ def test_a_journal_from_before_the_chain_says_so(copy: Path) -> None:
     assert (found.finding, found.words) == (Finding.UNSEALED, "it was recorded without a chain of hashes")
 
 
+def test_plain_scans_are_sealed_once_a_second_and_the_rest_of_a_torn_record_is_counted(tmp_path: Path) -> None:
+    journal = SqliteJournal(tmp_path / "run.sqlite", {}, TAGS)
+    for number in range(1, 101):
+        journal.scan(number, number * S, UTC, Intake(samples=(Sample("PT-1", 1.0, number * S),)))
+        journal.decided(number, [], [])
+        time.sleep(0.002)
+    time.sleep(0.1)
+    died = tmp_path / "died"
+    died.mkdir()
+    for name in ("run.sqlite", "run.sqlite-wal"):
+        shutil.copy(tmp_path / name, died / name)
+    torn = verify(died)
+    assert (torn.finding, torn.rows + torn.unsealed) == (Finding.TORN, 200)
+    assert torn.unsealed > 100
+    assert f"{torn.unsealed} rows after the last seal" in torn.words
+    journal.close("done")
+    found = verify(tmp_path)
+    assert (found.finding, found.rows, found.unsealed) == (Finding.INTACT, 200, 0)
+    assert found.records < 10
+
+
 def test_no_journal(tmp_path: Path) -> None:
     with pytest.raises(JournalError, match="no journal"):
         verify(tmp_path)
@@ -292,14 +313,13 @@ SAMPLES = st.lists(
 
 @settings(max_examples=60, deadline=None)
 @given(SAMPLES)
-def test_the_digest_of_what_is_read_is_that_of_what_was_written(samples: list[Sample]) -> None:
+def test_the_bytes_of_what_is_read_is_that_of_what_was_written(samples: list[Sample]) -> None:
     rows = schema.sample_rows(1, {"PT-1": 1}, samples)
     connection = sqlite3.connect(":memory:")
     connection.executescript(schema.TABLES)
     connection.executemany(schema.INSERT_SAMPLE, rows)
-    assert digest("samples", connection.execute("SELECT * FROM samples ORDER BY rowid").fetchall()) == digest(
-        "samples", rows
-    )
+    read = connection.execute("SELECT * FROM samples ORDER BY rowid").fetchall()
+    assert encoded("samples", read) == encoded("samples", rows)
 
 
 def test_the_chain_covers_every_table_that_holds_the_record() -> None:

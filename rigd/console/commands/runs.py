@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import asdict
 from pathlib import Path
 
 import click
@@ -40,8 +41,7 @@ def verify(ctx: click.Context, run: str, head: str) -> int:
     output: Output = ctx.obj
     folder = find_run(run, ctx.meta["runs"])
     found = verified(folder, head.strip())
-    facts = {name: getattr(found, name) for name in ("head", "records", "rows", "words", "outcome", "anchor", "notes")}
-    output.document({"run": folder.name, "finding": found.finding.value, **facts})
+    output.document({"run": folder.name, **asdict(found)})
     style = {Finding.INTACT: "green", Finding.TORN: "yellow", Finding.UNSEALED: "yellow"}.get(found.finding, "bold red")
     output.say(f"[{style}]{found.finding}[/] {folder.name}: {found.words or 'every row is as it was written'}")
     for note in found.notes:
