@@ -269,7 +269,9 @@ class RigPlant:
         elif not closed:
             self._headspace.pop(name, None)
             self.flows.ground[r] = 1
-            self.flows.pressure[r] = self.levers.head_Pa.get(name, 0.0) + self.layout.vessels[name].height_mm * self._head
+            self.flows.pressure[r] = (
+                self.levers.head_Pa.get(name, 0.0) + self.layout.vessels[name].height_mm * self._head
+            )
         self._close_flasks()
 
     # the port -----------------------------------------------------------------------------------------------------
@@ -337,7 +339,7 @@ class RigPlant:
         lever = self.levers.baths.get(unit, _BATH)
         if channel == "bath":
             noise = 0.01 * self.instruments.noise.normal()
-            return round(bath.bath_K - ZERO_CELSIUS_K + noise, 2)
+            return round(bath.bath_K - lever.offset_K - ZERO_CELSIUS_K + noise, 2)
         if channel == "setpoint":
             return bath.setpoint_degC
         if channel == "circulating":
