@@ -82,7 +82,9 @@ def _parts(file: RigFile, chemistry: Chemistry, digest: str) -> RigDefinition:
             file.outside.mqtt.value() if file.outside.mqtt else None,
             tuple(table.value() for table in file.outside.alerts),
         ),
-        simulation=Simulation(file.simulation.seed, file.simulation.ambient, file.simulation.truth),
+        simulation=Simulation(
+            file.simulation.seed, file.simulation.ambient, file.simulation.truth, file.simulation.humidity
+        ),
         flush_mL_min=file.flush_flow,
         digest=digest,
         reliefs=tuple(table.value() for table in file.reliefs),
@@ -149,7 +151,7 @@ def _interlock(table: InterlockTable, maker: ConditionMaker, rig: RigDefinition)
         witnesses=witnesses,
         discord_ns=ns(table.disagree_for) if witnesses else 0,
         startup_ns=ns(table.startup),
-        proof_interval_s=table.proof_test or 0.0,
+        proof_interval_s=table.proof_test,
     )
 
 

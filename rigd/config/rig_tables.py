@@ -233,7 +233,9 @@ class ReliefTable(Table):
 
 
 class ChillerTable(Table):
-    """A circulating bath. ``safe_temperature`` is where it goes when the rig is stopped."""
+    """A circulating bath. ``safe_temperature`` is where it goes when the rig is stopped.
+
+    ``coolant_freezes`` is the freezing point of what is in it (0 degC: water)."""
 
     id: Id
     device: Id
@@ -242,12 +244,14 @@ class ChillerTable(Table):
     bath_volume: Volume = 3000.0
     heating: Annotated[float, Quantity("power", "not negative")] = 1000.0
     cooling: Annotated[float, Quantity("power", "not negative")] = 400.0
+    coolant_freezes: Temperature = 0.0
 
     def value(self) -> Chiller:
         low, high = self.range
         return Chiller(
-            self.id, self.device, low, high, self.safe_temperature, self.bath_volume, self.heating, self.cooling
-        )
+            self.id, self.device, low, high, self.safe_temperature, self.bath_volume, self.heating, self.cooling,
+            self.coolant_freezes,
+        )  # fmt: skip
 
 
 class LineTable(Table):
@@ -265,8 +269,12 @@ class LineTable(Table):
 
 
 class SimulationTable(Table):
-    """What only the simulator reads: ``truth`` holds where the true rig differs, e.g. ``"COL.voidage" = 0.385``."""
+    """The room, and where the true rig differs for the simulator: ``truth``, such as ``"COL.voidage" = 0.385``.
+
+    ``ambient`` and ``humidity`` (relative) also tell the checks when water condenses on a cold bath.
+    """
 
     seed: Annotated[int, Field(strict=True, ge=0)] = 1
     ambient: Temperature = 22.0
+    humidity: Annotated[Fraction, Field(gt=0, le=1)] = 0.5
     truth: dict[str, Number] = Field(default_factory=dict)

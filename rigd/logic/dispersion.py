@@ -1,21 +1,49 @@
 """How long a front takes through the whole path: residence times and variances add up along a series of segments.
 
-Tubes after Taylor and Aris, D_e = D + R^2 u^2 / (48 D); packed beds by Bo = u L / D_L = 0.5 L / d_p (simple design rule
-for liquids, plateau of Delgado, Heat Mass Transfer 42 (2006) 279); tees and cells as mixed volumes. The sum is read as
-N tanks in series with the same mean and variance (Levenspiel, Chemical Reaction Engineering, ch. 14).
+Tubes after Taylor and Aris, D_e = D + R^2 u^2 / (48 D), where ``development`` says that this holds; packed beds by
+Bo = u L / D_L = 0.5 L / d_p (simple design rule for liquids, plateau of Delgado, Heat Mass Transfer 42 (2006) 279);
+tees and cells as mixed volumes. The sum is read as N tanks in series with the same mean and variance (Levenspiel,
+Chemical Reaction Engineering, ch. 14).
 """
 
 from __future__ import annotations
 
 import math
+from typing import TYPE_CHECKING
 
-from rigd.logic.conduct.layout import Layout
 from rigd.logic.flow_path import Segment
 from rigd.logic.student import gamma_quantile
 from rigd.model.recipe import Point
 
+if TYPE_CHECKING:
+    from rigd.logic.conduct.layout import Layout
+
 DIFFUSIVITY_M2_S = 1e-9
 """Of a small molecule in an organic solvent, order of magnitude."""
+
+
+DEVELOPED = 0.8
+"""D tau/R^2 from which Taylor-Aris holds: V. Ananthakrishnan, W. N. Gill, A. J. Barduhn, AIChE J. 11 (1965) 1063-1072
+(from memory); below it a front has a sharp head and a long tail, nearer to pure convection."""
+
+
+def development(segment: Segment, flow_mL_min: float) -> float:
+    """D tau/R^2 of a tube: how far radial diffusion has evened out the profile of laminar flow."""
+    tau_s = 60.0 * segment.volume_mL / flow_mL_min
+    return DIFFUSIVITY_M2_S * tau_s / (segment.bore_mm / 2e3) ** 2
+
+
+def undeveloped(layout: Layout, point: Point) -> dict[str, float]:
+    """The tubes where Taylor-Aris does not hold at this point's flows, with their D tau/R^2."""
+    found = {}
+    for section in layout.path.sections:
+        flow = sum(point.flows_mL_min.get(pump, 0.0) for pump in section.pumps)
+        for segment in section.segments:
+            if segment.kind == "line" and segment.bore_mm > 0 and flow > 0:
+                number = development(segment, flow)
+                if number < DEVELOPED:
+                    found[segment.id] = number
+    return found
 
 
 def relative_variance(segment: Segment, flow_mL_min: float, bead_mm: float = 0.0) -> float:

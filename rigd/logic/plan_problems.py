@@ -6,7 +6,7 @@ from collections.abc import Mapping
 
 from rigd.logic.conduct.layout import Layout
 from rigd.logic.conduct.point_needs import least_mL
-from rigd.logic.dispersion import settle_volumes_99
+from rigd.logic.dispersion import DEVELOPED, settle_volumes_99, undeveloped
 from rigd.model.problems import Problem, Severity
 from rigd.model.recipe import Point, PointKind
 from rigd.model.rig import Vessel, VesselRole
@@ -23,6 +23,7 @@ def find_problems(
         *_bottles(layout, used_mL),
         *_receivers(layout, collected_mL, waste_mL),
         *(problem for point in layout.recipe.points for problem in _point(layout, point)),
+        *_undeveloped(layout),
     ]
     return tuple(sorted(found, key=lambda problem: problem.severity is not Severity.ERROR))
 
@@ -48,6 +49,20 @@ def _receivers(layout: Layout, collected_mL: float, waste_mL: float) -> list[Pro
             text = f"{volume_mL:.0f} mL go into {vessel.id}, which holds {vessel.capacity_mL:.0f} mL"
             found.append(Problem(code, text, f"Use a larger {vessel.id} or empty it before the run."))
     return found
+
+
+def _undeveloped(layout: Layout) -> list[Problem]:
+    """Tubes whose dispersion is only estimated, at the flows of the recipe, all in one note."""
+    lowest: dict[str, float] = {}
+    for point in layout.recipe.points:
+        for line, number in undeveloped(layout, point).items():
+            lowest[line] = min(number, lowest.get(line, number))
+    if not lowest:
+        return []
+    listed = ", ".join(f"{line} {number:.2g}" for line, number in sorted(lowest.items()))
+    message = f"dispersion by Taylor and Aris does not hold in {listed} (D tau/R^2 below {DEVELOPED:g}): long tails"
+    remedy = "Settling times are estimates; trust the tracer or the signal gate, not the sum of the path."
+    return [Problem("dispersion-estimated", message, remedy, Severity.NOTE)]
 
 
 def _behind(layout: Layout, position: str) -> Vessel | None:

@@ -180,7 +180,7 @@ class Relief:
 
 @dataclass(frozen=True, slots=True)
 class Chiller:
-    """A circulating bath that jackets columns."""
+    """A circulating bath that jackets columns. Its coolant is water unless ``coolant_freezes_degC`` says otherwise."""
 
     id: str
     device: str
@@ -190,6 +190,7 @@ class Chiller:
     bath_mL: float = 3000.0
     heating_W: float = 1000.0
     cooling_W: float = 400.0
+    coolant_freezes_degC: float = 0.0
 
 
 @dataclass(frozen=True, slots=True)
@@ -281,14 +282,15 @@ class Outside:
 
 @dataclass(frozen=True, slots=True)
 class Simulation:
-    """What only the simulator reads: the truth where it differs from the declared rig.
+    """The room (for the simulator and the checks of cold baths), and the truth where it differs from the declared rig.
 
-    ``truth`` maps a path such as "PU-A.compliance_mL_bar" or "COL.voidage" to the true value.
+    ``truth`` maps a path such as "PU-A.compliance_mL_bar" or "COL.voidage" to the true value. ``humidity`` is relative.
     """
 
     seed: int = 1
     ambient_degC: float = 22.0
     truth: Mapping[str, float] = field(default_factory=dict)
+    humidity: float = 0.5
 
 
 @dataclass(frozen=True, slots=True)

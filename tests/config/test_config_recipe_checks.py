@@ -218,10 +218,10 @@ ROWS = (
     Row(
         "freezing",
         "park.temperature",
-        '"5 degC"',
+        '"15 degC"',
         (
-            ('[park]\ntemperature = "20 degC"', '[park]\ntemperature = "5 degC"'),
-            ("gas_evolution = false", 'gas_evolution = false\nfreezes_below = "5 degC"'),
+            ('[park]\ntemperature = "20 degC"', '[park]\ntemperature = "15 degC"'),
+            ("gas_evolution = false", 'gas_evolution = false\nfreezes_below = "15 degC"'),
         ),
     ),
     Row("temperature-uncontrolled", "sweep.temperature", "temperature", (), (), True, (('jacket = "CH"\n', ""),)),

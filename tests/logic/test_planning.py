@@ -25,7 +25,15 @@ def planned(recipe: Recipe | None = None, rig: RigDefinition | None = None, opti
 
 
 def codes(found: Plan) -> set[str]:
-    return {problem.code for problem in found.problems}
+    """Errors and warnings; the one note is ``test_undeveloped_tubes_are_noted``'s."""
+    return {problem.code for problem in found.problems if problem.severity is not Severity.NOTE}
+
+
+def test_undeveloped_tubes_are_noted() -> None:
+    """Tubes below D tau/R^2 = 0.8 stand in one note, each with its number (V. Ananthakrishnan et al. 1965)."""
+    (note,) = [problem for problem in planned().problems if problem.severity is Severity.NOTE]
+    assert note.code == "dispersion-estimated"
+    assert "L-1 0.0" in note.message
 
 
 def test_phases_follow_each_other_without_gaps() -> None:
@@ -124,7 +132,7 @@ def test_too_few_volumes_are_warned_of() -> None:
     recipe = demo_recipe()
     found = planned(replace(recipe, settle=replace(recipe.settle, volumes=1.1)))
     assert codes(found) == {"settle-short"}
-    assert all(problem.severity is Severity.WARNING for problem in found.problems)
+    assert {problem.severity for problem in found.problems} == {Severity.WARNING, Severity.NOTE}
 
 
 def test_solvent_only_uses_solvent_only() -> None:

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from dataclasses import fields
 
+from rigd.config.checks.cold import check_rest_temperature
 from rigd.config.checks.context import RigContext
 from rigd.config.checks.identity import report_duplicates
 from rigd.config.checks.reliefs import check_reliefs
@@ -22,6 +23,7 @@ def check_parts(context: RigContext) -> None:
     _packing_and_chemistry(context)
     _chillers(context)
     check_reliefs(context)
+    check_rest_temperature(context)
     _places(context)
     _truths(context)
 
@@ -149,7 +151,17 @@ def _truths(context: RigContext) -> None:
     """Only what the rig has can be otherwise in the simulator."""
     rig = context.rig
     numbers: dict[str, set[str]] = {}
-    for parts in (rig.pumps, rig.valves, rig.tees, rig.columns, rig.cells, rig.regulators, rig.reliefs, rig.chillers, rig.lines):
+    for parts in (
+        rig.pumps,
+        rig.valves,
+        rig.tees,
+        rig.columns,
+        rig.cells,
+        rig.regulators,
+        rig.reliefs,
+        rig.chillers,
+        rig.lines,
+    ):
         for part in parts:
             holders = [part, part.packing] if hasattr(part, "packing") else [part]
             numbers[part.id] = {

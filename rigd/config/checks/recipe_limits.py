@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterable
 
+from rigd.config.checks.cold import check_bath_temperature
 from rigd.config.checks.recipe import RecipeContext, trip_limits
 from rigd.config.lines import Path
 
@@ -14,6 +15,7 @@ def check_recipe_limits(context: RecipeContext) -> None:
         _chiller(context, place, degC)
         _too_hot(context, place, degC)
         _freezing(context, place, degC)
+        check_bath_temperature(context, place, degC)
     _rest_above_freezing(context)
     _leak_test(context)
     _park_above_regulators(context)
