@@ -43,6 +43,7 @@ from rigd.model.recipe import Recipe
 from rigd.model.rig import RigDefinition
 from rigd.ports.driver import Driver
 from rigd.ports.plant import EmulatedLine, FaultSpec, Plant
+from rigd.runtime.arming import arming_of, is_simulated, run_facts
 from rigd.runtime.deep import DeepShell
 from rigd.runtime.dry import DryOptions, DryResult, DryShell
 from rigd.runtime.live import Live, Surroundings
@@ -92,7 +93,7 @@ def prepare_run(rig_path: Path, recipe_path: Path, settings: RunSettings) -> Pat
     assert pair.recipe is not None
     rig, recipe = pair.rig, pair.recipe
     drivers = make_drivers(rig)
-    compile_program(rig, recipe)
+    arming = run_facts(arming_of(rig_path, rig, recipe, settings.pace), settings.unattended, is_simulated(rig))
     links = resolve_ports(rig, str(rig_path), settings.pace)
     folder = run_folder.make_run_folder(settings.runs, recipe.name)
     locks: list[int] = []
@@ -102,7 +103,8 @@ def prepare_run(rig_path: Path, recipe_path: Path, settings: RunSettings) -> Pat
         door = door_path(rig.name, os.getpid())
         announced = announce(Daemon(os.getpid(), rig.name, folder.name, str(folder), str(door)))
         plan = _plan(rig, recipe, settings, folder, links, drivers, locks)
-        write_json(folder / "plan.json", {**plan, "door": str(door), "cleanup": [str(announced), str(door)]})
+        meeting = {"door": str(door), "cleanup": [str(announced), str(door)]}
+        write_json(folder / "plan.json", {**plan, **arming, **meeting})
     except BaseException:
         unlock(locks)
         shutil.rmtree(folder, ignore_errors=True)  # nothing was run
@@ -241,7 +243,7 @@ def _plan(
         "recipe": recipe.name,
         "rig_digest": rig.digest,
         "recipe_digest": recipe.digest,
-        "simulated": all(link.port == SIMULATED for link in rig.links),
+        "simulated": is_simulated(rig),
         "pace": settings.pace,
         "signer": settings.signer,
         "unattended": settings.unattended,
@@ -261,7 +263,8 @@ def _plan(
 
 def _run_options(plan: Mapping[str, Any]) -> RunOptions:
     floor_ns = int(PACED_FLOOR_S * plan["pace"] * 1e9) if plan["pace"] != 1 else 0
-    return RunOptions(tuple(plan["collected"]), bool(plan["unattended"]), floor_ns, floor_ns)
+    permit_ns, overdue = int(plan["permit_s"] * plan["pace"] * 1e9), tuple(plan["overdue"])
+    return RunOptions(tuple(plan["collected"]), bool(plan["unattended"]), floor_ns, floor_ns, permit_ns, overdue)
 
 
 def _facts(plan: Mapping[str, Any], folder: Path, clock: PacedClock) -> dict[str, str]:

@@ -67,16 +67,22 @@ class SheetTable(Table):
 
 
 class PermitTable(Table):
-    """What an unattended run needs: who approved it, two people who can be reached, and when it ends."""
+    """What an unattended run needs: who approved it, two people who can be reached, and when it ends.
+
+    ``place`` and ``hazards`` go on the sign for the door, ``shutdown`` (at most three steps) on the shutdown card.
+    """
 
     approved_by: Text
     number: Text
     contacts: Annotated[tuple[Text, ...], Field(min_length=2)]
     end: AwareDatetime
+    place: str = ""
+    hazards: tuple[Text, ...] = ()
+    shutdown: Annotated[tuple[Text, ...], Field(max_length=3)] = ()
 
     def value(self) -> Permit:
         end = self.end.astimezone(UTC).isoformat().replace("+00:00", "Z")
-        return Permit(self.approved_by, self.number, self.contacts, end)
+        return Permit(self.approved_by, self.number, self.contacts, end, self.place, self.hazards, self.shutdown)
 
 
 class ChecklistTable(Table):

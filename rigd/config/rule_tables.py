@@ -178,7 +178,7 @@ class InterlockTable(Table):
     disagree_by: Written | None = None
     disagree_for: Duration = 10.0
     startup: Delay = 0.0
-    proof_test: Duration | None = None
+    proof_test: Duration = 90 * 86_400.0
     consequence: Annotated[Text, IfMissing("key-missing", "say what would happen without this interlock")]
     response: Annotated[Text, IfMissing("key-missing", "say what the person should do after the trip")]
     basis: Text

@@ -32,6 +32,8 @@ STOP_REQUEST = "STOP-REQUEST"
 CUT_REQUEST = "CUT-REQUEST"
 STOP_UNCONFIRMED = "STOP-UNCONFIRMED"
 BYPASS_DEMAND = "BYPASS-DEMAND"
+PROOF_OVERDUE = "PROOF-OVERDUE"
+PERMIT_END = "permit-end"
 
 _BUILT_IN = (
     # id, title, fault, stop, on-delay, what to do
@@ -48,14 +50,20 @@ _BUILT_IN = (
     ("FAULT-SCAN", "The scan came late", "scan", Stop.CUT, 0, "Find what slowed the computer before a new start."),
     ("FAULT-SUSPEND", "The computer was suspended", "suspend", Stop.CUT, 0, "Forbid sleep on this computer."),
     ("FAULT-GUARD", "The guard process is gone", "guard", Stop.CUT, 0, "Start the daemon anew."),
+    ("PERMIT-END", "The permit has ended", PERMIT_END, Stop.QUENCH, 0, "Look at the rig; have the permit renewed."),
     ("FAULT-JOURNAL", "The journal is not written", "journal", Stop.QUENCH, 5 * SECOND_NS, "Free the disk."),
 )
 """Interlocks that protect cannot do without; added to a rig that does not declare them."""
 
 _BUILT_IN_ALARMS = (
-    (STOP_UNCONFIRMED, "A pump was told to stop and does not confirm it", "Take the power from this pump by hand."),
-    (BYPASS_DEMAND, "A bypassed interlock would have tripped", "Judge the cause; end the bypass or stop the run."),
-)
+    # id, title, priority, what to do
+    (STOP_UNCONFIRMED, "A pump was told to stop and does not confirm it", Priority.HIGHEST,
+     "Take the power from this pump by hand."),
+    (BYPASS_DEMAND, "A bypassed interlock would have tripped", Priority.HIGHEST,
+     "Judge the cause; end the bypass or stop the run."),
+    (PROOF_OVERDUE, "An interlock has no proof test in date", Priority.LOW,
+     "Test it with a real stimulus before the next run, and record it with: rigd proof"),
+)  # fmt: skip
 
 
 @dataclass(frozen=True, slots=True)
@@ -63,13 +71,17 @@ class RunOptions:
     """How this run differs from the files.
 
     ``collected``: ids of points already collected in an earlier, stopped run. ``unattended``: nobody is there, so no
-    bypass is granted. The floors are the wall-time allowances of a paced run, in process time.
+    bypass is granted. The floors are the wall-time allowances of a paced run, in process time. ``permit_ns`` is when
+    the permit ends, counted from the start of the run (0: it does not); ``overdue`` are interlocks without a proof test
+    in date.
     """
 
     collected: tuple[str, ...] = ()
     unattended: bool = False
     stale_floor_ns: int = 0
     travel_floor_ns: int = 0
+    permit_ns: int = 0
+    overdue: tuple[str, ...] = ()
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -206,9 +218,9 @@ def _with_built_in(declared: tuple[Interlock, ...]) -> tuple[Interlock, ...]:
 
 def _with_built_in_alarms(declared: tuple[Alarm, ...]) -> tuple[Alarm, ...]:
     found = {alarm.id: alarm for alarm in declared}
-    for name, title, action in _BUILT_IN_ALARMS:
+    for name, title, priority, action in _BUILT_IN_ALARMS:
         condition = Condition(ConditionKind.FAULT, name)
-        found.setdefault(name, Alarm(name, title, condition, Priority.HIGHEST, action))
+        found.setdefault(name, Alarm(name, title, condition, priority, action))
     return tuple(found.values())
 
 

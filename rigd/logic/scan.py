@@ -118,7 +118,7 @@ def scan(program: Program, state: CoreState, intake: Intake, now_ns: int) -> Ste
 
 
 def snapshot(program: Program, state: CoreState, now_ns: int) -> dict[str, object]:
-    """``rigd.ports.door.SNAPSHOT_KEYS`` except ``run`` and ``utc``, ready for JSON."""
+    """``rigd.ports.door.SNAPSHOT_KEYS`` except ``run``, ``utc`` and ``record``, ready for JSON."""
     shown: dict[str, object] = {"t_s": (now_ns - state.started_ns) / 1e9}
     shown.update(shown_state(program, state.protect, now_ns))
     shown.update(sequence.summary(program, state.conduct, now_ns))

@@ -34,12 +34,15 @@ class ChemistrySheet:
 
 @dataclass(frozen=True, slots=True)
 class Permit:
-    """What an unattended run needs; issue of protection will ask for more."""
+    """What an unattended run needs on paper. ``place``, ``hazards`` and ``shutdown`` (steps) are for who comes by."""
 
     approved_by: str
     number: str
     contacts: tuple[str, ...]
     end_utc: str
+    place: str = ""
+    hazards: tuple[str, ...] = ()
+    shutdown: tuple[str, ...] = ()
 
 
 @dataclass(frozen=True, slots=True)

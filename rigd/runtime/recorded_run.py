@@ -81,7 +81,7 @@ def _options_of(journal: JournalReader) -> RunOptions:
         given = dict(json.loads(text))
         if unknown := sorted(given.keys() - known):
             raise JournalError(f"{journal.path} was run with the option {unknown[0]!r}, which rigd {__version__} lacks")
-        return RunOptions(**{**given, "collected": tuple(given.get("collected", ()))})
+        return RunOptions(**{**given, **{name: tuple(given.get(name, ())) for name in ("collected", "overdue")}})
     except (ValueError, TypeError) as error:
         raise JournalError(f"{journal.path} is damaged: its options are {text!r}") from error
 

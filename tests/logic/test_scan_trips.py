@@ -415,7 +415,7 @@ def test_snapshot_has_the_agreed_keys_and_is_json() -> None:
     rehearsal.sensors["PT-1"] = float("nan")
     rehearsal.run(0.5)
     shown = rehearsal.snapshot()
-    assert set(shown) == set(SNAPSHOT_KEYS) - {"run", "utc"}
+    assert set(shown) == set(SNAPSHOT_KEYS) - {"run", "utc", "record"}
     again = json.loads(json.dumps(shown, allow_nan=False))
     assert again["values"]["PT-1"] == {"v": None, "q": "bad", "c": "not a number", "u": "bar", "text": ""}
     assert again["values"]["V-C.position"]["text"] == "waste"

@@ -57,6 +57,17 @@ def report(faults: Faults, names: Iterable[tuple[str, str]], until_ns: int) -> F
     return _with(faults, found) if found else faults
 
 
+def of_options(program: Program, started_ns: int, now_ns: int) -> tuple[tuple[str, str], ...]:
+    """What the run's own options make wrong: a permit that has ended, proof tests that are overdue."""
+    options = program.options
+    found: tuple[tuple[str, str], ...] = ()
+    if options.permit_ns and now_ns - started_ns >= options.permit_ns:
+        found = (("permit-end", "the permit for unattended work has ended"),)
+    if options.overdue:
+        found = (*found, ("PROOF-OVERDUE", f"no proof test in date: {', '.join(options.overdue)}"))
+    return found
+
+
 def power(program: Program, faults: Faults, before: Signals, statuses: Iterable[DeviceStatus], now_ns: int) -> Faults:
     """Faults of power and identity from link changes. The first answer of a device is how we find it, not a fault."""
     found: dict[Key, Fault] = {}

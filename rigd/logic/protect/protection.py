@@ -147,7 +147,8 @@ class _Scan:
             if (ConditionKind.FAULT, name) not in self._before.faults.standing:
                 self._events.append(self._words().fault(name, detail))
         hold_ns = max(faults.HOLD_NS, self._program.options.stale_floor_ns)
-        self._faults = faults.report(self._faults, intake.faults, now_ns + hold_ns)
+        own = faults.of_options(self._program, self._signals.started_ns, now_ns)
+        self._faults = faults.report(self._faults, (*intake.faults, *own), now_ns + hold_ns)
         for request in intake.requests:
             if request.verb in (Verb.STOP, Verb.CUT):
                 name = "STOP-REQUEST" if request.verb is Verb.STOP else "CUT-REQUEST"
