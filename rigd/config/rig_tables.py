@@ -149,7 +149,7 @@ class PackingTable(Table):
     swell_time: Duration = 300.0
     compressibility: Annotated[float, Quantity("compressibility", "not negative")] = 0.0
     active_sites: Annotated[float, Quantity("site density", "not negative")] = 0.0
-    correlation: Literal["ergun", "carman-kozeny", "erdim"] = "ergun"
+    correlation: Literal["ergun", "carman-kozeny", "carman", "erdim"] = "ergun"
     hysteresis: Fraction = 0.5
     pore_diffusion: Annotated[Fraction, Field(gt=0, le=1)] = 0.2
     retention: dict[Name, NotNegative] = Field(default_factory=dict)

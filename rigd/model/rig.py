@@ -107,8 +107,8 @@ class Tee:
 class Packing:
     """What is in a column. ``voidage`` is of the swollen bed; ``bead_liquid_fraction`` the liquid inside beads.
 
-    ``correlation`` of pressure drop: "ergun", "carman-kozeny" or "erdim". ``hysteresis`` is the share of a compression
-    that stays when the pressure falls again (0 = springs back).
+    ``correlation`` of pressure drop: "ergun", "carman-kozeny", "carman" or "erdim". ``hysteresis`` is the share
+    of a compression that stays when the pressure falls again (0 = springs back).
 
     ``swelling`` = settled volume wet/dry; ``swell_s`` the time constant of swelling after first wetting.
     ``pore_diffusion`` = diffusivity inside a bead over the free one (0.1 to 0.3 in swollen gels: common practice, no

@@ -8,6 +8,7 @@ residence time.
 from __future__ import annotations
 
 import math
+from collections.abc import Callable
 
 
 def linear_flow_residence(q0: float, slope: float, volume: float, te: float) -> float:
@@ -18,6 +19,24 @@ def linear_flow_residence(q0: float, slope: float, volume: float, te: float) -> 
         return te - before / q0
     root = math.sqrt(q0**2 + 2.0 * slope * before)
     return te - 2.0 * before / (q0 + root)
+
+
+def linear_flow_exit(q0: float, slope: float, dead: float, tm: float) -> float:
+    """When a sample that is seen at ``tm`` behind the dead volume left the reactor."""
+    return tm - linear_flow_residence(q0, slope, dead, tm)
+
+
+def step_residence(before: float, after: float, volume: float, te: float) -> float:
+    """tau at ``te`` after a step of the flow at 0."""
+    entered = after * te - volume  # volume that had passed when the sample entered, counted from the step
+    return te - entered / (before if entered < 0.0 else after)
+
+
+def dose(rate_constant: Callable[[float], float], ti: float, te: float, steps: int = 200) -> float:
+    """Da = integral of k(t) dt from entry to exit (Simpson's rule)."""
+    h = (te - ti) / steps
+    inner = sum((4.0 if i % 2 else 2.0) * rate_constant(ti + i * h) for i in range(1, steps))
+    return h / 3.0 * (rate_constant(ti) + inner + rate_constant(te))
 
 
 def linear_tau_slope(alpha: float) -> float:
