@@ -8,6 +8,7 @@ from dataclasses import replace
 import numpy as np
 import pytest
 from fakes.sim_rigs import S_NS, charged, column_rig, tracer, two_pump_rig
+from scipy.integrate import solve_ivp
 
 from rigd.model.chemistry import Chemistry, RateLaw, Reaction, ReactionPlace, Species
 from rigd.model.orders import Action
@@ -165,3 +166,72 @@ def test_hot_outlet_cools_along_the_line(flow: float) -> None:
     ntu = 0.25 / sum(resistances) / (rho_cp * flow * 1e-6 / 60)
     assert start > 35.0
     assert end - 22.0 == pytest.approx((start - 22.0) * math.exp(-ntu), rel=1e-3, abs=1e-3)
+
+
+def test_cooling_lost_with_reagent_inside_shows_the_adiabatic_rise() -> None:
+    """dT = (-dH) c V_liquid / (sum of heat capacities): the accumulated reagent of a stopped bed (F. Stoessel, Thermal
+    Safety of Chemical Processes, 2008, ch. 3: T_p + X_accumulated dT_ad). All liquid is between the beads here."""
+    species = (Species("A", "A", 100.0), Species("P", "P", 100.0))
+    exothermic = Reaction(
+        "AP", {"A": -1, "P": 1}, RateLaw.POWER, ReactionPlace.CATALYST, 0.02, 25.0, 0.0, {"A": 1}, heat_kJ_mol=-80.0
+    )
+    rig = column_rig(Chemistry("hot", species, (exothermic,), "A", "P"), HARD)
+    column = replace(rig.columns[0], wall_conductance_W_K=1e-6)  # the cooling is lost
+    plant = RigPlant(replace(rig, columns=(column,)), 1)
+    edge = plant.layout.edge_index["COL"]
+    plant.contents.cells[plant.contents.slots(edge), 0] = 1500.0
+    before = plant.truth()["temperature:COL"]
+    plant.advance(400 * S_NS)
+    bed = plant.contents.beds["COL"]
+    heat_J = 80e3 * 1500.0 * plant.layout.edges[edge].volume
+    capacity = plant.thermal.capacity(bed) * bed.cells
+    rise = plant.truth()["temperature:COL"] - before
+    ends = 2 * thermal.END_LOSS_W_K * 400.0 / capacity  # what the ends take at most
+    assert rise > 4.0
+    assert heat_J / capacity * (1.0 - ends) < rise < heat_J / capacity * 1.0001
+    assert plant.thermal.book.reaction == pytest.approx(heat_J, rel=1e-3)
+
+
+def test_bath_follows_a_step_like_its_equations() -> None:
+    """Bath, jacket, heater lag and thermostat written again as a system of equations, integrated by scipy's LSODA."""
+    bath = bath_unit.BathUnit(two_pump_rig().chillers[0], 295.15)
+    bath.jackets["COL"] = 295.15
+    bath.tell(Action.SET_TEMPERATURE, 60.0)
+    bath.tell(Action.CIRCULATE, 1.0)
+    c_bath, c_jacket = 3000e-6 * bath_unit.RHO_CP_J_M3_K, bath_unit.JACKET_M3 * bath_unit.RHO_CP_J_M3_K
+
+    def slopes(_t: float, y: np.ndarray) -> list[float]:
+        t_bath, t_jacket, power, integral = y
+        error = 333.15 - t_bath
+        wanted = (error / bath_unit.BAND_K + integral) * 1000.0
+        free = -400.0 < wanted < 1000.0
+        link = bath_unit.CIRCULATION_W_K * (t_jacket - t_bath)
+        loss = bath_unit.BATH_LOSS_W_K * (295.15 - t_bath)
+        return [
+            (power + link + loss) / c_bath,
+            (-link + bath_unit.JACKET_LOSS_W_K * (295.15 - t_jacket)) / c_jacket,
+            (min(max(wanted, -400.0), 1000.0) - power) / bath_unit.HEATER_LAG_S,
+            error / bath_unit.BAND_K / bath_unit.INTEGRAL_S if free else 0.0,
+        ]
+
+    at = np.arange(0.0, 2401.0, 60.0)
+    exact = solve_ivp(slopes, (0.0, 2400.0), [295.15, 295.15, 0.0, 0.0], "LSODA", at, rtol=1e-8, max_step=1.0).y
+    found = [(bath.bath_K, bath.jackets["COL"])]
+    for second in range(1, 2401):
+        bath.advance(1.0, {}, bath_unit.BathLever(), 295.15)
+        if second % 60 == 0:
+            found.append((bath.bath_K, bath.jackets["COL"]))
+    assert np.abs(np.array(found)[:, 0] - exact[0]).max() < 0.15
+    assert np.abs(np.array(found)[:, 1] - exact[1]).max() < 0.25
+    assert exact[0].max() < 335.65  # the set-point is passed by little
+
+
+def test_standing_liquid_is_as_warm_as_the_room() -> None:
+    """The cell is warmer than the room while hot liquid flows, and takes the room's temperature when it stands."""
+    plant = hot(9.0, flow=0.5)
+    flowing = plant.thermal.node_K.copy()
+    layout = plant.layout
+    assert flowing[layout.node_index["IR"]] > 295.2
+    plant.tell("PU-A", Action.STOP, 0.0)
+    plant.advance(plant.now_ns + 60 * S_NS)
+    assert plant.thermal.node_K[layout.node_index["IR"]] == pytest.approx(295.15, abs=0.05)

@@ -2,8 +2,9 @@
 
 A conveyor of ``n`` cells of volume ``v`` is stored as ``n + 1`` slots. The first slot holds ``fill`` (0..v), the last
 one ``v - fill``. Liquid that enters fills the first slot, liquid that leaves drains the last; when the first is full,
-all slots move up by one. The only smearing is inside the slot being filled: at most one cell volume, variance v^2/12
-per conveyor. Forward and backward are mirror images. Amounts are conserved to rounding.
+all slots move up by one. The only smearing is inside the slot being filled: a front at its part f becomes two steps,
+variance f (1-f) v^2, at most v^2/4 and v^2/6 on the average, per conveyor however long. Forward and backward are mirror
+images. Amounts are conserved to rounding.
 
 Axial dispersion acts between the slots with nothing passing the ends (closed-closed vessel: P. V. Danckwerts,
 Chem. Eng. Sci. 2 (1953) 1-13), implicitly in time: the second moment grows by exactly 2 D dt and no

@@ -89,10 +89,11 @@ def invert(transform: Callable[[complex], complex], t: float) -> float:
     total = 0.5 * transform(complex(shift / (2.0 * t))).real
     partial = []
     for k in range(1, FOURIER_TERMS + EULER_TERMS + 1):
-        total += (-1) ** k * transform(complex(shift, 2.0 * k * math.pi) / (2.0 * t)).real
+        term = transform(complex(shift, 2.0 * k * math.pi) / (2.0 * t)).real
+        total += -term if k % 2 else term
         if k >= FOURIER_TERMS:
             partial.append(total)
-    mean = sum(math.comb(EULER_TERMS, j) * partial[j] for j in range(EULER_TERMS + 1)) / 2**EULER_TERMS
+    mean: float = sum(math.comb(EULER_TERMS, j) * partial[j] for j in range(EULER_TERMS + 1)) / 2.0**EULER_TERMS
     return math.exp(shift / 2.0) / t * mean
 
 
