@@ -17,6 +17,9 @@ from rigd.model.recipe import Recipe
 from rigd.model.rig import LiquidRole, RigDefinition
 
 
+COMMANDS = ("rigd stop   (reagents off, flush with solvent, then rest)", "rigd cut   (everything stops at once)")
+
+
 @dataclass(frozen=True, slots=True)
 class Paper:
     """One page: heading, lines under titles, and the large steps of a shutdown card."""
@@ -50,18 +53,12 @@ def shutdown_card(rig: RigDefinition, recipe: Recipe, *, simulated: bool) -> Pap
     permit = recipe.permit
     steps = permit.shutdown if permit and permit.shutdown else _steps(rig)
     parts = (
+        ("Call", permit.contacts if permit else ("NOBODY IS NAMED: not valid",)),
         ("Do not", _do_not(rig, recipe)),
         ("What the rig does by itself", _by_itself(rig)),
-        (
-            "At the computer",
-            ("rigd stop   (reagents off, flush with solvent, then rest)", "rigd cut   (everything stops at once)"),
-        ),
-        ("Call", permit.contacts if permit else ("NOBODY IS NAMED: not valid",)),
+        ("At the computer", COMMANDS),
     )
     return Paper("SHUT DOWN", _marked(rig, simulated), parts, tuple(steps))
-
-
-COMMANDS = ("rigd stop   (reagents off, flush with solvent, then rest)", "rigd cut   (everything stops at once)")
 
 
 def _approval(recipe: Recipe) -> str:
