@@ -12,6 +12,7 @@ from pathlib import Path
 
 from rigd.adapters import run_folder
 from rigd.adapters.alert_channels import AppriseSender
+from rigd.adapters.alert_log import AlertLog
 from rigd.adapters.door_client import SocketDoor
 from rigd.config import load_rig
 from rigd.front.service import Front
@@ -40,7 +41,8 @@ def main(plan_path: str) -> int:
     door = Path(plan["door"])
     if not door_opens(door):
         return 1
-    asyncio.run(Front(rig.name, rig.outside, senders).run(SocketDoor(door).messages()))
+    attempted = AlertLog(Path(plan["folder"])).attempt
+    asyncio.run(Front(rig.name, rig.outside, senders, attempted).run(SocketDoor(door).messages()))
     return 0
 
 

@@ -10,7 +10,7 @@ from __future__ import annotations
 import asyncio
 import contextlib
 import logging
-from collections.abc import AsyncIterator, Mapping, Sequence
+from collections.abc import AsyncIterator, Callable, Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any, Protocol
 
@@ -43,8 +43,16 @@ class _Letter:
 class Front:
     """Runs until the door closes, then gives what waits a last chance of ``LAST_WORDS_S``."""
 
-    def __init__(self, rig: str, outside: Outside, senders: Sequence[Sender]) -> None:
+    def __init__(
+        self,
+        rig: str,
+        outside: Outside,
+        senders: Sequence[Sender],
+        attempted: Callable[[str, str, str, bool], None] = lambda alert, channel, title, taken: None,
+    ) -> None:
+        """``attempted`` hears of each attempt: alert, channel, title, and whether the receiver took it."""
         self._rig = rig
+        self._attempted = attempted
         self._topics = Topics(outside.mqtt.prefix, rig) if outside.mqtt else None
         self._publications: Outbox[Publication] = Outbox()
         self._publisher = (
@@ -123,7 +131,10 @@ class Front:
         failures = 0
         while True:
             letter = await box.head()
-            if await sender.send(letter.alert.title, letter.alert.text, letter.alert.priority <= 2):
+            alert = letter.alert
+            taken = await sender.send(alert.title, alert.text, alert.priority <= 2)
+            self._attempted(alert.id, sender.channel.name, alert.title, taken)
+            if taken:
                 box.sent(letter)
                 failures = 0
                 continue

@@ -16,7 +16,6 @@ from rigd.model.protection import ConditionKind
 from rigd.model.recipe import Recipe
 from rigd.model.rig import LiquidRole, RigDefinition
 
-
 COMMANDS = ("rigd stop   (reagents off, flush with solvent, then rest)", "rigd cut   (everything stops at once)")
 
 
