@@ -132,3 +132,10 @@ def test_alarm_core_while_hidden(row: dict[str, str]) -> None:
                 "A" if row["to"] == "D" != row["from"] else row["to"],
                 row["result"],
             )
+
+
+def test_every_entry_holds_the_two_values_of_its_guard_and_without_a_word_it_is_false() -> None:
+    assert {len(entry) for entry in (*alarm_overlay.TABLE.values(), *latch.TABLE.values())} == {2}
+    assert alarm_overlay.turn(Flag.SHELVED, False, FlagEvent.SHELVE).result == "rejected"
+    assert latch.move(LatchState.TRIPPED_CLEAR, LatchEvent.RESET).to is LatchState.TRIPPED_CLEAR
+    assert latch.move(LatchState.TRIPPED_CLEAR, LatchEvent.RESET).rejected
