@@ -104,7 +104,7 @@ def running_plant(rig: RigDefinition, cells: int, flow_mL_min: float) -> RigPlan
         assert not tell(pump, Action.SWAP, 0.0)
         assert not tell(pump, Action.DELIVER, flow_mL_min)
     plant.advance(500 * S)
-    assert plant.contents.gas_by_node() is None
+    assert plant.contents.gas_by_node([]) is None
     return plant
 
 

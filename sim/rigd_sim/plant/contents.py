@@ -1,7 +1,8 @@
 """What is in the rig: arrays of compositions, temperatures and activities, and the step that moves them on.
 
-Columns of every composition: species [mol/m3], then one volume fraction per property set (solvent), then gas (volume
-fraction). Amounts and volumes are kept to rounding whatever the flows do.
+Columns of every composition: species [mol/m3], then one volume fraction per property set (solvent), then gas (its
+volume at atmospheric pressure per volume; at higher pressure it fills less: ``physics.gas``). Amounts and volumes are
+kept to rounding whatever the flows do.
 """
 
 from __future__ import annotations
@@ -56,6 +57,7 @@ class Contents:
         self.kinetics = Kinetics(rig)
         self.room_K = rig.simulation.ambient_degC + ZERO_CELSIUS_K
         self.gas_share = 0.0
+        self.squeeze = np.ones(len(layout.nodes))
         self.line_K = np.full(len(layout.edges), self.room_K)
         self.line_seen_K = np.zeros(len(layout.edges))
         self.warmed_K = math.inf
@@ -271,8 +273,11 @@ class Contents:
                 self.node_volume[floor] = held + excess
                 self.node_volume[i] -= excess
 
-    def gas_by_node(self) -> Floats | None:
-        """Gas at each node: its own, and half of what is in each edge that ends there; ``None`` without any."""
+    def gas_by_node(self, barrel: list[tuple[int, int]]) -> Floats | None:
+        """Gas at each node: its own, and half of what is in each edge that ends there; ``None`` without any.
+
+        Gas in a syringe at work (``barrel``: its node, the pump's outlet) yields to the pressure at the outlet.
+        """
         if self.gas_share <= 0.0:
             return None
         in_cells = self.cells[:, self.gas]
@@ -283,9 +288,8 @@ class Contents:
             half = 0.5 * self.cell_volume[e] * float(in_cells[s : s + n + 1].sum())
             own[self.ea[e]] += half
             own[self.eb[e]] += half
-        for pairs in self.layout.syringes.values():  # gas in a syringe yields to the pressure at the pump's outlet
-            for pair in pairs:
-                own[self.layout.edges[pair.deliver].b] += own[pair.node]
+        for syringe, out in barrel:
+            own[out] += own[syringe]
         return own
 
     def hide(self, vessel: str, hidden: bool) -> None:
@@ -301,10 +305,11 @@ class Contents:
 
     def liquid_volume(self, node: int) -> float:
         """Liquid in a node [m3], gas left out."""
-        return float(self.node_volume[node] * (1.0 - self.node_c[node, self.gas]))
+        return float(self.node_volume[node] * (1.0 - self.node_c[node, self.gas] * self.squeeze[node]))
 
     def totals(self) -> Floats:
-        """Total of every column over the whole rig (volume-weighted), then the total volume: what must be conserved."""
+        """Total of every column over the whole rig (volume-weighted), then the volume of liquid and of gas at
+        atmospheric pressure: what must be conserved."""
         result = np.zeros(self.width + 1)
         finite = self.endless == 0
         weight = self.node_volume[finite]
@@ -312,16 +317,13 @@ class Contents:
         for vessel, composition in self.hidden.items():
             held = self.node_volume[self.layout.node_index[vessel]]
             result[:-1] += held * composition
-            result[-1] += held
-        result[-1] += weight.sum()
         for e in np.flatnonzero(self.cell_count):
             n, s, v = int(self.cell_count[e]), int(self.cell_start[e]), self.cell_volume[e]
             held = np.full(n + 1, v)
             held[0], held[n] = self.fill[e], v - self.fill[e]
             result[:-1] += held @ self.cells[s : s + n + 1]
-            result[-1] += held.sum()
         for b, bed in enumerate(self.beds.values()):
             held = self.bed_rate[HOLD : HOLD + self.width, b]
             result[:-1] += held * self.beads[bed.start : bed.start + bed.cells].sum(axis=0)
-            result[-1] += self.bead_volume[b] * bed.cells
+        result[-1] = result[self.n_species : -1].sum()
         return result

@@ -8,6 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from rigd_sim.physics.constants import ATMOSPHERE_PA, BAR_PA
+from rigd_sim.physics.gas import fit_gas
 from rigd_sim.physics.gel_bed import relax, settled
 from rigd_sim.physics.network import EDGE_ROWS, LAG, LINK_ROWS, NODE_ROWS, PEAK, SENSOR_ROWS, SHOWN, advance_pressures
 from rigd_sim.physics.packed_bed import gradient, pressed_voidage
@@ -87,6 +88,12 @@ class Flows:
         self._lines = [e for e, edge in enumerate(edges) if edge.kind == "line"]
         self._stale = True
         self.restless = 0.0
+        self._bleed = np.zeros(len(self.hydraulic))
+        self._bleed_s = 0.0
+        self.barrel: list[tuple[int, int]] = []  # syringes at work and the nodes at their pumps' outlets
+        self._unmet, self._own = np.zeros(len(layout.nodes)), np.zeros(len(layout.nodes))
+        self._closed = np.array([n.ground or n.id in layout.vessels for n in layout.nodes])[self.hydraulic]
+        self._rest_volume = np.array([layout.nodes[i].volume for i in self.hydraulic])
         self.expansion = [
             Expansion(edge, self.rank[layout.edges[edge].b], layout.edge_index[name], per_K, self.contents.room_K)
             for name, (edge, per_K) in layout.expansion.items()
@@ -189,6 +196,26 @@ class Flows:
             swell.seen_K = warm
             swell.rate = swell.left / dt
 
+    def fit_gas(self, dt: float) -> None:
+        """Let gas give way to the pressure where it is.
+
+        What a node then has too much, or lacks, flows away or in during the next ``dt``: gas that comes to a lower
+        pressure drives liquid on, gas that is pressed draws it in.
+        """
+        contents = self.contents
+        absolute = np.maximum(self.pressure, 0.0) + ATMOSPHERE_PA
+        contents.squeeze[self.hydraulic] = np.where(self._closed, 1.0, ATMOSPHERE_PA / absolute)
+        pairs = np.array(self.barrel, dtype=np.int64).reshape(-1, 2).T.copy()
+        own = self._rest_volume + self.rest_compliance * self.pressure
+        self._own[self.hydraulic] = own
+        fit_gas(
+            contents.link, contents.edge, contents.cells, contents.node, contents.node_c, contents.mark,
+            contents.n_species, contents.squeeze, pairs, self._own, self._unmet,
+        )  # fmt: skip
+        excess = contents.node_volume[self.hydraulic] - own - self._unmet[self.hydraulic]
+        self._bleed = np.where(self._closed, 0.0, excess) / dt
+        self._bleed_s = dt
+
     def apply(self, levers: Levers) -> None:
         """Combine geometry, valve gates and faults into the conductances of the next step."""
         self._stale, self.restless = False, math.inf
@@ -208,11 +235,12 @@ class Flows:
     def _gas_compliance(self) -> None:
         """Gas adds V/P to the compliance of the node where it is, or of the nodes at the ends of its edge."""
         contents = self.contents
-        gas = contents.gas_by_node()
+        gas = contents.gas_by_node(self.barrel)
         self.compliance[:] = self.rest_compliance
         if gas is not None:
             free = self.ground == 0
-            here = gas[self.hydraulic] / np.maximum(self.pressure + ATMOSPHERE_PA, 1e4)
+            absolute = np.maximum(self.pressure + ATMOSPHERE_PA, 1e4)
+            here = gas[self.hydraulic] * np.minimum(ATMOSPHERE_PA / absolute, 1.0) / absolute
             self.compliance[free] += here[free]
 
     def advance(self, h: float) -> None:
@@ -223,6 +251,10 @@ class Flows:
                 swell.left -= volume
                 self.add(swell.edge, volume, h)
                 self.source[swell.node] += volume / h
+        if self._bleed_s > 0.0:
+            part = min(h, self._bleed_s)
+            self._bleed_s -= part
+            self.source += self._bleed * (part / h)
         self.step, self.restless = advance_pressures(
             h, self.step, self.node, self.edge, self.link, self.ground, self.sensor, self.sensor_node, self._matrix
         )

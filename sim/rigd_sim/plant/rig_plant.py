@@ -197,6 +197,9 @@ class RigPlant:
         contents.admit_air()
         contents.disperse(mean_flow)
         contents.advance(dt)
+        if contents.gas_share > 0.0:
+            self.flows.barrel = self._barrels()
+            self.flows.fit_gas(dt)
         self.thermal.advance(dt, mean_flow, self.levers)
         self.flows.expand(dt)
         self.flows.swell(dt)
@@ -206,8 +209,17 @@ class RigPlant:
         for unit in self.infrared.values():
             row = contents.node_c[self.layout.node_index[unit.cell.id]]
             lever = self.levers.cells.get(unit.cell.id, _CELL)
-            unit.expose(row, float(row[contents.gas]), dt, self.now_ns, lever)
+            share = float(row[contents.gas] * contents.squeeze[self.layout.node_index[unit.cell.id]])
+            unit.expose(row, share, dt, self.now_ns, lever)
         self.instruments.advance(dt)
+
+    def _barrels(self) -> list[tuple[int, int]]:
+        """The syringe at work of each pump and the node at the pump's outlet."""
+        syringes = self.layout.syringes
+        return [
+            (syringes[name][pump.active].node, self.layout.edges[syringes[name][pump.active].deliver].b)
+            for name, pump in self.pumps.items()
+        ]
 
     def _chemistry(self) -> None:
         """A regular step: carry everything on, then refresh what depends on it."""
