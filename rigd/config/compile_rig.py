@@ -20,7 +20,7 @@ from rigd.config.implied import (
     vessel_tag,
 )
 from rigd.config.pressure_side import PressureSide, pressure_sides, side_of
-from rigd.config.rule_tables import PRIORITIES, AlarmTable, InterlockTable
+from rigd.config.rule_tables import AlarmTable, InterlockTable
 from rigd.config.structure import declared
 from rigd.config.table import ns
 from rigd.model.chemistry import Chemistry
@@ -171,7 +171,7 @@ def _alarm(table: AlarmTable, maker: ConditionMaker) -> Alarm | None:
         id=table.id,
         title=table.title,
         condition=condition,
-        priority=Priority(PRIORITIES[table.priority]),
+        priority=Priority(table.urgency),
         action=table.action,
         cause=table.cause,
         consequence=table.consequence,

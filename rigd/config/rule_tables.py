@@ -184,19 +184,33 @@ class InterlockTable(Table):
     basis: Text
 
 
+def _urgency(schema: dict[str, Any]) -> None:
+    """A priority is stated, or follows from what the alarm leads to."""
+    schema["anyOf"] = [{"required": ["priority"]}, {"required": ["leads_to"]}]
+    trip = {"properties": {"leads_to": {"const": "trip"}}, "required": ["leads_to"]}
+    schema["if"], schema["then"] = trip, {"required": ["respond_within"]}
+
+
 class AlarmTable(Table):
     """A condition that needs a person; ``action`` says what to do.
+
+    ``leads_to`` and ``respond_within`` say what comes if nobody acts, and when; the priority follows from them, and may
+    then be left out.
 
     ``suppress_when`` hides it as long as that holds; ``realarm`` tells it again while it stands; ``shelve_max`` is the
     longest that a person may shelve it (an alarm of the highest priority is never shelved).
     """
+
+    model_config = ConfigDict(json_schema_extra=_urgency)
 
     id: Id
     title: Text
     when: ConditionTable
     on_delay: Delay = 0.0
     off_delay: Delay = 0.0
-    priority: Literal["highest", "high", "medium", "low"]
+    priority: Literal["highest", "high", "medium", "low"] | None = None
+    leads_to: Literal["lost protection", "trip", "lost run", "maintenance"] | None = None
+    respond_within: Duration | None = None
     action: Annotated[
         Text,
         IfMissing("alarm-without-action", "say what the person should do; if there is nothing to do, remove the alarm"),
@@ -209,6 +223,34 @@ class AlarmTable(Table):
     suppress_when: ConditionTable | None = None
     realarm: Duration | None = None
     shelve_max: Delay = 8 * 3600.0
+
+    @model_validator(mode="after")
+    def _stated(self) -> Self:
+        text = ""
+        if self.priority is None and self.leads_to is None:
+            text = "an alarm needs a 'priority', or 'leads_to' from which it follows"
+        elif self.leads_to == "trip" and self.respond_within is None:
+            text = "an alarm that leads to a trip needs 'respond_within': how long a person has"
+        if text:
+            raise PydanticCustomError("urgency-missing", "{text}", {"text": text})
+        return self
+
+    @property
+    def follows(self) -> str | None:
+        """The priority that follows from consequence and time (own proposal, after the practice of ISA-18.2)."""
+        if self.leads_to == "trip":
+            return "high" if (self.respond_within or 0.0) < SOON_S else "medium"
+        return None if self.leads_to is None else URGENCY[self.leads_to]
+
+    @property
+    def urgency(self) -> int:
+        """The priority as a number, 1 the most urgent."""
+        return PRIORITIES[self.priority or self.follows or "medium"]
+
+
+SOON_S = 1800.0
+"""A trip that comes sooner than this unless somebody acts is worth waking a person."""
+URGENCY = {"lost protection": "highest", "lost run": "medium", "maintenance": "low"}
 
 
 class LinkTable(Table):

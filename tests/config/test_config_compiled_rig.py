@@ -146,6 +146,21 @@ def test_alarms_as_written(rig: RigDefinition) -> None:
     assert (rising.on_delay_ns, rising.off_delay_ns) == (SECOND_NS, 15 * SECOND_NS)
 
 
+@pytest.mark.parametrize(
+    ("stated", "priority"),
+    [
+        ('leads_to = "lost protection"', Priority.HIGHEST),
+        ('leads_to = "trip"\nrespond_within = "29 min"', Priority.HIGH),
+        ('leads_to = "trip"\nrespond_within = "30 min"', Priority.MEDIUM),
+        ('leads_to = "lost run"', Priority.MEDIUM),
+        ('leads_to = "maintenance"', Priority.LOW),
+    ],
+)
+def test_the_priority_follows_from_consequence_and_time(stated: str, priority: Priority, tmp_path: Path) -> None:
+    made = load_rig(write(tmp_path, edited(RIG, ('priority = "high"', stated)))[0])
+    assert made.alarms[0].priority is priority
+
+
 def test_built_in_rules_cover_links_power_stalls_valves_and_faults(rig: RigDefinition) -> None:
     built = {lock.id: lock for lock in rig.interlocks if lock.built_in}
     devices = {device.id for device in rig.devices}

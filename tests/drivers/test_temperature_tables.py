@@ -1,8 +1,8 @@
 """Tables of resistance thermometers and thermocouples against the functions of their standards.
 
 The rows were computed once; here they are held against the functions written anew, so that a slip in a table or in a
-coefficient shows. Coefficients: IEC 60751:2022; ITS-90 reference functions of NIST SRD 60 (from memory, confirmed by the
-rows).
+coefficient shows. Coefficients: IEC 60751:2022; ITS-90 reference functions of NIST SRD 60 (from memory, confirmed by
+the rows).
 """
 
 from __future__ import annotations

@@ -6,7 +6,7 @@ from rigd.config.checks.context import RigContext
 from rigd.config.findings import listed
 from rigd.config.lines import Path
 from rigd.config.pressure_side import PressureSide, side_of
-from rigd.config.rule_tables import InterlockTable
+from rigd.config.rule_tables import AlarmTable, InterlockTable
 from rigd.model.orders import Stop
 from rigd.model.protection import Armed, Condition, ConditionKind, Interlock, OnBad
 from rigd.model.rig import Tag, TagKind
@@ -40,6 +40,8 @@ def check_limits(context: RigContext) -> None:
             _limit(context, cause, tags.get(cause.tag), place)
         if not lock.built_in:
             _pressure_stop(context, lock, tags)
+    for told in context.file.alarms:
+        _urgency(context, told)
     for alarm in context.rig.alarms:
         place = context.at("alarms", alarm.id, "when", _KEYS.get(alarm.condition.kind, _QUALITY))
         if place != ("alarms",):
@@ -69,6 +71,22 @@ def _votes(context: RigContext, table: InterlockTable) -> None:
     if table.settling and not any(condition.differs_from for condition in table.trip_when):
         message = "settling belongs to a comparison with another tag (differs_from); absolute limits are always live"
         context.found.error("settling-unused", (*table.key_path, "settling"), message, "remove settling")
+
+
+def _urgency(context: RigContext, table: AlarmTable) -> None:
+    if table.priority is not None and table.follows is not None and table.priority != table.follows:
+        message = f"priority is {table.priority!r}, but what it leads to makes it {table.follows!r}"
+        context.found.warning("priority-unlike", (*table.key_path, "priority"), message, "leave priority out")
+    limited = {cause.tag for lock in context.rig.interlocks for cause in lock.causes}
+    within_s = table.respond_within
+    if table.leads_to == "trip" and within_s is not None and within_s < CALL_OUT_S and table.when.tag not in limited:
+        message = f"a person has {within_s / 60:g} min, less than it takes to come, and no interlock looks at"
+        message += f" {table.when.tag}"
+        context.found.warning("alarm-too-short", (*table.key_path, "respond_within"), message, "add an interlock")
+
+
+CALL_OUT_S = 1800.0
+"""Nobody is at the rig sooner than this after a call at night (proposal; no source)."""
 
 
 def _limit(context: RigContext, cause: Condition, tag: Tag | None, place: Path) -> None:
