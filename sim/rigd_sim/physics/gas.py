@@ -23,7 +23,7 @@ def _filled(rows: Floats, i: int, species: int, share: float) -> float:
     total = rows[i, gas] * share
     for k in range(species, gas):
         total += rows[i, k]
-    return total
+    return float(total)
 
 
 @inner
@@ -116,3 +116,19 @@ def fit_gas(
                     node_c, row, held, filled - 1.0, filled, i, node, node_c, mark, gas, species, own[i]
                 )
     _fit_nodes(node, node_c, mark, species, ratio, own, unmet)
+
+
+@compiled
+def gas_at_nodes(link: Ints, edge: Floats, cells: Floats, node: Floats, node_c: Floats, mark: Ints, out: Row) -> None:
+    """Gas at each node [m3 at atmospheric pressure]: its own, and half of what is in each edge that ends there."""
+    gas = node_c.shape[1] - 1
+    for i in range(node.shape[1]):
+        out[i] = 0.0 if mark[ENDLESS, i] else node[HELD, i] * node_c[i, gas]
+    for e in range(link.shape[1]):
+        if link[CELLS, e] == 0:
+            continue
+        inside = 0.0
+        for row in range(link[START, e], link[START, e] + link[CELLS, e] + 1):
+            inside += cells[row, gas]
+        out[link[FROM, e]] += 0.5 * edge[CELL_VOLUME, e] * inside
+        out[link[TO, e]] += 0.5 * edge[CELL_VOLUME, e] * inside

@@ -15,6 +15,7 @@ from rigd.model.rig import RigDefinition
 from rigd_sim.physics.bed import FILM, HOLD, LIQUID, PLACE_ROWS, RATE, RELEASED, SIZE, TEMPERATURE, TURNOVER
 from rigd_sim.physics.compiled import Floats, Ints
 from rigd_sim.physics.constants import ML_M3, ZERO_CELSIUS_K
+from rigd_sim.physics.gas import gas_at_nodes
 from rigd_sim.physics.packing_transfer import bead_rate, chung_wen, film_coefficient
 from rigd_sim.physics.properties import SOLVENTS, Solvent
 from rigd_sim.physics.transport import (
@@ -280,14 +281,8 @@ class Contents:
         """
         if self.gas_share <= 0.0:
             return None
-        in_cells = self.cells[:, self.gas]
-        own: Floats = self.node_c[:, self.gas] * self.node_volume
-        own[self.endless != 0] = 0.0
-        for e in np.flatnonzero(self.cell_count):
-            n, s = int(self.cell_count[e]), int(self.cell_start[e])
-            half = 0.5 * self.cell_volume[e] * float(in_cells[s : s + n + 1].sum())
-            own[self.ea[e]] += half
-            own[self.eb[e]] += half
+        own = np.zeros(len(self.node_volume))
+        gas_at_nodes(self.link, self.edge, self.cells, self.node, self.node_c, self.mark, own)
         for syringe, out in barrel:
             own[out] += own[syringe]
         return own
