@@ -32,11 +32,11 @@ WORKERS = 2
 ALARMS = ("test_reference_tables", "test_alarm_flags", "test_alarms_and_bypass", "test_core_properties")
 LOCKS = (
     "test_reference_tables",
+    "test_interlock_details",
     "test_interlock_partners",
     "test_alarms_and_bypass",
     "test_scan_trips",
     "test_permit_and_proof",
-    "test_interlock_details",
     "test_core_properties",
 )
 SUBJECTS = {
@@ -47,7 +47,7 @@ SUBJECTS = {
     "rigd.logic.protect.voting": LOCKS,
     "rigd.logic.protect.interlock_vote": LOCKS,
     "rigd.logic.protect.interlocks": LOCKS,
-    "rigd.logic.protect.bypass": ("test_alarms_and_bypass", "test_core_properties"),
+    "rigd.logic.protect.bypass": ("test_interlock_details", "test_alarms_and_bypass", "test_core_properties"),
     "rigd.logic.arbitration": ("test_arbitration", "test_scan_trips", "test_quench", "test_conduct_fills"),
 }
 """Module -> test files of tests/logic that answer for it."""

@@ -33,7 +33,7 @@ def test_the_example_may_run_unattended_in_the_simulator(tmp_path: Path, capsys:
         assert told in sign
     card = (tmp_path / "papers/shutdown-card.html").read_text(encoding="utf-8")
     assert card.count("<li>") == 3
-    assert "emergency stop" in card
+    assert "hard-wired emergency stop" in card
 
 
 def test_what_is_missing_is_shown(tmp_path: Path, capsys: pytest.CaptureFixture[str]) -> None:
