@@ -90,7 +90,7 @@ class DeepShell:
             for task in self._tasks:
                 task.cancel()
         tape = self._kept.tape
-        end = end or unfinished(self._kept.now_ns)
+        end = end or unfinished(self._kept.now_ns, tape.events)
         return DryResult(
             end.outcome,
             end.exit_code,

@@ -16,7 +16,7 @@ from rigd.logic import scan
 from rigd.logic.program import Program
 from rigd.logic.run_end import RunEnd
 from rigd.model.devices import DeviceIdentity, DeviceStatus, LinkState
-from rigd.model.events import Event
+from rigd.model.events import Event, EventKind
 from rigd.model.intake import Intake
 from rigd.model.orders import Order, Outcome, Request, Result, Verb
 from rigd.model.samples import Reading, Sample, Spectrum
@@ -68,9 +68,13 @@ def first_requests(program: Program, signer: str) -> tuple[Request, ...]:
     )
 
 
-def unfinished(now_ns: int) -> RunEnd:
-    """The end of a rehearsal that did not come to one."""
-    return RunEnd("stopped", 1, f"The recipe was not over after {now_ns / 3.6e12:.1f} h and was ended here.")
+def unfinished(now_ns: int, events: Sequence[Event]) -> RunEnd:
+    """The end of a rehearsal that did not come to one, with what it was waiting for."""
+    text = f"The recipe was not over after {now_ns / 3.6e12:.1f} h and was ended here."
+    states = [event for event in events if event.kind is EventKind.RUN_STATE]
+    if states and states[-1].subject == "HELD":
+        text += f" It waited for a person, and none comes in a rehearsal: {states[-1].text}"
+    return RunEnd("stopped", 1, text)
 
 
 class DryShell:
@@ -173,7 +177,7 @@ class DryShell:
         return Outcome(order.number, order.unit, order.action, result, now_ns, refusal)
 
     def _result(self, end: RunEnd | None, tape: Tape, state: scan.CoreState, now_ns: int) -> DryResult:
-        end = end or unfinished(now_ns)
+        end = end or unfinished(now_ns, tape.events)
         return DryResult(
             end.outcome,
             end.exit_code,
