@@ -2,8 +2,6 @@
 
 from __future__ import annotations
 
-from dataclasses import replace
-
 import numpy as np
 import pytest
 from fakes.sim_rigs import S_NS, two_pump_rig
@@ -20,10 +18,8 @@ BUBBLE_mL = 0.1
 
 
 def delivering(flow_mL_min: float = 0.5) -> RigPlant:
-    """The demonstration rig, beads without liquid inside, with both pumps at work on full syringes."""
-    rig = two_pump_rig()
-    hard = replace(rig.columns[0].packing, bead_liquid_fraction=0.0)
-    plant = RigPlant(replace(rig, columns=(replace(rig.columns[0], packing=hard),)), 1, EFFECTS)
+    """The demonstration rig with both pumps at work on full syringes."""
+    plant = RigPlant(two_pump_rig(), 1, EFFECTS)
     for name in plant.pumps:
         plant.tell(name, Action.FILL, 5.0)
     plant.advance(60 * S_NS)

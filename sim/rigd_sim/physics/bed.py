@@ -36,12 +36,13 @@ def exchange_beads(
     bed_rate: Floats,
     b: int,
     dt: float,
+    species: int,
     work: Floats,
 ) -> None:
     """Exchange between moving liquid and the beads of bed ``b`` over ``dt``; ``p`` is the row of the first place.
 
-    The last column is gas, which stays outside. Each slot gives in proportion to what it has in the place, so nothing
-    can become negative. ``work[0]`` is scratch.
+    The last column is gas, which stays outside; where it is, only the wet share of the beads takes part. Each slot
+    gives in proportion to what it has in the place, so nothing can become negative. ``work[0]`` is scratch.
     """
     columns = cells.shape[1] - 1
     for k in range(columns):
@@ -55,10 +56,13 @@ def exchange_beads(
     for i in range(n):
         held_up = fill if i == 0 else v
         held_down = v - fill if i == n - 1 else v
+        wet = 0.0
+        for k in range(species, columns):
+            wet += head * cells[s + i, k] + (1.0 - head) * cells[s + i + 1, k]
         for k in range(columns):
             up = cells[s + i, k]
             mean = head * up + (1.0 - head) * cells[s + i + 1, k]
-            moved = work[0, k] * (mean - beads[p + i, k])
+            moved = work[0, k] * (mean - wet * beads[p + i, k])
             if moved == 0.0:
                 continue
             beads[p + i, k] += moved / bed_rate[HOLD + k, b]

@@ -212,7 +212,7 @@ def _work_bed(
     if spread > 0.0:
         for _ in range(times):
             disperse(cells, s, n, v, fill, spread / times, work)
-    exchange_beads(cells, s, n, v, fill, beads, p, bed_rate, b, dt, work)
+    exchange_beads(cells, s, n, v, fill, beads, p, bed_rate, b, dt, species, work)
     if kin.shape[0] > 0:
         size, film = bed_rate[SIZE, b], bed_rate[FILM, b]
         react_bed(cells, s, n, v, fill, dt, p, place, activity, kin, species, size, film, work)
