@@ -164,36 +164,35 @@ def test_out_of_service_lasts_until_it_is_returned_and_is_shown_over_shelved() -
 
 
 def test_an_alarm_that_stands_is_told_again_until_it_is_gone_and_not_while_hidden() -> None:
-    rehearsal = ready(replace(QUICK, realarm_ns=600 * S))
+    rehearsal = ready(replace(QUICK, realarm_ns=60 * S))
     pressure(rehearsal, 7.0)
-    rehearsal.run(590.0)
+    rehearsal.run(58.0)
     assert told(rehearsal) == [("unacknowledged", "new")]
-    rehearsal.run(20.0)
+    rehearsal.run(2.0)
     assert told(rehearsal)[-1] == ("unacknowledged", "again")
     rehearsal.ask(Verb.ACKNOWLEDGE, QUICK.id)
-    rehearsal.run(590.0)
+    rehearsal.run(59.0)
     assert told(rehearsal)[-1] == ("acknowledged", "off")
-    rehearsal.run(20.0)
+    rehearsal.run(2.0)
     assert told(rehearsal)[-1] == ("unacknowledged", "again")
     count = len(told(rehearsal))
-    shelve(rehearsal, 1200.0)
-    rehearsal.run(1190.0)
+    shelve(rehearsal, 130.0)
+    rehearsal.run(125.0)
     assert len(told(rehearsal)) == count + 1
     pressure(rehearsal, 1.0)
-    rehearsal.run(1000.0)
+    rehearsal.run(100.0)
     assert told(rehearsal)[-1] == ("normal", "-")
 
 
 def test_an_urgent_alarm_comes_back_after_half_an_hour_when_nobody_is_there() -> None:
-    rehearsal = ready(unattended=True)
-    pressure(rehearsal, 7.0)
-    rehearsal.ask(Verb.ACKNOWLEDGE, QUICK.id)
-    rehearsal.run(1801.0)
-    assert told(rehearsal)[-1] == ("unacknowledged", "again")
-    lesser = ready(replace(QUICK, priority=Priority.MEDIUM), unattended=True)
-    pressure(lesser, 7.0)
-    lesser.run(4000.0)
-    assert told(lesser) == [("unacknowledged", "new")]
+    given = (QUICK, replace(QUICK, id="M", priority=Priority.MEDIUM), replace(QUICK, id="OWN", realarm_ns=7))
+    repeats = {
+        unattended: {alarm.id: alarm.realarm_ns for alarm in program.alarms}
+        for unattended in (True, False)
+        if (program := program_of(two_pump_rig(alarms=given), unattended=unattended))
+    }
+    assert [repeats[True][name] for name in (QUICK.id, "M", "OWN", "STOP-UNCONFIRMED")] == [1800 * S, 0, 7, 1800 * S]
+    assert [repeats[False][name] for name in (QUICK.id, "M", "OWN", "STOP-UNCONFIRMED")] == [0, 0, 7, 0]
 
 
 def test_an_interlocked_signal_whose_alarm_is_hidden_is_named_to_the_sequence() -> None:

@@ -7,6 +7,7 @@ proposal; start-up override after IEC 61511-1:2016 cl. 10.3 (clause from memory)
 from __future__ import annotations
 
 from dataclasses import replace
+from functools import cache
 
 import pytest
 from fakes.rehearsal import Rehearsal, StandIn, sequence_demand
@@ -15,6 +16,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from rigd.logic.demand import PumpDemand
+from rigd.logic.program import Program
 from rigd.logic.protect.conditions import Channel, Conditions
 from rigd.logic.protect.interlock_vote import vote
 from rigd.model.events import EventKind
@@ -118,14 +120,19 @@ def test_which_of_three_is_not_believed(
     assert (heard.rule.equivalent, heard.demand) == (equivalent, demand)
 
 
+@cache
+def three(votes: int, on_bad: OnBad) -> tuple[Interlock, Program]:
+    lock = replace(THREE, votes=votes, on_bad=on_bad)
+    return lock, program_of(two_pump_rig(interlocks=(lock,), alarms=(), sensors=(*SENSORS, THIRD)))
+
+
 STATES = st.sampled_from([Channel.CLEAR, Channel.ACTIVE, Channel.BAD, Channel.BAD_ACTIVE])
 
 
 @settings(max_examples=200, deadline=None)
 @given(st.lists(STATES, min_size=6, max_size=6), st.integers(1, 3), st.sampled_from(list(OnBad)))
 def test_disagreement_never_takes_a_demand_back(states: list[Channel], votes: int, on_bad: OnBad) -> None:
-    lock = replace(THREE, votes=votes, on_bad=on_bad)
-    program = program_of(two_pump_rig(interlocks=(lock,), alarms=(), sensors=(*SENSORS, THIRD)))
+    lock, program = three(votes, on_bad)
     channels = Conditions((*states, *[Channel.CLEAR] * (len(program.watches) - 6)))
     before = vote(program, lock, channels, running=True)
     after = vote(program, lock, channels, running=True, discord=True)
@@ -168,7 +175,7 @@ def test_a_startup_override_hides_no_bad_channel() -> None:
     assert trips(rehearsal) == ["PRESSURE-LOW"]
 
 
-@settings(max_examples=15, deadline=None)
+@settings(max_examples=6, deadline=None)
 @given(st.lists(st.tuples(st.booleans(), st.integers(1, 15)), max_size=8))
 def test_a_startup_override_can_only_end(spans: list[tuple[bool, int]]) -> None:
     rehearsal = ready(LOW, BED_HOT, demand=FLOWING)
