@@ -151,7 +151,7 @@ class Chain:
         self._kept = (START, 0)
         self._head, self._seq = self._kept
         self._kept_unsealed = self._unsealed = _Unsealed()
-        self._utc = ""
+        self._utc, self._now_ns = "", 0
         self._step = ""
 
     @property
@@ -193,7 +193,7 @@ class Chain:
                 table = _TABLE_OF[statement]
                 unsealed.add(table, values)
                 if table == "scans":
-                    self._utc = values[-1][2]
+                    _, self._now_ns, self._utc = values[-1]
                 elif table == "events":
                     found += [self._record(body) for row in values if (body := self._deed(row)) is not None]
         return [*found, *self._seal(unsealed)] if seal or unsealed.meta else found
@@ -201,13 +201,14 @@ class Chain:
     def _seal(self, unsealed: _Unsealed) -> list[schema.Row]:
         self._unsealed = _Unsealed()
         tables = {table: [count, whole.hexdigest()] for table, (count, whole) in unsealed.tables.items()}
-        body: dict[str, object] = {"kind": "seal", "utc": self._utc, "rows": tables}
+        clocks = {"utc": self._utc, "t_ns": self._now_ns, "mono_ns": self._mono_ns(self._now_ns)}
+        body: dict[str, object] = {"kind": "seal", **clocks, "rows": tables}
         if unsealed.meta:
             body["meta"] = {key: text_digest(value) for key, value in unsealed.meta.items()}
         found = [self._record(body)]
         if "outcome" in unsealed.meta:
             outcome = unsealed.meta["outcome"]
-            found.append(self._record({"kind": "end", "utc": self._utc, "outcome": outcome, **self._always}))
+            found.append(self._record({"kind": "end", **clocks, "outcome": outcome, **self._always}))
         return found
 
     def _deed(self, row: schema.Row) -> dict[str, object] | None:
@@ -224,7 +225,7 @@ class Chain:
             "kind": "audit",
             "scan": scan,
             "t_ns": t_ns,
-            "mono_ns": self._origin_ns + round(t_ns / self._pace),
+            "mono_ns": self._mono_ns(t_ns),
             "utc": self._utc,
             "actor": actor or "rigd",
             "authenticated": "user of this computer" if actor else "part of rigd",
@@ -240,6 +241,10 @@ class Chain:
             "step": self._step,
             **self._always,
         }
+
+    def _mono_ns(self, t_ns: int) -> int:
+        """The computer's own monotonic clock at a process time."""
+        return self._origin_ns + round(t_ns / self._pace)
 
     def _record(self, body: Mapping[str, object]) -> schema.Row:
         self._seq += 1

@@ -101,6 +101,7 @@ def test_who_did_what_stands_in_the_trail_with_both_clocks(tmp_path: Path) -> No
     wanted |= {"step": "prime", "t_ns": 5, "mono_ns": 1005, "utc": UTC, "boot": "b1", "run": "r1"}
     assert {key: deed[key] for key in wanted} == wanted
     assert bodies[0]["kind"] == "begin"
+    assert all({"utc", "mono_ns"} <= body.keys() for body in bodies)
     assert (bodies[-1]["kind"], bodies[-1]["outcome"]) == ("end", "stopped")
 
 
