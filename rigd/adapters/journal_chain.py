@@ -113,8 +113,13 @@ def _blob(value: bytes) -> bytes:
     return _integer(len(value)) + value
 
 
+def _number(value: float) -> bytes:
+    """A zero has no sign in SQLite."""
+    return _float(value + 0.0)
+
+
 _integer = struct.Struct("<q").pack
-_number = struct.Struct("<d").pack
+_float = struct.Struct("<d").pack
 _BYTES_OF: dict[str, Callable[[Any], bytes]] = {"i": _integer, "f": _number, "t": _text, "b": _blob}
 
 

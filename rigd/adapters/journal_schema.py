@@ -88,7 +88,7 @@ def sample_rows(scan: int, tag_ids: Mapping[str, int], samples: Sequence[Sample]
             scan,
             tag_ids[one.tag],
             one.t_ns,
-            value if (value := one.value) == value else None,
+            value + 0.0 if (value := one.value) == value else None,  # SQLite keeps no sign of a zero
             int(one.quality),
             cause_number[one.cause],
             one.raw,
