@@ -365,6 +365,58 @@ def test_no_alarm_action_changes_an_interlock_or_an_order(actions: list[tuple[Ve
     assert run(actions) == run([])
 
 
+def shelved(seconds: float) -> tuple[History, str]:
+    """A quiet alarm whose longest shelving is 100 s, asked to be shelved."""
+    found = History((False, True))
+    wish = Wish(
+        FlagEvent.SHELVE, QUICK.id, "x", "y", **({"duration_ns": round(seconds * S)} if seconds else {}), **more
+    )
+    found.alarms, changes, refusal = alarms.ask(found.program, found.alarms, wish, found.now_ns)
+    found.changes += changes
+    return found, refusal
+
+
+@pytest.mark.parametrize(("seconds", "granted"), [(0.0, False), (1e-9, True), (100.0, True), (100.000000001, False)])
+def test_how_long_an_alarm_may_be_shelved(seconds: float, granted: bool) -> None:
+    assert (shelved(seconds)[1] == "") is granted
+
+
+def test_shelving_counts_from_its_first_moment_and_ends_in_the_scan_that_is_due() -> None:
+    found, _ = shelved(60.0)
+    found.step("wait", 50)
+    wish = Wish(FlagEvent.SHELVE, QUICK.id, "x", "y", 50 * S)
+    found.alarms, _, refusal = alarms.ask(found.program, found.alarms, wish, found.now_ns)
+    assert refusal == ""
+    assert found.state.until_ns == 100 * S
+    assert found.alarms.due_ns == 100 * S
+    found.step("wait", 49)
+    assert found.state.flag is not None
+    found.step("wait", 1)
+    assert found.state.flag is None
+
+
+def test_since_when_an_alarm_stands_and_when_it_is_repeated() -> None:
+    found = history((True, True), [("on", 3), ("wait", 4)])
+    assert (found.state.since_ns, found.state.again_ns) == (3 * S, 53 * S)
+    found.step("ack", 1)
+    assert (found.state.since_ns, found.state.again_ns) == (3 * S, 58 * S)
+    found.step("wait", 49)
+    assert found.changes[-1].event is AlarmEvent.ACK
+    found.step("wait", 1)
+    assert found.changes[-1].event is AlarmEvent.REALARM
+    assert found.state.since_ns == 3 * S
+    assert alarms.Running().since_ns == 0
+
+
+@pytest.mark.parametrize(
+    ("target", "words"),
+    [("*", "there is nothing to acknowledge"), (QUICK.id, f"{QUICK.id} has nothing to acknowledge")],
+)
+def test_nothing_to_acknowledge(target: str, words: str) -> None:
+    found = History((False, True))
+    assert alarms.request(found.program, found.alarms, AlarmEvent.ACK, target, "x", 0)[2] == words
+
+
 def test_a_state_before_and_after_is_one_of_the_table() -> None:
     """Each change of the engine is a row of the core or of the resync table."""
     found = history((True, True), [("on", 1), ("shelve", 1), ("off", 1), ("wait", 61), ("ack", 1), ("reset", 1)])
