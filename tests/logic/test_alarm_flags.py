@@ -368,9 +368,8 @@ def test_no_alarm_action_changes_an_interlock_or_an_order(actions: list[tuple[Ve
 def shelved(seconds: float) -> tuple[History, str]:
     """A quiet alarm whose longest shelving is 100 s, asked to be shelved."""
     found = History((False, True))
-    wish = Wish(
-        FlagEvent.SHELVE, QUICK.id, "x", "y", **({"duration_ns": round(seconds * S)} if seconds else {}), **more
-    )
+    wish = Wish(FlagEvent.SHELVE, QUICK.id, "x", "y")
+    wish = replace(wish, duration_ns=round(seconds * S)) if seconds else wish
     found.alarms, changes, refusal = alarms.ask(found.program, found.alarms, wish, found.now_ns)
     found.changes += changes
     return found, refusal
