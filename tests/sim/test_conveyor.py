@@ -81,7 +81,7 @@ MOVES = st.lists(
 )
 
 
-@settings(max_examples=80, deadline=None)
+@settings(max_examples=40, deadline=None)
 @given(st.integers(1, 12), MOVES)
 def test_amounts_and_places(n: int, moves: list[tuple[float, float]]) -> None:
     """Species are conserved to rounding over any reversal, no value leaves the range, foreign rows stay untouched,

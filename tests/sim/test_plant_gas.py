@@ -91,7 +91,7 @@ EVENTS = st.lists(
 )  # fmt: skip
 
 
-@settings(max_examples=25, deadline=None, suppress_health_check=[HealthCheck.too_slow])
+@settings(max_examples=8, deadline=None, suppress_health_check=[HealthCheck.too_slow])
 @given(EVENTS)
 def test_nothing_is_lost_and_nothing_runs_away(events: list[tuple[str, float]]) -> None:
     """Liquid to 1e-9 whatever happens to the gas; pressures stay finite, no share is negative."""

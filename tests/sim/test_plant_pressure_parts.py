@@ -254,7 +254,7 @@ WALK = st.lists(
 )  # fmt: skip
 
 
-@settings(max_examples=40, deadline=None, suppress_health_check=[HealthCheck.too_slow])
+@settings(max_examples=30, deadline=None, suppress_health_check=[HealthCheck.too_slow])
 @given(COMPLIANCES, WALK)
 def test_no_step_size_blows_up(compliance: float, walk: list[tuple[float, float, float]]) -> None:
     """Stiff (0.005 mL/bar) and soft, any caller's step: pressures stay within what pump, relief and vacuum allow."""

@@ -14,7 +14,7 @@ from fakes.sim_rigs import S_NS, column_rig, tracer
 from rigd.model.orders import Action
 from rigd.model.rig import Packing
 from rigd_sim.faults import EFFECTS
-from rigd_sim.plant import RigPlant
+from rigd_sim.plant import RigPlant, layout
 
 DAY_S = 86_400
 PAGE = os.sysconf("SC_PAGE_SIZE")
@@ -29,8 +29,9 @@ def resident_MB() -> float:
 @pytest.mark.slow
 @pytest.mark.timeout(300)
 @pytest.mark.skipif(not sys.platform.startswith("linux"), reason="reads /proc")
-def test_memory_is_flat_over_a_week(capsys: pytest.CaptureFixture[str]) -> None:
+def test_memory_is_flat_over_a_week(monkeypatch: pytest.MonkeyPatch, capsys: pytest.CaptureFixture[str]) -> None:
     """Seven days of pumping, refilling and looking at everything: after the first day at most 2 MB more."""
+    monkeypatch.setattr(layout, "CELLS_BED", 20)
     rig = column_rig(tracer(1e-3), Packing("resin", True, 0.2, 0.38, 0.3))
     lines = tuple(replace(tube, length_mm=300.0) for tube in rig.lines)
     plant = RigPlant(replace(rig, lines=lines), 1, EFFECTS)

@@ -2,8 +2,8 @@
 
     C_i dP_i/dt = q_i - sum_e Q_e,     Q_e = G_e (P_a - P_b)           (tube, bed: G = 1/resistance)
                                        Q_e = G_e (P_a - P_b - crack)   (check valve, back-pressure regulator: never < 0)
-                                       Q_e = G_e (P_a - P_b)    (relief valve once open; it opens at crack and shuts
-                                                                 at a lower pressure)
+                                       Q_e = G_e (P_a - P_b - bias)    (relief valve once open; it opens at crack,
+                                                                        shuts at a lower pressure, bias below that)
 
 Integrated by the two-stage, stiffly accurate, L-stable diagonally implicit Runge-Kutta method with gamma =
 1 - 1/sqrt(2) (R. Alexander, SIAM J. Numer. Anal. 14 (1977) 1006-1021). Stages and volumes use the same flows, so liquid

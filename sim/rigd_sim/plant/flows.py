@@ -80,7 +80,7 @@ class Flows:
         self.ea[:], self.eb[:] = [self.rank[e.a] for e in edges], [self.rank[e.b] for e in edges]
         self.crack[:] = [e.crack for e in edges]
         self.shut[:] = [e.crack if e.shut < 0.0 else e.shut for e in edges]
-        self.bias[:] = [e.crack if e.shut < 0.0 else 0.0 for e in edges]
+        self.bias[:] = [e.crack if e.shut < 0.0 else e.bias for e in edges]
         self.base = np.array([e.conductance for e in edges])
         self.gate = np.ones(len(edges))
         self.flow = np.zeros(len(layout.edges))

@@ -21,6 +21,8 @@ JOINT_NODE_M3 = 1e-10
 CAVITATION_PA = 0.9e5
 REGULATOR_CONDUCTANCE = 1e-6 / 60 / 0.05e5  # 1 mL/min at 50 mbar above the set pressure: common practice, no source
 
+RESEAT_SHARE = 0.01
+"""A relief valve closes when this part of its capacity still passes: it would never do so otherwise."""
 EXPANSION_K = 150.0
 """A bed's reserve of liquid for thermal expansion is enough for this rise of temperature."""
 
@@ -65,6 +67,7 @@ class Edge:
     length: float = 0.0
     crack: float = -1.0
     shut: float = -1.0  # where a relief valve closes again; ``crack`` for all others
+    bias: float = 0.0  # pressure that a relief valve's spring takes from what drives the flow
     conductance: float = 0.0
     gates: tuple[tuple[str, str], ...] = ()  # (valve, position) that must all be open
     supply: bool = False
@@ -231,11 +234,13 @@ def _add_reliefs(layout: Layout, rig: RigDefinition) -> None:
     for declared in rig.reliefs:
         relief = with_truth(declared, rig.simulation.truth)
         out = layout.node_index[relief.to or "floor"]
-        opens, shuts = relief.set_bar * BAR_PA, relief.reseat_bar * BAR_PA
-        conductance = relief.capacity_mL_min * ML_MIN_M3_S / opens
+        opens, reseats = relief.set_bar * BAR_PA, relief.reseat_bar * BAR_PA
+        shuts = reseats + RESEAT_SHARE * (opens - reseats)
+        conductance = relief.capacity_mL_min * ML_MIN_M3_S / (opens - reseats)
         layout.add_edge(
-            Edge(relief.id, layout.point(relief.at), out, "relief", crack=opens, shut=shuts, conductance=conductance)
-        )
+            Edge(relief.id, layout.point(relief.at), out, "relief", crack=opens, shut=shuts, bias=reseats,
+                 conductance=conductance)
+        )  # fmt: skip
 
 
 def _add_expansion(layout: Layout, rig: RigDefinition) -> None:
