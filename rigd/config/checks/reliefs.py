@@ -39,7 +39,9 @@ def _pressures(context: RigContext, relief: Relief) -> None:
         context.found.error("relief-reseat", place, message, "it must shut at a lower pressure than it opens")
     side = side_of(context.sides, relief.at)
     if side is not None and relief.set_bar >= side.rating_bar:
-        message = f"{relief.id} opens at {relief.set_bar:g} bar, but {side.weakest} is rated for {side.rating_bar:g} bar"
+        message = (
+            f"{relief.id} opens at {relief.set_bar:g} bar, but {side.weakest} is rated for {side.rating_bar:g} bar"
+        )
         place = context.at("reliefs", relief.id, "set_pressure")
         remedy = f"a set pressure below {side.rating_bar:g} bar"
         context.found.error("relief-above-rating", place, message, remedy)
