@@ -12,8 +12,9 @@ from pathlib import Path
 import pytest
 
 from rigd.logic.student import gamma_quantile
-from rigd_sim.physics import hardware, heat, packed_bed, packing_transfer, ramps, residence, tubing
+from rigd_sim.physics import gel_bed, hardware, heat, packed_bed, packing_transfer, ramps, residence, tubing
 from rigd_sim.physics.kinetics import arrhenius_factor, convective_first_order, convective_second_order
+from rigd_sim.physics.properties import SOLVENTS
 
 REFERENCE = Path(__file__).parents[1] / "reference"
 Row = dict[str, str]
@@ -214,3 +215,13 @@ def test_compliance(row: Row) -> None:
         same(hardware.time_constant(a * 1e5 * 60e6, hardware.gas_compliance(b * 1e-6, c * 1e5)), row["value"])
     else:
         same(hardware.closed_flask(1.0, a, b, c) * (1.01325 if c == 0 else 1.0) * 1.01325, row["value"], 1e-4)
+
+
+def test_gel_from_poor_to_good_solvent() -> None:
+    """From methanol (0.95 mL/g) to dichloromethane (5.2): volume 5.47 times, bead diameter 1.762 times (arithmetic on
+    figures from memory: F. Z. Doerwald 2002, ch. 1)."""
+    poor, good = SOLVENTS["methanol"].swelling_mL_g, SOLVENTS["dichloromethane"].swelling_mL_g
+    before = gel_bed.settled(poor, poor, 1e-6, 1.0, 1.0, 0.38, 1e-4)
+    after = gel_bed.settled(good, poor, 1e-6, 1.0, 1.0, 0.38, 1e-4)
+    assert after.bead_diameter / before.bead_diameter == pytest.approx(1.762, abs=5e-4)
+    assert after.length / before.length == pytest.approx(5.47, abs=5e-3)
