@@ -48,7 +48,13 @@ SUBJECTS = {
     "rigd.logic.protect.interlock_vote": LOCKS,
     "rigd.logic.protect.interlocks": LOCKS,
     "rigd.logic.protect.bypass": ("test_interlock_details", "test_alarms_and_bypass", "test_core_properties"),
-    "rigd.logic.arbitration": ("test_arbitration", "test_scan_trips", "test_quench", "test_conduct_fills"),
+    "rigd.logic.arbitration": (
+        "test_arbitration",
+        "test_arbitration_details",
+        "test_scan_trips",
+        "test_quench",
+        "test_conduct_fills",
+    ),
 }
 """Module -> test files of tests/logic that answer for it."""
 
@@ -62,11 +68,12 @@ class Mutant:
     line: int
     what: str
     source: str
+    within: str = ""
 
     @property
     def name(self) -> str:
-        """How it is called in the list of excused ones: the changed line itself, so that moving it changes nothing."""
-        return f"{self.source} -> {self.what}"
+        """How it is called in the list of excused ones: function and line, so that moving it changes nothing."""
+        return f"{self.within}: {self.source} -> {self.what}"
 
 
 COMPARE: dict[type[ast.cmpop], type[ast.cmpop]] = {
@@ -98,10 +105,11 @@ class Changer(ast.NodeTransformer):
 
     def __init__(self, wanted: int = -1) -> None:
         self.wanted, self.count = wanted, 0
-        self.sites: list[tuple[int, str]] = []
+        self.sites: list[tuple[int, str, str]] = []
+        self._within: list[str] = []
 
     def _here(self, node: ast.AST, what: str) -> bool:
-        self.sites.append((getattr(node, "lineno", 0), what))
+        self.sites.append((getattr(node, "lineno", 0), what, ".".join(self._within)))
         self.count += 1
         return self.count - 1 == self.wanted
 
@@ -114,13 +122,17 @@ class Changer(ast.NodeTransformer):
         return node
 
     def visit_FunctionDef(self, node: ast.FunctionDef) -> ast.AST:
+        self._within.append(node.name)
         node.args.defaults = [self.visit(value) for value in node.args.defaults]
         node.args.kw_defaults = [None if value is None else self.visit(value) for value in node.args.kw_defaults]
         node.body = self._body(node.body)
+        self._within.pop()
         return node
 
     def visit_ClassDef(self, node: ast.ClassDef) -> ast.AST:
+        self._within.append(node.name)
         node.body = self._body(node.body)
+        self._within.pop()
         return node
 
     def visit_If(self, node: ast.If) -> ast.AST:
@@ -215,7 +227,10 @@ def mutants_of(module: str) -> list[Mutant]:
     changer = Changer()
     changer.visit(ast.parse(text))
     lines = text.splitlines()
-    return [Mutant(module, n, line, what, lines[line - 1].strip()) for n, (line, what) in enumerate(changer.sites)]
+    return [
+        Mutant(module, number, line, what, lines[line - 1].strip(), within)
+        for number, (line, what, within) in enumerate(changer.sites)
+    ]
 
 
 class Substitute(importlib.abc.MetaPathFinder, importlib.abc.Loader):

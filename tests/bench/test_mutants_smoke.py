@@ -8,7 +8,7 @@ import sys
 from pathlib import Path
 
 import pytest
-from bench.mutants import SUBJECTS, mutants_of
+from bench.mutants import SUBJECTS, excused, mutants_of
 
 ROOT = Path(__file__).resolve().parents[2]
 
@@ -23,6 +23,12 @@ def test_every_module_has_mutants_with_names_of_their_own_line(module: str) -> N
 def test_the_tests_that_answer_for_a_module_are_there() -> None:
     names = {name for tests in SUBJECTS.values() for name in tests}
     assert [name for name in sorted(names) if not (ROOT / "tests/logic" / f"{name}.py").is_file()] == []
+
+
+def test_what_is_excused_is_still_there_and_says_why() -> None:
+    named = {(module, mutant.name) for module in SUBJECTS for mutant in mutants_of(module)}
+    assert set(excused()) <= named
+    assert all(excused().values())
 
 
 @pytest.mark.slow
