@@ -368,6 +368,7 @@ def test_no_alarm_action_changes_an_interlock_or_an_order(actions: list[tuple[Ve
 def shelved(seconds: float) -> tuple[History, str]:
     """A quiet alarm whose longest shelving is 100 s, asked to be shelved."""
     found = History((False, True))
+    found.now_ns = 7 * S
     wish = Wish(FlagEvent.SHELVE, QUICK.id, "x", "y")
     wish = replace(wish, duration_ns=round(seconds * S)) if seconds else wish
     found.alarms, changes, refusal = alarms.ask(found.program, found.alarms, wish, found.now_ns)
@@ -386,8 +387,8 @@ def test_shelving_counts_from_its_first_moment_and_ends_in_the_scan_that_is_due(
     wish = Wish(FlagEvent.SHELVE, QUICK.id, "x", "y", 50 * S)
     found.alarms, _, refusal = alarms.ask(found.program, found.alarms, wish, found.now_ns)
     assert refusal == ""
-    assert found.state.until_ns == 100 * S
-    assert found.alarms.due_ns == 100 * S
+    assert found.state.until_ns == 107 * S
+    assert found.alarms.due_ns == 107 * S
     found.step("wait", 49)
     assert found.state.flag is not None
     found.step("wait", 1)
