@@ -55,6 +55,17 @@ def test_an_unattended_run_without_a_permit_or_proof_tests_is_refused_before_any
     assert not (tmp_path / "runs").exists()
 
 
+def test_an_unattended_rehearsal_says_what_a_real_rig_would_be_refused_for(
+    tmp_path: Path, capsys: pytest.CaptureFixture[str], monkeypatch: pytest.MonkeyPatch
+) -> None:
+    monkeypatch.setenv("RIGD_RUNTIME", str(tmp_path / "rt"))
+    rig, recipe = write(tmp_path, recipe=OVERNIGHT)
+    assert call(["run", str(rig), str(recipe), "--unattended", "--runs", str(tmp_path / "runs")]) == 1
+    told = capsys.readouterr().err
+    assert "proof tests: overdue: PRESSURE-HIGH" in told
+    assert "not being served" in told.replace("\n", " ")  # no simulator runs here
+
+
 def test_proof_tests_are_recorded_and_listed(tmp_path: Path, capsys: pytest.CaptureFixture[str]) -> None:
     rig, _ = write(tmp_path)
     assert call(["proof", str(rig)]) == 1

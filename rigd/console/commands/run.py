@@ -52,10 +52,23 @@ def run(
     simulated = all(link.port == SIMULATED for link in pair.rig.links)
     if not simulated and not signer:
         signer = sign(output, pair.rig, pair.recipe)
+    if unattended:
+        say_waived(output, rig, pair.rig, pair.recipe, pace)
     start_run(rig, recipe, RunSettings(
         pace=pace, signer=signer, runs=runs, collected=collected, unattended=unattended,
         progress=PROGRESS, after=report_command(output.json),
     ))  # fmt: skip
+
+
+def say_waived(output: Output, path: Path, rig: RigDefinition, recipe: Recipe, pace: float) -> None:
+    """Tell what a real rig would be refused for, though a simulated one is not."""
+    from rich.markup import escape
+
+    from rigd.runtime.arming import arming_of
+
+    for one in arming_of(path, rig, recipe, pace).requirements:
+        if one.waived and not one.met:
+            output.errors.print(f"[yellow]{one.title}[/]: {escape(one.found)} ({one.waived})")
 
 
 def sign(output: Output, rig: RigDefinition, recipe: Recipe) -> str:
