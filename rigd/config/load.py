@@ -86,6 +86,13 @@ def load_pair(rig_path: FilePath, recipe_path: FilePath | None = None) -> Pair:
     return Pair(read.rig, recipe, problems)
 
 
+def _find_cards(file: RigFile, folder: Path) -> None:
+    """Make the card files that devices name relative to the rig file findable from anywhere."""
+    for device in file.devices:
+        if isinstance(name := device.options.get("card"), str):
+            device.options["card"] = str((folder / name).absolute())
+
+
 def read_rig(path: FilePath) -> Read:
     """Like ``load_rig``, but returns the findings, and the rig as far as it could be made."""
     source, unread = read_source(Path(path))
@@ -95,6 +102,7 @@ def read_rig(path: FilePath) -> Read:
     file = read_tables(RigFile, source, found)
     chemistry = _chemistry(file, Path(path), found)
     digest = digest_of(file, *chemistry.tables, without=frozenset({"chemistry"})) if not found.failed else ""
+    _find_cards(file, Path(path).parent)
     drafted = compile_rig(file, _chemistry_value(chemistry.tables), found, digest)
     context = RigContext(file, drafted.rig, drafted.sides, chemistry.species, found)
     for check in (check_identity, check_parts, check_lines, check_devices, check_limits, check_flow):

@@ -10,6 +10,7 @@ from typing import Any
 
 from rigd.config.chemistry_tables import ChemistryFile
 from rigd.config.files import RecipeFile, RigFile
+from rigd.config.nights_tables import NightsFile
 from rigd.config.quantity import HOUSE_UNIT
 from rigd.config.table import Table
 
@@ -33,9 +34,19 @@ def chemistry_schema() -> Schema:
     return _schema(ChemistryFile, "chemistry file")
 
 
+def nights_schema() -> Schema:
+    """JSON Schema (draft 2020-12) of a nights file."""
+    return _schema(NightsFile, "nights file")
+
+
 def schema_files() -> dict[str, str]:
     """File name -> text of the schemas as they are shipped in configs/schema."""
-    schemas = {"rig": rig_schema(), "recipe": recipe_schema(), "chemistry": chemistry_schema()}
+    schemas = {
+        "rig": rig_schema(),
+        "recipe": recipe_schema(),
+        "chemistry": chemistry_schema(),
+        "nights": nights_schema(),
+    }
     return {f"{name}.schema.json": json.dumps(schema, indent=1) + "\n" for name, schema in schemas.items()}
 
 

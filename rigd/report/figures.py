@@ -48,23 +48,23 @@ _STYLE: Any = {
 }
 
 
-def _styled(draw: Draw) -> Draw:
+def styled(draw: Draw) -> Draw:
     """Draw with the page's style, whatever the user's own settings are."""
 
     @wraps(draw)
-    def styled(*arguments: Any) -> str:
+    def in_style(*arguments: Any) -> str:
         import matplotlib
 
         with matplotlib.rc_context(_STYLE):
             return draw(*arguments)
 
-    return styled  # type: ignore[return-value]
+    return in_style  # type: ignore[return-value]
 
 
-@_styled
+@styled
 def conversion_figure(run: RunData, kinetics: KineticsResult) -> str:
     """Conversion against residence time and against flow, one colour per temperature, with the fitted curves."""
-    figure, (left, right) = _figure(1, 2, (10.2, 4.1))
+    figure, (left, right) = new_figure(1, 2, (10.2, 4.1))
     temperatures = sorted({round(point.temperature_degC, 1) for point in run.points if _drawn(point)})
     for index, temperature in enumerate(temperatures):
         colour = COLOURS[index % len(COLOURS)]
@@ -82,15 +82,15 @@ def conversion_figure(run: RunData, kinetics: KineticsResult) -> str:
     if handles:
         left.legend(handles, labels, loc="lower right", fontsize=8.5)
     _mark_simulated(figure, run.simulated)
-    return _svg(figure)
+    return svg_text(figure)
 
 
-@_styled
+@styled
 def timeline_figure(run: RunData) -> str:
     """Flow, pressure, temperature and conversion over time, phases shaded, trips marked."""
     panels = [(what, run.measured(what)) for what in ("flow", "pressure", "temperature", "fraction")]
     panels = [(what, traces) for what, traces in panels if traces] or [("pressure", ())]
-    figure, rows = _figure(len(panels), 1, (10.2, 1.0 + 1.75 * len(panels)), sharex=True, squeeze=False)
+    figure, rows = new_figure(len(panels), 1, (10.2, 1.0 + 1.75 * len(panels)), sharex=True, squeeze=False)
     scale, unit = (3600.0, "h") if run.duration_s > 3 * 3600 else (60.0, "min")
     for index, (what, traces) in enumerate(panels):
         axes = rows[index][0]
@@ -110,7 +110,7 @@ def timeline_figure(run: RunData) -> str:
     rows[-1][0].set_xlabel(f"time since the start / {unit}")
     rows[-1][0].set_xlim(0, max(run.duration_s, 1.0) / scale)
     _mark_simulated(figure, run.simulated)
-    return _svg(figure)
+    return svg_text(figure)
 
 
 def thinned(t_s: NDArray[np.float64], value: NDArray[np.float64], bins: int = PIXELS) -> tuple[Any, Any]:
@@ -280,14 +280,14 @@ def _mark_simulated(figure: Figure, simulated: bool) -> None:
         )  # fmt: skip
 
 
-def _figure(rows: int, columns: int, size: tuple[float, float], **options: Any) -> tuple[Figure, Any]:
+def new_figure(rows: int, columns: int, size: tuple[float, float], **options: Any) -> tuple[Figure, Any]:
     from matplotlib.figure import Figure
 
     figure = Figure(figsize=size, layout="constrained")
     return figure, figure.subplots(rows, columns, **options)
 
 
-def _svg(figure: Figure) -> str:
+def svg_text(figure: Figure) -> str:
     buffer = io.StringIO()
     figure.savefig(buffer, format="svg", metadata={"Date": None, "Creator": None})
     text = buffer.getvalue()

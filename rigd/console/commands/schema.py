@@ -6,7 +6,7 @@ import click
 
 from rigd.console.output import Output, json_option
 
-KINDS = ("rig", "recipe", "chemistry")
+KINDS = ("rig", "recipe", "chemistry", "nights")
 
 
 @click.command()
@@ -14,7 +14,7 @@ KINDS = ("rig", "recipe", "chemistry")
 @json_option
 @click.pass_obj
 def schema(output: Output, kind: str) -> None:
-    """Print the JSON Schema of a rig, recipe or chemistry file; editors complete and check with it."""
+    """Print the JSON Schema of a rig, recipe, chemistry or nights file; editors complete and check with it."""
     from rigd.config import schema as schemas
 
     output.json = True
