@@ -101,9 +101,15 @@ def _dosed(layout: Layout, doses: Mapping[str, Sequence[Dose]], flows: Mapping[s
     left = {name: layout.pumps[name].reserve_mL(flows[name]) for name in doses}
     fills = sum(len(row) * layout.pumps[name].pump.syringes for name, row in doses.items())
     seconds = max(times, default=0.0)
+    drawn = {name: _with_reserve(row, left[name]) for name, row in doses.items()}
     return Effort(
-        seconds, flows, volumes, doses, {**start.left_mL, **left}, fills, start.bath_degC, start.after(seconds)
+        seconds, flows, volumes, drawn, {**start.left_mL, **left}, fills, start.bath_degC, start.after(seconds)
     )
+
+
+def _with_reserve(doses: Sequence[Dose], reserve_mL: float) -> tuple[Dose, ...]:
+    """As drawn: each dose is filled with a reserve that runs out before the next liquid."""
+    return tuple(replace(dose, volume_mL=dose.volume_mL + reserve_mL) for dose in doses)
 
 
 def _prime(layout: Layout, spec: PhaseSpec, before: Effort) -> Effort:
@@ -152,7 +158,7 @@ def _switchover(layout: Layout, spec: PhaseSpec, before: Effort) -> Effort:
     flows = flows_of(layout, spec.reagent, spec.slow, spec.point)
     rule = layout.recipe.switchover
     doses = rinse_doses(layout, rule.rinses, spec.reagent, flows) if rule else {}
-    rinsed = _dosed(layout, doses, flows, before) if doses else replace(before, duration_s=0.0, refills=0)
+    rinsed = _dosed(layout, doses, flows, before) if doses else replace(before, duration_s=0.0, refills=0, doses={})
     charge_s = meet_s = 0.0
     for name, flow in flows.items():
         play = layout.pumps[name]
@@ -161,7 +167,8 @@ def _switchover(layout: Layout, spec: PhaseSpec, before: Effort) -> Effort:
         meet_s = max(meet_s, 60.0 * (rinsed.left_mL.get(name, 0.0) + play.feed.outlet_mL) / flow)
     volumes = {name: layout.pumps[name].feed.outlet_mL for name in flows}
     rinses = {
-        name: (*doses.get(name, ()), Dose(label(layout.pumps[name], spec.reagent), mL)) for name, mL in volumes.items()
+        name: (*rinsed.doses.get(name, ()), Dose(label(layout.pumps[name], spec.reagent), mL))
+        for name, mL in volumes.items()
     }
     left = {name: layout.pumps[name].pump.stroke_mL for name in flows}
     seconds = rinsed.duration_s + charge_s + meet_s

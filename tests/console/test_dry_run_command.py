@@ -3,6 +3,9 @@
 from __future__ import annotations
 
 import json
+import os
+import subprocess
+import sys
 from pathlib import Path
 
 import pytest
@@ -63,6 +66,23 @@ def test_the_demonstration_is_done_and_agrees_with_the_plan(capsys):
     assert facts["trips"] == []
     assert call(["check", *FILES, "--json"]) == 0
     planned = json.loads(capsys.readouterr().out)
-    assert facts["duration_s"] == pytest.approx(planned["duration_s"], rel=0.05)
+    assert facts["duration_s"] == pytest.approx(planned["duration_s"], rel=0.03)
     for liquid, volume in planned["used_mL"].items():
-        assert facts["used_mL"][liquid] == pytest.approx(volume, rel=0.2)
+        near = 0.02 if liquid == "solvent" else 0.2  # reagent: the signal gate takes longer than its shortest time
+        assert facts["used_mL"][liquid] == pytest.approx(volume, rel=near)
+
+
+@pytest.mark.slow
+@pytest.mark.timeout(120)
+@pytest.mark.parametrize(
+    ("before", "options", "hash_seed"),
+    [((), ("-O",), "0"), ((), (), "4711"), (("taskset", "-c", "0"), (), "1")],
+    ids=["optimised", "other hash seed", "one core"],
+)
+def test_the_digest_is_the_same_in_any_process(capsys, before, options, hash_seed):
+    _, here = rehearse(capsys, *BLOCK)
+    command = [*before, sys.executable, *options, "-m", "rigd", "dry-run", *FILES, "--json", *BLOCK]
+    environment = {**os.environ, "PYTHONHASHSEED": hash_seed}
+    ran = subprocess.run(command, env=environment, capture_output=True, text=True, timeout=60)
+    assert ran.returncode == 1, ran.stderr
+    assert json.loads(ran.stdout)["digest"] == here["digest"]
