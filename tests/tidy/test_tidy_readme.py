@@ -10,12 +10,15 @@ from pathlib import Path
 import pytest
 
 from rigd.config.load import load_pair
+from rigd.config.varied import read_nights
 from rigd.console.cli import COMMANDS
 
 ROOT = Path(__file__).resolve().parents[2]
 README = (ROOT / "README.md").read_text(encoding="utf-8")
 RIG, RECIPE = ROOT / "configs/rigs/two-pump-column.toml", ROOT / "configs/recipes/demo-sweep.toml"
-EXCERPTS = re.findall(r"^```toml\n(.*?)^```$", README, re.MULTILINE | re.DOTALL)
+ALL_EXCERPTS = re.findall(r"^```toml\n(.*?)^```$", README, re.MULTILINE | re.DOTALL)
+NIGHTS_EXCERPTS = [text for text in ALL_EXCERPTS if text.startswith("[[vary]]")]
+EXCERPTS = [text for text in ALL_EXCERPTS if text not in NIGHTS_EXCERPTS]
 LINES = re.findall(r"^ {4}(rigd [^#\n]+)|`(rigd [^`]+)`", README, re.MULTILINE)
 COMMAND_LINES = [(code or words).strip() for code, words in LINES]
 FILES = set(re.findall(r"`((?:configs|drivers|sim)/[^`\s]*|[A-Z]+\.md)`|\]\(([^)#]+)\)", README))
@@ -42,6 +45,15 @@ def test_excerpt_loads_as_part_of_the_example(tmp_path: Path, excerpt: str) -> N
     (tmp_path / "rig.toml").write_text(rig)
     (tmp_path / "recipe.toml").write_text(recipe)
     assert load_pair(tmp_path / "rig.toml", tmp_path / "recipe.toml").recipe is not None
+
+
+@pytest.mark.parametrize("excerpt", NIGHTS_EXCERPTS)
+def test_excerpt_of_a_nights_file_is_one(tmp_path: Path, excerpt: str) -> None:
+    head = (ROOT / "configs/nights/demo-nights.toml").read_text().partition("[[vary]]")[0]
+    path = tmp_path / "nights.toml"
+    path.write_text(head.replace('"../', f'"{ROOT}/configs/') + excerpt)
+    nights = read_nights(path)
+    assert len(nights.varied) == excerpt.count("[[vary]]")
 
 
 def test_a_spoilt_excerpt_is_found_out(tmp_path: Path) -> None:
