@@ -69,6 +69,11 @@ def used_mL(done: DryRun) -> dict[str, float]:
     return {str(name): float(volume) for name, volume in used.items()} if isinstance(used, dict) else {}
 
 
+def vessels_mL(done: DryRun) -> dict[str, float]:
+    """mL in each vessel at the end, counted by the core from the pumps' own counters."""
+    return dict(done.result.state.protect.ledger.vessels)
+
+
 def dry_facts(done: DryRun, data: RunData, seed: int, wall_s: float) -> dict[str, object]:
     """The keys that ``dry-run --json`` promises."""
     result = done.result

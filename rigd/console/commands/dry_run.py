@@ -30,7 +30,9 @@ def dry_run(
     specs = tuple(parse_fault(text) for text in faults)
     from rigd.app import DrySettings
     from rigd.app import dry_run as rehearse
-    from rigd.console.rehearsal import dry_facts, longest_ns, rehearsed, show_progress
+    from rigd.console.rehearsal import dry_facts, longest_ns, rehearsed, show_progress, vessels_mL
+    from rigd.console.timeline import rehearsal_view
+    from rigd.logic.planning import plan
     from rigd.report.summary import summary
     from rigd.runtime.dry import DryOptions
 
@@ -44,6 +46,7 @@ def dry_run(
     data = rehearsed(done, out)
     output.document(dry_facts(done, data, seed or 0, wall_s))
     output.say(summary(data))
+    output.say(rehearsal_view(data, plan(done.program), done.result.peak, vessels_mL(done)))
     output.say(
         f"[dim]{done.result.end_ns / 1e9 / max(wall_s, 1e-9):.0f} × real time, digest {done.result.digest[:16]}[/]"
     )
