@@ -70,12 +70,12 @@ def thermocouple_mV(kind: str, t_degC: float) -> float:
 
 def pt100_degC(ohm: float) -> float:
     """Temperature from a resistance; not a number outside -200 to 850 degC (also for an open or shorted element)."""
-    return _invert(pt100_ohm, ohm, -200.0, 850.0)
+    return _invert(pt100_ohm, ohm, -200.02, 850.02)
 
 
 def thermocouple_degC(kind: str, voltage_mV: float) -> float:
     """Temperature from a compensated voltage; not a number outside the range of ``thermocouple_mV``."""
-    return _invert(lambda t: thermocouple_mV(kind, t), voltage_mV, -200.0, 400.0 if kind == "T" else 1372.0)
+    return _invert(lambda t: thermocouple_mV(kind, t), voltage_mV, -200.02, 400.02 if kind == "T" else 1372.02)
 
 
 def _polynomial(coefficients: tuple[float, ...], t: float) -> float:
