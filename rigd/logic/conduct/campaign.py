@@ -75,4 +75,4 @@ def _points(program: Program, points: tuple[Point, ...]) -> list[PhaseSpec]:
 
 def _label(point: Point) -> str:
     names = {PointKind.POINT: "Point", PointKind.RETURN: "Return point", PointKind.BLANK: "Solvent blank"}
-    return f"{names[point.kind]} {point.id}: {point.total_mL_min:g} mL/min at {point.temperature_degC:g} degC"
+    return f"{names[point.kind]} {point.id}: {point.total_mL_min:.3g} mL/min at {point.temperature_degC:g} degC"

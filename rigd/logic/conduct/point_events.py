@@ -19,7 +19,7 @@ _VERDICTS = {
 
 def started(point: Point, t_ns: int) -> Event:
     """The flows of the point are being set."""
-    flows = ", ".join(f"{pump} {flow:g}" for pump, flow in sorted(point.flows_mL_min.items()))
+    flows = ", ".join(f"{pump} {flow:.3g}" for pump, flow in sorted(point.flows_mL_min.items()))
     text = f"Point {point.id} begins: {flows} mL/min at {point.temperature_degC:g} degC."
     return event(EventKind.POINT, point.id, t_ns, text, status="started", kind=str(point.kind))
 
