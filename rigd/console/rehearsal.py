@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import contextlib
+import time
 from collections.abc import Callable, Iterator
 from pathlib import Path
 from typing import Any
@@ -22,15 +23,22 @@ from rigd.report.points import point_rows
 PATIENCE = 3.0
 """A rehearsal that takes this many times its plan, and an hour, waits for somebody who is not there: it is ended."""
 
+PROGRESS_AFTER_S = 1.0
+"""Wall time after which a rehearsal shows how far it is."""
+
 Watch = Callable[[int, scan.CoreState], None]
 
 
-def longest_ns(rig: Path, recipe: Path) -> int:
-    """When to give up on a rehearsal [ns of process time], from its plan. Raises ``ConfigError``."""
+def planned_s(rig: Path, recipe: Path) -> float:
+    """How long the recipe takes on paper [s of process time]. Raises ``ConfigError``."""
     pair = load_pair(rig, recipe)
     assert pair.recipe is not None
-    planned_s = plan(compile_program(pair.rig, pair.recipe)).duration_s
-    return int((PATIENCE * planned_s + 3600.0) * 1e9)
+    return plan(compile_program(pair.rig, pair.recipe)).duration_s
+
+
+def longest_ns(expected_s: float) -> int:
+    """When to give up on a rehearsal [ns of process time] that was planned to take so long."""
+    return int((PATIENCE * expected_s + 3600.0) * 1e9)
 
 
 def rehearsed(done: DryRun, folder: Path | None) -> RunData:
@@ -95,18 +103,28 @@ def dry_facts(done: DryRun, data: RunData, seed: int, wall_s: float) -> dict[str
 
 
 @contextlib.contextmanager
-def show_progress(output: Output) -> Iterator[Watch | None]:
-    """A line with phase and process time while the rehearsal goes on, on a terminal only."""
+def show_progress(output: Output, expected_s: float) -> Iterator[Watch | None]:
+    """A bar against the planned time once the rehearsal has taken a second, on a terminal only."""
     if not output.errors.is_terminal:
         yield None
         return
-    with output.errors.status("rehearsing ...") as status:
+    from rich.progress import BarColumn, Progress, TextColumn, TimeRemainingColumn
 
-        def watch(now_ns: int, state: scan.CoreState) -> None:
-            if now_ns // 1_000_000_000 % 30 == 0:
-                status.update(f"rehearsing: {left_words(now_ns / 1e9)} of process time{_phase(state)}")
+    columns = (TextColumn("rehearsing"), BarColumn(), TextColumn("{task.fields[at]}"), TimeRemainingColumn())
+    bar = Progress(*columns, console=output.errors, transient=True)
+    task = bar.add_task("", total=expected_s, at="")
+    began_s = time.monotonic()
 
+    def watch(now_ns: int, state: scan.CoreState) -> None:
+        if now_ns // 1_000_000_000 % 30 == 0 and time.monotonic() - began_s > PROGRESS_AFTER_S:
+            bar.start()
+            now_s = now_ns / 1e9
+            bar.update(task, completed=min(now_s, expected_s), at=f"{left_words(now_s)} of process time{_phase(state)}")
+
+    try:
         yield watch
+    finally:
+        bar.stop()
 
 
 def _phase(state: Any) -> str:

@@ -30,7 +30,7 @@ def dry_run(
     specs = tuple(parse_fault(text) for text in faults)
     from rigd.app import DrySettings
     from rigd.app import dry_run as rehearse
-    from rigd.console.rehearsal import dry_facts, longest_ns, rehearsed, show_progress, vessels_mL
+    from rigd.console.rehearsal import dry_facts, longest_ns, planned_s, rehearsed, show_progress, vessels_mL
     from rigd.console.timeline import rehearsal_view
     from rigd.logic.planning import plan
     from rigd.report.summary import summary
@@ -38,8 +38,9 @@ def dry_run(
 
     began = time.monotonic()
     journal = _journal(out) if out is not None else None
-    options = DryOptions(limit_ns=longest_ns(rig, recipe))
-    with show_progress(output) as watch:
+    expected_s = planned_s(rig, recipe)
+    options = DryOptions(limit_ns=longest_ns(expected_s))
+    with show_progress(output, expected_s) as watch:
         settings = DrySettings(seed or 0, specs, journal, watch, options, deep)
         done = rehearse(rig, recipe, settings)
     wall_s = time.monotonic() - began
