@@ -12,6 +12,7 @@ import tomllib
 from collections.abc import Mapping
 from datetime import UTC, datetime
 from pathlib import Path
+from typing import Any
 
 from rigd.model.errors import RigError
 
@@ -42,6 +43,7 @@ def frozen_texts(rig_path: Path, recipe_path: Path) -> dict[str, str]:
     if lines != 1:
         raise RigError(f'{rig_path}: write the chemistry file on a line of its own, as chemistry = "..."')
     texts = {CHEMISTRY: chemistry.read_text(encoding="utf-8"), RECIPE: recipe_path.read_text(encoding="utf-8")}
+    texts |= _cards(rig_path.parent, tomllib.loads(rig_text))
     return {RIG: frozen, **texts}
 
 
@@ -53,7 +55,18 @@ def freeze_files(folder: Path, rig_path: Path, recipe_path: Path) -> None:
         raise RigError(f"cannot copy the files of the run to {folder}: {error.strerror}") from error
 
 
+def _cards(folder: Path, rig: Mapping[str, Any]) -> dict[str, str]:
+    """Protocol cards beside the rig file, under the names that its devices use; those at absolute paths stay."""
+    names = {str(device.get("options", {}).get("card", "")) for device in rig.get("devices", ())} - {""}
+    near = [name for name in sorted(names) if not Path(name).is_absolute()]
+    for name in near:
+        if ".." in Path(name).parts:
+            raise RigError(f"card {name!r}: keep cards beside or below the rig file, so that a run can keep its copy")
+    return {name: (folder / name).read_text(encoding="utf-8") for name in near}
+
+
 def write_texts(folder: Path, texts: Mapping[str, str]) -> None:
     """Write frozen files into a folder. Raises ``OSError``."""
     for name, text in texts.items():
+        (folder / name).parent.mkdir(parents=True, exist_ok=True)
         (folder / name).write_text(text, encoding="utf-8")

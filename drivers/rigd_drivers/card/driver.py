@@ -32,6 +32,33 @@ class NotTheDevice(WrongDevice, DeviceRefused):
     """Another device answers than the card describes."""
 
 
+class Account:
+    """The fillings of a pump that draws from its bottle all the time, kept as the daemon orders them."""
+
+    def __init__(self, single: bool) -> None:
+        self.level_mL, self.standby_mL = 0.0, 0.0
+        self._single, self._delivered_mL = single, math.nan
+
+    def takes(self, order: Order) -> bool:
+        """Book a filling or a change-over; ``False`` for orders that the pump itself must carry out."""
+        if order.action is Action.FILL and self._single:
+            self.level_mL = order.value
+        elif order.action is Action.FILL:
+            self.standby_mL = order.value
+        elif order.action is Action.SWAP:
+            self.level_mL, self.standby_mL = self.standby_mL, self.level_mL
+        return order.action in (Action.FILL, Action.SWAP)
+
+    def drew(self, delivered_mL: float) -> None:
+        """Book what was delivered since the last poll; an empty account goes on with the other one."""
+        if delivered_mL > self._delivered_mL:
+            self.level_mL -= delivered_mL - self._delivered_mL
+        self._delivered_mL = delivered_mL
+        if self.level_mL <= 0 < self.standby_mL:
+            self.level_mL, self.standby_mL = self.level_mL + self.standby_mL, 0.0
+        self.level_mL = max(self.level_mL, 0.0)
+
+
 class CardDevice:
     """Implements ``rigd.ports.driver.Driver`` for one card."""
 
@@ -44,6 +71,7 @@ class CardDevice:
         self._talk = Talk(card, spec.id, spec.address, retries if isinstance(retries, int) else 2)
         self._ordered: dict[str, float] = {}
         self._totals: dict[str, tuple[float, float]] = {}
+        self._account = Account(spec.facts.get("syringes") == 1) if card.continuous else None
 
     async def identify(self, line: Line) -> DeviceIdentity:
         """Ask what the card's identity says; a device that tells nothing has the card's names."""
@@ -70,14 +98,19 @@ class CardDevice:
 
     async def poll(self, line: Line, channels: Sequence[str]) -> Sequence[Reading]:
         """The channels asked for, each question once; then the heartbeat."""
+        account = self._account
         for channel in channels:
-            if channel not in self._card.channels:
+            if channel not in self._card.channels and (account is None or channel not in ("level", "standby")):
                 known = ", ".join(self._card.channels)
                 raise LocalProtocolError(f"{self._spec.id}: no channel {channel!r}; the card has {known}")
         seen: dict[str, str | float] = {}
         if await self._restarted(line, seen):
             raise DeviceProtocolError(f"{self._spec.id}: has restarted and lost its settings")
-        values = {name: await self._reading(line, name, seen) for name in channels}
+        read = [name for name in self._card.channels if name in channels or account is not None]
+        values = {name: await self._reading(line, name, seen) for name in read}
+        if account is not None:
+            account.drew(values["delivered"].value)
+            values |= {"level": Reading("level", account.level_mL), "standby": Reading("standby", account.standby_mL)}
         for step in self._card.heartbeat:
             await self._talk.step(line, step, None)
         return [values[name] for name in channels]
@@ -86,6 +119,8 @@ class CardDevice:
         """The steps of one order, in turn; a stop uses the steps of the last will unless it has its own."""
         name = order.action.value
         table = self._card.orders.get(name)
+        if self._account is not None and self._account.takes(order):
+            return
         if table is None and order.action is not Action.STOP:
             raise DeviceRefused(f"{self._spec.id}: the card has no order {name!r}")
         if table is not None and table.range is not None and not table.range[0] <= order.value <= table.range[1]:

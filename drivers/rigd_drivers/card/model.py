@@ -157,11 +157,13 @@ class CardLink(Table):
 
 
 class Card(Table):
-    """One device as its manual tells it."""
+    """One device as its manual tells it. ``continuous``: a pump without syringes; the card engine keeps the account of
+    fillings that the daemon orders, so that it needs no channels ``level`` and ``standby`` and no order ``fill``."""
 
     schema_: Literal["rigd-card-1"] = Field(alias="schema")
     title: str
     family: Literal["pump", "valve", "chiller", "sensor"]
+    continuous: bool = False
     link: CardLink
     framing: Framing = Field(default_factory=Framing)
     identity: Identity = Field(default_factory=Identity)

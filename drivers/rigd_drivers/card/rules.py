@@ -27,6 +27,8 @@ def findings(card: Card) -> list[Finding]:
 
 
 def _kind(card: Card) -> Iterator[Finding]:
+    if card.continuous and (card.family != "pump" or {"level", "standby"} & set(card.channels)):
+        yield "continuous", "only for a pump, without channels level and standby", "remove one of them"
     if card.modbus and (card.questions or card.errors or card.busy):
         yield "questions", "questions, errors and busy are for text", "use [registers.NAME]"
     if not card.modbus and card.registers:
@@ -70,7 +72,7 @@ def known_reading(card: Card, name: str) -> bool:
 
 def _channels(card: Card) -> Iterator[Finding]:
     for name in NEEDED[card.family]:
-        if name not in card.channels:
+        if name not in card.channels and not (card.continuous and name in ("level", "standby")):
             yield (
                 f"channels.{name}",
                 f"channel {name!r} is missing",
