@@ -136,13 +136,9 @@ async def _speak(
 @click.pass_obj
 def ports(output: Output) -> None:
     """List serial ports with names that stay when plugs are changed; asks no device anything."""
-    from serial.tools.list_ports import comports
+    from rigd.adapters.port_list import serial_ports
 
-    stable = {str(path.resolve()): str(path) for path in sorted(Path("/dev/serial/by-id").glob("*"))}
-    found = [
-        {"port": stable.get(one.device, one.device), "device": one.device, "what": one.description}
-        for one in sorted(comports(), key=lambda one: str(one.device))
-    ]
+    found = serial_ports()
     output.document({"ports": found})
     for one in found:
         output.say(f"{one['port']}  ({one['device']}, {one['what']})")
