@@ -60,13 +60,18 @@ class Plant(Protocol):
         "volume:<vessel>" [mL], "conversion:<part>", "level:<pump>", "peak-pressure:<part>" [bar since the start]."""
 
 
+def _no_targets(rig: RigDefinition, kind: str) -> Sequence[str]:
+    return ()
+
+
 @dataclass(frozen=True, slots=True)
 class PlantMaker:
-    """What the entry point group ``rigd.plants`` must resolve to. ``make(rig, seed)``."""
+    """What the entry point group ``rigd.plants`` must resolve to. ``make(rig, seed)``; ``fault_targets(rig, kind)``."""
 
     name: str
     make: Callable[[RigDefinition, int], Plant]
     fault_kinds: Callable[[], Sequence[FaultKind]]
+    fault_targets: Callable[[RigDefinition, str], Sequence[str]] = _no_targets
 
 
 @dataclass(frozen=True, slots=True)

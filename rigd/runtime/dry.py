@@ -26,6 +26,7 @@ from rigd.runtime.polls import Poll, polls_of, samples_of
 from rigd.runtime.tape import Tape
 
 SIMULATED = DeviceIdentity(maker="rigd", model="simulated", serial_no="0", simulated=True)
+NEVER_NS = 1 << 62
 LONGEST_NS = 14 * 86_400 * 1_000_000_000
 """A dry run that is not over after two weeks of its own time is ended and said to be endless."""
 
@@ -34,13 +35,28 @@ Derive = Callable[[Spectrum], Sequence[Reading]]
 
 
 @dataclass(frozen=True, slots=True)
+class Visit:
+    """Somebody to call when the rehearsal has come to a moment; the plant is up to date then."""
+
+    t_ns: int
+    call: Callable[[int], None]
+
+
+@dataclass(frozen=True, slots=True)
 class DryOptions:
-    """Who acts as the person, what else is asked and when, and when to give up (process time)."""
+    """Who acts as the person, what else is asked and when, and when to give up (process time).
+
+    A run that is held for ``held_ns`` waits for a person who does not come, and is ended.
+    ``visits`` call somebody at their times, with the plant up to date; ``afterwards`` is asked once the run is over.
+    """
 
     requests: tuple[Request, ...] = ()
     signer: str = "dry run"
     limit_ns: int = LONGEST_NS
     linger_ns: int = 2_000_000_000
+    held_ns: int = 2 * 3_600_000_000_000
+    visits: tuple[Visit, ...] = ()
+    afterwards: tuple[Verb, ...] = ()
 
 
 @dataclass(slots=True)
@@ -77,6 +93,13 @@ def unfinished(now_ns: int, events: Sequence[Event]) -> RunEnd:
     return RunEnd("stopped", 1, text)
 
 
+def _held_since(events: Sequence[Event], before_ns: int) -> int:
+    for event in events:
+        if event.kind is EventKind.RUN_STATE:
+            before_ns = event.t_ns if event.subject == "HELD" else NEVER_NS
+    return before_ns
+
+
 class DryShell:
     """Runs one program on one plant. ``watch`` is called once per simulated second with the time and the state."""
 
@@ -106,11 +129,13 @@ class DryShell:
         state = scan.initial(self._program, 0)
         for request in (*first_requests(self._program, options.signer), *options.requests):
             self._at(request.t_ns, request)
+        for visit in options.visits:
+            self._at(visit.t_ns, visit)
         for poll in self._polls:
             self._at(0, poll)
         outcomes: tuple[Outcome, ...] = ()
         links = tuple(DeviceStatus(d.id, LinkState.ONLINE, 0, identity=SIMULATED) for d in self._program.rig.devices)
-        wake_ns, end, end_ns = 0, None, options.limit_ns
+        wake_ns, end, end_ns, held_ns = 0, None, options.limit_ns, NEVER_NS
         now_ns = 0
         while True:
             due_ns = self._queue[0][0] if self._queue else options.limit_ns
@@ -128,7 +153,10 @@ class DryShell:
                 wake_ns = min(wake_ns, now_ns + 50_000_000)
             if end is None and (end := scan.run_end(self._program, state)) is not None:
                 end_ns = min(end_ns, now_ns + options.linger_ns)
-            if now_ns >= end_ns:
+                for number, verb in enumerate(options.afterwards):
+                    self._at(now_ns, Request(f"afterwards-{number}", verb, options.signer, now_ns))
+            held_ns = _held_since(step.events, held_ns)
+            if now_ns >= end_ns or now_ns - held_ns >= options.held_ns:
                 break
         return self._result(end, tape, state, now_ns)
 
@@ -146,6 +174,8 @@ class DryShell:
                 self._at(t_ns + thing.period_ns, thing)
             elif isinstance(thing, Request):
                 requests.append(thing)
+            elif isinstance(thing, Visit):
+                thing.call(now_ns)
         return tuple(samples), tuple(requests)
 
     def _read(self, poll: Poll, now_ns: int) -> list[Sample]:

@@ -12,7 +12,7 @@ from rigd.ports.plant import FaultKind, PlantMaker, SimulatorMaker, SimulatorOpt
 from rigd_sim.bench import server
 from rigd_sim.emulators.assemble import emulated_lines
 from rigd_sim.emulators.line_faults import LINE_KINDS
-from rigd_sim.faults import fault_kinds, make_plant
+from rigd_sim.faults import fault_kinds, fault_targets, make_plant
 
 
 def all_fault_kinds() -> Sequence[FaultKind]:
@@ -25,5 +25,5 @@ def serve(rig: RigDefinition, options: SimulatorOptions) -> int:
     return server.serve(rig, options, PLANT)
 
 
-PLANT = PlantMaker("simulated", make_plant, fault_kinds)
+PLANT = PlantMaker("simulated", make_plant, fault_kinds, fault_targets)
 SIMULATOR = SimulatorMaker("simulated", serve, emulated_lines, all_fault_kinds)

@@ -22,3 +22,8 @@ def fault_kinds() -> Sequence[FaultKind]:
 def make_plant(rig: RigDefinition, seed: int) -> Plant:
     """The simulated plant of a rig, with all fault kinds."""
     return RigPlant(rig, seed, EFFECTS)
+
+
+def fault_targets(rig: RigDefinition, kind: str) -> Sequence[str]:
+    """What a kind of fault can hit in this rig."""
+    return tuple(EFFECTS[kind].targets(rig))

@@ -1,0 +1,138 @@
+"""One rehearsal, many faults: at each moment the process divides, and the child goes on with a fault in its plant.
+
+The healthy part before the moment is computed once for all faults of a worker. A child tells its night as one row
+through a pipe and ends at once. (Division needs a system that can fork: Linux and its kin.)
+"""
+
+from __future__ import annotations
+
+import os
+import pickle
+import traceback
+from collections.abc import Callable
+from dataclasses import dataclass, field
+from pathlib import Path
+
+from rigd.adapters.plugins import plant_maker
+from rigd.config import load_pair
+from rigd.logic.program import compile_program
+from rigd.model.orders import Verb
+from rigd.ports.plant import FaultSpec, Plant
+from rigd.prove.judge import Night, night_of
+from rigd.runtime.dry import DryOptions, DryShell, Visit
+from rigd.runtime.spectra import cell_readers
+
+SPARE_NS = 1_200_000_000_000
+HELD_NS = 60_000_000_000
+LINGER_NS = 6_000_000_000
+
+
+@dataclass(frozen=True, slots=True)
+class Moment:
+    """When faults come: a phase and its time."""
+
+    phase: str
+    t_ns: int
+
+
+@dataclass(frozen=True, slots=True)
+class Job:
+    """What one worker does: one seed, some faults (onset is filled in), all moments."""
+
+    rig: str
+    recipe: str
+    seed: int
+    faults: tuple[FaultSpec, ...]
+    moments: tuple[Moment, ...]
+    healthy_ns: int
+
+
+@dataclass(slots=True)
+class _Branch:
+    """What this process knows of where it is: in a child, its fault and where to tell."""
+
+    fault: FaultSpec | None = None
+    phase: str = ""
+    onset_ns: int = 0
+    pipe: int = -1
+    nights: list[Night] = field(default_factory=list)
+
+
+def run_job(job: Job) -> list[Night]:
+    """All nights of a job."""
+    pair = load_pair(job.rig, job.recipe)
+    assert pair.recipe is not None
+    program = compile_program(pair.rig, pair.recipe)
+    plant = plant_maker().make(pair.rig, job.seed)
+    here = _Branch()
+    visits = tuple(Visit(m.t_ns, _dividing(here, job, m, plant)) for m in job.moments)
+    options = DryOptions(
+        limit_ns=job.healthy_ns + SPARE_NS,
+        linger_ns=LINGER_NS,
+        held_ns=HELD_NS,
+        visits=visits,
+        afterwards=(Verb.START,),
+    )
+    try:
+        result = DryShell(program, plant, cell_readers(pair.rig)).run(options)
+        if here.fault is None:
+            return here.nights
+        hazards = next(kind.hazards for kind in plant_maker().fault_kinds() if kind.kind == here.fault.kind)
+        at = (here.phase, here.onset_ns, job.seed)
+        _tell(here.pipe, night_of(program, plant, result, here.fault, hazards, at))
+    except BaseException:
+        if here.fault is None:
+            raise
+        _tell(here.pipe, traceback.format_exc())
+    os._exit(0)
+
+
+def _dividing(here: _Branch, job: Job, moment: Moment, plant: Plant) -> Callable[[int], None]:
+    def divide(now_ns: int) -> None:
+        if here.fault is not None:
+            return
+        for fault in job.faults:
+            if _child(here, fault, moment, now_ns):
+                plant.inject(FaultSpec(fault.kind, fault.target, onset_s=now_ns / 1e9, magnitude=fault.magnitude))
+                return
+
+    return divide
+
+
+def _child(here: _Branch, fault: FaultSpec, moment: Moment, now_ns: int) -> bool:
+    """True in the child; the parent waits for what it tells."""
+    reader, writer = os.pipe()
+    pid = os.fork()
+    if pid == 0:
+        os.close(reader)
+        here.fault, here.phase, here.onset_ns, here.pipe = fault, moment.phase, now_ns, writer
+        return True
+    os.close(writer)
+    with os.fdopen(reader, "rb") as pipe:
+        told = pipe.read()
+    os.waitpid(pid, 0)
+    answer = pickle.loads(told) if told else "the process died without a word"
+    here.nights.append(answer if isinstance(answer, Night) else Night.broken(fault, moment.phase, str(answer)))
+    return False
+
+
+def _tell(pipe: int, answer: object) -> None:
+    with os.fdopen(pipe, "wb") as file:
+        file.write(pickle.dumps(answer))
+
+
+def healthy_moments(rig: Path, recipe: Path, seed: int) -> tuple[tuple[Moment, ...], int, list[str]]:
+    """A moment well inside each phase of a healthy night, its length [ns], and what tripped in it (nothing should)."""
+    from rigd.app import DrySettings, dry_run
+    from rigd.model.events import EventKind
+
+    done = dry_run(rig, recipe, DrySettings(seed))
+    starts = [e for e in done.result.events if e.kind is EventKind.PHASE and not e.fields.get("step")]
+    ends = [event.t_ns for event in starts[1:]] + [done.result.end_ns]
+    moments = [
+        Moment(event.subject, event.t_ns + min((end - event.t_ns) // 2, 60_000_000_000))
+        for event, end in zip(starts, ends, strict=True)
+        if end - event.t_ns > 4_000_000_000
+    ]
+    trips = [event.subject for event in done.result.events if event.kind is EventKind.TRIP]
+    return tuple(moments), done.result.end_ns, trips

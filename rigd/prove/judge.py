@@ -1,0 +1,171 @@
+"""Judges one faulted night by the true plant: ratings, time to stop, class of stop, first-out, restart."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+from rigd.logic.program import Program
+from rigd.model.events import Event, EventKind
+from rigd.model.protection import Interlock
+from rigd.model.rig import RigDefinition
+from rigd.ports.plant import FaultSpec, Plant
+from rigd.prove.expected import NONE, STRENGTH, Expected, expected
+from rigd.runtime.dry import DryResult
+
+STOPPED_ML_MIN = 0.3
+"""More than what pressure let go moves through a line some seconds after a stop (seen in the simulator: 0.1)."""
+_OWN_UNIT = ("LINK-", "STALL-", "MISMATCH-", "POWER-", "EMPTY-")
+
+At = tuple[str, int, int]
+"""Phase, onset [ns] and seed."""
+HELD, UNSEEN, MISSED = "held", "not seen", "missed"
+
+
+@dataclass(frozen=True, slots=True)
+class Night:
+    """One faulted night. ``verdict``: held, not seen, or missed; ``why`` says what was missed ("" when held)."""
+
+    kind: str
+    target: str
+    magnitude: float
+    phase: str
+    seed: int
+    verdict: str
+    why: str
+    stop: str
+    first_out: str
+    first_s: float
+    stopped_s: float
+    peak_share: float
+    peak_part: str
+    alarms: tuple[str, ...]
+    add: str = ""
+
+    @classmethod
+    def broken(cls, fault: FaultSpec, phase: str, words: str) -> Night:
+        """A night whose rehearsal itself failed."""
+        why = f"the rehearsal failed: {words.strip().splitlines()[-1]}"
+        nan = float("nan")
+        return cls(
+            fault.kind, fault.target, fault.magnitude, phase, 0, MISSED, why, "", "", nan, nan, nan, "", ()
+        )  # fmt: skip
+
+
+def night_of(
+    program: Program, plant: Plant, result: DryResult, fault: FaultSpec, hazards: tuple[str, ...], at: At
+) -> Night:
+    """Judge what a faulted rehearsal came to."""
+    phase, onset_ns, seed = at
+    after = [event for event in result.events if event.t_ns >= onset_ns]
+    trips = [event for event in after if event.kind is EventKind.TRIP]
+    stops = [event for event in after if event.kind is EventKind.STOP and event.subject != NONE]
+    stop = max((event.subject for event in stops), key=STRENGTH.index, default=_held(after))
+    answer = expected(hazards)
+    part, share = _peak(program.rig, plant)
+    moving = _moving(program.rig, plant)
+    why = [
+        *_over_rating(part, share),
+        *_stop_class(stop, answer),
+        *_first_out(program, trips, fault, answer),
+        *_still_moving(stop, moving),
+        *_restarted(after, trips),
+    ]
+    alarms = tuple(dict.fromkeys(e.subject for e in after if e.kind is EventKind.ALARM and e.fields.get("announce")))
+    verdict = MISSED if why else HELD
+    if not why and stop == NONE and NONE not in answer.stops and not alarms:
+        verdict = UNSEEN
+    return Night(
+        kind=fault.kind, target=fault.target, magnitude=fault.magnitude, phase=phase, seed=seed, verdict=verdict,
+        why="; ".join(why), stop=stop, first_out=trips[0].subject if trips else "",
+        first_s=(trips[0].t_ns - onset_ns) / 1e9 if trips else float("nan"),
+        stopped_s=_stop_time(after, onset_ns), peak_share=share, peak_part=part, alarms=alarms,
+        add=answer.add if verdict == UNSEEN else "",
+    )  # fmt: skip
+
+
+def _held(events: list[Event]) -> str:
+    held = any(event.kind is EventKind.RUN_STATE and event.subject == "HELD" for event in events)
+    return "hold" if held else NONE
+
+
+def _peak(rig: RigDefinition, plant: Plant) -> tuple[str, float]:
+    """The part that came nearest to its rating, and how near (1 = at it), in the whole night."""
+    truth = plant.truth()
+    ratings = {pump.id: pump.rating_bar for pump in rig.pumps}
+    ratings |= {column.id: column.rating_bar for column in rig.columns}
+    ratings |= {cell.id: cell.rating_bar for cell in rig.cells}
+    ratings |= {tee.id: tee.rating_bar for tee in rig.tees}
+    ratings |= {valve.id: valve.rating_bar for valve in rig.valves}
+    ratings |= {regulator.id: regulator.rating_bar for regulator in rig.regulators}
+    shares = {part: truth.get(f"peak-pressure:{part}", 0.0) / rating for part, rating in ratings.items() if rating > 0}
+    part = max(shares, key=shares.__getitem__, default="")
+    return part, shares.get(part, 0.0)
+
+
+def _moving(rig: RigDefinition, plant: Plant) -> list[str]:
+    truth = plant.truth()
+    lines = [line.id for line in rig.lines if line.start.part in {pump.id for pump in rig.pumps}]
+    return [line for line in lines if truth.get(f"flow:{line}", 0.0) > STOPPED_ML_MIN]
+
+
+def _over_rating(part: str, share: float) -> list[str]:
+    return [f"{part} came to {100 * share:.0f} % of its rating"] if share > 1.0 else []
+
+
+def _stop_class(stop: str, answer: Expected) -> list[str]:
+    if stop == NONE or stop in answer.stops:
+        return []
+    wanted = sorted(answer.stops, key=STRENGTH.index)
+    if STRENGTH.index(stop) > STRENGTH.index(wanted[-1]):
+        return [f"{stop} is more than the fault asks for ({' or '.join(wanted)})"]
+    return [f"{stop} is not what the fault asks for ({' or '.join(wanted)})"]
+
+
+def _first_out(program: Program, trips: list[Event], fault: FaultSpec, answer: Expected) -> list[str]:
+    """Trips of one unit must name the faulty one; others must watch a measure that the fault moves."""
+    if not trips:
+        return []
+    name = trips[0].subject
+    if name.startswith(_OWN_UNIT):
+        owner = name.split("-", 1)[1]
+        mine = {fault.target, *(d.id for d in program.rig.devices if d.unit == fault.target)}
+        mine |= {d.unit for d in program.rig.devices if d.id == fault.target}
+        return [] if owner in mine or _behind(program, owner, fault) else [f"first-out {name} points at the wrong unit"]
+    interlock = next((one for one in program.rig.interlocks if one.id == name), None)
+    if interlock is None or interlock.built_in or _watches(program, interlock, fault, answer):
+        return []
+    return [f"first-out {name} watches nothing that this fault moves"]
+
+
+def _behind(program: Program, owner: str, fault: FaultSpec) -> bool:
+    """A pump that stalls against a shut way, or runs dry on an empty bottle, is named for what it met."""
+    return owner in {pump.id for pump in program.rig.pumps} and fault.target not in {p.id for p in program.rig.pumps}
+
+
+def _watches(program: Program, interlock: Interlock, fault: FaultSpec, answer: Expected) -> bool:
+    measures = {tag.id: tag.measures for tag in program.rig.tags}
+    tags = {tag for cause in interlock.causes for tag in (cause.tag, getattr(cause, "other", "")) if tag}
+    return fault.target in tags or bool({measures.get(tag, "") for tag in tags} & answer.measures)
+
+
+def _still_moving(stop: str, moving: list[str]) -> list[str]:
+    return [f"liquid still moves in {', '.join(moving)} after the {stop}"] if stop == "cut" and moving else []
+
+
+def _restarted(events: list[Event], trips: list[Event]) -> list[str]:
+    """A start that is asked for afterwards must be refused until somebody resets."""
+    taken = [
+        event
+        for event in events
+        if event.kind is EventKind.REQUEST
+        and event.subject == "start"
+        and str(event.fields.get("request_id", "")).startswith("afterwards")
+        and event.fields.get("result") == "accepted"
+    ]
+    return ["a start was accepted before any reset"] if trips and taken else []
+
+
+def _stop_time(events: list[Event], onset_ns: int) -> float:
+    """From the fault to pumps confirmed at rest [s]; NaN when it did not come to that."""
+    ended = [e.t_ns for e in events if e.kind is EventKind.RUN_STATE and e.subject in ("ABORTED", "STOPPED")]
+    return (ended[0] - onset_ns) / 1e9 if ended else float("nan")
