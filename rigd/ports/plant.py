@@ -57,7 +57,8 @@ class Plant(Protocol):
 
     def truth(self) -> Mapping[str, float]:
         """True state for checkers: "pressure:<part>" [bar], "temperature:<part>" [degC], "flow:<line>" [mL/min],
-        "volume:<vessel>" [mL], "conversion:<part>", "level:<pump>", "peak-pressure:<part>" [bar since the start]."""
+        "volume:<vessel>" [mL], "conversion:<part>", "level:<pump>",
+        "delivering:<pump>" [mL/min], "peak-pressure:<part>" [bar since the start]."""
 
 
 def _no_targets(rig: RigDefinition, kind: str) -> Sequence[str]:

@@ -12,8 +12,6 @@ from rigd.ports.plant import FaultSpec, Plant
 from rigd.prove.expected import NONE, STRENGTH, Expected, expected
 from rigd.runtime.dry import DryResult
 
-STOPPED_ML_MIN = 0.3
-"""More than what pressure let go moves through a line some seconds after a stop (seen in the simulator: 0.1)."""
 _OWN_UNIT = ("LINK-", "STALL-", "MISMATCH-", "POWER-", "EMPTY-")
 
 At = tuple[str, int, int]
@@ -65,7 +63,7 @@ def night_of(
     moving = _moving(program.rig, plant)
     why = [
         *_over_rating(part, share),
-        *_stop_class(stop, answer),
+        *_stop_class(_decided(trips, stop), stop, answer),
         *_first_out(program, trips, fault, answer),
         *_still_moving(stop, moving),
         *_restarted(after, trips),
@@ -104,21 +102,28 @@ def _peak(rig: RigDefinition, plant: Plant) -> tuple[str, float]:
 
 def _moving(rig: RigDefinition, plant: Plant) -> list[str]:
     truth = plant.truth()
-    lines = [line.id for line in rig.lines if line.start.part in {pump.id for pump in rig.pumps}]
-    return [line for line in lines if truth.get(f"flow:{line}", 0.0) > STOPPED_ML_MIN]
+    return [pump.id for pump in rig.pumps if truth.get(f"delivering:{pump.id}", 0.0) != 0.0]
 
 
 def _over_rating(part: str, share: float) -> list[str]:
     return [f"{part} came to {100 * share:.0f} % of its rating"] if share > 1.0 else []
 
 
-def _stop_class(stop: str, answer: Expected) -> list[str]:
-    if stop == NONE or stop in answer.stops:
+def _decided(trips: list[Event], stop: str) -> str:
+    """What the first-out asked for: a quench that cannot be carried out ends as a cut, and that is no over-reaction."""
+    return str(trips[0].fields.get("stop", stop)) if trips else stop
+
+
+def _stop_class(decided: str, stop: str, answer: Expected) -> list[str]:
+    if stop == NONE:
         return []
     wanted = sorted(answer.stops, key=STRENGTH.index)
-    if STRENGTH.index(stop) > STRENGTH.index(wanted[-1]):
-        return [f"{stop} is more than the fault asks for ({' or '.join(wanted)})"]
-    return [f"{stop} is not what the fault asks for ({' or '.join(wanted)})"]
+    words = " or ".join(wanted)
+    if STRENGTH.index(decided) > STRENGTH.index(wanted[-1]):
+        return [f"{decided} is more than the fault asks for ({words})"]
+    if STRENGTH.index(stop) < STRENGTH.index(wanted[0]):
+        return [f"{stop} is less than the fault asks for ({words})"]
+    return []
 
 
 def _first_out(program: Program, trips: list[Event], fault: FaultSpec, answer: Expected) -> list[str]:
@@ -149,7 +154,7 @@ def _watches(program: Program, interlock: Interlock, fault: FaultSpec, answer: E
 
 
 def _still_moving(stop: str, moving: list[str]) -> list[str]:
-    return [f"liquid still moves in {', '.join(moving)} after the {stop}"] if stop == "cut" and moving else []
+    return [f"{', '.join(moving)} still delivers after the {stop}"] if stop == "cut" and moving else []
 
 
 def _restarted(events: list[Event], trips: list[Event]) -> list[str]:

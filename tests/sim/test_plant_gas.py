@@ -115,3 +115,23 @@ def test_nothing_is_lost_and_nothing_runs_away(events: list[tuple[str, float]]) 
     assert plant.contents.totals()[first:last].sum() == pytest.approx(liquid, rel=1e-9)
     assert plant.contents.cells.min() > -1e-9
     assert plant.contents.node_c.min() > -1e-9
+
+
+def test_a_syringe_of_air_draws_the_line_down_to_the_room_and_no_further() -> None:
+    """Air at 0 bar that meets a line at 2 bar is pressed: the line falls towards 0 bar, not below, and rises again."""
+    plant = delivering()
+    plant.inject(FaultSpec("bottle-empty", next(v.id for v in plant.rig.vessels if v.liquid), magnitude=1.0))
+    before = plant.contents.totals()
+    for pump in plant.pumps:
+        plant.tell(pump, Action.FILL, 5.0)
+    plant.advance(plant.now_ns + 60 * S_NS)
+    for pump in plant.pumps:
+        plant.tell(pump, Action.SWAP, 0.0)
+    lowest = 10.0
+    for _ in range(100):
+        plant.advance(plant.now_ns + S_NS // 5)
+        lowest = min(lowest, min(value for key, value in plant.truth().items() if key.startswith("pressure:")))
+    assert -0.25 < lowest < 0.5
+    plant.settle()
+    liquid = slice(plant.contents.n_species, plant.contents.gas)
+    assert plant.contents.totals()[liquid].sum() == pytest.approx(before[liquid].sum(), rel=1e-9)

@@ -20,6 +20,8 @@ from rigd_sim.plant.levers import Levers
 from rigd_sim.plant.packing import Bed
 
 SMALLEST_VELOCITY = 1e-9
+AT_ONCE, MOST_STEPS = 0.1, 500
+"""Gas that wants more volume in a step than moves the pressure by this part of itself is followed in smaller ones."""
 LINE_STEP_K = 0.5
 """The viscosity in a line is found anew when its liquid is warmer or colder by this (about 1 %)."""
 
@@ -254,13 +256,34 @@ class Flows:
         if self._bleed_s > 0.0:
             part = min(h, self._bleed_s)
             self._bleed_s -= part
+            absolute = np.maximum(self.pressure, 0.0) + ATMOSPHERE_PA
+            worst = float(np.max(-self._bleed * part / (self.compliance * absolute)))
+            if worst > AT_ONCE:
+                self._advance_sucking(h, part, min(math.ceil(worst / AT_ONCE), MOST_STEPS))
+                return
             self.source += self._bleed * (part / h)
+        self._advance(h)
+
+    def _advance(self, h: float) -> None:
         self.step, self.restless = advance_pressures(
             h, self.step, self.node, self.edge, self.link, self.ground, self.sensor, self.sensor_node, self._matrix
         )
         passive = self.layout.passive
         self.contents.pending[:passive] += self.volume
         self.flow[:passive] = self.volume / h
+
+    def _advance_sucking(self, h: float, part: float, steps: int) -> None:
+        """Gas that met a high pressure at once (a syringe changes over) draws much volume, less as the pressure falls.
+
+        What it wants goes with 1 - P0/P, so it is found anew in short steps; the rest is seen at the next fit.
+        """
+        others, start = self.source.copy(), np.maximum(self.pressure, 1.0) + ATMOSPHERE_PA
+        for _ in range(steps):
+            now = np.maximum(self.pressure, 0.0) + ATMOSPHERE_PA
+            wants = np.minimum((1.0 - ATMOSPHERE_PA / now) / (1.0 - ATMOSPHERE_PA / start), 1.0)
+            self.source[:] = others + np.where(self._bleed < 0.0, wants, 1.0) * self._bleed * (part / h)
+            self._advance(h / steps)
+        self.source[:] = others
 
     def add(self, edge: int, volume: float, h: float) -> None:
         """A displacement by a syringe: known volume through an edge."""

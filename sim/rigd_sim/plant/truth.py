@@ -12,7 +12,8 @@ if TYPE_CHECKING:
 
 def true_state(plant: RigPlant) -> dict[str, float]:
     """Keys: "pressure:", "peak-pressure:" (part) [bar]; "temperature:" (part) [degC]; "flow:" (line) [mL/min];
-    "volume:" (vessel, floor) [mL]; "conversion:" (part) [1]; "level:" (pump) [mL] truly in the active syringe;
+    "volume:" (vessel, floor) [mL]; "conversion:" (part) [1]; "level:" (pump) [mL] truly in the active syringe,
+    "delivering:" (pump) [mL/min];
     "amount:" (vessel, species) [mmol]; "voidage:" (column); "position:" (valve) index of the open port, -1 shut.
     """
     state: dict[str, float] = {}
@@ -29,6 +30,7 @@ def true_state(plant: RigPlant) -> dict[str, float]:
             state[f"amount:{vessel}:{species}"] = float(contents.node_volume[node] * contents.node_c[node, i]) * 1e3
     for name, pump in plant.pumps.items():
         node = layout.syringes[name][pump.active].node
+        state[f"delivering:{name}"] = pump.rate / ML_MIN_M3_S if pump.moving else 0.0
         state[f"level:{name}"] = (contents.node_volume[node] / ML_M3) - pump.spec.dead_mL
     for bed in contents.beds.values():
         state[f"voidage:{bed.column.id}"] = bed.voidage
