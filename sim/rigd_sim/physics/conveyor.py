@@ -136,11 +136,32 @@ def _even(work: Floats, rings: int) -> bool:
 
 
 @inner
+def _mix_rings(edge: Floats, e: int, rings: int, half: float, work: Floats) -> None:
+    """One Crank-Nicolson step of twice ``half`` over the ring values in ``work[3]``."""
+    for r in range(rings):
+        work[4, r] = work[3, r]
+    carry = 0.0
+    for r in range(rings):
+        inner_rate = half * edge[4, e + r - 1] if r > 0 else 0.0
+        outer_rate = half * edge[4, e + r]
+        rhs = work[4, r] * (1.0 - inner_rate - outer_rate)
+        rhs += inner_rate * work[4, r - 1] if r > 0 else 0.0
+        rhs += outer_rate * work[4, r + 1] if r < rings - 1 else 0.0
+        rhs += inner_rate * work[3, r - 1] if r > 0 else 0.0
+        pivot = 1.0 + inner_rate + outer_rate - inner_rate * carry
+        carry = outer_rate / pivot
+        work[3, r] = rhs / pivot
+        work[5, r] = carry
+    for r in range(rings - 2, -1, -1):
+        work[3, r] += work[5, r] * work[3, r + 1]
+
+
+@inner
 def exchange_rings(cells: Floats, link: Ints, edge: Floats, e: int, dt: float, work: Floats) -> None:
     """Radial diffusion between the rings of a tube (kernel edges from ``e``), place by place.
 
     Crank-Nicolson over the rings: alternated with moves it has exactly the long-time dispersion of the continuous
-    process at any step. The step is capped where the scheme could become negative (rings then mix nearly completely).
+    process at any step. In as many steps as keep it positive, which costs the slow modes little of that.
     Rows of ``link`` and ``edge`` as in ``transport``: 2 cells, 3 start; 0 cell volume, 1 fill, 4 radial exchange.
     """
     rings = 1
@@ -148,7 +169,8 @@ def exchange_rings(cells: Floats, link: Ints, edge: Floats, e: int, dt: float, w
     while edge[4, e + rings - 1] > 0.0:
         fastest = max(fastest, edge[4, e + rings - 1] + edge[4, e + rings])
         rings += 1
-    half = 0.5 * (dt if dt * fastest < 2.0 else 2.0 / fastest)
+    times = 1 + int(0.5 * dt * fastest)
+    half = 0.5 * dt / times
     n = link[2, e]
     v = edge[0, e]
     for p in range(n):
@@ -159,20 +181,10 @@ def exchange_rings(cells: Floats, link: Ints, edge: Floats, e: int, dt: float, w
                 work[2, r] = head * cells[s, k] + (1.0 - head) * cells[s + 1, k]
             if _even(work, rings):
                 continue
-            carry = 0.0
             for r in range(rings):
-                inner_rate = half * edge[4, e + r - 1] if r > 0 else 0.0
-                outer_rate = half * edge[4, e + r]
-                rhs = work[2, r] * (1.0 - inner_rate - outer_rate)
-                rhs += inner_rate * work[2, r - 1] if r > 0 else 0.0
-                rhs += outer_rate * work[2, r + 1] if r < rings - 1 else 0.0
-                rhs += inner_rate * work[3, r - 1] if r > 0 else 0.0
-                pivot = 1.0 + inner_rate + outer_rate - inner_rate * carry
-                carry = outer_rate / pivot
-                work[3, r] = rhs / pivot
-                work[4, r] = carry
-            for r in range(rings - 2, -1, -1):
-                work[3, r] += work[4, r] * work[3, r + 1]
+                work[3, r] = work[2, r]
+            for _ in range(times):
+                _mix_rings(edge, e, rings, half, work)
             for r in range(rings):
                 moved = v * (work[3, r] - work[2, r])
                 if moved != 0.0:

@@ -32,6 +32,8 @@ BED_CELLS = 2.0
 FINEST = 100
 """Beads and reactions act before the liquid in a bed has moved on by ``BED_CELLS`` cells, or as many hundredths of the
 bed if its cells are finer."""
+SLOWEST_MODE = 14.68
+"""Decay of the slowest radial mode, (3.8317)^2 D/R^2: rings must be mixed before it has decayed by more than 1/e."""
 CONVECTED = 0.1
 """Variance over squared mean of a tube whose rings have no time to mix: taken as 0.1 (it grows without bound)."""
 
@@ -47,6 +49,8 @@ def _parts(dt: float, link: Ints, edge: Floats) -> int:
     most = 1.0
     for e in range(edge.shape[1]):
         moved = abs(edge[MOVED, e])
+        if moved > 0.0:
+            most = max(most, SLOWEST_MODE * edge[MIXING, e] * dt)
         if link[CELLS, e] == 0 or moved <= edge[LEAST, e]:
             continue
         if edge[MIXING, e] > 0.0:
