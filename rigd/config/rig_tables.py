@@ -103,6 +103,7 @@ class PumpTable(Table):
     rating: Pressure
     compliance: Annotated[float, Quantity("compliance", "positive")] = 0.01
     screw_pitch: Length = 1.0
+    force_limit: Annotated[float, Quantity("force", "not negative")] = 0.0
 
     def value(self) -> Pump:
         return Pump(
@@ -118,6 +119,7 @@ class PumpTable(Table):
             dead_mL=self.dead_volume,
             compliance_mL_bar=self.compliance,
             screw_pitch_mm=self.screw_pitch,
+            force_limit_N=self.force_limit,
         )
 
 

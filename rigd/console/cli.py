@@ -22,6 +22,7 @@ SECTIONS: dict[str, dict[str, tuple[str, str]]] = {
         "check": ("check:check", "Everything that can be known before anything moves."),
         "dry-run": ("dry_run:dry_run", "Rehearse a recipe on the simulated rig, in virtual time."),
         "nights": ("nights:nights", "Rehearse many nights with uncertain numbers; what matters most."),
+        "prove": ("prove:prove", "Every fault in every phase, judged by the true simulated plant."),
         "sim": ("simulate:sim", "Serve the simulated rig on serial lines, for rigd run."),
         "permit": ("permit:permit", "May a rig run unattended? Door sign and shutdown card."),
         "proof": ("permit:proof", "Record or list proof tests of interlocks."),

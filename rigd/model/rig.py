@@ -7,6 +7,7 @@ column or cell by the line that ends there and leaves by the line that starts th
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 from enum import StrEnum
@@ -61,6 +62,7 @@ class Pump:
 
     ``dead_mL`` stays behind at the end of a stroke. ``compliance_mL_bar`` is syringe, seal and fittings.
     ``rating_bar`` is the weakest wetted part of the pump; ``screw_pitch_mm`` sets the period of its ripple.
+    ``force_limit_N`` is the push at which its motor gives up (0: not stated).
     """
 
     id: str
@@ -76,6 +78,11 @@ class Pump:
     compliance_mL_bar: float = 0.01
     force_limit_N: float = 0.0
     screw_pitch_mm: float = 1.0
+
+    @property
+    def stall_bar(self) -> float:
+        """Pressure at which the motor gives up, force over area; 0 when no force limit is stated."""
+        return self.force_limit_N / (math.pi / 4.0 * self.bore_mm**2) * 10.0
 
 
 @dataclass(frozen=True, slots=True)

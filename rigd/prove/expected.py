@@ -2,8 +2,9 @@
 
 The answers per hazard are the common practice of laboratory flow rigs (no published source): pressure, leaks and pump
 faults end in a cut, for liquid must not move; lost heat or temperature in a quench, for a hot bed needs solvent; what
-spoils data in a hold at most. Where two answers are usual, both stand. "none" is right where the first answer is a word
-to a person. A fault whose answer is missing is *not seen*: no failure of what is fitted, but told, with what to add.
+spoils data in a hold at most, and so does a block while the pumps rest. Where two answers are usual, both stand. "none"
+is right where the first answer is a word to a person. A fault whose answer is missing is *not seen*: no failure of what
+is fitted, but told, with what to add.
 """
 
 from __future__ import annotations
@@ -29,8 +30,8 @@ def _row(stops: str, measures: str, add: str) -> Expected:
 
 HAZARDS: dict[str, Expected] = {
     "H1": _row("none hold cut", "pressure", "a pressure sensor before the part, and a limit on its resistance"),
-    "H2": _row("cut", "pressure", "a pressure sensor before the block, with a high trip"),
-    "H3": _row("cut", "pressure", "pressure sensors before and after the bed, voting 1oo2"),
+    "H2": _row("hold cut", "pressure", "a pressure sensor before the block, with a high trip"),
+    "H3": _row("hold cut", "pressure", "pressure sensors before and after the bed, voting 1oo2"),
     "H4": _row("none cut", "pressure", "a pressure sensor in every section that valves can shut"),
     "H5": _row("cut", "pressure volume leak", "a leak tray, or a balance under the flask"),
     "H6": _row("cut", "pressure leak", "a low trip on pressure while the pumps run, a leak tray"),

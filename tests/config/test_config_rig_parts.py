@@ -26,6 +26,13 @@ ROWS = (
         ("flow-out-of-range",),
     ),
     Row(
+        "dead-head-unseen",
+        "pumps[PU-A].force_limit",
+        'force_limit = "200 N"',
+        within("PU-A", 'force_limit = "130 N"', 'force_limit = "200 N"'),
+        warning=True,
+    ),
+    Row(
         "liquid-missing",
         "vessels[bottle-A].liquid",
         "[[vessels]]",

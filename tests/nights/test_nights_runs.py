@@ -69,7 +69,7 @@ def test_one_worker_and_two_give_the_same_nights(tmp_path: Path) -> None:
     page = (tmp_path / "one" / "nights.html").read_text(encoding="utf-8")
     assert "SIMULATED" in page
     assert "src=" not in page
-    assert "href=\"http" not in page
+    assert 'href="http' not in page
 
 
 def test_an_interrupt_keeps_what_is_done_and_the_command_goes_on(tmp_path: Path) -> None:

@@ -10,6 +10,7 @@ import pytest
 from rigd.app import DryRun, DrySettings, dry_run
 from rigd.model.events import Event, EventKind
 from rigd.ports.plant import FaultSpec
+from rigd.runtime.dry import DryOptions
 
 pytestmark = [pytest.mark.slow, pytest.mark.timeout(180)]
 
@@ -37,6 +38,16 @@ def seconds_into(phase: str) -> float:
 def blocked(phase: str, kind: str = "block") -> DryRun:
     fault = FaultSpec(kind, "L-4", onset_s=seconds_into(phase))
     return dry_run(RIG, RECIPE, DrySettings(faults=(fault,)))
+
+
+def test_pressure_that_is_trapped_after_the_leak_test_is_said() -> None:
+    """H4: the outlet is open again, but a block keeps the pressure before it; the run holds and names it."""
+    leak_test = next(e.t_ns for e in healthy() if e.kind is EventKind.PHASE and e.subject == "leak-test")
+    fault = FaultSpec("block", "L-1", onset_s=leak_test / 1e9 + 36.0)
+    run = dry_run(RIG, RECIPE, DrySettings(faults=(fault,), options=DryOptions(held_ns=60_000_000_000)))
+    assert run.result.outcome == "stopped"
+    assert "stand in the path all the same" in run.result.text
+    assert any(e.kind is EventKind.PROMPT and e.subject == "pressure-trapped" for e in run.result.events)
 
 
 @pytest.mark.parametrize("phase", PHASES)

@@ -9,7 +9,7 @@ from rigd.config.checks.context import RigContext
 from rigd.config.checks.identity import report_duplicates
 from rigd.config.checks.reliefs import check_reliefs
 from rigd.config.findings import listed, nearest
-from rigd.model.rig import VesselRole
+from rigd.model.rig import Pump, VesselRole
 
 _COLUMN_PLACES = ("inlet", "middle", "outlet", "jacket")
 
@@ -76,11 +76,28 @@ def _pumps(context: RigContext) -> None:
             )
             message += f" {pump.rate_min_mL_min:g} to {pump.rate_max_mL_min:g} mL/min"
             context.found.error("flow-out-of-range", ("flush_flow",), message, "change the flow of the flush")
+        _dead_head(context, pump)
         if pump.dead_mL >= pump.stroke_mL:
             message = f"the dead volume ({pump.dead_mL:g} mL) is not below the stroke ({pump.stroke_mL:g} mL)"
             context.found.error(
                 "range-empty", context.at("pumps", pump.id, "dead_volume"), message, "correct one of them"
             )
+
+
+def _dead_head(context: RigContext, pump: Pump) -> None:
+    """A block right behind a pump is seen by no sensor further on: then only the motor's own limit is left."""
+    if any(tag.measures == "pressure" and tag.at == pump.id for tag in context.rig.tags):
+        return
+    place = context.at("pumps", pump.id, "force_limit")
+    remedy = (
+        'write force_limit = "130 N" as set on the pump, below rating times piston area, or fit a sensor at the pump'
+    )
+    if pump.force_limit_N <= 0.0:
+        message = f"nothing shows a block right behind {pump.id}: no pressure sensor there and no force limit stated"
+        context.found.warning("dead-head-unseen", place, message, remedy)
+    elif pump.stall_bar >= pump.rating_bar:
+        message = f"{pump.id} gives up at {pump.stall_bar:.3g} bar only, but is rated for {pump.rating_bar:g} bar"
+        context.found.warning("dead-head-unseen", place, message, remedy)
 
 
 def _columns(context: RigContext) -> None:

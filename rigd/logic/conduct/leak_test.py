@@ -19,6 +19,8 @@ from rigd.model.recipe import LeakTest
 PLUG = "leak-test-plug"
 UNPLUG = "leak-test-unplug"
 _AVERAGED = 5
+_RELAX_S = 60.0
+"""From the open outlet to no pressure: seconds in a healthy path, far more where liquid is trapped behind a block."""
 _KEPT = 400
 
 
@@ -201,14 +203,21 @@ def _reopen(scene: Scene, memory: Memory, rule: LeakTest) -> Move[Memory]:
         )
     relaxed = all((scene.view.value(tag) or 0.0) <= _relaxed_bar(rule) for tag in scene.layout.pressures)
     trouble = ""
+    due_ns = memory.stage_ns + int(_RELAX_S * 1e9)
+    if opened and not relaxed and not memory.failure and scene.now_ns >= due_ns:
+        highest = max((scene.view.value(tag) or 0.0) for tag in scene.layout.pressures)
+        words = f"the outlet is open and {highest:.2f} bar stand in the path all the same"
+        trouble = f"leak test cannot end: {words}"
+        prompt = Prompt("pressure-trapped", f"Leak test: {words}. Find what is blocked, then resume or stop.")
     if opened and memory.failure:
         trouble = f"leak test failed: {memory.failure}"
         prompt = Prompt("leak-test-failed", f"Leak test failed: {memory.failure}. Find the leak, then resume or stop.")
     done = opened and relaxed and not memory.failure
     wants = Wants(_still(scene), _open(scene))
     return Move(
-        memory, wants, "opening the outlet", done=done, trouble=trouble, prompt=prompt, left_s=_left_s(memory, rule)
-    )
+        memory, wants, "opening the outlet", done=done, trouble=trouble, prompt=prompt, due_ns=due_ns,
+        left_s=_left_s(memory, rule),
+    )  # fmt: skip
 
 
 def _relaxed_bar(rule: LeakTest) -> float:
