@@ -8,11 +8,11 @@ from typing import TypeVar
 
 from rigd.model.errors import PluginError
 from rigd.ports.driver import CONTRACT, DriverFamily
-from rigd.ports.plant import PlantMaker, SimulatorMaker
+from rigd.ports.plant import PlantMaker, PropertyLibrary, SimulatorMaker
 
 T = TypeVar("T")
 
-DRIVERS, PLANTS, SIMULATORS = "rigd.drivers", "rigd.plants", "rigd.simulators"
+DRIVERS, PLANTS, SIMULATORS, PROPERTIES = "rigd.drivers", "rigd.plants", "rigd.simulators", "rigd.properties"
 
 
 def driver_family(name: str) -> DriverFamily:
@@ -29,6 +29,11 @@ def driver_family(name: str) -> DriverFamily:
 def plant_maker(name: str = "simulated") -> PlantMaker:
     """The simulated plant registered as ``name``."""
     return _load(PLANTS, name, PlantMaker)
+
+
+def property_library(name: str = "simulated") -> PropertyLibrary:
+    """The library of liquid properties registered as ``name``."""
+    return _load(PROPERTIES, name, PropertyLibrary)
 
 
 def simulator_maker(name: str = "simulated") -> SimulatorMaker:

@@ -88,6 +88,7 @@ def _parts(file: RigFile, chemistry: Chemistry, digest: str) -> RigDefinition:
         flush_mL_min=file.flush_flow,
         digest=digest,
         reliefs=tuple(table.value() for table in file.reliefs),
+        properties=tuple(table.value() for table in file.properties),
     )
 
 

@@ -25,6 +25,7 @@ from rigd.config.rig_tables import (
     ColumnTable,
     LineTable,
     LiquidTable,
+    PropertiesTable,
     PumpTable,
     RegulatorTable,
     ReliefTable,
@@ -55,6 +56,7 @@ class RigFile(Table):
     scan: Annotated[Duration, Field(ge=0.01, le=2.0)] = 0.1
     flush_flow: Flow = 1.0
     liquids: Annotated[tuple[LiquidTable, ...], Field(min_length=1)]
+    properties: tuple[PropertiesTable, ...] = ()
     vessels: Annotated[tuple[VesselTable, ...], Field(min_length=1)]
     valves: tuple[ValveTable, ...] = ()
     pumps: Annotated[tuple[PumpTable, ...], Field(min_length=1)]

@@ -26,6 +26,7 @@ from rigd.model.rig import (
     Liquid,
     LiquidRole,
     Packing,
+    PropertySet,
     Pump,
     Regulator,
     Relief,
@@ -44,6 +45,30 @@ def end_of(text: str) -> End:
     """``"V-A.solvent"`` as an end."""
     part, _, port = text.partition(".")
     return End(part, port)
+
+
+Density = Annotated[float, Quantity("density", "positive")]
+Viscosity = Annotated[float, Quantity("viscosity", "positive")]
+
+
+class PropertiesTable(Table):
+    """A user's own property set of a solvent, at 0, 25 and 60 degC, with where the numbers come from."""
+
+    id: Name
+    density: Annotated[tuple[Density, ...], Field(min_length=3, max_length=3)]
+    viscosity: Annotated[tuple[Viscosity, ...], Field(min_length=3, max_length=3)]
+    vapour_pressure: Annotated[tuple[Pressure, ...], Field(min_length=3, max_length=3)]
+    heat_capacity: Annotated[float, Quantity("specific heat", "positive")]
+    boiling: Temperature
+    swelling: Annotated[Fraction, Field(gt=0, le=20)] = 1.0
+    source: Text
+
+    def value(self) -> PropertySet:
+        rows = (self.density, self.viscosity, self.vapour_pressure)
+        density, viscosity, vapour = ((row[0], row[1], row[2]) for row in rows)
+        return PropertySet(
+            self.id, density, viscosity, vapour, self.heat_capacity, self.boiling, self.source, self.swelling
+        )
 
 
 class LiquidTable(Table):

@@ -13,7 +13,7 @@ from rigd.console.trouble import print_problems
 from rigd.logic.planning import Plan
 from rigd.logic.response import Response
 from rigd.model.protection import Condition, ConditionKind, Interlock
-from rigd.model.rig import RigDefinition
+from rigd.model.rig import PropertySet, RigDefinition
 from rigd.report.words import clock, duration
 
 BAR = 24
@@ -32,11 +32,28 @@ def show_check(output: Output, found: Checked) -> None:
         output.say("")
     output.say(cause_and_effect(found.rig, found.responses))
     output.say(_footnote(found))
+    if found.liquids:
+        output.say("")
+        output.say(properties(found.liquids))
     if found.problems:
         output.say("")
         print_problems(output.people, found.problems)
     verdict = ("fit to run", "bold green") if found.fit else ("NOT fit to run", "bold red")
     output.say(Text.assemble("\n", verdict))
+
+
+def properties(sets: tuple[PropertySet, ...]) -> RenderableType:
+    """What the simulator takes each liquid for, with the source of the numbers."""
+    table = Table(box=box.SIMPLE_HEAD, pad_edge=False, title="liquids of the simulator", title_justify="left")
+    table.add_column("solvent")
+    for heading in ("g/mL 25 °C", "mPa s 0, 25, 60 °C", "J/(g K)", "boils °C"):
+        table.add_column(heading, justify="right")
+    table.add_column("source", overflow="fold", style="dim")
+    for one in sets:
+        viscosity = ", ".join(f"{value:.3g}" for value in one.viscosity_mPa_s)
+        numbers = (f"{one.density_g_mL[1]:.4g}", viscosity, f"{one.heat_capacity_J_g_K:.3g}", f"{one.boiling_degC:g}")
+        table.add_row(one.id, *numbers, one.source)
+    return table
 
 
 def timeline(planned: Plan) -> RenderableType:

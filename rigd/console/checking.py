@@ -3,18 +3,19 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import asdict, dataclass, replace
 from pathlib import Path
 
-from rigd.adapters.plugins import driver_family
+from rigd.adapters.plugins import driver_family, property_library
 from rigd.config.load import load_pair
 from rigd.console.trouble import problem_facts
 from rigd.logic.planning import Plan, plan
 from rigd.logic.program import compile_program
 from rigd.logic.response import Response, largest_flow_mL_min, responses
+from rigd.model.errors import ConfigError
 from rigd.model.problems import Problem, Severity
 from rigd.model.recipe import Recipe
-from rigd.model.rig import RigDefinition
+from rigd.model.rig import PropertySet, RigDefinition
 
 
 @dataclass(frozen=True, slots=True)
@@ -27,6 +28,7 @@ class Checked:
     problems: tuple[Problem, ...]
     responses: tuple[Response, ...]
     flow_max_mL_min: float
+    liquids: tuple[PropertySet, ...] = ()
 
     @property
     def fit(self) -> bool:
@@ -42,6 +44,7 @@ class Checked:
             "digests": {"rig": self.rig.digest, "recipe": self.recipe.digest if self.recipe else None},
             "problems": [problem_facts(problem) for problem in self.problems],
             **(plan_facts(self.plan) if self.plan else {}),
+            "properties": [asdict(one) for one in self.liquids],
             "interlocks": [response_facts(response) for response in self.responses],
         }
 
@@ -57,7 +60,16 @@ def check_files(rig_path: Path, recipe_path: Path | None) -> Checked:
     problems = [*pair.warnings, *(planned.problems if planned else ())]
     problems += [_too_slow(response, str(rig_path), severity) for response in found if not response.fit]
     flow_mL_min = largest_flow_mL_min(pair.rig, pair.recipe)
-    return Checked(pair.rig, pair.recipe, planned, tuple(problems), found, flow_mL_min)
+    sets, more = _properties(pair.rig, str(rig_path))
+    return Checked(pair.rig, pair.recipe, planned, (*problems, *more), found, flow_mL_min, sets)
+
+
+def _properties(rig: RigDefinition, path: str) -> tuple[tuple[PropertySet, ...], tuple[Problem, ...]]:
+    """What the simulator takes the liquids for. A real rig runs without it, so an unknown name is a warning."""
+    try:
+        return tuple(property_library().sets(rig)), ()
+    except ConfigError as error:
+        return (), tuple(replace(p, file=path, severity=Severity.WARNING) for p in error.problems)
 
 
 def plan_facts(planned: Plan) -> dict[str, object]:

@@ -25,6 +25,24 @@ class LiquidRole(StrEnum):
 
 
 @dataclass(frozen=True, slots=True)
+class PropertySet:
+    """Properties of one solvent, from a rig file or a library; tuples are at 0, 25 and 60 degC.
+
+    ``source`` says where the numbers come from and is printed beside them; ``swelling_mL_g`` is the settled volume of
+    gel beads in it.
+    """
+
+    id: str
+    density_g_mL: tuple[float, float, float]
+    viscosity_mPa_s: tuple[float, float, float]
+    vapour_bar: tuple[float, float, float]
+    heat_capacity_J_g_K: float
+    boiling_degC: float
+    source: str
+    swelling_mL_g: float = 1.0
+
+
+@dataclass(frozen=True, slots=True)
 class Liquid:
     """A bottle's content. ``properties`` names the property set (density, viscosity, heat) of its main solvent."""
 
@@ -328,6 +346,7 @@ class RigDefinition:
     flush_mL_min: float = 1.0
     digest: str = ""
     reliefs: tuple[Relief, ...] = ()
+    properties: tuple[PropertySet, ...] = ()
 
     def tag(self, tag_id: str) -> Tag:
         """The tag with this id; ``KeyError`` if there is none."""

@@ -7,7 +7,7 @@ from dataclasses import dataclass
 from typing import Protocol
 
 from rigd.model.orders import Action
-from rigd.model.rig import RigDefinition
+from rigd.model.rig import PropertySet, RigDefinition
 from rigd.model.samples import Reading, Spectrum
 
 
@@ -73,6 +73,17 @@ class PlantMaker:
     make: Callable[[RigDefinition, int], Plant]
     fault_kinds: Callable[[], Sequence[FaultKind]]
     fault_targets: Callable[[RigDefinition, str], Sequence[str]] = _no_targets
+
+
+@dataclass(frozen=True, slots=True)
+class PropertyLibrary:
+    """What the entry point group ``rigd.properties`` must resolve to: the liquids' properties of a rig, with sources.
+
+    ``sets(rig)`` raises ``ConfigError`` for a name that nobody knows. Importing it must cost little.
+    """
+
+    name: str
+    sets: Callable[[RigDefinition], Sequence[PropertySet]]
 
 
 @dataclass(frozen=True, slots=True)

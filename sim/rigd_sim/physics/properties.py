@@ -19,9 +19,17 @@ points. Outside 0..60 degC they are extrapolations; viscosity and vapour pressur
 from __future__ import annotations
 
 import math
+from collections.abc import Mapping
 from dataclasses import dataclass
 
+from rigd.model.errors import ConfigError
+from rigd.model.problems import Problem
+from rigd.model.rig import PropertySet, RigDefinition
+from rigd.ports.plant import PropertyLibrary
 from rigd_sim.physics.constants import ZERO_CELSIUS_K
+
+CONDUCTIVITY_W_M_K = 0.15
+"""Of a solvent whose user gives none: common organic liquids are 0.12 to 0.2 (common practice, no source)."""
 
 _POINTS_K = tuple(ZERO_CELSIUS_K + t for t in (0.0, 25.0, 60.0))
 
@@ -104,10 +112,46 @@ SOLVENTS: dict[str, Solvent] = {
 """Swelling: settled volume of about 1 % cross-linked polystyrene gel [mL/g dry], common practice figures, +-15 %."""
 
 
-def mixture_viscosity(fractions: dict[str, float], t_K: float) -> float:
+def solvents_of(rig: RigDefinition) -> dict[str, Solvent]:
+    """The property sets that a rig uses: its own before those known here. ``ConfigError`` for a name nobody knows."""
+    known = SOLVENTS | {own.id: _own(own) for own in rig.properties}
+    for liquid in rig.liquids:
+        if liquid.properties not in known:
+            message = f"liquid {liquid.id}: no properties are known for {liquid.properties!r}"
+            remedy = f"known: {', '.join(sorted(known))}; or write [[properties]] of your own, with their source"
+            raise ConfigError((Problem("properties-unknown", message, remedy, key=f"liquids[{liquid.id}].properties"),))
+    return {name: known[name] for name in sorted({liquid.properties for liquid in rig.liquids})}
+
+
+def sets_of(rig: RigDefinition) -> tuple[PropertySet, ...]:
+    """The same as values of the rig, to be printed with their sources."""
+    return tuple(
+        PropertySet(
+            name, _scaled(s.density_kg_m3, 1e-3), s.viscosity_mPa_s, _scaled(s.vapour_kPa, 1e-2),
+            s.heat_capacity_J_kg_K * 1e-3, s.boiling_degC, s.source, s.swelling_mL_g,
+        )
+        for name, s in solvents_of(rig).items()
+    )  # fmt: skip
+
+
+def _scaled(three: tuple[float, float, float], factor: float) -> tuple[float, float, float]:
+    return three[0] * factor, three[1] * factor, three[2] * factor
+
+
+PROPERTIES = PropertyLibrary("simulated", sets_of)
+
+
+def _own(own: PropertySet) -> Solvent:
+    return Solvent(
+        own.id, _scaled(own.density_g_mL, 1e3), own.viscosity_mPa_s, _scaled(own.vapour_bar, 100.0),
+        own.heat_capacity_J_g_K * 1e3, own.boiling_degC, CONDUCTIVITY_W_M_K, own.swelling_mL_g, own.source,
+    )  # fmt: skip
+
+
+def mixture_viscosity(fractions: dict[str, float], t_K: float, sets: Mapping[str, Solvent] = SOLVENTS) -> float:
     """Viscosity of a mixture [Pa s]: ln mu = sum phi ln mu (S. Arrhenius 1887), phi volume fractions.
 
     Ideal mixing; water-alcohol mixtures exceed it by up to a factor of about 2.5 (not modelled).
     """
     total = sum(fractions.values())
-    return math.exp(sum(f / total * math.log(SOLVENTS[name].viscosity(t_K)) for name, f in fractions.items()))
+    return math.exp(sum(f / total * math.log(sets[name].viscosity(t_K)) for name, f in fractions.items()))

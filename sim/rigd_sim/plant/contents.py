@@ -17,7 +17,7 @@ from rigd_sim.physics.compiled import Floats, Ints
 from rigd_sim.physics.constants import ML_M3, ZERO_CELSIUS_K
 from rigd_sim.physics.gas import gas_at_nodes
 from rigd_sim.physics.packing_transfer import bead_rate, chung_wen, film_coefficient
-from rigd_sim.physics.properties import SOLVENTS, Solvent
+from rigd_sim.physics.properties import Solvent, solvents_of
 from rigd_sim.physics.transport import (
     BASE,
     EDGE_ROWS,
@@ -51,7 +51,8 @@ class Contents:
     def __init__(self, rig: RigDefinition, layout: Layout) -> None:
         self.layout = layout
         self.species = [s.id for s in rig.chemistry.species]
-        self.solvents = sorted({liquid.properties for liquid in rig.liquids})
+        self.sets = solvents_of(rig)
+        self.solvents = list(self.sets)
         self.n_species = len(self.species)
         self.width = self.n_species + len(self.solvents) + 1
         self.gas = self.width - 1
@@ -194,7 +195,7 @@ class Contents:
 
     def fluid(self) -> Solvent:
         """The property set that stands for densities and heat capacities (the first declared)."""
-        return SOLVENTS[self.solvents[0]]
+        return self.sets[self.solvents[0]]
 
     def _make_dispersion(self) -> None:
         """Tubes: molecular diffusion along each ring, radial exchange between rings (constants of the tube)."""

@@ -12,7 +12,7 @@ from rigd_sim.physics.gas import fit_gas
 from rigd_sim.physics.gel_bed import relax, settled
 from rigd_sim.physics.network import EDGE_ROWS, LAG, LINK_ROWS, NODE_ROWS, PEAK, SENSOR_ROWS, SHOWN, advance_pressures
 from rigd_sim.physics.packed_bed import gradient, pressed_voidage
-from rigd_sim.physics.properties import SOLVENTS, mixture_viscosity
+from rigd_sim.physics.properties import mixture_viscosity
 from rigd_sim.physics.tubing import resistance
 from rigd_sim.plant.contents import Contents
 from rigd_sim.plant.layout import Layout
@@ -137,9 +137,9 @@ class Flows:
     def _viscosity(self, e: int, t_K: float) -> float:
         contents = self.contents
         if len(contents.solvents) == 1:
-            return SOLVENTS[contents.solvents[0]].viscosity(t_K)
+            return contents.fluid().viscosity(t_K)
         mean = contents.cells[contents.slots(e)].mean(axis=0)
-        return mixture_viscosity(contents.solvent_of(mean) or {contents.solvents[0]: 1.0}, t_K)
+        return mixture_viscosity(contents.solvent_of(mean) or {contents.solvents[0]: 1.0}, t_K, contents.sets)
 
     def _update_bed(self, bed: Bed, many: bool) -> None:
         """Recompute a bed's conductance when what it depends on has changed by more than a thousandth."""
@@ -183,8 +183,8 @@ class Flows:
             if len(contents.solvents) > 1:
                 inside = contents.solvent_of(contents.beads[bed.start : bed.start + bed.cells].mean(axis=0))
                 total = sum(inside.values()) or 1.0
-                reference = SOLVENTS[contents.solvents[0]].swelling_mL_g
-                target *= sum(f * SOLVENTS[s].swelling_mL_g for s, f in inside.items()) / total / reference
+                reference = contents.fluid().swelling_mL_g
+                target *= sum(f * contents.sets[s].swelling_mL_g for s, f in inside.items()) / total / reference
             gel.ratio = relax(gel.ratio, max(target, 1.0), dt, packing.swell_s)
 
     def expand(self, dt: float) -> None:

@@ -8,7 +8,7 @@ from typing import TypeVar
 
 from rigd.model.rig import Column, End, Line, LiquidRole, Pump, Relief, RigDefinition, Vessel, VesselRole
 from rigd_sim.physics.constants import ATMOSPHERE_PA, BAR_PA, ML_M3, ML_MIN_M3_S, ZERO_CELSIUS_K
-from rigd_sim.physics.properties import SOLVENTS
+from rigd_sim.physics.properties import solvents_of
 from rigd_sim.physics.tubing import RINGS, area
 
 LIQUID_COMPRESSIBILITY_PER_PA = 1e-9
@@ -245,7 +245,7 @@ def _add_reliefs(layout: Layout, rig: RigDefinition) -> None:
 
 def _add_expansion(layout: Layout, rig: RigDefinition) -> None:
     """What a bed's liquid gives off when it warms and takes back when it cools: a reserve that only heat moves."""
-    solvent = SOLVENTS[next(liquid.properties for liquid in rig.liquids if liquid.role is LiquidRole.SOLVENT)]
+    solvent = solvents_of(rig)[next(q.properties for q in rig.liquids if q.role is LiquidRole.SOLVENT)]
     per_K = solvent.expansion(rig.simulation.ambient_degC + ZERO_CELSIUS_K)
     for column in layout.columns.values():
         liquid = column_liquid(column)
