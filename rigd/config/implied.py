@@ -61,6 +61,7 @@ def sensor_tag(sensor: SensorTable, timing: Timing, rating: float) -> Tag:
         noise=sensor.noise_house,
         lag_s=sensor.lag,
         labels=sensor.labels,
+        wander=sensor.wander_house,
     )
 
 

@@ -38,7 +38,10 @@ def _span_rule(dimension: str) -> dict[str, Any]:
         return {"required": ["labels"], "properties": {"labels": {"minItems": 2}, "span": False}}
     span = {"items": {"pattern": pattern(dimension)}}
     noise = {"pattern": pattern(difference(dimension), "not negative")}
-    return {"required": ["span"], "properties": {"labels": {"maxItems": 0}, "span": span, "noise": noise}}
+    return {
+        "required": ["span"],
+        "properties": {"labels": {"maxItems": 0}, "span": span, "noise": noise, "wander": noise},
+    }
 
 
 class SensorTable(Table):
@@ -57,6 +60,7 @@ class SensorTable(Table):
     period: Duration | None = None
     stale_after: Duration | None = None
     noise: Written | None = None
+    wander: Written | None = None
     lag: Delay = 0.0
 
     @field_validator("span")
@@ -70,7 +74,7 @@ class SensorTable(Table):
                 raise PydanticCustomError("value-out-of-range", "{text}", {"text": text})
         return span
 
-    @field_validator("noise")
+    @field_validator("noise", "wander")
     @classmethod
     def _noise_in_unit(cls, noise: str | None, info: ValidationInfo) -> str | None:
         dimension = DIMENSION_OF.get(info.data.get("measures", ""), "")
@@ -99,9 +103,17 @@ class SensorTable(Table):
     @property
     def noise_house(self) -> float:
         """One standard deviation in house units; 0 when not given."""
-        if self.noise is None or self.measures == "state":
+        return self._house(self.noise)
+
+    @property
+    def wander_house(self) -> float:
+        """Standard deviation of the slow drift in house units; 0 when not given."""
+        return self._house(self.wander)
+
+    def _house(self, written: str | None) -> float:
+        if written is None or self.measures == "state":
             return 0.0
-        return read_quantity(self.noise, difference(DIMENSION_OF[self.measures]))
+        return read_quantity(written, difference(DIMENSION_OF[self.measures]))
 
 
 def _one_comparison(schema: dict[str, Any]) -> None:

@@ -254,8 +254,9 @@ class TagKind(StrEnum):
 class Tag:
     """A named signal. ``at`` is the part where it is measured ("COL.outlet" style ends allowed).
 
-    ``noise`` (one standard deviation) and ``lag_s`` describe the instrument; the simulator uses them and the checks of
-    slopes do too. ``measures``: pressure, temperature, flow, position, volume, concentration, fraction, state.
+    ``noise`` (one standard deviation), ``wander`` (that of its slow drift to and fro) and ``lag_s`` describe the
+    instrument; the simulator uses them, the checks of slopes the noise. ``measures``: pressure, temperature, flow,
+    position, volume, concentration, fraction, state.
     """
 
     id: str
@@ -274,6 +275,7 @@ class Tag:
     noise: float = 0.0
     lag_s: float = 0.0
     labels: tuple[str, ...] = ()
+    wander: float = 0.0
 
 
 @dataclass(frozen=True, slots=True)

@@ -19,6 +19,8 @@ from rigd_sim.plant.levers import SensorLever
 
 CODE_LOW, CODE_HIGH = 10_000, 50_000
 CODE_UNDER, CODE_OVER = 9_000, 52_500
+WANDER_S = 600.0
+"""Correlation time of a sensor's slow drift (common practice, no source)."""
 HEALTHY = SensorLever()
 Truth = Callable[[], float]
 
@@ -53,6 +55,7 @@ class Sensor:
     shown: float = math.nan
     code: int = CODE_LOW
     frozen_code: int | None = None
+    wandered: float = 0.0
 
     def advance(self, dt: float) -> None:
         """First-order lag towards the truth (not for a slot of the pressure solver, which lags by itself)."""
@@ -62,6 +65,14 @@ class Sensor:
         else:
             self.shown = now + (self.shown - now) * math.exp(-dt / self.tag.lag_s)
 
+    def wander(self, dt: float, noise: Noise) -> None:
+        """Slow drift to and fro with the tag's ``wander``: Gaussian, correlated over ``WANDER_S``, exact at any step.
+
+        G. E. Uhlenbeck, L. S. Ornstein, Phys. Rev. 36 (1930) 823.
+        """
+        keep = math.exp(-dt / WANDER_S)
+        self.wandered = keep * self.wandered + self.tag.wander * math.sqrt(1.0 - keep * keep) * noise.normal()
+
     def read(self, value: float, noise: Noise, lever: SensorLever, room: float) -> Reading:
         """Convert a lagged value to what the module reports."""
         if lever.is_open:
@@ -70,7 +81,7 @@ class Sensor:
             return self._reading(self.frozen_code)
         if lever is not HEALTHY:
             value = spoil(value, lever, room, noise)
-        value += self.tag.noise * lever.noise * noise.normal()
+        value += self.wandered + self.tag.noise * lever.noise * noise.normal()
         if lever.beyond:
             value = self.tag.high + 10.0 * (self.tag.high - self.tag.low) * lever.beyond
         span = self.tag.high - self.tag.low
@@ -103,6 +114,8 @@ class Instruments:
         self.by_device: dict[str, dict[str, Sensor]] = {}
         self.by_tag: dict[str, Sensor] = {}
         self._lagging: list[Sensor] = []
+        self._wandering: list[Sensor] = []
+        self._slow = Noise(seed + 1)
         self._rig = rig
 
     def add(self, sensor: Sensor) -> None:
@@ -111,8 +124,13 @@ class Instruments:
         self.by_tag[sensor.tag.id] = sensor
         if sensor.slot < 0:
             self._lagging.append(sensor)
+        if sensor.tag.wander > 0.0:
+            self._wandering.append(sensor)
 
     def advance(self, dt: float) -> None:
-        """Let all lags run."""
+        """Let all lags and drifts run."""
         for sensor in self._lagging:
             sensor.advance(dt)
+        if dt > 0.0:
+            for sensor in self._wandering:
+                sensor.wander(dt, self._slow)
