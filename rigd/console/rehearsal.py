@@ -8,6 +8,8 @@ from collections.abc import Callable, Iterator
 from pathlib import Path
 from typing import Any
 
+import numpy as np
+
 from rigd.app import DryRun
 from rigd.config.load import load_pair
 from rigd.console.output import Output
@@ -16,7 +18,7 @@ from rigd.logic import scan
 from rigd.logic.planning import plan
 from rigd.logic.program import compile_program
 from rigd.report.collect import phase_spans, read_run
-from rigd.report.data import RunData
+from rigd.report.data import RunData, Trace
 from rigd.report.facts import alarm_facts, point_facts, trip_facts
 from rigd.report.points import point_rows
 
@@ -48,6 +50,7 @@ def rehearsed(done: DryRun, folder: Path | None) -> RunData:
         return read_run(folder, program.rig, program.recipe)
     end_s = result.end_ns / 1e9
     events = tuple(result.events)
+    traces = signal_trace(done)
     return RunData(
         id="dry run",
         folder="",
@@ -60,14 +63,23 @@ def rehearsed(done: DryRun, folder: Path | None) -> RunData:
         started_utc="",
         ended_utc="",
         duration_s=end_s,
-        traces={},
+        traces=traces,
         phases=phase_spans(events, end_s),
-        points=point_rows(events, {}, program.rig, program.recipe),
+        points=point_rows(events, traces, program.rig, program.recipe),
         events=events,
         used_mL=used_mL(done),
         rig=program.rig,
         recipe=program.recipe,
     )
+
+
+def signal_trace(done: DryRun) -> dict[str, Trace]:
+    """The signal by which points were judged, so that their conversions have an uncertainty without a journal."""
+    tag = next((tag for tag in done.program.rig.tags if tag.id == done.program.recipe.settle.signal), None)
+    if tag is None or not done.result.signal:
+        return {}
+    times, values = np.array(done.result.signal, dtype=float).T
+    return {tag.id: Trace(tag.id, tag.title, tag.measures, tag.unit, times / 1e9, values)}
 
 
 def used_mL(done: DryRun) -> dict[str, float]:

@@ -26,7 +26,7 @@ from rigd.model.samples import Spectrum
 from rigd.ports.driver import Driver
 from rigd.ports.link import Link
 from rigd.ports.plant import EmulatedLine, Plant
-from rigd.runtime.dry import DryOptions, DryResult, unfinished
+from rigd.runtime.dry import DryOptions, DryResult, signal_of, unfinished
 from rigd.runtime.live import Live, Surroundings
 from rigd.runtime.tape import Tape
 from rigd.runtime.virtual_time import LoopClock, VirtualLoop
@@ -54,7 +54,7 @@ class DeepShell:
     ) -> None:
         self._program, self._plant, self._drivers, self._watch = program, plant, drivers, watch
         self._lines = lines
-        self._kept = _Kept(journal, self._look)
+        self._kept = _Kept(journal, self._look, signal_of(program))
         self._clock = LoopClock()
         self._far: dict[str, MemoryLink] = {}
         self._tasks: set[asyncio.Task[None]] = set()
@@ -101,6 +101,7 @@ class DeepShell:
             tape.events,
             tape.peak,
             self._kept.scans,
+            tape.followed,
         )
 
     def _look(self, now_ns: int) -> None:
@@ -155,10 +156,10 @@ class DeepShell:
 class _Kept:
     """The journal of a deep rehearsal: keeps the tape, and lets virtual time stand while a real disk is behind."""
 
-    def __init__(self, journal: SqliteJournal | None, look: Callable[[int], None]) -> None:
+    def __init__(self, journal: SqliteJournal | None, look: Callable[[int], None], follow: str) -> None:
         self._journal, self._look = journal, look
         self._look_ns = 0
-        self.tape = Tape()
+        self.tape = Tape(follow)
         self.now_ns = 0
         self.scans = 0
 

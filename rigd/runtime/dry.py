@@ -10,7 +10,7 @@ from __future__ import annotations
 
 import heapq
 from collections.abc import Callable, Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 from rigd.logic import scan
 from rigd.logic.program import Program
@@ -61,7 +61,8 @@ class DryOptions:
 
 @dataclass(slots=True)
 class DryResult:
-    """What came out; ``digest`` is the SHA-256 over all orders and events in their order."""
+    """What came out; ``digest`` is the SHA-256 over all orders and events in their order. ``signal``: time [ns] and
+    value of the tag by which points are judged."""
 
     outcome: str
     exit_code: int
@@ -72,6 +73,12 @@ class DryResult:
     events: list[Event]
     peak: dict[str, float]
     scans: int
+    signal: list[tuple[int, float]] = field(default_factory=list)
+
+
+def signal_of(program: Program) -> str:
+    """The tag by which points are judged steady."""
+    return program.recipe.settle.signal if program.recipe else ""
 
 
 def first_requests(program: Program, signer: str) -> tuple[Request, ...]:
@@ -125,7 +132,7 @@ class DryShell:
 
     def run(self, options: DryOptions = DryOptions()) -> DryResult:
         """Run until the core says that the run is over (plus ``linger_ns``), or ``limit_ns`` has passed."""
-        tape = Tape()
+        tape = Tape(signal_of(self._program))
         state = scan.initial(self._program, 0)
         for request in (*first_requests(self._program, options.signer), *options.requests):
             self._at(request.t_ns, request)
@@ -218,4 +225,5 @@ class DryShell:
             tape.events,
             tape.peak,
             self._scans,
+            tape.followed,
         )

@@ -15,16 +15,20 @@ from rigd.model.samples import Quality, Sample
 
 @dataclass(slots=True)
 class Tape:
-    """Grows while the run goes on."""
+    """Grows while the run goes on. Of the tag ``follow`` it keeps every good value."""
 
+    follow: str = ""
     hash: Any = field(default_factory=hashlib.sha256)
     peak: dict[str, float] = field(default_factory=dict)
     events: list[Event] = field(default_factory=list)
+    followed: list[tuple[int, float]] = field(default_factory=list)
 
     def samples(self, samples: Iterable[Sample]) -> None:
         for sample in samples:
             if sample.quality is Quality.GOOD and sample.value > self.peak.get(sample.tag, float("-inf")):
                 self.peak[sample.tag] = sample.value
+            if sample.tag == self.follow and sample.quality is not Quality.BAD:
+                self.followed.append((sample.t_ns, sample.value))
 
     def decided(self, orders: Sequence[Order], events: Sequence[Event]) -> None:
         for order in orders:

@@ -61,6 +61,7 @@ def test_an_unknown_fault_is_a_sentence(fault, capsys):
 def test_the_demonstration_is_done_and_agrees_with_the_plan(capsys):
     code, facts = rehearse(capsys)
     assert code == 0
+    assert all(0 < point["conversion_sd"] < 0.01 for point in facts["points"])
     assert facts["outcome"] == "done"
     assert len(facts["points"]) == 6
     assert facts["trips"] == []
