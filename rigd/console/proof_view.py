@@ -44,7 +44,8 @@ def told(rig: str, recipe: str, phases: Sequence[str], nights: Sequence[Night], 
 def _words(counts: Mapping[str, int], total: int) -> str:
     if counts[MISSED]:
         return f"{counts[MISSED]} of {total} nights missed; {counts[HELD]} held, {counts[UNSEEN]} not seen"
-    return f"All {total} nights held: {counts[HELD]} answered or harmless, {counts[UNSEEN]} not seen but within ratings"
+    unseen = f"{counts[UNSEEN]} not seen by anything fitted (no rating passed)"
+    return f"None of {total} nights missed: {counts[HELD]} answered or harmless, {unseen}"
 
 
 def _bound_words(missed: int, total: int) -> str:
