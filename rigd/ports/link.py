@@ -35,6 +35,7 @@ class ReplyReader(Protocol[T_co]):
     ``feed`` returns the decoded reply as soon as it is complete, ``None`` while more is needed. It skips garbage, and
     whole frames that belong to another address or an earlier request. It raises ``DeviceProtocolError`` only for a
     frame that is certainly the answer and certainly wrong, and ``DeviceRefused`` for the device's "no".
+    One that needs no reply at all returns something for ``feed(b"")``, which the line asks first.
     A reader whose replies carry the request's number says so by an attribute ``numbered = True``: then a late reply
     cannot be mistaken, and the line need not wait for it before the next request.
     """

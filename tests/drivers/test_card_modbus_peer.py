@@ -60,7 +60,7 @@ async def test_a_whole_rig_by_registers(port: int) -> None:
         found = {
             (kind, one.channel): one.value
             for kind, unit in (("pump", 1), ("valve", 3), ("chiller", 6), ("sensor", 7))
-            for one in await device(kind, unit).poll(line, list(device(kind, unit)._card.channels))
+            for one in await device(kind, unit).poll(line, list(device(kind, unit).card.channels))
         }
         assert found["pump", "flow"] == 2.0
         assert found["pump", "state"] == 1

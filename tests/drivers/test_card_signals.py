@@ -8,7 +8,7 @@ from pathlib import Path
 
 import pytest
 
-from rigd_drivers.card import signals, text
+from rigd_drivers.card import frames, signals
 
 REFERENCE = Path(__file__).parents[1] / "reference"
 
@@ -50,5 +50,8 @@ def test_an_open_probe_is_no_temperature() -> None:
 
 def test_checksums() -> None:
     """Check values for "123456789" of CRC catalogues; LRC is the two's complement of the sum (0xDD)."""
-    found = {name: function(b"123456789") for name, (function, _) in text.CHECKSUMS.items()}
-    assert found == {"sum": 0xDD, "xor": 0x31, "lrc": 0x23, "crc16-modbus": 0x4B37, "crc-ccitt": 0x29B1}
+    found = {name: function(b"123456789") for name, (function, _) in frames.CHECKSUMS.items()}
+    assert found == {
+        "sum": 0xDD, "sum16": 0x1DD, "sum-inverted": 0x22, "xor": 0x31, "lrc": 0x23, "crc8": 0xF4,
+        "crc16-modbus": 0x4B37, "crc-ccitt": 0x29B1, "crc-xmodem": 0x31C3,
+    }  # fmt: skip

@@ -1,163 +1,255 @@
-"""Exchanges of one card device: readings and steps over a line, and the same as frames of a last will."""
+"""Exchanges of one card device: readings and steps over a line."""
 
 from __future__ import annotations
 
-import re
-from collections.abc import Mapping
+import asyncio
+from collections.abc import Awaitable, Callable, Collection, Iterable, Mapping
 from typing import TypeVar
 
-from rigd.model.devices import LastWill, LinkSpec, WillFrame
 from rigd.model.errors import DeviceProtocolError, DeviceRefused, LinkTimeout, LocalProtocolError
 from rigd.model.units import UNITS
-from rigd.ports.link import Line, ReplyReader
+from rigd.ports.link import Line
 from rigd_drivers.card import modbus, text
-from rigd_drivers.card.model import Card, Check, Register, Step
+from rigd_drivers.card.expressions import Value, number, parse
+from rigd_drivers.card.model import Card, Question, Step
+from rigd_drivers.card.words import Words
 
 T = TypeVar("T")
+Seen = dict[str, Value]
+
+GIVEN = frozenset(("value", "count", "number"))
+"""Names in expressions that are no readings."""
+POLL_S = 0.05
+"""Pause between two looks at a device that is busy, or not yet where it shall be."""
+
+
+class StillBusy(DeviceRefused):
+    """The device said that it is busy; it may be asked again."""
 
 
 class Talk:
-    """How to speak with one device; ``address`` is the Modbus unit or the text address."""
+    """How to speak with one device. ``words`` knows its bytes; ``parameters`` its address and the card's parameters."""
 
-    def __init__(self, card: Card, device: str, address: str, retries: int) -> None:
-        self._card, self._device, self._address, self._retries = card, device, address, retries
+    def __init__(self, card: Card, device: str, words: Words, retries: int) -> None:
+        self._card, self._device, self._words, self._retries = card, device, words, retries
         self._number = 0
-        frame = card.framing
-        kind = (frame.checksum, frame.checksum_form, frame.checksum_covers_start)
-        start, end = text.fill(frame.start, address), frame.end
-        self._out = text.Frame(start.encode("latin-1"), end.encode("latin-1"), *kind)
-        back = text.fill(frame.start if frame.reply_start is None else frame.reply_start, address)
-        back_end = end if frame.reply_end is None else frame.reply_end
-        self._back = text.Frame(back.encode("latin-1"), back_end.encode("latin-1"), *kind)
+        self._count = 0
+        self._free_s = 0.0
+        self._apart = not card.modbus
 
-    async def read(self, line: Line, name: str, seen: dict[str, str | float]) -> str | float:
-        """A register's number or a reply's field; ``seen`` keeps what this poll has already asked."""
-        if name in seen:
-            return seen[name]
+    def known(self, seen: Mapping[str, Value] | None = None) -> Seen:
+        """Names that need no device: address, parameters, ``count``; and what has been seen."""
+        return {**self._words.parameters, "count": float(self._count), **(seen or {})}
+
+    def beat(self) -> None:
+        """Count on; ``count`` is what a heartbeat may write."""
+        self._count = (self._count + 1) % 65536
+
+    async def read(self, line: Line, formula: str, seen: Seen) -> Value:
+        """What an expression of readings says; ``seen`` keeps what this poll has already asked."""
+        expression = parse(formula)
+        await self.fetch(line, expression.names, seen)
+        return expression(self.known(seen))
+
+    async def fetch(self, line: Line, names: Collection[str], seen: Seen) -> None:
+        """Ask for all of these readings that are not in ``seen`` yet; neighbouring registers in one message."""
+        given = seen.keys() | self._words.parameters.keys() | GIVEN
+        missing = [name for name in names if name not in given]
         if self._card.modbus:
-            place = self._place(name)
-            seen[name] = modbus.decode(place, await self._pdu(line, modbus.read_pdu(place)))
-        else:
-            question = name.partition(".")[0]
-            item = self._card.questions[question]
-            fields = await self._words(line, item.send, item.reply, None)
-            seen.update({f"{question}.{field}": value or "" for field, value in fields.items()})
-        return seen[name]
+            await self._registers(line, missing, seen)
+            return
+        for question in dict.fromkeys(name.partition(".")[0] for name in missing):
+            if any(name not in seen for name in missing if name.startswith(f"{question}.")):
+                fields = await self._ask_words(line, self._card.questions[question], self.known(seen))
+                seen.update({f"{question}.{field}": value for field, value in fields.items()})
 
     async def step(self, line: Line, step: Step, value: float | None) -> None:
         """One step of an order, and its proof."""
-        number = raw(step, value)
-        if self._card.modbus:
-            await self._write(line, step, number or 0.0)
+        seen: Seen = {}
+        if step.when and not bool(await self._formula(line, step.when, step, value, seen)):
+            return
+        raw = await self._raw(line, step, value, seen)
+        if step.write:
+            await self._write(line, step, raw)
+        elif step.block:
+            await self._block(line, step, value, seen)
+        elif step.send:
+            await self._ask_words(line, step, await self._slots(line, step, raw, seen))
+        if step.pause_s:
+            await asyncio.sleep(step.pause_s)
+        if step.confirm:
+            await self._agrees(line, step, raw, lambda: self.read(line, step.confirm, {}), step.confirm)
+        if step.until:
+            await self._until(line, step)
+
+    async def steps(self, line: Line, steps: Iterable[Step], value: float | None = None) -> None:
+        """Several, in turn."""
+        for step in steps:
+            await self.step(line, step, value)
+
+    async def _formula(self, line: Line, formula: str, step: Step, value: float | None, seen: Seen) -> Value:
+        """An expression of the order's value (in the step's unit) and of readings."""
+        expression = parse(formula)
+        await self.fetch(line, expression.names, seen)
+        return expression(self.known(seen) | _own(step, value))
+
+    async def _raw(self, line: Line, step: Step, value: float | None, seen: Seen) -> float:
+        """The number that goes on the wire; 0 for a step that has none."""
+        if isinstance(step.set, str) and step.set != "value":
+            return scaled(step, number(await self._formula(line, step.set, step, value, seen)))
+        if step.set == "value" and value is None:
+            return 0.0
+        return scaled(step, _own(step, value)["value"] if step.set == "value" else float(step.set))
+
+    async def _slots(self, line: Line, step: Step, raw: float, seen: Seen) -> Seen:
+        """Everything that a command's slots ask for."""
+        names = frozenset().union(*(expression.names for expression, _ in text.slots(step.send)))
+        await self.fetch(line, names, seen)
+        return self.known(seen) | {"value": raw}
+
+    async def _write(self, line: Line, step: Step, raw: float) -> None:
+        place = self._words.place(step.write)
+        if place.bit is not None and place.write != "mask":
+            word = (await self._pdu(line, modbus.read_pdu(place)))[2:]
+            word = modbus.with_bit(place, word, bool(raw))
+            request = modbus.write_block_pdu(place.address, word)
+            if place.write == "single":
+                request = bytes([6]) + request[1:3] + word
         else:
-            await self._words(line, step.send, step.reply, number)
-        if step.confirm and number is not None:
-            found = await self.read(line, step.confirm, {})
-            has = text.number(found) if isinstance(found, str) else found
-            if abs(has - number) > step.tolerance + 1e-6 * abs(number):
-                raise DeviceProtocolError(f"{self._device}: {number:g} was ordered, {step.confirm} is {has:g}")
-
-    async def _write(self, line: Line, step: Step, number: float) -> None:
-        place = self._place(step.write)
-        await self._pdu(line, modbus.write_pdu(place, number))
+            request = modbus.write_pdu(place, raw)
+        await self._pdu(line, request)
         if step.verify:
-            wanted = modbus.read_reply(place, number)
-            found = await self._pdu(line, modbus.read_pdu(place))
-            if found != wanted:
-                has = modbus.decode(place, found)
-                raise DeviceProtocolError(f"{self._device}: wrote {number:g} to {step.write}, but {has:g} stands there")
+            await self._verified(line, step, step.write, raw)
 
-    def last_will(self, link: LinkSpec) -> LastWill:
-        """The stop of the card as exact bytes."""
-        wait_s = self._card.link.reply_timeout_s or link.reply_timeout_s
-        frames = tuple(self._will_step(step, n, wait_s) for n, step in enumerate(self._card.stop.steps))
-        checks = tuple(self._will_check(check, 128 + n, wait_s) for n, check in enumerate(self._card.stop.check))
-        return LastWill(self._device, link, frames, checks)
+    async def _block(self, line: Line, step: Step, value: float | None, seen: Seen) -> None:
+        """Several neighbouring registers in one message; values stand as they are, without scale."""
+        numbers = {
+            name: number(await self._formula(line, formula, step, value, seen)) if isinstance(formula, str) else formula
+            for name, formula in step.block.items()
+        }
+        places = {name: self._words.place(name) for name in numbers}
+        ordered = sorted(places, key=lambda name: places[name].address)
+        words = b"".join(modbus.encode(places[name], numbers[name]) for name in ordered)
+        await self._pdu(line, modbus.write_block_pdu(places[ordered[0]].address, words))
+        for name in ordered if step.verify else ():
+            await self._verified(line, step, name, numbers[name])
 
-    def _will_step(self, step: Step, n: int, wait_s: float) -> WillFrame:
-        if self._card.modbus:
-            pdu = modbus.write_pdu(self._place(step.write), raw(step, None) or 0.0)
-            return WillFrame(self._wrap(pdu, n), re.escape(self._wrap(pdu[:5], n)), wait_s)
-        return self._will_words(step.send, step.reply, wait_s)
+    async def _verified(self, line: Line, step: Step, name: str, raw: float) -> None:
+        """Read a register back: what stands there is what its type can hold of the number."""
+        place = self._words.place(name)
+        wanted = raw
+        if place.bit is None and not place.bits:
+            wanted = number(modbus.decode(place, modbus.encode(place, raw)))
 
-    def _will_check(self, check: Check, n: int, wait_s: float) -> WillFrame:
-        if self._card.modbus:
-            place = self._place(check.read)
-            good = self._wrap(modbus.read_reply(place, check.equals), n)
-            return WillFrame(self._wrap(modbus.read_pdu(place), n), re.escape(good), wait_s)
-        return self._will_words(check.send, check.reply, wait_s)
+        async def stands() -> Value:
+            return modbus.decode(place, (await self._pdu(line, modbus.read_pdu(place)))[2:])
 
-    def _will_words(self, send: str, reply: str, wait_s: float) -> WillFrame:
-        request = self._out.wrap(text.fill(send, self._address))
-        if not reply:
-            return WillFrame(request, b"", wait_s)
-        pattern = re.sub(r"\(\?P<\w+>", "(?:", text.fill_pattern(reply, self._address)).encode("latin-1")
-        size = 0 if self._back.checksum == "none" else len(self._back.wrap("")) - len(self._back.start + self._back.end)
-        good = b"(?:%s)(?:%s).{%d}%s" % (re.escape(self._back.start), pattern, size, re.escape(self._back.end))
-        return WillFrame(request, good, wait_s)
+        await self._agrees(line, step, wanted, stands, name)
 
-    def _wrap(self, pdu: bytes, n: int) -> bytes:
-        return modbus.wrap(int(self._address or 1), modbus.WILL_NUMBERS + n, pdu, tcp=self._tcp)
+    async def _agrees(
+        self, line: Line, step: Step, wanted: float, ask: Callable[[], Awaitable[Value]], what: str
+    ) -> None:
+        end_s = asyncio.get_running_loop().time() + step.within_s
+        while True:
+            found = number(await ask())
+            if abs(found - wanted) <= step.tolerance + 1e-6 * abs(wanted):
+                return
+            if asyncio.get_running_loop().time() >= end_s:
+                raise DeviceProtocolError(f"{self._device}: {wanted:g} was ordered, but {what} is {found:g}")
+            await asyncio.sleep(POLL_S)
 
-    @property
-    def _tcp(self) -> bool:
-        return self._card.link.protocol == "modbus-tcp"
+    async def _until(self, line: Line, step: Step) -> None:
+        end_s = asyncio.get_running_loop().time() + step.within_s
+        while not bool(await self.read(line, step.until, {})):
+            if asyncio.get_running_loop().time() >= end_s:
+                raise DeviceProtocolError(f"{self._device}: {step.until!r} is not so after {step.within_s:g} s")
+            await asyncio.sleep(POLL_S)
 
-    def _place(self, name: str) -> modbus.Place:
-        item: Register = self._card.registers[name]
-        return modbus.Place(
-            item.table, item.address - self._card.link.address_base, item.type,
-            item.word_order == "low-first", item.byte_order == "low-first", item.write == "single",
-        )  # fmt: skip
+    async def _registers(self, line: Line, names: Collection[str], seen: Seen) -> None:
+        groups = [[name] for name in names] if self._apart else self._words.neighbours(names)
+        for group in groups:
+            places = [self._words.place(name) for name in group]
+            last = places[-1]
+            span = last.address + last.count - places[0].address
+            try:
+                body = (await self._pdu(line, modbus.read_pdu(places[0], span)))[2:]
+            except modbus.Refused:
+                if len(group) == 1:
+                    raise
+                self._apart = True  # a device that gives its registers only one by one
+                await self._registers(line, [name for name in names if name not in seen], seen)
+                return
+            for name, place in zip(group, places, strict=True):
+                at = place.address - places[0].address
+                part = bytes([body[at // 8] >> at % 8]) if place.bits else body[2 * at : 2 * (at + place.count)]
+                seen[name] = modbus.decode(place, part)
 
     async def _pdu(self, line: Line, pdu: bytes) -> bytes:
-        unit = int(self._address or 1)
-        for left in range(self._retries, -1, -1):
+        async def once() -> bytes:
             self._number = (self._number + 1) % modbus.WILL_NUMBERS
-            reader = modbus.ModbusReader(unit, self._number, pdu, tcp=self._tcp)
             try:
-                return await self._ask(line, modbus.wrap(unit, self._number, pdu, tcp=self._tcp), reader)
-            except LinkTimeout:
-                if not left:
-                    raise
-            except DeviceRefused as error:
-                if not left or "busy" not in str(error):
-                    raise
-        raise AssertionError("unreachable")
+                return await line.ask(
+                    *self._words.register_request(self._number, pdu), timeout_s=self._card.link.reply_timeout_s
+                )
+            except modbus.Refused as error:
+                if error.code in (modbus.BUSY, modbus.STILL_WORKING):
+                    raise StillBusy(str(error)) from error
+                raise
 
-    async def _words(self, line: Line, send: str, reply: str, value: float | None) -> Mapping[str, str]:
-        request = self._out.wrap(text.fill(send, self._address, value))
-        echo = request if self._card.framing.echo else b""
-        pattern = text.fill_pattern(reply, self._address)
-        for left in range(self._retries, -1, -1):
-            reader = text.TextReader(self._back, pattern, self._card.errors | self._card.busy, echo)
+        return await self._patiently(once)
+
+    async def _ask_words(self, line: Line, said: Question | Step, known: Seen) -> Mapping[str, str]:
+        self._number = (self._number + 1) % 10_000
+        request, reader = self._words.text_request(said, known | {"number": float(self._number)})
+
+        async def once() -> Mapping[str, str]:
+            wait_s = said.timeout_s or self._card.link.reply_timeout_s
             try:
-                return await self._ask(line, request, reader)
-            except LinkTimeout:
-                if not left:
-                    raise
+                return await line.ask(request, reader(), timeout_s=wait_s)
             except DeviceRefused as error:
-                if not left or not any(f"refused: {meaning}" in str(error) for meaning in self._card.busy.values()):
-                    raise
-        raise AssertionError("unreachable")
+                if any(f"refused: {meaning}" in str(error) for meaning in self._card.busy.values()):
+                    raise StillBusy(str(error)) from error
+                raise
 
-    async def _ask(self, line: Line, request: bytes, reader: ReplyReader[T]) -> T:
-        try:
-            return await line.ask(request, reader, timeout_s=self._card.link.reply_timeout_s)
-        except (LinkTimeout, DeviceRefused, DeviceProtocolError) as error:
-            raise type(error)(f"{self._device}: {error}") from error
+        return await self._patiently(once)
+
+    async def _patiently(self, once: Callable[[], Awaitable[T]]) -> T:
+        """An exchange, again when no answer came (so many times) and when the device is busy (so long)."""
+        loop = asyncio.get_running_loop()
+        left, busy_until_s = self._retries, loop.time() + self._card.link.busy_s
+        while True:
+            if (wait_s := self._free_s - loop.time()) > 0:
+                await asyncio.sleep(wait_s)
+            try:
+                return await once()
+            except LinkTimeout as error:
+                left -= 1
+                if left < 0:
+                    raise LinkTimeout(f"{self._device}: {error}") from error
+            except StillBusy as error:
+                if loop.time() >= busy_until_s:
+                    raise DeviceRefused(f"{self._device}: {error}") from error
+                await asyncio.sleep(POLL_S)
+            except (DeviceRefused, DeviceProtocolError) as error:
+                raise type(error)(f"{self._device}: {error}") from error
+            finally:
+                if self._card.link.pause_s:
+                    self._free_s = loop.time() + self._card.link.pause_s
 
 
-def raw(step: Step, value: float | None) -> float | None:
-    """The number on the wire of a step: its own, or the order's value in the device's unit."""
-    number = value if step.set == "value" else step.set
-    if number is None:
-        return None
+def _own(step: Step, value: float | None) -> dict[str, float]:
+    """``value`` in the unit of the step."""
+    if value is None:
+        return {}
+    unit = UNITS[step.unit] if step.unit else None
+    return {"value": value if unit is None else (value - unit.offset) / unit.factor}
+
+
+def scaled(step: Step, found: float) -> float:
+    """What stands on the wire for a number: what ``map`` says, or (number - offset) / scale."""
     if step.map:
-        key = f"{number:g}"
+        key = f"{found:g}"
         if key not in step.map:
             raise LocalProtocolError(f"value {key} is not in the card's map {', '.join(step.map)}")
         return step.map[key]
-    if step.set == "value" and step.unit:
-        number = (number - UNITS[step.unit].offset) / UNITS[step.unit].factor
-    return (number - step.offset) / step.scale
+    return (found - step.offset) / step.scale

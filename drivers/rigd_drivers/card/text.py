@@ -1,138 +1,136 @@
-"""Text protocols as a card declares them: frames, checksums, addresses, patterns. Pure."""
+"""Words of text protocols: commands with values filled in, patterns of replies, and the reader of one reply. Pure."""
 
 from __future__ import annotations
 
 import re
-from collections.abc import Callable, Mapping
+import struct
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
-from rigd.model.errors import DeviceProtocolError, DeviceRefused, LocalProtocolError
-from rigd_drivers.checksums import crc16
+from rigd.model.errors import DeviceRefused, LocalProtocolError
+from rigd_drivers.card.expressions import Expression, Value, number, parse
+from rigd_drivers.card.frames import Frame
 
-LONGEST = 4096
-_SLOT = re.compile(r"\{(value|address)(?::(0?\d{0,2}(?:\.\d)?[df]|))?\}")
-
-
-def crc_ccitt(data: bytes) -> int:
-    """CRC-16 of polynomial 0x1021, start 0xFFFF, not reflected; check value of "123456789" is 29B1 (CRC catalogues)."""
-    crc = 0xFFFF
-    for byte in data:
-        crc ^= byte << 8
-        for _ in range(8):
-            crc = (crc << 1 ^ 0x1021) & 0xFFFF if crc & 0x8000 else crc << 1
-    return crc
+KEPT = 64
+_SLOT = re.compile(r"\{\{|\}\}|\{([A-Za-z_(][^{}:]*)(?::([^{}]*))?\}")
+_FORM = re.compile(r"[-+ ]?#?0?\d{0,3}(?:\.\d{1,2})?[defgxXcbos]?|[<>][bBhHiIqQfd]")
 
 
-def lrc(data: bytes) -> int:
-    """Two's complement of the sum, as of Modbus over Serial Line V1.02, 2.5.2.2."""
-    return -sum(data) & 0xFF
+def slots(template: str) -> list[tuple[Expression, str]]:
+    """What a template asks for: (expression, format) of each ``{...}``; ``ExpressionError`` or ``ValueError``."""
+    found = []
+    for slot in _SLOT.finditer(template):
+        if slot[1] is None:
+            continue
+        if _FORM.fullmatch(slot[2] or "") is None:
+            raise ValueError(f"format {slot[2]!r} is unknown; such as .3f, 05d, +.2f, 04X, c, s or >H (bytes)")
+        found.append((parse(slot[1]), slot[2] or ""))
+    return found
 
 
-def xor(data: bytes) -> int:
-    """All bytes by exclusive or."""
-    total = 0
-    for byte in data:
-        total ^= byte
-    return total
-
-
-CHECKSUMS: Mapping[str, tuple[Callable[[bytes], int], int]] = {
-    "sum": (lambda data: sum(data) & 0xFF, 1),
-    "xor": (xor, 1),
-    "lrc": (lrc, 1),
-    "crc16-modbus": (crc16, 2),
-    "crc-ccitt": (crc_ccitt, 2),
-}
-
-
-@dataclass(frozen=True, slots=True)
-class Frame:
-    """How words are wrapped: ``start`` + words + checksum + ``end``."""
-
-    start: bytes = b""
-    end: bytes = b"\r"
-    checksum: str = "none"
-    form: str = "hex"
-    covers_start: bool = False
-
-    def wrap(self, words: str) -> bytes:
-        """The bytes of one message."""
-        body = self.start + words.encode("latin-1")
-        return body + self._check(body) + self.end
-
-    def unwrap(self, message: bytes) -> str | None:
-        """The words of a message without its ``end``; ``None`` for a bent or foreign one."""
-        at = message.rfind(self.start) if self.start else 0
-        if at < 0:
-            return None
-        message = message[at:]
-        size = len(self._check(b""))
-        body, check = (message[:-size], message[-size:]) if size else (message, b"")
-        if size and check.upper() != self._check(body).upper():
-            return None
-        return body[len(self.start) :].decode("latin-1")
-
-    def _check(self, body: bytes) -> bytes:
-        if self.checksum == "none":
-            return b""
-        function, size = CHECKSUMS[self.checksum]
-        number = function(body if self.covers_start else body[len(self.start) :])
-        if self.form == "hex":
-            return f"{number:0{2 * size}X}".encode()
-        return number.to_bytes(size, "little" if self.form == "low-first" else "big")
-
-
-def fill(template: str, address: str, value: float | None = None) -> str:
-    """A command with ``{value:.3f}`` and ``{address}`` filled in."""
+def fill(template: str, known: Mapping[str, Value], decimal: str = ".") -> str:
+    """A command with its ``{value:.3f}``, ``{address}``, ``{round(value * 60):05d}`` filled in; ``{{`` is a brace."""
 
     def one(slot: re.Match[str]) -> str:
-        if slot[1] == "address":
-            return address
-        if value is None:
-            raise LocalProtocolError(f"{template!r} needs a value")
-        form = slot[2] or "g"
-        return format(round(value) if form.endswith("d") else value, form)
+        if slot[1] is None:
+            return slot[0][0]
+        expression = parse(slot[1])
+        missing = expression.names - known.keys()
+        if missing:
+            raise LocalProtocolError(f"{template!r} needs {', '.join(sorted(missing))}")
+        return _formed(expression(known), slot[2] or "", decimal)
 
     return _SLOT.sub(one, template)
 
 
-def fill_pattern(pattern: str, address: str) -> str:
-    """A reply pattern with ``{address}`` filled in."""
-    return pattern.replace("{address}", re.escape(address))
+def _formed(value: Value, form: str, decimal: str) -> str:
+    try:
+        if isinstance(value, str) and form in ("", "s"):
+            return value
+        if form[:1] in ("<", ">") and form[-1:] in tuple("bBhHiIqQfd"):
+            found = number(value)
+            return struct.pack(form, found if form[-1] in "fd" else round(found)).decode("latin-1")
+        if form[-1:] in tuple("dxXcbo"):
+            return format(round(number(value)), form)
+        return format(number(value), form or ".10g").replace(".", decimal)
+    except (ValueError, OverflowError, struct.error) as error:
+        raise LocalProtocolError(f"{value!r} does not fit the format {form!r}: {error}") from None
+
+
+def fill_pattern(pattern: str, known: Mapping[str, Value]) -> str:
+    """A reply pattern with ``{address}`` and the like filled in literally; repetitions ``{3}`` stay."""
+
+    def one(slot: re.Match[str]) -> str:
+        if slot[1] is None:
+            return slot[0]
+        return re.escape(_formed(parse(slot[1])(known), slot[2] or "", "."))
+
+    return _SLOT.sub(one, pattern)
+
+
+@dataclass(frozen=True, slots=True)
+class Expected:
+    """What counts as the reply: its pattern over ``lines`` frames, or over all frames up to one that matches ``last``.
+
+    ``errors`` are patterns of the device's "no" with their meaning; without a pattern nothing is waited for.
+    """
+
+    pattern: str
+    errors: Mapping[str, str]
+    lines: int = 1
+    last: str = ""
 
 
 class TextReader:
-    """Finds the reply to one request: the first good frame that the pattern matches wholly."""
+    """Finds the reply to one request: the first good frame (or frames) that the pattern matches wholly."""
 
-    def __init__(self, frame: Frame, pattern: str, errors: Mapping[str, str], echo: bytes = b"") -> None:
-        self._frame, self._errors, self._echo = frame, errors, echo
-        self._pattern = re.compile(pattern)
+    def __init__(self, frame: Frame, expected: Expected, *, echo: bytes = b"", numbered: bool = False) -> None:
+        self.numbered = numbered
+        self.unknown = ""
+        self._frame, self._expected, self._echo = frame, expected, echo
+        self._pattern = re.compile(expected.pattern)
         self._kept = b""
+        self._lines: list[str] = []
 
     def feed(self, data: bytes) -> Mapping[str, str] | None:
         """Take the next bytes; the fields of the reply or ``None``."""
-        self._kept = (self._kept + data)[-LONGEST:]
-        if self._echo and self._kept.startswith(self._echo):
-            self._kept, self._echo = self._kept[len(self._echo) :], b""
-        end = self._frame.end
-        while end and end in self._kept:
-            message, self._kept = self._kept.split(end, 1)
-            words = self._frame.unwrap(message)
+        self._kept += data
+        if self._echo:
+            at = self._kept.find(self._echo)
+            if at < 0:
+                self._kept = self._kept[-4096:]
+                return None
+            self._kept, self._echo = self._kept[at + len(self._echo) :], b""
+        if not self._expected.pattern:
+            return {}
+        while True:
+            words, self._kept = self._frame.find(self._kept)
             if words is None:
-                continue
-            if (found := self._pattern.fullmatch(words)) is not None:
-                return found.groupdict()
-            self._refused(words)
+                return None
+            if (found := self._line(words)) is not None:
+                return found
+
+    def _line(self, words: str) -> Mapping[str, str] | None:
+        """One more frame; a single one that is an error reply is the device's "no"."""
+        self._lines = [*self._lines[1 - KEPT :], words]
+        expected, count = self._expected, len(self._lines)
+        starts: Sequence[int] = (count - expected.lines,) if count >= expected.lines else ()
+        if expected.last:
+            starts = range(count) if re.fullmatch(expected.last, words.strip()) else ()
+        for start in starts:
+            if (found := self._matched("\n".join(self._lines[start:]))) is not None:
+                return found
+        self._refused(words)
         return None
 
+    def _matched(self, text: str) -> Mapping[str, str] | None:
+        found = self._pattern.fullmatch(text) or self._pattern.fullmatch(text.strip())
+        return None if found is None else {name: value or "" for name, value in found.groupdict().items()}
+
     def _refused(self, words: str) -> None:
-        for pattern, meaning in self._errors.items():
-            if re.fullmatch(pattern, words):
-                raise DeviceRefused(f"refused: {meaning or words}")
-
-
-def number(text: str) -> float:
-    """A plain decimal number; no exponents without digits, no ``nan``."""
-    if re.fullmatch(r"\s*[-+]?\d*\.?\d+(?:[eE][-+]?\d{1,2})?\s*", text, re.ASCII) is None:
-        raise DeviceProtocolError(f"{text!r} is not a number")
-    return float(text)
+        for pattern, meaning in self._expected.errors.items():
+            if (found := re.fullmatch(pattern, words.strip())) is not None:
+                fields = ", ".join(value for value in found.groupdict().values() if value)
+                raise DeviceRefused(f"refused: {meaning or words.strip()}{f' ({fields})' if fields else ''}")
+        if words.strip():
+            self.unknown = words.strip()
