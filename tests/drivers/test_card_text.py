@@ -15,8 +15,8 @@ from rigd.model.errors import ConfigError, DeviceProtocolError, DeviceRefused, L
 from rigd.model.orders import Action, Authority, Order
 from rigd.ports.link import ReplyReader
 from rigd_drivers.card import FAMILY
-from rigd_drivers.card.modbus import ModbusReader, Place, read_pdu
 from rigd_drivers.card.frames import CHECKSUMS, Frame
+from rigd_drivers.card.modbus import ModbusReader, Place, read_pdu
 from rigd_drivers.card.text import Expected, TextReader
 
 T = TypeVar("T")

@@ -190,6 +190,7 @@ class ModbusReader:
                 fits = len(frame) == length + 3 and frame[0] == self._unit and self._mine(frame[1:-2])
                 if fits and crc16(frame[:-2]) == int.from_bytes(frame[-2:], "little"):
                     return frame[1:-2]
+        self._kept = self._kept[-self._length() - 2 :]  # what stands before cannot become the reply any more
         return None
 
     def _ascii_pdu(self) -> bytes | None:

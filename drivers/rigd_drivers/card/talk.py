@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import asyncio
+import re
 from collections.abc import Awaitable, Callable, Collection, Iterable, Mapping
 from typing import TypeVar
 
@@ -58,10 +59,16 @@ class Talk:
         if self._card.modbus:
             await self._registers(line, missing, seen)
             return
-        for question in dict.fromkeys(name.partition(".")[0] for name in missing):
-            if any(name not in seen for name in missing if name.startswith(f"{question}.")):
-                fields = await self._ask_words(line, self._card.questions[question], self.known(seen))
-                seen.update({f"{question}.{field}": value for field, value in fields.items()})
+        asked = {name.partition(".")[0] for name in missing}
+        for question, item in self._card.questions.items():
+            if question in asked:
+                fields = await self._ask_words(line, item, self.known(seen))
+                seen.update({f"{question}.{field}": self._plain(value) for field, value in fields.items()})
+
+    def _plain(self, field: str) -> str:
+        """A field of a reply, with a point where the device writes a decimal comma."""
+        comma = self._card.framing.decimal == "," and re.fullmatch(r"\s*[-+]?\d*,\d+\s*", field)
+        return field.replace(",", ".") if comma else field
 
     async def step(self, line: Line, step: Step, value: float | None) -> None:
         """One step of an order, and its proof."""

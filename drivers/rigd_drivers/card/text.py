@@ -12,7 +12,7 @@ from rigd_drivers.card.expressions import Expression, Value, number, parse
 from rigd_drivers.card.frames import Frame
 
 KEPT = 64
-_SLOT = re.compile(r"\{\{|\}\}|\{([A-Za-z_(][^{}:]*)(?::([^{}]*))?\}")
+_SLOT = re.compile(r"\{\{|\}\}|\{([^{}:]*[A-Za-z_][^{}:]*)(?::([^{}]*))?\}")
 _FORM = re.compile(r"[-+ ]?#?0?\d{0,3}(?:\.\d{1,2})?[defgxXcbos]?|[<>][bBhHiIqQfd]")
 
 

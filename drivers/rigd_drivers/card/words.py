@@ -63,7 +63,7 @@ class Words:
         framing = self._card.framing
         request = self._out(known).wrap(text.fill(said.send, known, framing.decimal))
         errors = {
-            text.fill_pattern(pattern, known): why for pattern, why in (self._card.errors | self._card.busy).items()
+            text.fill_pattern(pattern, known): why for pattern, why in (self._card.busy | self._card.errors).items()
         }
         expected = text.Expected(text.fill_pattern(said.reply, known), errors, said.lines, said.last)
         echo = request.removesuffix(framing.end.encode("latin-1")) if framing.echo else b""
