@@ -7,6 +7,7 @@ from dataclasses import dataclass, replace
 
 from rigd.config.built_in import built_in_alarms, built_in_interlocks
 from rigd.config.conditions import ConditionMaker
+from rigd.config.early import early_alarms, early_plan, early_tags
 from rigd.config.files import RigFile
 from rigd.config.findings import Findings
 from rigd.config.implied import (
@@ -48,11 +49,15 @@ def compile_rig(file: RigFile, chemistry: Chemistry, found: Findings, digest: st
     maker = ConditionMaker({tag.id: tag for tag in rig.tags}, _unusable(found), found)
     interlocks = tuple(lock for table in file.interlocks if (lock := _interlock(table, maker, rig)))
     rig = replace(rig, interlocks=interlocks, devices=_devices(file, rig))
+    early = early_plan(rig)
+    rig = replace(rig, tags=(*rig.tags, *early_tags(early)))  # after the interlocks: what only warns trips nothing
+    maker = ConditionMaker({tag.id: tag for tag in rig.tags}, _unusable(found), found)
     alarms = tuple(alarm for table in file.alarms if (alarm := _alarm(table, maker)))
+    implied = early_alarms(early, file.early.value(), declared(found.source, "alarms"))
     rig = replace(
         rig,
         interlocks=(*interlocks, *built_in_interlocks(rig, rig.devices)),
-        alarms=(*alarms, *built_in_alarms(rig)),
+        alarms=(*alarms, *built_in_alarms(rig), *implied),
     )
     return Drafted(rig, sides)
 

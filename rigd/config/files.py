@@ -4,6 +4,7 @@ from typing import Annotated, Literal
 
 from pydantic import Field
 
+from rigd.config.early_table import EarlyTable
 from rigd.config.quantity import Duration, Flow, VolumeOrNone
 from rigd.config.recipe_tables import (
     ChecklistTable,
@@ -70,6 +71,7 @@ class RigFile(Table):
     sensors: tuple[SensorTable, ...] = ()
     interlocks: tuple[InterlockTable, ...] = ()
     alarms: tuple[AlarmTable, ...] = ()
+    early: EarlyTable = Field(default_factory=EarlyTable)
     links: Annotated[tuple[LinkTable, ...], Field(min_length=1)]
     devices: Annotated[tuple[DeviceTable, ...], Field(min_length=1)]
     outside: OutsideTable = Field(default_factory=OutsideTable)

@@ -10,6 +10,7 @@ from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, replace
 from typing import TypeVar
 
+from rigd.logic.early.watch import EarlyPlan, plan_of
 from rigd.logic.flow_path import FlowPath, SupplyLine, flow_path
 from rigd.logic.protect import conditions
 from rigd.logic.protect.conditions import Watch
@@ -125,6 +126,7 @@ class Program:
     causes: Mapping[str, tuple[Watch, ...]]
     ringed: frozenset[str]
     noisy: frozenset[str]
+    early: EarlyPlan
 
     def is_solvent(self, liquid: str) -> bool:
         """True for a declared solvent; an unknown liquid counts as reagent."""
@@ -143,6 +145,7 @@ def compile_program(rig: RigDefinition, recipe: Recipe, options: RunOptions | No
     interlocks, alarms = _with_built_in(rig.interlocks), _with_built_in_alarms(rig.alarms)
     if options.unattended:
         alarms = tuple(_repeated(alarm) for alarm in alarms)
+    early = plan_of(rig, recipe, path)
     watches = conditions.watches(interlocks, alarms, lambda condition: _watched_tag(condition, tags, feedback))
     return Program(
         rig=rig,
@@ -171,8 +174,9 @@ def compile_program(rig: RigDefinition, recipe: Recipe, options: RunOptions | No
         watching=_grouped((tag, watch) for watch in watches for tag in _looks_at(watch)),
         untagged=_grouped(((w.condition.kind, w.condition.tag), w) for w in watches if not w.tag),
         causes=_grouped((watch.owner, watch) for watch in watches),
-        ringed=frozenset(watch.tag for watch in watches if watch.tag),
+        ringed=frozenset(watch.tag for watch in watches if watch.tag) | early.ringed,
         noisy=frozenset(watch.tag for watch in watches if watch.tag and _is_noisy(rig, watch.tag)),
+        early=early,
     )
 
 

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Mapping
 from typing import TYPE_CHECKING
 
 from rigd.logic.protect import alarms, interlocks
@@ -26,14 +27,23 @@ Fields = dict[str, str | float | int | bool]
 class Words:
     """Makes events of one scan; knows the image that the sentences speak of."""
 
-    __slots__ = ("_conditions", "_faults", "_now_ns", "_program", "_signals")
+    __slots__ = ("_conditions", "_faults", "_now_ns", "_program", "_remarks", "_signals")
 
-    def __init__(self, program: Program, signals: Signals, conditions: Conditions, faults: Faults, now_ns: int) -> None:
+    def __init__(
+        self,
+        program: Program,
+        signals: Signals,
+        conditions: Conditions,
+        faults: Faults,
+        now_ns: int,
+        remarks: Mapping[str, str],
+    ) -> None:
         self._program = program
         self._signals = signals
         self._conditions = conditions
         self._faults = faults
         self._now_ns = now_ns
+        self._remarks = remarks
 
     def interlock(self, change: interlocks.Change) -> Event:
         """The event of one transition of an interlock."""
@@ -146,6 +156,8 @@ class Words:
             return self._untagged(condition)
         if sample is None:
             return f"{watch.tag} was never seen"
+        if watch.tag in self._remarks:
+            return self._remarks[watch.tag]
         if sample.quality is Quality.BAD:
             return (
                 f"{watch.tag} cannot be believed ({sample.cause}, last value {self._number(watch.tag, sample.value)})"

@@ -11,6 +11,8 @@ from typing import TYPE_CHECKING
 
 from rigd.logic.arbitration import Aspect, Memory
 from rigd.logic.demand import Demand
+from rigd.logic.early import watch as early_rules
+from rigd.logic.early.watch import EarlyState
 from rigd.logic.protect import alarms, bypass, conditions, faults, interlocks, ledger, signals, stops
 from rigd.logic.protect.alarm_core import AlarmEvent
 from rigd.logic.protect.alarm_overlay import FlagEvent
@@ -68,6 +70,7 @@ class ProtectState:
     alarms: Alarms
     ledger: Ledger
     stopping: Stopping
+    early: EarlyState
     verdict: Verdict = _STARTING
     fresh: frozenset[str] = frozenset()
 
@@ -92,6 +95,7 @@ def initial(program: Program, now_ns: int) -> ProtectState:
         alarms.initial(program),
         ledger.initial(program),
         stops.initial(program, now_ns),
+        early_rules.initial(program.early, now_ns),
     )
 
 
@@ -133,6 +137,7 @@ class _Scan:
         self._interlocks = state.interlocks
         self._alarms = state.alarms
         self._ledger = state.ledger
+        self._early = state.early
         self._gone: tuple[faults.Key, ...] = ()
         self._fresh: set[str] = set()
         self._urgent = False
@@ -170,6 +175,11 @@ class _Scan:
         self._ledger, volumes = ledger.update(
             program, self._ledger, self._memory, self._signals.samples, changed, now_ns
         )
+        if now_ns >= self._early.due_ns or program.early.stiff in changed:
+            self._early, learned = early_rules.update(
+                program, self._early, self._signals, self._ledger, changed, volumes, now_ns
+            )
+            self._events += learned
         if volumes:
             self._signals = replace(self._signals, samples={**self._signals.samples, **volumes})
             changed.update(volumes)
@@ -301,6 +311,7 @@ class _Scan:
             self._alarms,
             self._ledger,
             stopping,
+            self._early,
             self._verdict(stopping),
             frozenset(self._fresh),
         )
@@ -368,7 +379,7 @@ class _Scan:
         return Told(told.order.value, base_ns + allowed_ns)
 
     def _words(self) -> Words:
-        return Words(self._program, self._signals, self._conditions, self._faults, self._now_ns)
+        return Words(self._program, self._signals, self._conditions, self._faults, self._now_ns, self._early.remarks)
 
 
 _ASPECT_OF = {"position": Aspect.POSITION, "setpoint": Aspect.SET_POINT, "flow": Aspect.RATE}

@@ -1,0 +1,208 @@
+"""Hydraulic resistance of each stretch, learned while solvent flows and watched from then on.
+
+Learned: pressure drop against what the geometry predicts, a straight line (``line``), from up to ``LEVELS`` steady
+flows of solvent. The prior is wide, so that the first flow decides and the next ones tell offset and scale apart.
+Judged: the drop over the learned one is 1 in health; within the band that sensors and learning are worth it is exactly
+1, so that a small flow in a wide path says nothing rather than something wrong.
+
+Another liquid has another viscosity. Until it has filled the path everything between the old and the new is healthy,
+within ``TOLERANCE`` of what the property sets say; then its own factor is learned, once. What clogs in that time is
+seen less sharply, and the absolute limits stand behind it.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping
+from dataclasses import dataclass, field, replace
+from statistics import median
+
+from rigd.logic.early.line import LearnedLine
+from rigd.logic.early.outlook import History, remembered, time_left_s
+from rigd.logic.early.path import Stretch
+from rigd.logic.early.scene import Mixture, Scene
+from rigd.model.events import Event, EventKind
+from rigd.model.samples import Sample
+
+LEVELS = 6
+OTHER_LEVEL = 0.25
+OTHER_FLOW = 0.05
+TOLERANCE = 1.5
+REGULATOR = 0.2
+"""What a back-pressure regulator may keep more or less than its set pressure, of it (common practice, no source)."""
+SETTLE_S = 15.0
+LOOKS = 3
+SIGMAS = 3.0
+FILLED = 2.0
+"""A liquid has filled the path when this many of its volumes have passed."""
+GROWING = 1.4
+FAR_S = 86_400.0
+
+
+@dataclass(frozen=True, slots=True)
+class Watched:
+    """What is known of one stretch.
+
+    ``looks`` are the last drops, ``predicted`` what the geometry says (least, most); ``factors`` are those of other
+    liquids, ``before`` the one that filled the path last; ``at_bar`` is the drop at which ``history`` was last added
+    to; ``lefts`` are the last times left [s]; ``remark`` says in words what the last ratio means.
+    """
+
+    line: LearnedLine
+    levels: tuple[float, ...] = ()
+    open: bool = True
+    looks: tuple[float, ...] = ()
+    predicted: tuple[float, float] = (0.0, 0.0)
+    factors: Mapping[Mixture, float] = field(default_factory=dict)
+    before: float = 1.0
+    history: History = ()
+    at_bar: float = 0.0
+    lefts: tuple[float, ...] = ()
+    remark: str = ""
+
+
+def initial(stretch: Stretch) -> Watched:
+    """Nothing learned: the geometry, with all doubt."""
+    offset = REGULATOR * stretch.kept_bar + stretch.band_bar
+    return Watched(LearnedLine(stretch.kept_bar, 1.0, offset * offset, 1.0))
+
+
+def watch(scene: Scene, stretch: Stretch, known: Watched) -> tuple[Watched, tuple[Sample, ...], tuple[Event, ...]]:
+    """One look at a stretch: what is known then, the values to show, and what was learned."""
+    upper, lower = scene.mean(stretch.upper), scene.mean(stretch.lower) if stretch.lower else 0.0
+    predicted = scene.predicted_bar(stretch)
+    if upper is None or lower is None or predicted[0] <= 0.0 or scene.steady_s < _settle_s(scene, stretch, upper):
+        return (replace(known, looks=()) if known.looks else known), (), ()
+    known = replace(known, looks=(*known.looks[1 - LOOKS :], upper - lower), predicted=predicted)
+    if len(known.looks) < LOOKS:
+        return known, (), ()
+    known, events = _learn(scene, stretch, known)
+    if not known.levels:
+        return known, (), events
+    known, more = _learn_liquid(scene, stretch, known)
+    known, samples = _judge(scene, stretch, known)
+    return known, samples, events + more
+
+
+def _settle_s(scene: Scene, stretch: Stretch, upper_bar: float) -> float:
+    """Five time constants R C after a step, at least ``SETTLE_S``."""
+    flow = sum(scene.flows.get(pump, 0.0) for pump in stretch.pumps)
+    excess_bar = max(upper_bar - stretch.kept_bar, 0.0)
+    return SETTLE_S + 5.0 * 60.0 * scene.program.early.compliance_mL_bar * excess_bar / max(flow, 1e-6)
+
+
+def _learn(scene: Scene, stretch: Stretch, known: Watched) -> tuple[Watched, tuple[Event, ...]]:
+    """Take this flow as one more point of the line, while only solvent has flowed and the path is full of it."""
+    if not known.open:
+        return known, ()
+    filled = scene.passed_mL >= scene.program.early.wetted_mL
+    if known.levels and not scene.solvent:
+        return replace(known, open=False), ()
+    drop, predicted = median(known.looks), sum(known.predicted) / 2.0
+    new = all(abs(predicted - level) > OTHER_LEVEL * max(predicted, level) for level in known.levels)
+    if not filled or not new:
+        return known, ()
+    doubt = SIGMAS * max(known.line.spread(predicted), stretch.band_bar)
+    if known.levels and abs(drop - known.line.at(predicted)) > doubt:
+        return known, ()
+    unsure = known.line.scale * (known.predicted[1] - known.predicted[0]) / 2.0
+    line = known.line.learned(predicted, drop, math.hypot(stretch.band_bar / SIGMAS, unsure))
+    levels = (*known.levels, predicted)
+    factors = known.factors if scene.solvent else {scene.mixture: 1.0}
+    event = _learned(scene, stretch, line, drop)
+    return replace(known, line=line, levels=levels, open=len(levels) < LEVELS, factors=factors), (event,)
+
+
+def _learned(scene: Scene, stretch: Stretch, line: LearnedLine, drop: float) -> Event:
+    flow = sum(scene.flows.get(pump, 0.0) for pump in stretch.pumps)
+    text = f"The path {stretch.words} takes {drop:.3f} bar at {flow:.3g} mL/min: later pressures are compared with it."
+    fields: dict[str, str | float | int | bool] = {
+        "value": round(drop, 4), "unit": "bar", "flow_mL_min": round(flow, 4), "scale": round(line.scale, 4),
+        "offset_bar": round(line.offset, 4),
+    }  # fmt: skip
+    return Event(EventKind.MEASUREMENT, f"resistance {stretch.upper}", scene.now_ns, text, fields)
+
+
+def _range(scene: Scene, known: Watched) -> tuple[float, float]:
+    """Least and most that a healthy path may resist now, over solvent: one factor once its liquid has filled it."""
+    own = 1.0 if scene.solvent else known.factors.get(scene.mixture)
+    filled = scene.passed_mL >= FILLED * scene.program.early.wetted_mL
+    if own is not None and filled:
+        return own, own
+    low, high = (own, own) if own is not None else scene.program.early.tolerance
+    return min(low, known.before), max(high, known.before)
+
+
+def _learn_liquid(scene: Scene, stretch: Stretch, known: Watched) -> tuple[Watched, tuple[Event, ...]]:
+    """Learn the factor of a liquid that fills the path for the first time, if its flow says enough about it."""
+    if scene.passed_mL < FILLED * scene.program.early.wetted_mL:
+        return known, ()
+    if scene.solvent or scene.mixture in known.factors:
+        factor = 1.0 if scene.solvent else known.factors[scene.mixture]
+        return (known if known.before == factor else replace(known, before=factor)), ()
+    predicted = sum(known.predicted) / 2.0
+    healthy = known.line.scale * predicted
+    factor = (median(known.looks) - known.line.offset) / healthy
+    low, high = _range(scene, known)
+    doubtful = max(stretch.band_bar, SIGMAS * known.line.spread(predicted)) > 0.5 * healthy
+    if doubtful or not low <= factor <= high:
+        return known, ()
+    return replace(known, factors={**known.factors, scene.mixture: factor}, before=factor), ()
+
+
+def _judge(scene: Scene, stretch: Stretch, known: Watched) -> tuple[Watched, tuple[Sample, ...]]:
+    """The ratio, the time that is left, and both in words."""
+    drop, offset, scale = median(known.looks), known.line.offset, known.line.scale
+    low, high = _range(scene, known)
+    least, most = low * scale * known.predicted[0], high * scale * known.predicted[1]
+    band = max(stretch.band_bar, SIGMAS * known.line.spread(known.predicted[1]))
+    ratio = 1.0
+    if drop > offset + most + band:
+        ratio = (drop - offset) / most
+    elif drop < offset + least - band:
+        ratio = max(0.0, (drop - offset) / least)
+    if ratio != 1.0 or most > 2.0 * band:
+        known = _remember(known, scene.now_ns, (drop - offset) / most, most)
+    left_s, limit = _left(scene, stretch, known.history, ratio, most)
+    known = replace(known, lefts=(*known.lefts[1 - LOOKS :], left_s))
+    left_s = median(known.lefts)
+    words = f", {_time(left_s)} to {limit:g} bar at this rate" if left_s < FAR_S else ""
+    known = replace(known, remark=_remark(stretch, ratio, words))
+    shown = {f"{stretch.upper}.resistance": ratio, f"{stretch.upper}.time-left": left_s}
+    tags = scene.program.tags
+    return known, tuple(Sample(tag, value, scene.now_ns) for tag, value in shown.items() if tag in tags)
+
+
+def _remember(known: Watched, now_ns: int, ratio: float, most_bar: float) -> Watched:
+    """Add to the history. At another flow the ratio is read with another error: what was before is moved to it, so
+    that only growth at one flow counts as growth."""
+    history = known.history
+    if history and abs(most_bar - known.at_bar) > OTHER_FLOW * most_bar:
+        step = ratio - history[-1][1]
+        history = tuple((t_ns, value + step) for t_ns, value in history)
+    return replace(known, history=remembered(history, now_ns, ratio), at_bar=most_bar)
+
+
+def _left(scene: Scene, stretch: Stretch, history: History, ratio: float, healthy_bar: float) -> tuple[float, float]:
+    """Seconds until the first trip limit at this rate (``FAR_S`` when none is in sight), and that limit [bar]."""
+    room = [(limit - value, limit) for tag, limit in stretch.limits if (value := scene.value(tag)) is not None]
+    if ratio < GROWING or not room:
+        return FAR_S, 0.0
+    least, limit = min(room)
+    left_s = time_left_s(history, history[-1][1] + max(least, 0.0) / healthy_bar, scene.now_ns)
+    return FAR_S if left_s is None else min(left_s, FAR_S), limit
+
+
+def _time(seconds: float) -> str:
+    if seconds < 90.0:
+        return f"{seconds:.0f} s"
+    return f"{seconds / 60.0:.0f} min" if seconds < 5400.0 else f"{seconds / 3600.0:.1f} h"
+
+
+def _remark(stretch: Stretch, ratio: float, left: str) -> str:
+    if ratio == 1.0:
+        return f"resistance {stretch.words} as learned"
+    change = ratio - 1.0
+    if change > 2.0:
+        return f"resistance {stretch.words} {ratio:.2g} times what was learned{left}"
+    return f"resistance {stretch.words} {'up' if change > 0 else 'down'} {abs(change):.0%} since it was learned{left}"
