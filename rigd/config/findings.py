@@ -49,14 +49,15 @@ def key_text(source: Source, path: Path) -> str:
     text = ""
     for depth, step in enumerate(path):
         if isinstance(step, int):
-            name = _item_name(source.value_at(path[: depth + 1])) if depth == 1 else ""
+            name = item_name(source.value_at(path[: depth + 1])) if depth == 1 else ""
             text += f"[{name or step + 1}]"
         else:
             text += f".{step}" if text else step
     return text
 
 
-def _item_name(item: object) -> str:
+def item_name(item: object) -> str:
+    """What a list calls one of its tables: its id, tag or name, "" when it has none fit to be shown."""
     if isinstance(item, dict):
         for key in ("id", "tag", "name"):
             name = item.get(key)

@@ -8,6 +8,7 @@ from pathlib import Path
 
 from rigd.adapters.plugins import driver_family, property_library
 from rigd.config.load import load_pair
+from rigd.config.places import placed
 from rigd.console.trouble import problem_facts
 from rigd.logic.planning import Plan, plan
 from rigd.logic.program import compile_program
@@ -57,8 +58,9 @@ def check_files(rig_path: Path, recipe_path: Path | None) -> Checked:
     found = responses(pair.rig, pair.recipe)
     planned = plan(compile_program(pair.rig, pair.recipe)) if pair.recipe else None
     severity = Severity.ERROR if pair.recipe else Severity.WARNING
-    problems = [*pair.warnings, *(planned.problems if planned else ())]
-    problems += [_too_slow(response, str(rig_path), severity) for response in found if not response.fit]
+    computed = [*(planned.problems if planned else ())]
+    computed += [_too_slow(response, severity) for response in found if not response.fit]
+    problems = [*pair.warnings, *placed(computed, rig_path, recipe_path)]
     flow_mL_min = largest_flow_mL_min(pair.rig, pair.recipe)
     sets, more = _properties(pair.rig, str(rig_path))
     return Checked(pair.rig, pair.recipe, planned, (*problems, *more), found, flow_mL_min, sets)
@@ -109,7 +111,7 @@ def response_facts(response: Response) -> Mapping[str, object]:
     }
 
 
-def _too_slow(response: Response, rig_path: str, severity: Severity) -> Problem:
+def _too_slow(response: Response, severity: Severity) -> Problem:
     """A recipe that an interlock cannot answer in time is not fit to run; a rig alone may still get a slower one."""
     assert response.safety_s is not None
     return Problem(
@@ -118,6 +120,5 @@ def _too_slow(response: Response, rig_path: str, severity: Severity) -> Problem:
         f" {response.safety_s:.2f} s pass between its limit and the rating; at most half of that may be used",
         f"keep every total flow below {response.flow_max_mL_min:.3g} mL/min, or lower the limit, or poll faster",
         severity=severity,
-        file=rig_path,
         key=f"interlocks[{response.interlock}]",
     )

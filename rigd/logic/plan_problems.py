@@ -31,11 +31,14 @@ def find_problems(
 def _bottles(layout: Layout, used_mL: Mapping[str, float]) -> list[Problem]:
     found = []
     for liquid, volume_mL in sorted(used_mL.items()):
-        here_mL = sum(v.content_mL for v in layout.rig.vessels if v.role is VesselRole.SUPPLY and v.liquid == liquid)
+        bottles = [v for v in layout.rig.vessels if v.role is VesselRole.SUPPLY and v.liquid == liquid]
+        here_mL = sum(bottle.content_mL for bottle in bottles)
         usable_mL = here_mL * (1.0 - KEPT_BACK)
         if volume_mL > usable_mL:
             message = f"the recipe draws {volume_mL:.0f} mL of {liquid}, {usable_mL:.0f} of {here_mL:.0f} mL are usable"
-            found.append(Problem("bottle-short", message, f"Fill more {liquid} or plan fewer or smaller points."))
+            remedy = f"Fill more {liquid} or plan fewer or smaller points."
+            key = f"vessels[{bottles[0].id}].content" if bottles else "vessels"
+            found.append(Problem("bottle-short", message, remedy, key=key))
     return found
 
 
@@ -47,7 +50,8 @@ def _receivers(layout: Layout, collected_mL: float, waste_mL: float) -> list[Pro
         vessel = _behind(layout, position)
         if vessel and vessel.content_mL + volume_mL > 0.95 * vessel.capacity_mL:
             text = f"{volume_mL:.0f} mL go into {vessel.id}, which holds {vessel.capacity_mL:.0f} mL"
-            found.append(Problem(code, text, f"Use a larger {vessel.id} or empty it before the run."))
+            remedy = f"Use a larger {vessel.id} or empty it before the run."
+            found.append(Problem(code, text, remedy, key=f"vessels[{vessel.id}].capacity"))
     return found
 
 
@@ -62,7 +66,8 @@ def _undeveloped(layout: Layout) -> list[Problem]:
     listed = ", ".join(f"{line} {number:.2g}" for line, number in sorted(lowest.items()))
     message = f"dispersion by Taylor and Aris does not hold in {listed} (D tau/R^2 below {DEVELOPED:g}): long tails"
     remedy = "Settling times are estimates; trust the tracer or the signal gate, not the sum of the path."
-    return [Problem("dispersion-estimated", message, remedy, Severity.NOTE)]
+    worst = min(lowest, key=lambda line: lowest[line])
+    return [Problem("dispersion-estimated", message, remedy, Severity.NOTE, key=f"lines[{worst}].bore")]
 
 
 def _behind(layout: Layout, position: str) -> Vessel | None:
@@ -82,13 +87,13 @@ def _point(layout: Layout, point: Point) -> list[Problem]:
                 f"point {point.id} takes {need_mL:.1f} mL of {name}, its one syringe holds {play.pump.stroke_mL:g} mL"
             )
             remedy = "Collect less, settle for fewer volumes, or use a larger or a second syringe."
-            found.append(Problem("syringe-short", message, remedy))
+            found.append(Problem("syringe-short", message, remedy, key="collect.volume"))
         elif play.dual and need_mL > play.pump.stroke_mL:
             message = (
                 f"point {point.id} takes both syringes of {name}, so neither is free to flush with solvent meanwhile"
             )
             remedy = "A stop with a flush may have to become a cut; collect less or use larger syringes."
-            found.append(Problem("flush-blocked", message, remedy, Severity.WARNING))
+            found.append(Problem("flush-blocked", message, remedy, Severity.WARNING, key="collect.volume"))
     needed = settle_volumes_99(layout, point)
     if needed > layout.recipe.settle.volumes:
         message = (
@@ -96,5 +101,5 @@ def _point(layout: Layout, point: Point) -> list[Problem]:
             "takes to 99 % through this path"
         )
         remedy = "Raise settle.volumes; the signal gate alone may be fooled by a slow tail."
-        found.append(Problem("settle-short", message, remedy, Severity.WARNING))
+        found.append(Problem("settle-short", message, remedy, Severity.WARNING, key="settle.volumes"))
     return found

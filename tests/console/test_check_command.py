@@ -97,3 +97,30 @@ def test_ten_broken_files_get_ten_helpful_answers(files, name, old, new, hint, c
     assert f"{Path(name).name}:" in shown
     assert any(f".toml:{number}" in shown for number in (line, line - 1, line + 1)) or "PU-A" in new
     assert "do: " in shown
+
+
+PLANNED = [
+    # what is changed in which file, the finding of the plan, what its line says
+    (
+        RIG,
+        'liquid = "acid-feed"\ncontent = "230 mL"',
+        'liquid = "acid-feed"\ncontent = "24 mL"',
+        "bottle-short",
+        "24 mL",
+    ),
+    (RIG, 'role = "waste"\ncapacity = "2 L"', 'role = "waste"\ncapacity = "60 mL"', "waste-overflow", "60 mL"),
+    (RIG, 'compliance = "0.01 mL/bar"', 'compliance = "0.0001 mL/bar"', "response-slow", "[[interlocks]]"),
+    (RIG, 'stroke_volume = "5 mL"', 'stroke_volume = "2 mL"', "flush-blocked", "0.5 mL"),
+    (RECIPE, "volumes = 2.5", "volumes = 1.05", "settle-short", "1.05"),
+]
+
+
+@pytest.mark.parametrize(("name", "old", "new", "problem", "said"), PLANNED, ids=[row[3] for row in PLANNED])
+def test_what_the_plan_finds_says_where(files, name, old, new, problem, said, capsys):
+    path = files / name
+    path.write_text(path.read_text().replace(old, new))
+    _, facts, people = check(files, capsys)
+    assert all(found["where"] and found["line"] for found in facts["problems"])
+    found = next(found for found in facts["problems"] if found["code"] == problem)
+    assert said in Path(found["file"]).read_text().splitlines()[found["line"] - 1]
+    assert f"{Path(found['file']).name}:{found['line']}" in people
