@@ -7,16 +7,17 @@ from rich.console import RenderableType
 from rich.table import Table
 from rich.text import Text
 
-from rigd.console.checking import Checked
+from rigd.console.checking import Checked, supplies_mL
 from rigd.console.output import Output
 from rigd.console.trouble import print_problems
+from rigd.logic.plan_problems import KEPT_BACK
 from rigd.logic.planning import Plan
 from rigd.logic.response import Response
 from rigd.model.protection import Condition, ConditionKind, Interlock
 from rigd.model.rig import PropertySet, RigDefinition
 from rigd.report.words import clock, duration
 
-BAR = 24
+BAR = 16
 STOP_STYLES = {"CUT": "red", "QUENCH": "yellow", "HOLD": "cyan"}
 
 
@@ -28,7 +29,9 @@ def show_check(output: Output, found: Checked) -> None:
     output.say("")
     if found.plan is not None:
         output.say(timeline(found.plan))
-        output.say(_volumes(found.rig, found.plan))
+        output.say(_volumes(found.plan))
+        output.say("")
+        output.say(bottles(found.rig, found.plan))
         output.say("")
     output.say(cause_and_effect(found.rig, found.responses))
     output.say(_footnote(found))
@@ -57,10 +60,10 @@ def properties(sets: tuple[PropertySet, ...]) -> RenderableType:
 
 
 def timeline(planned: Plan) -> RenderableType:
-    """The phases with their times, flows and a bar each."""
+    """The phases with their times, flows, liquid drawn and a bar each."""
     table = Table(box=box.SIMPLE_HEAD, pad_edge=False, title="plan", title_justify="left", title_style="bold")
     table.add_column("phase", overflow="fold")
-    for heading in ("begins", "takes", "flow mL/min", "refills"):
+    for heading in ("begins", "takes", "mL/min", "draws mL", "refills"):
         table.add_column(heading, justify="right")
     table.add_column("", no_wrap=True)
     for phase in planned.phases:
@@ -68,21 +71,31 @@ def timeline(planned: Plan) -> RenderableType:
             round(BAR * t / max(planned.duration_s, 1.0)) for t in (phase.start_s, phase.start_s + phase.duration_s)
         )
         mark = Text().append(" " * start).append("█" * max(1, end - start), "cyan" if phase.point else "dim")
-        flow = sum(phase.flows_mL_min.values())
-        times = [clock(phase.start_s), duration(phase.duration_s)]
-        table.add_row(phase.label, *times, f"{flow:.3g}" if flow else "–", str(phase.refills or ""), mark)
+        flow, drawn_mL = sum(phase.flows_mL_min.values()), sum(phase.drawn_mL.values())
+        cells = [clock(phase.start_s), duration(phase.duration_s), f"{flow:.3g}" if flow else "–"]
+        cells += [f"{drawn_mL:.1f}" if drawn_mL >= 0.05 else "", str(phase.refills or "")]
+        table.add_row(phase.label, *cells, mark)
     return table
 
 
-def _volumes(rig: RigDefinition, planned: Plan) -> Text:
-    """In all: time, liquids drawn against what there is, fractions, waste."""
-    there = {liquid.id: 0.0 for liquid in rig.liquids}
-    for vessel in rig.vessels:
-        if vessel.liquid:
-            there[vessel.liquid] += vessel.content_mL
-    parts = [f"{volume:.0f} of {there.get(name, 0):.0f} mL {name}" for name, volume in planned.used_mL.items()]
-    text = Text().append(f"{duration(planned.duration_s)} in all", "bold").append(f"; draws {', '.join(parts)}; ")
-    return text.append(f"{planned.collected_mL:.1f} mL collected, {planned.waste_mL:.0f} mL to waste. Estimates.")
+def _volumes(planned: Plan) -> Text:
+    """In all: time, fractions, waste."""
+    text = Text().append(f"{duration(planned.duration_s)} in all", "bold")
+    return text.append(f"; {planned.collected_mL:.1f} mL collected, {planned.waste_mL:.0f} mL to waste. Estimates.")
+
+
+def bottles(rig: RigDefinition, planned: Plan) -> RenderableType:
+    """Each liquid: what there is, what is drawn, what is left, and whether it lasts."""
+    table = Table(box=box.SIMPLE_HEAD, pad_edge=False, title="bottles", title_justify="left", title_style="bold")
+    table.add_column("liquid")
+    for heading in ("there is mL", "drawn mL", "left mL", "lasts"):
+        table.add_column(heading, justify="right")
+    for name, here_mL in supplies_mL(rig).items():
+        drawn_mL = planned.used_mL.get(name, 0.0)
+        lasts = drawn_mL <= here_mL * (1.0 - KEPT_BACK)
+        verdict = Text("yes" if lasts else "no", style="green" if lasts else "bold red")
+        table.add_row(name, f"{here_mL:.0f}", f"{drawn_mL:.1f}", f"{here_mL - drawn_mL:.0f}", verdict)
+    return table
 
 
 def cause_and_effect(rig: RigDefinition, times: tuple[Response, ...]) -> RenderableType:
@@ -98,6 +111,7 @@ def cause_and_effect(rig: RigDefinition, times: tuple[Response, ...]) -> Rendera
     table.add_column("answers in", justify="right")
     table.add_column("time there is", justify="right")
     table.add_column("margin", justify="right")
+    table.add_column("up to mL/min", justify="right")
     for lock in rig.interlocks:
         if not lock.built_in:
             table.add_row(*_row(rig, lock, known.get(lock.id)))
@@ -109,12 +123,13 @@ def _row(rig: RigDefinition, lock: Interlock, response: Response | None) -> list
     cells: list[RenderableType] = [lock.id, "\n".join(condition_words(rig, cause) for cause in lock.causes)]
     cells += [lock.architecture, Text(stop.lower(), style=STOP_STYLES.get(stop, ""))]
     if response is None:
-        return [*cells, "–", "–", "–"]
+        return [*cells, "–", "–", "–", "–"]
     cells.append(f"{response.budget.total_s:.2f} s")
     if response.margin is None:
-        return [*cells, "not known", "–"]
+        return [*cells, "not known", "–", "–"]
     style = "green" if response.fit else "bold red"
-    return [*cells, f"{response.safety_s:.2f} s", Text(f"{response.margin:.2f}", style=style)]
+    cells += [f"{response.safety_s:.2f} s", Text(f"{response.margin:.2f}", style=style)]
+    return [*cells, f"{response.flow_max_mL_min:.3g}"]
 
 
 def condition_words(rig: RigDefinition, cause: Condition) -> str:
@@ -144,6 +159,7 @@ def _footnote(found: Checked) -> Text:
         f"{built_in} built-in interlocks besides (links, stalls, valves, restarts, faults of the daemon).",
         "Time there is: from the limit to the weakest rating with everything blocked, at",
         f"{found.flow_max_mL_min:g} mL/min and {compliance:g} mL/bar as declared; at most half may be used, so the",
-        "margin must be at least 1. This bounds the design and promises nothing: the relief device comes first.",
+        "margin must be at least 1. Up to: the largest total flow at which it still is. This bounds the design",
+        "and promises nothing: the relief device comes first.",
     )
     return Text(" ".join(words), style="dim")

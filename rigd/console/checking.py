@@ -16,7 +16,7 @@ from rigd.logic.response import Response, largest_flow_mL_min, responses
 from rigd.model.errors import ConfigError
 from rigd.model.problems import Problem, Severity
 from rigd.model.recipe import Recipe
-from rigd.model.rig import PropertySet, RigDefinition
+from rigd.model.rig import PropertySet, RigDefinition, VesselRole
 
 
 @dataclass(frozen=True, slots=True)
@@ -44,7 +44,7 @@ class Checked:
             "recipe": self.recipe.name if self.recipe else None,
             "digests": {"rig": self.rig.digest, "recipe": self.recipe.digest if self.recipe else None},
             "problems": [problem_facts(problem) for problem in self.problems],
-            **(plan_facts(self.plan) if self.plan else {}),
+            **(plan_facts(self.rig, self.plan) if self.plan else {}),
             "properties": [asdict(one) for one in self.liquids],
             "interlocks": [response_facts(response) for response in self.responses],
         }
@@ -74,7 +74,16 @@ def _properties(rig: RigDefinition, path: str) -> tuple[tuple[PropertySet, ...],
         return (), tuple(replace(p, file=path, severity=Severity.WARNING) for p in error.problems)
 
 
-def plan_facts(planned: Plan) -> dict[str, object]:
+def supplies_mL(rig: RigDefinition) -> dict[str, float]:
+    """Per liquid, what its bottles hold before the run."""
+    found: dict[str, float] = {}
+    for vessel in rig.vessels:
+        if vessel.role is VesselRole.SUPPLY and vessel.liquid:
+            found[vessel.liquid] = found.get(vessel.liquid, 0.0) + vessel.content_mL
+    return found
+
+
+def plan_facts(rig: RigDefinition, planned: Plan) -> dict[str, object]:
     """The plan for programs."""
     phases = [
         {
@@ -92,6 +101,7 @@ def plan_facts(planned: Plan) -> dict[str, object]:
     return {
         "duration_s": planned.duration_s,
         "used_mL": dict(planned.used_mL),
+        "left_mL": {name: mL - planned.used_mL.get(name, 0.0) for name, mL in supplies_mL(rig).items()},
         "collected_mL": planned.collected_mL,
         "waste_mL": planned.waste_mL,
         "refills": planned.refills,

@@ -124,3 +124,27 @@ def test_what_the_plan_finds_says_where(files, name, old, new, problem, said, ca
     found = next(found for found in facts["problems"] if found["code"] == problem)
     assert said in Path(found["file"]).read_text().splitlines()[found["line"] - 1]
     assert f"{Path(found['file']).name}:{found['line']}" in people
+
+
+def test_what_is_left_in_each_bottle_and_the_largest_flow_are_told(files, capsys):
+    _, facts, _ = check(files, capsys)
+    assert facts["left_mL"]["acid-feed"] == pytest.approx(230 - facts["used_mL"]["acid-feed"])
+    assert sum(sum(phase["drawn_mL"].values()) for phase in facts["phases"]) == pytest.approx(
+        sum(facts["used_mL"].values())
+    )
+    pressure = next(lock for lock in facts["interlocks"] if lock["id"] == "PRESSURE-HIGH")
+    # at the largest flow the response takes half of (20 - 8) bar x C / Q, by hand
+    largest_mL_min = 0.5 * 12.0 * 0.02 / pressure["response_time_s"] * 60
+    assert pressure["flow_max_mL_min"] == pytest.approx(largest_mL_min, rel=1e-3)
+    call(["check", str(files / RIG), str(files / RECIPE)])
+    shown = capsys.readouterr().out
+    for words in (f" {pressure['flow_max_mL_min']:.3g}", f" {facts['left_mL']['acid-feed']:.0f} ", "lasts"):
+        assert words in shown
+
+
+def test_a_bottle_that_does_not_last_is_said_beside_its_numbers(files, capsys):
+    path = files / RIG
+    path.write_text(path.read_text().replace('acid-feed"\ncontent = "230 mL"', 'acid-feed"\ncontent = "24 mL"'))
+    assert call(["check", str(files / RIG), str(files / RECIPE)]) == 1
+    rows = [line for line in capsys.readouterr().out.splitlines() if "acid-feed" in line and line.rstrip()[-2:] == "no"]
+    assert len(rows) == 1
