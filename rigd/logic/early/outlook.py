@@ -12,7 +12,7 @@ from collections.abc import Sequence
 
 History = tuple[tuple[int, float], ...]
 LONGEST = 48
-FEWEST = 6
+FEWEST = 8
 RECENT = 0.3
 """The past that counts began when the excess over 1 was this part of what it is now."""
 GROWN = 0.7

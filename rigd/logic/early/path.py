@@ -28,14 +28,14 @@ OUTLET = ""
 class Piece:
     """One part: bar per (mPa s * mL/min), the pumps whose flow passes it, and the tags of its temperature.
 
-    Without such a tag it has the room's; a line behind a bed (``cools``) is between the bed's and the room's.
+    Without such a tag it has the room's; a line behind a ``bed`` is somewhere between the bed's and the room's.
     """
 
     part: str
     per_flow: float
     pumps: tuple[str, ...]
     warm: tuple[str, ...] = ()
-    cools: bool = False
+    bed: bool = False
 
 
 @dataclass(frozen=True, slots=True)
@@ -131,13 +131,13 @@ def _worth(tag: Tag) -> float:
 def _piece(rig: RigDefinition, path: FlowPath, part: str, chain: tuple[str, ...]) -> Piece | None:
     pumps, columns = _pumps_at(path, part), {column.id: column for column in rig.columns}
     if part in columns:
-        return Piece(part, bed(columns[part]), pumps, column_tags(rig, columns[part]))
+        return Piece(part, bed(columns[part]), pumps, column_tags(rig, columns[part]), bed=True)
     line = next((line for line in rig.lines if line.id == part), None)
     if line is None:
         return None
     before = [columns[name] for name in chain[: chain.index(part)] if name in columns]
     warm = column_tags(rig, before[-1]) if before else ()
-    return Piece(part, tube(line.bore_mm, line.length_mm), pumps, warm, cools=bool(warm))
+    return Piece(part, tube(line.bore_mm, line.length_mm), pumps, warm)
 
 
 def _pumps_at(path: FlowPath, part: str) -> tuple[str, ...]:

@@ -1,7 +1,8 @@
 """Hydraulic resistance of each stretch, learned while solvent flows and watched from then on.
 
-Learned: pressure drop against what the geometry predicts, a straight line (``line``), from up to ``LEVELS`` steady
-flows of solvent. The prior is wide, so that the first flow decides and the next ones tell offset and scale apart.
+Learned: pressure drop against what the geometry predicts for lines and beds (``line``), from up to ``LEVELS`` steady
+flows and temperatures of solvent. The prior is wide, so that the first one decides and the next tell offset, lines and
+beds apart.
 Judged: the drop over the learned one is 1 in health; within the band that sensors and learning are worth it is exactly
 1, so that a small flow in a wide path says nothing rather than something wrong.
 
@@ -17,15 +18,18 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field, replace
 from statistics import median
 
-from rigd.logic.early.line import LearnedLine
+from rigd.logic.early.line import LearnedSum, prior
 from rigd.logic.early.outlook import History, remembered, time_left_s
 from rigd.logic.early.path import Stretch
-from rigd.logic.early.scene import Mixture, Scene
+from rigd.logic.early.scene import NOTHING_FLOWS, Mixture, Predicted, Scene
 from rigd.model.events import Event, EventKind
 from rigd.model.samples import Sample
 
-LEVELS = 6
+LEVELS = 8
 OTHER_LEVEL = 0.25
+DOUBT_LINES, DOUBT_BEDS = 1.0, 10.0
+"""How far the geometry may be from the truth, one standard deviation of the factor: bores have tolerances, beds have
+frits and fines (common practice, no source)."""
 OTHER_FLOW = 0.05
 TOLERANCE = 1.5
 REGULATOR = 0.2
@@ -35,7 +39,6 @@ LOOKS = 3
 SIGMAS = 3.0
 FILLED = 2.0
 """A liquid has filled the path when this many of its volumes have passed."""
-GROWING = 1.4
 FAR_S = 86_400.0
 
 
@@ -43,16 +46,16 @@ FAR_S = 86_400.0
 class Watched:
     """What is known of one stretch.
 
-    ``looks`` are the last drops, ``predicted`` what the geometry says (least, most); ``factors`` are those of other
+    ``looks`` are the last drops, ``predicted`` what the geometry says; ``factors`` are those of other
     liquids, ``before`` the one that filled the path last; ``at_bar`` is the drop at which ``history`` was last added
     to; ``lefts`` are the last times left [s]; ``remark`` says in words what the last ratio means.
     """
 
-    line: LearnedLine
-    levels: tuple[float, ...] = ()
+    line: LearnedSum
+    levels: tuple[Predicted, ...] = ()
     open: bool = True
     looks: tuple[float, ...] = ()
-    predicted: tuple[float, float] = (0.0, 0.0)
+    predicted: Predicted = NOTHING_FLOWS
     factors: Mapping[Mixture, float] = field(default_factory=dict)
     before: float = 1.0
     history: History = ()
@@ -64,16 +67,23 @@ class Watched:
 def initial(stretch: Stretch) -> Watched:
     """Nothing learned: the geometry, with all doubt."""
     offset = REGULATOR * stretch.kept_bar + stretch.band_bar
-    return Watched(LearnedLine(stretch.kept_bar, 1.0, offset * offset, 1.0))
+    return Watched(prior(stretch.kept_bar, offset, DOUBT_LINES, DOUBT_BEDS))
 
 
 def watch(scene: Scene, stretch: Stretch, known: Watched) -> tuple[Watched, tuple[Sample, ...], tuple[Event, ...]]:
     """One look at a stretch: what is known then, the values to show, and what was learned."""
     upper, lower = scene.mean(stretch.upper), scene.mean(stretch.lower) if stretch.lower else 0.0
-    predicted = scene.predicted_bar(stretch)
-    if upper is None or lower is None or predicted[0] <= 0.0 or scene.steady_s < _settle_s(scene, stretch, upper):
+    predicted = scene.predicted(stretch)
+    if (
+        upper is None
+        or lower is None
+        or predicted.cold + predicted.warm <= 0.0
+        or scene.steady_s < _settle_s(scene, stretch, upper)
+    ):
         return (replace(known, looks=()) if known.looks else known), (), ()
-    known = replace(known, looks=(*known.looks[1 - LOOKS :], upper - lower), predicted=predicted)
+    moved = _differ(predicted.warm, known.predicted.warm, OTHER_FLOW)  # a bed that warms at once, or another flow
+    looks = () if moved else known.looks[1 - LOOKS :]
+    known = replace(known, looks=(*looks, upper - lower), predicted=predicted)
     if len(known.looks) < LOOKS:
         return known, (), ()
     known, events = _learn(scene, stretch, known)
@@ -98,27 +108,31 @@ def _learn(scene: Scene, stretch: Stretch, known: Watched) -> tuple[Watched, tup
     filled = scene.passed_mL >= scene.program.early.wetted_mL
     if known.levels and not scene.solvent:
         return replace(known, open=False), ()
-    drop, predicted = median(known.looks), sum(known.predicted) / 2.0
-    new = all(abs(predicted - level) > OTHER_LEVEL * max(predicted, level) for level in known.levels)
+    drop, seen, line = median(known.looks), known.predicted, known.line
+    new = all(_differ(seen.cold, level.cold) or _differ(seen.warm, level.warm) for level in known.levels)
     if not filled or not new:
         return known, ()
-    doubt = SIGMAS * max(known.line.spread(predicted), stretch.band_bar)
-    if known.levels and abs(drop - known.line.at(predicted)) > doubt:
+    doubt = SIGMAS * max(line.spread(seen.cold, seen.warm), stretch.band_bar)
+    if known.levels and abs(drop - line.offset - line.flowing(seen.cold, seen.warm)) > doubt:
         return known, ()
-    unsure = known.line.scale * (known.predicted[1] - known.predicted[0]) / 2.0
-    line = known.line.learned(predicted, drop, math.hypot(stretch.band_bar / SIGMAS, unsure))
-    levels = (*known.levels, predicted)
+    unsure = line.weights[1] * (seen.cold_high - seen.cold_low) / 2.0
+    line = line.learned(seen.cold, seen.warm, drop, math.hypot(stretch.band_bar / SIGMAS, unsure))
+    levels = (*known.levels, seen)
     factors = known.factors if scene.solvent else {scene.mixture: 1.0}
     event = _learned(scene, stretch, line, drop)
     return replace(known, line=line, levels=levels, open=len(levels) < LEVELS, factors=factors), (event,)
 
 
-def _learned(scene: Scene, stretch: Stretch, line: LearnedLine, drop: float) -> Event:
+def _differ(one: float, other: float, share: float = OTHER_LEVEL) -> bool:
+    return abs(one - other) > share * max(one, other)
+
+
+def _learned(scene: Scene, stretch: Stretch, line: LearnedSum, drop: float) -> Event:
     flow = sum(scene.flows.get(pump, 0.0) for pump in stretch.pumps)
     text = f"The path {stretch.words} takes {drop:.3f} bar at {flow:.3g} mL/min: later pressures are compared with it."
     fields: dict[str, str | float | int | bool] = {
-        "value": round(drop, 4), "unit": "bar", "flow_mL_min": round(flow, 4), "scale": round(line.scale, 4),
-        "offset_bar": round(line.offset, 4),
+        "value": round(drop, 4), "unit": "bar", "flow_mL_min": round(flow, 4),
+        "offset_bar": round(line.offset, 4), "lines": round(line.weights[1], 4), "beds": round(line.weights[2], 4),
     }  # fmt: skip
     return Event(EventKind.MEASUREMENT, f"resistance {stretch.upper}", scene.now_ns, text, fields)
 
@@ -140,11 +154,11 @@ def _learn_liquid(scene: Scene, stretch: Stretch, known: Watched) -> tuple[Watch
     if scene.solvent or scene.mixture in known.factors:
         factor = 1.0 if scene.solvent else known.factors[scene.mixture]
         return (known if known.before == factor else replace(known, before=factor)), ()
-    predicted = sum(known.predicted) / 2.0
-    healthy = known.line.scale * predicted
-    factor = (median(known.looks) - known.line.offset) / healthy
+    line, seen = known.line, known.predicted
+    healthy = line.flowing(seen.cold, seen.warm)
+    factor = (median(known.looks) - line.offset) / healthy
     low, high = _range(scene, known)
-    doubtful = max(stretch.band_bar, SIGMAS * known.line.spread(predicted)) > 0.5 * healthy
+    doubtful = max(stretch.band_bar, SIGMAS * line.spread(seen.cold, seen.warm)) > 0.5 * healthy
     if doubtful or not low <= factor <= high:
         return known, ()
     return replace(known, factors={**known.factors, scene.mixture: factor}, before=factor), ()
@@ -152,18 +166,21 @@ def _learn_liquid(scene: Scene, stretch: Stretch, known: Watched) -> tuple[Watch
 
 def _judge(scene: Scene, stretch: Stretch, known: Watched) -> tuple[Watched, tuple[Sample, ...]]:
     """The ratio, the time that is left, and both in words."""
-    drop, offset, scale = median(known.looks), known.line.offset, known.line.scale
+    line, seen = known.line, known.predicted
+    drop, offset = median(known.looks), line.offset
     low, high = _range(scene, known)
-    least, most = low * scale * known.predicted[0], high * scale * known.predicted[1]
-    band = max(stretch.band_bar, SIGMAS * known.line.spread(known.predicted[1]))
+    least, most = low * line.flowing(seen.cold_low, seen.warm), high * line.flowing(seen.cold_high, seen.warm)
+    band = max(stretch.band_bar, SIGMAS * line.spread(seen.cold_high, seen.warm))
     ratio = 1.0
     if drop > offset + most + band:
         ratio = (drop - offset) / most
     elif drop < offset + least - band:
         ratio = max(0.0, (drop - offset) / least)
-    if ratio != 1.0 or most > 2.0 * band:
-        known = _remember(known, scene.now_ns, (drop - offset) / most, most)
-    left_s, limit = _left(scene, stretch, known.history, ratio, most)
+    if ratio > 1.0:
+        known = _remember(known, scene.now_ns, ratio, most)
+    elif known.history:
+        known = replace(known, history=())
+    left_s, limit = _left(scene, stretch, known.history, most)
     known = replace(known, lefts=(*known.lefts[1 - LOOKS :], left_s))
     left_s = median(known.lefts)
     words = f", {_time(left_s)} to {limit:g} bar at this rate" if left_s < FAR_S else ""
@@ -183,10 +200,10 @@ def _remember(known: Watched, now_ns: int, ratio: float, most_bar: float) -> Wat
     return replace(known, history=remembered(history, now_ns, ratio), at_bar=most_bar)
 
 
-def _left(scene: Scene, stretch: Stretch, history: History, ratio: float, healthy_bar: float) -> tuple[float, float]:
+def _left(scene: Scene, stretch: Stretch, history: History, healthy_bar: float) -> tuple[float, float]:
     """Seconds until the first trip limit at this rate (``FAR_S`` when none is in sight), and that limit [bar]."""
     room = [(limit - value, limit) for tag, limit in stretch.limits if (value := scene.value(tag)) is not None]
-    if ratio < GROWING or not room:
+    if not history or not room:
         return FAR_S, 0.0
     least, limit = min(room)
     left_s = time_left_s(history, history[-1][1] + max(least, 0.0) / healthy_bar, scene.now_ns)

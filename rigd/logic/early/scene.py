@@ -40,6 +40,24 @@ class Course:
 
 
 @dataclass(frozen=True, slots=True)
+class Predicted:
+    """Pressure drop by geometry [bar]: of the lines, least and most (the temperature behind a bed is not known), and of
+    the beds."""
+
+    cold_low: float
+    cold_high: float
+    warm: float
+
+    @property
+    def cold(self) -> float:
+        """The middle for the lines."""
+        return (self.cold_low + self.cold_high) / 2.0
+
+
+NOTHING_FLOWS = Predicted(0.0, 0.0, 0.0)
+
+
+@dataclass(frozen=True, slots=True)
 class Scene:
     """One look. ``steady_s`` is how long flows and outlet have stood, ``passed_mL`` what was delivered since the
     liquids changed."""
@@ -65,16 +83,18 @@ class Scene:
         sample = self.samples.get(tag)
         return sample.value if sample is not None and sample.quality is Quality.GOOD else None
 
-    def predicted_bar(self, stretch: Stretch) -> tuple[float, float]:
-        """Pressure drop of a stretch by its geometry, at the present flows and temperatures, of the rig's solvent:
-        least and most, for what is not known of the temperature in lines behind a bed."""
-        low = high = 0.0
+    def predicted(self, stretch: Stretch) -> Predicted:
+        """What the geometry of a stretch says, at the present flows and temperatures, of the rig's solvent."""
+        low = high = warm = 0.0
         for piece in stretch.pieces:
             flow = sum(self.flows.get(pump, 0.0) for pump in piece.pumps)
             least, most = self._viscosity(piece)
-            low += piece.per_flow * least * flow
-            high += piece.per_flow * most * flow
-        return low, high
+            if piece.bed:
+                warm += piece.per_flow * least * flow
+            else:
+                low += piece.per_flow * least * flow
+                high += piece.per_flow * most * flow
+        return Predicted(low, high, warm)
 
     def _viscosity(self, piece: Piece) -> tuple[float, float]:
         plan = self.program.early
@@ -82,7 +102,7 @@ class Scene:
             return 1.0, 1.0
         warm = next((value for tag in piece.warm if (value := self.value(tag)) is not None), plan.room_degC)
         there = viscosity_mPa_s(plan.viscosity, warm)
-        room = viscosity_mPa_s(plan.viscosity, plan.room_degC) if piece.cools else there
+        room = there if piece.bed or not piece.warm else viscosity_mPa_s(plan.viscosity, plan.room_degC)
         return min(there, room), max(there, room)
 
 

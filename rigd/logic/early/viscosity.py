@@ -9,6 +9,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterable
+from functools import lru_cache
 
 from rigd.model.rig import PropertySet
 
@@ -35,6 +36,7 @@ def viscosities(names: Iterable[str], own: Iterable[PropertySet]) -> dict[str, t
     return {name: known[name] for name in names if name in known}
 
 
+@lru_cache(maxsize=64)  # one look asks for the same few temperatures for every line
 def viscosity_mPa_s(points: tuple[float, float, float], temperature_degC: float) -> float:
     """Viscosity between the three points; taken as constant below -20 and above 100 degC."""
     t_K = ZERO_CELSIUS_K + min(max(temperature_degC, _COLDEST_DEGC), _HOTTEST_DEGC)

@@ -175,7 +175,8 @@ class _Scan:
         self._ledger, volumes = ledger.update(
             program, self._ledger, self._memory, self._signals.samples, changed, now_ns
         )
-        if now_ns >= self._early.due_ns or program.early.stiff in changed:
+        rising = not self._ledger.outlet or self._early.rise.points
+        if now_ns >= self._early.due_ns or (rising and program.early.stiff in changed):
             self._early, learned = early_rules.update(
                 program, self._early, self._signals, self._ledger, changed, volumes, now_ns
             )
