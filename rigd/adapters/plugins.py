@@ -26,6 +26,18 @@ def driver_family(name: str) -> DriverFamily:
     return family
 
 
+def driver_families() -> list[tuple[str, str, str]]:
+    """(name, title, origin) of all installed families; a broken one has its error as title."""
+    found = []
+    for name in _entries(DRIVERS):
+        try:
+            title = driver_family(name).title
+        except PluginError as error:
+            title = f"broken: {error}"
+        found.append((name, title, _origin(DRIVERS, name)))
+    return found
+
+
 def plant_maker(name: str = "simulated") -> PlantMaker:
     """The simulated plant registered as ``name``."""
     return _load(PLANTS, name, PlantMaker)

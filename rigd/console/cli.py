@@ -29,6 +29,7 @@ SECTIONS: dict[str, dict[str, tuple[str, str]]] = {
         "alert-test": ("permit:alert_test", "Send a test alert; record that it was received."),
         "faults": ("faults:faults", "List the faults that the simulator can inject."),
         "card": ("card:card", "Connect a device from its manual: write, check, try a card."),
+        "driver": ("driver:driver", "Begin a driver package of your own; list those installed."),
         "ports": ("card:ports", "List serial ports with stable names."),
         "schema": ("schema:schema", "Print the JSON Schema of a rig or recipe file."),
     },

@@ -1,4 +1,4 @@
-"""What a device driver must do. Contract version 1; ``tests/conformance`` holds the battery that it must pass."""
+"""What a device driver must do. Contract version 1; ``rigd.conformance`` is the battery that it must pass."""
 
 from __future__ import annotations
 

@@ -9,10 +9,10 @@ from collections.abc import AsyncIterator, Awaitable, Callable
 from dataclasses import dataclass
 
 import pytest
-from conformance.driver_bench import comparable, order, run
 from fakes.emulated import Master, chiller_line, ir_line, pump_line, sensor_line, valve_line
 
 from rigd.adapters.memory_link import memory_pair
+from rigd.conformance.bench import comparable, order, run
 from rigd.model.devices import DeviceSpec, LinkSpec, PumpState
 from rigd.model.errors import DeviceRefused
 from rigd.model.orders import Action

@@ -2,12 +2,13 @@
 
 from __future__ import annotations
 
+import re
 from typing import Any
 
-from conformance.driver_bench import DriverCase
-from conformance.driver_contract import DriverContract
 from fakes.paper_device import PaperDevice, meaning, reply
 
+from rigd.conformance import DriverContract
+from rigd.conformance.bench import DriverCase
 from rigd.model.devices import DeviceSpec
 from rigd.model.orders import Action
 from rigd_drivers import chiller, ir_cell, selector_valve, sensor_module, syringe_pump
@@ -15,6 +16,12 @@ from rigd_drivers import chiller, ir_cell, selector_valve, sensor_module, syring
 
 def spec(driver: str, address: str, dialect: str = "bracket", **facts: object) -> DeviceSpec:
     return DeviceSpec(f"the-{driver}", driver, dialect, "bench", address, "unit", (), facts={"retries": 2, **facts})
+
+
+def exchanged(device: PaperDevice) -> None:
+    """Another one of the same make is at the end of the cable."""
+    words = "ID" if device.plain else "who?"
+    device.say(words, re.sub(r"-00|(?<= )00", "-77", device.book[words], count=1))
 
 
 def pump() -> PaperDevice:
@@ -36,6 +43,8 @@ class TestSyringePump(DriverContract):
         peer=pump,
         moved=pump_delivers,
         meaning=meaning,
+        exchanged=exchanged,
+        simulated=True,
         orders={Action.DELIVER: 1.0, Action.FILL: 5.0, Action.SWAP: 0.0, Action.STOP: 0.0},
         stop=(Action.STOP,),
         foreign=reply(
@@ -55,6 +64,8 @@ class TestSelectorValve(DriverContract):
         peer=valve,
         moved=lambda device: device.say("at?", "ok at=2"),
         meaning=meaning,
+        exchanged=exchanged,
+        simulated=True,
         orders={Action.MOVE: 0.0},
         stop=(Action.MOVE,),
         foreign=reply(b"22", b"05", "ok at=3"),
@@ -80,6 +91,8 @@ class TestSensorModule(DriverContract):
         peer=sensors,
         moved=lambda device: _sense(device, p1="8.412/18244", t1="59.98/20998"),
         meaning=meaning,
+        exchanged=exchanged,
+        simulated=True,
         foreign=reply(b"32", b"05", "ok p1=9.000/9 t1=9.00/9"),
         channels=("p1", "t1"),
     )
@@ -92,6 +105,8 @@ class TestIrCell(DriverContract):
         peer=lambda: PaperDevice("ir_cell", "who is there, after power-on"),
         moved=lambda device: device.say("count?", "ok count=3"),
         meaning=meaning,
+        exchanged=exchanged,
+        simulated=True,
         foreign=reply(b"42", b"05", "ok count=99"),
     )
 
@@ -120,6 +135,8 @@ class TestChiller(DriverContract):
         peer=bath,
         moved=bath_moves,
         meaning=meaning,
+        exchanged=exchanged,
+        simulated=True,
         orders={Action.SET_TEMPERATURE: 60.0, Action.CIRCULATE: 0.0},
         stop=(Action.CIRCULATE,),
         checked=False,

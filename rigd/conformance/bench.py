@@ -17,6 +17,7 @@ from rigd.model.errors import LinkClosed
 from rigd.model.orders import Action, Authority, Order
 from rigd.model.samples import Reading
 from rigd.ports.driver import Driver, DriverFamily
+from rigd.ports.link import Line
 from rigd.runtime.line import LinkLine
 from rigd.runtime.virtual_time import VirtualLoop
 
@@ -41,7 +42,8 @@ class DriverCase:
     ``orders``: an example value for every action. ``stop``: the actions that make it safe. ``moved`` changes a peer so
     that other values are read and it does not look safe. ``meaning`` strips what counts up (numbers, checksums) from
     request bytes. ``checked``: replies carry number and checksum, so that late and bent ones must be seen. ``foreign``:
-    a whole reply of another device. ``channels``: those to poll, if not all.
+    a whole reply of another device. ``channels``: those to poll, if not all. ``exchanged`` gives the peer another
+    serial number, as if the cable was put into another device; ``simulated``: the peer says that it is simulated.
     """
 
     family: DriverFamily
@@ -54,6 +56,8 @@ class DriverCase:
     checked: bool = True
     foreign: bytes = b""
     channels: tuple[str, ...] = ()
+    exchanged: Callable[[Any], None] | None = None
+    simulated: bool = False
 
     @property
     def read(self) -> tuple[str, ...]:
@@ -71,7 +75,7 @@ class Bench:
         self.deaf = False
         self.near: MemoryLink
         self.near, self.far = memory_pair(back=back)
-        self.line = LinkLine(self.near, name="bench", timeout_s=TIMEOUT_S, trace=self._note)
+        self.line: Line = LinkLine(self.near, name="bench", timeout_s=TIMEOUT_S, trace=self._note)
         self._serving = asyncio.create_task(self._serve())
 
     async def ready(self) -> Bench:

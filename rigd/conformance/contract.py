@@ -22,10 +22,11 @@ from random import Random
 
 import jsonschema
 import pytest
-from conformance.driver_bench import TIMEOUT_S, Bench, DriverCase, bench, bent, order, run, virtually
 from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
 
+from rigd.conformance.bench import TIMEOUT_S, Bench, DriverCase, bench, bent, order, run, virtually
+from rigd.conformance.manners import Manners
 from rigd.model.devices import LinkSpec
 from rigd.model.errors import (
     ConfigError,
@@ -45,7 +46,7 @@ SHARED = [HealthCheck.differing_executors, HealthCheck.too_slow]
 """One test body serves every family; examples are made afresh in each run, nothing is replayed from a store."""
 
 
-class DriverContract:
+class DriverContract(Manners):
     """Derive from it and set ``case``."""
 
     case: DriverCase
@@ -173,7 +174,7 @@ class DriverContract:
     @virtually
     async def test_silence_is_a_timeout_within_the_deadline(self, ready: Bench) -> None:
         ready.deaf = True
-        tries = 1 + int(str(self.case.spec.facts["retries"]))
+        tries = 1 + int(str(self.case.spec.facts.get("retries", 0)))
         started = asyncio.get_running_loop().time()
         with pytest.raises(LinkTimeout, match=self.case.spec.id):
             await ready.driver.poll(ready.line, self.case.read)
