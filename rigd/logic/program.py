@@ -14,6 +14,7 @@ from rigd.logic.early.watch import EarlyPlan, plan_of
 from rigd.logic.flow_path import FlowPath, SupplyLine, flow_path
 from rigd.logic.protect import conditions
 from rigd.logic.protect.conditions import Watch
+from rigd.logic.protect.reaction import Budgets, budgets
 from rigd.logic.protect.signals import Gate, gate
 from rigd.model.devices import DeviceSpec
 from rigd.model.orders import Stop
@@ -34,6 +35,7 @@ CUT_REQUEST = "CUT-REQUEST"
 STOP_UNCONFIRMED = "STOP-UNCONFIRMED"
 BYPASS_DEMAND = "BYPASS-DEMAND"
 PROOF_OVERDUE = "PROOF-OVERDUE"
+RESPONSE_LATE = "RESPONSE-LATE"
 PERMIT_END = "permit-end"
 
 _BUILT_IN = (
@@ -64,6 +66,8 @@ _BUILT_IN_ALARMS = (
      "Judge the cause; end the bypass or stop the run."),
     (PROOF_OVERDUE, "An interlock has no proof test in date", Priority.LOW,
      "Test it with a real stimulus before the next run, and record it with: rigd proof"),
+    (RESPONSE_LATE, "The rig answers more slowly than was reckoned with", Priority.HIGH,
+     "Lower the flow now; find what slows the computer or the line, then run: rigd check."),
 )  # fmt: skip
 
 
@@ -95,7 +99,8 @@ class Program:
     outlet valve) to the vessel behind it, "" when closed. ``tags_of`` lists the tags of a device, ``carries`` is the
     inverse of ``feedback``, ``counting`` the tags that the volume ledger follows. The rest serves protect: ``watches``
     are all conditions, found by tag (``watching``), by device or fault (``untagged``) or by interlock or alarm
-    (``causes``); ``ringed`` tags keep their recent past, and the ``noisy`` ones of them may not stand still.
+    (``causes``); ``ringed`` tags keep their recent past, and the ``noisy`` ones of them may not stand still. ``early``
+    is what the early rules watch, ``budgets`` how fast the interlocks must answer.
     """
 
     rig: RigDefinition
@@ -127,6 +132,7 @@ class Program:
     ringed: frozenset[str]
     noisy: frozenset[str]
     early: EarlyPlan
+    budgets: Budgets
 
     def is_solvent(self, liquid: str) -> bool:
         """True for a declared solvent; an unknown liquid counts as reagent."""
@@ -177,6 +183,7 @@ def compile_program(rig: RigDefinition, recipe: Recipe, options: RunOptions | No
         ringed=frozenset(watch.tag for watch in watches if watch.tag) | early.ringed,
         noisy=frozenset(watch.tag for watch in watches if watch.tag and _is_noisy(rig, watch.tag)),
         early=early,
+        budgets=budgets(rig, recipe, paced=options.stale_floor_ns > 0),
     )
 
 

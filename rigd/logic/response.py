@@ -75,10 +75,14 @@ class Response:
         return self.margin is None or self.margin >= 1.0
 
 
-def responses(rig: RigDefinition, recipe: Recipe | None = None) -> tuple[Response, ...]:
-    """Every interlock of the rig whose causes are signals. Without a recipe the pumps' largest rates are taken."""
+def responses(
+    rig: RigDefinition, recipe: Recipe | None = None, measured_mL_bar: float | None = None
+) -> tuple[Response, ...]:
+    """Every interlock of the rig whose causes are signals. Without a recipe the pumps' largest rates are taken, without
+    a measured compliance the pumps' stated ones."""
     flow_mL_min = largest_flow_mL_min(rig, recipe)
-    compliance = sum(pump.compliance_mL_bar for pump in rig.pumps)
+    stated = sum(pump.compliance_mL_bar for pump in rig.pumps)
+    compliance = stated if measured_mL_bar is None else measured_mL_bar
     return tuple(_response(rig, lock, flow_mL_min, compliance) for lock in rig.interlocks if _signals(rig, lock))
 
 

@@ -13,7 +13,7 @@ from rigd.logic.arbitration import Aspect, Memory
 from rigd.logic.demand import Demand
 from rigd.logic.early import watch as early_rules
 from rigd.logic.early.watch import EarlyState
-from rigd.logic.protect import alarms, bypass, conditions, faults, interlocks, ledger, signals, stops
+from rigd.logic.protect import alarms, bypass, conditions, faults, interlocks, ledger, reaction, signals, stops
 from rigd.logic.protect.alarm_core import AlarmEvent
 from rigd.logic.protect.alarm_overlay import FlagEvent
 from rigd.logic.protect.alarms import Alarms, Wish
@@ -25,6 +25,7 @@ from rigd.logic.protect.flush import Scene
 from rigd.logic.protect.interlocks import Interlocks
 from rigd.logic.protect.latch import LatchEvent, LatchState
 from rigd.logic.protect.ledger import Ledger
+from rigd.logic.protect.reaction import Timed
 from rigd.logic.protect.signals import Signals
 from rigd.logic.protect.stops import Stopping
 from rigd.logic.protect.timers import NEVER_NS
@@ -71,6 +72,7 @@ class ProtectState:
     ledger: Ledger
     stopping: Stopping
     early: EarlyState
+    timed: Timed | None = None
     verdict: Verdict = _STARTING
     fresh: frozenset[str] = frozenset()
 
@@ -167,6 +169,8 @@ class _Scan:
         program, now_ns = self._program, self._now_ns
         self._signals, changed = signals.take(program, self._signals, batch, now_ns)
         self._fresh.update(changed)
+        if broken := reaction.late(program.budgets, batch, now_ns):
+            self._raise("RESPONSE-LATE", broken)
         if statuses:
             self._signals, lost = signals.link(program, self._signals, statuses)
             changed.update(lost)
@@ -181,11 +185,22 @@ class _Scan:
                 program, self._early, self._signals, self._ledger, changed, volumes, now_ns
             )
             self._events += learned
+            self._stiffness()
         if volumes:
             self._signals = replace(self._signals, samples={**self._signals.samples, **volumes})
             changed.update(volumes)
             self._fresh.update(volumes)
         self._evaluate(changed, links=bool(statuses))
+
+    def _stiffness(self) -> None:
+        """A compliance that was just measured tells anew how much time a block leaves."""
+        found = self._early.compliance_mL_bar
+        if found and found != self._before.early.compliance_mL_bar:
+            rig, recipe = self._program.rig, self._program.recipe
+            events, slow = reaction.with_compliance(rig, recipe, found, self._now_ns)
+            self._events += events
+            if slow:
+                self._raise("RESPONSE-LATE", slow)
 
     def _evaluate(self, changed: Iterable[str], *, links: bool) -> None:
         program, now_ns = self._program, self._now_ns
@@ -304,6 +319,7 @@ class _Scan:
         if stopping.overdue:
             names = ", ".join(stopping.overdue)
             self._raise("STOP-UNCONFIRMED", f"{names} was told to stop and does not confirm it")
+        timed = self._time(stopping)
         state = ProtectState(
             self._signals,
             self._conditions,
@@ -313,10 +329,26 @@ class _Scan:
             self._ledger,
             stopping,
             self._early,
+            timed,
             self._verdict(stopping),
             frozenset(self._fresh),
         )
         return ProtectStep(state, stopping.demand, tuple(self._events), self._wake_ns(stopping))
+
+    def _time(self, stopping: Stopping) -> Timed | None:
+        """Go on timing the trip that is being timed, or begin with the first one of this scan."""
+        timed = self._before.timed
+        if timed is None and self._trips:
+            change = self._trips[0][1]
+            sample_ns = min((self._conditions.since_ns.get(cause, self._now_ns) for cause in change.causes), default=0)
+            return reaction.begin(change.interlock, sample_ns or self._now_ns, self._now_ns)
+        if timed is None:
+            return None
+        timed, events, broken = reaction.follow(self._program, timed, self._memory, stopping, self._now_ns)
+        self._events += events
+        if broken:
+            self._raise("RESPONSE-LATE", broken)
+        return timed
 
     def _verdict(self, stopping: Stopping) -> Verdict:
         before = self._before
