@@ -10,7 +10,7 @@ from dataclasses import dataclass
 from functools import partial
 from pathlib import Path
 from types import TracebackType
-from typing import Any, Self
+from typing import Any, Self, TypeVar
 
 from rigd.adapters import journal_schema as schema
 from rigd.adapters.journal_minutes import MinuteRow, minutes_of
@@ -56,6 +56,9 @@ class Series:
     quality: list[int]
 
 
+_Value = TypeVar("_Value")
+
+
 class JournalReader:
     """A run by its folder or its ``run.sqlite``. Use as a context manager. Raises ``JournalError`` with one
     sentence."""
@@ -68,11 +71,14 @@ class JournalReader:
         self._segments = [open_segment(segment) for segment in segments(first)]
         try:
             self.meta = self._meta()
-            self.tags = {row[1]: _tag_info(row) for row in self._rows("SELECT * FROM tags ORDER BY id")}
+            self.tags = {row[1]: _tag_info(row) for row in list(self._rows("SELECT * FROM tags ORDER BY id"))}
             self._names: dict[int, str] = dict(self._segments[0].execute("SELECT id, tag FROM tags"))
-        except (sqlite3.Error, ValueError) as error:
+        except (sqlite3.Error, ValueError, TypeError) as error:
             self.close()
             raise JournalError(f"{first} is not a run journal that can be read: {error}") from error
+        except JournalError:
+            self.close()
+            raise
 
     def __enter__(self) -> Self:
         return self
@@ -109,12 +115,12 @@ class JournalReader:
         """All events, or those of some kinds, in order."""
         wanted = f" WHERE kind IN ({', '.join('?' * len(kinds))})" if kinds else ""
         sql = f"SELECT kind, subject, t_ns, text, fields FROM events{wanted} ORDER BY rowid"
-        return [schema.event_of(*row) for row in self._rows(sql, [kind.value for kind in kinds])]
+        return self._values(schema.event_of, sql, [kind.value for kind in kinds])
 
     def orders(self) -> list[Order]:
         """All orders in order."""
         sql = "SELECT number, unit, action, value, authority, source, t_ns FROM orders ORDER BY rowid"
-        return [schema.order_of(*row) for row in self._rows(sql)]
+        return self._values(schema.order_of, sql)
 
     def series(self, tag: str) -> Series:
         """All samples of one tag; an empty series for a tag without any; ``KeyError`` for an unknown tag."""
@@ -163,11 +169,22 @@ class JournalReader:
     def _meta(self) -> dict[str, str]:
         meta: dict[str, str] = {}
         for segment in self._segments:
+            if not segment.execute("SELECT 1 FROM sqlite_master WHERE name = 'meta'").fetchone():
+                raise ValueError(
+                    "it has no table of facts: the run ended before its first record, or it is another file"
+                )
             meta.update(segment.execute("SELECT key, value FROM meta"))
-        found = meta.get("schema", "none")
-        if found != str(schema.SCHEMA):
-            raise ValueError(f"its schema is version {found}, this program reads version {schema.SCHEMA}")
+        if (found := meta.get("schema", "none")) != str(schema.SCHEMA):
+            raise ValueError(_other_version(found, meta.get("version", "of an unknown version")))
         return meta
+
+    def _values(self, make: Callable[..., _Value], sql: str, values: Iterable[Any] = ()) -> list[_Value]:
+        """Rows as values, with an error for people when one of them makes no sense."""
+        rows = list(self._rows(sql, values))
+        try:
+            return [make(*row) for row in rows]
+        except (ValueError, TypeError) as error:
+            raise JournalError(f"{self.path} is damaged: {error}") from error
 
     def _rows(self, sql: str, values: Iterable[Any] = ()) -> Iterator[Any]:
         values = tuple(values)
@@ -295,6 +312,14 @@ def open_segment(path: Path) -> sqlite3.Connection:
         except sqlite3.Error as error:
             failure = error
     raise JournalError(f"{path} cannot be opened as a run journal: {failure}") from failure
+
+
+def _other_version(found: str, writer: str) -> str:
+    """Why a journal of another schema is refused: its rows might mean something else."""
+    return (
+        f"its schema is version {found}, this program reads version {schema.SCHEMA} only and does not guess what the "
+        f"rows of another version mean; read it with the program that wrote it (rigd {writer})"
+    )
 
 
 def _tag_info(row: tuple[Any, ...]) -> TagInfo:

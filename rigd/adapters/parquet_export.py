@@ -8,6 +8,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from rigd.adapters.journal_reader import JournalReader
+from rigd.adapters.whole_file import whole_files
 from rigd.model.errors import RigError
 
 if TYPE_CHECKING:
@@ -20,35 +21,32 @@ BATCH_SAMPLES = 200_000
 def export_parquet(run: Path, folder: Path) -> tuple[int, int]:
     """Write ``samples.parquet`` (t_ns, tag, value, unit, quality, scan) and ``events.parquet``; returns their rows.
 
-    The facts about the run stand in the files' metadata. A file that was there is replaced only by a whole one.
-    Raises ``RigError`` without pyarrow or room, ``JournalError`` for a journal that cannot be read.
+    The facts about the run stand in the files' metadata. Files that were there are replaced only by whole ones.
+    Raises ``RigError`` without pyarrow, ``OSError`` without room, ``JournalError`` for a journal that cannot be read.
     """
     try:
         import pyarrow as pa
         import pyarrow.parquet as pq
     except ImportError as error:
         raise RigError(MISSING) from error
-    folder.mkdir(parents=True, exist_ok=True)
-    with JournalReader(run) as journal:
-        counts = []
-        for name, schema, batches in (
-            ("samples", _sample_schema(pa, journal), _sample_batches(journal)),
-            ("events", _event_schema(pa, journal), _event_batches(journal)),
-        ):
-            unfinished, rows = folder / f".{name}.parquet.part", 0
-            try:
-                with pq.ParquetWriter(unfinished, schema) as writer:
-                    for columns in batches:
-                        table = pa.Table.from_pydict(columns, schema=schema)
-                        writer.write_table(table)
-                        rows += table.num_rows
-                unfinished.replace(folder / f"{name}.parquet")
-            except OSError as error:
-                raise RigError(f"cannot write {folder / name}.parquet: {error}") from error
-            finally:
-                unfinished.unlink(missing_ok=True)
-            counts.append(rows)
+    paths = [folder / f"{name}.parquet" for name in ("samples", "events")]
+    counts = []
+    try:
+        with JournalReader(run) as journal, whole_files(*paths) as unfinished:
+            samples = (_sample_schema(pa, journal), _sample_batches(journal))
+            events = (_event_schema(pa, journal), _event_batches(journal))
+            for path, (schema, batches) in zip(unfinished, (samples, events), strict=True):
+                with pq.ParquetWriter(path, schema) as writer:
+                    tables = (pa.Table.from_pydict(columns, schema=schema) for columns in batches)
+                    counts.append(sum(_written(writer, table) for table in tables))
+    except OSError as error:
+        raise OSError(error.errno, error.strerror, str(folder)) from error
     return counts[0], counts[1]
+
+
+def _written(writer: Any, table: Any) -> int:
+    writer.write_table(table)
+    return int(table.num_rows)
 
 
 def _sample_schema(pa: Any, journal: JournalReader) -> pa.Schema:

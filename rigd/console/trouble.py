@@ -15,19 +15,30 @@ from rich.console import Console, Group
 from rich.text import Text
 
 from rigd.console.output import Output
-from rigd.model.errors import ConfigError, PluginError, RigError
+from rigd.model.errors import ConfigError, JournalError, PluginError, RigError
 from rigd.model.problems import Problem, Severity
 
 STYLES = {Severity.ERROR: "bold red", Severity.WARNING: "bold yellow", Severity.NOTE: "bold cyan"}
 
 EXIT_NOT_DONE, EXIT_WRONG_INPUT, EXIT_OWN_FAULT = 1, 2, 3
 
+_DISK = (errno.ENOSPC, errno.EDQUOT, errno.EROFS, errno.EFBIG, errno.EIO)
+"""Those that tell enough without a name of a file."""
 STORAGE = {
     errno.ENOSPC: "free some space on the disk",
     errno.EDQUOT: "free some space within your quota",
-    errno.EROFS: "choose a folder that is not read-only",
+    errno.EROFS: "choose a folder that is not read-only (--out)",
+    errno.EACCES: "choose a folder that you may write in (--out)",
+    errno.EPERM: "choose a folder that you may write in (--out)",
+    errno.EFBIG: "the limit on the size of files is too low (ulimit -f)",
+    errno.ENOENT: "make its folder first",
+    errno.ENOTDIR: "a part of its path is a file and no folder",
+    errno.EISDIR: "it is a folder: name a file",
+    errno.EEXIST: "there is a file where a folder should be",
+    errno.ENAMETOOLONG: "choose a shorter name",
+    errno.EIO: "the disk failed: save what is on it",
 }
-"""What to do when a file cannot be written: the disk's fault and not the program's."""
+"""What to do when a file cannot be opened or written: no fault of the program's."""
 
 
 def explain(error: Exception, output: Output) -> int:
@@ -43,13 +54,14 @@ def explain(error: Exception, output: Output) -> int:
     if isinstance(error, RigError):
         _sentence(output.errors, str(error))
         _json_error(output, str(error))
-        return EXIT_WRONG_INPUT if isinstance(error, PluginError) else EXIT_NOT_DONE
-    if isinstance(error, OSError) and error.errno in STORAGE:
+        return EXIT_WRONG_INPUT if isinstance(error, PluginError | JournalError) else EXIT_NOT_DONE
+    if isinstance(error, OSError) and error.errno in STORAGE and (error.filename or error.errno in _DISK):
         where = f"{error.filename}: " if error.filename else ""
-        text = f"{where}nothing could be written there ({error.strerror}); {STORAGE[error.errno]}, then try again."
+        found = "nothing could be written there" if error.errno in _DISK else "it cannot be opened"
+        text = f"{where}{found} ({error.strerror}); {STORAGE[error.errno]}, then try again."
         _sentence(output.errors, text)
         _json_error(output, text)
-        return EXIT_NOT_DONE
+        return EXIT_WRONG_INPUT
     place = _write_details(error)
     reason = " ".join(str(error).split()) or "no reason given"
     text = f"rigd itself failed ({type(error).__name__}: {reason}). Details for a bug report are in {place}."

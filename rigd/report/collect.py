@@ -8,6 +8,7 @@ from pathlib import Path
 import numpy as np
 
 from rigd.adapters.journal_reader import JournalReader, Series, TagInfo
+from rigd.model.errors import JournalError
 from rigd.model.events import Event, EventKind
 from rigd.model.recipe import Recipe
 from rigd.model.rig import RigDefinition
@@ -37,7 +38,7 @@ def read_run(folder: Path, rig: RigDefinition | None = None, recipe: Recipe | No
         title=rig.title if rig else meta.get("rig", ""),
         recipe_title=recipe.title if recipe else meta.get("recipe", ""),
         simulated=simulated(meta),
-        pace=float(meta.get("pace", "1") or 1),
+        pace=_pace(folder, meta.get("pace", "1") or "1"),
         outcome=meta.get("outcome", UNFINISHED),
         outcome_text=_last_words(events),
         started_utc=clock[0][1] if clock else "",
@@ -52,6 +53,13 @@ def read_run(folder: Path, rig: RigDefinition | None = None, recipe: Recipe | No
         rig=rig,
         recipe=recipe,
     )
+
+
+def _pace(folder: Path, told: str) -> float:
+    try:
+        return float(told)
+    except ValueError as error:
+        raise JournalError(f"{folder / 'run.sqlite'} is damaged: its pace is {told!r}") from error
 
 
 def phase_spans(events: Sequence[Event], end_s: float) -> tuple[PhaseSpan, ...]:

@@ -10,6 +10,7 @@ from jinja2 import Environment, PackageLoader, StrictUndefined
 from markupsafe import Markup
 
 from rigd import __version__
+from rigd.adapters.whole_file import write_whole
 from rigd.analysis.kinetics import law_of
 from rigd.model.events import Event, EventKind
 from rigd.model.protection import ConditionKind
@@ -42,9 +43,7 @@ _TOLD = (
 
 def write_page(run: RunData, target: Path | None = None) -> Path:
     """Write the page beside the journal (or to ``target``) and return its path."""
-    path = target or Path(run.folder) / FILE_NAME
-    path.write_text(render_page(run), encoding="utf-8")
-    return path
+    return write_whole(target or Path(run.folder) / FILE_NAME, render_page(run))
 
 
 def render_page(run: RunData) -> str:

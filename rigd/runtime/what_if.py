@@ -15,7 +15,7 @@ from rigd.adapters.journal_reader import JournalReader, ScanRecord
 from rigd.config.load import load_rig
 from rigd.logic import scan as core
 from rigd.logic.program import Program, compile_program
-from rigd.model.errors import RigError
+from rigd.model.errors import JournalError
 from rigd.model.events import Event, EventKind
 from rigd.model.intake import Intake
 from rigd.model.protection import ConditionKind
@@ -59,9 +59,11 @@ class WhatIf:
 
 
 def what_if(run: Path, rig_path: Path) -> WhatIf:
-    """Decide a run again with the rig in ``rig_path``. Raises ``ConfigError`` for a bad file, ``RigError`` for a rig
-    that cannot have had these data, ``JournalError`` for a journal that cannot be read."""
+    """Decide a run again with the rig in ``rig_path``. Raises ``ConfigError`` for a bad file, ``JournalError`` for
+    a rig that cannot have had these data and for a journal that cannot be read."""
     with JournalReader(run) as journal:
+        if not journal.span()[0]:
+            raise JournalError(f"{journal.path} holds no scan: the run ended before it began")
         recorded = recorded_run(journal)
         was, rig = recorded.program, load_rig(rig_path)
         notes = (*recorded.notes, *_fits(was.rig, rig))
@@ -70,18 +72,18 @@ def what_if(run: Path, rig_path: Path) -> WhatIf:
 
 
 def _fits(was: RigDefinition, other: RigDefinition) -> Iterator[str]:
-    """Notes about harmless differences; ``RigError`` when the data say nothing about the other rig."""
+    """Notes about harmless differences; ``JournalError`` when the data say nothing about the other rig."""
     for what, had, wanted in (
         ("unit", _units(was), _units(other)),
         ("tag", {tag.id for tag in was.tags}, {tag.id for tag in other.tags if tag.device}),
     ):
         if missing := sorted(wanted - had):
-            raise RigError(
+            raise JournalError(
                 f"the other rig has the {what} {missing[0]!r}, about which this run holds nothing; "
                 "--with takes a rig file that differs in limits, delays, interlocks or alarms"
             )
     if gone := sorted(_units(was) - _units(other)):
-        raise RigError(f"the other rig has no {gone[0]!r}, which this run moved: it is another rig")
+        raise JournalError(f"the other rig has no {gone[0]!r}, which this run moved: it is another rig")
     if unused := sorted({tag.id for tag in was.tags} - {tag.id for tag in other.tags}):
         yield f"left out, because the other rig does not have them: {', '.join(unused)}"
 

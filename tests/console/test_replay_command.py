@@ -76,7 +76,7 @@ def test_without_a_terminal_watch_shows_one_frame(capsys):
 @pytest.mark.parametrize(
     ("words", "code", "says"),
     [
-        (["nowhere"], 1, "there is no run"),
+        (["nowhere"], 2, "there is no run"),
         (["RUN", "--from", "soon", "--watch"], 2, "--from"),
         (["RUN", "--with", "no.toml"], 2, "no.toml"),
         (["RUN", "--watch", "--with", "no.toml"], 2, "leave --with out"),
@@ -96,10 +96,10 @@ def test_a_damaged_journal_is_a_sentence(tmp_path, capsys):
     with spoilt(run) as tables:
         tables.execute("DROP TABLE inputs")
     for more in ([], ["--watch"], ["--with", str(RIG)]):
-        assert call(["replay", str(run), *more]) == 1
+        assert call(["replay", str(run), *more]) == 2
         assert "is damaged" in " ".join(capsys.readouterr().err.split())
     (run / "run.sqlite").write_bytes(b"")
-    assert call(["replay", str(run)]) == 1
+    assert call(["replay", str(run)]) == 2
     assert "run journal" in " ".join(capsys.readouterr().err.split())
 
 

@@ -144,7 +144,7 @@ def test_run_list_report_and_export_of_a_run(files, tmp_path, capsys):
     assert (folder / "report.html").read_text().startswith("<!doctype html>")
     assert (tmp_path / "tables" / "events.csv").read_text().count("\n") == 3
     assert call(["export", str(folder), "--every", "0 s"]) == 2
-    assert call(["report", str(tmp_path / "nothing")]) == 1
+    assert call(["report", str(tmp_path / "nothing")]) == 2
 
 
 def test_a_damaged_journal_is_listed_and_reported_in_a_sentence(tmp_path, capsys):
@@ -153,7 +153,7 @@ def test_a_damaged_journal_is_listed_and_reported_in_a_sentence(tmp_path, capsys
     (folder / "run.sqlite").write_bytes(b"this is not a database" * 100)
     assert call(["runs", "--runs", str(tmp_path / "runs")]) == 0
     assert "cannot be read" in capsys.readouterr().out
-    assert call(["report", str(folder)]) == 1
+    assert call(["report", str(folder)]) == 2
     assert "Traceback" not in capsys.readouterr().err
 
 

@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
+import contextlib
 import time
+from collections.abc import Iterator
 from pathlib import Path
 
 import click
@@ -37,10 +39,9 @@ def dry_run(
     from rigd.runtime.dry import DryOptions
 
     began = time.monotonic()
-    journal = _journal(out) if out is not None else None
     expected_s = planned_s(rig, recipe)
     options = DryOptions(limit_ns=longest_ns(expected_s))
-    with show_progress(output, expected_s) as watch:
+    with _journal(out) as journal, show_progress(output, expected_s) as watch:
         settings = DrySettings(seed or 0, specs, journal, watch, options, deep)
         done = rehearse(rig, recipe, settings)
     wall_s = time.monotonic() - began
@@ -58,10 +59,21 @@ def dry_run(
     return done.result.exit_code
 
 
-def _journal(out: Path) -> Path:
-    """Where the journal goes; ``UsageError`` when there is one already."""
-    out.mkdir(parents=True, exist_ok=True)
-    path = out / "run.sqlite"
+@contextlib.contextmanager
+def _journal(out: Path | None) -> Iterator[Path | None]:
+    """Where the journal goes; ``UsageError`` when there is one already. A rehearsal that fails leaves none behind."""
+    if out is None:
+        yield None
+        return
+    path, made = out / "run.sqlite", not out.exists()
     if path.exists():
         raise click.UsageError(f"--out: {out} holds a run already; name another folder")
-    return path
+    out.mkdir(parents=True, exist_ok=True)
+    try:
+        yield path
+    except BaseException:
+        for part in out.glob("run*.sqlite*"):
+            part.unlink()
+        if made:
+            out.rmdir()
+        raise

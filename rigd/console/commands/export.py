@@ -23,6 +23,7 @@ from rigd.model.units import UnitError, parse_quantity
 def export(output: Output, run: Path, as_csv: bool, parquet: bool, out: Path | None, every: str) -> None:
     """Write the samples and the events of RUN (its folder) as two tables that a spreadsheet or a notebook opens."""
     from rigd.adapters.journal_export import events_csv, export_csv
+    from rigd.adapters.whole_file import whole_files
     from rigd.console.run_names import find_run
 
     if as_csv and parquet:
@@ -35,7 +36,6 @@ def export(output: Output, run: Path, as_csv: bool, parquet: bool, out: Path | N
         raise click.UsageError("--every: must be above zero")
     folder = find_run(run)
     target = out or folder
-    target.mkdir(parents=True, exist_ok=True)
     kind = "parquet" if parquet else "csv"
     samples, events = target / f"samples.{kind}", target / f"events.{kind}"
     if parquet:
@@ -43,7 +43,8 @@ def export(output: Output, run: Path, as_csv: bool, parquet: bool, out: Path | N
 
         rows, happened = export_parquet(folder, target)
     else:
-        rows, happened = export_csv(folder, samples, period_s), events_csv(folder, events)
+        with whole_files(samples, events) as (table, told):
+            rows, happened = export_csv(folder, table, period_s), events_csv(folder, told)
     output.document(
         {"samples": {"path": str(samples), "rows": rows}, "events": {"path": str(events), "rows": happened}}
     )
