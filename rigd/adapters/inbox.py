@@ -16,8 +16,8 @@ INBOX_MAX = 65536
 class Inbox:
     """A bounded buffer with one waiting reader, and the reason why nothing will come any more."""
 
-    def __init__(self, loop: asyncio.AbstractEventLoop) -> None:
-        self._loop = loop
+    def __init__(self, loop: asyncio.AbstractEventLoop, most: int = INBOX_MAX) -> None:
+        self._loop, self._most = loop, most
         self._bytes = bytearray()
         self._waiting: asyncio.Future[None] | None = None
         self.ended = ""
@@ -25,8 +25,8 @@ class Inbox:
     def put(self, data: bytes) -> None:
         """Bytes have arrived."""
         self._bytes += data
-        if len(self._bytes) > INBOX_MAX:
-            del self._bytes[:-INBOX_MAX]
+        if len(self._bytes) > self._most:
+            del self._bytes[: -self._most]
         self._wake()
 
     def end(self, reason: str) -> None:

@@ -7,7 +7,7 @@ import contextlib
 from collections.abc import Callable
 from typing import Protocol, TypeVar
 
-from rigd.adapters import serial_link, socket_link
+from rigd.adapters import folder_link, serial_link, socket_link
 from rigd.adapters.places import SIMULATED
 from rigd.model.devices import LinkSpec
 from rigd.model.errors import LinkError
@@ -24,14 +24,17 @@ P = TypeVar("P", bound=_Closable)
 async def open_link(spec: LinkSpec) -> Link:
     """Open ``spec.port`` without blocking the loop.
 
-    ``socket://host:port`` and ports of the operating system are watched by the loop; everything else that the serial
-    library opens gets threads. Raises ``LinkBusy``, ``LinkClosed`` or ``LinkError``, each with one sentence.
+    ``folder:///path`` is a folder of files. ``socket://host:port`` and ports of the operating system are watched by the
+    loop; everything else that the serial library opens gets threads.
+    Raises ``LinkBusy``, ``LinkClosed`` or ``LinkError``, each with one sentence.
     """
     if spec.port == SIMULATED:
         raise LinkError(f"link {spec.id} is {SIMULATED!r}: its port is only known while the simulator serves the rig")
     if spec.port.startswith("socket://"):
         connection = await _in_thread(lambda: socket_link.connect(spec.port))
         return socket_link.make_link(spec.port, connection)
+    if spec.port.startswith(folder_link.SCHEME):
+        return folder_link.FolderLink(await asyncio.to_thread(folder_link.open_folder, spec.port))
     port = await _in_thread(lambda: serial_link.open_port(spec))
     return serial_link.make_link(spec, port)
 

@@ -37,7 +37,8 @@ class ReplyReader(Protocol[T_co]):
     frame that is certainly the answer and certainly wrong, and ``DeviceRefused`` for the device's "no".
     One that needs no reply at all returns something for ``feed(b"")``, which the line asks first.
     A reader whose replies carry the request's number says so by an attribute ``numbered = True``: then a late reply
-    cannot be mistaken, and the line need not wait for it before the next request.
+    cannot be mistaken, and the line need not wait for it before the next request. One that reads what a device sends
+    unasked says ``unsolicited = True``: then what has arrived before the call is not drained but read.
     """
 
     def feed(self, data: bytes) -> T_co | None:

@@ -53,11 +53,13 @@ class LinkLine:
 
     async def _exchange(self, request: bytes, reader: ReplyReader[T], limit_s: float) -> T:
         seen = 0
-        self._note(False, self._link.drain_input())
+        if not getattr(reader, "unsolicited", False):
+            self._note(False, self._link.drain_input())
         try:
             async with asyncio.timeout(limit_s):
-                self._note(True, request)
-                await self._link.write(request)
+                if request:
+                    self._note(True, request)
+                    await self._link.write(request)
                 if (answer := reader.feed(b"")) is not None:
                     return answer  # a request that has no reply
                 while True:
