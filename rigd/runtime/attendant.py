@@ -73,11 +73,9 @@ class Attendant:
             if loop.time() >= deadline_s:
                 return RunEnd("refused", 2, f"could not start: the reset was refused: {detail}")
             await asyncio.sleep(AGAIN_S)
-        for verb, target, what in ((Verb.CONFIRM, "*", "checklist"), (Verb.START, "", "start")):
-            accepted, detail = await self._answered(verb, who, target)
-            if not accepted:
-                return RunEnd("refused", 2, f"could not start: the {what} was refused: {detail}")
-        return None
+        await self._answered(Verb.CONFIRM, who, "*")  # nothing to sign is no reason; the start says what is missing
+        accepted, detail = await self._answered(Verb.START, who, "")
+        return None if accepted else RunEnd("refused", 2, f"could not start: the start was refused: {detail}")
 
     def all_simulated(self) -> bool:
         """True when every device said that it is simulated."""

@@ -87,7 +87,7 @@ def test_mistakes_are_told_with_their_line(tmp_path: Path, old: str, new: str, t
 
 @pytest.mark.parametrize("kind", [*CHECKSUMS, "none"])
 def test_a_bent_frame_is_never_believed(kind: str) -> None:
-    frame = Frame(b"\x02", (b"\x03",), kind)
+    frame = Frame(b"\x02", b"", (b"\x03",), kind)
     message = frame.wrap("F250.0")
     assert frame.find(message) == ("F250.0", b"")
     assert kind == "none" or frame.find(message.replace(b"5", b"6", 1))[0] is None
@@ -97,7 +97,7 @@ def test_a_bent_frame_is_never_believed(kind: str) -> None:
 def test_a_million_hostile_bytes() -> None:
     chance = random.Random(6)
     pdu = read_pdu(Place("input", 0, "f32"))
-    text = TextReader(Frame(b"#07", (b"\r\n",), "crc16-modbus"), Expected(r"F(?P<flow>\d+\.\d)", {}))
+    text = TextReader(Frame(b"#07", b"", (b"\r\n",), "crc16-modbus"), Expected(r"F(?P<flow>\d+\.\d)", {}))
     for protocol in ("modbus-tcp", "modbus-rtu", "modbus-ascii"):
         modbus = ModbusReader(7, 9, pdu, protocol)
         for _ in range(20_000):

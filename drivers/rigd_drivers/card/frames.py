@@ -65,14 +65,15 @@ LENGTHS: Mapping[str, int] = {"none": 0, "byte": 1, "hex2": 2, "decimal2": 2, "d
 
 @dataclass(frozen=True, slots=True)
 class Frame:
-    """``start`` + length + words + ``text_end`` + checksum + ``end``; each of them may be absent.
+    """``start`` + length + ``address`` + words + ``text_end`` + checksum + ``end``; each of them may be absent.
 
     ``ends``: any of these ends a frame; with ``keep_end`` it is handed on as the last of the words (prompts that tell a
-    state). ``covers`` says what the checksum sees besides length and words: "words", "start", "end" (``text_end``) or
-    "both". ``length_adds``: what the length field counts besides the words. ``size``: words of a fixed length.
+    state). ``covers`` says what the checksum sees besides length, address and words: "words" (nothing), "start", "end"
+    (``text_end``) or "both". ``length_adds``: what the length field counts besides the words. ``size``: words of a fixed length.
     """
 
     start: bytes = b""
+    address: bytes = b""
     ends: tuple[bytes, ...] = (b"\r",)
     checksum: str = "none"
     form: str = "hex"
@@ -85,15 +86,18 @@ class Frame:
 
     def wrap(self, words: str) -> bytes:
         """The bytes of one message."""
-        inner = words.encode("latin-1")
+        inner = self.address + words.encode("latin-1")
         inner = self._length_field(len(inner)) + inner
         return self.start + inner + self.text_end + self._check(inner) + self.ends[0]
 
     def find(self, data: bytes) -> tuple[str | None, bytes]:
         """The words of the first good frame and what follows it; ``None`` and what to keep while there is none."""
-        if self.size or self.length != "none":
-            return self._find_counted(data)
-        return self._find_ended(data[-LONGEST:])
+        address = self.address.decode("latin-1")
+        while True:
+            counted = self.size or self.length != "none"
+            words, data = self._find_counted(data) if counted else self._find_ended(data[-LONGEST:])
+            if words is None or words.startswith(address):
+                return words if words is None else words[len(address) :], data
 
     @property
     def check_size(self) -> int:

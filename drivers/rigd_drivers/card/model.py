@@ -221,15 +221,19 @@ class ErrorQueue(Table):
 class Framing(Table):
     """How words are wrapped. Text keys take escapes of TOML (``"\\u0002"``) and ``{address}``.
 
-    A frame is ``start``, length, words, ``text_end``, checksum, ``end``. What is said of replies only, or else is as in
-    requests: ``reply_start``, ``reply_end`` (one, or a list of prompts any of which ends a reply; with ``keep_end`` the
-    pattern sees it), ``reply_checksum``. ``reply_size``: every reply has so many characters and no end.
+    A frame is ``start``, length, ``address``, words, ``text_end``, checksum, ``end``. ``address`` (such as "{address}")
+    is part of what the checksum covers, and a reply with another one is somebody else's. Said of replies only, or else
+    as in requests: ``reply_start``, ``reply_address``, ``reply_end`` (one, or a list of prompts any of which ends a
+    reply; with ``keep_end`` the pattern sees it), ``reply_checksum``. ``reply_size``: every reply has so many
+    characters.
     """
 
     start: str = ""
+    address: str = ""
     end: str = "\r"
     text_end: str = ""
     reply_start: str | None = None
+    reply_address: str | None = None
     reply_end: str | list[str] | None = None
     keep_end: bool = False
     reply_size: int = Field(default=0, ge=0, le=1000)

@@ -14,6 +14,7 @@ from rigd_drivers.card import modbus, text
 from rigd_drivers.card.expressions import Value, number, parse
 from rigd_drivers.card.model import Card, Question, Step
 from rigd_drivers.card.words import Words
+from rigd_drivers.checksums import crc16
 
 T = TypeVar("T")
 Seen = dict[str, Value]
@@ -33,6 +34,8 @@ class Talk:
 
     def __init__(self, card: Card, device: str, words: Words, retries: int) -> None:
         self._card, self._device, self._words, self._retries = card, device, words, retries
+        # devices of one unit on one link number their requests apart, or one could take the other's late reply
+        self._first = crc16(device.encode()) % (modbus.WILL_NUMBERS >> 8) << 8
         self._number = 0
         self._count = 0
         self._free_s = 0.0
@@ -193,11 +196,10 @@ class Talk:
 
     async def _pdu(self, line: Line, pdu: bytes) -> bytes:
         async def once() -> bytes:
-            self._number = (self._number + 1) % modbus.WILL_NUMBERS
+            self._number = (self._number + 1) % 256
+            request, reader = self._words.register_request(self._first | self._number, pdu)
             try:
-                return await line.ask(
-                    *self._words.register_request(self._number, pdu), timeout_s=self._card.link.reply_timeout_s
-                )
+                return await line.ask(request, reader, timeout_s=self._card.link.reply_timeout_s)
             except modbus.Refused as error:
                 if error.code in (modbus.BUSY, modbus.STILL_WORKING):
                     raise StillBusy(str(error)) from error

@@ -101,6 +101,7 @@ class Words:
         framing = self._card.framing
         return Frame(
             text.fill(framing.start, known).encode("latin-1"),
+            text.fill(framing.address, known).encode("latin-1"),
             (framing.end.encode("latin-1"),),
             framing.checksum,
             framing.checksum_form,
@@ -114,10 +115,12 @@ class Words:
         """As requests, but for what the card says of replies."""
         framing = self._card.framing
         start = framing.start if framing.reply_start is None else framing.reply_start
+        address = framing.address if framing.reply_address is None else framing.reply_address
         ends = framing.end if framing.reply_end is None else framing.reply_end
         return replace(
             self._out(known),
             start=text.fill(start, known).encode("latin-1"),
+            address=text.fill(address, known).encode("latin-1"),
             ends=tuple(end.encode("latin-1") for end in ([ends] if isinstance(ends, str) else ends)),
             checksum=framing.checksum if framing.reply_checksum else "none",
             keep_end=framing.keep_end,
@@ -165,7 +168,7 @@ class Words:
         """
         back, framing = self._back(known), self._card.framing
         ends = b"(?:%s)" % b"|".join(re.escape(end) for end in back.ends)
-        start = re.escape(back.start) + b".{%d}" % LENGTHS[back.length]
+        start = re.escape(back.start) + b".{%d}" % LENGTHS[back.length] + re.escape(back.address)
         before = b"" if back.start else b"(?:\\A|%s|%s)" % (ends, re.escape(framing.end.encode("latin-1")))
         pattern = re.sub(r"\(\?P<\w+>", "(?:", text.fill_pattern(said.reply, known)).encode("latin-1")
         pattern = pattern.replace(b"\\n", b"\n").replace(b"\n", ends + start)

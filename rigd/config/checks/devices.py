@@ -62,9 +62,11 @@ def _units(context: RigContext, wanted: list[tuple[str, str, str]]) -> None:
 
 
 def _addresses(context: RigContext) -> None:
-    first: dict[tuple[str, str], str] = {}
+    """Each its own address; only cards may share one, as parts of one device (unlike cards, or unlike parameters)."""
+    first: dict[tuple[str, str, str], str] = {}
     for device in context.rig.devices:
-        here = (device.link, device.address)
+        part = str(sorted(device.options.items())) if "card" in device.options else ""
+        here = (device.link, device.address, part)
         if here in first:
             what = f"address {device.address!r}" if device.address else "no address"
             message = f"{first[here]} is on link {device.link!r} with {what} too; their answers cannot be told apart"
