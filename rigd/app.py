@@ -43,6 +43,7 @@ from rigd.model.recipe import Recipe
 from rigd.model.rig import RigDefinition
 from rigd.ports.driver import Driver
 from rigd.ports.plant import EmulatedLine, FaultSpec, Plant
+from rigd.report.ending import END_TEXT
 from rigd.runtime.arming import arming_of, is_simulated, run_facts
 from rigd.runtime.deep import DeepShell
 from rigd.runtime.dry import DryOptions, DryResult, DryShell
@@ -62,13 +63,14 @@ class RunSettings:
 
     ``progress`` is a command that shows progress on stderr, ``after`` one that runs at the end; both get the run folder
     in place of the word ``{folder}``. ``trace`` names links whose bytes are recorded. ``collected`` are points of an
-    earlier, stopped run that need not be collected again.
+    ``earlier``, stopped run that need not be collected again.
     """
 
     pace: float = 1.0
     signer: str = ""
     runs: Path = Path("runs")
     collected: tuple[str, ...] = ()
+    earlier: str = ""
     unattended: bool = False
     trace: tuple[str, ...] = ()
     progress: tuple[str, ...] = ()
@@ -212,6 +214,7 @@ async def _live(live: Live, plan: dict[str, Any], clock: PacedClock, journal: Sq
     for device in live.devices:
         if device.identity is not None:
             journal.note(f"identity.{device.spec.id}", json.dumps(asdict(device.identity)))
+    journal.note(END_TEXT, end.text)
     await door.close(end.outcome, end.exit_code)
     try:
         await asyncio.to_thread(journal.close, end.outcome)
@@ -248,6 +251,7 @@ def _plan(
         "signer": settings.signer,
         "unattended": settings.unattended,
         "collected": list(settings.collected),
+        "earlier": settings.earlier,
         "trace": list(settings.trace),
         "ports": {link.id: link.port for link in links},
         "locks": list(locks),
@@ -271,6 +275,7 @@ def _facts(plan: Mapping[str, Any], folder: Path, clock: PacedClock) -> dict[str
     """What the journal holds about the run itself."""
     told = ("run", "rig", "recipe", "rig_digest", "recipe_digest", "signer")
     facts = {name: str(plan[name]) for name in told}
+    facts |= {"earlier": plan["earlier"]} if plan["earlier"] else {}
     facts |= {name: json.dumps(plan[name]) for name in ("pace", "simulated", "unattended", "collected", "ports")}
     for name in (run_folder.RIG, run_folder.CHEMISTRY, run_folder.RECIPE):
         with contextlib.suppress(OSError):
@@ -328,6 +333,7 @@ def dry_run(rig_path: Path, recipe_path: Path, settings: DrySettings = DrySettin
         shell = DryShell(program, plant, cell_readers(pair.rig), journal, settings.watch)
     result = shell.run(settings.options)
     if journal is not None:
+        journal.note(END_TEXT, result.text)
         journal.close(result.outcome)
     return DryRun(program, plant, result)
 

@@ -19,6 +19,7 @@ import signal
 import subprocess
 import sys
 import time
+from datetime import UTC, datetime
 from pathlib import Path
 from typing import Any
 
@@ -152,13 +153,14 @@ def guard(plan_path: str) -> int:
 
 
 def _take_over(one: Guard) -> tuple[int, str]:
-    began = time.monotonic()
+    began, utc = time.monotonic(), datetime.now(UTC).isoformat(timespec="milliseconds")
     _say(f"control {one.wrong}; the guard has ended it and is stopping the rig")
     one.log.write(f"control {one.wrong}")
     already = one.signals
     devices = send_wills(one.plan["wills"], one.log, lambda: one.signals - already >= 2)
     loose = [device for device, state in devices.items() if not state["confirmed"]]
-    report = {"why": f"control {one.wrong}", "devices": devices, "seconds": round(time.monotonic() - began, 3)}
+    seconds = round(time.monotonic() - began, 3)
+    report = {"why": f"control {one.wrong}", "utc": utc, "devices": devices, "seconds": seconds}
     with contextlib.suppress(OSError):  # a full disk changes nothing about the rig
         (one.folder / "guard.json").write_text(json.dumps(report, indent=1) + "\n", encoding="utf-8")
     if loose:

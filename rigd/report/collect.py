@@ -14,13 +14,10 @@ from rigd.model.recipe import Recipe
 from rigd.model.rig import RigDefinition
 from rigd.model.samples import Quality
 from rigd.report.data import CHAIN_HEAD, PhaseSpan, RunData, Trace
+from rigd.report.ending import ending
 from rigd.report.points import point_rows
 from rigd.report.usage import used_mL
 from rigd.report.words import simulated
-
-UNFINISHED = "no end recorded"
-"""Outcome of a run whose journal was never closed: the computer or the daemon died."""
-
 
 def read_run(folder: Path, rig: RigDefinition | None = None, recipe: Recipe | None = None) -> RunData:
     """Read the journal in ``folder``. ``rig`` and ``recipe`` are those the run was made with, where they can still be
@@ -30,7 +27,7 @@ def read_run(folder: Path, rig: RigDefinition | None = None, recipe: Recipe | No
         if head := journal.head():
             meta[CHAIN_HEAD] = head
         traces = {tag: _trace(info, journal.series(tag)) for tag, info in journal.tags.items()}
-    end_s = clock[-1][0] / 1e9 if clock else 0.0
+    end, end_s = ending(folder, meta, events), clock[-1][0] / 1e9 if clock else 0.0
     phases = phase_spans(events, end_s)
     return RunData(
         id=meta.get("run", folder.name),
@@ -39,8 +36,8 @@ def read_run(folder: Path, rig: RigDefinition | None = None, recipe: Recipe | No
         recipe_title=recipe.title if recipe else meta.get("recipe", ""),
         simulated=simulated(meta),
         pace=_pace(folder, meta.get("pace", "1") or "1"),
-        outcome=meta.get("outcome", UNFINISHED),
-        outcome_text=_last_words(events),
+        outcome=end.outcome,
+        outcome_text=end.text,
         started_utc=clock[0][1] if clock else "",
         ended_utc=clock[-1][1] if clock else "",
         duration_s=end_s,
@@ -84,9 +81,3 @@ def _trace(info: TagInfo, series: Series) -> Trace:
         value = np.where(np.asarray(series.quality) == int(Quality.BAD), np.nan, value)
     t_s = np.asarray(series.t_ns, dtype=np.float64) / 1e9
     return Trace(info.id, info.title, info.measures, info.unit, t_s, value)
-
-
-def _last_words(events: Sequence[Event]) -> str:
-    """The sentence of the last change of the run state."""
-    spoken = [event.text for event in events if event.kind is EventKind.RUN_STATE]
-    return spoken[-1] if spoken else ""

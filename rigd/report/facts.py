@@ -8,7 +8,7 @@ from rigd.model.events import Event, EventKind
 from rigd.report.alarm_load import alarm_load
 from rigd.report.data import CHAIN_HEAD, PointRow, RunData
 from rigd.report.kinetic_fit import kinetics_of
-from rigd.report.words import first_out
+from rigd.report.words import earlier_points, first_out
 
 
 def report_facts(run: RunData) -> dict[str, object]:
@@ -21,6 +21,7 @@ def report_facts(run: RunData) -> dict[str, object]:
         "simulated": run.simulated,
         "pace": run.pace,
         "duration_s": run.duration_s,
+        "collected_earlier": earlier_points(run),
         "points": [point_facts(point) for point in run.points],
         "kinetics": [
             {

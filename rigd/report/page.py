@@ -16,20 +16,21 @@ from rigd.model.events import Event, EventKind
 from rigd.model.protection import ConditionKind
 from rigd.model.rig import TagKind
 from rigd.report.alarm_load import alarm_load
-from rigd.report.collect import UNFINISHED
 from rigd.report.data import PointRow, RunData, Trace
+from rigd.report.ending import RUNNING, UNFINISHED
 from rigd.report.figures import conversion_figure, timeline_figure, with_error
 from rigd.report.kinetic_fit import Kinetics, kinetics_of
 from rigd.report.words import (
     CAUTIONS,
     clock,
     duration,
-    first_out,
+    followers_words,
     number,
     of_kind,
     outcome_words,
     percent,
     points_words,
+    trip_groups,
     utc,
 )
 
@@ -56,14 +57,12 @@ def render_page(run: RunData) -> str:
 
 def _context(run: RunData) -> dict[str, Any]:
     kinetics = kinetics_of(run)
-    trips = of_kind(run, EventKind.TRIP)
-    first = first_out(trips)
     return {
         "run": _head(run),
         "outcome": outcome_words(run),
         "points_words": points_words(run),
         "chemistry": run.rig.chemistry.name if run.rig else "",
-        "trips": [_trip(event, event is first) for event in trips],
+        "trips": [_trip(first, after) for first, after in trip_groups(of_kind(run, EventKind.TRIP))],
         "conversion_svg": Markup(conversion_figure(run, kinetics)) if _any_conversion(run) else "",
         "timeline_svg": Markup(timeline_figure(run)),
         "residence_note": _residence_note(run),
@@ -103,15 +102,17 @@ def _head(run: RunData) -> dict[str, Any]:
         "outcome": run.outcome,
         "outcome_text": run.outcome_text,
         "outcome_known": run.outcome != UNFINISHED,
+        "goes_on": run.outcome == RUNNING,
         "started": utc(run.started_utc),
         "ended": utc(run.ended_utc),
         "duration": duration(run.duration_s),
     }
 
 
-def _trip(event: Event, first: bool) -> dict[str, Any]:
-    told = {key: str(event.fields.get(key, "")) for key in ("did", "do")}
-    return {"subject": event.subject, "first": first, "t": clock(event.t_ns / 1e9), "text": event.text, **told}
+def _trip(first: Event, after: list[Event]) -> dict[str, Any]:
+    told = {key: str(first.fields.get(key, "")) for key in ("did", "do")}
+    followers = {"after": [_event(event) for event in after], "after_words": followers_words(first, after)}
+    return {"subject": first.subject, "t": clock(first.t_ns / 1e9), "text": first.text, **told, **followers}
 
 
 def _event(event: Event) -> dict[str, str]:

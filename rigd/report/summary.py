@@ -16,26 +16,27 @@ from rigd.report.kinetic_fit import kinetics_of
 from rigd.report.words import (
     clock,
     duration,
-    first_out,
     flow_words,
+    followers_words,
     number,
     of_kind,
     outcome_words,
     percent,
     points_words,
+    trip_groups,
 )
 
-_COLOURS = {"done": "green", "tripped": "red", "refused": "red"}
+_COLOURS = {"done": "green", "tripped": "red", "refused": "red", "guarded": "red", "loose": "red"}
 
 
 def summary(run: RunData) -> RenderableType:
     """What a person wants to know at the end of a run, in one screen."""
     parts: list[RenderableType] = [_head(run)]
-    trips = of_kind(run, EventKind.TRIP)
-    first = first_out(trips)
-    for event in trips:
-        mark = " (first-out)" if event is first else ""
-        parts.append(Text.assemble((f"{event.subject}{mark} at {clock(event.t_ns / 1e9)}: ", "bold red"), event.text))
+    for first, after in trip_groups(of_kind(run, EventKind.TRIP)):
+        title = f"{first.subject} (first-out) at {clock(first.t_ns / 1e9)}: "
+        parts.append(Text.assemble((title, "bold red"), first.text))
+        if after:
+            parts.append(Text(f"  {followers_words(first, after)}", style="red"))
     if run.points:
         parts.append(_points(run))
     kinetics = kinetics_of(run)

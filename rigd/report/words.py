@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import json
 import math
 from collections.abc import Mapping, Sequence
 from typing import TYPE_CHECKING
@@ -16,6 +17,9 @@ OUTCOMES = {
     "tripped": "Tripped",
     "stopped": "Stopped early",
     "refused": "Refused",
+    "guarded": "Stopped by the guard",
+    "loose": "NOT CONFIRMED AS STOPPED",
+    "running": "Running",
 }
 
 CAUTIONS = (
@@ -91,10 +95,22 @@ def outcome_words(run: RunData) -> str:
 
 
 def points_words(run: RunData) -> str:
-    """``5 of 6 points collected``."""
-    collected = sum(point.status == "collected" for point in run.points)
-    planned = len(run.recipe.points) if run.recipe else len(run.points)
-    return f"{collected} of {planned} points collected"
+    """``5 of 6 points collected``; those of the run that this one went on from count and are told."""
+    collected = {point.id for point in run.points if point.status == "collected"}
+    before = [name for name in earlier_points(run) if name not in collected]
+    planned = len(run.recipe.points) if run.recipe else len({*before, *(point.id for point in run.points)})
+    source = run.facts.get("earlier", "") or "an earlier run"
+    note = f" ({len(before)} of them by {source})" if before else ""
+    return f"{len(collected) + len(before)} of {planned} points collected{note}"
+
+
+def earlier_points(run: RunData) -> list[str]:
+    """Ids of the points that the run left out, because an earlier one had collected them."""
+    try:
+        found = json.loads(run.facts.get("collected", "[]"))
+    except ValueError:
+        return []
+    return [str(name) for name in found] if isinstance(found, list) else []
 
 
 def of_kind(run: RunData, *kinds: EventKind) -> list[Event]:
@@ -106,6 +122,26 @@ def first_out(trips: Sequence[Event]) -> Event | None:
     """The trip that came first, as the interlocks recorded it; the earliest when none is marked."""
     marked = [event for event in trips if event.fields.get("first_out") in (True, event.subject)]
     return next(iter(marked or trips), None)
+
+
+def trip_groups(trips: Sequence[Event]) -> list[tuple[Event, list[Event]]]:
+    """Each first-out with the trips that followed from it, until the next one after a reset."""
+    groups: list[tuple[Event, list[Event]]] = []
+    for event in trips:
+        if not groups or event.fields.get("first_out") in (True, event.subject):
+            groups.append((event, []))
+        else:
+            groups[-1][1].append(event)
+    return groups
+
+
+def followers_words(first: Event, after: Sequence[Event]) -> str:
+    """``3 more followed within 0.4 s: A, B, C``; "" for none."""
+    if not after:
+        return ""
+    within_s = (after[-1].t_ns - first.t_ns) / 1e9
+    span = f"{within_s:.1f} s" if within_s < 60 else duration(within_s)
+    return f"{len(after)} more followed within {span}: {', '.join(event.subject for event in after)}"
 
 
 def flow_words(flows_mL_min: dict[str, float]) -> str:

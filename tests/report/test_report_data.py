@@ -11,7 +11,8 @@ from fakes.report_run import FEED, TRUE_K, invented_recipe, invented_rig, true_c
 
 from rigd.analysis.kinetics import Law
 from rigd.model.errors import JournalError
-from rigd.report.collect import UNFINISHED, read_run
+from rigd.report.collect import read_run
+from rigd.report.ending import UNFINISHED
 from rigd.report.figures import thinned
 from rigd.report.kinetic_fit import kinetics_of
 from rigd.report.words import clock, duration, percent, points_words

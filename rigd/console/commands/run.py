@@ -48,14 +48,16 @@ def run(
 
     pair = load_pair(rig, recipe)
     assert pair.recipe is not None
-    collected = collected_points(find_run(earlier, runs), pair.rig, pair.recipe) if earlier else ()
+    before = find_run(earlier, runs) if earlier else None
+    collected = collected_points(before, pair.rig, pair.recipe) if before else ()
     simulated = all(link.port == SIMULATED for link in pair.rig.links)
     if not simulated and not signer:
         signer = sign(output, pair.rig, pair.recipe)
     if unattended:
         say_waived(output, rig, pair.rig, pair.recipe, pace)
     start_run(rig, recipe, RunSettings(
-        pace=pace, signer=signer, runs=runs, collected=collected, unattended=unattended,
+        pace=pace, signer=signer, runs=runs, collected=collected, earlier=before.resolve().name if before else "",
+        unattended=unattended,
         progress=PROGRESS, after=report_command(output.json),
     ))  # fmt: skip
 

@@ -61,6 +61,7 @@ def list_runs(output: Output, folder: Path) -> None:
     from rich.table import Table
 
     from rigd.adapters.places import run_folders
+    from rigd.report.words import OUTCOMES
 
     found = [_facts(path) for path in run_folders(folder)]
     output.document({"runs": found})
@@ -74,7 +75,7 @@ def list_runs(output: Output, folder: Path) -> None:
     for facts in found:
         mark = " [red]simulated[/]" if facts["simulated"] else ""
         names = [str(facts[key]) for key in ("run", "rig", "recipe", "started", "lasted")]
-        table.add_row(*names, f"{facts['outcome']}{mark}")
+        table.add_row(*names, f"{OUTCOMES.get(str(facts['outcome']), facts['outcome'])}{mark}")
     output.say(table)
 
 
@@ -82,6 +83,7 @@ def _facts(path: Path) -> dict[str, object]:
     """What the list shows of one run; a journal that cannot be read is listed with the reason."""
     from rigd.adapters.journal_reader import JournalReader
     from rigd.model.errors import JournalError
+    from rigd.report.ending import ending
     from rigd.report.words import duration, simulated, utc
 
     facts: dict[str, object] = {"run": path.name, "folder": str(path), "rig": "", "recipe": "", "started": ""}
@@ -91,7 +93,7 @@ def _facts(path: Path) -> dict[str, object]:
             meta, clock = journal.meta, journal.clock()
     except JournalError as error:
         return facts | {"outcome": f"cannot be read: {error}"}
-    end_s = clock[-1][0] / 1e9 if clock else 0.0
+    end, end_s = ending(path, meta), clock[-1][0] / 1e9 if clock else 0.0
     return facts | {
         "rig": meta.get("rig", ""),
         "recipe": meta.get("recipe", ""),
@@ -99,5 +101,6 @@ def _facts(path: Path) -> dict[str, object]:
         "lasted": duration(end_s),
         "duration_s": end_s,
         "simulated": simulated(meta),
-        "outcome": meta.get("outcome", "no end recorded"),
+        "outcome": end.outcome,
+        "text": end.text,
     }
