@@ -2,9 +2,11 @@
 
 The ratio test of Cao & Rhinehart, J. Process Control 5 (1995) 363-374, vetoes: two estimates of the variance, one of
 which a trend inflates. The equivalence test (two one-sided t-tests on the slope of a window) proves: steady only when
-the change projected over what is still to come is *shown* to be below a tolerance. Not rejecting a trend proves
-nothing. A signal that has not moved at all for half a window is frozen and never steady. Weak point of the ratio:
-autocorrelated noise raises it, so it errs towards waiting.
+the change projected from the middle of the window to the end of what is still to come is *shown* to be below a
+tolerance. Not rejecting a trend proves nothing. A signal that has not moved at all for half a window is frozen and never
+steady. Weak points of the ratio: autocorrelated noise raises it, so it errs towards waiting; and the quieter an
+instrument is, the smaller the drift that it vetoes. Where the whole window lies so close to a line that no bend of it can
+matter, the veto is void and the proof alone decides.
 """
 
 from __future__ import annotations
@@ -25,6 +27,9 @@ SHORT_LIMITS = ((16, 1.75, 2.37), (30, 1.50, 1.85), (48, 1.46, 1.76))
 
 RATIO_MEMORY = 60
 """Samples over which the gate takes the ratio, at most."""
+
+SMALL = 0.25
+"""Part of the tolerance within which a whole window may lie about its line for no bend in it to matter (own rule)."""
 
 CONFIDENCE = 0.95
 """Of each of the two one-sided tests."""
@@ -87,12 +92,18 @@ def ratio_limits(count: int) -> tuple[float, float]:
 
 @dataclass(frozen=True, slots=True)
 class Trend:
-    """Least-squares line through a window: ``slope`` and its standard error [unit/s], mean, number of values."""
+    """Least-squares line through a window: ``slope`` and its standard error [unit/s], mean, number of values, and the
+    middle of the window [s]."""
 
     slope: float
     error: float
     mean: float
     count: int
+    middle_s: float = 0.0
+
+    def off(self, t_s: float, value: float) -> float:
+        """How far a value lies above the line."""
+        return value - self.mean - self.slope * (t_s - self.middle_s)
 
     @property
     def significant(self) -> bool:
@@ -116,7 +127,7 @@ def trend(window: tuple[tuple[float, float], ...]) -> Trend:
     spread = sum((t - mean_t) ** 2 for t, _ in window)
     slope = sum((t - mean_t) * (v - mean) for t, v in window) / spread
     residual = sum((v - mean - slope * (t - mean_t)) ** 2 for t, v in window)
-    return Trend(slope, math.sqrt(residual / (n - 2) / spread), mean, n)
+    return Trend(slope, math.sqrt(residual / (n - 2) / spread), mean, n, mean_t)
 
 
 @dataclass(frozen=True, slots=True)
@@ -190,6 +201,9 @@ def _verdict(settler: Settler, rule: SettleRule) -> str:
         return "frozen"
     ratio = ratio_over(settler.raw)
     accept, reject = ratio_limits(len(settler.raw))
-    if ratio is None or ratio > (reject if settler.run else accept):
+    line = settler.trend
+    straight = max(abs(line.off(t, value)) for t, value in settler.blocks) < SMALL * rule.tolerance
+    if ratio is None or (ratio > (reject if settler.run else accept) and not straight):
         return "moving"
-    return "steady" if settler.trend.change_below(rule.tolerance, rule.horizon_s) else "unproven"
+    ahead_s = rule.horizon_s + settler.blocks[-1][0] - line.middle_s  # what is told is the mean of the window
+    return "steady" if line.change_below(rule.tolerance, ahead_s) else "unproven"

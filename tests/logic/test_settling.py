@@ -188,3 +188,35 @@ def test_false_alarms_of_the_whole_gate_only_delay() -> None:
     counts = [run(0.5 + noise(100, 0.002, seed)).count for seed in range(200)]
     assert max(counts) < 100
     assert float(np.median(counts)) <= 16
+
+
+def test_a_quiet_instrument_sees_a_drift_that_does_not_matter() -> None:
+    """3e-5/s against a tolerance of 1 % over 90 s, forty noise deviations in a window: proven small, so it is steady."""
+    values = 0.28 - 3e-5 * 5.0 * np.arange(40) + noise(40, 4e-5)
+    settler = run(values)
+    assert is_steady(settler, RULE)
+    assert ratio_over(settler.raw) > ratio_limits(len(settler.raw))[1]  # type: ignore[operator]
+
+
+def test_the_same_drift_over_what_is_still_to_come_is_not_steady() -> None:
+    """The same slope: 1.1 % from the middle of the window to the end of a horizon of 350 s."""
+    values = 0.28 - 3e-5 * 5.0 * np.arange(40) + noise(40, 4e-5)
+    settler = run(values, SettleRule(tolerance=0.01, horizon_s=350.0, window=12, persistence=3))
+    assert not is_steady(settler, RULE)
+
+
+def test_the_mean_of_the_window_counts_besides_the_horizon() -> None:
+    """2e-4/s over 1 s is nothing, but the mean of a window of 110 s lies 1.1 % behind what is collected."""
+    values = 0.28 + 2e-4 * 5.0 * np.arange(60) + noise(60, 4e-5)
+    assert not is_steady(run(values, SettleRule(0.01, 1.0, 24, 3)), RULE)
+    assert is_steady(run(values, SettleRule(0.02, 1.0, 24, 3)), RULE)
+
+
+def test_a_bend_that_matters_is_moving_however_flat_its_line() -> None:
+    """A hump of 2 % over the window: least squares sees no slope in it."""
+    t = np.arange(12)
+    hump = 0.5 + 0.02 * np.sin(np.pi * t / 11) + noise(12, 2e-4)
+    settler = Settler()
+    for i, value in enumerate(hump):
+        settler = settle_step(settler, RULE, (i + 1) * 5 * SECOND_NS, float(value))
+    assert settler.verdict == "moving"
