@@ -8,6 +8,9 @@ from __future__ import annotations
 
 import hashlib
 import json
+import tomllib
+from collections.abc import Iterable
+from pathlib import Path
 
 from rigd.config.table import Table
 
@@ -19,3 +22,17 @@ def digest_of(*tables: Table, without: frozenset[str] = frozenset()) -> str:
     ]
     text = json.dumps(content, sort_keys=True, ensure_ascii=True, separators=(",", ":"), default=str)
     return hashlib.sha256(text.encode("ascii")).hexdigest()
+
+
+def with_cards(digest: str, cards: Iterable[Path]) -> str:
+    """The fingerprint of a rig with what its protocol cards say; a card that cannot be read is told elsewhere."""
+    contents = []
+    for path in sorted(set(cards)):
+        try:
+            said = tomllib.loads(path.read_text(encoding="utf-8"))
+        except (OSError, ValueError):
+            continue
+        contents.append(json.dumps(said, sort_keys=True, ensure_ascii=True, separators=(",", ":"), default=str))
+    if not contents or not digest:
+        return digest
+    return hashlib.sha256("\n".join([digest, *sorted(contents)]).encode("ascii")).hexdigest()

@@ -64,7 +64,7 @@ class _Scanner:
     def _header(self) -> Path:
         line, many = self._line_here(), self.text.startswith("[[", self.pos)
         self.pos += 2 if many else 1
-        path = self._resolve(self._key())
+        path = self._resolve(self._key(), line)
         self.found.setdefault(path, line)
         if many:
             index = self._counts.get(path, 0)
@@ -74,11 +74,12 @@ class _Scanner:
         self._expect("]]" if many else "]")
         return path
 
-    def _resolve(self, keys: tuple[str, ...]) -> Path:
-        """Step into the last item of each list of tables on the way."""
+    def _resolve(self, keys: tuple[str, ...], line: int) -> Path:
+        """Step into the last item of each list of tables on the way; a table that is only implied begins here."""
         path: Path = ()
         for key in keys[:-1]:
             path = (*path, key)
+            self.found.setdefault(path, line)
             if path in self._counts:
                 path = (*path, self._counts[path] - 1)
         return (*path, keys[-1])

@@ -6,6 +6,7 @@ The schemas say what the structure is; what it must mean (references, limits, vo
 from __future__ import annotations
 
 import json
+from collections.abc import Mapping
 from typing import Any
 
 from rigd.config.chemistry_tables import ChemistryFile
@@ -39,6 +40,11 @@ def nights_schema() -> Schema:
     return _schema(NightsFile, "nights file")
 
 
+def published(made: Mapping[str, Any], title: str) -> Schema:
+    """A schema that a plug-in made (of a protocol card, for one) in the form in which all of them are published."""
+    return {"$schema": DRAFT, **_plain(dict(made)), "title": title}
+
+
 def schema_files() -> dict[str, str]:
     """File name -> text of the schemas as they are shipped in configs/schema."""
     schemas = {
@@ -51,8 +57,7 @@ def schema_files() -> dict[str, str]:
 
 
 def _schema(model: type[Table], title: str) -> Schema:
-    made = _plain(model.model_json_schema(by_alias=True, mode="validation"))
-    return {"$schema": DRAFT, **made, "title": title}
+    return published(model.model_json_schema(by_alias=True, mode="validation"), title)
 
 
 def _plain(node: Any) -> Any:

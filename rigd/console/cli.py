@@ -31,7 +31,7 @@ SECTIONS: dict[str, dict[str, tuple[str, str]]] = {
         "card": ("card:card", "Connect a device from its manual: write, check, try a card."),
         "driver": ("driver:driver", "Begin a driver package of your own; list those installed."),
         "ports": ("card:ports", "List serial ports with stable names."),
-        "schema": ("schema:schema", "Print the JSON Schema of a rig or recipe file."),
+        "schema": ("schema:schema", "Print the JSON Schema of a rig, recipe or card file."),
     },
     "A run": {
         "run": ("run:run", "Run a recipe on a rig."),

@@ -6,6 +6,7 @@ import re
 from pathlib import Path
 
 import pytest
+from fakes.card_rigs import manual_rig
 from fakes.config_files import CHEMISTRY, RECIPE, RIG, Edit, edited, within, write
 
 from rigd.config import load_recipe, load_rig
@@ -67,3 +68,14 @@ def test_a_change_of_the_recipe_changes_only_its_own(tmp_path: Path) -> None:
 
     assert before[0] == after[0]
     assert before[1] != after[1]
+
+
+def test_a_protocol_card_is_part_of_the_rig(tmp_path: Path) -> None:
+    (tmp_path / "rigs").mkdir()
+    rig, _ = manual_rig(tmp_path, {"pumps": 1, "map": 2, "chiller": "/dev/null"})
+    before, card = load_rig(rig).digest, tmp_path / "rigs/ascii-pump.toml"
+    text = card.read_text(encoding="utf-8")
+    card.write_text(f"{text}\n# a comment\n", encoding="utf-8")
+    assert load_rig(rig).digest == before
+    card.write_text(text.replace("range = [0.005, 20.0]", "range = [0.005, 10.0]"), encoding="utf-8")
+    assert load_rig(rig).digest != before

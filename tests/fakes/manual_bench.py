@@ -58,9 +58,7 @@ class PumpD2:
 
     def answer(self, text: str) -> str:
         self.heard_s = self.bench.now()
-        flow, level, standby, delivered, state = self.bench.read(
-            self.device, "flow", "level", "standby", "delivered", "state"
-        )
+        level, standby, delivered, state = self.bench.read(self.device, "level", "standby", "delivered", "state")
         name, _, number = text.partition("=")
         if text == "I":
             return "D2 sn=00417 v=1.3"

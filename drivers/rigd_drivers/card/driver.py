@@ -9,7 +9,7 @@ from pathlib import Path
 from pydantic import Field
 
 from rigd.model.devices import DeviceIdentity, DeviceSpec, LastWill, LinkSpec
-from rigd.model.errors import ConfigError, DeviceProtocolError, DeviceRefused, LocalProtocolError, WrongDevice
+from rigd.model.errors import DeviceProtocolError, DeviceRefused, LocalProtocolError, WrongDevice
 from rigd.model.orders import Action, Order
 from rigd.model.samples import Reading
 from rigd.ports.driver import CONTRACT, DriverFamily
@@ -186,11 +186,12 @@ def _check_spec(spec: DeviceSpec, card: Card, options: CardOptions) -> None:
 
 
 def _schema(dialect: str) -> Mapping[str, object]:
-    return schema_of(CardOptions)
+    """Schema of the device's options; for "card file" that of a card itself."""
+    return (
+        Card.model_json_schema(by_alias=True, mode="validation") if dialect == "card file" else schema_of(CardOptions)
+    )
 
 
 FAMILY = DriverFamily(
     "card", CONTRACT, "any device that a protocol card declares", ("",), (), tuple(Action), CardDevice, _schema
 )
-
-__all__ = ["FAMILY", "CardDevice", "CardOptions", "ConfigError"]
