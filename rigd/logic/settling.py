@@ -3,10 +3,10 @@
 The ratio test of Cao & Rhinehart, J. Process Control 5 (1995) 363-374, vetoes: two estimates of the variance, one of
 which a trend inflates. The equivalence test (two one-sided t-tests on the slope of a window) proves: steady only when
 the change projected from the middle of the window to the end of what is still to come is *shown* to be below a
-tolerance. Not rejecting a trend proves nothing. A signal that has not moved at all for half a window is frozen and never
-steady. Weak points of the ratio: autocorrelated noise raises it, so it errs towards waiting; and the quieter an
-instrument is, the smaller the drift that it vetoes. Where the whole window lies so close to a line that no bend of it can
-matter, the veto is void and the proof alone decides.
+tolerance. Not rejecting a trend proves nothing. A signal that has not moved at all for half a window is frozen and
+never steady. Weak points of the ratio: autocorrelated noise raises it, so it errs towards waiting; and the quieter an
+instrument is, the smaller the drift that it vetoes. Where the whole window lies so close to a line that no bend of it
+can matter, the veto is void and the proof alone decides.
 """
 
 from __future__ import annotations

@@ -191,7 +191,7 @@ def test_false_alarms_of_the_whole_gate_only_delay() -> None:
 
 
 def test_a_quiet_instrument_sees_a_drift_that_does_not_matter() -> None:
-    """3e-5/s against a tolerance of 1 % over 90 s, forty noise deviations in a window: proven small, so it is steady."""
+    """3e-5/s against a tolerance of 1 % over 90 s, forty noise deviations in a window: proven small, so steady."""
     values = 0.28 - 3e-5 * 5.0 * np.arange(40) + noise(40, 4e-5)
     settler = run(values)
     assert is_steady(settler, RULE)
