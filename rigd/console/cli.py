@@ -124,14 +124,22 @@ def call(arguments: Sequence[str]) -> int:
     except click.exceptions.Exit as leaving:
         return leaving.exit_code
     except (click.Abort, KeyboardInterrupt):
-        print("rigd: interrupted", file=sys.stderr)
-        return 130
+        return _interrupted(arguments)
     except BrokenPipeError:
         return _reader_went_away()
     except Exception as error:  # noqa: BLE001 - the last net: a person gets a sentence, whatever it was
         from rigd.console.trouble import explain
 
         return explain(error, output)
+
+
+def _interrupted(arguments: Sequence[str]) -> int:
+    """Ctrl-C before a command was done. A run that has begun is another program and hears of it by itself."""
+    if list(arguments[:1]) == ["run"]:
+        print("rigd: interrupted before the run began: nothing was sent to the rig, nothing moved", file=sys.stderr)
+        return 1
+    print(f"rigd: {' '.join(arguments[:1])} was interrupted", file=sys.stderr)
+    return 130
 
 
 def _reader_went_away() -> int:

@@ -192,3 +192,12 @@ def test_one_no_and_nothing_starts(files, started, terminal, answers, capsys):
     assert run(files) == 2
     assert started == []
     assert "nothing was started" in " ".join(capsys.readouterr().err.split())
+
+
+def test_ctrl_c_before_the_run_began_says_that_nothing_moved(files, monkeypatch, capsys):
+    def interrupted(*_: object) -> None:
+        raise KeyboardInterrupt
+
+    monkeypatch.setattr(app, "start_run", interrupted)
+    assert run(files) == 1
+    assert "nothing was sent to the rig, nothing moved" in capsys.readouterr().err
