@@ -142,6 +142,14 @@ class JournalReader:
         for segment in self._segments:
             yield from self._guarded(partial(minutes_of, segment, number))
 
+    def ages_ms(self) -> dict[str, dict[int, int]]:
+        """How old the samples of each tag were when they were judged: how many at each age [ms, rounded down]."""
+        found: dict[str, dict[int, int]] = {}
+        for tag, age_ms, number in self._rows(_AGES):
+            counts = found.setdefault(tag, {})
+            counts[age_ms] = counts.get(age_ms, 0) + number
+        return found
+
     def _number(self, tag: str) -> int:
         for number, name in self._names.items():
             if name == tag:
@@ -276,6 +284,12 @@ def _samples(segment: sqlite3.Connection, tag: int, start_ns: int, end_ns: int) 
 _OF_TAG = (
     "SELECT t_ns, value, quality FROM samples WHERE tag = ?1 AND t_ns BETWEEN ?2 AND ?3 AND rowid BETWEEN ?4 AND ?5 "
     "ORDER BY rowid"
+)
+
+
+_AGES = (
+    "SELECT tags.tag, MAX(scans.now_ns - samples.t_ns, 0) / 1000000 AS age_ms, COUNT(*) FROM samples "
+    "JOIN scans ON scans.number = samples.scan JOIN tags ON tags.id = samples.tag GROUP BY 1, 2"
 )
 
 

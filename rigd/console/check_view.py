@@ -1,4 +1,4 @@
-"""The findings of ``rigd check`` for people: problems, the plan, cause and effect with response times."""
+"""The findings of ``rigd check`` for people: problems, the plan, response times, cause and effect."""
 
 from __future__ import annotations
 
@@ -8,13 +8,15 @@ from rich.table import Table
 from rich.text import Text
 
 from rigd.console.checking import Checked, supplies_mL
+from rigd.console.matrix_view import cause_and_effect
 from rigd.console.output import Output
 from rigd.console.trouble import print_problems
 from rigd.logic.plan_problems import KEPT_BACK
 from rigd.logic.planning import Plan
 from rigd.logic.response import Response
-from rigd.model.protection import Condition, ConditionKind, Interlock
+from rigd.model.protection import Interlock
 from rigd.model.rig import PropertySet, RigDefinition
+from rigd.report.cause_words import condition_words
 from rigd.report.words import clock, duration
 
 BAR = 16
@@ -33,8 +35,10 @@ def show_check(output: Output, found: Checked) -> None:
         output.say("")
         output.say(bottles(found.rig, found.plan))
         output.say("")
-    output.say(cause_and_effect(found.rig, found.responses))
+    output.say(response_times(found.rig, found.responses))
     output.say(_footnote(found))
+    output.say("")
+    output.say(cause_and_effect(found.rig))
     if found.liquids:
         output.say("")
         output.say(properties(found.liquids))
@@ -98,12 +102,10 @@ def bottles(rig: RigDefinition, planned: Plan) -> RenderableType:
     return table
 
 
-def cause_and_effect(rig: RigDefinition, times: tuple[Response, ...]) -> RenderableType:
+def response_times(rig: RigDefinition, times: tuple[Response, ...]) -> RenderableType:
     """Every interlock of the rig file: what trips it, what it does, how fast, against how much time there is."""
     known = {response.interlock: response for response in times}
-    table = Table(
-        box=box.SIMPLE_HEAD, pad_edge=False, title="cause and effect", title_justify="left", title_style="bold"
-    )
+    table = Table(box=box.SIMPLE_HEAD, pad_edge=False, title="response times", title_justify="left", title_style="bold")
     table.add_column("interlock", overflow="fold")
     table.add_column("trips when", overflow="fold")
     table.add_column("vote")
@@ -130,26 +132,6 @@ def _row(rig: RigDefinition, lock: Interlock, response: Response | None) -> list
     style = "green" if response.fit else "bold red"
     cells += [f"{response.safety_s:.2f} s", Text(f"{response.margin:.2f}", style=style)]
     return [*cells, f"{response.flow_max_mL_min:.3g}"]
-
-
-def condition_words(rig: RigDefinition, cause: Condition) -> str:
-    """A condition as people say it: ``PT-1 above 8 bar``."""
-    unit = next((tag.unit for tag in rig.tags if tag.id == cause.tag), "")
-    limit = f"{cause.limit:g} {unit}".strip()
-    words = {
-        ConditionKind.HIGH: f"above {limit}",
-        ConditionKind.LOW: f"below {limit}",
-        ConditionKind.RATE: f"rises faster than {limit}/s",
-        ConditionKind.DEVIATION: f"away from {cause.reference} by {limit.replace('degC', 'K')}",
-        ConditionKind.EQUALS: f"is {limit}",
-        ConditionKind.DIFFERS: f"is not {limit}",
-        ConditionKind.MISMATCH: "not where it was told to be",
-        ConditionKind.BAD: "cannot be believed",
-        ConditionKind.LINK: "does not answer",
-        ConditionKind.POWER_CYCLED: "restarted or is another device",
-        ConditionKind.FAULT: "failed",
-    }
-    return f"{cause.tag} {words[cause.kind]}"
 
 
 def _footnote(found: Checked) -> Text:

@@ -17,6 +17,8 @@ from rigd.model.errors import ConfigError
 from rigd.model.problems import Problem, Severity
 from rigd.model.recipe import Recipe
 from rigd.model.rig import PropertySet, RigDefinition, VesselRole
+from rigd.report.cause_effect import LEGEND, matrix
+from rigd.report.gaps import gaps
 
 
 @dataclass(frozen=True, slots=True)
@@ -47,6 +49,7 @@ class Checked:
             **(plan_facts(self.rig, self.plan) if self.plan else {}),
             "properties": [asdict(one) for one in self.liquids],
             "interlocks": [response_facts(response) for response in self.responses],
+            "cause_effect": cause_effect_facts(self.rig),
         }
 
 
@@ -118,6 +121,17 @@ def response_facts(response: Response) -> Mapping[str, object]:
         "process_safety_time_s": response.safety_s,
         "margin": response.margin,
         "flow_max_mL_min": response.flow_max_mL_min,
+    }
+
+
+def cause_effect_facts(rig: RigDefinition) -> dict[str, object]:
+    """The matrix with its legend, and what it leaves open."""
+    found = matrix(rig)
+    return {
+        "columns": found.columns,
+        "rows": [asdict(row) for row in found.rows],
+        "legend": LEGEND,
+        "gaps": [asdict(gap) for gap in gaps(rig)],
     }
 
 

@@ -104,6 +104,7 @@ class RunData:
     events: tuple[Event, ...]
     used_mL: Mapping[str, float]
     facts: Mapping[str, str] = field(default_factory=dict)
+    ages_ms: Mapping[str, Mapping[int, int]] = field(default_factory=dict)
     rig: RigDefinition | None = None
     recipe: Recipe | None = None
 

@@ -8,6 +8,7 @@ rules of this program differ from a row, ``DIFFERENT`` says how and why.
 from __future__ import annotations
 
 import csv
+from dataclasses import replace
 from pathlib import Path
 
 import pytest
@@ -17,6 +18,9 @@ from rigd.config import load_pair
 from rigd.logic.program import compile_program
 from rigd.model.orders import Stop
 from rigd.model.protection import Interlock
+from rigd.model.rig import RigDefinition
+from rigd.report.cause_effect import matrix
+from rigd.report.gaps import USUAL, coverage, gaps
 
 TEXT = (Path(__file__).parents[1] / "reference/cause_effect.csv").read_text(encoding="utf-8").splitlines()
 ROWS = {row["id"]: row for row in csv.DictReader(TEXT[1:])}
@@ -118,6 +122,11 @@ DIFFERENT = {
 
 
 @pytest.fixture(scope="module")
+def rig(tmp_path_factory: pytest.TempPathFactory) -> RigDefinition:
+    return load_pair(*write(tmp_path_factory.mktemp("rig"), FULL, RECIPE)).rig
+
+
+@pytest.fixture(scope="module")
 def rules(tmp_path_factory: pytest.TempPathFactory) -> dict[str, Interlock]:
     pair = load_pair(*write(tmp_path_factory.mktemp("rig"), FULL, RECIPE))
     assert pair.recipe is not None
@@ -154,3 +163,44 @@ def test_row(row_id: str, rules: dict[str, Interlock]) -> None:
 
 def test_what_is_no_stop_in_the_table_stops_nothing() -> None:
     assert [row_id for row_id in ELSEWHERE if stop_of(ROWS[row_id]) is Stop.NONE] == ["C03", "C26"]
+
+
+def test_the_usual_causes_are_the_rows_of_the_table_in_their_order() -> None:
+    assert [one.id for one in USUAL] == list(ROWS)
+
+
+@pytest.mark.parametrize("row_id", RULE_OF)
+def test_each_usual_cause_is_seen_by_its_rule_and_by_nobody_without_it(row_id: str, rig: RigDefinition) -> None:
+    seen = {one.id: names for one, names in coverage(rig)}[row_id]
+    assert RULE_OF[row_id] in seen
+    poor = replace(
+        rig,
+        interlocks=tuple(lock for lock in rig.interlocks if lock.id not in seen),
+        alarms=tuple(alarm for alarm in rig.alarms if alarm.id not in seen),
+    )
+    assert f"({row_id})" in " ".join(gap.what for gap in gaps(poor) if gap.code == "cause-unseen")
+
+
+def test_a_rig_with_every_sensor_of_the_table_has_no_gaps(rig: RigDefinition) -> None:
+    assert gaps(rig) == ()
+
+
+@pytest.mark.parametrize("row_id", RULE_OF)
+def test_the_matrix_moves_what_the_table_moves(row_id: str, rig: RigDefinition) -> None:
+    """X or D of the table is a pump off; W a flush; FV and OV valves to rest; CK a bath kept; SQ the sequence."""
+    told, name = ROWS[row_id], RULE_OF[row_id]
+    kind = name.partition("-")[0]
+    rows = {row.id: row for row in matrix(rig).rows}
+    row = rows.get(name) or rows[f"{kind}-…"]
+    pumps = {row.cells["PU-A"], row.cells["PU-B"]}
+    stop = Stop[expected(row_id, "stop", stop_of(told).name)]
+    delayed = expected(row_id, "delay_s", told["delay_s"]) != "0"
+    assert pumps == ({"F"} if stop is Stop.QUENCH else {"D"} if delayed else {"X"})
+    assert {row.cells[valve] for valve in ("V-A", "V-B", "V-C")} == {"R"}
+    assert (row.cells["CH"], row.cells["sequence"][0] in "XD", row.cells["told"]) == ("S", True, "N1")
+
+
+def test_alarms_move_nothing_in_the_matrix(rig: RigDefinition) -> None:
+    rows = {row.id: row for row in matrix(rig).rows}
+    assert rows["PRESSURE-RISING"].cells == {"told": "N2"}
+    assert rows["EMPTY-PU-A"].cells == {"told": "N2", "sequence": "H"}
