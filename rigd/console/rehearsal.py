@@ -43,11 +43,11 @@ def longest_ns(expected_s: float) -> int:
     return int((PATIENCE * expected_s + 3600.0) * 1e9)
 
 
-def rehearsed(done: DryRun, folder: Path | None) -> RunData:
+def rehearsed(done: DryRun, journal: Path | None) -> RunData:
     """The run as the report sees it: from its journal when one was kept, else from its events (no curves)."""
     result, program = done.result, done.program
-    if folder is not None:
-        return read_run(folder, program.rig, program.recipe)
+    if journal is not None:
+        return read_run(journal.parent, program.rig, program.recipe)
     end_s = result.end_ns / 1e9
     events = tuple(result.events)
     traces = signal_trace(done)

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Mapping
 from dataclasses import dataclass
 
 from rich import box
@@ -12,10 +12,10 @@ from rich.text import Text
 
 from rigd.logic.planning import Plan
 from rigd.model.events import EventKind
-from rigd.model.problems import Severity
 from rigd.model.protection import ConditionKind
 from rigd.model.rig import RigDefinition, TagKind, VesselRole
 from rigd.report.data import RunData
+from rigd.report.foreseen import foreseen
 from rigd.report.words import clock, duration, number
 
 BAR = 36
@@ -67,17 +67,8 @@ def rehearsal_view(
     """Timeline, vessels and peaks of a dry run; ``vessels_mL`` is what they held at its end."""
     assert run.rig is not None, "a rehearsal knows its rig"
     parts: list[RenderableType] = [_timeline(run, planned), _vessels(run.rig, vessels_mL), _peaks(run.rig, peak)]
-    parts += [Text(f"! {line}", style="yellow") for line in warnings(run, planned)]
+    parts += [Text(f"! {line}", style="yellow") for line in foreseen(run, planned.problems)]
     return Group(*parts)
-
-
-def warnings(run: RunData, planned: Plan) -> Sequence[str]:
-    """What would go wrong or nearly did: points that do not get steady, alarms, and what the plan found."""
-    unsteady = [f"{p.id} would not be steady in its time" for p in run.points if p.status and not p.settled]
-    found = [
-        f"{problem.message}; {problem.remedy}" for problem in planned.problems if problem.severity is not Severity.NOTE
-    ]
-    return (*unsteady, *found)
 
 
 def _timeline(run: RunData, planned: Plan) -> Table:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Sequence
 from pathlib import Path
 from typing import Any
 
@@ -42,17 +43,18 @@ _TOLD = (
 )  # fmt: skip
 
 
-def write_page(run: RunData, target: Path | None = None) -> Path:
-    """Write the page beside the journal (or to ``target``) and return its path."""
-    return write_whole(target or Path(run.folder) / FILE_NAME, render_page(run))
+def write_page(run: RunData, target: Path | None = None, foreseen: Sequence[str] | None = None) -> Path:
+    """Write the page beside the journal (or to ``target``) and return its path. ``foreseen``: for a rehearsal, what
+    would go wrong."""
+    return write_whole(target or Path(run.folder) / FILE_NAME, render_page(run, foreseen))
 
 
-def render_page(run: RunData) -> str:
+def render_page(run: RunData, foreseen: Sequence[str] | None = None) -> str:
     """The page as text."""
     environment = Environment(
         loader=PackageLoader("rigd.report"), autoescape=True, undefined=StrictUndefined, trim_blocks=True
     )
-    return environment.get_template("report.html.j2").render(_context(run))
+    return environment.get_template("report.html.j2").render(_context(run), foreseen=foreseen)
 
 
 def _context(run: RunData) -> dict[str, Any]:
@@ -258,7 +260,9 @@ def _permit(run: RunData) -> list[tuple[str, str]]:
 
 def _provenance(run: RunData) -> list[tuple[str, str]]:
     long = {key for key, value in run.facts.items() if len(value) > 200 or "\n" in value}
-    rows = [("written by", f"rigd {__version__}"), ("journal", str(Path(run.folder) / "run.sqlite"))]
+    rows = [("written by", f"rigd {__version__}")]
+    if run.folder:
+        rows.append(("journal", str(Path(run.folder) / "run.sqlite")))
     if run.rig is not None and run.rig.digest:
         rows.append(("rig digest (SHA-256)", run.rig.digest))
     if run.recipe is not None and run.recipe.digest:

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 import os
+import re
 import subprocess
 import sys
 from pathlib import Path
@@ -39,6 +40,20 @@ def test_a_blocked_outlet_trips_and_is_told(capsys, tmp_path):
     assert (again_code, again["digest"]) == (1, facts["digest"])
     _, other = rehearse(capsys, *BLOCK, "--seed", "8")
     assert other["digest"] != facts["digest"]
+
+
+def test_the_page_alone_holds_the_curves_and_what_would_go_wrong(capsys, tmp_path):
+    page = tmp_path / "new" / "page.html"
+    code, facts = rehearse(capsys, *BLOCK, "--report", str(page))
+    assert code == 1
+    assert any(line.startswith("PRESSURE-HIGH would trip at 0:00:") for line in facts["foreseen"])
+    text = page.read_text()
+    assert "What would go wrong" in text
+    assert "PRESSURE-HIGH would trip" in text
+    assert text.count("<svg") >= 1
+    assert not re.search(r'(src|href)="(?!#|data:)', text)
+    assert "rigd-dry-" not in text
+    assert [path.name for path in tmp_path.rglob("*")] == ["new", "page.html"]
 
 
 def test_a_folder_that_holds_a_run_is_not_overwritten(tmp_path, capsys):

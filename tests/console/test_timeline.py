@@ -9,12 +9,13 @@ import pytest
 from fakes.report_run import invented_recipe, invented_rig, write_run
 from rich.console import Console
 
-from rigd.console.timeline import bar, rehearsal_view, stretches, warnings
+from rigd.console.timeline import bar, rehearsal_view, stretches
 from rigd.logic.planning import Plan
 from rigd.model.events import Event, EventKind
 from rigd.model.problems import Problem, Severity
 from rigd.report.collect import read_run
 from rigd.report.data import PhaseSpan
+from rigd.report.foreseen import foreseen
 
 PLAN = Plan((), 100.0, {}, 0, 0.0, 0.0)
 
@@ -57,5 +58,23 @@ def test_what_would_go_wrong_is_told(run):
     point = replace(run.points[0], settled=False)
     problem = Problem("bottle-short", severity=Severity.ERROR, message="too little", remedy="fill it")
     note = Problem("dispersion-estimated", severity=Severity.NOTE, message="estimated", remedy="")
-    found = warnings(replace(run, points=(point,)), replace(PLAN, problems=(problem, note)))
-    assert list(found) == [f"{point.id} would not be steady in its time", "too little; fill it"]
+    found = foreseen(replace(run, points=(point,)), (problem, note))
+    assert found == [f"{point.id} would not be steady in its time", "too little; fill it"]
+
+
+def test_trips_waits_and_alarms_are_told_gravest_first(run):
+    def event(kind: EventKind, subject: str, t_s: int, **fields: str) -> Event:
+        return Event(kind, subject, t_s * 1_000_000_000, f"words of {subject}", fields)
+
+    alarm = [event(EventKind.ALARM, "LOW", t_s, announce=told) for t_s, told in ((60, "new"), (70, ""), (99, "again"))]
+    held = event(EventKind.RUN_STATE, "HELD", 100)
+    tripped = [event(EventKind.TRIP, name, 3700, first_out="HOT") for name in ("HOT", "STALE")]
+    found = replace(run, points=(), events=(*alarm, held, *tripped))
+    assert foreseen(found) == [
+        "HOT would trip at 1:01:40: words of HOT (1 more followed within 0.0 s: STALE)",
+        "it would wait for a person at 0:01:40: words of HELD",
+        "alarm LOW would be told 2 times, first at 0:01:00: words of LOW",
+    ]
+    console = Console(width=140, record=True, file=StringIO())
+    console.print(rehearsal_view(found, PLAN, {}, {}))
+    assert console.export_text().count("! ") == 3

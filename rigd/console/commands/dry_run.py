@@ -3,8 +3,10 @@
 from __future__ import annotations
 
 import contextlib
+import tempfile
 import time
 from collections.abc import Iterator
+from dataclasses import replace
 from pathlib import Path
 
 import click
@@ -20,10 +22,19 @@ from rigd.console.output import Output, json_option
 @click.option("--fault", "faults", multiple=True, metavar="FAULT", help=f"Inject a fault: {FORM}. May be repeated.")
 @click.option("--out", type=click.Path(path_type=Path, file_okay=False), help="Keep journal and report in this folder.")
 @click.option("--deep", is_flag=True, help="The live shell, the drivers and every byte, in virtual time; much slower.")
+@click.option("--report", "page", type=click.Path(path_type=Path, dir_okay=False), metavar="FILE",
+              help="Write the rehearsal as one HTML file with plots.")  # fmt: skip
 @json_option
 @click.pass_obj
 def dry_run(
-    output: Output, rig: Path, recipe: Path, seed: int | None, faults: tuple[str, ...], out: Path | None, deep: bool
+    output: Output,
+    rig: Path,
+    recipe: Path,
+    seed: int | None,
+    faults: tuple[str, ...],
+    out: Path | None,
+    deep: bool,
+    page: Path | None,
 ) -> int:
     """Rehearse RECIPE on the simulated RIG, much faster than the clock.
 
@@ -35,35 +46,46 @@ def dry_run(
     from rigd.console.rehearsal import dry_facts, longest_ns, planned_s, rehearsed, show_progress, vessels_mL
     from rigd.console.timeline import rehearsal_view
     from rigd.logic.planning import plan
+    from rigd.report.foreseen import foreseen
     from rigd.report.summary import summary
     from rigd.runtime.dry import DryOptions
 
     began = time.monotonic()
     expected_s = planned_s(rig, recipe)
     options = DryOptions(limit_ns=longest_ns(expected_s))
-    with _journal(out) as journal, show_progress(output, expected_s) as watch:
-        settings = DrySettings(seed or 0, specs, journal, watch, options, deep)
-        done = rehearse(rig, recipe, settings)
-    wall_s = time.monotonic() - began
-    data = rehearsed(done, out)
-    output.document(dry_facts(done, data, seed or 0, wall_s))
+    with _journal(out, bool(page)) as journal:
+        with show_progress(output, expected_s) as watch:
+            settings = DrySettings(seed or 0, specs, journal, watch, options, deep)
+            done = rehearse(rig, recipe, settings)
+        wall_s = time.monotonic() - began
+        data = rehearsed(done, journal)
+    if out is None:
+        data = replace(data, id="dry run", folder="")
+    planned = plan(done.program)
+    wrong = foreseen(data, planned.problems)
+    output.document({**dry_facts(done, data, seed or 0, wall_s), "foreseen": wrong})
     output.say(summary(data))
-    output.say(rehearsal_view(data, plan(done.program), done.result.peak, vessels_mL(done)))
+    output.say(rehearsal_view(data, planned, done.result.peak, vessels_mL(done)))
     output.say(
         f"[dim]{done.result.end_ns / 1e9 / max(wall_s, 1e-9):.0f} × real time, digest {done.result.digest[:16]}[/]"
     )
-    if out is not None:
-        from rigd.report.page import write_page
+    for target in (out and out / "report.html", page):
+        if target is not None:
+            from rigd.report.page import write_page
 
-        output.say(f"report: {write_page(data)}")
+            output.say(f"report: {write_page(data, target, wrong)}")
     return done.result.exit_code
 
 
 @contextlib.contextmanager
-def _journal(out: Path | None) -> Iterator[Path | None]:
-    """Where the journal goes; ``UsageError`` when there is one already. A rehearsal that fails leaves none behind."""
+def _journal(out: Path | None, wanted: bool) -> Iterator[Path | None]:
+    """Where the journal goes; ``UsageError`` when there is one already. A rehearsal that fails leaves none behind.
+
+    A page needs one for its curves: without ``out`` it is kept until the page's data are read.
+    """
     if out is None:
-        yield None
+        with tempfile.TemporaryDirectory(prefix="rigd-dry-") if wanted else contextlib.nullcontext() as folder:
+            yield Path(folder) / "run.sqlite" if folder else None
         return
     path, made = out / "run.sqlite", not out.exists()
     if path.exists():
