@@ -19,6 +19,7 @@ from rigd.report.points import point_rows
 from rigd.report.usage import used_mL
 from rigd.report.words import simulated
 
+
 def read_run(folder: Path, rig: RigDefinition | None = None, recipe: Recipe | None = None) -> RunData:
     """Read the journal in ``folder``. ``rig`` and ``recipe`` are those the run was made with, where they can still be
     read. Raises ``JournalError``."""
@@ -27,6 +28,7 @@ def read_run(folder: Path, rig: RigDefinition | None = None, recipe: Recipe | No
         if head := journal.head():
             meta[CHAIN_HEAD] = head
         traces = {tag: _trace(info, journal.series(tag)) for tag, info in journal.tags.items()}
+        ages_ms = journal.ages_ms()
     end, end_s = ending(folder, meta, events), clock[-1][0] / 1e9 if clock else 0.0
     phases = phase_spans(events, end_s)
     return RunData(
@@ -47,6 +49,7 @@ def read_run(folder: Path, rig: RigDefinition | None = None, recipe: Recipe | No
         events=events,
         used_mL=used_mL(rig, traces) if rig else {},
         facts=meta,
+        ages_ms=ages_ms,
         rig=rig,
         recipe=recipe,
     )

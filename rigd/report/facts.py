@@ -8,6 +8,7 @@ from rigd.model.events import Event, EventKind
 from rigd.report.alarm_load import alarm_load
 from rigd.report.data import CHAIN_HEAD, PointRow, RunData
 from rigd.report.kinetic_fit import kinetics_of
+from rigd.report.response_rows import age_rows, trip_rows
 from rigd.report.words import earlier_points, first_out
 
 
@@ -39,6 +40,10 @@ def report_facts(run: RunData) -> dict[str, object]:
         "trips": trip_facts(run.events),
         "alarms": alarm_facts(run.events),
         "alarm_load": asdict(alarm_load(run.events, run.duration_s)),
+        "response": {
+            "sample_age": [asdict(row) for row in age_rows(run)],
+            "trips": [asdict(row) for row in trip_rows(run)],
+        },
         "chain_head": run.facts.get(CHAIN_HEAD, ""),
     }
 

@@ -17,10 +17,13 @@ from rigd.model.events import Event, EventKind
 from rigd.model.protection import ConditionKind
 from rigd.model.rig import TagKind
 from rigd.report.alarm_load import alarm_load
+from rigd.report.cause_effect import LEGEND, matrix
 from rigd.report.data import PointRow, RunData, Trace
 from rigd.report.ending import RUNNING, UNFINISHED
 from rigd.report.figures import conversion_figure, timeline_figure, with_error
+from rigd.report.gaps import gaps
 from rigd.report.kinetic_fit import Kinetics, kinetics_of
+from rigd.report.response_rows import age_rows, trip_rows
 from rigd.report.words import (
     CAUTIONS,
     clock,
@@ -54,6 +57,7 @@ def render_page(run: RunData, foreseen: Sequence[str] | None = None) -> str:
     environment = Environment(
         loader=PackageLoader("rigd.report"), autoescape=True, undefined=StrictUndefined, trim_blocks=True
     )
+    environment.filters["clock"] = clock
     return environment.get_template("report.html.j2").render(_context(run), foreseen=foreseen)
 
 
@@ -82,6 +86,11 @@ def _context(run: RunData) -> dict[str, Any]:
         "happened": [_event(event) for event in of_kind(run, *_TOLD)],
         "all_events": [_event(event) for event in run.events],
         "alarm_load": alarm_load(run.events, run.duration_s),
+        "ages": age_rows(run),
+        "timed": trip_rows(run),
+        "matrix": matrix(run.rig) if run.rig else None,
+        "legend": LEGEND,
+        "gaps": gaps(run.rig) if run.rig else (),
         "signed": _signed(run),
         "sheet": _sheet(run),
         "permit": _permit(run),
