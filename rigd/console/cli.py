@@ -30,7 +30,7 @@ SECTIONS: dict[str, dict[str, tuple[str, str]]] = {
         "faults": ("faults:faults", "List the faults that the simulator can inject."),
         "card": ("card:card", "Connect a device from its manual: write, check, try a card."),
         "driver": ("driver:driver", "Begin a driver package of your own; list those installed."),
-        "ports": ("card:ports", "List serial ports with stable names."),
+        "ports": ("ports:ports", "List serial ports with stable names; what answers where."),
         "schema": ("schema:schema", "Print the JSON Schema of a rig, recipe or card file."),
     },
     "A run": {

@@ -24,7 +24,7 @@ from rigd.model.errors import DeviceProtocolError, LinkTimeout, RigError
 from rigd.model.orders import Action, Authority, Order
 from rigd.model.samples import Reading
 from rigd.ports.driver import Driver
-from rigd.ports.link import ReplyReader
+from rigd.ports.link import Line, ReplyReader
 
 T = TypeVar("T")
 
@@ -66,7 +66,7 @@ def _take(found: Transcript, number: int, mark: str, rest: str) -> None:
     if mark == "?":
         found.acts.append(Act(number, rest))
     elif mark in ("<", ">"):
-        found.acts[-1].said.append((mark == ">", _bytes(rest)))
+        found.acts[-1].said.append((mark == ">", bytes_of(rest)))
     elif mark == "=":
         name, _, value = rest.rpartition(" ")
         found.acts[-1].values[name] = value
@@ -78,11 +78,23 @@ def _take(found: Transcript, number: int, mark: str, rest: str) -> None:
         found.facts[mark] = rest
 
 
-def _bytes(text: str) -> bytes:
+def bytes_of(text: str) -> bytes:
+    """Bytes as a transcript writes them: in quotes with escapes, or hexadecimal pairs; raises ``ValueError``."""
     if text.startswith('"'):
         value = ast.literal_eval(text[: text.rindex('"') + 1])
         return str(value).encode("latin-1")
     return bytes.fromhex(text.partition("|")[0])
+
+
+def written(transcript: Transcript) -> str:
+    """The text of a transcript."""
+    lines = [f"{name} {value}" for name, value in transcript.facts.items() if value]
+    for act in transcript.acts:
+        lines.append(f"? {act.what}")
+        lines += [f"{'>' if sent else '<'} {quoted(data)}" for sent, data in act.said]
+        lines += [f"= {name} {value}" for name, value in act.values.items()]
+        lines += [f"! {act.error}"] if act.error else []
+    return "\n".join(lines) + "\n"
 
 
 def quoted(data: bytes) -> str:
@@ -136,7 +148,7 @@ async def differences(driver: Driver, transcript: Transcript, channels: Sequence
     for number, act in enumerate(transcript.acts):
         line = ScriptedLine(act)
         try:
-            values, told = await _perform(driver, line, act.what, number, channels), ""
+            values, told = await perform(driver, line, act.what, number, channels), ""
         except RigError as error:
             values, told = {}, str(error)
         if act.error and act.error not in told:
@@ -153,9 +165,8 @@ async def differences(driver: Driver, transcript: Transcript, channels: Sequence
     return found
 
 
-async def _perform(
-    driver: Driver, line: ScriptedLine, what: str, number: int, channels: Sequence[str]
-) -> dict[str, str]:
+async def perform(driver: Driver, line: Line, what: str, number: int, channels: Sequence[str]) -> dict[str, str]:
+    """Ask the driver what an act says; ``RigError`` also for what is neither a question nor an order."""
     words = what.split()
     if words[0] == "identify":
         who = await driver.identify(line)
@@ -164,6 +175,12 @@ async def _perform(
         return {"restarted": f"{int(await driver.prepare(line))}"}
     if words[0] == "poll":
         return {one.channel: value_of(one) for one in await driver.poll(line, words[1:] or channels)}
-    action, value = Action(" ".join(words[:-1])), float(words[-1])
+    try:
+        action, value = Action(" ".join(words[:-1])), float(words[-1])
+    except ValueError:
+        orders = ", ".join(action.value for action in Action)
+        raise RigError(
+            f"{what!r} is not identify, prepare, poll, or an order and its value; orders: {orders}"
+        ) from None
     await driver.execute(line, Order(number, "unit", action, value, Authority.OPERATOR, "transcript", 0))
     return {}

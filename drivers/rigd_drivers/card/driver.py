@@ -18,7 +18,7 @@ from rigd_drivers.card.account import Account
 from rigd_drivers.card.channels import Channels, plain
 from rigd_drivers.card.expressions import parse
 from rigd_drivers.card.load import load_card
-from rigd_drivers.card.model import Card
+from rigd_drivers.card.model import Card, Step
 from rigd_drivers.card.talk import Seen, Talk
 from rigd_drivers.card.words import Words
 from rigd_drivers.options import Options, read_options, refuse, schema_of
@@ -59,6 +59,12 @@ class CardDevice:
     def card(self) -> Card:
         """The card, as it was read."""
         return self._card
+
+    def framed(self, words: str) -> bytes:
+        """Words as the card frames them, with ``{address}`` and parameters filled in; for trying a device by hand."""
+        if self._card.modbus:
+            raise LocalProtocolError("a register map has no words; write bytes")
+        return self._words.text_request(Step(send=words), self._talk.known())[0]
 
     async def identify(self, line: Line) -> DeviceIdentity:
         """Ask what the card's identity says; a device that tells nothing has the card's names."""

@@ -68,8 +68,9 @@ class Frame:
     """``start`` + length + ``address`` + words + ``text_end`` + checksum + ``end``; each of them may be absent.
 
     ``ends``: any of these ends a frame; with ``keep_end`` it is handed on as the last of the words (prompts that tell a
-    state). ``covers`` says what the checksum sees besides length, address and words: "words" (nothing), "start", "end"
-    (``text_end``) or "both". ``length_adds``: what the length field counts besides the words. ``size``: words of a fixed length.
+    state). ``covers`` says what the checksum sees besides length, address and words: nothing ("words"), "start", "end"
+    (``text_end``) or "both". ``length_adds``: what the length field counts besides the words. ``size``: words of a
+    fixed length.
     """
 
     start: bytes = b""

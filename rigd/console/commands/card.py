@@ -1,20 +1,20 @@
-"""``rigd card`` and ``rigd ports``: connect a device from its manual, with a file instead of a program."""
+"""``rigd card``: connect a device from its manual, with a file instead of a program."""
 
 from __future__ import annotations
 
 import asyncio
-import time
+import sys
 from importlib.resources import files
 from pathlib import Path
 from typing import TYPE_CHECKING
 
 import click
 
+from rigd.console.card_session import Session, Trial
 from rigd.console.output import Output, json_option
 
 if TYPE_CHECKING:
     from rigd.ports.driver import Driver
-    from rigd.runtime.line import Trace
 
 KINDS = ("modbus-pump", "modbus-valve", "modbus-chiller", "modbus-sensor", "text-pump", "text-chiller")
 
@@ -42,105 +42,109 @@ def new(output: Output, kind: str, file: Path) -> int:
 
 @card.command()
 @click.argument("file", type=click.Path(path_type=Path))
+@click.option(
+    "--transcript", type=click.Path(path_type=Path, exists=True), help="Default: beside FILE, if there is one."
+)
 @json_option
 @click.pass_obj
-def check(output: Output, file: Path) -> int:
+def check(output: Output, file: Path, transcript: Path | None) -> int:
     """Check FILE: every reply pattern against its sample, channels, orders, and that it says how it stops.
 
-    Exit 0: right. 2: wrong, with line, key and remedy.
+    A transcript that "rigd card try --save" wrote is held against the card: the same bytes must go out, and the same
+    values come of the replies. Exit 0: right. 1: other bytes or values. 2: wrong, with line, key and remedy.
     """
-    make(file, "")
-    output.document({"card": str(file), "right": True})
-    output.say(f"{file}: right")
-    return 0
+    make(Trial(file, ""))
+    beside = file.with_suffix(".transcript")
+    source = transcript or (beside if beside.exists() else None)
+    found = _differences(file, source) if source is not None else []
+    output.document({"card": str(file), "right": not found, "transcript": str(source or ""), "differences": found})
+    for difference in found:
+        output.people.print(f"{source}: {difference}", markup=False)
+    if not found:
+        output.say(f"{file}: right" + (f", and as in {source}" if source is not None else ""))
+    return 1 if found else 0
+
+
+def _differences(file: Path, source: Path) -> list[str]:
+    from rigd.console.card_session import said
+    from rigd.runtime.transcript import differences, read_transcript
+
+    transcript = read_transcript(source.read_text(encoding="utf-8"))
+    facts = dict(transcript.facts)
+    address = facts.pop("address", "")
+    facts.pop("card", None)
+    driver = make(Trial(file, "", address, parameters=tuple(facts.items())))
+    return asyncio.run(differences(driver, transcript, list(said(file)["channels"])))
 
 
 @card.command("try")
 @click.argument("port")
 @click.argument("file", type=click.Path(path_type=Path))
 @click.option("--address", default="", help="Modbus unit, or address on a shared line.")
-@click.option("--baud", default=9600, show_default=True)
+@click.option(
+    "--parameter", "parameters", multiple=True, type=(str, str), help="A parameter of the card and its value."
+)
+@click.option("--baud", default=0, help="Instead of what the card says.")
 @click.option("--order", "orders", multiple=True, type=(str, float), help="An order and its value; moves the device!")
 @click.option("--save", type=click.Path(path_type=Path), help="Write the transcript there (must not exist).")
+@json_option
 @click.pass_obj
 def try_card(
     output: Output,
     port: str,
     file: Path,
     address: str,
+    parameters: tuple[tuple[str, str], ...],
     baud: int,
     orders: tuple[tuple[str, float], ...],
     save: Path | None,
 ) -> int:
     """Speak with the device at PORT by the card FILE; show all bytes, in hex and text, with times.
 
-    Asks who is there and reads every channel; gives an order only with --order.
+    Asks who is there and reads every channel; gives an order only with --order. On a terminal it then asks what next
+    ("help" tells the words). The transcript is the card's test: rigd card check FILE --transcript SAVED. Exit 0: all
+    was answered; 1: not.
     """
-    driver = make(file, address)
-    heard: list[str] = []
-    start_s = time.monotonic()
+    from rigd.runtime.transcript import Transcript, written
 
-    def trace(sent: bool, data: bytes) -> None:
-        shown = "".join(chr(byte) if 32 <= byte < 127 else "." for byte in data)
-        heard.append(f"{(time.monotonic() - start_s) * 1e3:9.1f} ms {'>' if sent else '<'} {data.hex(' ')}  |{shown}|")
-        output.people.print(heard[-1], markup=False, highlight=False, soft_wrap=True)
-
+    trial = Trial(file, port, address, baud, parameters)
+    driver = make(trial)
+    if save is not None and save.exists():
+        raise click.UsageError(f"{save} exists; choose another name, nothing was overwritten")
+    transcript = Transcript({"card": file.name, "address": address, **dict(parameters)})
+    session = Session(output, trial, driver, transcript)
+    acts = ["identify", "prepare", *(f"{name} {value:g}" for name, value in orders), "poll"]
+    ask = _ask if sys.stdin.isatty() and not output.json and not orders else None
     try:
-        asyncio.run(_speak(output, driver, file, (port, baud), orders, trace))
+        good = asyncio.run(session.run(acts if ask is None else acts[:1], ask))
     finally:
         if save is not None:
-            with save.open("x", encoding="utf-8") as target:
-                target.write("\n".join(heard) + "\n")
-    return 0
+            save.write_text(written(transcript), encoding="utf-8")
+            output.say(f"saved: {save}; hold it against the card with: rigd card check {file} --transcript {save}")
+    output.document({"answered": good, "acts": session.readings})
+    return 0 if good else 1
 
 
-def make(file: Path, address: str) -> Driver:
+def _ask() -> str:
+    try:
+        return input("card> ")
+    except EOFError:
+        return "quit"
+
+
+def make(trial: Trial) -> Driver:
     """The driver of a card; ``ConfigError`` tells what is wrong in it."""
     from rigd.adapters.plugins import driver_family
     from rigd.model.devices import DeviceSpec
 
-    options = {"card": str(file)}
-    return driver_family("card").make(DeviceSpec("card", "card", "", "try", address, "", (), options=options))
+    parameters = {name: _number(value) for name, value in trial.parameters}
+    options = {"card": str(trial.file), "parameters": parameters}
+    spec = DeviceSpec("card", "card", "", "try", trial.address, "", (), options=options, facts={"retries": 0})
+    return driver_family("card").make(spec)
 
 
-async def _speak(
-    output: Output,
-    driver: Driver,
-    file: Path,
-    port: tuple[str, int],
-    orders: tuple[tuple[str, float], ...],
-    trace: Trace,
-) -> None:
-    import tomllib
-
-    from rigd.adapters.open_link import open_link
-    from rigd.model.devices import LinkSpec
-    from rigd.model.orders import Action, Authority, Order
-    from rigd.runtime.line import LinkLine
-
-    channels = tuple(tomllib.loads(file.read_bytes().decode())["channels"])  # noqa: ASYNC240 - nothing else runs yet
-    link = await open_link(LinkSpec("try", port[0], baud=port[1]))
+def _number(text: str) -> float | str:
     try:
-        line = LinkLine(link, name=port[0], timeout_s=1.0, trace=trace)
-        output.say(str(await driver.identify(line)))
-        for number, (name, value) in enumerate(orders):
-            await driver.execute(line, Order(number, "card", Action(name), value, Authority.OPERATOR, "try", 0))
-        for reading in await driver.poll(line, channels):
-            output.say(f"{reading.channel} = {reading.value:g} {reading.fault}")
-    finally:
-        await link.close()
-
-
-@click.command()
-@json_option
-@click.pass_obj
-def ports(output: Output) -> None:
-    """List serial ports with names that stay when plugs are changed; asks no device anything."""
-    from rigd.adapters.port_list import serial_ports
-
-    found = serial_ports()
-    output.document({"ports": found})
-    for one in found:
-        output.say(f"{one['port']}  ({one['device']}, {one['what']})")
-    if not found:
-        output.say("no serial ports found; network devices are socket://host:port")
+        return float(text)
+    except ValueError:
+        return text
