@@ -14,6 +14,8 @@ from pathlib import Path
 
 import pytest
 
+from rigd.runtime.replay import replay
+
 ROOT = Path(__file__).resolve().parents[2]
 
 
@@ -36,6 +38,10 @@ def test_demo_is_done_and_conversion_falls_as_flow_rises(tmp_path):
     assert f"{100 * conversions[0]:.1f}" in page
     assert "report: " in done.stderr
     assert "Traceback" not in done.stderr
+    found = replay(Path(facts["folder"]))
+    assert found.same
+    assert found.scans > 1000
+    assert found.recorded.meta["end"].startswith("The recipe was carried out to its end")
 
 
 def living_with(word: str) -> list[str]:

@@ -18,6 +18,9 @@ from rigd.adapters.journal_reader import JournalReader
 from rigd.adapters.places import read_json
 from rigd.adapters.sim_client import ask
 from rigd.model.events import EventKind
+from rigd.report.collect import read_run
+from rigd.report.ending import GUARDED
+from rigd.runtime.replay import replay
 
 pytestmark = [pytest.mark.slow, pytest.mark.timeout(180)]
 
@@ -126,6 +129,26 @@ def test_pumps_stop_within_2_s_when_control_is_killed_or_hangs(bench: Bench, num
         assert sum(1 for _ in journal.scans()) > 100
         assert "outcome" not in journal.meta
     assert read_json(bench.folder() / "guard.json")["devices"]["pump-a"]["confirmed"]
+    told = read_run(bench.folder())
+    assert told.outcome == GUARDED
+    assert "The guard took over at 20" in told.outcome_text
+    assert "pump-a" in told.outcome_text
+    found = replay(bench.folder())
+    assert found.same
+    assert found.scans > 100
+    assert any("never closed" in note for note in found.notes)
+
+
+def test_a_live_run_that_trips_is_decided_again_exactly(bench: Bench) -> None:
+    run, _ = bench.running()
+    ask(bench.meeting, {"do": "fault", "kind": "block", "target": "L-4", "magnitude": 1.0, "after_s": 0.0})
+    assert run.wait(60) == 1
+    found = replay(bench.folder())
+    assert found.same
+    assert found.recorded.meta["outcome"] == "tripped"
+    assert found.recorded.meta["end"].startswith("Tripped by PRESSURE-HIGH")
+    with JournalReader(bench.folder()) as journal:
+        assert journal.events(EventKind.TRIP)[0].subject == "PRESSURE-HIGH"
 
 
 def test_pumps_stop_when_the_guard_is_killed(bench: Bench) -> None:
