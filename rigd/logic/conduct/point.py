@@ -15,7 +15,7 @@ from rigd.logic.conduct.conditioning import NEVER_NS, band_since_ns
 from rigd.logic.conduct.means import Means, merged
 from rigd.logic.conduct.point_events import abandoned, collected, interrupted, settled_event, started, unsettled_event
 from rigd.logic.conduct.point_memory import Memory
-from rigd.logic.conduct.point_needs import gated, settle_rule, signal_s
+from rigd.logic.conduct.point_needs import gate_s, gated, settle_rule
 from rigd.logic.conduct.point_supply import liquid_for_fraction, point_wants, quiet_since_change, topped
 from rigd.logic.conduct.switchover import label
 from rigd.logic.conduct.wants import Move, PointResult, Prompt, Scene
@@ -123,7 +123,7 @@ def _settle(scene: Scene, memory: Memory, point: Point) -> Move[Memory]:
     rule, path = scene.layout.recipe.settle, scene.layout.path
     passed = turnovers(path, scene.since_mL(memory.marks or {}))
     memory = _judged(scene, memory, point, passed)
-    steady = not gated(scene.layout, scene.spec.reagent) or is_steady(memory.settler, settle_rule(scene.layout, point))
+    steady = _is_steady(scene, memory, point, passed)
     ready = liquid_for_fraction(scene, point) and quiet_since_change(scene)
     events: tuple[Event, ...] = ()
     if passed >= rule.volumes and ready:
@@ -136,10 +136,27 @@ def _settle(scene: Scene, memory: Memory, point: Point) -> Move[Memory]:
                 return _given_up(scene, memory, point, events)
             memory = _settled(scene, memory, False)
     wants = point_wants(scene, memory, point, waste)
-    due_ns = scene.now_ns + _ns(scene, point, rule.volumes - passed) if passed < rule.volumes else None
+    ahead = [volumes - passed for volumes in (rule.volumes, _gate_volumes(scene, point)) if volumes > passed]
+    due_ns = scene.now_ns + _ns(scene, point, min(ahead)) if ahead else None
     text = f"settling: {passed:.1f} of {rule.volumes:g} volumes, signal {memory.settler.verdict}"
     left_s = _left_s(scene, memory, point, passed)
     return Move(memory, wants, text, events, due_ns=due_ns, left_s=left_s, calm=memory.step == "settle")
+
+
+def _is_steady(scene: Scene, memory: Memory, point: Point, passed: float) -> bool:
+    """True when the signal is shown to be quiet; in a plan, when it could be at the earliest."""
+    if not gated(scene.layout, scene.spec.reagent):
+        return True
+    if scene.layout.foreseen:
+        return passed >= _gate_volumes(scene, point)
+    return is_steady(memory.settler, settle_rule(scene.layout, point))
+
+
+def _gate_volumes(scene: Scene, point: Point) -> float:
+    """In a plan, the volumes after which the signal gate opens; 0 in a run, where the signal says it."""
+    if not scene.layout.foreseen or not gated(scene.layout, scene.spec.reagent):
+        return 0.0
+    return gate_s(scene.layout, point) / scene.layout.path.residence_s(point.flows_mL_min)
 
 
 def _anew(scene: Scene, memory: Memory) -> Memory:
@@ -262,7 +279,7 @@ def _left_s(scene: Scene, memory: Memory, point: Point, passed: float) -> float:
     by_volume_s = max(0.0, layout.recipe.settle.volumes - passed) * residence_s
     by_signal_s = 0.0
     if gated(scene.layout, scene.spec.reagent):
-        by_signal_s = max(0.0, residence_s + signal_s(layout, point) - passed * residence_s)
+        by_signal_s = max(0.0, gate_s(layout, point) - passed * residence_s)
     after_s = 60.0 * (layout.dead_mL + layout.recipe.collect.volume_mL) / point.total_mL_min
     return max(by_volume_s, by_signal_s) + after_s
 

@@ -29,7 +29,10 @@ def least_mL(layout: Layout, point: Point, pump: str, reagent: bool) -> float:
 
 
 def point_mL(layout: Layout, point: Point, pump: str, reagent: bool) -> float:
-    """What is kept ready for a point: with patience for a signal gate that says no once or twice."""
+    """What is kept ready for a point: with patience for a signal gate that says no once or twice.
+
+    Not for as long as the gate may take: what is left over keeps a syringe from being free for a flush.
+    """
     again_s = 2.0 * layout.recipe.settle.persistence * _judged_every_s(layout, point) if gated(layout, reagent) else 0.0
     patience_s = max(0.1 * settle_s(layout, point, reagent), again_s)
     return least_mL(layout, point, pump, reagent) + point.flows_mL_min.get(pump, 0.0) * patience_s / 60.0
@@ -71,6 +74,12 @@ def signal_s(layout: Layout, point: Point) -> float:
     """Time that the signal gate takes at least, counted from the first exchange of the trunk."""
     rule = settle_rule(layout, point)
     return (rule.window + rule.persistence - 1) * _judged_every_s(layout, point)
+
+
+def gate_s(layout: Layout, point: Point) -> float:
+    """When the signal gate is likely to open, from the right streams on: a window without a trend, bed warm."""
+    warming_s = layout.warming_s.get(point.id, 0.0)
+    return layout.path.residence_s(point.flows_mL_min) + signal_s(layout, point) + warming_s
 
 
 def _judged_every_s(layout: Layout, point: Point) -> float:

@@ -10,6 +10,7 @@ from __future__ import annotations
 from dataclasses import replace
 
 from rigd.logic.conduct.charging import lead_mL
+from rigd.logic.conduct.conditioning import NEVER_NS
 from rigd.logic.conduct.point_memory import Memory
 from rigd.logic.conduct.point_needs import another_try_mL, collect_mL, least_mL, point_mL, settle_mL
 from rigd.logic.conduct.switchover import label
@@ -86,6 +87,8 @@ def _dual_want(scene: Scene, memory: Memory, point: Point, want: Want, name: str
         return replace(want, need_mL=min(want.need_mL, level_mL))
     room_mL = play.pump.stroke_mL - play.reserve_mL(want.flow_mL_min)
     here_mL = want.need_mL
+    if memory.step == "set" and memory.in_band_ns == NEVER_NS:
+        return want  # waiting for the bath: nobody knows for how long, so no syringe is kept for the end
     if here_mL > room_mL and _least_left_mL(scene, memory, point, name) <= room_mL:
         here_mL = room_mL  # one syringe will do, with less patience
     if here_mL > room_mL:  # takes both syringes; neither is free for a flush meanwhile
