@@ -35,3 +35,20 @@ class AlertLog:
                 file.write(json.dumps(line, ensure_ascii=False) + "\n")
         except OSError as error:
             log.warning("%s cannot be written: %s", self._path, error.strerror)
+
+
+def attempts_of(folder: Path) -> tuple[dict[str, str], ...]:
+    """Every attempt of a run, oldest first; none without a log. A line that is torn or foreign is left out."""
+    try:
+        lines = (folder / NAME).read_text(encoding="utf-8", errors="replace").splitlines()
+    except OSError:
+        return ()
+    found = []
+    for line in lines:
+        try:
+            told = json.loads(line)
+        except ValueError:
+            continue
+        if isinstance(told, dict) and isinstance(told.get("outcome"), str):
+            found.append({str(key): str(value) for key, value in told.items()})
+    return tuple(found)

@@ -27,7 +27,9 @@ TOLD = ("new", "again")
 @dataclass(frozen=True, slots=True)
 class AlarmLoad:
     """What a run told a person. ``busiest`` is the largest number in ten minutes; ``flood_s`` the time in flood; the
-    four lists hold alarm ids. ``hidden`` is how often an alarm was shelved or taken out of service."""
+    four lists hold alarm ids. ``hidden`` is how often an alarm was shelved or taken out of service, ``unheard`` how
+    often one came while it was hidden. ``nuisance`` are those that chatter, are fleeting or stale; ``share_of_ten`` is
+    what the ten most frequent alarms are of all that was told (targets: none, and at most 5 %)."""
 
     told: int
     per_hour: float
@@ -40,6 +42,9 @@ class AlarmLoad:
     stale: tuple[str, ...]
     standing: tuple[str, ...]
     hidden: int
+    unheard: int = 0
+    nuisance: tuple[str, ...] = ()
+    share_of_ten: float = 0.0
 
     @property
     def words(self) -> str:
@@ -63,6 +68,9 @@ def alarm_load(events: Sequence[Event], duration_s: float) -> AlarmLoad:
     counts = Counter(event.subject for event in told)
     priorities = Counter(int(event.fields.get("priority", 4)) for event in told)
     spans = list(_spans(found, duration_s))
+    chattering = _chattering(found)
+    fleeting = _once(span.alarm for span in spans if span.lasted_s <= FLEETING_S and span.ended and not span.seen)
+    stale = _once(span.alarm for span in spans if span.lasted_s > STALE_S)
     return AlarmLoad(
         told=len(told),
         per_hour=3600.0 * len(told) / duration_s if duration_s else 0.0,
@@ -70,11 +78,14 @@ def alarm_load(events: Sequence[Event], duration_s: float) -> AlarmLoad:
         flood_s=_flood_s(times_s, duration_s),
         by_priority={name: priorities[number] for number, name in PRIORITIES.items() if priorities[number]},
         most_frequent=tuple(counts.most_common(10)),
-        chattering=_chattering(found),
-        fleeting=_once(span.alarm for span in spans if span.lasted_s <= FLEETING_S and span.ended and not span.seen),
-        stale=_once(span.alarm for span in spans if span.lasted_s > STALE_S),
+        chattering=chattering,
+        fleeting=fleeting,
+        stale=stale,
         standing=_once(span.alarm for span in spans if not span.ended),
         hidden=sum(event.fields.get("event") in ("SHELVE", "REMOVE") for event in found),
+        unheard=sum(event.fields.get("event") == "COND_ON" and "hidden" in event.fields for event in found),
+        nuisance=_once((*chattering, *fleeting, *stale)),
+        share_of_ten=sum(number for _, number in counts.most_common(10)) / len(told) if told else 0.0,
     )
 
 

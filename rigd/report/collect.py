@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
+from bisect import bisect_left
 from collections.abc import Sequence
 from pathlib import Path
 
 import numpy as np
 
+from rigd.adapters.alert_log import attempts_of
 from rigd.adapters.journal_reader import JournalReader, Series, TagInfo
 from rigd.model.errors import JournalError
 from rigd.model.events import Event, EventKind
@@ -50,9 +52,18 @@ def read_run(folder: Path, rig: RigDefinition | None = None, recipe: Recipe | No
         used_mL=used_mL(rig, traces) if rig else {},
         facts=meta,
         ages_ms=ages_ms,
+        walls=_walls(clock, events),
+        alerts=attempts_of(folder),
         rig=rig,
         recipe=recipe,
     )
+
+
+def _walls(clock: Sequence[tuple[int, str]], events: Sequence[Event]) -> dict[int, str]:
+    """UTC of the scan in which each change of an alarm was found."""
+    times = [now_ns for now_ns, _ in clock]
+    moments = {event.t_ns for event in events if event.kind is EventKind.ALARM}
+    return {t_ns: clock[bisect_left(times, t_ns)][1] for t_ns in moments if times and t_ns <= times[-1]}
 
 
 def _pace(folder: Path, told: str) -> float:

@@ -85,7 +85,8 @@ class PointRow:
 @dataclass(frozen=True, slots=True, eq=False)
 class RunData:
     """Everything that a report is made of. ``rig`` and ``recipe`` are ``None`` when the journal's own files can no
-    longer be read; the report then says so and leaves out what needs them."""
+    longer be read; the report then says so and leaves out what needs them. ``ages_ms``: how old the samples of a tag
+    were when judged; ``walls``: UTC of the process times of alarms; ``alerts``: attempts to tell a person."""
 
     id: str
     folder: str
@@ -105,6 +106,8 @@ class RunData:
     used_mL: Mapping[str, float]
     facts: Mapping[str, str] = field(default_factory=dict)
     ages_ms: Mapping[str, Mapping[int, int]] = field(default_factory=dict)
+    walls: Mapping[int, str] = field(default_factory=dict)
+    alerts: tuple[Mapping[str, str], ...] = ()
     rig: RigDefinition | None = None
     recipe: Recipe | None = None
 

@@ -6,6 +6,7 @@ from dataclasses import asdict
 
 from rigd.model.events import Event, EventKind
 from rigd.report.alarm_load import alarm_load
+from rigd.report.alarm_records import record_facts
 from rigd.report.data import CHAIN_HEAD, PointRow, RunData
 from rigd.report.kinetic_fit import kinetics_of
 from rigd.report.response_rows import age_rows, trip_rows
@@ -40,6 +41,7 @@ def report_facts(run: RunData) -> dict[str, object]:
         "trips": trip_facts(run.events),
         "alarms": alarm_facts(run.events),
         "alarm_load": asdict(alarm_load(run.events, run.duration_s)),
+        "alarm_records": record_facts(run),
         "response": {
             "sample_age": [asdict(row) for row in age_rows(run)],
             "trips": [asdict(row) for row in trip_rows(run)],

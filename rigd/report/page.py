@@ -17,6 +17,7 @@ from rigd.model.events import Event, EventKind
 from rigd.model.protection import ConditionKind
 from rigd.model.rig import TagKind
 from rigd.report.alarm_load import alarm_load
+from rigd.report.alarm_records import alarm_records, record_facts
 from rigd.report.cause_effect import LEGEND, matrix
 from rigd.report.data import PointRow, RunData, Trace
 from rigd.report.ending import RUNNING, UNFINISHED
@@ -86,6 +87,8 @@ def _context(run: RunData) -> dict[str, Any]:
         "happened": [_event(event) for event in of_kind(run, *_TOLD)],
         "all_events": [_event(event) for event in run.events],
         "alarm_load": alarm_load(run.events, run.duration_s),
+        "alarm_records": alarm_records(run),
+        "attempts": record_facts(run)["attempts"],
         "ages": age_rows(run),
         "timed": trip_rows(run),
         "matrix": matrix(run.rig) if run.rig else None,

@@ -72,3 +72,12 @@ def test_a_flood_begins_above_ten_and_ends_below_five_in_ten_minutes() -> None:
 
 def test_what_was_hidden_is_counted() -> None:
     assert alarm_load(happened((1, "A", "SHELVE"), (2, "B", "REMOVE"), (3, "A", "UNSHELVE")), 10.0).hidden == 2
+
+
+def test_a_nuisance_chatters_is_fleeting_or_stale_and_ten_alarms_have_their_share() -> None:
+    events = happened(*((float(600 * n), f"A{n:02}", "COND_ON") for n in range(20)), *[(20_000.0, "A00", "COND_ON")])
+    load = alarm_load(events, 30_000.0)
+    assert load.share_of_ten == pytest.approx(11 / 21)
+    assert load.nuisance == ()
+    short = alarm_load(happened((10.0, "A", "COND_ON"), (12.0, "A", "COND_OFF")), 100.0)
+    assert short.nuisance == ("A",)
