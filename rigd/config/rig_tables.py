@@ -1,5 +1,6 @@
 """The parts of a rig file: liquids, vessels, valves, pumps, tees, columns, cells, regulators, chillers, lines."""
 
+import math
 from typing import Annotated, Literal
 
 from pydantic import Field
@@ -113,38 +114,60 @@ class ValveTable(Table):
         return Valve(self.id, self.device, self.positions, self.rest, self.travel_time, self.rating)
 
 
+VIRTUAL_BORE_MM = 20.0
+
+
 class PumpTable(Table):
-    """A syringe pump with one or two syringes. ``rating`` is its weakest wetted part."""
+    """A pump with one or two syringes, or with none (``syringes = 0``: piston, gear and other pumps that draw all the
+    time). ``rating`` is its weakest wetted part.
+
+    A pump without syringes needs no ``bore``, ``stroke_volume`` and ``refill_rate``: it is planned and rehearsed as one
+    that holds five minutes of its largest rate in each of two and draws twenty times as fast. ``pressure_limit`` says
+    at which pressure it gives up, where no ``force_limit`` is stated.
+    """
 
     id: Id
     device: Id
-    syringes: Annotated[int, Field(strict=True, ge=1, le=2)]
-    bore: Length
-    stroke_volume: Volume
+    syringes: Annotated[int, Field(strict=True, ge=0, le=2)]
+    bore: Length | None = None
+    stroke_volume: Volume | None = None
     dead_volume: VolumeOrNone = 0.05
     rate_min: Flow
     rate_max: Flow
-    refill_rate: Flow
+    refill_rate: Flow | None = None
     rating: Pressure
     compliance: Annotated[float, Quantity("compliance", "positive")] = 0.01
     screw_pitch: Length = 1.0
     force_limit: Annotated[float, Quantity("force", "not negative")] = 0.0
+    pressure_limit: Pressure | None = None
+
+    @property
+    def missing(self) -> tuple[str, ...]:
+        """Keys that a pump with syringes needs and does not have."""
+        return tuple(
+            key for key in ("bore", "stroke_volume", "refill_rate") if self.syringes and not getattr(self, key)
+        )
 
     def value(self) -> Pump:
+        bore_mm = self.bore or VIRTUAL_BORE_MM
+        force_N = self.force_limit
+        if self.pressure_limit is not None and not force_N:
+            force_N = self.pressure_limit / 10.0 * math.pi / 4.0 * bore_mm**2  # 1 bar is 0.1 N/mm2
         return Pump(
             id=self.id,
             device=self.device,
-            syringes=self.syringes,
-            bore_mm=self.bore,
-            stroke_mL=self.stroke_volume,
+            syringes=self.syringes or 2,
+            bore_mm=bore_mm,
+            stroke_mL=self.stroke_volume or max(10.0, 5.0 * self.rate_max),
             rate_min_mL_min=self.rate_min,
             rate_max_mL_min=self.rate_max,
-            refill_rate_mL_min=self.refill_rate,
+            refill_rate_mL_min=self.refill_rate or 20.0 * self.rate_max,
             rating_bar=self.rating,
             dead_mL=self.dead_volume,
             compliance_mL_bar=self.compliance,
             screw_pitch_mm=self.screw_pitch,
-            force_limit_N=self.force_limit,
+            force_limit_N=force_N,
+            continuous=self.syringes == 0,
         )
 
 

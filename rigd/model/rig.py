@@ -80,7 +80,8 @@ class Pump:
 
     ``dead_mL`` stays behind at the end of a stroke. ``compliance_mL_bar`` is syringe, seal and fittings.
     ``rating_bar`` is the weakest wetted part of the pump; ``screw_pitch_mm`` sets the period of its ripple.
-    ``force_limit_N`` is the push at which its motor gives up (0: not stated).
+    ``force_limit_N`` is the push at which its motor gives up (0: not stated). ``continuous``: it has no syringes and
+    draws all the time; what is said of syringes is then only how it is planned.
     """
 
     id: str
@@ -96,6 +97,7 @@ class Pump:
     compliance_mL_bar: float = 0.01
     force_limit_N: float = 0.0
     screw_pitch_mm: float = 1.0
+    continuous: bool = False
 
     @property
     def stall_bar(self) -> float:

@@ -5,7 +5,8 @@ from __future__ import annotations
 from pathlib import Path
 
 import pytest
-from fakes.config_files import CONFIGS, RIG, edited, within, without, write
+from fakes.card_rigs import without_syringes
+from fakes.config_files import CHEMISTRY, CONFIGS, RECIPE, RIG, edited, within, without, write
 
 from rigd.config import load_pair, load_rig
 from rigd.config.pressure_side import pressure_sides
@@ -87,8 +88,8 @@ def test_drivers_get_the_facts_about_their_unit(rig: RigDefinition) -> None:
     facts = {device.id: device.facts for device in rig.devices}
 
     assert facts["pump-a"] == {
-        "syringes": 2, "bore_mm": 10.3, "stroke_mL": 5.0, "dead_mL": 0.02, "rate_min_mL_min": 0.005,
-        "rate_max_mL_min": 5.0, "refill_rate_mL_min": 8.0, "retries": 2,
+        "syringes": 2, "bore_mm": 10.3, "stroke_mL": 5.0, "dead_mL": 0.02, "continuous": False,
+        "rate_min_mL_min": 0.005, "rate_max_mL_min": 5.0, "refill_rate_mL_min": 8.0, "retries": 2,
     }  # fmt: skip
     assert facts["valve-c"] == {
         "positions": ("waste", "collect", "shut"), "rest": "waste", "travel_s": 1.0, "retries": 2,
@@ -259,3 +260,11 @@ def test_the_recipe_as_written() -> None:
     assert recipe.permit.end_utc == "2035-01-01T06:00:00Z"
     assert [item.id for item in recipe.checklist] == ["bed", "outlet", "vent"]
     assert not recipe.solvent_only
+
+
+def test_a_pump_without_syringes_needs_none_of_their_sizes(tmp_path: Path) -> None:
+    path, _ = write(tmp_path, without_syringes(RIG), RECIPE, CHEMISTRY)
+    pump = load_rig(path).pumps[0]
+    assert pump.continuous
+    assert (pump.syringes, pump.stroke_mL) == (2, 25.0)  # as it is planned: five minutes of its largest rate
+    assert pump.stall_bar == pytest.approx(15.0)

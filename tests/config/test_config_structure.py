@@ -64,7 +64,7 @@ ROWS: tuple[tuple[str, str, tuple[Edit, ...], tuple[str, ...]], ...] = (
         "key-missing",
         "pumps[PU-A].bore",
         within("PU-A", 'bore = "10.30 mm"\n', ""),
-        ("'bore' is missing", "a syringe pump"),
+        ("'bore' is missing", "a pump with syringes"),
     ),
     (
         "key-missing",

@@ -88,6 +88,16 @@ def small_rig() -> str:
     return text
 
 
+def without_syringes(text: str) -> str:
+    """The same rig with pumps that draw all the time."""
+    blocks = re.split(r"(?m)^(?=\[)", text)
+    for at, block in enumerate(blocks):
+        if block.startswith("[[pumps]]"):
+            block = re.sub(r"(?m)^(?:bore|stroke_volume|refill_rate|dead_volume|force_limit) = .*\n", "", block)
+            blocks[at] = block.replace("syringes = 2", 'syringes = 0\npressure_limit = "15 bar"')
+    return "".join(blocks)
+
+
 def _written(folder: Path, text: str) -> tuple[Path, Path]:
     shutil.copytree(CONFIGS / "chemistry", folder / "chemistry", dirs_exist_ok=True)
     rig, recipe = folder / "rigs/rig.toml", folder / "recipe.toml"
@@ -106,7 +116,7 @@ def _device(name: str, link: str, card: str, address: str, more: str = "") -> st
 def modbus_rig(folder: Path, port: int) -> tuple[Path, Path]:
     """Rig and recipe before ``fakes/modbus_rig.py``: the card templates, continuous pumps."""
     (folder / "rigs").mkdir(exist_ok=True)
-    text = small_rig() + f'[[links]]\nid = "bench"\nport = "socket://127.0.0.1:{port}"\n'
+    text = without_syringes(small_rig()) + f'[[links]]\nid = "bench"\nport = "socket://127.0.0.1:{port}"\n'
     for kind in ("pump", "valve", "chiller", "sensor"):
         name = f"modbus-{kind}.toml"
         card = files("rigd_drivers.card").joinpath("templates", name).read_text(encoding="utf-8")

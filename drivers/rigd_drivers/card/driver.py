@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import asyncio
+import math
 from collections.abc import Mapping, Sequence
 from pathlib import Path
 
@@ -52,7 +53,7 @@ class CardDevice:
         self._words = Words(card, spec.address, options.parameters)
         self._talk = Talk(card, spec.id, self._words, retries if isinstance(retries, int) else 2)
         self._channels = Channels(card)
-        self._account = Account(spec.facts.get("syringes") == 1) if card.continuous else None
+        self._account = _account(spec) if card.continuous else None
         self._restart_seen = False
 
     @property
@@ -178,9 +179,18 @@ class CardDevice:
         return found
 
 
+def _account(spec: DeviceSpec) -> Account:
+    stroke = spec.facts.get("stroke_mL")
+    return Account(spec.facts.get("syringes") == 1, stroke if isinstance(stroke, float) else math.inf)
+
+
 def _check_spec(spec: DeviceSpec, card: Card, options: CardOptions) -> None:
     if card.modbus and spec.address and not (spec.address.isdecimal() and 0 <= int(spec.address) <= 255):
         raise refuse(spec, "address-wrong", "address", f"found {spec.address!r}", "a Modbus unit, '0' to '255'")
+    if spec.facts.get("continuous", card.continuous) != card.continuous and not card.continuous:
+        message = "the rig file says syringes = 0, the card knows levels of syringes"
+        remedy = "write continuous = true in the card, without level, standby and fill; or give the pump its syringes"
+        raise refuse(spec, "continuous-differs", "options.card", message, remedy)
     for name in options.parameters:
         if name not in card.parameters:
             known = ", ".join(card.parameters) or "none"

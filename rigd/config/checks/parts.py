@@ -65,6 +65,11 @@ def _valves(context: RigContext) -> None:
 
 
 def _pumps(context: RigContext) -> None:
+    for table in context.file.pumps:
+        for key in table.missing:
+            remedy = f"add {key}, or write syringes = 0 for a pump that has none"
+            message = f"{key!r} is missing: a pump with syringes needs it"
+            context.found.error("key-missing", context.at("pumps", table.id, key), message, remedy)
     share = context.rig.flush_mL_min / max(len(context.rig.pumps), 1)
     for pump in context.rig.pumps:
         if pump.rate_min_mL_min >= pump.rate_max_mL_min:
