@@ -4,15 +4,22 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import asdict, dataclass, replace
+from datetime import UTC, datetime
 from pathlib import Path
 
 from rigd.adapters.plugins import driver_family, property_library
+from rigd.adapters.rig_records import read_records
+from rigd.config.calibrating import facts as calibration_facts
+from rigd.config.calibrating import in_force
+from rigd.config.calibrating import problems as calibration_problems
 from rigd.config.load import load_pair
 from rigd.config.places import placed
 from rigd.console.trouble import problem_facts
-from rigd.logic.planning import Plan, plan
+from rigd.logic.foresight import foreseen_plan
+from rigd.logic.planning import Plan
 from rigd.logic.program import compile_program
 from rigd.logic.response import Response, largest_flow_mL_min, responses
+from rigd.model.calibration import Calibrated
 from rigd.model.errors import ConfigError
 from rigd.model.problems import Problem, Severity
 from rigd.model.recipe import Recipe
@@ -32,6 +39,7 @@ class Checked:
     responses: tuple[Response, ...]
     flow_max_mL_min: float
     liquids: tuple[PropertySet, ...] = ()
+    calibrations: tuple[Calibrated, ...] = ()
 
     @property
     def fit(self) -> bool:
@@ -49,6 +57,7 @@ class Checked:
             **(plan_facts(self.rig, self.plan) if self.plan else {}),
             "properties": [asdict(one) for one in self.liquids],
             "interlocks": [response_facts(response) for response in self.responses],
+            "calibrations": calibration_facts(self.calibrations, datetime.now(UTC)),
             "cause_effect": cause_effect_facts(self.rig),
         }
 
@@ -59,14 +68,27 @@ def check_files(rig_path: Path, recipe_path: Path | None) -> Checked:
     for device in pair.rig.devices:
         driver_family(device.driver).make(device)
     found = responses(pair.rig, pair.recipe)
-    planned = plan(compile_program(pair.rig, pair.recipe)) if pair.recipe else None
+    planned = foreseen_plan(compile_program(pair.rig, pair.recipe)) if pair.recipe else None
     severity = Severity.ERROR if pair.recipe else Severity.WARNING
     computed = [*(planned.problems if planned else ())]
     computed += [_too_slow(response, severity) for response in found if not response.fit]
     problems = [*pair.warnings, *placed(computed, rig_path, recipe_path)]
     flow_mL_min = largest_flow_mL_min(pair.rig, pair.recipe)
     sets, more = _properties(pair.rig, str(rig_path))
-    return Checked(pair.rig, pair.recipe, planned, (*problems, *more), found, flow_mL_min, sets)
+    calibrated = in_force(pair.rig, read_records(rig_path))
+    more = (*more, *_calibration_problems(pair.rig, calibrated, planned))
+    return Checked(pair.rig, pair.recipe, planned, (*problems, *more), found, flow_mL_min, sets, calibrated)
+
+
+def _calibration_problems(rig: RigDefinition, found: tuple[Calibrated, ...], planned: Plan | None) -> list[Problem]:
+    """Overdue, or a planned flow out of reach of a pump that gives less than it is told."""
+    flows = {
+        pump.id: max((phase.flows_mL_min.get(pump.id, 0.0) for phase in planned.phases), default=0.0)
+        if planned
+        else 0.0
+        for pump in rig.pumps
+    }
+    return calibration_problems(found, datetime.now(UTC), flows, {pump.id: pump.rate_max_mL_min for pump in rig.pumps})
 
 
 def _properties(rig: RigDefinition, path: str) -> tuple[tuple[PropertySet, ...], tuple[Problem, ...]]:

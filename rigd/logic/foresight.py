@@ -10,17 +10,21 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass, replace
 
-from rigd.logic import arbitration, conduct
+from rigd.logic import arbitration, conduct, planning
 from rigd.logic.arbitration import Memory
 from rigd.logic.conduct import run_states
 from rigd.logic.conduct.campaign import PhaseKind, PhaseSpec
+from rigd.logic.conduct.layout import Layout, make_layout
 from rigd.logic.conduct.state import ConductState
 from rigd.logic.conduct.wants import PointResult
 from rigd.logic.ideal_rig import IdealRig
+from rigd.logic.plan_problems import find_problems
+from rigd.logic.planning import PhasePlan, Plan
 from rigd.logic.program import SECOND_NS, Program
 from rigd.logic.view import Verdict, View
 from rigd.model.devices import DeviceStatus, LinkState
 from rigd.model.orders import Order, Outcome, Request, Verb
+from rigd.model.problems import Problem
 from rigd.model.samples import Sample
 
 ANSWER_NS = 50_000_000
@@ -57,6 +61,44 @@ class Foresight:
     collected_mL: Mapping[str, float]
     points: tuple[PointResult, ...]
     waits_for: str = ""
+
+
+def foreseen_plan(program: Program) -> Plan:
+    """The plan with the times and volumes of the walk, and what would stop it half-way among its problems."""
+    roughly, found = planning.plan(program), foresee(program)
+    phases = tuple(map(_phase_plan, roughly.phases, found.stretches))
+    layout = make_layout(program)
+    collected_mL = sum(point.collected_mL for point in found.points)
+    waste_mL = max(0.0, sum(found.used_mL.values()) - collected_mL)
+    problems = (*_halted(layout, found), *find_problems(layout, found.used_mL, collected_mL, waste_mL))
+    return Plan(
+        phases=(*phases, *roughly.phases[len(phases) :]),
+        duration_s=found.duration_s,
+        used_mL=found.used_mL,
+        refills=sum(phase.refills for phase in phases),
+        collected_mL=collected_mL,
+        waste_mL=waste_mL,
+        problems=problems,
+    )
+
+
+def _phase_plan(phase: PhasePlan, found: Stretch) -> PhasePlan:
+    return replace(
+        phase,
+        start_s=found.start_s,
+        duration_s=found.duration_s,
+        volumes_mL=found.delivered_mL,
+        drawn_mL={liquid: mL for liquid, mL in found.drawn_mL.items() if mL > 0.0005},
+        refills=found.fills,
+    )
+
+
+def _halted(layout: Layout, found: Foresight) -> tuple[Problem, ...]:
+    if not found.waits_for:
+        return ()
+    label = found.stretches[-1].label if found.stretches else layout.recipe.title
+    text = f"{label}: the run would hold and wait for a person: {found.waits_for}"
+    return (Problem("would-hold", text, "change the recipe or the rig file so that this cannot happen"),)
 
 
 def foresee(program: Program) -> Foresight:

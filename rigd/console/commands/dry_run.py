@@ -45,7 +45,7 @@ def dry_run(
     from rigd.app import dry_run as rehearse
     from rigd.console.rehearsal import dry_facts, longest_ns, planned_s, rehearsed, show_progress, vessels_mL
     from rigd.console.timeline import rehearsal_view
-    from rigd.logic.planning import plan
+    from rigd.logic.foresight import foreseen_plan
     from rigd.report.foreseen import foreseen
     from rigd.report.summary import summary
     from rigd.runtime.dry import DryOptions
@@ -61,7 +61,7 @@ def dry_run(
         data = rehearsed(done, journal)
     if out is None:
         data = replace(data, id="dry run", folder="")
-    planned = plan(done.program)
+    planned = foreseen_plan(done.program)
     wrong = foreseen(data, planned.problems)
     output.document({**dry_facts(done, data, seed or 0, wall_s), "foreseen": wrong})
     output.say(summary(data))
