@@ -7,7 +7,7 @@ BIN := $(VENV)/bin
 READY := $(VENV)/.ready
 TESTS ?= tests
 
-.PHONY: demo test test-slow lint bench lock clean
+.PHONY: demo test test-slow lint bench bench-readme lock clean
 
 demo: $(READY)
 	$(BIN)/rigd demo
@@ -28,6 +28,10 @@ lint: $(READY)
 
 bench: $(READY)
 	$(BIN)/python tests/bench/run.py
+
+# The table and the plot of README.md, from the last `make bench`.
+bench-readme: $(READY)
+	$(BIN)/python tests/bench/readme_table.py bench.json
 
 .PHONY: tools
 tools:

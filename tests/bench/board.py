@@ -13,8 +13,10 @@ import time
 from collections.abc import Iterator, Sequence
 from datetime import UTC, datetime
 from pathlib import Path
+from typing import Any
 
 from bench.figures import Figure, Group, Scale
+from bench.growth_plot import write_growth_plot
 from rich.console import Console
 from rich.table import Table
 
@@ -24,6 +26,7 @@ GROUPS: dict[str, str] = {
     "journal": "cost_of_journal",
     "plant": "plant_cost",
     "dry": "dry_cost",
+    "nights": "nights_cost",
     "replay": "cost_of_replay",
     "trip": "trip_time",
     "live": "live_cost",
@@ -46,7 +49,7 @@ def main(arguments: Sequence[str] | None = None) -> int:
         gc.collect()
         gc.freeze()  # what earlier groups left behind does not slow the collector down
         figures += list(_measured(name, scale))
-    document = {
+    document: dict[str, Any] = {
         "schema": SCHEMA,
         "began_utc": began.isoformat(timespec="seconds"),
         "took_s": round((datetime.now(UTC) - began).total_seconds(), 1),
@@ -55,6 +58,9 @@ def main(arguments: Sequence[str] | None = None) -> int:
         "figures": [figure.facts() for figure in figures],
     }
     Path(asked.json).write_text(json.dumps(document, indent=1) + "\n", encoding="utf-8")
+    plot = Path(asked.json).with_name(f"{Path(asked.json).stem}-growth.svg")
+    if write_growth_plot(document["figures"], plot):
+        sys.stderr.write(f"cost against size: {plot}\n")
     print_table(figures)
     return 1 if any(figure.failed for figure in figures) else 0
 

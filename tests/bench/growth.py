@@ -15,8 +15,9 @@ from pathlib import Path
 
 from bench.cost_of_journal import journal_seconds
 from bench.cost_of_scan import measure_scans
-from bench.figures import Figure, Scale, Target, exponent, not_built
+from bench.figures import Figure, Scale, Target, exponent
 from bench.plant_cost import step_costs
+from bench.proof_cost import ProofSeconds
 from bench.start_time import CONFIGS, RIG
 
 from rigd.adapters.journal_reader import JournalReader
@@ -31,14 +32,15 @@ S = 1_000_000_000
 
 
 def growth_figures(scale: Scale) -> Iterator[Figure]:
-    """Tags, cells, hours, rows; faults when there is something to measure."""
+    """Tags, cells, hours, rows and faults."""
     yield _growth("tags", "scan against tags", _sizes(scale, 10, 1000), _scan_us, scale.pick(1, 3, 7), "us")
     yield _growth("cells", "plant step against cells", _sizes(scale, 100, 10_000), _plant_us, scale.pick(1, 3, 7), "us")
     longest_h = (0.05, 2.0, 20.0)[scale]
     hours = [longest_h / 100, longest_h / 10, longest_h] if scale else [longest_h / 5, longest_h]
     yield _growth("hours", "dry run against hours", hours, DrySeconds(), scale.pick(1, 1, 2), "s")
     yield _growth("rows", "reading a journal against its scans", _sizes(scale, 100, 10_000), _read_ms, 3, "ms")
-    yield not_built("growth.faults", "proof against number of faults", Target(value_max=EXPONENT_MAX))
+    faults = _sizes(scale, 2, 200) if scale else (2, 8)
+    yield _growth("faults", "proof against number of faults", faults, ProofSeconds(), 1, "s")
 
 
 def _sizes(scale: Scale, least: int, most: int) -> Sequence[int]:

@@ -9,6 +9,8 @@ from pathlib import Path
 
 import pytest
 from bench.figures import Figure, Scale, Target, exponent, not_built, quantile
+from bench.readme_table import BEGIN, END, put
+from bench.readme_table import main as refresh
 
 RUN = Path(__file__).with_name("run.py")
 KEYS = {"id", "what", "unit", "value", "floor", "floor_what", "ratio", "target", "held", "note", "failed"}
@@ -56,12 +58,50 @@ def test_the_quick_figures_are_whole(tmp_path: Path) -> None:
 @pytest.mark.slow
 @pytest.mark.timeout(300)
 def test_the_other_figures_are_whole(tmp_path: Path) -> None:
-    document, _ = run_bench(tmp_path, "start", "plant", "dry", "replay", "trip", "live", "growth")
+    document, _ = run_bench(tmp_path, "start", "plant", "dry", "nights", "replay", "trip", "live", "growth")
     of_trips = {"trip.p50", "trip.p99", "trip.worst"}
     of_growth = {f"growth.{name}" for name in ("tags", "cells", "hours", "rows", "faults")}
     of_replay = {"replay.read", "replay", "replay.rate"}
-    rest = {"start.help", "start.check", "plant", "dry", "dry.speed", "live.processor", "live.memory"}
+    rest = {"start.help", "start.check", "plant", "dry", "dry.speed", "nights", "live.processor", "live.memory"}
+    assert "exponent" in (tmp_path / "bench-growth.svg").read_text(encoding="utf-8")
     check(document, of_trips | of_growth | of_replay | rest)
+
+
+DOCUMENT = {
+    "machine": {"processor": "Abacus", "cores": 2, "python": "3.11", "load_1min": 0.1},
+    "began_utc": "2030-01-02T03:04:05+00:00",
+    "scale": "normal",
+    "figures": [
+        Figure("a", "a thing", "ms", 3.0, 2.0, "a plain thing", Target(ratio_max=2)).facts(),
+        Figure("b", "another", "x", 1.5, target=Target(value_min=1.8)).facts(),
+        not_built("c", "a third", Target(value_max=1)).facts(),
+        Figure("growth.cells", "step against cells", value=1.0,
+               detail={"unit": "us", "costs": {"10": 1.0, "100": 10.0}}).facts(),
+    ],
+}  # fmt: skip
+
+
+def test_the_readme_is_refreshed_between_its_marks_with_machine_date_and_plot(tmp_path: Path) -> None:
+    (tmp_path / ".readme").mkdir()
+    readme = tmp_path / "README.md"
+    readme.write_text(f"before\n{BEGIN}\nwhat stood there\n{END}\nafter\n", encoding="utf-8")
+    (tmp_path / "b.json").write_text(json.dumps(DOCUMENT), encoding="utf-8")
+    for _ in range(2):
+        refresh(tmp_path / "b.json", tmp_path)
+        text = readme.read_text(encoding="utf-8")
+        assert text.startswith(f"before\n{BEGIN}\nAbacus, 2 cores, Python 3.11, load at the end 0.1; 2030-01-02")
+        assert text.endswith(f"{END}\nafter\n")
+        assert "what stood there" not in text
+        assert "| a thing | 3 ms | 2 (a plain thing) | 1.5× | <= 2× | held |" in text
+        assert "| another | 1.5 x |  |  | >= 1.8× | **missed** |" in text
+        assert "| a third | not built yet |" in text
+    assert "exponent 1.00" in (tmp_path / ".readme" / "growth.svg").read_text(encoding="utf-8")
+
+
+@pytest.mark.parametrize("text", ["none", BEGIN, f"{END}{BEGIN}", f"{BEGIN}{END}{BEGIN}{END}"])
+def test_a_readme_without_its_marks_is_left_as_it_is(text: str) -> None:
+    with pytest.raises(ValueError, match="needs the marks"):
+        put(text, "new")
 
 
 def test_a_figure_that_cannot_be_measured_is_told_and_ends_with_1(tmp_path: Path) -> None:

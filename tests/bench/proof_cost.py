@@ -1,0 +1,32 @@
+"""What each further fault costs a proof: processor time of the nights that divide from one healthy rehearsal."""
+
+from __future__ import annotations
+
+import os
+
+from bench.start_time import CONFIGS, RIG
+
+from rigd.ports.plant import FaultSpec
+from rigd.prove.branch import Job, healthy_moments, run_job
+
+RECIPE = CONFIGS / "recipes" / "demo-sweep.toml"
+BLOCK = FaultSpec("block", "L-4", magnitude=1.0)
+
+
+class ProofSeconds:
+    """Seconds of processor time, beyond the healthy rehearsal's own, for a number of faults in the first phase."""
+
+    def __init__(self) -> None:
+        moments, self._healthy_ns, _ = healthy_moments(RIG, RECIPE, 1)
+        self._moments = moments[:1]
+        self._bare_s = self._spent(0)
+
+    def __call__(self, faults: float) -> float:
+        """Carry out a job with so many faults of the same kind."""
+        return self._spent(int(faults)) - self._bare_s
+
+    def _spent(self, faults: int) -> float:
+        before_s = sum(os.times()[:4])
+        nights = run_job(Job(str(RIG), str(RECIPE), 1, (BLOCK,) * faults, self._moments, self._healthy_ns))
+        assert [night.first_out for night in nights] == ["PRESSURE-HIGH"] * faults
+        return sum(os.times()[:4]) - before_s
