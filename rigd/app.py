@@ -45,6 +45,7 @@ from rigd.ports.driver import Driver
 from rigd.ports.plant import EmulatedLine, FaultSpec, Plant
 from rigd.report.ending import END_TEXT
 from rigd.runtime.arming import arming_of, is_simulated, run_facts
+from rigd.runtime.calibrated import calibrated_drivers, calibrated_rig, calibrations_of, corrections_of
 from rigd.runtime.deep import DeepShell
 from rigd.runtime.dry import DryOptions, DryResult, DryShell
 from rigd.runtime.live import Live, Surroundings
@@ -53,6 +54,7 @@ from rigd.runtime.spectra import cell_readers
 
 FIRST_TICKET_S, EARLY_S, LATE_S = 30.0, 0.04, 1.0
 """The guard's window: until the first ticket, then at least and at most between two [wall]."""
+JSON_FACTS = ("pace", "simulated", "unattended", "collected", "ports", "calibrations")
 PACED_FLOOR_S = 0.5
 """Wall time that a sample may age and a valve may travel in a paced run, whatever the files say (decision 5)."""
 
@@ -96,6 +98,7 @@ def prepare_run(rig_path: Path, recipe_path: Path, settings: RunSettings) -> Pat
     rig, recipe = pair.rig, pair.recipe
     drivers = make_drivers(rig)
     arming = run_facts(arming_of(rig_path, rig, recipe, settings.pace), settings.unattended, is_simulated(rig))
+    calibrations = calibrations_of(rig_path, rig)
     links = resolve_ports(rig, str(rig_path), settings.pace)
     folder = run_folder.make_run_folder(settings.runs, recipe.name)
     locks: list[int] = []
@@ -106,7 +109,7 @@ def prepare_run(rig_path: Path, recipe_path: Path, settings: RunSettings) -> Pat
         announced = announce(Daemon(os.getpid(), rig.name, folder.name, str(folder), str(door)))
         plan = _plan(rig, recipe, settings, folder, links, drivers, locks)
         meeting = {"door": str(door), "cleanup": [str(announced), str(door)]}
-        write_json(folder / "plan.json", {**plan, **arming, **meeting})
+        write_json(folder / "plan.json", {**plan, **arming, **meeting, "calibrations": calibrations})
     except BaseException:
         unlock(locks)
         shutil.rmtree(folder, ignore_errors=True)  # nothing was run
@@ -173,14 +176,15 @@ async def _control(plan: dict[str, Any]) -> RunEnd:
     if (pair.rig.digest, pair.recipe.digest) != (plan["rig_digest"], plan["recipe_digest"]):
         raise RigError(f"the copies in {folder} are not the files that were checked; start again")
     links = tuple(replace(link, port=plan["ports"][link.id]) for link in pair.rig.links)
-    program = compile_program(pair.rig, pair.recipe, _run_options(plan))
+    corrected = corrections_of(plan["calibrations"])
+    program = compile_program(calibrated_rig(pair.rig, corrected), pair.recipe, _run_options(plan))
     clock = PacedClock(plan["pace"])
     journal = SqliteJournal(folder / "run.sqlite", _facts(plan, folder, clock), pair.rig.tags)
     live = Live(
         Surroundings(
             program,
             links,
-            make_drivers(pair.rig),
+            calibrated_drivers(make_drivers(pair.rig), pair.rig, corrected),
             open_link,
             journal,
             clock,
@@ -276,7 +280,7 @@ def _facts(plan: Mapping[str, Any], folder: Path, clock: PacedClock) -> dict[str
     told = ("run", "rig", "recipe", "rig_digest", "recipe_digest", "signer")
     facts = {name: str(plan[name]) for name in told}
     facts |= {"earlier": plan["earlier"]} if plan["earlier"] else {}
-    facts |= {name: json.dumps(plan[name]) for name in ("pace", "simulated", "unattended", "collected", "ports")}
+    facts |= {name: json.dumps(plan[name]) for name in JSON_FACTS}
     for name in (run_folder.RIG, run_folder.CHEMISTRY, run_folder.RECIPE):
         with contextlib.suppress(OSError):
             facts[name] = (folder / name).read_text(encoding="utf-8")

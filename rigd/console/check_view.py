@@ -7,6 +7,7 @@ from rich.console import RenderableType
 from rich.table import Table
 from rich.text import Text
 
+from rigd.console.calibrating import calibration_table
 from rigd.console.checking import Checked, supplies_mL
 from rigd.console.matrix_view import cause_and_effect
 from rigd.console.output import Output
@@ -42,6 +43,9 @@ def show_check(output: Output, found: Checked) -> None:
     if found.liquids:
         output.say("")
         output.say(properties(found.liquids))
+    if found.calibrations:
+        output.say("")
+        output.say(calibration_table(found.calibrations))
     if found.problems:
         output.say("")
         print_problems(output.people, found.problems)

@@ -26,6 +26,7 @@ SECTIONS: dict[str, dict[str, tuple[str, str]]] = {
         "sim": ("simulate:sim", "Serve the simulated rig on serial lines, for rigd run."),
         "permit": ("permit:permit", "May a rig run unattended? Door sign and shutdown card."),
         "proof": ("permit:proof", "Record or list proof tests of interlocks."),
+        "calibrate": ("calibrate:calibrate", "Pumps by weighing, sensors, segments by tracer; the run uses it."),
         "alert-test": ("permit:alert_test", "Send a test alert; record that it was received."),
         "faults": ("faults:faults", "List the faults that the simulator can inject."),
         "card": ("card:card", "Connect a device from its manual: write, check, try a card."),

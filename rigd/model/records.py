@@ -1,4 +1,5 @@
-"""What is on record about a rig itself, between runs: proof tests of its interlocks and tests of its alert path."""
+"""What is on record about a rig itself, between runs: proof tests of its interlocks, tests of its alert path,
+calibrations."""
 
 from __future__ import annotations
 
@@ -12,6 +13,9 @@ class RecordKind(StrEnum):
     PROOF = "proof test"  # interlock: from stimulus to final element
     ALERT_SENT = "alert sent"  # channel; detail holds the code word that was sent
     ALERT_RECEIVED = "alert received"  # channel: a person told the code word back
+    PUMP = "pump calibration"  # pump; detail holds the values as JSON (rigd.config.calibrating)
+    SENSOR = "sensor calibration"  # tag
+    SEGMENT = "segment by tracer"  # parts joined by "+"
 
 
 @dataclass(frozen=True, slots=True)

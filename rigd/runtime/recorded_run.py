@@ -17,6 +17,7 @@ from rigd.config.load import load_pair
 from rigd.logic.program import Program, RunOptions, compile_program
 from rigd.model.errors import ConfigError, JournalError
 from rigd.model.problems import Problem
+from rigd.runtime.calibrated import calibrated_rig, corrections_of
 
 RIG, CHEMISTRY, RECIPE = run_folder.RIG, run_folder.CHEMISTRY, run_folder.RECIPE
 FILES = (RIG, CHEMISTRY, RECIPE)
@@ -41,7 +42,8 @@ def recorded_run(journal: JournalReader) -> Recorded:
             raise JournalError(_unread(journal, error.problems)) from error
     assert pair.recipe is not None
     notes = _notes(meta, (pair.rig.digest, pair.recipe.digest))
-    return Recorded(compile_program(pair.rig, pair.recipe, _options_of(journal)), meta, notes)
+    rig = calibrated_rig(pair.rig, corrections_of(meta.get("calibrations", "")))
+    return Recorded(compile_program(rig, pair.recipe, _options_of(journal)), meta, notes)
 
 
 @contextmanager

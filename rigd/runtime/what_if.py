@@ -20,6 +20,7 @@ from rigd.model.events import Event, EventKind
 from rigd.model.intake import Intake
 from rigd.model.protection import ConditionKind
 from rigd.model.rig import RigDefinition
+from rigd.runtime.calibrated import calibrated_rig, corrections_of
 from rigd.runtime.recorded_run import recorded_run
 
 MEASURED = frozenset({ConditionKind.HIGH, ConditionKind.LOW, ConditionKind.RATE, ConditionKind.BAD})
@@ -65,7 +66,8 @@ def what_if(run: Path, rig_path: Path) -> WhatIf:
         if not journal.span()[0]:
             raise JournalError(f"{journal.path} holds no scan: the run ended before it began")
         recorded = recorded_run(journal)
-        was, rig = recorded.program, load_rig(rig_path)
+        corrected = corrections_of(recorded.meta.get("calibrations", ""))
+        was, rig = recorded.program, calibrated_rig(load_rig(rig_path), corrected)
         notes = (*recorded.notes, *_fits(was.rig, rig))
         # the recipe as it was run: whether it passes the checks of the other rig is a matter of the next run
         return _decide_both(journal.scans(), was, compile_program(rig, was.recipe, was.options), notes)
