@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import random
 import re
 from importlib.resources import files
 from pathlib import Path
@@ -11,13 +10,11 @@ from typing import TypeVar
 import pytest
 
 from rigd.model.devices import DeviceSpec, LinkSpec
-from rigd.model.errors import ConfigError, DeviceProtocolError, DeviceRefused, LinkTimeout
+from rigd.model.errors import ConfigError, LinkTimeout
 from rigd.model.orders import Action, Authority, Order
 from rigd.ports.link import ReplyReader
 from rigd_drivers.card import FAMILY
 from rigd_drivers.card.frames import CHECKSUMS, Frame
-from rigd_drivers.card.modbus import ModbusReader, Place, read_pdu
-from rigd_drivers.card.text import Expected, TextReader
 
 T = TypeVar("T")
 CARD = files("rigd_drivers.card").joinpath("templates", "text-pump.toml").read_text(encoding="utf-8")
@@ -91,19 +88,3 @@ def test_a_bent_frame_is_never_believed(kind: str) -> None:
     message = frame.wrap("F250.0")
     assert frame.find(message) == ("F250.0", b"")
     assert kind == "none" or frame.find(message.replace(b"5", b"6", 1))[0] is None
-
-
-@pytest.mark.slow
-def test_a_million_hostile_bytes() -> None:
-    chance = random.Random(6)
-    pdu = read_pdu(Place("input", 0, "f32"))
-    text = TextReader(Frame(b"#07", b"", (b"\r\n",), "crc16-modbus"), Expected(r"F(?P<flow>\d+\.\d)", {}))
-    for protocol in ("modbus-tcp", "modbus-rtu", "modbus-ascii"):
-        modbus = ModbusReader(7, 9, pdu, protocol)
-        for _ in range(20_000):
-            data = chance.randbytes(50)
-            try:
-                assert modbus.feed(data) is None
-            except (DeviceProtocolError, DeviceRefused):
-                modbus = ModbusReader(7, 9, pdu, protocol)
-            assert text.feed(data) is None
