@@ -25,13 +25,38 @@ TWO_TEMPERATURES = (
     ('temperature = "60 degC"\nratio', 'temperature = ["60 degC", "40 degC"]\nratio'),
     ("count = 6", "count = 2"),
 )
+METERS = (
+    (
+        r"\[simulation\]",
+        """[[sensors]]
+tag = "FT-1"
+title = "flow into the bed"
+measures = "flow"
+at = "COL.inlet"
+span = ["0 mL/min", "10 mL/min"]
+device = "sensors"
+channel = "f1"
+noise = "0.02 mL/min"
+
+[[sensors]]
+tag = "WT-1"
+title = "balance under the waste"
+measures = "volume"
+at = "waste"
+span = ["0 mL", "2 L"]
+device = "sensors"
+channel = "w1"
+noise = "0.05 mL"
+
+[simulation]""",
+    ),
+)
 HEALTHY = {
     "night": Night(recipe="overnight-sweep", hours=9.0),
     "fine bed, two temperatures": Night(rig_edits=FINE, recipe_edits=TWO_TEMPERATURES),
     "reagent in another solvent": Night(rig_edits=OTHER_SOLVENT),
     "no regulator": Night(rig_edits=(('set_pressure = "2 bar"', 'set_pressure = "0.05 bar"'), *FINE)),
-    "demo 1": Night(seed=1),
-    "demo 2": Night(seed=2),
+    "demo with meters": Night(seed=1, rig_edits=METERS),
     "one pump 1": Night("one-pump", "one-pump-sweep", 1),
     "one pump 2": Night("one-pump", "one-pump-sweep", 2),
     "three pumps 1": Night("three-pump-two-columns", "three-pump-sweep", 1),
@@ -44,6 +69,8 @@ ILL = {
     "partial block": Night(fault=("block", "COL", 900.0, 0.97)),
     "leak": Night(fault=("leak", "TEE", 900.0, 1.0)),
     "gas at the leak test": Night(fault=("bubble", "L-1", 560.0, 0.5)),
+    "slipping pump": Night(rig_edits=METERS, fault=("slip", "PU-A", 900.0, 0.5)),
+    "leak behind the bed": Night(rig_edits=METERS, fault=("leak", "IR", 900.0, 0.3)),
     "exotherm": Night(fault=("exotherm", "COL", 900.0, 8.0)),
 }
 
@@ -92,6 +119,17 @@ def test_a_leak_is_told_within_two_minutes(mornings: dict[str, Morning]) -> None
     told = [(name, at_s) for name, at_s in mornings["leak"].alarms if name.startswith("OPEN-")]
     assert told
     assert 900 < told[0][1] < 900 + 2 * 60
+
+
+BALANCE = [("slipping pump", {"SHORT-FT-1", "SHORT-WT-1"}), ("leak behind the bed", {"SHORT-WT-1"})]
+
+
+@pytest.mark.parametrize(("name", "alarms"), BALANCE)
+def test_what_does_not_arrive_is_told_by_the_meters_behind_the_loss(
+    name: str, alarms: set[str], mornings: dict[str, Morning]
+) -> None:
+    found = mornings[name]
+    assert {alarm for alarm, at_s in found.alarms if at_s < 900 + 3 * 60} == alarms
 
 
 def test_gas_is_told_by_the_leak_test(mornings: dict[str, Morning]) -> None:

@@ -167,7 +167,14 @@ def _update(
         if meter.pumps:
             compared[meter.tag], ratio = balance.compare_flow(seen, meter, compared.get(meter.tag, Compared()))
             _show(program, shown, f"{meter.tag}.balance", ratio, now_ns)
+            _say_balance(remarks, meter, ratio)
     return replace(state, watched=tuple(watched), remarks=remarks, compared=compared), tuple(events)
+
+
+def _say_balance(remarks: dict[str, str], meter: Meter, ratio: float | None) -> None:
+    if ratio is not None:
+        what = "the flow of its pumps" if meter.pumps else "what was moved by count"
+        remarks[f"{meter.tag}.balance"] = f"{meter.tag} sees {ratio:.0%} of {what}"
 
 
 def _show(program: Program, shown: dict[str, Sample], tag: str, value: float | None, now_ns: int) -> None:
@@ -218,11 +225,12 @@ def _levels(
     shown: dict[str, Sample],
     now_ns: int,
 ) -> EarlyState:
-    compared = dict(state.compared)
+    compared, remarks = dict(state.compared), dict(state.remarks)
     for meter in program.early.meters:
         sample = samples.get(meter.tag) if meter.vessel else None
         if sample is not None and sample.quality is Quality.GOOD:
             known = compared.get(meter.tag, Compared())
             compared[meter.tag], ratio = balance.compare_level(meter, known, sample.value, ledger)
             _show(program, shown, f"{meter.tag}.balance", ratio, now_ns)
-    return replace(state, compared=compared) if program.early.meters else state
+            _say_balance(remarks, meter, ratio)
+    return replace(state, compared=compared, remarks=remarks) if program.early.meters else state
