@@ -30,6 +30,7 @@ GROUPS: dict[str, str] = {
     "replay": "cost_of_replay",
     "trip": "trip_time",
     "live": "live_cost",
+    "cards": "cards_cost",
     "growth": "growth",
 }
 """Group -> module that has ``<group>_figures``; loaded when its turn comes, so that one that is broken is one row."""

@@ -58,13 +58,14 @@ def test_the_quick_figures_are_whole(tmp_path: Path) -> None:
 @pytest.mark.slow
 @pytest.mark.timeout(300)
 def test_the_other_figures_are_whole(tmp_path: Path) -> None:
-    document, _ = run_bench(tmp_path, "start", "plant", "dry", "nights", "replay", "trip", "live", "growth")
+    document, _ = run_bench(tmp_path, "start", "plant", "dry", "nights", "replay", "trip", "live", "cards", "growth")
     of_trips = {"trip.p50", "trip.p99", "trip.worst"}
     of_growth = {f"growth.{name}" for name in ("tags", "cells", "hours", "rows", "faults")}
     of_replay = {"replay.read", "replay", "replay.rate"}
+    of_cards = {"cards.modbus", "cards.text", "cards.processor"}
     rest = {"start.help", "start.check", "plant", "dry", "dry.speed", "nights", "live.processor", "live.memory"}
     assert "exponent" in (tmp_path / "bench-growth.svg").read_text(encoding="utf-8")
-    check(document, of_trips | of_growth | of_replay | rest)
+    check(document, of_trips | of_growth | of_replay | of_cards | rest)
 
 
 DOCUMENT = {
