@@ -82,7 +82,7 @@ def from_facts(told: Iterable[Mapping[str, object]]) -> tuple[Calibrated, ...]:
             })
             for one in told
         )  # fmt: skip
-    except (TypeError, ValueError, KeyError) as error:
+    except (TypeError, ValueError, KeyError, AttributeError) as error:
         raise JournalError(f"the calibrations of the run cannot be read: {error}") from error
 
 

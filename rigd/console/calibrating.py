@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import csv
-import math
 from collections.abc import Iterable
 from pathlib import Path
 from typing import TYPE_CHECKING
@@ -128,20 +127,11 @@ def calibration_table(found: Iterable[Calibrated]) -> Table:
     from rich import box
     from rich.table import Table
 
+    from rigd.report.calibrations import used_words
+
     table = Table(box=box.SIMPLE_HEAD, pad_edge=False, title="calibrations", title_justify="left", title_style="bold")
     for heading in ("part", "done", "by", "due", "used"):
         table.add_column(heading, overflow="fold")
     for one in found:
         table.add_row(one.subject, one.utc[:10], one.who, one.due_utc[:10], used_words(one))
     return table
-
-
-def used_words(one: Calibrated) -> str:
-    """Its numbers in words."""
-    values = one.values
-    if "factor" in values:
-        spread = f" ± {values['factor_expanded']:.4f}" if "factor_expanded" in values else ""
-        return f"delivers {values['factor']:.4f}{spread} of what it is told"
-    if "gain" in values:
-        return f"(reading - {values['zero']:.4g}) x {values['gain']:.4f}"
-    return f"{values['volume_mL']:.4g} mL by tracer, Peclet {values.get('peclet', math.inf):.3g}; not used by the run"

@@ -7,6 +7,7 @@ from dataclasses import asdict
 from rigd.model.events import Event, EventKind
 from rigd.report.alarm_load import alarm_load
 from rigd.report.alarm_records import record_facts
+from rigd.report.calibrations import calibration_rows
 from rigd.report.data import CHAIN_HEAD, PointRow, RunData
 from rigd.report.kinetic_fit import kinetics_of
 from rigd.report.response_rows import age_rows, trip_rows
@@ -46,6 +47,7 @@ def report_facts(run: RunData) -> dict[str, object]:
             "sample_age": [asdict(row) for row in age_rows(run)],
             "trips": [asdict(row) for row in trip_rows(run)],
         },
+        "calibrations": [asdict(row) for row in calibration_rows(run.facts)],
         "chain_head": run.facts.get(CHAIN_HEAD, ""),
     }
 

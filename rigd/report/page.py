@@ -18,6 +18,7 @@ from rigd.model.protection import ConditionKind
 from rigd.model.rig import TagKind
 from rigd.report.alarm_load import alarm_load
 from rigd.report.alarm_records import alarm_records, record_facts
+from rigd.report.calibrations import calibration_rows
 from rigd.report.cause_effect import LEGEND, matrix
 from rigd.report.data import PointRow, RunData, Trace
 from rigd.report.ending import RUNNING, UNFINISHED
@@ -94,6 +95,7 @@ def _context(run: RunData) -> dict[str, Any]:
         "matrix": matrix(run.rig) if run.rig else None,
         "legend": LEGEND,
         "gaps": gaps(run.rig) if run.rig else (),
+        "calibrations": calibration_rows(run.facts),
         "signed": _signed(run),
         "sheet": _sheet(run),
         "permit": _permit(run),

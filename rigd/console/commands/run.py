@@ -53,6 +53,7 @@ def run(
     simulated = all(link.port == SIMULATED for link in pair.rig.links)
     if not simulated and not signer:
         signer = sign(output, pair.rig, pair.recipe)
+    say_overdue(output, rig, pair.rig)
     if unattended:
         say_waived(output, rig, pair.rig, pair.recipe, pace)
     start_run(rig, recipe, RunSettings(
@@ -60,6 +61,16 @@ def run(
         unattended=unattended,
         progress=PROGRESS, after=report_command(output.json),
     ))  # fmt: skip
+
+
+def say_overdue(output: Output, path: Path, rig: RigDefinition) -> None:
+    """Tell which calibrations are overdue; they stay in force."""
+    from rigd.runtime.calibrated import calibrations_of
+
+    for one in calibrations_of(path, rig):
+        if one["overdue"]:
+            due = str(one["due_utc"])[:10]
+            output.errors.print(f"[yellow]overdue since {due}[/]: {one['kind']} of {one['subject']}; it stays in force")
 
 
 def say_waived(output: Output, path: Path, rig: RigDefinition, recipe: Recipe, pace: float) -> None:
