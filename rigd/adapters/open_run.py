@@ -114,6 +114,21 @@ class Run:
         columns = {"t_s": np.array([event.t_ns / 1e9 for event in found], dtype=np.float64)}
         return Table({**columns, **{name: _words(column) for name, column in words.items()}}, {"t_s": "s"})
 
+    def points(self) -> Table:
+        """What became of each point: ``t_s`` of its start, ``point``, ``status``, and every number that was told of it
+        (NaN where none was), as ``conversion``, ``collected_mL``, and by tag its mean while it was steady."""
+        stories: dict[str, dict[str, Any]] = {}
+        for event in self._journal.events(EventKind.POINT):
+            story = stories.setdefault(event.subject, {"t_s": event.t_ns / 1e9, "point": event.subject})
+            story.update(event.fields)
+        rows = list(stories.values())
+        names = dict.fromkeys(name for row in rows for name, value in row.items() if _is_number(value))
+        numbers = {name: np.array([_number(row.get(name)) for row in rows], dtype=np.float64) for name in names}
+        words = {name: _words(str(row.get(name, "")) for row in rows) for name in ("point", "status")}
+        units = {name: unit for name in names for ending, unit in _UNITS.items() if name.endswith(ending)}
+        units |= {name: self.tags[name].unit for name in names if name in self.tags}
+        return Table({**words, **numbers}, units)
+
     def orders(self) -> Table:
         """What was ordered: ``t_s``, ``number``, ``unit``, ``action``, ``value``, ``authority``, ``source``."""
         found = self._journal.orders()
@@ -129,6 +144,7 @@ class Run:
         return Table(columns, {"t_s": "s"})
 
 
+_UNITS = {"_mL": "mL", "_s": "s", "_degC": "degC", "_bar": "bar", "_mL_min": "mL/min"}
 _LOOK_BACK_S = 3600.0
 """How far before the first row a last value is looked for."""
 
@@ -136,6 +152,14 @@ _LOOK_BACK_S = 3600.0
 def open_run(path: str | os.PathLike[str]) -> Run:
     """Open a recorded run, also one that is still going on or that died. Raises ``JournalError``."""
     return Run(path)
+
+
+def _is_number(value: object) -> bool:
+    return isinstance(value, int | float) and not isinstance(value, bool)
+
+
+def _number(value: object) -> float:
+    return float(value) if isinstance(value, int | float) and not isinstance(value, bool) else math.nan
 
 
 def _words(words: Iterable[str]) -> Column:

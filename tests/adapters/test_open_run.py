@@ -13,6 +13,7 @@ import numpy as np
 import pyarrow.parquet as pq
 import pytest
 from fakes.recorded import BLOCK, S, copy_of, recorded, spoilt
+from fakes.report_run import write_run
 
 import rigd
 from rigd.adapters import journal_sqlite
@@ -136,6 +137,18 @@ def test_a_span_costs_the_same_in_a_long_run(tmp_path):
             assert run.samples("T", 1000.0, 1009.0)["value"].tolist() == [0.5 * n for n in range(1000, 1010)]
         steps.append(len(ticks))
     assert steps[1] < 1.5 * steps[0]
+
+
+def test_points_are_rows_with_units(tmp_path):
+    with open_run(write_run(tmp_path / "swept", trip_after=2)) as run:
+        table = run.points()
+    assert list(table["point"]) == ["P1", "P2"]
+    assert list(table["status"]) == ["collected", "collected"]
+    assert table["collected_mL"] == pytest.approx([4.0 * 40 / 60, 4.0 * 40 / 60], rel=0.5)
+    assert table["residence_time_s"][0] == pytest.approx(29.4, abs=0.5)
+    assert (table.units["collected_mL"], table.units["settle_s"], table.units["status"]) == ("mL", "s", "")
+    with open_run(recorded()) as run:
+        assert run.points().rows == 0
 
 
 def test_parquet_holds_every_sample_exactly(tmp_path, capsys):

@@ -2,8 +2,12 @@
 
 from __future__ import annotations
 
+import re
 from functools import cache
+from itertools import takewhile
 from pathlib import Path
+from textwrap import dedent
+from typing import Any
 
 import pytest
 from fakes.recorded import CONFIGS, RIG, recorded
@@ -64,3 +68,25 @@ def test_another_limit_trips_at_the_record_where_the_pressure_stood_above_it(tmp
     assert trip.recorded_ns is None
     assert trip.would_ns == pytest.approx(first_above(series, limit_bar), abs=1_000_000)
     assert found.parted_ns == trip.would_ns
+
+
+def tutorial(run: Path) -> str:
+    """The notebook of README.md, with the run that is there."""
+    text = (CONFIGS.parent / "README.md").read_text(encoding="utf-8").split("In a notebook:\n", 1)[1]
+    lines = takewhile(lambda line: not line or line.startswith("    "), text.splitlines())
+    code = dedent("\n".join(lines))
+    return re.sub(r'open_run\(".*?"\)', f"open_run({str(run)!r})", code)
+
+
+def test_the_notebook_of_the_readme_runs_and_shows_the_points():
+    *code, last = tutorial(night()).strip().splitlines()
+    names: dict[str, Any] = {}
+    exec("\n".join(code), names)
+    shown = eval(last, names)
+    assert list(shown["point"]) == [f"P0{number}" for number in range(1, 7)]
+    assert shown["conversion"].is_monotonic_increasing  # the sweep goes from fast to slow
+    assert shown["collected_mL"].between(0.45, 0.6).all()
+    assert names["pressure"]["t_s"][0] == pytest.approx(600, abs=0.5)
+    assert names["table"]["PT-1 [bar]"].max() < 8
+    assert names["trips"].rows == 0
+    assert names["orders"].rows > 50
