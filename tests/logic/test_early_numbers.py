@@ -102,6 +102,12 @@ def test_what_stands_still_falls_or_is_there_has_no_time_or_none_left() -> None:
     assert time_left_s(grown(0.0), 1.5, 600 * S) == 0.0
 
 
+def test_a_step_that_creeps_has_no_time_but_growth_from_below_has() -> None:
+    step = tuple((t * S, 1.0 if t < 300 else 4.0 + 0.0002 * t) for t in range(0, 600, 5))
+    assert time_left_s(step, 8.0, 600 * S) is None
+    assert time_left_s(grown(0.0), 8.0, 600 * S) is not None
+
+
 def test_the_history_is_thinned_and_keeps_its_ends() -> None:
     history = grown(0.0, 20_000)
     assert len(history) <= LONGEST + 1

@@ -98,6 +98,18 @@ def test_another_viscosity_of_the_reagent_says_nothing_and_a_clog_in_it_does(mu:
     assert bench.last(R1) > 1.4
 
 
+def test_on_the_way_back_to_solvent_everything_between_the_two_is_healthy() -> None:
+    bench = learned()
+    bench.total_mL_min, bench.content, bench.mu = 2.0, Content.REAGENT, 0.7
+    bench.run(400)
+    assert bench.state.watched[0].before == pytest.approx(0.7, rel=0.05)
+    bench.content = Content.SOLVENT  # the syringes hold solvent, the path still reagent
+    bench.run(60)
+    bench.mu = 1.0
+    bench.run(300)
+    assert bench.all(R1) == {1.0}
+
+
 def test_a_reagent_far_thicker_than_stated_is_told() -> None:
     bench = learned()
     bench.total_mL_min, bench.content, bench.mu = 2.0, Content.REAGENT, 4.0
