@@ -169,8 +169,7 @@ class _Scan:
         program, now_ns = self._program, self._now_ns
         self._signals, changed = signals.take(program, self._signals, batch, now_ns)
         self._fresh.update(changed)
-        if broken := reaction.late(program.budgets, batch, now_ns):
-            self._raise("RESPONSE-LATE", broken)
+        self._note_response((), reaction.late(program.budgets, batch, now_ns))
         if statuses:
             self._signals, lost = signals.link(program, self._signals, statuses)
             changed.update(lost)
@@ -181,26 +180,24 @@ class _Scan:
         )
         rising = not self._ledger.outlet or self._early.rise.points
         if now_ns >= self._early.due_ns or (rising and program.early.stiff in changed):
+            known_mL_bar = self._early.compliance_mL_bar
             self._early, learned = early_rules.update(
                 program, self._early, self._signals, self._ledger, changed, volumes, now_ns
             )
             self._events += learned
-            self._stiffness()
+            if (found_mL_bar := self._early.compliance_mL_bar) != known_mL_bar:
+                self._note_response(*reaction.with_compliance(program.rig, program.recipe, found_mL_bar, now_ns))
         if volumes:
             self._signals = replace(self._signals, samples={**self._signals.samples, **volumes})
             changed.update(volumes)
             self._fresh.update(volumes)
         self._evaluate(changed, links=bool(statuses))
 
-    def _stiffness(self) -> None:
-        """A compliance that was just measured tells anew how much time a block leaves."""
-        found = self._early.compliance_mL_bar
-        if found and found != self._before.early.compliance_mL_bar:
-            rig, recipe = self._program.rig, self._program.recipe
-            events, slow = reaction.with_compliance(rig, recipe, found, self._now_ns)
-            self._events += events
-            if slow:
-                self._raise("RESPONSE-LATE", slow)
+    def _note_response(self, measured: Iterable[Event], late: str) -> None:
+        """What was measured of the rig's own response, and why it is too slow ("")."""
+        self._events += measured
+        if late:
+            self._raise("RESPONSE-LATE", late)
 
     def _evaluate(self, changed: Iterable[str], *, links: bool) -> None:
         program, now_ns = self._program, self._now_ns
@@ -319,7 +316,11 @@ class _Scan:
         if stopping.overdue:
             names = ", ".join(stopping.overdue)
             self._raise("STOP-UNCONFIRMED", f"{names} was told to stop and does not confirm it")
-        timed = self._time(stopping)
+        trips = [change for _, change in self._trips]
+        timed, measured, late = reaction.advance(
+            self._program, self._before.timed, trips, self._conditions, self._memory, stopping, self._now_ns
+        )
+        self._note_response(measured, late)
         state = ProtectState(
             self._signals,
             self._conditions,
@@ -334,21 +335,6 @@ class _Scan:
             frozenset(self._fresh),
         )
         return ProtectStep(state, stopping.demand, tuple(self._events), self._wake_ns(stopping))
-
-    def _time(self, stopping: Stopping) -> Timed | None:
-        """Go on timing the trip that is being timed, or begin with the first one of this scan."""
-        timed = self._before.timed
-        if timed is None and self._trips:
-            change = self._trips[0][1]
-            sample_ns = min((self._conditions.since_ns.get(cause, self._now_ns) for cause in change.causes), default=0)
-            return reaction.begin(change.interlock, sample_ns or self._now_ns, self._now_ns)
-        if timed is None:
-            return None
-        timed, events, broken = reaction.follow(self._program, timed, self._memory, stopping, self._now_ns)
-        self._events += events
-        if broken:
-            self._raise("RESPONSE-LATE", broken)
-        return timed
 
     def _verdict(self, stopping: Stopping) -> Verdict:
         before = self._before

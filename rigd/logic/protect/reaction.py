@@ -10,11 +10,13 @@ the files say.
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping
+from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING
 
 from rigd.logic.arbitration import Aspect, Memory
+from rigd.logic.protect.conditions import Conditions
+from rigd.logic.protect.interlocks import Change
 from rigd.logic.protect.stops import Stopping
 from rigd.logic.response import SHARE, Response, responses
 from rigd.model.events import Event, EventKind
@@ -86,6 +88,24 @@ def late(budgets: Budgets, batch: Iterable[Sample], now_ns: int) -> str:
             age_s = (now_ns - sample.t_ns) / 1e9
             return f"{sample.tag} was {age_s:.2f} s old when it was judged, the budget allows {limit_ns / 1e9:.2f} s"
     return ""
+
+
+def advance(
+    program: Program,
+    timed: Timed | None,
+    trips: Sequence[Change],
+    conditions: Conditions,
+    memory: Memory,
+    stopping: Stopping,
+    now_ns: int,
+) -> tuple[Timed | None, tuple[Event, ...], str]:
+    """Go on timing the trip that is being timed, or begin with the first one of this scan; see ``follow``."""
+    if timed is not None:
+        return follow(program, timed, memory, stopping, now_ns)
+    if not trips:
+        return None, (), ""
+    taken = [conditions.since_ns[cause] for cause in trips[0].causes if cause in conditions.since_ns]
+    return begin(trips[0].interlock, min(taken, default=now_ns), now_ns), (), ""
 
 
 def begin(lock: Interlock, sample_ns: int, now_ns: int) -> Timed | None:
