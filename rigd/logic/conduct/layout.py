@@ -177,8 +177,8 @@ def _warming_s(program: Program) -> dict[str, float]:
     """The slowest bed's time constant against its wall, as often as a change of flow takes to fade.
 
     The conversion follows the temperature profile of the bed, which follows the flow. Its change grows with the
-    logarithm of the ratio of flows; one time constant is enough for a ratio of 1.4, and each factor e in the change
-    takes nearly one more. The first reagent counts as twice that change (own estimates, no source).
+    logarithm of the ratio of flows; less than one time constant is enough for a ratio of 1.4, and each factor e in the
+    change takes about one more. The first reagent counts as twice that change (own estimates, no source).
     """
     slowest_s = max((_against_wall_s(column) for column in program.rig.columns if column.jacket), default=0.0)
     found: dict[str, float] = {}
@@ -186,7 +186,7 @@ def _warming_s(program: Program) -> dict[str, float]:
     for point in program.recipe.points:
         total = point.total_mL_min
         far = abs(math.log(total / before)) / math.log(1.4) if before > 0 < total else 2.0
-        found[point.id] = slowest_s * (1.0 + 0.8 * math.log(max(far, 1.0)))
+        found[point.id] = slowest_s * (0.8 + 0.9 * math.log(max(far, 1.0)))
         before = total
     return found
 
