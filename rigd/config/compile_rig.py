@@ -223,7 +223,7 @@ def _facts(rig: RigDefinition) -> Mapping[str, Mapping[str, object]]:
     """What a driver must know of the unit behind its device, by device; names as in the model."""
     facts: dict[str, dict[str, object]] = {}
     for pump in rig.pumps:
-        names = ("syringes", "bore_mm", "stroke_mL", "dead_mL", "continuous")
+        names = ("syringes", "bore_mm", "stroke_mL", "dead_mL", "continuous", "force_limit_N")
         rates = ("rate_min_mL_min", "rate_max_mL_min", "refill_rate_mL_min")
         facts[pump.device] = {name: getattr(pump, name) for name in (*names, *rates)}
     for valve in rig.valves:

@@ -89,6 +89,7 @@ def test_drivers_get_the_facts_about_their_unit(rig: RigDefinition) -> None:
 
     assert facts["pump-a"] == {
         "syringes": 2, "bore_mm": 10.3, "stroke_mL": 5.0, "dead_mL": 0.02, "continuous": False,
+        "force_limit_N": 130.0,
         "rate_min_mL_min": 0.005, "rate_max_mL_min": 5.0, "refill_rate_mL_min": 8.0, "retries": 2,
     }  # fmt: skip
     assert facts["valve-c"] == {

@@ -301,3 +301,15 @@ def test_mistakes_name_the_nearest_key(tmp_path: Path, registers: str, told: str
         pump(tmp_path, registers=f'rate = {{ table = "holding", address = 0 }}\n{registers}', **parts)
     assert told in str(caught.value)
     assert caught.value.problems[0].line in (11, 13)  # the register's own line, or the channel that misses it
+
+
+async def test_what_only_a_move_makes_known_goes_to_rest_at_the_start(tmp_path: Path) -> None:
+    (tmp_path / "v.toml").write_text(VALVE.replace("READ", 'last_order = "move"'), encoding="utf-8")
+    options, facts = {"card": str(tmp_path / "v.toml")}, {"positions": ("a", "b", "c"), "rest": "b"}
+    made, bank = (
+        CardDevice(DeviceSpec("v", "card", "", "b", "1", "u", (), options=options, facts=facts)),
+        RegisterBank(),
+    )
+    await made.prepare(bank)
+    assert bank.log == [(5, 0, (0,)), (5, 2, (0,)), (15, 1, (1,))]
+    assert (await made.poll(bank, ["position"]))[0].value == 1

@@ -50,7 +50,7 @@ class CardDevice:
         _check_spec(spec, card, options)
         retries = spec.facts.get("retries", 2)
         self._spec, self._card = spec, card
-        self._words = Words(card, spec.address, options.parameters)
+        self._words = Words(card, spec.address, _parameters(spec, card, options))
         self._talk = Talk(card, spec.id, self._words, retries if isinstance(retries, int) else 2)
         self._channels = Channels(card)
         self._account = _account(spec) if card.continuous else None
@@ -81,12 +81,13 @@ class CardDevice:
         return DeviceIdentity(identity.maker, identity.model, serial, firmware)
 
     async def prepare(self, line: Line) -> bool:
-        """The card's preparation; the power-on sign is cleared last."""
+        """The card's preparation; a valve without feedback goes to rest; the power-on sign is cleared last."""
         restarted = await self._restarted(line, {})
         self._channels.forget()
         await self._talk.steps(line, self._card.prepare)
         await self._drain_errors(line)
         await self._required(line, {})
+        await self._rest(line)
         if restarted and self._card.power_on is not None:
             await self._talk.steps(line, self._card.power_on.clear)
         self._restart_seen = False
@@ -119,6 +120,8 @@ class CardDevice:
         table = self._card.orders.get(name)
         if self._account is not None and self._account.takes(order):
             return
+        if table is None and order.action is Action.CIRCULATE and self._always_circulates(order.value):
+            return
         if table is None and order.action is not Action.STOP:
             raise DeviceRefused(f"{self._spec.id}: the card has no order {name!r}")
         if table is not None and table.range is not None and not table.range[0] <= order.value <= table.range[1]:
@@ -134,6 +137,19 @@ class CardDevice:
     def last_will(self, link: LinkSpec) -> LastWill:
         """The card's stop."""
         return self._words.last_will(self._spec.id, link)
+
+    def _always_circulates(self, value: float) -> bool:
+        return self._card.channels["circulating"].constant == value
+
+    async def _rest(self, line: Line) -> None:
+        """A valve that cannot tell where it is: only a move makes it known, and rest is where a stopped rig has it."""
+        position = self._card.channels.get("position")
+        positions, rest = self._spec.facts.get("positions"), self._spec.facts.get("rest")
+        blind = position is not None and position.last_order == Action.MOVE and position.before is None
+        if blind and isinstance(positions, tuple) and rest in positions:
+            at = float(positions.index(rest))
+            await self._talk.steps(line, self._card.orders[Action.MOVE].steps, at)
+            self._channels.ordered[Action.MOVE.value] = at
 
     async def _fetch(self, line: Line, channels: list[str], seen: Seen) -> None:
         """All that one poll needs. Of a sensor, what the device refuses costs its own channels only."""
@@ -177,6 +193,14 @@ class CardDevice:
             what = plain(await self._talk.read(line, queue.text, seen)) if queue.text else ""
             found.append(f"{code} {what}".strip())
         return found
+
+
+def _parameters(spec: DeviceSpec, card: Card, options: CardOptions) -> dict[str, float | str]:
+    """As the rig file sets them; else what it knows of the unit by that name (``bore_mm``); else the card's own."""
+    known = {
+        name: fact for name, fact in spec.facts.items() if name in card.parameters and isinstance(fact, int | float)
+    }
+    return {**known, **options.parameters}
 
 
 def _account(spec: DeviceSpec) -> Account:

@@ -83,10 +83,10 @@ class Question(Table):
     """A text exchange: what is sent, the pattern of the reply with named fields, a sample from the manual.
 
     ``lines``: the reply has so many frames, which the pattern sees with a line feed between them; or it goes on until a
-    frame matches ``last``.
+    frame matches ``last``. Without ``send`` nothing is sent: the device speaks by itself, and its next reply counts.
     """
 
-    send: str
+    send: str = ""
     reply: str
     sample: str
     lines: int = Field(default=1, ge=1, le=64)
@@ -272,7 +272,8 @@ class Card(Table):
     """One device as its manual tells it. ``continuous``: a pump without syringes; the card engine keeps the account of
     fillings that the daemon orders, so that it needs no channels ``level`` and ``standby`` and no order ``fill``.
 
-    ``parameters`` are names with values that differ between devices of one kind; the rig file may set them anew.
+    ``parameters`` are names with values that differ between devices of one kind; the rig file may set them anew, and
+    what it says of a pump (``bore_mm``, ``stroke_mL``, ``rate_max_mL_min``, ``force_limit_N``) is known by that name.
     ``open`` is done before anything is asked, ``prepare`` after the identity, ``heartbeat`` after each poll.
     """
 

@@ -165,7 +165,8 @@ def _orders(card: Card) -> Iterator[Finding]:
     for name in card.orders:
         if name not in allowed:
             yield f"orders.{name}", f"a {card.family} has no order {name!r}", _allowed(name, allowed)
-    for action in sorted(MUST[card.family] - {Action.STOP}):
+    circulates = "circulating" in card.channels and card.channels["circulating"].constant is not None
+    for action in sorted(MUST[card.family] - {Action.STOP} - ({Action.CIRCULATE} if circulates else set())):
         if action.value not in card.orders:
             yield f"orders.{action.value}", f"order {action.value!r} is missing", "declare its steps"
 

@@ -61,12 +61,12 @@ class Words:
     ) -> tuple[bytes, Callable[[], ReplyReader[Mapping[str, str]]]]:
         """A request and the maker of readers of its reply."""
         framing = self._card.framing
-        request = self._out(known).wrap(text.fill(said.send, known, framing.decimal))
+        request = self._out(known).wrap(text.fill(said.send, known, framing.decimal)) if said.send else b""
         errors = {
             text.fill_pattern(pattern, known): why for pattern, why in (self._card.busy | self._card.errors).items()
         }
         expected = text.Expected(text.fill_pattern(said.reply, known), errors, said.lines, said.last)
-        echo = request.removesuffix(framing.end.encode("latin-1")) if framing.echo else b""
+        echo = request.removesuffix(framing.end.encode("latin-1")) if framing.echo and request else b""
         return request, lambda: text.TextReader(self._back(known), expected, echo=echo, numbered=self._numbered)
 
     def last_will(self, device: str, link: LinkSpec) -> LastWill:
