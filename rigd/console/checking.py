@@ -25,6 +25,7 @@ from rigd.model.problems import Problem, Severity
 from rigd.model.recipe import Recipe
 from rigd.model.rig import PropertySet, RigDefinition, VesselRole
 from rigd.report.cause_effect import LEGEND, matrix
+from rigd.report.early_sight import early_sight
 from rigd.report.gaps import gaps
 
 
@@ -154,6 +155,7 @@ def cause_effect_facts(rig: RigDefinition) -> dict[str, object]:
         "rows": [asdict(row) for row in found.rows],
         "legend": LEGEND,
         "gaps": [asdict(gap) for gap in gaps(rig)],
+        "watched_early": [asdict(one) for one in early_sight(rig)],
     }
 
 

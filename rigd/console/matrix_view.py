@@ -9,6 +9,7 @@ from rich.text import Text
 
 from rigd.model.rig import RigDefinition
 from rigd.report.cause_effect import LEGEND, Matrix, matrix
+from rigd.report.early_sight import Sight, early_sight
 from rigd.report.gaps import Gap, gaps
 
 LETTER_STYLES = {"X": "bold red", "D": "red", "F": "yellow", "H": "cyan", "N": "dim"}
@@ -22,7 +23,7 @@ GAP_HEADINGS = {
 def cause_and_effect(rig: RigDefinition) -> RenderableType:
     """Matrix, legend and gaps of a rig."""
     found = matrix(rig)
-    return Group(_table(found), _legend(found), _gaps(gaps(rig)))
+    return Group(_table(found), _legend(found), _gaps(gaps(rig)), _sight(early_sight(rig)))
 
 
 def _table(found: Matrix) -> Table:
@@ -64,4 +65,17 @@ def _gaps(found: tuple[Gap, ...]) -> RenderableType:
             text.append(f"\n{heading}\n", "bold yellow")
         for gap in rows:
             text.append(f"  {gap.what}").append(f"  (would need: {gap.remedy})\n" if gap.remedy else "\n", "dim")
+    return text
+
+
+def _sight(found: tuple[Sight, ...]) -> RenderableType:
+    """From which flow on the early rules see a change of resistance."""
+    text = Text()
+    for number, one in enumerate(found):
+        text.append("" if number else "\nwatched early\n", "bold")
+        text.append(
+            f"  resistance {one.stretch}: {one.change:.0%} more is seen from about {one.from_mL_min:.2g} mL/min on"
+        )
+        text.append("" if number else ", below only what is more", "dim")
+        text.append("\n")
     return text

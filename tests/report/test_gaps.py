@@ -12,6 +12,7 @@ from rigd.model.protection import Condition, ConditionKind
 from rigd.model.rig import RigDefinition
 from rigd.report.cause_effect import LEGEND, matrix
 from rigd.report.cause_words import condition_words
+from rigd.report.early_sight import early_sight
 from rigd.report.gaps import gaps
 
 RIGS = Path(__file__).parents[2] / "configs" / "rigs"
@@ -84,3 +85,16 @@ def test_every_rule_of_every_example_rig_is_in_a_row_and_every_letter_in_the_leg
     assert all(rule.startswith(beginnings) for rule in rules)
     assert {cell[0] for row in whole.rows for cell in row.cells.values()} <= set(LEGEND)
     assert all(set(row.cells) <= set(whole.columns) for row in whole.rows)
+
+
+def test_what_is_watched_early_is_told_with_the_flow_from_which_it_shows(rig: RigDefinition) -> None:
+    """The band over the change of the declared drop: twice the change shows at half the flow."""
+    one, last = early_sight(rig)
+    assert (one.stretch, one.change) == ("from PT-1 to PT-2 (COL)", pytest.approx(0.4))
+    assert 1.0 < one.from_mL_min < 4.0
+    moved = tuple(
+        replace(alarm, condition=replace(alarm.condition, limit=1.8)) if alarm.id == "CLOG-PT-1" else alarm
+        for alarm in rig.alarms
+    )
+    assert early_sight(replace(rig, alarms=moved))[0].from_mL_min == pytest.approx(one.from_mL_min / 2)
+    assert "to the outlet" in last.stretch
