@@ -7,7 +7,6 @@ shell. ``dry_run`` builds the rehearsal.
 from __future__ import annotations
 
 import asyncio
-import contextlib
 import faulthandler
 import gc
 import json
@@ -281,9 +280,7 @@ def _facts(plan: Mapping[str, Any], folder: Path, clock: PacedClock) -> dict[str
     facts = {name: str(plan[name]) for name in told}
     facts |= {"earlier": plan["earlier"]} if plan["earlier"] else {}
     facts |= {name: json.dumps(plan[name]) for name in JSON_FACTS}
-    for name in (run_folder.RIG, run_folder.CHEMISTRY, run_folder.RECIPE):
-        with contextlib.suppress(OSError):
-            facts[name] = (folder / name).read_text(encoding="utf-8")
+    facts |= run_folder.kept_texts(folder)
     facts["options"] = json.dumps(asdict(_run_options(plan)))
     computer = f"{platform.platform()}, Python {platform.python_version()}"
     started = {"started_utc": clock.utc(), "origin_monotonic_ns": str(clock.origin_ns), "boot_id": boot_id()}
@@ -334,7 +331,7 @@ def dry_run(rig_path: Path, recipe_path: Path, settings: DrySettings = DrySettin
     if settings.deep:
         shell = DeepShell(program, plant, lines, make_drivers(pair.rig), journal, settings.watch)
     else:
-        shell = DryShell(program, plant, cell_readers(pair.rig), journal, settings.watch)
+        shell = DryShell(program, plant, cell_readers(pair.rig, pair.recipe), journal, settings.watch)
     result = shell.run(settings.options)
     if journal is not None:
         journal.note(END_TEXT, result.text)

@@ -7,6 +7,7 @@ line out.
 
 from __future__ import annotations
 
+import contextlib
 import re
 import tomllib
 from collections.abc import Mapping
@@ -63,6 +64,21 @@ def _cards(folder: Path, rig: Mapping[str, Any]) -> dict[str, str]:
         if ".." in Path(name).parts:
             raise RigError(f"card {name!r}: keep cards beside or below the rig file, so that a run can keep its copy")
     return {name: (folder / name).read_text(encoding="utf-8") for name in near}
+
+
+def kept_texts(folder: Path) -> dict[str, str]:
+    """All frozen files of a run folder by their names in it, cards too; those that cannot be read are left out."""
+    found = {}
+    for path in sorted(folder.rglob("*.toml")):
+        with contextlib.suppress(OSError, ValueError):
+            found[path.relative_to(folder).as_posix()] = path.read_text(encoding="utf-8")
+    return found
+
+
+def texts_in(meta: Mapping[str, str]) -> dict[str, str]:
+    """The frozen files among the facts of a journal; names that would lead out of a folder are left out."""
+    names = [name for name in meta if name.endswith(".toml")]
+    return {name: meta[name] for name in names if not Path(name).is_absolute() and ".." not in Path(name).parts}
 
 
 def write_texts(folder: Path, texts: Mapping[str, str]) -> None:

@@ -12,19 +12,16 @@ from rigd.model.errors import ConfigError
 from rigd.report.collect import read_run
 from rigd.report.data import RunData
 
-FILES = (run_folder.RIG, run_folder.CHEMISTRY, run_folder.RECIPE)
-
 
 def open_run(folder: Path) -> RunData:
-    """Read a run. Its files are those beside the journal, else the copies inside it; files that this version can no
+    """Read a run. Its files are those in the journal, else the copies beside it; files that this version can no
     longer read are left out; a missing journal is a ``JournalError``."""
-    if (folder / run_folder.RIG).is_file():
-        return _read(folder, folder)
     with JournalReader(folder) as journal:
-        texts = {name: journal.meta[name] for name in FILES if name in journal.meta}
+        texts = run_folder.texts_in(journal.meta)
+    if run_folder.RIG not in texts:
+        return _read(folder, folder)
     with tempfile.TemporaryDirectory(prefix="rigd-") as copies:
-        for name, text in texts.items():
-            (Path(copies) / name).write_text(text, encoding="utf-8")
+        run_folder.write_texts(Path(copies), texts)
         return _read(folder, Path(copies))
 
 

@@ -55,12 +55,10 @@ def _temporary_files(journal: JournalReader) -> Iterator[Path]:
 
 
 def _texts_of(journal: JournalReader) -> dict[str, str]:
-    """Rig, chemistry and recipe file of the run: those in the journal, else the copies beside it."""
-    texts = {name: journal.meta[name] for name in FILES if name in journal.meta}
-    for name in FILES:
-        copy = journal.path.parent / name
-        if name not in texts and copy.is_file():
-            texts[name] = copy.read_text(encoding="utf-8")
+    """Rig, chemistry, recipe and cards of the run: those in the journal, else the copies beside it."""
+    texts = run_folder.texts_in(journal.meta)
+    if any(name not in texts for name in FILES):
+        texts = {**run_folder.kept_texts(journal.path.parent), **texts}
     missing = [name for name in FILES if name not in texts]
     if missing:
         raise JournalError(

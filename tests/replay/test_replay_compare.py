@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 import os
+import shutil
 import signal
 import subprocess
 import sys
@@ -11,13 +12,17 @@ import time
 from pathlib import Path
 
 import pytest
+from fakes.card_rigs import modbus_rig
 from fakes.recorded import BLOCK, RECIPE, RIG, copy_of, recorded, spoilt
 
 from rigd.adapters.journal_reader import JournalReader, ScanRecord
+from rigd.app import DrySettings, dry_run
 from rigd.model.errors import JournalError
 from rigd.model.events import Event, EventKind
 from rigd.model.intake import NOTHING as NOTHING_NEW
 from rigd.ports.plant import FaultSpec
+from rigd.report.open_run import open_run
+from rigd.runtime.dry import DryOptions
 from rigd.runtime.replay import NOTHING, difference, replay
 
 
@@ -279,3 +284,20 @@ def scans_in(journal: Path) -> int:
             return reader.span()[0]
     except JournalError:
         return 0
+
+
+def test_a_run_with_cards_finds_them_in_its_journal_and_nothing_leads_out_of_the_folder(tmp_path):
+    (tmp_path / "files").mkdir()
+    rig, recipe = modbus_rig(tmp_path / "files", 5020)
+    run = tmp_path / "run"
+    run.mkdir()
+    options = DryOptions(limit_ns=5_000_000_000)
+    dry_run(rig, recipe, DrySettings(journal=run / "run.sqlite", options=options))
+    with spoilt(run) as tables:
+        tables.execute("INSERT INTO meta VALUES ('../outside.toml', 'x')")
+    shutil.rmtree(tmp_path / "files")
+    found = replay(run)
+    assert found.same
+    assert not found.notes
+    assert open_run(run).rig is not None
+    assert not list(tmp_path.rglob("outside.toml"))
