@@ -11,7 +11,7 @@ from rigd.model.devices import LinkSpec
 from rigd.model.protection import Armed, OnBad
 from rigd.model.rig import AlertChannel, MqttSpec
 
-DIMENSION_OF = {"pressure": "pressure", "temperature": "temperature", "flow": "flow", "volume": "volume", "state": ""}
+DIMENSION_OF = {name: name for name in ("pressure", "temperature", "flow", "volume", "mass")} | {"state": ""}
 """What a sensor may measure, and the dimension of its value ("" = a state with labels)."""
 
 COMPARISONS = ("above", "below", "equals", "differs_from", "disagrees_with", "rate_above", "mismatch_by", "quality")
@@ -51,7 +51,7 @@ class SensorTable(Table):
 
     tag: Id
     title: Text
-    measures: Literal["pressure", "temperature", "flow", "volume", "state"]
+    measures: Literal["pressure", "temperature", "flow", "volume", "mass", "state"]
     at: EndOrPart
     span: tuple[Written, Written] | None = None
     labels: tuple[Text, ...] = ()

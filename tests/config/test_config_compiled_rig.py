@@ -269,3 +269,13 @@ def test_a_pump_without_syringes_needs_none_of_their_sizes(tmp_path: Path) -> No
     assert pump.continuous
     assert (pump.syringes, pump.stroke_mL) == (2, 25.0)  # as it is planned: five minutes of its largest rate
     assert pump.stall_bar == pytest.approx(15.0)
+
+
+def test_a_balance_is_a_sensor_of_mass(tmp_path: Path) -> None:
+    balance = (
+        '[[sensors]]\ntag = "WT-1"\ntitle = "balance below the flask"\nmeasures = "mass"\nat = "flask"\n'
+        'span = ["0 g", "2 kg"]\ndevice = "sensors"\nchannel = "w1"\n\n[[interlocks]]'
+    )
+    path, _ = write(tmp_path, RIG.replace("[[interlocks]]", balance, 1), RECIPE, CHEMISTRY)
+    tag = load_rig(path).tag("WT-1")
+    assert (tag.unit, tag.low, tag.high) == ("g", 0.0, 2000.0)
