@@ -95,7 +95,7 @@ def _clog(tag: str, words: str, limits: EarlyLimits) -> Alarm:
     limit = 1.0 + limits.resistance_up
     return _alarm(
         f"CLOG-{tag}",
-        f"The path {words} resists more than it did",
+        f"The path {words} closes",
         Condition(ConditionKind.HIGH, f"{tag}.resistance", limit, deadband=0.25 * limits.resistance_up),
         Priority.MEDIUM,
         "Lower the flow or hold the run; look for fines, precipitate, a pressed bed or a filter that fills.",
@@ -108,7 +108,7 @@ def _open(tag: str, words: str, limits: EarlyLimits) -> Alarm:
     limit = 1.0 - limits.resistance_down
     return _alarm(
         f"OPEN-{tag}",
-        f"The path {words} resists less than it did",
+        f"The path {words} opens or loses liquid",
         Condition(ConditionKind.LOW, f"{tag}.resistance", limit, deadband=0.25 * limits.resistance_down),
         Priority.HIGH,
         "Look for liquid on the bench and for gas in the lines; check that each pump delivers; in doubt hold the run.",
@@ -120,7 +120,7 @@ def _open(tag: str, words: str, limits: EarlyLimits) -> Alarm:
 def _soon(tag: str, words: str, limits: EarlyLimits) -> Alarm:
     return _alarm(
         f"SOON-{tag}",
-        f"A pressure limit comes near: the path {words} closes",
+        f"A trip comes near: the path {words} closes",
         Condition(ConditionKind.LOW, f"{tag}.time-left", limits.time_left_s, deadband=0.5 * limits.time_left_s),
         Priority.HIGH,
         "Lower the flow or stop with a flush now, before the limit cuts the run with reagent in the bed.",

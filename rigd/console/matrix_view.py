@@ -73,9 +73,8 @@ def _sight(found: tuple[Sight, ...]) -> RenderableType:
     text = Text()
     for number, one in enumerate(found):
         text.append("" if number else "\nwatched early\n", "bold")
-        text.append(
-            f"  resistance {one.stretch}: {one.change:.0%} more is seen from about {one.from_mL_min:.2g} mL/min on"
-        )
+        text.append(f"  resistance {one.stretch}: {100 * one.change:.0f} % more")
+        text.append(f" is seen from about {one.from_mL_min:.2g} mL/min on")
         text.append("" if number else ", below only what is more", "dim")
         text.append("\n")
     return text

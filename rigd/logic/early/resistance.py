@@ -184,7 +184,7 @@ def _judge(scene: Scene, stretch: Stretch, known: Watched) -> tuple[Watched, tup
     known = replace(known, lefts=(*known.lefts[1 - LOOKS :], left_s))
     left_s = median(known.lefts)
     words = f", {_time(left_s)} to {limit:g} bar at this rate" if left_s < FAR_S else ""
-    known = replace(known, remark=_remark(stretch, ratio, words))
+    known = replace(known, remark=_remark(ratio, words))
     shown = {f"{stretch.upper}.resistance": ratio, f"{stretch.upper}.time-left": left_s}
     tags = scene.program.tags
     return known, tuple(Sample(tag, value, scene.now_ns) for tag, value in shown.items() if tag in tags)
@@ -216,10 +216,10 @@ def _time(seconds: float) -> str:
     return f"{seconds / 60.0:.0f} min" if seconds < 5400.0 else f"{seconds / 3600.0:.1f} h"
 
 
-def _remark(stretch: Stretch, ratio: float, left: str) -> str:
+def _remark(ratio: float, left: str) -> str:
     if ratio == 1.0:
-        return f"resistance {stretch.words} as learned"
+        return "resistance as learned"
     change = ratio - 1.0
     if change > 2.0:
-        return f"resistance {stretch.words} {ratio:.2g} times what was learned{left}"
-    return f"resistance {stretch.words} {'up' if change > 0 else 'down'} {abs(change):.0%} since it was learned{left}"
+        return f"resistance {ratio:.2g} times what was learned{left}"
+    return f"resistance {'up' if change > 0 else 'down'} {100 * abs(change):.0f} % since it was learned{left}"

@@ -174,7 +174,7 @@ def _update(
 def _say_balance(remarks: dict[str, str], meter: Meter, ratio: float | None) -> None:
     if ratio is not None:
         what = "the flow of its pumps" if meter.pumps else "what was moved by count"
-        remarks[f"{meter.tag}.balance"] = f"{meter.tag} sees {ratio:.0%} of {what}"
+        remarks[f"{meter.tag}.balance"] = f"{meter.tag} sees {100 * ratio:.0f} % of {what}"
 
 
 def _show(program: Program, shown: dict[str, Sample], tag: str, value: float | None, now_ns: int) -> None:
