@@ -12,7 +12,7 @@ Valid where absorbance is linear, usually below 1.0 to 1.2 AU (common practice, 
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -43,7 +43,8 @@ class Unmixer:
     """Un-mixes spectra of one grid. Made once per cell; ``solve`` takes some 20 microseconds.
 
     ``species_ids`` are the species that absorb (``ValueError`` for one without bands); grid in 1/cm; ``path_um`` the
-    optical path [um]. ``condition_number`` is that of the library with columns scaled to length one: relative errors
+    optical path [um]. ``measured`` takes the place of the library, which is ``drawn``: absorbance per mol/L in this
+    cell, by species. ``condition_number`` is that of the library with columns scaled to length one: relative errors
     of the spectrum may come back that much larger.
     """
 
@@ -55,11 +56,13 @@ class Unmixer:
         step_per_cm: float,
         points: int,
         path_um: float,
+        measured: Mapping[str, Array] | None = None,
     ) -> None:
         known = chemistry.species_by_id()
         self.species_ids = tuple(species_ids)
         grid = start_per_cm + step_per_cm * np.arange(points, dtype=np.float64)
-        columns = [reference_spectrum(known[name], grid) * path_um * CM_PER_UM for name in self.species_ids]
+        self.drawn = {name: reference_spectrum(known[name], grid) * path_um * CM_PER_UM for name in self.species_ids}
+        columns = [(measured or self.drawn)[name] for name in self.species_ids]
         pure = np.column_stack(columns)
         blind = [name for name, column in zip(self.species_ids, columns, strict=True) if not column.any()]
         if blind:

@@ -36,6 +36,7 @@ def compile_recipe(file: RecipeFile, points: tuple[Point, ...], rig: RigDefiniti
         refill_below_mL=file.refill_below,
         seed=file.sweep.seed if file.sweep else 0,
         digest=digest,
+        references=file.references.value() if file.references else None,
     )
 
 

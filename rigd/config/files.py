@@ -16,6 +16,7 @@ from rigd.config.recipe_tables import (
     PermitTable,
     PrimeTable,
     RampTable,
+    ReferencesTable,
     SettleTable,
     SheetTable,
     SwitchoverTable,
@@ -89,6 +90,7 @@ class RecipeFile(Table):
     checklist: tuple[ChecklistTable, ...] = ()
     prime: PrimeTable | None = None
     conditioning: ConditioningTable | None = None
+    references: ReferencesTable | None = None
     leak_test: LeakTestTable | None = None
     switchover: SwitchoverTable | None = None
     sweep: SweepTable | None = None

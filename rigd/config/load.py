@@ -17,6 +17,7 @@ from rigd.config.checks.lines import check_lines
 from rigd.config.checks.parts import check_parts
 from rigd.config.checks.recipe import RecipeContext, check_recipe
 from rigd.config.checks.recipe_limits import check_recipe_limits
+from rigd.config.checks.references import check_references
 from rigd.config.checks.volumes import check_volumes
 from rigd.config.chemistry_tables import ChemistryFile
 from rigd.config.compile_recipe import compile_recipe
@@ -167,7 +168,7 @@ def _read_recipe(
     path_of_rig = _path_of(rig)
     points = _points(file, path_of_rig)
     context = RecipeContext(file, points, rig, path_of_rig, found)
-    for check in (check_recipe, check_recipe_limits, check_volumes):
+    for check in (check_recipe, check_references, check_recipe_limits, check_volumes):
         check(context)
     if found.failed:
         return None, found.sorted_by_line

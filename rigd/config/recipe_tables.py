@@ -28,6 +28,7 @@ from rigd.model.recipe import (
     Permit,
     Prime,
     Ramp,
+    References,
     Switchover,
 )
 
@@ -90,9 +91,20 @@ class ChecklistTable(Table):
 
     id: Id
     text: Text
+    reference: str = ""
 
     def value(self) -> ChecklistItem:
-        return ChecklistItem(self.id, self.text)
+        return ChecklistItem(self.id, self.text, self.reference)
+
+
+class ReferencesTable(Table):
+    """Reference spectra: the mean of so many, of the solvent when conditioning ends, of a liquid that a checklist item
+    names when that is signed."""
+
+    spectra: Annotated[int, Field(ge=3, le=100)]
+
+    def value(self) -> References:
+        return References(self.spectra)
 
 
 class PrimeTable(Table):

@@ -9,10 +9,19 @@ from enum import StrEnum
 
 @dataclass(frozen=True, slots=True)
 class ChecklistItem:
-    """Something a person does and signs before the start."""
+    """Something a person does and signs before the start. ``reference``: the liquid that is in the cell by then."""
 
     id: str
     text: str
+    reference: str = ""
+
+
+@dataclass(frozen=True, slots=True)
+class References:
+    """Reference spectra: the mean of the last ``spectra`` ones, of solvent when conditioning ends, of a feed when the
+    checklist item that names it is signed."""
+
+    spectra: int
 
 
 @dataclass(frozen=True, slots=True)
@@ -193,6 +202,7 @@ class Recipe:
     refill_below_mL: Mapping[str, float] = field(default_factory=dict)
     seed: int = 0
     digest: str = ""
+    references: References | None = None
 
     @property
     def solvent_only(self) -> bool:

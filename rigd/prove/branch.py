@@ -74,7 +74,7 @@ def run_job(job: Job) -> list[Night]:
         afterwards=(Verb.START,),
     )
     try:
-        result = DryShell(program, plant, cell_readers(pair.rig)).run(options)
+        result = DryShell(program, plant, cell_readers(pair.rig, pair.recipe)).run(options)
         if here.fault is None:
             return here.nights
         hazards = next(kind.hazards for kind in plant_maker().fault_kinds() if kind.kind == here.fault.kind)

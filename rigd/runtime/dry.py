@@ -11,6 +11,7 @@ from __future__ import annotations
 import heapq
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field
+from typing import Protocol
 
 from rigd.logic import scan
 from rigd.logic.program import Program
@@ -30,8 +31,18 @@ NEVER_NS = 1 << 62
 LONGEST_NS = 14 * 86_400 * 1_000_000_000
 """A dry run that is not over after two weeks of its own time is ended and said to be endless."""
 
-Derive = Callable[[Spectrum], Sequence[Reading]]
-"""Turns a spectrum into readings of the derived channels of its device."""
+
+class Derive(Protocol):
+    """Turns a spectrum into readings of the derived channels of its device, and hears what happens in the run."""
+
+    def __call__(self, spectrum: Spectrum) -> Sequence[Reading]:
+        """The readings."""
+
+    def hear(self, events: Sequence[Event]) -> None:
+        """What happened."""
+
+    def keep(self, taken: Callable[[Spectrum], None]) -> None:
+        """Hand each reference spectrum to ``taken`` from now on."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -122,6 +133,8 @@ class DryShell:
         self._plant = plant
         self._derived = derived or {}
         self._journal = journal
+        for derive in self._derived.values() if journal is not None else ():
+            derive.keep(journal.spectrum)
         self._watch = watch
         self._polls = [poll for device in program.rig.devices for poll in polls_of(program.rig, device)]
         self._last_ns: dict[str, int] = {}
@@ -153,6 +166,7 @@ class DryShell:
             links = ()
             step = self._decide(state, intake, now_ns)
             state, wake_ns = step.state, max(step.wake_ns, now_ns + 1_000_000)
+            self._listen(step.events)
             tape.samples(samples)
             tape.decided(step.orders, step.events)
             outcomes = tuple(self._carry_out(order, now_ns) for order in step.orders)
@@ -207,6 +221,11 @@ class DryShell:
             self._watch(now_ns, step.state)
             self._watch_ns = now_ns + 1_000_000_000
         return step
+
+    def _listen(self, events: Sequence[Event]) -> None:
+        if events:
+            for derive in self._derived.values():
+                derive.hear(events)
 
     def _carry_out(self, order: Order, now_ns: int) -> Outcome:
         refusal = self._plant.tell(order.unit, order.action, order.value)

@@ -76,7 +76,7 @@ class Live:
     def __post_init__(self) -> None:
         given, rig = self.given, self.given.program.rig
         self.inbox = CoreInbox(prompt_tags(given.program))
-        derive = cell_readers(rig)
+        derive = cell_readers(rig, given.program.recipe)
         self.devices = [
             Device(spec, given.drivers[spec.id], polls_of(rig, spec), self.inbox, given.clock, derive.get(spec.id))
             for spec in rig.devices
@@ -91,7 +91,9 @@ class Live:
             given.program, self.inbox, of_unit, given.journal, given.clock, self._vigil, self._permission
         )
         self.attendant = Attendant(self.inbox, given.clock, self.devices)
-        self.loop.listeners += [self.attendant.hear, self._hand_on]
+        self.loop.listeners += [self.attendant.hear, self._hand_on, *(reader.hear for reader in derive.values())]
+        for reader in derive.values():
+            reader.keep(given.journal.spectrum)
 
     def submit(self, request: Request) -> None:
         """Put a request from outside into the next scan."""
