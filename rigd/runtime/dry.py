@@ -133,8 +133,9 @@ class DryShell:
         self._plant = plant
         self._derived = derived or {}
         self._journal = journal
-        for derive in self._derived.values() if journal is not None else ():
-            derive.keep(journal.spectrum)
+        if journal is not None:
+            for derive in self._derived.values():
+                derive.keep(journal.spectrum)
         self._watch = watch
         self._polls = [poll for device in program.rig.devices for poll in polls_of(program.rig, device)]
         self._last_ns: dict[str, int] = {}
