@@ -73,8 +73,9 @@ class Scene:
     now_ns: int
 
     def mean(self, tag: str) -> float | None:
-        """Mean of a tag since the last look; ``None`` when it is old or cannot be believed."""
-        since_ns = self.now_ns - LOOK_NS
+        """Mean of a tag since the last look, or of its last two samples; ``None`` when it cannot be believed."""
+        period_ns = self.program.tags[tag].period_ns
+        since_ns = self.now_ns - max(LOOK_NS, 2 * period_ns)
         values = [s.value for s in self.rings.get(tag, ()) if s.t_ns > since_ns and s.quality is Quality.GOOD]
         return sum(values) / len(values) if values and self.value(tag) is not None else None
 
