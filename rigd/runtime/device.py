@@ -20,6 +20,8 @@ NS = 1_000_000_000
 RETRY_NS = (NS // 2, NS, 2 * NS, 5 * NS)
 """Pauses between attempts to reach a device that is not there [wall]: growing, so that it does not eat a shared
 line."""
+RECOGNISE_NS = 10 * NS
+"""How often a device is asked again who it is [wall]."""
 
 
 class Device:
@@ -43,7 +45,7 @@ class Device:
         self.detail = "not reached yet"
         self.polls = tuple(polls)
         self.due_ns = [0] * len(self.polls)
-        self.retry_wall_ns = 0
+        self.retry_wall_ns = self.recognise_wall_ns = 0
         self.spectrum_taken: Callable[[Spectrum], None] = lambda spectrum: None
         self._attempts = 0
         self._prepared = False
@@ -66,9 +68,24 @@ class Device:
             self._changed(self.link.lose(), str(error))
             return
         self.identity, self._prepared, self._attempts = identity, True, 0
+        self.recognise_wall_ns = wall_ns + RECOGNISE_NS
         self._start_ns = self._clock.now_ns()
         self.due_ns = [self._start_ns] * len(self.polls)
         self._changed(self.link.arrive(), "", power_cycled)
+
+    async def recognise(self, line: Line, wall_ns: int) -> None:
+        """Ask again who is there: a device that was exchanged between two polls would answer them all the same."""
+        self.recognise_wall_ns = wall_ns + RECOGNISE_NS
+        try:
+            self._check(await self._driver.identify(line))
+        except LinkClosed:
+            raise
+        except WrongDevice as error:
+            self._changed(self.link.lose(), str(error))
+        except (LinkError, ProtocolError, DeviceRefused) as error:
+            self._missed(error)
+        else:
+            self._answered()
 
     async def poll(self, line: Line, index: int) -> None:
         """Read one group of channels and hand its samples to the core."""
@@ -129,11 +146,12 @@ class Device:
     def _check(self, identity: DeviceIdentity) -> None:
         """Raises ``WrongDevice`` when another one answers than the rig file, or this run, knows."""
         wanted = self.spec.serial_no or (self.identity.serial_no if self.identity else "")
+        who = f"serial number {identity.serial_no!r} ({identity.maker} {identity.model})"
         if wanted and identity.serial_no != wanted:
-            raise WrongDevice(
-                f"{self.spec.id}: serial number {identity.serial_no!r} ({identity.maker} {identity.model}) answers, "
-                f"{wanted!r} is expected"
-            )
+            raise WrongDevice(f"{self.spec.id}: {who} answers, {wanted!r} is expected")
+        known = self.identity
+        if known is not None and (identity.maker, identity.model) != (known.maker, known.model):
+            raise WrongDevice(f"{self.spec.id}: {who} answers where a {known.maker} {known.model} was")
 
     def _answered(self) -> None:
         self._changed(self.link.answer(), "")

@@ -133,6 +133,8 @@ class LinkOwner:
             await self._carry_out(patient, order, patient)
         elif device is not None and due_ns <= now_ns:
             await self._call(device.poll(patient, device.next_poll_ns()[1]), device)
+        elif unsure := next((d for d in usable if d.recognise_wall_ns <= wall_ns), None):
+            await self._call(unsure.recognise(patient, wall_ns), unsure)
         elif lost := next((d for d in self.devices if not d.link.usable and d.retry_wall_ns <= wall_ns), None):
             await self._call(lost.bring_up(patient, wall_ns), lost)
         else:
@@ -182,7 +184,8 @@ class LinkOwner:
         usable = [device for device in self.devices if device.link.usable]
         due_ns = min((device.next_poll_ns()[0] for device in usable), default=2**62)
         to_poll_s = (due_ns - self._clock.now_ns()) / self._clock.pace / NS
-        retry_ns = min((device.retry_wall_ns for device in self.devices if not device.link.usable), default=2**62)
+        asked_ns = (d.recognise_wall_ns if d.link.usable else d.retry_wall_ns for d in self.devices)
+        retry_ns = min(asked_ns, default=2**62)
         return max(0.0, min(1.0, to_poll_s, (retry_ns - self._wall_ns()) / NS))
 
     async def _rest(self, seconds: float) -> None:

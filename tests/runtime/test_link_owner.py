@@ -19,7 +19,7 @@ from rigd.model.intake import Intake
 from rigd.model.orders import Action, Authority, Order, Result
 from rigd.ports.link import Link
 from rigd.runtime.core_inbox import CoreInbox
-from rigd.runtime.device import Device
+from rigd.runtime.device import RECOGNISE_NS, Device
 from rigd.runtime.link_owner import LinkOwner
 from rigd.runtime.polls import Poll
 from rigd.runtime.virtual_time import LoopClock, VirtualLoop
@@ -238,3 +238,22 @@ def test_nothing_is_left_waiting_whatever_is_posted(seed: int) -> None:
             assert sorted(told) == list(range(200))
 
     virtually(storm)()
+
+
+@virtually
+async def test_a_device_exchanged_between_two_polls_is_noticed_within_the_time_of_asking_again() -> None:
+    """It answers every poll, so no silence tells."""
+    bench = Bench(WordDevice("a", serial_no="7"), WordDevice("b", serial_no="1"))
+    async with bench.running():
+        calm = await bench.after(25)
+        assert [status.link for status in calm.links if status.device == "a"] == [LinkState.OPENING, LinkState.ONLINE]
+        assert bench.far[0].heard.count("who") == 3
+        bench.far[0].serial_no = "9"
+        intake = await bench.after(RECOGNISE_NS / 1e9 + 0.5)
+        lost = next(status for status in intake.links if status.link is LinkState.FAILED)
+        assert lost.device == "a"
+        assert "serial number '9'" in lost.detail
+        assert lost.identity is not None
+        assert lost.identity.serial_no == "7"
+        bench.far[0].serial_no = "7"
+        assert (await bench.after(10)).links[-1].link is LinkState.ONLINE
