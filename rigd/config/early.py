@@ -17,8 +17,8 @@ from rigd.model.rig import RigDefinition, Tag, TagKind
 from rigd.model.units import HOUSE
 
 LOOK_S = 5.0
-ON_S, OFF_S = 20.0, 60.0
-"""Four looks must agree before a person is told; what has gone for a minute has gone (proposal; no source)."""
+ON_S, OFF_S = 20.0, 300.0
+"""Four looks must agree before a person is told; what comes and goes with refills stands (proposal; no source)."""
 
 
 def early_plan(rig: RigDefinition) -> EarlyPlan:
