@@ -104,7 +104,22 @@ def problems(
         if flow > most * (1 + 1e-9):
             message = f"{pump} delivers at most {most:.4g} mL/min by its calibration, {flow:.4g} mL/min are planned"
             told.append(Problem("calibrated-rate", message, "plan less flow through it"))
-    return told
+    return [*told, *(_volume_off(one) for one in found if one.kind is RecordKind.SEGMENT and _is_off(one))]
+
+
+def _is_off(one: Calibrated) -> bool:
+    drawn_mL = one.values.get("drawn_mL", 0.0)
+    return drawn_mL > 0 and abs(one.values["volume_mL"] / drawn_mL - 1.0) > VOLUME_OFF
+
+
+def _volume_off(one: Calibrated) -> Problem:
+    volume_mL, drawn_mL = one.values["volume_mL"], one.values["drawn_mL"]
+    return Problem(
+        "volume-off",
+        f"{one.subject} holds {volume_mL:.4g} mL by tracer ({one.utc[:10]}), the rig file said {drawn_mL:.4g} mL then",
+        "correct bores, lengths or voidage in the rig file, then measure again: delays and hold-ups follow from them",
+        severity=Severity.WARNING,
+    )
 
 
 def _time(utc: str) -> datetime:

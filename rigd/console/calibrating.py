@@ -9,6 +9,9 @@ from typing import TYPE_CHECKING
 
 import click
 
+from rigd.console.output import Output
+from rigd.model.units import UnitError, parse_quantity
+
 if TYPE_CHECKING:
     from rich.table import Table
 
@@ -21,6 +24,27 @@ DENSITY_KNOWN = 0.001
 """Half-width, as a share, to which a density from a property set is believed (proposal; no source)."""
 WATER_KNOWN = 1e-5
 """The same of pure water by the formula, in g/mL; dissolved air alone makes 3e-6."""
+
+
+def asked_masses(output: Output, pump: str, ordered_mL: float) -> tuple[float, ...]:
+    """Ask a person for one weighing after the other until an empty line; what cannot be read is asked again."""
+    output.errors.print(
+        f"Let {pump} deliver {ordered_mL:g} mL into the tared vessel, wait for the last drop, type the mass with its "
+        "unit; tare, and again. An empty line ends it."
+    )
+    masses: list[float] = []
+    while True:
+        text = click.prompt(f"mass {len(masses) + 1}", default="", show_default=False, err=True)
+        if not text.strip():
+            return tuple(masses)
+        try:
+            masses.append(parse_quantity(text, "mass"))
+        except UnitError as error:
+            output.errors.print(str(error))
+            continue
+        if len(masses) > 1:
+            mean_g = sum(masses) / len(masses)
+            output.errors.print(f"mean {mean_g:.5g} g, scatter {scatter(tuple(masses)) / mean_g:.2%}")
 
 
 def density_of(

@@ -65,6 +65,17 @@ def test_overdue_and_out_of_reach_are_told() -> None:
     assert not problems([LATE], datetime(2026, 2, 1, tzinfo=UTC), {"PU-A": 4.4}, {"PU-A": 5.0})
 
 
+def test_a_segment_that_holds_something_else_than_drawn_is_told() -> None:
+    def segment(volume_mL: float) -> Calibrated:
+        values = {"volume_mL": volume_mL, "drawn_mL": 2.0}
+        return Calibrated(RecordKind.SEGMENT, "L-1+COL", LATE.utc, "2999-01-01T00:00:00+00:00", "B", values)
+
+    assert not problems([segment(2.1)], NOW, {}, {})
+    (told,) = problems([segment(2.5)], NOW, {}, {})
+    assert told.code == "volume-off"
+    assert "2.5 mL by tracer" in told.message
+
+
 def test_facts_there_and_back() -> None:
     assert from_facts(facts([LATE], NOW)) == (LATE,)
     with pytest.raises(JournalError, match="cannot be read"):

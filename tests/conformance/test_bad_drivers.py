@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import asyncio
 import importlib
+import json
 import subprocess
 import sys
 import time
@@ -177,6 +178,13 @@ def test_a_bad_habit_is_found_out(trial: ModuleType, bad: Any, test: str) -> Non
 @pytest.mark.parametrize("test", sorted({test for _, test in HABITS}))
 def test_the_good_one_passes_what_the_bad_ones_fail(trial: ModuleType, test: str) -> None:
     getattr(spoilt(trial, Bad), test)()
+
+
+def test_installed_families_are_listed_with_their_origin(capsys: pytest.CaptureFixture[str]) -> None:
+    assert call(["driver", "list", "--json"]) == 0
+    found = {one["name"]: one for one in json.loads(capsys.readouterr().out)["drivers"]}
+    assert found["syringe-pump"]["origin"] == "package rigd, rigd_drivers.syringe_pump:FAMILY"
+    assert found["selector-valve"]["title"] == "selector valve with 2 to 10 positions"
 
 
 def test_names_that_cannot_be_are_refused_and_nothing_is_overwritten(tmp_path: Path) -> None:

@@ -59,6 +59,20 @@ def test_a_second_calibration_builds_on_the_one_in_force(tmp_path: Path, capsys:
     capsys.readouterr()
 
 
+def test_weighings_are_asked_for_one_after_the_other(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch, capsys: pytest.CaptureFixture[str]
+) -> None:
+    rig, _ = write(tmp_path)
+    answers = iter(["1.600 g", "1,6", "1.604 g", "1.596 g", ""])
+    monkeypatch.setattr("click.prompt", lambda text, **more: next(answers))
+    assert call(["calibrate", "pump", str(rig), "PU-A", "--ordered", "2 mL", "--density", "0.8 g/mL"]) == 0
+    told = capsys.readouterr().err
+    assert "mean 1.6 g, scatter 0.25%" in " ".join(told.split())
+    assert "'1,6'" in told
+    (record,) = read_records(rig)
+    assert json.loads(record.detail)["values"]["repeats"] == 3
+
+
 def test_a_sensor_at_two_points_and_then_its_zero_alone(tmp_path: Path) -> None:
     rig, _ = write(tmp_path)
 

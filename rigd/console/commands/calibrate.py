@@ -10,7 +10,7 @@ from typing import TYPE_CHECKING
 
 import click
 
-from rigd.console.calibrating import budget, density_of, drawn_mL, line_through, moments, scatter
+from rigd.console.calibrating import asked_masses, budget, density_of, drawn_mL, line_through, moments, scatter
 from rigd.console.output import Command, Output, json_option
 from rigd.model.units import HOUSE, UnitError, parse_quantity
 
@@ -58,8 +58,8 @@ def calibrate() -> None:
 @RIG
 @click.argument("pump")
 @click.option("--ordered", type=Quantity("volume"), required=True, help="Volume ordered in each repeat: '2 mL'.")
-@click.option("--mass", "masses", type=Quantity("mass"), multiple=True, required=True, help="Weighed in one repeat: "
-              "'1.5723 g'. At least three times; ten are better.")  # fmt: skip
+@click.option("--mass", "masses", type=Quantity("mass"), multiple=True, help="Weighed in one repeat: "
+              "'1.5723 g'. At least three times; ten are better. Without it you are asked for each.")  # fmt: skip
 @click.option("--liquid", default="", help="Which liquid of the rig was weighed; default: its solvent.")
 @click.option("--at", "liquid_degC", type=Quantity("temperature"), default="22 degC", show_default=True,
               help="Temperature of the liquid.")  # fmt: skip
@@ -91,6 +91,7 @@ def pump(
     from rigd.model.records import RecordKind
 
     definition, before = _rig(rig, RecordKind.PUMP, pump, [one.id for one in _load(rig).pumps])
+    masses = masses or asked_masses(output, pump, ordered)
     density_g_mL, standard, per_K, source = density_of(definition, liquid, liquid_degC, density, density_within)
     weighing = Weighing(ordered, masses, density_g_mL, standard, per_K, 0.5, digit, balance, evaporated)
     try:
