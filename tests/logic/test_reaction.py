@@ -12,6 +12,7 @@ from fakes.rigs import MS, S, program_of
 from rigd.logic.demand import PumpDemand
 from rigd.logic.program import RunOptions, compile_program
 from rigd.logic.protect import reaction
+from rigd.logic.protect.describe_state import standing
 from rigd.logic.response import SHARE, responses
 from rigd.model.events import Event, EventKind
 from rigd.model.samples import Sample
@@ -102,3 +103,13 @@ def test_a_path_stiffer_than_stated_leaves_less_time_and_a_softer_one_more() -> 
     (stiff,), slow = reaction.with_compliance(rig, recipe, 0.004, 0)
     assert stiff.fields["value"] == pytest.approx(0.2 * stated.safety_s, rel=1e-3)
     assert "as measured only" in slow
+
+
+def test_a_screen_shows_what_the_value_of_a_standing_alarm_means_where_that_is_known() -> None:
+    run = running()
+    run.sensors["PT-1"] = 7.0
+    run.run(3.0)
+    state = run.state.protect
+    assert [alarm["id"] for alarm in standing(run.program, state, run.now_ns)] == ["PRESSURE-RISING"]
+    said = replace(state, early=replace(state.early, remarks={"PT-1": "12 min to 8 bar at this rate"}))
+    assert standing(run.program, said, run.now_ns)[0]["text"] == "12 min to 8 bar at this rate"

@@ -41,7 +41,7 @@ def standing(program: Program, state: ProtectState, now_ns: int) -> list[dict[st
                     "hidden": running.flag is not None,
                     "priority": int(alarm.priority),
                     "title": alarm.title,
-                    "text": alarm.consequence or alarm.title,
+                    "text": state.early.remarks.get(alarm.condition.tag, alarm.consequence or alarm.title),
                     "do": alarm.action,
                     "since_s": (now_ns - running.since_ns) / 1e9,
                 }
