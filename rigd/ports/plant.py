@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
-from typing import Protocol
+from typing import Protocol, runtime_checkable
 
 from rigd.model.orders import Action
 from rigd.model.rig import PropertySet, RigDefinition
@@ -59,6 +59,18 @@ class Plant(Protocol):
         """True state for checkers: "pressure:<part>" [bar], "temperature:<part>" [degC], "flow:<line>" [mL/min],
         "volume:<vessel>" [mL], "conversion:<part>", "level:<pump>",
         "delivering:<pump>" [mL/min], "peak-pressure:<part>" [bar since the start]."""
+
+
+NO_ANSWER = "no answer"
+"""Fault word of every reading of a device that does not answer, and its reason to refuse a command."""
+
+
+@runtime_checkable
+class PowerAware(Protocol):
+    """A plant whose units can lose their power."""
+
+    def restarts(self) -> Sequence[str]:
+        """Devices that lost power and came back since this was last asked."""
 
 
 def _no_targets(rig: RigDefinition, kind: str) -> Sequence[str]:

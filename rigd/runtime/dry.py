@@ -16,17 +16,16 @@ from typing import Protocol
 from rigd.logic import scan
 from rigd.logic.program import Program
 from rigd.logic.run_end import RunEnd
-from rigd.model.devices import DeviceIdentity, DeviceStatus, LinkState
 from rigd.model.events import Event, EventKind
 from rigd.model.intake import Intake
 from rigd.model.orders import Order, Outcome, Request, Result, Verb
 from rigd.model.samples import Reading, Sample, Spectrum
 from rigd.ports.journal import Journal
-from rigd.ports.plant import Plant
+from rigd.ports.plant import NO_ANSWER, Plant, PowerAware
+from rigd.runtime.dry_links import DryLinks
 from rigd.runtime.polls import Poll, polls_of, samples_of
 from rigd.runtime.tape import Tape
 
-SIMULATED = DeviceIdentity(maker="rigd", model="simulated", serial_no="0", simulated=True)
 NEVER_NS = 1 << 62
 LONGEST_NS = 14 * 86_400 * 1_000_000_000
 """A dry run that is not over after two weeks of its own time is ended and said to be endless."""
@@ -138,6 +137,8 @@ class DryShell:
                 derive.keep(journal.spectrum)
         self._watch = watch
         self._polls = [poll for device in program.rig.devices for poll in polls_of(program.rig, device)]
+        restarts = plant.restarts if isinstance(plant, PowerAware) else tuple
+        self._links = DryLinks((device.id for device in program.rig.devices), restarts)
         self._last_ns: dict[str, int] = {}
         self._queue: list[tuple[int, int, object]] = []
         self._sequence = 0
@@ -155,7 +156,6 @@ class DryShell:
         for poll in self._polls:
             self._at(0, poll)
         outcomes: tuple[Outcome, ...] = ()
-        links = tuple(DeviceStatus(d.id, LinkState.ONLINE, 0, identity=SIMULATED) for d in self._program.rig.devices)
         wake_ns, end, end_ns, held_ns = 0, None, options.limit_ns, NEVER_NS
         now_ns = 0
         while True:
@@ -163,8 +163,8 @@ class DryShell:
             now_ns = min(max(now_ns, min(due_ns, wake_ns)), end_ns)
             self._plant.advance(now_ns)
             samples, requests = self._due(now_ns)
+            links = self._links.news(now_ns)
             intake = Intake(samples=samples, outcomes=outcomes, links=links, requests=requests)
-            links = ()
             step = self._decide(state, intake, now_ns)
             state, wake_ns = step.state, max(step.wake_ns, now_ns + 1_000_000)
             self._listen(step.events)
@@ -202,7 +202,8 @@ class DryShell:
 
     def _read(self, poll: Poll, now_ns: int) -> list[Sample]:
         if not poll.spectrum:
-            return samples_of(poll, self._plant.read(poll.device, poll.channels), now_ns)
+            readings = self._plant.read(poll.device, poll.channels)
+            return samples_of(poll, self._links.heard(poll.device, readings, now_ns), now_ns)
         spectrum = self._plant.spectrum(poll.device)
         if not spectrum.absorbance or spectrum.t_ns == self._last_ns.get(poll.device):
             return []  # the same one as before: a detector that stands still turns stale, as it should
@@ -230,7 +231,7 @@ class DryShell:
 
     def _carry_out(self, order: Order, now_ns: int) -> Outcome:
         refusal = self._plant.tell(order.unit, order.action, order.value)
-        result = Result.REFUSED if refusal else Result.DONE
+        result = Result.FAILED if refusal == NO_ANSWER else Result.REFUSED if refusal else Result.DONE
         return Outcome(order.number, order.unit, order.action, result, now_ns, refusal)
 
     def _result(self, end: RunEnd | None, tape: Tape, state: scan.CoreState, now_ns: int) -> DryResult:

@@ -16,7 +16,7 @@ from rigd.model.devices import PumpState
 from rigd.model.orders import Action
 from rigd.model.rig import RigDefinition
 from rigd.model.samples import Reading, Spectrum
-from rigd.ports.plant import FaultSpec
+from rigd.ports.plant import NO_ANSWER, FaultSpec
 from rigd_sim.physics.constants import ATMOSPHERE_PA, ML_M3, ML_MIN_M3_S, ZERO_CELSIUS_K
 from rigd_sim.plant.ailments import Ailments, FaultEffect
 from rigd_sim.plant.bath_unit import BathUnit
@@ -63,6 +63,7 @@ class RigPlant:
         self.levers = Levers()
         self._units = {d.id: d.unit for d in rig.devices}
         self._device_of = {d.unit: d.id for d in rig.devices if d.unit}
+        self._restarts: list[str] = []
         self._chemistry_ns = min([CHEMISTRY_NS, *(c.period_ns for c in rig.cells)])
         self._carried_ns = self._solved_ns = self._calm_ns = 0
         self._headspace: dict[str, float] = {}
@@ -256,6 +257,7 @@ class RigPlant:
         self.levers = self.ailments.levers(self.now_ns / NS)
         for unit in self.levers.restarted - before:
             self._restart(unit)
+            self._restarts.append(self._device_of[unit])
         self.contents.room_K = self.rig.simulation.ambient_degC + ZERO_CELSIUS_K + self.levers.room_K
         for name, vessel in self.layout.vessels.items():
             self.contents.hide(name, name in self.levers.bottle_empty)
@@ -293,7 +295,7 @@ class RigPlant:
         if unit in self.levers.refusing:
             return "fault"
         if self._device_of.get(unit) in self.levers.silent:
-            return "no answer"
+            return NO_ANSWER
         if unit in self.pumps:
             self._carry()
             self.flows.restless = math.inf
@@ -307,10 +309,17 @@ class RigPlant:
             return self.baths[unit].tell(action, value)
         return "word"
 
+    def restarts(self) -> Sequence[str]:
+        """Devices that lost power and came back since this was last asked."""
+        if not self._restarts:
+            return ()
+        told, self._restarts = self._restarts, []
+        return told
+
     def read(self, device: str, channels: Sequence[str]) -> Sequence[Reading]:
         """What the instruments of this device show now."""
         if device in self.levers.silent:
-            return [Reading(c, math.nan, fault="no answer") for c in channels]
+            return [Reading(c, math.nan, fault=NO_ANSWER) for c in channels]
         unit = self._units.get(device, "")
         if unit in self.pumps:
             if self._solved_ns < self.now_ns:  # a counter is exact, in calm too
