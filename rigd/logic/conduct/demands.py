@@ -16,6 +16,9 @@ from rigd.logic.view import View
 from rigd.model.events import Event
 from rigd.model.orders import Authority
 
+HAND_NS = 600_000_000_000
+"""So long a person has to turn a valve: ten minutes of process time (proposal; no source)."""
+
 
 def demand_for(
     state: ConductState, view: View, wants: Wants
@@ -27,7 +30,7 @@ def demand_for(
         valves[state.layout.path.outlet_valve] = wants.outlet
     valves.pop("", None)
     state, events = _by_hand(state, view, valves)
-    state = replace(state, tracks={name: one.track for name, one in charges.items()})
+    state, hand_due_ns = _late_hand(replace(state, tracks={n: one.track for n, one in charges.items()}), view)
     baths = {}
     if state.bath_degC is not None:
         baths = {chiller.id: BathDemand(state.bath_degC, state.circulate) for chiller in state.layout.rig.chillers}
@@ -38,7 +41,7 @@ def demand_for(
         valves=valves,
         baths=baths,
     )
-    dues = [one.due_ns for one in charges.values() if one.due_ns is not None]
+    dues = [due for due in (hand_due_ns, *(one.due_ns for one in charges.values())) if due is not None]
     return state, demand, min(dues, default=None), events
 
 
@@ -74,8 +77,20 @@ def _by_hand(state: ConductState, view: View, valves: dict[str, str]) -> tuple[C
             by_hand[valve] = wanted
             del prompts[name]
         elif state.positions.get(valve) != wanted and name not in prompts:
-            prompts[name] = Prompt(name, f"Turn {valve} to {wanted}, then confirm.")
+            prompts[name] = Prompt(name, f"Turn {valve} to {wanted}, then confirm.", since_ns=view.now_ns)
             events.append(prompt_event(prompts[name], view.now_ns))
     if prompts == state.prompts and by_hand == state.by_hand:
         return state, ()
     return replace(state, prompts=prompts, by_hand=by_hand), tuple(events)
+
+
+def _late_hand(state: ConductState, view: View) -> tuple[ConductState, int | None]:
+    """A valve that nobody turns for ``HAND_NS`` is trouble, and the run holds. Also when the next one would be late."""
+    asked = [one for one in state.prompts.values() if one.status == "open" and one.since_ns]
+    late = next((one for one in asked if view.now_ns >= one.since_ns + HAND_NS), None)
+    if late is not None and not any(track.trouble for track in state.tracks.values()):
+        text = f"nobody has confirmed within {HAND_NS / 60e9:g} min: {late.text}"
+        first, track = next(iter(state.tracks.items()))
+        return replace(state, tracks={**state.tracks, first: replace(track, trouble=text)}), view.now_ns + 1
+    dues = [one.since_ns + HAND_NS for one in asked]
+    return state, min((due for due in dues if due > view.now_ns), default=None)

@@ -49,12 +49,14 @@ class Wants:
 
 @dataclass(frozen=True, slots=True)
 class Prompt:
-    """Something a person must do or know. ``status`` is open, confirmed or withdrawn."""
+    """Something a person must do or know. ``status`` is open, confirmed or withdrawn; ``since_ns`` when it was asked
+    for the turn of a valve."""
 
     id: str
     text: str
     status: str = "open"
     who: str = ""
+    since_ns: int = 0
 
 
 @dataclass(frozen=True, slots=True)
