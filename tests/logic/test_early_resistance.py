@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from dataclasses import replace
 
 import pytest
 from fakes.early_bench import EarlyBench, example
@@ -10,6 +11,7 @@ from fakes.early_bench import EarlyBench, example
 from rigd.config.early import ON_S
 from rigd.logic.early import resistance
 from rigd.logic.early.scene import LOOK_NS
+from rigd.logic.early.watch import UNKNOWN_VISCOSITY
 from rigd.logic.protect.ledger import Content
 from rigd.model.events import EventKind
 
@@ -108,6 +110,19 @@ def test_on_the_way_back_to_solvent_everything_between_the_two_is_healthy() -> N
     bench.mu = 1.0
     bench.run(300)
     assert bench.all(R1) == {1.0}
+
+
+def test_a_solvent_of_unknown_viscosity_may_do_what_solvents_do_with_temperature() -> None:
+    plan = replace(example().early, viscosity=None, tolerance=(1 / UNKNOWN_VISCOSITY, UNKNOWN_VISCOSITY))
+    bench = EarlyBench(program=replace(example(), early=plan))
+    bench.learn()
+    for degC in (40.0, 60.0, 22.0):
+        bench.bed_degC = degC
+        bench.run(60)
+    assert bench.all(R1) == {1.0}
+    bench.clog = 6.0
+    bench.run(60)
+    assert bench.last(R1) > 1.4
 
 
 def test_a_reagent_far_thicker_than_stated_is_told() -> None:

@@ -139,6 +139,8 @@ def _learned(scene: Scene, stretch: Stretch, line: LearnedSum, drop: float) -> E
 
 def _range(scene: Scene, known: Watched) -> tuple[float, float]:
     """Least and most that a healthy path may resist now, over solvent: one factor once its liquid has filled it."""
+    if scene.program.early.viscosity is None:  # nobody knows what the temperature does to it
+        return scene.program.early.tolerance
     own = 1.0 if scene.solvent else known.factors.get(scene.mixture)
     filled = scene.passed_mL >= FILLED * scene.program.early.wetted_mL
     if own is not None and filled:
