@@ -7,6 +7,7 @@ from dataclasses import dataclass
 from pathlib import Path
 
 from rigd.app import DrySettings, dry_run
+from rigd.logic.early.resistance import FAR_S
 from rigd.logic.scan import CoreState
 from rigd.model.events import EventKind
 from rigd.ports.plant import FaultSpec
@@ -61,10 +62,10 @@ def night(folder: str, asked: Night) -> Morning:
 
     def watch(now_ns: int, state: CoreState) -> None:
         samples = state.protect.signals.samples
-        found = [samples.get(f"{tag}.{name}") for tag in ("PT-1", "PT-2") for name in ("resistance", "time-left")]
-        if all(found):
-            one, left, two, later = (sample.value for sample in found if sample)
-            course.append((now_ns / 1e9, max(one, two), min(left, later)))
+        ratios = [samples[tag].value for tag in ("PT-1.resistance", "PT-2.resistance") if tag in samples]
+        lefts = [samples[tag].value for tag in ("PT-1.time-left", "PT-2.time-left") if tag in samples]
+        if ratios:
+            course.append((now_ns / 1e9, max(ratios), min(lefts, default=FAR_S)))
 
     faults = (
         () if asked.fault is None else (FaultSpec(*asked.fault[:2], onset_s=asked.fault[2], magnitude=asked.fault[3]),)

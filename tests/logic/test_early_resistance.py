@@ -12,6 +12,7 @@ from rigd.config.early import ON_S
 from rigd.logic.early import resistance
 from rigd.logic.early.scene import LOOK_NS
 from rigd.logic.early.watch import UNKNOWN_VISCOSITY
+from rigd.logic.protect.describe_state import values
 from rigd.logic.protect.ledger import Content
 from rigd.model.events import EventKind
 
@@ -180,7 +181,16 @@ def test_a_step_has_no_time_left() -> None:
     bench = learned()
     bench.clog = 4.0
     bench.run(300)
-    assert bench.all(LEFT) == {resistance.FAR_S}
+    assert LEFT not in bench.values
+    bench.clog = 1.0
+    bench.run(60)
+    for part in range(60):
+        bench.clog = 1.0 + part / 8
+        bench.run(10)
+    assert bench.last(LEFT) < resistance.FAR_S
+    bench.clog = 1.0
+    bench.run(60)
+    assert bench.last(LEFT) == resistance.FAR_S
 
 
 def test_an_error_in_the_early_rules_is_said_once_and_stops_nothing(monkeypatch: pytest.MonkeyPatch) -> None:
@@ -212,3 +222,9 @@ def test_the_plan_of_the_example_rig() -> None:
     assert plan.stretches[1].limits == (("PT-1", 8.0), ("PT-2", 8.0))
     assert plan.stiff == "PT-1"
     assert [bed.tag for bed in plan.beds] == ["TT-1"]
+
+
+def test_a_screen_is_not_shown_what_has_not_been_said_yet() -> None:
+    shown = values(example(), {})
+    assert "PT-1" in shown
+    assert not {"PT-1.resistance", "PT-1.time-left", "PT-1.compliance", "flask.volume"} & set(shown)

@@ -187,7 +187,9 @@ def _judge(scene: Scene, stretch: Stretch, known: Watched) -> tuple[Watched, tup
     left_s = median(known.lefts)
     words = f", {_time(left_s)} to {limit:g} bar at this rate" if left_s < FAR_S else ""
     known = replace(known, remark=_remark(ratio, words))
-    shown = {f"{stretch.upper}.resistance": ratio, f"{stretch.upper}.time-left": left_s}
+    shown = {f"{stretch.upper}.resistance": ratio}
+    if left_s < FAR_S or f"{stretch.upper}.time-left" in scene.samples:
+        shown[f"{stretch.upper}.time-left"] = left_s
     tags = scene.program.tags
     return known, tuple(Sample(tag, value, scene.now_ns) for tag, value in shown.items() if tag in tags)
 

@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING
 from rigd.logic.protect.alarm_core import AlarmState
 from rigd.logic.protect.describe import label
 from rigd.logic.protect.protection import ProtectState
+from rigd.model.rig import TagKind
 from rigd.model.samples import Sample
 
 if TYPE_CHECKING:
@@ -54,6 +55,8 @@ def values(program: Program, samples: Mapping[str, Sample]) -> dict[str, dict[st
     shown: dict[str, dict[str, object]] = {}
     for name, tag in program.tags.items():
         sample = samples.get(name)
+        if sample is None and tag.kind is TagKind.DERIVED and not tag.device:
+            continue  # nothing to be read: it comes when there is something to say
         if sample is None:
             shown[name] = {"v": None, "q": "bad", "c": "never seen", "u": tag.unit, "text": ""}
             continue
