@@ -10,6 +10,7 @@ import sys
 import threading
 import time
 from collections.abc import Iterator, Mapping
+from dataclasses import replace
 from functools import partial
 from types import FrameType
 
@@ -27,6 +28,8 @@ from rigd_sim.emulators.line_faults import LINE_KINDS
 AT_ONCE_s = 0.0005
 """A reply due so soon goes out now: the system's timer is no finer."""
 LATE_s = 1.0
+SIMULATED = "simulated"
+"""The port of a link that asks for the simulator (rig file)."""
 PACE_MAX = 1000.0
 
 
@@ -121,8 +124,9 @@ def _opened(
         sys.stderr.write("Preparing the simulated rig; the first start on a computer compiles it and takes longer.\n")
     warm_up(maker.make(rig, options.seed), rig)
     plant = maker.make(rig, options.seed)
-    lines = emulated_lines(rig, plant, options.pace, options.seed)
-    devices = {spec.id: spec.link for spec in rig.devices}
+    served = _served(rig)
+    lines = emulated_lines(served, plant, options.pace, options.seed)
+    devices = {spec.id: spec.link for spec in served.devices}
     world = World(plant, lines, devices, maker.fault_kinds(), LINE_KINDS, options.pace)
     for fault in options.faults:
         world.inject(fault)
@@ -140,6 +144,13 @@ def _opened(
     if not options.quiet:
         _tell(rig, options, ports)
     return server
+
+
+def _served(rig: RigDefinition) -> RigDefinition:
+    """The rig with the links that ask for the simulator; with all of them when none does (a real rig rehearsed)."""
+    links = tuple(link for link in rig.links if link.port == SIMULATED) or rig.links
+    names = {link.id for link in links}
+    return replace(rig, links=links, devices=tuple(spec for spec in rig.devices if spec.link in names))
 
 
 def _tell(rig: RigDefinition, options: SimulatorOptions, ports: Mapping[str, str]) -> None:
