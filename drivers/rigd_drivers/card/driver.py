@@ -123,11 +123,14 @@ class CardDevice:
         if table is None and order.action is Action.CIRCULATE and self._always_circulates(order.value):
             return
         if table is None and order.action is not Action.STOP:
-            raise DeviceRefused(f"{self._spec.id}: the card has no order {name!r}")
+            raise LocalProtocolError(f"{self._spec.id}: the card has no order {name!r}")
+        if not math.isfinite(order.value):
+            raise LocalProtocolError(f"{self._spec.id}: {name} {order.value:g} is no number")
         if table is not None and table.range is not None and not table.range[0] <= order.value <= table.range[1]:
             low, high = table.range
             raise DeviceRefused(f"{self._spec.id}: {name} {order.value:g} is outside {low:g} to {high:g}")
-        await self._talk.steps(line, self._card.stop.steps if table is None else table.steps, order.value)
+        once = order.action in (Action.FILL, Action.SWAP)  # said twice they could be done twice
+        await self._talk.steps(line, self._card.stop.steps if table is None else table.steps, order.value, once)
         if errors := await self._drain_errors(line):
             raise DeviceRefused(f"{self._spec.id}: {name} {order.value:g}: {'; '.join(errors)}")
         self._channels.ordered[name] = order.value
@@ -139,7 +142,8 @@ class CardDevice:
         return self._words.last_will(self._spec.id, link)
 
     def _always_circulates(self, value: float) -> bool:
-        return self._card.channels["circulating"].constant == value
+        channel = self._card.channels.get("circulating")
+        return channel is not None and channel.constant == value
 
     async def _rest(self, line: Line) -> None:
         """A valve that cannot tell where it is: only a move makes it known, and rest is where a stopped rig has it."""
@@ -209,6 +213,10 @@ def _account(spec: DeviceSpec) -> Account:
 
 
 def _check_spec(spec: DeviceSpec, card: Card, options: CardOptions) -> None:
+    if spec.dialect:
+        raise refuse(
+            spec, "dialect-wrong", "dialect", f"dialect {spec.dialect!r}", "leave it out; the card is the dialect"
+        )
     if card.modbus and spec.address and not (spec.address.isdecimal() and 0 <= int(spec.address) <= 255):
         raise refuse(spec, "address-wrong", "address", f"found {spec.address!r}", "a Modbus unit, '0' to '255'")
     if spec.facts.get("continuous", card.continuous) != card.continuous and not card.continuous:

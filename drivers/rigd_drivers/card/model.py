@@ -126,7 +126,8 @@ class Step(Table):
     """One exchange: a register write (``write``, ``set``), a block of them, or words (``send``, ``reply``, ``sample``).
 
     ``set`` is "value" (the order's value in ``unit``), a number, or an expression of it and of readings; on the wire
-    stands (set - ``offset``) / ``scale``, or what ``map`` says. A step is left out unless ``when`` is true. Afterwards:
+    stands (set - ``offset``) / ``scale``, or what ``map`` says. A step is left out unless ``when`` is true. It is said
+    again when no answer came, but not with ``once`` (what does not state a target), nor in ``fill`` and ``swap``. Then:
     ``pause_s``; what was written is read back (``verify``); ``confirm`` is read and compared within ``tolerance``; it
     is waited until ``until`` is true. The last three have ``within_s`` for it.
     """
@@ -135,6 +136,7 @@ class Step(Table):
     set: NumberOrFormula = "value"
     block: dict[str, NumberOrFormula] = Field(default_factory=dict)
     verify: bool = True
+    once: bool = False
     send: str = ""
     reply: str = ""
     sample: str = ""

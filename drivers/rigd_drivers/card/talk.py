@@ -73,18 +73,19 @@ class Talk:
         comma = self._card.framing.decimal == "," and re.fullmatch(r"\s*[-+]?\d*,\d+\s*", field)
         return field.replace(",", ".") if comma else field
 
-    async def step(self, line: Line, step: Step, value: float | None) -> None:
-        """One step of an order, and its proof."""
+    async def step(self, line: Line, step: Step, value: float | None, once: bool = False) -> None:
+        """One step of an order, and its proof; ``once``: not said again when no answer came."""
+        again = not (once or step.once)
         seen: Seen = {}
         if step.when and not bool(await self._formula(line, step.when, step, value, seen)):
             return
         raw = await self._raw(line, step, value, seen)
         if step.write:
-            await self._write(line, step, raw)
+            await self._write(line, step, raw, again)
         elif step.block:
-            await self._block(line, step, value, seen)
+            await self._block(line, step, value, seen, again)
         elif step.send:
-            await self._ask_words(line, step, await self._slots(line, step, raw, seen))
+            await self._ask_words(line, step, await self._slots(line, step, raw, seen), again)
         if step.pause_s:
             await asyncio.sleep(step.pause_s)
         if step.confirm:
@@ -92,10 +93,10 @@ class Talk:
         if step.until:
             await self._until(line, step)
 
-    async def steps(self, line: Line, steps: Iterable[Step], value: float | None = None) -> None:
+    async def steps(self, line: Line, steps: Iterable[Step], value: float | None = None, once: bool = False) -> None:
         """Several, in turn."""
         for step in steps:
-            await self.step(line, step, value)
+            await self.step(line, step, value, once)
 
     async def _formula(self, line: Line, formula: str, step: Step, value: float | None, seen: Seen) -> Value:
         """An expression of the order's value (in the step's unit) and of readings."""
@@ -117,7 +118,7 @@ class Talk:
         await self.fetch(line, names, seen)
         return self.known(seen) | {"value": raw}
 
-    async def _write(self, line: Line, step: Step, raw: float) -> None:
+    async def _write(self, line: Line, step: Step, raw: float, again: bool) -> None:
         place = self._words.place(step.write)
         if place.bit is not None and place.write != "mask":
             word = (await self._pdu(line, modbus.read_pdu(place)))[2:]
@@ -127,11 +128,11 @@ class Talk:
                 request = bytes([6]) + request[1:3] + word
         else:
             request = modbus.write_pdu(place, raw)
-        await self._pdu(line, request)
+        await self._pdu(line, request, again)
         if step.verify:
             await self._verified(line, step, step.write, raw)
 
-    async def _block(self, line: Line, step: Step, value: float | None, seen: Seen) -> None:
+    async def _block(self, line: Line, step: Step, value: float | None, seen: Seen, again: bool) -> None:
         """Several neighbouring registers in one message; values stand as they are, without scale."""
         numbers = {
             name: number(await self._formula(line, formula, step, value, seen)) if isinstance(formula, str) else formula
@@ -140,7 +141,7 @@ class Talk:
         places = {name: self._words.place(name) for name in numbers}
         ordered = sorted(places, key=lambda name: places[name].address)
         words = b"".join(modbus.encode(places[name], numbers[name]) for name in ordered)
-        await self._pdu(line, modbus.write_block_pdu(places[ordered[0]].address, words))
+        await self._pdu(line, modbus.write_block_pdu(places[ordered[0]].address, words), again)
         for name in ordered if step.verify else ():
             await self._verified(line, step, name, numbers[name])
 
@@ -194,8 +195,8 @@ class Talk:
                 part = bytes([body[at // 8] >> at % 8]) if place.bits else body[2 * at : 2 * (at + place.count)]
                 seen[name] = modbus.decode(place, part)
 
-    async def _pdu(self, line: Line, pdu: bytes) -> bytes:
-        async def once() -> bytes:
+    async def _pdu(self, line: Line, pdu: bytes, again: bool = True) -> bytes:
+        async def exchange() -> bytes:
             self._number = (self._number + 1) % 256
             request, reader = self._words.register_request(self._first | self._number, pdu)
             try:
@@ -205,13 +206,13 @@ class Talk:
                     raise StillBusy(str(error)) from error
                 raise
 
-        return await self._patiently(once)
+        return await self._patiently(exchange, again)
 
-    async def _ask_words(self, line: Line, said: Question | Step, known: Seen) -> Mapping[str, str]:
+    async def _ask_words(self, line: Line, said: Question | Step, known: Seen, again: bool = True) -> Mapping[str, str]:
         self._number = (self._number + 1) % 10_000
         request, reader = self._words.text_request(said, known | {"number": float(self._number)})
 
-        async def once() -> Mapping[str, str]:
+        async def exchange() -> Mapping[str, str]:
             wait_s = said.timeout_s or self._card.link.reply_timeout_s
             try:
                 return await line.ask(request, reader(), timeout_s=wait_s)
@@ -220,17 +221,17 @@ class Talk:
                     raise StillBusy(str(error)) from error
                 raise
 
-        return await self._patiently(once)
+        return await self._patiently(exchange, again)
 
-    async def _patiently(self, once: Callable[[], Awaitable[T]]) -> T:
+    async def _patiently(self, exchange: Callable[[], Awaitable[T]], again: bool) -> T:
         """An exchange, again when no answer came (so many times) and when the device is busy (so long)."""
         loop = asyncio.get_running_loop()
-        left, busy_until_s = self._retries, loop.time() + self._card.link.busy_s
+        left, busy_until_s = self._retries if again else 0, loop.time() + self._card.link.busy_s
         while True:
             if (wait_s := self._free_s - loop.time()) > 0:
                 await asyncio.sleep(wait_s)
             try:
-                return await once()
+                return await exchange()
             except LinkTimeout as error:
                 left -= 1
                 if left < 0:
