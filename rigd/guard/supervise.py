@@ -6,7 +6,8 @@ every other case it is killed first, so that it cannot send anything after the l
 business (first: orderly stop, second: cut); the guard hands them on, and what comes before control is ready waits
 for it. (5) A closed terminal (SIGHUP) ends nothing.
 (6) The
-pipe of ``RIGD_LIFE_FD``, from which control reads nothing, tells it by its end that the guard is gone.
+pipe of ``RIGD_LIFE_FD``, from which control reads nothing, tells it by its end that the guard is gone. (7) Boot time
+that runs ahead of monotonic time means that the computer slept and nobody watched: control may not go on.
 """
 
 from __future__ import annotations
@@ -19,21 +20,33 @@ import signal
 import subprocess
 import sys
 import time
+from collections.abc import Callable
 from datetime import UTC, datetime
 from pathlib import Path
 from typing import Any
 
+from rigd.guard.notify import Notifier
 from rigd.guard.wills import Log, send_wills
 from rigd.model.ticket import Window, read_ticket
 
 FAREWELL_S = 15.0
+SLEPT_NS = 1_000_000_000
+LOOK_S = 0.5
 SIGNALS = (signal.SIGINT, signal.SIGTERM)
 
 
-class Guard:
-    """One run: ``watch`` until control has ended or has to be ended."""
+def suspended_ns() -> int:
+    """Time that this computer has spent suspended since it was started; 0 on a system without such a clock."""
+    boot = getattr(time, "CLOCK_BOOTTIME", None)
+    return 0 if boot is None else time.clock_gettime_ns(boot) - time.clock_gettime_ns(time.CLOCK_MONOTONIC)
 
-    def __init__(self, plan_path: str) -> None:
+
+class Guard:
+    """One run: ``watch`` until control has ended or has to be ended. ``slept_ns`` as ``suspended_ns``."""
+
+    def __init__(self, plan_path: str, slept_ns: Callable[[], int] = suspended_ns) -> None:
+        self._slept_ns, self._awake_ns = slept_ns, slept_ns()
+        self._notifier = Notifier()
         self.plan: dict[str, Any] = json.loads(Path(plan_path).read_text(encoding="utf-8"))
         self.folder = Path(self.plan["folder"])
         self.log = Log(self.folder / "guard.log")
@@ -59,7 +72,11 @@ class Guard:
         """Returns when control said its end (``end``), or with the reason why it may not go on (``wrong``)."""
         while self.end is None and not self.wrong:
             left_s = (self._window.deadline_ns - time.monotonic_ns()) / 1e9
-            if select.select([self._tickets], [], [], max(0.0, left_s))[0]:
+            heard = select.select([self._tickets], [], [], min(max(0.0, left_s), LOOK_S))[0]
+            slept_ns = self._slept_ns() - self._awake_ns
+            if self.began and slept_ns > SLEPT_NS:
+                self.wrong = f"was suspended with the computer for {slept_ns / 1e9:.1f} s"
+            elif heard:
                 self._read()
             elif time.monotonic_ns() >= self._window.deadline_ns:
                 self.wrong = "gave no sign of life in time"
@@ -72,6 +89,10 @@ class Guard:
                 self.control.wait(FAREWELL_S)
         self.control.kill()
         self.log.write(f"control ended with status {self.control.wait()}")
+
+    def finish_notifying(self, sentence: str) -> None:
+        """Tell a service manager how it ended."""
+        self._notifier.say(f"STOPPING=1\nSTATUS={sentence}")
 
     def finish_helpers(self) -> None:
         """Let the front send what it has, and the progress display clear its line; then end them."""
@@ -133,16 +154,19 @@ class Guard:
         elif ticket := read_ticket(line):
             self.began = True
             self.wrong = self.wrong or self._window.judge(ticket, time.monotonic_ns())
+            if not self.wrong:
+                self._notifier.alive()
         else:
             self.wrong = self.wrong or f"said something that is no ticket ({line[:40]!r})"
 
 
-def guard(plan_path: str) -> int:
+def guard(plan_path: str, slept_ns: Callable[[], int] = suspended_ns) -> int:
     """Guard one run; returns the exit code of the daemon: control's own, or 1 when the guard had to stop the rig."""
-    one = Guard(plan_path)
+    one = Guard(plan_path, slept_ns)
     one.watch()
     one.finish_control()
     code, sentence = one.end if one.end is not None and not one.wrong else _take_over(one)
+    one.finish_notifying(sentence)
     _say(sentence)
     one.finish_helpers()
     for path in one.plan["cleanup"]:

@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
+import contextlib
 import json
 import os
 import pty
 import select
 import signal
+import socket
 import subprocess
 import sys
 import textwrap
@@ -184,6 +186,43 @@ def test_control_that_fails_is_ended_and_the_rig_stopped(
     assert peer.stopped_at - began < seconds + 0.5  # 0.5 s: two Pythons start first
     report = json.loads((tmp_path / "guard.json").read_text())
     assert report["devices"]["pump"]["confirmed"] is True
+
+
+SLEEPER = """
+import sys, time
+from rigd.guard.supervise import guard
+began = time.monotonic()
+raise SystemExit(guard(sys.argv[1], lambda: 40_000_000_000 if time.monotonic() > began + 0.8 else 0))
+"""
+
+
+def test_a_computer_that_slept_has_not_been_watched(tmp_path: Path, peer: Peer) -> None:
+    """Boot time runs ahead of monotonic time by 40 s; control knows nothing of it and goes on with good tickets."""
+    command = [sys.executable, "-c", SLEEPER, str(plan(tmp_path, "signals", {"pump": peer.port}))]
+    done = subprocess.run(command, capture_output=True, text=True, timeout=20, check=False)
+    assert done.returncode == 1
+    assert "suspended with the computer for 40.0 s" in done.stderr
+    assert peer.stopped_at > 0
+    assert json.loads((tmp_path / "guard.json").read_text())["devices"]["pump"]["confirmed"] is True
+
+
+@pytest.mark.parametrize("mode", ["done", "hang"])
+def test_the_service_manager_hears_of_a_watched_rig_only_while_it_is_watched(
+    tmp_path: Path, peer: Peer, mode: str
+) -> None:
+    """The datagrams of sd_notify(3); a control that hangs is no reason to say that all is well."""
+    with socket.socket(socket.AF_UNIX, socket.SOCK_DGRAM) as manager:
+        manager.bind(str(tmp_path / "notify"))
+        manager.settimeout(0.2)
+        env = {**os.environ, "NOTIFY_SOCKET": str(tmp_path / "notify"), "WATCHDOG_USEC": "200000"}
+        run_guard(plan(tmp_path, mode, {"pump": peer.port}), env=env)
+        told = []
+        with contextlib.suppress(TimeoutError):
+            while True:
+                told.append(manager.recv(4096).decode())
+    assert told[0].startswith("READY=1")
+    assert told[-1].startswith("STOPPING=1")
+    assert 3 <= told.count("WATCHDOG=1") <= 5  # five tickets in 0.3 s, told at most each 50 ms
 
 
 def test_wills_are_repeated_until_a_deaf_pump_confirms(tmp_path: Path, peer: Peer) -> None:
