@@ -66,8 +66,7 @@ class Checked:
 def check_files(rig_path: Path, recipe_path: Path | None) -> Checked:
     """Load, make the drivers, plan, compare response times. Raises ``ConfigError`` or ``PluginError``."""
     pair = load_pair(rig_path, recipe_path)
-    for device in pair.rig.devices:
-        driver_family(device.driver).make(device)
+    _make_drivers(pair.rig)
     found = responses(pair.rig, pair.recipe)
     planned = foreseen_plan(compile_program(pair.rig, pair.recipe)) if pair.recipe else None
     severity = Severity.ERROR if pair.recipe else Severity.WARNING
@@ -79,6 +78,18 @@ def check_files(rig_path: Path, recipe_path: Path | None) -> Checked:
     calibrated = in_force(pair.rig, read_records(rig_path))
     more = (*more, *_calibration_problems(pair.rig, calibrated, planned))
     return Checked(pair.rig, pair.recipe, planned, (*problems, *more), found, flow_mL_min, sets, calibrated)
+
+
+def _make_drivers(rig: RigDefinition) -> None:
+    """Make and forget each driver; ``ConfigError`` with what is wrong with any of them, each problem once."""
+    problems: dict[Problem, None] = {}
+    for device in rig.devices:
+        try:
+            driver_family(device.driver).make(device)
+        except ConfigError as error:
+            problems |= dict.fromkeys(error.problems)
+    if problems:
+        raise ConfigError(tuple(problems))
 
 
 def _calibration_problems(rig: RigDefinition, found: tuple[Calibrated, ...], planned: Plan | None) -> list[Problem]:

@@ -17,8 +17,11 @@ from pathlib import Path
 from typing import ClassVar
 
 import pytest
+from fakes.card_rigs import manual_rig
 
+from rigd.console.checking import check_files
 from rigd.console.cli import call
+from rigd.model.errors import ConfigError
 
 RIGD = (sys.executable, "-m", "rigd")
 
@@ -121,3 +124,20 @@ def until(descriptor: int, wanted: bytes) -> bytes:
         assert time.monotonic() < end_s, heard
         heard += os.read(descriptor, 4096)
     return heard
+
+
+def test_check_tells_what_is_wrong_with_all_cards_of_a_rig(tmp_path: Path) -> None:
+    (tmp_path / "rigs").mkdir()
+    rig, recipe = manual_rig(tmp_path, {"pumps": 1, "map": 2, "chiller": "/dev/null"})
+    check_files(rig, recipe)
+    card = tmp_path / "rigs/ascii-pump.toml"
+    card.write_text(card.read_text(encoding="utf-8").replace('"lrc"', '"lcr"'), encoding="utf-8")
+    (tmp_path / "rigs/ascii-chiller.toml").unlink()
+    rig.write_text(rig.read_text(encoding="utf-8").replace('channel = "p1"', 'channel = "p9"'), encoding="utf-8")
+    with pytest.raises(ConfigError) as caught:
+        check_files(rig, recipe)
+    told = [str(problem) for problem in caught.value.problems]
+    assert len(told) == 3
+    assert "ascii-pump.toml:16: framing.checksum" in told[0]
+    assert "did you mean 'p1'" in told[1]
+    assert "cannot be read" in told[2]

@@ -5,6 +5,7 @@ from __future__ import annotations
 import asyncio
 import math
 from collections.abc import Mapping, Sequence
+from difflib import get_close_matches
 from pathlib import Path
 
 from pydantic import Field
@@ -223,6 +224,13 @@ def _check_spec(spec: DeviceSpec, card: Card, options: CardOptions) -> None:
         message = "the rig file says syringes = 0, the card knows levels of syringes"
         remedy = "write continuous = true in the card, without level, standby and fill; or give the pump its syringes"
         raise refuse(spec, "continuous-differs", "options.card", message, remedy)
+    has = [*card.channels, *(("level", "standby") if card.continuous else ())]
+    for wanted in spec.channels:
+        if wanted.channel not in has:
+            near = get_close_matches(wanted.channel, has, n=1, cutoff=0.4)
+            hint = f"did you mean {near[0]!r}? " if near else ""
+            message = f"{wanted.tag} reads the channel {wanted.channel!r}, which the card ({card.family}) does not have"
+            raise refuse(spec, "channel-unknown", "options.card", message, f"{hint}the card has {', '.join(has)}")
     for name in options.parameters:
         if name not in card.parameters:
             known = ", ".join(card.parameters) or "none"
