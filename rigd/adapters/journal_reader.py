@@ -318,7 +318,13 @@ def segments(first: Path) -> list[Path]:
 def open_segment(path: Path) -> sqlite3.Connection:
     """Read-only; when the folder cannot be written either (an archive), without the write-ahead log's side files."""
     failure: sqlite3.Error | None = None
+    log = path.with_name(f"{path.name}-wal")
     for query in ("mode=ro", "immutable=1"):
+        if failure is not None and log.is_file() and log.stat().st_size:
+            raise JournalError(
+                f"{path} was never closed, and a part of it stands in {log.name}, which cannot be read in a folder "
+                "that cannot be written; copy the whole folder to another place and read it there"
+            )
         try:
             connection = sqlite3.connect(f"{path.absolute().as_uri()}?{query}", uri=True)
             connection.execute("SELECT count(*) FROM sqlite_master").fetchone()

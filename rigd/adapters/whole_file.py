@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
-from contextlib import contextmanager
+from contextlib import contextmanager, suppress
 from pathlib import Path
 
 
@@ -18,9 +18,15 @@ def whole_files(*paths: Path) -> Iterator[tuple[Path, ...]]:
         yield unfinished
         for written, path in zip(unfinished, paths, strict=True):
             written.replace(path)
+    except OSError as error:
+        names = {str(written): path for written, path in zip(unfinished, paths, strict=True)}
+        if wanted := names.get(str(error.filename)):
+            raise OSError(error.errno, error.strerror, str(wanted)) from error
+        raise
     finally:
         for written in unfinished:
-            written.unlink(missing_ok=True)
+            with suppress(OSError):
+                written.unlink(missing_ok=True)
 
 
 def write_whole(path: Path, text: str) -> Path:
