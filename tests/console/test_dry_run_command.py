@@ -11,6 +11,7 @@ from pathlib import Path
 
 import pytest
 
+from rigd.console import rehearsal
 from rigd.console.cli import call
 
 CONFIGS = Path(__file__).resolve().parents[2] / "configs"
@@ -54,6 +55,17 @@ def test_the_page_alone_holds_the_curves_and_what_would_go_wrong(capsys, tmp_pat
     assert not re.search(r'(src|href)="(?!#|data:)', text)
     assert "rigd-dry-" not in text
     assert [path.name for path in tmp_path.rglob("*")] == ["new", "page.html"]
+
+
+def test_a_rehearsal_that_does_not_end_is_ended_and_says_so(capsys, monkeypatch):
+    monkeypatch.setattr(rehearsal, "longest_ns", lambda planned_s: 30_000_000_000 if planned_s > 600 else 0)
+    code, facts = rehearse(capsys)
+    assert (code, facts["outcome"], facts["duration_s"]) == (1, "stopped", 30.0)
+    assert facts["text"] == "The recipe was not over after 0.0 h and was ended here."
+
+
+def test_the_bound_is_a_multiple_of_the_plan_and_an_hour():
+    assert rehearsal.longest_ns(1000.0) == (rehearsal.PATIENCE * 1000 + 3600) * 1_000_000_000
 
 
 def test_a_folder_that_holds_a_run_is_not_overwritten(tmp_path, capsys):
