@@ -123,3 +123,11 @@ def test_no_interlock_can_look_at_what_only_warns(tmp_path: Path) -> None:
         ),
     )
     assert "tag-unknown" in [problem.code for problem in rig_problems_of(tmp_path, trip)]
+
+
+def test_a_limit_with_nothing_to_look_at_is_said_and_others_are_not(tmp_path: Path) -> None:
+    lines = "".join(f"{line}\n" for line in dict.fromkeys(line for line, _, _ in LIMITS))
+    found = rig_problems_of(tmp_path, edited(RIG, ("[simulation]", TABLE.format(lines))))
+    assert [(problem.code, problem.key) for problem in found] == [("early-unused", "early.balance")]
+    metered = SENSORS.replace("[simulation]", TABLE.format(lines))
+    assert not rig_problems_of(tmp_path, edited(RIG, ("[simulation]", metered)))

@@ -52,7 +52,7 @@ noise = "0.05 mL"
     ),
 )
 HEALTHY = {
-    "night": Night(recipe="overnight-sweep", hours=9.0),
+    "half a night": Night(recipe="overnight-sweep", recipe_edits=(("count = 8", "count = 4"),), hours=9.0),
     "fine bed, two temperatures": Night(rig_edits=FINE, recipe_edits=TWO_TEMPERATURES),
     "reagent in another solvent": Night(rig_edits=OTHER_SOLVENT),
     "no regulator": Night(rig_edits=(('set_pressure = "2 bar"', 'set_pressure = "0.05 bar"'), *FINE)),

@@ -6,6 +6,7 @@ from dataclasses import fields
 
 from rigd.config.checks.cold import check_rest_temperature
 from rigd.config.checks.context import RigContext
+from rigd.config.checks.early import check_early
 from rigd.config.checks.identity import report_duplicates
 from rigd.config.checks.reliefs import check_reliefs
 from rigd.config.findings import listed, nearest
@@ -24,6 +25,7 @@ def check_parts(context: RigContext) -> None:
     _chillers(context)
     check_reliefs(context)
     check_rest_temperature(context)
+    check_early(context)
     _places(context)
     _truths(context)
 
