@@ -8,9 +8,7 @@ from __future__ import annotations
 
 import hashlib
 import json
-import tomllib
-from collections.abc import Iterable
-from pathlib import Path
+from collections.abc import Iterable, Mapping
 
 from rigd.config.table import Table
 
@@ -24,15 +22,11 @@ def digest_of(*tables: Table, without: frozenset[str] = frozenset()) -> str:
     return hashlib.sha256(text.encode("ascii")).hexdigest()
 
 
-def with_cards(digest: str, cards: Iterable[Path]) -> str:
-    """The fingerprint of a rig with what its protocol cards say; a card that cannot be read is told elsewhere."""
-    contents = []
-    for path in sorted(set(cards)):
-        try:
-            said = tomllib.loads(path.read_text(encoding="utf-8"))
-        except (OSError, ValueError):
-            continue
-        contents.append(json.dumps(said, sort_keys=True, ensure_ascii=True, separators=(",", ":"), default=str))
+def with_cards(digest: str, cards: Iterable[Mapping[str, object]]) -> str:
+    """The fingerprint of a rig with what its protocol cards say."""
+    contents = {
+        json.dumps(said, sort_keys=True, ensure_ascii=True, separators=(",", ":"), default=str) for said in cards
+    }
     if not contents or not digest:
         return digest
     return hashlib.sha256("\n".join([digest, *sorted(contents)]).encode("ascii")).hexdigest()

@@ -7,6 +7,7 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import NamedTuple
 
+from rigd.config.cards import take_cards
 from rigd.config.checks.chemistry import check_chemistry
 from rigd.config.checks.context import RigContext
 from rigd.config.checks.devices import check_devices
@@ -22,7 +23,7 @@ from rigd.config.checks.volumes import check_volumes
 from rigd.config.chemistry_tables import ChemistryFile
 from rigd.config.compile_recipe import compile_recipe
 from rigd.config.compile_rig import compile_rig
-from rigd.config.digest import digest_of, with_cards
+from rigd.config.digest import digest_of
 from rigd.config.files import RecipeFile, RigFile
 from rigd.config.findings import Findings
 from rigd.config.source import read_source
@@ -87,16 +88,6 @@ def load_pair(rig_path: FilePath, recipe_path: FilePath | None = None) -> Pair:
     return Pair(read.rig, recipe, problems)
 
 
-def _find_cards(file: RigFile, folder: Path) -> list[Path]:
-    """Make the card files that devices name relative to the rig file findable from anywhere; their paths."""
-    found = []
-    for device in file.devices:
-        if isinstance(name := device.options.get("card"), str):
-            found.append((folder / name).absolute())
-            device.options["card"] = str(found[-1])
-    return found
-
-
 def read_rig(path: FilePath) -> Read:
     """Like ``load_rig``, but returns the findings, and the rig as far as it could be made."""
     source, unread = read_source(Path(path))
@@ -106,7 +97,7 @@ def read_rig(path: FilePath) -> Read:
     file = read_tables(RigFile, source, found)
     chemistry = _chemistry(file, Path(path), found)
     digest = digest_of(file, *chemistry.tables, without=frozenset({"chemistry"})) if not found.failed else ""
-    digest = with_cards(digest, _find_cards(file, Path(path).parent))
+    file, digest = take_cards(file, Path(path).parent, digest)
     drafted = compile_rig(file, _chemistry_value(chemistry.tables), found, digest)
     context = RigContext(file, drafted.rig, drafted.sides, chemistry.species, found)
     for check in (check_identity, check_parts, check_lines, check_devices, check_limits, check_flow):

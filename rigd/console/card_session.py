@@ -144,4 +144,4 @@ def link_of(trial: Trial, card: dict[str, Any]) -> Any:
 
     link = card["link"]
     settings = {key: link[key] for key in ("data_bits", "parity", "stop_bits") if key in link}
-    return LinkSpec("try", trial.port, baud=trial.baud or link.get("baud", 9600), **settings)
+    return LinkSpec("try", trial.port, baud=trial.baud or link.get("baud", 115_200), **settings)

@@ -79,3 +79,11 @@ def test_a_protocol_card_is_part_of_the_rig(tmp_path: Path) -> None:
     assert load_rig(rig).digest == before
     card.write_text(text.replace("range = [0.005, 20.0]", "range = [0.005, 10.0]"), encoding="utf-8")
     assert load_rig(rig).digest != before
+
+
+def test_port_settings_that_a_link_leaves_out_are_those_of_its_card(tmp_path: Path) -> None:
+    (tmp_path / "rigs").mkdir()
+    rig, _ = manual_rig(tmp_path, {"pumps": 1, "map": 2, "chiller": "/dev/null"})
+    rig.write_text(rig.read_text(encoding="utf-8").replace('baud = "4800 baud"', "stop_bits = 2.0"), encoding="utf-8")
+    link = {one.id: one for one in load_rig(rig).links}["cooler"]
+    assert (link.baud, link.data_bits, link.parity, link.stop_bits) == (4800, 7, "even", 2.0)

@@ -264,7 +264,7 @@ class CardLink(Table):
     reply_timeout_s: float | None = Field(default=None, gt=0, le=30)
     pause_s: Annotated[float, Field(ge=0, le=2)] = 0.0
     busy_s: Annotated[float, Field(ge=0, le=4)] = 2.0
-    baud: int = Field(default=9600, ge=50, le=4_000_000)
+    baud: int = Field(default=115_200, ge=50, le=4_000_000)
     data_bits: Literal[7, 8] = 8
     parity: Literal["none", "even", "odd"] = "none"
     stop_bits: Literal[1, 2] = 1
