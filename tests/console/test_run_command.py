@@ -2,8 +2,11 @@
 
 from __future__ import annotations
 
+import os
 import re
 import shutil
+import subprocess
+import sys
 from pathlib import Path
 
 import click
@@ -201,3 +204,14 @@ def test_ctrl_c_before_the_run_began_says_that_nothing_moved(files, monkeypatch,
     monkeypatch.setattr(app, "start_run", interrupted)
     assert run(files) == 1
     assert "nothing was sent to the rig, nothing moved" in capsys.readouterr().err
+
+
+@pytest.mark.parametrize(("word", "code"), [("run", 1), ("check", 130)])
+def test_ctrl_c_while_the_command_line_is_loaded_is_a_sentence(tmp_path, word, code):
+    (tmp_path / "click.py").write_text("raise KeyboardInterrupt\n")
+    path = os.pathsep.join([str(tmp_path), str(CONFIGS.parent)])
+    command = [sys.executable, "-m", "rigd", word, "a.toml", "b.toml"]
+    done = subprocess.run(command, env={**os.environ, "PYTHONPATH": path}, capture_output=True, text=True, check=False)
+    assert done.returncode == code
+    assert "nothing was sent to a rig, nothing moved" in done.stderr
+    assert "Traceback" not in done.stderr
