@@ -1,4 +1,4 @@
-"""Which links the simulator serves: those that ask for it; a link with a port of its own (files, real hardware) stays."""
+"""Which links the simulator serves: those that ask for it; a port of its own (files, hardware) stays out."""
 
 from __future__ import annotations
 
