@@ -49,12 +49,12 @@ def of_mean(values: Sequence[float], name: str = "repeats") -> Part:
 
 def combine(parts: Sequence[Part], confidence: float = CONFIDENCE) -> Combined:
     """Put the parts together; ``confidence`` is the level of the expanded uncertainty."""
-    from scipy.stats import norm, t
+    from scipy.special import ndtri, stdtrit  # quantiles; the statistics package costs seconds to import
 
     standard = math.sqrt(sum(part.standard**2 for part in parts))
     spread = sum(part.standard**4 / part.freedom for part in parts if math.isfinite(part.freedom))
     freedom = standard**4 / spread if spread > 0 else math.inf
     level = 0.5 + confidence / 2
     whole = max(1.0, math.floor(freedom)) if math.isfinite(freedom) else math.inf
-    coverage = float(t.ppf(level, whole)) if math.isfinite(whole) else float(norm.ppf(level))
+    coverage = float(stdtrit(whole, level)) if math.isfinite(whole) else float(ndtri(level))
     return Combined(standard, freedom, coverage, coverage * standard)

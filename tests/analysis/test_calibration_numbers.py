@@ -110,9 +110,9 @@ def test_moments_of_stirred_tanks_in_series() -> None:
     assert (found.mean_s, found.tanks) == (pytest.approx(60, rel=2e-3), pytest.approx(5, rel=1e-2))
 
 
-@pytest.mark.parametrize("peclet", [3.0, 20.0, 200.0])
+@pytest.mark.parametrize("peclet", [8.0, 40.0, 200.0])
 def test_a_dispersed_plug_gives_its_peclet_number_back(peclet: float) -> None:
-    theta = np.linspace(0, 6, 1201)
+    theta = np.linspace(0, 5, 501)
     response = [0.0 if one == 0 else step_response(peclet, float(one)) for one in theta]
     found = step((100 * theta).tolist(), response)
     assert found.mean_s == pytest.approx(100, rel=2e-3)
