@@ -313,3 +313,12 @@ async def test_what_only_a_move_makes_known_goes_to_rest_at_the_start(tmp_path: 
     await made.prepare(bank)
     assert bank.log == [(5, 0, (0,)), (5, 2, (0,)), (15, 1, (1,))]
     assert (await made.poll(bank, ["position"]))[0].value == 1
+
+
+async def test_a_refusal_names_the_device_and_the_reason(tmp_path: Path) -> None:
+    registers = 'rate = { table = "holding", address = 0 }\nflow = { table = "input", address = 7 }'
+    parts = {"steps": '{ write = "rate" }', "stop": '{ write = "rate", set = 0 }', "check": '{ read = "flow" }'}
+    made, bank = pump(tmp_path, registers=registers, **parts), RegisterBank()
+    bank.holes.add(7)
+    with pytest.raises(DeviceRefused, match=r"^p: refused: illegal data address$"):
+        await made.poll(bank, ["flow"])

@@ -88,3 +88,10 @@ def test_a_bent_frame_is_never_believed(kind: str) -> None:
     message = frame.wrap("F250.0")
     assert frame.find(message) == ("F250.0", b"")
     assert kind == "none" or frame.find(message.replace(b"5", b"6", 1))[0] is None
+
+
+async def test_a_reply_that_no_pattern_fits_is_named(tmp_path: Path) -> None:
+    (tmp_path / "p.toml").write_text(CARD.replace("RUN|HALT|JAM", "RUN|JAM"), encoding="utf-8")
+    driver = FAMILY.make(spec(tmp_path / "p.toml"))
+    with pytest.raises(LinkTimeout, match=r"heard 'F0.0 V1.250 HALT', which no pattern of the card fits"):
+        await driver.poll(Pump(), ["flow"])

@@ -37,8 +37,9 @@ Value = float | str
 class Refused(DeviceRefused):
     """An exception reply with its ``code``."""
 
-    def __init__(self, code: int) -> None:
-        super().__init__(f"refused: {REFUSALS.get(code, f'exception {code}')}")
+    def __init__(self, code: int, device: str = "") -> None:
+        head = f"{device}: " if device else ""
+        super().__init__(f"{head}refused: {REFUSALS.get(code, f'exception {code}')}")
         self.code = code
 
 

@@ -255,7 +255,7 @@ class CardLink(Table):
     """Protocol and timing. ``address_base``: 0 or 1 as the manual counts registers; 40001 where it writes 40001 for the
     first holding register (30001 input, 10001 discrete, 1 coil), 400001 with six digits.
 
-    ``pause_s`` is kept between two exchanges; ``busy_s`` is how long a busy device is asked again. The port settings
+    ``pause_s`` is kept before each exchange; ``busy_s`` is how long a busy device is asked again. The port settings
     are what the manual says: ``rigd card try`` uses them.
     """
 

@@ -38,7 +38,6 @@ class Talk:
         self._first = crc16(device.encode()) % (modbus.WILL_NUMBERS >> 8) << 8
         self._number = 0
         self._count = 0
-        self._free_s = 0.0
         self._apart = not card.modbus
 
     def known(self, seen: Mapping[str, Value] | None = None) -> Seen:
@@ -214,8 +213,12 @@ class Talk:
 
         async def exchange() -> Mapping[str, str]:
             wait_s = said.timeout_s or self._card.link.reply_timeout_s
+            listens = reader()
             try:
-                return await line.ask(request, reader(), timeout_s=wait_s)
+                return await line.ask(request, listens, timeout_s=wait_s)
+            except LinkTimeout as error:
+                heard = f"; heard {listens.unknown!r}, which no pattern of the card fits" if listens.unknown else ""
+                raise LinkTimeout(f"{error}{heard}") from error
             except DeviceRefused as error:
                 if any(f"refused: {meaning}" in str(error) for meaning in self._card.busy.values()):
                     raise StillBusy(str(error)) from error
@@ -228,8 +231,8 @@ class Talk:
         loop = asyncio.get_running_loop()
         left, busy_until_s = self._retries if again else 0, loop.time() + self._card.link.busy_s
         while True:
-            if (wait_s := self._free_s - loop.time()) > 0:
-                await asyncio.sleep(wait_s)
+            if self._card.link.pause_s:  # before each: the one before may have been another device's on this line
+                await asyncio.sleep(self._card.link.pause_s)
             try:
                 return await exchange()
             except LinkTimeout as error:
@@ -240,11 +243,10 @@ class Talk:
                 if loop.time() >= busy_until_s:
                     raise DeviceRefused(f"{self._device}: {error}") from error
                 await asyncio.sleep(POLL_S)
+            except modbus.Refused as error:
+                raise modbus.Refused(error.code, self._device) from error
             except (DeviceRefused, DeviceProtocolError) as error:
                 raise type(error)(f"{self._device}: {error}") from error
-            finally:
-                if self._card.link.pause_s:
-                    self._free_s = loop.time() + self._card.link.pause_s
 
 
 def _own(step: Step, value: float | None) -> dict[str, float]:

@@ -58,7 +58,7 @@ class Words:
 
     def text_request(
         self, said: Question | Step, known: Mapping[str, Value]
-    ) -> tuple[bytes, Callable[[], ReplyReader[Mapping[str, str]]]]:
+    ) -> tuple[bytes, Callable[[], text.TextReader]]:
         """A request and the maker of readers of its reply."""
         framing = self._card.framing
         request = self._out(known).wrap(text.fill(said.send, known, framing.decimal)) if said.send else b""
