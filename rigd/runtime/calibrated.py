@@ -10,7 +10,7 @@ from __future__ import annotations
 
 import json
 from collections.abc import Mapping, Sequence
-from dataclasses import replace
+from dataclasses import dataclass, replace
 from datetime import UTC, datetime
 from pathlib import Path
 
@@ -30,10 +30,31 @@ COUNTED = ("flow", "level", "standby", "delivered")
 TOLD = (Action.DELIVER, Action.FILL)
 
 
+@dataclass(frozen=True, slots=True)
+class SensorLine:
+    """What a sensor of this span truly sees: ``(shown - zero) * gain``.
+
+    What it shows beyond its span is left as it is, so that a correction never makes a broken loop look sound (the inner
+    limits of NAMUR NE 43, as the core judges them: -1.25 % and 103.125 % of span).
+    """
+
+    zero: float
+    gain: float
+    low: float
+    high: float
+
+    def true(self, shown: float) -> float:
+        """The corrected value, or ``shown`` itself beyond the span."""
+        span = self.high - self.low
+        if self.low - 0.0125 * span <= shown <= self.high + 0.03125 * span:
+            return (shown - self.zero) * self.gain
+        return shown
+
+
 class CalibratedDriver:
     """Implements ``rigd.ports.driver.Driver`` around another one."""
 
-    def __init__(self, driver: Driver, factor: float, channels: Mapping[str, tuple[float, float]]) -> None:
+    def __init__(self, driver: Driver, factor: float, channels: Mapping[str, SensorLine]) -> None:
         self._driver, self._factor, self._channels = driver, factor, channels
 
     async def identify(self, line: Line) -> DeviceIdentity:
@@ -67,9 +88,8 @@ class CalibratedDriver:
         return found
 
     def _true(self, reading: Reading) -> Reading:
-        if reading.channel in self._channels:
-            zero, gain = self._channels[reading.channel]
-            return replace(reading, value=(reading.value - zero) * gain)
+        if (line := self._channels.get(reading.channel)) is not None:
+            return replace(reading, value=line.true(reading.value))
         if reading.channel in COUNTED:
             return replace(reading, value=reading.value * self._factor)
         return reading
@@ -89,10 +109,10 @@ def corrections_of(told: str | Sequence[Mapping[str, object]]) -> Corrections:
 def calibrated_drivers(drivers: Mapping[str, Driver], rig: RigDefinition, found: Corrections) -> dict[str, Driver]:
     """The drivers, those of calibrated parts wrapped."""
     factors = {pump.device: found.pumps[pump.id] for pump in rig.pumps if pump.id in found.pumps}
-    sensors: dict[str, dict[str, tuple[float, float]]] = {}
+    sensors: dict[str, dict[str, SensorLine]] = {}
     for tag in rig.tags:
         if tag.id in found.sensors:
-            sensors.setdefault(tag.device, {})[tag.channel] = found.sensors[tag.id]
+            sensors.setdefault(tag.device, {})[tag.channel] = SensorLine(*found.sensors[tag.id], tag.low, tag.high)
     wrapped = dict(drivers)
     for device in factors.keys() | sensors.keys():
         wrapped[device] = CalibratedDriver(drivers[device], factors.get(device, 1.0), sensors.get(device, {}))

@@ -27,7 +27,14 @@ from rigd.model.rig import RigDefinition
 from rigd.model.samples import Reading
 from rigd.ports.link import Line
 from rigd.ports.plant import Plant
-from rigd.runtime.calibrated import COUNTED, CalibratedDriver, calibrated_drivers, calibrated_rig, corrections_of
+from rigd.runtime.calibrated import (
+    COUNTED,
+    CalibratedDriver,
+    SensorLine,
+    calibrated_drivers,
+    calibrated_rig,
+    corrections_of,
+)
 from rigd.runtime.deep import DeepShell
 from rigd.runtime.dry import DryOptions, DryShell
 from rigd.runtime.replay import replay
@@ -61,7 +68,7 @@ class Pump:
 
 def test_wishes_and_counts_are_true_values() -> None:
     pump = Pump()
-    driver = CalibratedDriver(pump, 1.02, {"p1": (0.03, 0.5)})
+    driver = CalibratedDriver(pump, 1.02, {"p1": SensorLine(0.03, 0.5, 0.0, 25.0)})
     line: Line = None  # type: ignore[assignment]
 
     async def work() -> None:
@@ -79,6 +86,13 @@ def test_wishes_and_counts_are_true_values() -> None:
         (Action.SWAP, 2.04), (Action.STOP, 2.04),
     ]  # fmt: skip
     assert driver.last_will(LinkSpec("bus", "memory")) is WILL
+
+
+@pytest.mark.parametrize("shown", [25.9, 26.7, -0.4, -5.0, float("inf")])
+def test_a_correction_never_brings_a_broken_loop_back_into_its_span(shown: float) -> None:
+    """Beyond 103.125 % or -1.25 % of span (NAMUR NE 43) the core must see what the sensor showed."""
+    assert SensorLine(2.0, 0.9, 0.0, 25.0).true(shown) == shown
+    assert SensorLine(2.0, 0.9, 0.0, 25.0).true(25.0) == pytest.approx(20.7)
 
 
 def test_only_what_is_calibrated_is_wrapped_and_the_rig_becomes_the_true_one(tmp_path: Path) -> None:
