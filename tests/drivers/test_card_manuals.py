@@ -25,4 +25,4 @@ def test_a_manual_as_a_card(path: Path) -> None:
 
 
 def test_every_card_has_a_dialogue() -> None:
-    assert {path.stem for path in CARDS.glob("*.toml")} == {path.stem for path in CARDS.glob("*.transcript")}
+    assert {path.stem for path in CARDS.glob("*.toml")} <= {path.stem for path in CARDS.glob("*.transcript")}

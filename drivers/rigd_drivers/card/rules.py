@@ -177,11 +177,10 @@ def _steps(card: Card) -> Iterator[Finding]:
         key = f"{group}.{numbers.setdefault(group, 0)}"
         numbers[group] += 1
         yield from _step(card, key, step)
-        for part, formula in (("when", step.when), ("set", step.set)):
+        for part, formula in (("when", step.when), ("set", step.set), ("until", step.until)):
             if isinstance(formula, str):
                 yield from _formula(card, f"{key}.{part}", formula, ["value"])
-        for part, formula in (("confirm", step.confirm), ("until", step.until)):
-            yield from _formula(card, f"{key}.{part}", formula)
+        yield from _formula(card, f"{key}.confirm", step.confirm)
         for expression, _ in text.slots(step.send):
             yield from _formula(card, f"{key}.send", expression.text, ["value", "number"])
         if step.until and not step.within_s:

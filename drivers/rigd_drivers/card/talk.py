@@ -90,7 +90,7 @@ class Talk:
         if step.confirm:
             await self._agrees(line, step, raw, lambda: self.read(line, step.confirm, {}), step.confirm)
         if step.until:
-            await self._until(line, step)
+            await self._until(line, step, value)
 
     async def steps(self, line: Line, steps: Iterable[Step], value: float | None = None, once: bool = False) -> None:
         """Several, in turn."""
@@ -168,9 +168,9 @@ class Talk:
                 raise DeviceProtocolError(f"{self._device}: {wanted:g} was ordered, but {what} is {found:g}")
             await asyncio.sleep(POLL_S)
 
-    async def _until(self, line: Line, step: Step) -> None:
+    async def _until(self, line: Line, step: Step, value: float | None) -> None:
         end_s = asyncio.get_running_loop().time() + step.within_s
-        while not bool(await self.read(line, step.until, {})):
+        while not bool(await self._formula(line, step.until, step, value, {})):
             if asyncio.get_running_loop().time() >= end_s:
                 raise DeviceProtocolError(f"{self._device}: {step.until!r} is not so after {step.within_s:g} s")
             await asyncio.sleep(POLL_S)

@@ -16,7 +16,9 @@ from rigd.console.output import Output, json_option
 if TYPE_CHECKING:
     from rigd.ports.driver import Driver
 
-KINDS = ("modbus-pump", "modbus-valve", "modbus-chiller", "modbus-sensor", "text-pump", "text-chiller")
+KINDS = tuple(
+    f"{protocol}-{family}" for protocol in ("text", "modbus") for family in ("pump", "valve", "chiller", "sensor")
+)
 
 
 @click.group()
