@@ -1,7 +1,7 @@
 """Steps of the wall clock, an hour or a day either way, can move nothing: only these places look at it.
 
-They stamp records for people, or compare dates of papers before a run begins. Everything that decides or waits counts on
-the monotonic clock.
+They stamp records for people, or compare dates of papers before a run begins. What decides or waits counts on the
+monotonic clock.
 """
 
 from __future__ import annotations
