@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 
 from rigd.logic.flow_path import Feed, FlowPath
 from rigd.logic.program import Program
@@ -74,8 +74,8 @@ class Layout:
 
     ``dead_mL`` lies between the place where the signal is measured and the outlet valve. ``record`` are the tags that
     are averaged over a point, ``watch`` all that the sequence reads; of the three alerts one at a time holds the tags
-    whose new samples make it think at once. ``warming_s``, by point, is what the bed takes to its new temperature
-    profile after the change of flow that begins the point. ``foreseen``: a plan is being made, and no signal measured.
+    whose new samples make it think at once. ``warming_s`` is what the bed takes to its new temperature profile after a
+    change of flow. ``foreseen``: a plan is being made, and no signal measured.
     """
 
     program: Program
@@ -93,7 +93,7 @@ class Layout:
     usual_alert: frozenset[str]
     calm_alert: frozenset[str]
     pressure_alert: frozenset[str]
-    warming_s: Mapping[str, float] = field(default_factory=dict)
+    warming_s: float = 0.0
     foreseen: bool = False
 
     @property
@@ -173,22 +173,9 @@ def _jacket(program: Program) -> str:
     return on_jacket or next((bath for bath in baths if bath in program.tags), "")
 
 
-def _warming_s(program: Program) -> dict[str, float]:
-    """The slowest bed's time constant against its wall, as often as a change of flow takes to fade.
-
-    The conversion follows the temperature profile of the bed, which follows the flow. Its change grows with the
-    logarithm of the ratio of flows; less than one time constant is enough for a ratio of 1.4, and each factor e in the
-    change takes about one more. The first reagent counts as twice that change (own estimates, no source).
-    """
-    slowest_s = max((_against_wall_s(column) for column in program.rig.columns if column.jacket), default=0.0)
-    found: dict[str, float] = {}
-    before = 0.0
-    for point in program.recipe.points:
-        total = point.total_mL_min
-        far = abs(math.log(total / before)) / math.log(1.4) if before > 0 < total else 2.0
-        found[point.id] = slowest_s * (0.8 + 0.9 * math.log(max(far, 1.0)))
-        before = total
-    return found
+def _warming_s(program: Program) -> float:
+    """Four time constants of the slowest bed against its wall: of a change of the profile 2 % are left then."""
+    return 4.0 * max((_against_wall_s(column) for column in program.rig.columns if column.jacket), default=0.0)
 
 
 def _against_wall_s(column: Column) -> float:

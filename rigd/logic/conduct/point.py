@@ -123,7 +123,8 @@ def _settle(scene: Scene, memory: Memory, point: Point) -> Move[Memory]:
     rule, path = scene.layout.recipe.settle, scene.layout.path
     passed = turnovers(path, scene.since_mL(memory.marks or {}))
     memory = _judged(scene, memory, point, passed)
-    steady = _is_steady(scene, memory, point, passed)
+    gate_volumes = _gate_volumes(scene, memory, point, passed)
+    steady = _is_steady(scene, memory, point, passed, gate_volumes)
     ready = liquid_for_fraction(scene, point) and quiet_since_change(scene)
     events: tuple[Event, ...] = ()
     if passed >= rule.volumes and ready:
@@ -136,27 +137,34 @@ def _settle(scene: Scene, memory: Memory, point: Point) -> Move[Memory]:
                 return _given_up(scene, memory, point, events)
             memory = _settled(scene, memory, False)
     wants = point_wants(scene, memory, point, waste)
-    ahead = [volumes - passed for volumes in (rule.volumes, _gate_volumes(scene, point)) if volumes > passed]
+    ahead = [volumes - passed for volumes in (rule.volumes, gate_volumes) if volumes > passed]
     due_ns = scene.now_ns + _ns(scene, point, min(ahead)) if ahead else None
     text = f"settling: {passed:.1f} of {rule.volumes:g} volumes, signal {memory.settler.verdict}"
     left_s = _left_s(scene, memory, point, passed)
     return Move(memory, wants, text, events, due_ns=due_ns, left_s=left_s, calm=memory.step == "settle")
 
 
-def _is_steady(scene: Scene, memory: Memory, point: Point, passed: float) -> bool:
-    """True when the signal is shown to be quiet; in a plan, when it could be at the earliest."""
+def _is_steady(scene: Scene, memory: Memory, point: Point, passed: float, gate_volumes: float) -> bool:
+    """True when the signal is shown to be quiet; in a plan, when it is likely to be."""
     if not gated(scene.layout, scene.spec.reagent):
         return True
     if scene.layout.foreseen:
-        return passed >= _gate_volumes(scene, point)
+        return passed >= gate_volumes
     return is_steady(memory.settler, settle_rule(scene.layout, point))
 
 
-def _gate_volumes(scene: Scene, point: Point) -> float:
+def _gate_volumes(scene: Scene, memory: Memory, point: Point, passed: float) -> float:
     """In a plan, the volumes after which the signal gate opens; 0 in a run, where the signal says it."""
     if not scene.layout.foreseen or not gated(scene.layout, scene.spec.reagent):
         return 0.0
-    return gate_s(scene.layout, point) / scene.layout.path.residence_s(point.flows_mL_min)
+    return _gate_s(scene, memory, point, passed) / scene.layout.path.residence_s(point.flows_mL_min)
+
+
+def _gate_s(scene: Scene, memory: Memory, point: Point, passed: float) -> float:
+    """When the signal gate is likely to open, counted like the volumes that have passed."""
+    here_s = (scene.now_ns - memory.started_ns) / 1e9
+    waited_s = here_s - passed * scene.layout.path.residence_s(point.flows_mL_min)
+    return gate_s(scene.layout, point, waited_s)
 
 
 def _anew(scene: Scene, memory: Memory) -> Memory:
@@ -279,7 +287,7 @@ def _left_s(scene: Scene, memory: Memory, point: Point, passed: float) -> float:
     by_volume_s = max(0.0, layout.recipe.settle.volumes - passed) * residence_s
     by_signal_s = 0.0
     if gated(scene.layout, scene.spec.reagent):
-        by_signal_s = max(0.0, gate_s(layout, point) - passed * residence_s)
+        by_signal_s = max(0.0, _gate_s(scene, memory, point, passed) - passed * residence_s)
     after_s = 60.0 * (layout.dead_mL + layout.recipe.collect.volume_mL) / point.total_mL_min
     return max(by_volume_s, by_signal_s) + after_s
 

@@ -76,10 +76,13 @@ def signal_s(layout: Layout, point: Point) -> float:
     return (rule.window + rule.persistence - 1) * _judged_every_s(layout, point)
 
 
-def gate_s(layout: Layout, point: Point) -> float:
-    """When the signal gate is likely to open, from the right streams on: a window without a trend, bed warm."""
-    warming_s = layout.warming_s.get(point.id, 0.0)
-    return layout.path.residence_s(point.flows_mL_min) + signal_s(layout, point) + warming_s
+def gate_s(layout: Layout, point: Point, waited_s: float = 0.0) -> float:
+    """When the signal gate is likely to open, from the right streams on: a window after the old liquid and the warming.
+
+    The bed has already had ``waited_s`` at the point's flows before.
+    """
+    exchanged_s = layout.path.residence_s(point.flows_mL_min) + _judged_every_s(layout, point)
+    return max(exchanged_s, layout.warming_s - waited_s) + signal_s(layout, point)
 
 
 def _judged_every_s(layout: Layout, point: Point) -> float:

@@ -82,8 +82,9 @@ def _dual_want(scene: Scene, memory: Memory, point: Point, want: Want, name: str
     if _late(scene, memory, point, name):
         another_mL = another_try_mL(scene.layout, point, name)
         lead = lead_mL(play, another_mL, want.flow_mL_min)
-        if level_mL < (another_mL if again else _fraction_mL(scene, point, name) + lead):
-            return replace(want, need_mL=another_mL + level_mL, level_mL=another_mL, swap=again)
+        falls_short = level_mL < _least_left_mL(scene, memory, point, name)  # the sooner it changes over, the better
+        if falls_short or level_mL < (another_mL if again else _fraction_mL(scene, point, name) + lead):
+            return replace(want, need_mL=another_mL + level_mL, level_mL=another_mL, swap=again or falls_short)
         return replace(want, need_mL=min(want.need_mL, level_mL))
     room_mL = play.pump.stroke_mL - play.reserve_mL(want.flow_mL_min)
     here_mL = want.need_mL
@@ -102,8 +103,10 @@ def _dual_want(scene: Scene, memory: Memory, point: Point, want: Want, name: str
 
 
 def _least_left_mL(scene: Scene, memory: Memory, point: Point, name: str) -> float:
-    """What the rest of the point takes when all goes well."""
-    return least_mL(scene.layout, point, name, scene.spec.reagent) - _passed_of(scene, memory, name)
+    """What the rest of the point takes when all goes well; after any change-over an exchange and the fraction."""
+    rest_mL = least_mL(scene.layout, point, name, scene.spec.reagent) - _passed_of(scene, memory, name)
+    quiet_mL = point.flows_mL_min[name] * max(_quiet_left_s(scene), 0.0) / 60.0
+    return max(rest_mL, quiet_mL + collect_mL(scene.layout, point, name))
 
 
 def _better_first(scene: Scene, memory: Memory, point: Point, name: str, here_mL: float) -> bool:
@@ -147,9 +150,13 @@ def liquid_for_fraction(scene: Scene, point: Point) -> bool:
 
 def quiet_since_change(scene: Scene) -> bool:
     """True when no pump has changed over or been refilled within the last exchange of the trunk."""
+    return _quiet_left_s(scene) <= 0.0
+
+
+def _quiet_left_s(scene: Scene) -> float:
+    """How much of an exchange of the trunk has still to pass since a pump last changed over or was refilled."""
     since = scene.since_mL({name: track.swapped_mL for name, track in scene.tracks.items()})
     point = scene.spec.point
     assert point is not None, "a point phase without a point"
     shares = {name: since[name] / flow for name, flow in point.flows_mL_min.items() if flow > 0}
-    minutes = min(shares.values(), default=0.0)
-    return 60.0 * minutes >= scene.layout.path.residence_s(point.flows_mL_min)
+    return scene.layout.path.residence_s(point.flows_mL_min) - 60.0 * min(shares.values(), default=0.0)
