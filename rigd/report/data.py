@@ -77,6 +77,11 @@ class PointRow:
     bed_degC: float = math.nan
 
     @property
+    def cut_short(self) -> bool:
+        """True when the run left the point before it could be judged steady or not."""
+        return not self.settled and not math.isfinite(self.settle_s)
+
+    @property
     def total_mL_min(self) -> float:
         """Sum of the flows."""
         return sum(self.flows_mL_min.values())

@@ -44,4 +44,4 @@ def _alarms(run: RunData) -> Iterator[str]:
 def _points(run: RunData) -> Iterator[str]:
     for point in run.points:
         if point.status and not point.settled:
-            yield f"{point.id} would not be steady in its time"
+            yield f"{point.id} would {'be cut short' if point.cut_short else 'not be steady in its time'}"

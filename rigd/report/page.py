@@ -166,6 +166,7 @@ def _point(point: PointRow) -> dict[str, Any]:
         "bed": number(point.bed_degC, 1),
         "residence": duration(point.residence_time_s),
         "settled": point.settled,
+        "unsteady": "cut short" if point.cut_short else "not steady",
         "settle": duration(point.settle_s),
         "conversion": percent(point.conversion, point.conversion_sd),
         "readings": point.readings or "–",

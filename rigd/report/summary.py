@@ -81,7 +81,8 @@ def _points(run: RunData) -> Table:
     for heading in ("bed °C", "residence", "steady after", "conversion %", "collected mL"):
         table.add_column(heading, justify="right")
     for point in run.points:
-        steady = duration(point.settle_s) if point.settled else Text("not steady", style="yellow")
+        unsteady = Text("cut short" if point.cut_short else "not steady", style="yellow")
+        steady = duration(point.settle_s) if point.settled else unsteady
         table.add_row(
             point.id if point.kind == "point" else f"{point.id} ({point.kind})",
             flow_words(dict(point.flows_mL_min)),

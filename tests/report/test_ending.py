@@ -14,6 +14,8 @@ from rigd.console.cli import call
 from rigd.model.events import Event, EventKind
 from rigd.report.collect import read_run
 from rigd.report.ending import GUARDED, LOOSE, RUNNING, UNFINISHED, ending, guard_words
+from rigd.report.foreseen import foreseen
+from rigd.report.points import point_rows
 from rigd.report.summary import summary
 from rigd.report.words import followers_words, outcome_words, points_words, trip_groups
 
@@ -91,6 +93,18 @@ def test_a_resumed_run_counts_what_the_earlier_one_collected(tmp_path):
     assert points_words(again) == "4 of 6 points collected (2 of them by 20300101T000000Z-sweep)"
     same = replace(run, facts={**run.facts, "collected": json.dumps([run.points[0].id])})
     assert points_words(same) == "2 of 6 points collected"
+
+
+def test_a_point_that_the_run_left_is_cut_short_and_not_called_unsteady(tmp_path):
+    run = read_run(write_run(tmp_path / "cut", trip_after=2), invented_rig(), invented_recipe())
+    started = Event(EventKind.POINT, "P3", run.events[-1].t_ns, "P3 begins.", {"status": "started", "kind": "point"})
+    (row,) = point_rows((started,), run.traces, run.rig, run.recipe)
+    assert row.cut_short
+    assert not any(point.cut_short for point in run.points)
+    assert foreseen(replace(run, events=(), points=(row, replace(run.points[0], settled=False)))) == [
+        "P3 would be cut short",
+        "P1 would not be steady in its time",
+    ]
 
 
 def trip(name: str, first: str, t_ns: int) -> Event:
