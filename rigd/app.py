@@ -43,6 +43,7 @@ from rigd.model.rig import RigDefinition
 from rigd.ports.driver import Driver
 from rigd.ports.plant import EmulatedLine, FaultSpec, Plant
 from rigd.report.ending import END_TEXT
+from rigd.runtime.alert_path import alert_path
 from rigd.runtime.arming import arming_of, is_simulated, run_facts
 from rigd.runtime.calibrated import calibrated_drivers, calibrated_rig, calibrations_of, corrections_of
 from rigd.runtime.deep import DeepShell
@@ -190,6 +191,7 @@ async def _control(plan: dict[str, Any]) -> RunEnd:
             wall_ns,
             suspended_ns,
             signer=plan["signer"],
+            alerts=alert_path(pair.rig, pair.recipe, plan["unattended"], wall_ns),
             ticket_fd=_descriptor("RIGD_TICKET_FD"),
             life_fd=_descriptor("RIGD_LIFE_FD"),
             trace_links=frozenset(plan["trace"]),
@@ -207,6 +209,7 @@ async def _live(live: Live, plan: dict[str, Any], clock: PacedClock, journal: Sq
         live.submit,
         lambda: {"run": run, "utc": clock.utc(), "record": journal.head(), **live.loop.snapshot()},
         clock.now_ns,
+        live.given.alerts.heard if live.given.alerts else lambda down: None,
     )
     await door.open()
     live.tell, live.refresh = door.tell, door.refresh

@@ -40,6 +40,10 @@ class SocketDoor:
         """One snapshot (``rigd.ports.door.SNAPSHOT_KEYS``)."""
         return await self._ask({"do": "snapshot"}, "snapshot")
 
+    async def tell_alerts(self, down: str) -> None:
+        """Say whether people can be alerted: "" when they can, else why not."""
+        await self._ask({"do": "alerts", "down": down}, "answer")
+
     async def messages(self) -> AsyncIterator[Mapping[str, object]]:
         """Subscribe: first the last events, then snapshots and events until the daemon ends or goes away."""
         reader, writer = await self._connect()

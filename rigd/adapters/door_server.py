@@ -43,7 +43,7 @@ Message = Mapping[str, object]
 class DoorServer:
     """Serves clients on ``path``. ``submit`` takes a request into the core; ``snapshot`` makes the current one.
 
-    ``now_ns`` stamps requests with process time.
+    ``now_ns`` stamps requests with process time; ``alerts`` hears why nobody can be alerted ("": somebody can).
     """
 
     def __init__(
@@ -52,7 +52,9 @@ class DoorServer:
         submit: Callable[[Request], None],
         snapshot: Callable[[], Message],
         now_ns: Callable[[], int],
+        alerts: Callable[[str], None] = lambda down: None,
     ) -> None:
+        self._alerts = alerts
         self._path, self._submit, self._snapshot, self._now_ns = path, submit, snapshot, now_ns
         self._server: asyncio.Server | None = None
         self._clients: set[_Client] = set()
@@ -163,6 +165,9 @@ class DoorServer:
             return _no("", 'send one JSON object per line, such as {"do": "snapshot"}')
         if do == "snapshot":
             return {"say": "snapshot", **self._snapshot()}
+        if do == "alerts":
+            self._alerts(str(message.get("down", ""))[:TEXT_MAX])
+            return {"say": "answer", "id": "", "ok": True, "detail": "noted"}
         if do == "subscribe":
             if sum(one.subscribed for one in self._clients) >= SUBSCRIBERS_MAX:
                 return _no("", f"{SUBSCRIBERS_MAX} clients are watching already; close one of them")

@@ -15,11 +15,10 @@ from rigd.model.problems import Problem
 from rigd.model.recipe import Recipe
 from rigd.model.records import RecordKind, RigRecord
 from rigd.model.rig import RigDefinition
+from rigd.ports.door import WAKING
 
 ALERT_HOURS = 12.0
 """A contact must have answered a test alert this recently (proposal; no source)."""
-WAKING = 2
-"""An alert channel that takes this priority wakes a person."""
 
 
 @dataclass(frozen=True, slots=True)

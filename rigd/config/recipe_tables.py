@@ -71,6 +71,7 @@ class PermitTable(Table):
     """What an unattended run needs: who approved it, two people who can be reached, and when it ends.
 
     ``place`` and ``hazards`` go on the sign for the door, ``shutdown`` (at most three steps) on the shutdown card.
+    The run is stopped when nobody could be alerted for ``alerts_down``.
     """
 
     approved_by: Text
@@ -80,10 +81,12 @@ class PermitTable(Table):
     place: str = ""
     hazards: tuple[Text, ...] = ()
     shutdown: Annotated[tuple[Text, ...], Field(max_length=3)] = ()
+    alerts_down: Duration = 600.0
 
     def value(self) -> Permit:
         end = self.end.astimezone(UTC).isoformat().replace("+00:00", "Z")
-        return Permit(self.approved_by, self.number, self.contacts, end, self.place, self.hazards, self.shutdown)
+        papers = (self.approved_by, self.number, self.contacts, end, self.place, self.hazards, self.shutdown)
+        return Permit(*papers, alerts_down_s=self.alerts_down)
 
 
 class ChecklistTable(Table):

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import asyncio
+import contextlib
 import json
 import logging
 import signal
@@ -16,8 +17,10 @@ from rigd.adapters.alert_log import AlertLog
 from rigd.adapters.door_client import SocketDoor
 from rigd.config import load_rig
 from rigd.front.service import Front
+from rigd.model.errors import DoorError
 
 DOOR_WAIT_S = 30.0
+REPORT_S = 2.0
 
 
 def door_opens(path: Path) -> bool:
@@ -28,6 +31,20 @@ def door_opens(path: Path) -> bool:
             return False
         time.sleep(0.05)
     return True
+
+
+async def serve(front: Front, door: SocketDoor) -> None:
+    """Run, and tell the daemon all the while whether people can be alerted."""
+
+    async def report() -> None:
+        while True:
+            with contextlib.suppress(DoorError):
+                await door.tell_alerts(front.down())
+            await asyncio.sleep(REPORT_S)
+
+    reporter = asyncio.create_task(report(), name="report")
+    await front.run(door.messages())
+    reporter.cancel()
 
 
 def main(plan_path: str) -> int:
@@ -42,7 +59,7 @@ def main(plan_path: str) -> int:
     if not door_opens(door):
         return 1
     attempted = AlertLog(Path(plan["folder"])).attempt
-    asyncio.run(Front(rig.name, rig.outside, senders, attempted).run(SocketDoor(door).messages()))
+    asyncio.run(serve(Front(rig.name, rig.outside, senders, attempted), SocketDoor(door)))
     return 0
 
 

@@ -19,6 +19,7 @@ from rigd.front.alerts import Alert, alert_of
 from rigd.front.outbox import Outbox
 from rigd.front.telemetry import Publication, Topics
 from rigd.model.rig import AlertChannel, Outside
+from rigd.ports.door import WAKING
 
 log = logging.getLogger(__name__)
 SNAPSHOT_PERIOD_S = 0.5
@@ -61,6 +62,7 @@ class Front:
             else None
         )
         self._letters: list[tuple[Sender, Outbox[_Letter]]] = [(sender, Outbox()) for sender in senders]
+        self._failing: dict[str, str] = {}
         self._simulated = False
         self._run_id = ""
         self._record: object = None
@@ -89,6 +91,13 @@ class Front:
             await asyncio.gather(*tasks, return_exceptions=True)
             if self._publisher:
                 await self._publisher.farewell("finished")
+
+    def down(self) -> str:
+        """Why nobody can be woken now: every channel that wakes people failed with its last try; "" otherwise."""
+        waking = [one.channel.name for one, _ in self._letters if one.channel.priority_at_least >= WAKING]
+        if not waking or any(name not in self._failing for name in waking):
+            return ""
+        return "; ".join(f"{name} has not taken {self._failing[name]!r}" for name in waking)
 
     def hear(self, message: Mapping[str, Any]) -> None:
         """Sort one message from the door into the outboxes; never waits."""
@@ -135,9 +144,11 @@ class Front:
             taken = await sender.send(alert.title, alert.text, alert.priority <= 2)
             self._attempted(alert.id, sender.channel.name, alert.title, taken)
             if taken:
+                self._failing.pop(sender.channel.name, None)
                 box.sent(letter)
                 failures = 0
                 continue
+            self._failing[sender.channel.name] = alert.title
             pause_s = RETRY_PAUSES_S[min(failures, len(RETRY_PAUSES_S) - 1)]
             failures += 1
             log.warning("alert channel %s: not taken, again in %g s", sender.channel.name, pause_s)

@@ -54,6 +54,7 @@ _BUILT_IN = (
     ("FAULT-SUSPEND", "The computer was suspended", "suspend", Stop.CUT, 0, "Forbid sleep on this computer."),
     ("FAULT-GUARD", "The guard process is gone", "guard", Stop.CUT, 0, "Start the daemon anew."),
     ("PERMIT-END", "The permit has ended", PERMIT_END, Stop.QUENCH, 0, "Look at the rig; have the permit renewed."),
+    ("ALERTS-DOWN", "Nobody can be alerted", "alerts", Stop.QUENCH, 0, "Look at the rig; mend the way of the alerts."),
     ("FAULT-JOURNAL", "The journal is not written", "journal", Stop.QUENCH, 5 * SECOND_NS, "Free the disk."),
 )
 """Interlocks that protect cannot do without; added to a rig that does not declare them."""

@@ -43,7 +43,10 @@ class ChemistrySheet:
 
 @dataclass(frozen=True, slots=True)
 class Permit:
-    """What an unattended run needs on paper. ``place``, ``hazards`` and ``shutdown`` (steps) are for who comes by."""
+    """What an unattended run needs on paper. ``place``, ``hazards`` and ``shutdown`` (steps) are for who comes by.
+
+    ``alerts_down_s``: how long the run may go on while nobody can be alerted (600 s: proposal, no source).
+    """
 
     approved_by: str
     number: str
@@ -52,6 +55,7 @@ class Permit:
     place: str = ""
     hazards: tuple[str, ...] = ()
     shutdown: tuple[str, ...] = ()
+    alerts_down_s: float = 600.0
 
 
 @dataclass(frozen=True, slots=True)

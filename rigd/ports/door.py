@@ -1,10 +1,11 @@
 """The daemon's one door for requests, as clients see it.
 
 A Unix socket, one JSON object per line, UTF-8. A client sends ``{"do": "request", "id", "verb", "who", "target",
-"args"}``, ``{"do": "subscribe"}`` or ``{"do": "snapshot"}``. The daemon answers ``{"say": "answer", "id", "ok",
-"detail"}``, ``{"say": "snapshot", ...}`` (``SNAPSHOT_KEYS``) at most 5 times a wall second, ``{"say": "event", ...}``
-for each event (with a rising ``n``), ``{"say": "end", "outcome", "exit"}`` last. A slow client loses snapshots, never
-events up to ``EVENT_BACKLOG``; then it is dropped.
+"args"}``, ``{"do": "subscribe"}`` or ``{"do": "snapshot"}``; the front also ``{"do": "alerts", "down"}``, with "" or
+why nobody can be alerted now. The daemon answers ``{"say": "answer", "id", "ok", "detail"}``, ``{"say": "snapshot", ...}``
+(``SNAPSHOT_KEYS``) at most 5 times a wall second, ``{"say": "event", ...}`` for each event (with a rising ``n``),
+``{"say": "end", "outcome", "exit"}`` last. A slow client loses snapshots, never events up to ``EVENT_BACKLOG``; then it
+is dropped.
 """
 
 from __future__ import annotations
@@ -13,6 +14,8 @@ from collections.abc import AsyncIterator, Mapping
 from typing import Protocol
 
 EVENT_BACKLOG = 2000
+WAKING = 2
+"""An alert channel that takes this priority wakes a person."""
 
 SNAPSHOT_KEYS = (
     "run",  # id, folder, rig, recipe, simulated, pace, pid

@@ -15,6 +15,7 @@ from rigd.model.orders import Request, Verb
 from rigd.ports.clock import Clock
 from rigd.ports.driver import Driver
 from rigd.ports.journal import Journal
+from rigd.runtime.alert_path import AlertPath
 from rigd.runtime.attendant import NOBODY, Attendant
 from rigd.runtime.core_inbox import CoreInbox
 from rigd.runtime.device import Device
@@ -49,6 +50,7 @@ class Surroundings:
     wall_ns: Callable[[], int]
     suspended_ns: Callable[[], int]
     signer: str = ""
+    alerts: AlertPath | None = None
     ticket_fd: int = -1
     life_fd: int = -1
     trace_links: frozenset[str] = frozenset()
@@ -86,6 +88,8 @@ class Live:
         self.owners = [self._owner(link) for link in given.links]
         of_unit = {d.spec.unit: owner for owner in self.owners for d in owner.devices if d.spec.unit}
         self._vigil = Vigil(rig.scan_ns, given.clock.pace, given.journal, given.wall_ns, given.suspended_ns)
+        if given.alerts is not None:
+            self._vigil.alerts = given.alerts.fault
         self._permission = Permission(given.ticket_fd, given.wall_ns)
         self.loop = ScanLoop(
             given.program, self.inbox, of_unit, given.journal, given.clock, self._vigil, self._permission

@@ -26,6 +26,7 @@ class Vigil:
     journal: Journal
     wall_ns: Callable[[], int]
     suspended_ns: Callable[[], int]
+    alerts: Callable[[], str] = lambda: ""
     guard_lost: bool = False
     _last_ns: int = 0
     _slept_ns: int | None = None
@@ -35,6 +36,8 @@ class Vigil:
         found = [*self._late(), *self._slept()]
         if trouble := self.journal.trouble():
             found.append(("journal", trouble))
+        if alone := self.alerts():
+            found.append(("alerts", alone))
         if self.guard_lost:
             found.append(("guard", "the guard process is gone"))
         return tuple(found)

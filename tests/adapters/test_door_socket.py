@@ -27,7 +27,9 @@ class House:
         self.path = path
         self.requests: list[Request] = []
         self.silent = False
-        self.door = DoorServer(path, self.submit, lambda: {"t_s": 1.5, "values": {"PT-1": {"v": None}}}, lambda: 42)
+        self.alerts: list[str] = []
+        snapshot = {"t_s": 1.5, "values": {"PT-1": {"v": None}}}
+        self.door = DoorServer(path, self.submit, lambda: snapshot, lambda: 42, self.alerts.append)
 
     def submit(self, request: Request) -> None:
         self.requests.append(request)
@@ -62,6 +64,13 @@ async def test_a_request_is_checked_stamped_and_answered(house: House) -> None:
     with pytest.raises(DoorError, match="refused it"):
         await client.request("resume", "ann")
     assert (await client.snapshot())["t_s"] == 1.5
+
+
+async def test_the_front_tells_whether_somebody_can_be_alerted(house: House) -> None:
+    for word in ("", "sms has not taken it"):
+        await SocketDoor(house.path).tell_alerts(word)
+    assert house.alerts == ["", "sms has not taken it"]
+    assert not house.requests
 
 
 async def test_only_the_user_may_open_the_door(house: House) -> None:

@@ -235,3 +235,38 @@ async def test_a_door_that_closes_without_a_last_word_is_an_alert() -> None:
 def test_unknown_channel_url_is_told() -> None:
     assert url_is_known("json://localhost/x")
     assert not url_is_known("nonsense")
+
+
+class Deaf:
+    """A channel that takes nothing, or everything."""
+
+    def __init__(self, name: str, takes: bool, priority: int = 2) -> None:
+        self.channel = AlertChannel(name, "json://nowhere/", priority)
+        self.takes = takes
+
+    async def send(self, title: str, text: str, urgent: bool) -> bool:
+        return self.takes
+
+
+@pytest.mark.parametrize(
+    ("channels", "down"),
+    [
+        ([Deaf("a", False), Deaf("b", False)], True),
+        ([Deaf("a", False), Deaf("b", True)], False),
+        ([Deaf("a", False), Deaf("b", True, priority=1)], True),  # one that hears of trips only wakes nobody in time
+        ([Deaf("a", True)], False),
+    ],
+)
+async def test_nobody_can_be_alerted_when_every_channel_that_wakes_has_failed(
+    channels: list[Deaf], down: bool, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    monkeypatch.setattr("rigd.front.service.LAST_WORDS_S", 0.0)
+    service = Front("bench", Outside(None, ()), channels)
+    assert service.down() == ""
+    door = Door()
+    task = asyncio.create_task(service.run(door.messages()))
+    door.queue.put_nowait(trip(1))
+    await asyncio.sleep(0.1)
+    assert bool(service.down()) is down
+    task.cancel()
+    await asyncio.gather(task, return_exceptions=True)

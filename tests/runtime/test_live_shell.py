@@ -118,6 +118,20 @@ def test_a_journal_that_is_not_written_quenches_after_its_delay() -> None:
     assert "trip: FAULT-JOURNAL" in rig.texts(EventKind.TRIP)
 
 
+def test_a_lost_alert_path_flushes_the_rig_and_the_record_says_why() -> None:
+    async def script(rig: DeepRig) -> None:
+        await started(rig)
+        rig.live._vigil.alerts = lambda: "nobody could be alerted for 601 s"
+        await rig.until(lambda: rig.texts(EventKind.TRIP), 5)
+        assert "stop: quench" in rig.texts(EventKind.STOP)
+        rig.live.signalled()
+        rig.live.signalled()
+
+    rig, end = play(script)
+    assert end.exit_code == 1
+    assert rig.texts(EventKind.TRIP)[0] == "trip: ALERTS-DOWN"
+
+
 def test_a_pulled_pump_cable_cuts_and_the_pumps_stop_when_it_is_back() -> None:
     async def script(rig: DeepRig) -> None:
         await started(rig)
