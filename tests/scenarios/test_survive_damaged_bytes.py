@@ -1,4 +1,4 @@
-"""Damaged bytes on every line at once, over the live shell in virtual time: the rig goes on or stops, by the true plant.
+"""Damaged bytes on every line at once, over the live shell in virtual time: the rig goes on or stops, by the plant.
 
 One byte in a hundred lost, one flipped, one reply in a hundred doubled: no link bears that, and the rig must stop.
 At one in ten thousand a run goes on. What must never happen is a pump that moves unseen.
