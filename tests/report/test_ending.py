@@ -7,6 +7,7 @@ import os
 from dataclasses import replace
 
 import pytest
+from fakes.recorded import spoilt
 from fakes.report_run import invented_recipe, invented_rig, write_run
 
 from rigd.adapters.places import Daemon, announce
@@ -33,7 +34,10 @@ TOLD = {
 @pytest.fixture
 def torn(tmp_path, monkeypatch):
     monkeypatch.setenv("RIGD_RUNTIME", str(tmp_path / "rt"))
-    return write_run(tmp_path / "runs" / "torn", trip_after=None, close=False)
+    run = write_run(tmp_path / "runs" / "torn", trip_after=0)
+    with spoilt(run) as tables:
+        tables.execute("DELETE FROM meta WHERE key = 'outcome'")
+    return run
 
 
 def all_confirmed() -> dict[str, object]:

@@ -37,7 +37,7 @@ def test_the_first_missed_poll_degrades_the_second_fails_and_an_answer_brings_ba
     [("silent", "sensors", "LINK-sensors"), ("silent", "pump-a", "LINK-pump-a"), ("restart", "PU-A", "POWER-pump-a")],
 )
 def test_a_silent_and_a_restarted_device_trip_their_interlock_and_replay(kind, target, trips):
-    run = recorded(FaultSpec(kind, target, onset_s=10.0), limit_s=20)
+    run = recorded(FaultSpec(kind, target, onset_s=10.0), limit_s=14)
     with JournalReader(run) as journal:
         trip = journal.events(EventKind.TRIP)[0]
     assert trip.subject == trips
@@ -47,7 +47,7 @@ def test_a_silent_and_a_restarted_device_trip_their_interlock_and_replay(kind, t
 
 def test_an_order_to_a_silent_pump_fails_and_is_not_called_refused():
     fault = FaultSpec("silent", "pump-a", onset_s=10.0)
-    result = dry_run(RIG, RECIPE, DrySettings(faults=(fault,), options=DryOptions(limit_ns=20 * S))).result
+    result = dry_run(RIG, RECIPE, DrySettings(faults=(fault,), options=DryOptions(limit_ns=14 * S))).result
     failed = [event for event in result.events if event.fields.get("detail") == NO_ANSWER or NO_ANSWER in event.text]
     assert failed
     assert not any(event.fields.get("result") == "refused" for event in failed)
