@@ -2,10 +2,10 @@
 
 A Unix socket, one JSON object per line, UTF-8. A client sends ``{"do": "request", "id", "verb", "who", "target",
 "args"}``, ``{"do": "subscribe"}`` or ``{"do": "snapshot"}``; the front also ``{"do": "alerts", "down"}``, with "" or
-why nobody can be alerted now. The daemon answers ``{"say": "answer", "id", "ok", "detail"}``, ``{"say": "snapshot", ...}``
-(``SNAPSHOT_KEYS``) at most 5 times a wall second, ``{"say": "event", ...}`` for each event (with a rising ``n``),
-``{"say": "end", "outcome", "exit"}`` last. A slow client loses snapshots, never events up to ``EVENT_BACKLOG``; then it
-is dropped.
+why nobody can be alerted now. The daemon answers ``{"say": "answer", "id", "ok", "detail"}``, ``{"say": "snapshot",
+...}`` (``SNAPSHOT_KEYS``) at most 5 times a wall second, ``{"say": "event", ...}`` for each event (with a rising
+``n``), ``{"say": "end", "outcome", "exit"}`` last. A slow client loses snapshots, never events up to
+``EVENT_BACKLOG``; then it is dropped.
 """
 
 from __future__ import annotations
