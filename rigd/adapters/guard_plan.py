@@ -6,6 +6,7 @@ from collections.abc import Sequence
 from pathlib import Path
 from typing import Any
 
+from rigd.adapters.serial_link import as_the_port_can
 from rigd.model.devices import LastWill, WillFrame
 
 
@@ -21,7 +22,7 @@ def with_folder(command: Sequence[str], folder: Path) -> list[str]:
 
 def will_facts(will: LastWill) -> dict[str, Any]:
     """One last will: port settings, frames, and the frames that check it."""
-    link = will.link
+    link = as_the_port_can(will.link)
     return {
         "device": will.device,
         "port": link.port,

@@ -7,7 +7,9 @@ from __future__ import annotations
 
 import contextlib
 import errno
+import os
 import sys
+from dataclasses import replace
 from typing import Any
 
 import serial
@@ -26,9 +28,17 @@ _REMEDY = {
 }
 THREAD_POLL_S = 0.1
 
+try:
+    import termios
+
+    _NOT_SET: tuple[type[Exception], ...] = (ValueError, termios.error)
+except ImportError:  # not a POSIX system
+    _NOT_SET = (ValueError,)
+
 
 def open_port(spec: LinkSpec) -> serial.Serial:
     """Open and set up the port; raises ``LinkBusy`` for one in use, else ``LinkClosed``, each with one sentence."""
+    spec = as_the_port_can(spec)
     settings: dict[str, Any] = {
         "baudrate": spec.baud,
         "bytesize": spec.data_bits,
@@ -43,10 +53,17 @@ def open_port(spec: LinkSpec) -> serial.Serial:
         port = serial.serial_for_url(spec.port, **settings)
     except (serial.SerialException, OSError) as error:
         raise _explain(spec.port, error) from error
-    except ValueError as error:
+    except _NOT_SET as error:
         raise LinkError(f"port {spec.port!r} cannot be set up: {error}") from error
     _low_latency(port)
     return port
+
+
+def as_the_port_can(spec: LinkSpec) -> LinkSpec:
+    """A pseudo-terminal has neither data bits nor parity, and asking for them fails: there they are left out."""
+    if not os.path.realpath(spec.port).startswith("/dev/pts/"):
+        return spec
+    return replace(spec, data_bits=8, parity="none", stop_bits=1.0)
 
 
 def make_link(spec: LinkSpec, port: serial.Serial) -> DescriptorLink | ThreadLink:

@@ -18,8 +18,9 @@ from pathlib import Path
 import pytest
 from serial import Serial, rfc2217, serial_for_url
 
+from rigd.adapters.guard_plan import will_facts
 from rigd.adapters.open_link import open_link
-from rigd.model.devices import DeviceSpec, LinkSpec
+from rigd.model.devices import DeviceSpec, LastWill, LinkSpec
 from rigd.model.orders import Action, Authority, Order
 from rigd.runtime.line import LinkLine
 from rigd_drivers.card.driver import CardDevice
@@ -168,3 +169,20 @@ def test_a_bridge_that_speaks_rfc_2217(tmp_path: Path) -> None:
     with wire() as (near, far), served(far, "rtu"), socket.create_server(("127.0.0.1", 0)) as server:
         threading.Thread(target=bridge, args=(server, near), daemon=True).start()
         assert asyncio.run(talk(made, f"rfc2217://127.0.0.1:{server.getsockname()[1]}")) == [0.25, 1.0]
+
+
+async def test_a_pseudo_terminal_has_no_parity(tmp_path: Path) -> None:
+    """And each time it is opened anew; asking one for seven bits with parity fails."""
+    master, slave = os.openpty()
+    spec = LinkSpec("bench", os.ttyname(slave), baud=4800, data_bits=7, parity="even", stop_bits=2.0)
+    try:
+        for _ in range(3):
+            link = await open_link(spec)
+            await link.write(b"A\xff")
+            assert os.read(master, 10) == b"A\xff"
+            await link.close()
+        facts = will_facts(LastWill("d", spec, ()))
+        assert (facts["data_bits"], facts["parity"], facts["stop_bits"]) == (8, "none", 1.0)
+    finally:
+        os.close(master)
+        os.close(slave)
