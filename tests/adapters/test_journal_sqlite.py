@@ -137,6 +137,38 @@ def test_a_failing_disk_is_told_at_once_and_loses_nothing_when_it_recovers(
         assert reader.meta["outcome"] == "done"
 
 
+class _Slow(sqlite3.Connection):
+    """Each commit waits for its disk, as one whose fsync hangs does."""
+
+    wait_s = 0.0
+
+    def execute(self, sql: str, *values: object) -> sqlite3.Cursor:  # type: ignore[override]
+        if sql == "COMMIT":
+            time.sleep(self.wait_s)
+        return super().execute(sql, *values)  # type: ignore[arg-type]
+
+
+def slow_connect(path: Path) -> sqlite3.Connection:
+    return sqlite3.connect(path, isolation_level=None, check_same_thread=False, factory=_Slow)
+
+
+def test_a_disk_that_hangs_in_every_commit_makes_no_scan_wait(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    """Nobody who decides waits for the disk: a trip is as quick with an fsync of seconds as with none."""
+    journal = SqliteJournal(tmp_path / "run.sqlite", {}, TAGS, connect=slow_connect)
+    monkeypatch.setattr(_Slow, "wait_s", 1.0)
+    waits_s = []
+    for number in range(1, 101):
+        began_s = time.perf_counter()
+        journal.scan(number, number * S, UTC, rich_intake(number))
+        journal.decided(number, *decisions(number))
+        waits_s.append(time.perf_counter() - began_s)
+    assert sorted(waits_s)[95] < 0.005
+    assert sum(waits_s) < 0.5  # less than one commit
+    journal.close("done")
+    with JournalReader(tmp_path / "run.sqlite") as reader:
+        assert len(list(reader.scans())) == 100
+
+
 def test_a_disk_that_stays_full_makes_closing_fail_instead_of_lying(
     tmp_path: Path, monkeypatch: pytest.MonkeyPatch
 ) -> None:
