@@ -18,9 +18,9 @@ from pathlib import Path
 import pytest
 from serial import Serial, rfc2217, serial_for_url
 
-from rigd.adapters.guard_plan import will_facts
 from rigd.adapters.open_link import open_link
-from rigd.model.devices import DeviceSpec, LastWill, LinkSpec
+from rigd.adapters.serial_link import as_the_port_can
+from rigd.model.devices import DeviceSpec, LinkSpec
 from rigd.model.orders import Action, Authority, Order
 from rigd.runtime.line import LinkLine
 from rigd_drivers.card.driver import CardDevice
@@ -119,6 +119,7 @@ async def talk(made: CardDevice, port: str) -> list[float]:
         await link.close()
 
 
+@pytest.mark.slow
 @pytest.mark.parametrize(("kind", "proof"), [("rtu", "run"), ("ascii", "word")])
 def test_a_serial_line_before_another_librarys_server(kind: str, proof: str, tmp_path: Path) -> None:
     from rigd.guard.wills import _exchange
@@ -163,6 +164,7 @@ def bridge(server: socket.socket, name: str) -> None:
         reader.join(1)
 
 
+@pytest.mark.slow
 @pytest.mark.filterwarnings("ignore:set(Daemon|Name):DeprecationWarning")  # inside pyserial 3.5
 def test_a_bridge_that_speaks_rfc_2217(tmp_path: Path) -> None:
     made = device(tmp_path, "rtu")
@@ -181,8 +183,8 @@ async def test_a_pseudo_terminal_has_no_parity(tmp_path: Path) -> None:
             await link.write(b"A\xff")
             assert os.read(master, 10) == b"A\xff"
             await link.close()
-        facts = will_facts(LastWill("d", spec, ()))
-        assert (facts["data_bits"], facts["parity"], facts["stop_bits"]) == (8, "none", 1.0)
+        asked = as_the_port_can(spec)  # the guard's plan takes the same
+        assert (asked.data_bits, asked.parity, asked.stop_bits) == (8, "none", 1.0)
     finally:
         os.close(master)
         os.close(slave)

@@ -86,6 +86,7 @@ def exchanged(peer: PumpD2) -> None:
     peer.serial = "00999"
 
 
+@pytest.mark.slow
 class TestCard(DriverContract):
     case = DriverCase(
         family=replace(FAMILY, channels=PUMP_CHANNELS, actions=(Action.DELIVER, Action.STOP)),

@@ -98,6 +98,7 @@ def test_ports_asks_who_is_there_and_nothing_else(card: str, port: str) -> None:
     assert TextPump.heard == ["ID?"]
 
 
+@pytest.mark.slow
 def test_by_hand_on_a_terminal(card: str, port: str, tmp_path: Path) -> None:
     saved = tmp_path / "hand.transcript"
     master, slave = pty.openpty()

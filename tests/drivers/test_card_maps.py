@@ -180,6 +180,7 @@ async def test_a_busy_device_is_asked_again_and_a_clamped_value_is_told(tmp_path
 
     made = pump(
         tmp_path,
+        link="busy_s = 0.2",
         registers="""rate = { table = "holding", address = 0 }
 flow = { table = "input", address = 0 }""",
         steps='{ write = "rate", scale = 0.001 }',
