@@ -95,3 +95,13 @@ async def test_a_reply_that_no_pattern_fits_is_named(tmp_path: Path) -> None:
     driver = FAMILY.make(spec(tmp_path / "p.toml"))
     with pytest.raises(LinkTimeout, match=r"heard 'F0.0 V1.250 HALT', which no pattern of the card fits"):
         await driver.poll(Pump(), ["flow"])
+
+
+@pytest.mark.parametrize(("heard", "stopped"), [(b"1\r", True), (b"0\r1\r", True), (b"21\r", False), (b"1", False)])
+def test_a_last_will_believes_a_whole_answer_only(tmp_path: Path, heard: bytes, stopped: bool) -> None:
+    """Where replies have no start mark, "21" is no "1"."""
+    text = files("rigd_drivers.card").joinpath("templates", "text-valve.toml").read_text(encoding="utf-8")
+    (tmp_path / "v.toml").write_text(text.replace('reply_start = "="', 'reply_start = ""'), encoding="utf-8")
+    will = FAMILY.make(spec(tmp_path / "v.toml")).last_will(LinkSpec("bench", "/dev/none"))
+    assert [frame.request for frame in will.frames] == [b"/07GO1\r", b""]  # then a second of patience
+    assert (re.search(will.check[0].good_reply, heard, re.DOTALL) is not None) is stopped

@@ -103,9 +103,9 @@ def try_card(
 ) -> int:
     """Speak with the device at PORT by the card FILE; show all bytes, in hex and text, with times.
 
-    Asks who is there and reads every channel; gives an order only with --order. On a terminal it then asks what next
-    ("help" tells the words). The transcript is the card's test: rigd card check FILE --transcript SAVED. Exit 0: all
-    was answered; 1: not.
+    Asks who is there; on a terminal it then asks what next ("help" tells the words). Elsewhere it prepares the device
+    as the daemon does at each start, gives the orders of --order, if any, and reads every channel. The transcript is
+    the card's test: rigd card check FILE --transcript SAVED. Exit 0: all was answered; 1: not.
     """
     from rigd.runtime.transcript import Transcript, written
 
