@@ -36,7 +36,7 @@ from rigd.config import load_pair
 from rigd.logic.program import Program, RunOptions, compile_program
 from rigd.logic.run_end import RunEnd
 from rigd.logic.scan import CoreState
-from rigd.model.devices import LastWill, LinkSpec
+from rigd.model.devices import LinkSpec
 from rigd.model.errors import JournalError, LinkError, RigError
 from rigd.model.recipe import Recipe
 from rigd.model.rig import RigDefinition
@@ -51,6 +51,7 @@ from rigd.runtime.dry import DryOptions, DryResult, DryShell
 from rigd.runtime.live import Live, Surroundings
 from rigd.runtime.permission import Permission
 from rigd.runtime.spectra import cell_readers
+from rigd.runtime.wills import last_resorts, last_wills
 
 FIRST_TICKET_S, EARLY_S, LATE_S = 30.0, 0.04, 1.0
 """The guard's window: until the first ticket, then at least and at most between two [wall]."""
@@ -139,16 +140,6 @@ def resolve_ports(rig: RigDefinition, rig_path: str, pace: float) -> tuple[LinkS
     if missing:
         raise LinkError(f"the simulator serves no link {missing[0]!r}; was it started with another rig file?")
     return tuple(replace(link, port=served[link.id]) if link.port == SIMULATED else link for link in rig.links)
-
-
-def last_wills(rig: RigDefinition, drivers: Mapping[str, Driver], links: Sequence[LinkSpec]) -> list[LastWill]:
-    """What stops each device, pumps first, then valves, then baths; devices that move nothing are left out."""
-    ranks = [{part.device for part in parts} for parts in (rig.pumps, rig.valves, rig.chillers)]
-    rank = {device: number for number, devices in enumerate(ranks) for device in devices}
-    by_id = {link.id: link for link in links}
-    wills = [drivers[device.id].last_will(by_id[device.link]) for device in rig.devices]
-    wills = [will for will in wills if will.frames]
-    return sorted(wills, key=lambda will: rank.get(will.device, len(ranks)))
 
 
 def control_main(plan_path: str) -> int:
@@ -267,7 +258,7 @@ def _plan(
         "first_s": FIRST_TICKET_S,
         "early_s": EARLY_S,
         "late_s": max(LATE_S, 5e-9 * rig.scan_ns),
-        "wills": [will_facts(will) for will in last_wills(rig, drivers, links)],
+        "wills": [will_facts(will, will.device in last_resorts(rig)) for will in last_wills(rig, drivers, links)],
     }
 
 

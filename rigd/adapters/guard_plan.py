@@ -20,8 +20,8 @@ def with_folder(command: Sequence[str], folder: Path) -> list[str]:
     return [word.replace("{folder}", str(folder)) for word in command]
 
 
-def will_facts(will: LastWill) -> dict[str, Any]:
-    """One last will: port settings, frames, and the frames that check it."""
+def will_facts(will: LastWill, last_resort: bool) -> dict[str, Any]:
+    """One last will: port settings, frames, and the frames that check it; whether others are tried first."""
     link = as_the_port_can(will.link)
     return {
         "device": will.device,
@@ -32,6 +32,7 @@ def will_facts(will: LastWill) -> dict[str, Any]:
         "stop_bits": link.stop_bits,
         "frames": _frames(will.frames),
         "check": _frames(will.check),
+        "last_resort": last_resort,
     }
 
 

@@ -208,6 +208,7 @@ def _devices(file: RigFile, rig: RigDefinition) -> tuple[DeviceSpec, ...]:
             serial_no=table.serial_no,
             options=table.options,
             facts={**facts.get(table.id, {}), "retries": retries.get(table.link, 0)},
+            last_resort=table.last_resort,
         )
         for table in file.devices
     )

@@ -307,7 +307,11 @@ def _items(holder: dict[str, object] | list[object]) -> list[object]:
 
 
 class DeviceTable(Table):
-    """An instrument or actuator on a link. ``options`` are for its driver and checked by it."""
+    """An instrument or actuator on a link. ``options`` are for its driver and checked by it.
+
+    ``last_resort``: its stop takes the drive power away (an enable output); the guard sends it when another device does
+    not confirm that it stopped.
+    """
 
     id: Id
     driver: Text
@@ -317,6 +321,7 @@ class DeviceTable(Table):
     period: Duration = 1.0
     stale_after: Duration | None = None
     serial_no: str = ""
+    last_resort: Annotated[bool, Field(strict=True)] = False
     options: dict[str, Any] = Field(default_factory=dict)
 
     @field_validator("options")

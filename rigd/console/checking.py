@@ -15,18 +15,22 @@ from rigd.config.calibrating import problems as calibration_problems
 from rigd.config.load import load_pair
 from rigd.config.places import placed
 from rigd.console.trouble import problem_facts
+from rigd.console.wills_view import wills_facts
 from rigd.logic.foresight import foreseen_plan
 from rigd.logic.planning import Plan
 from rigd.logic.program import compile_program
 from rigd.logic.response import Response, largest_flow_mL_min, responses
 from rigd.model.calibration import Calibrated
+from rigd.model.devices import LastWill
 from rigd.model.errors import ConfigError
 from rigd.model.problems import Problem, Severity
 from rigd.model.recipe import Recipe
 from rigd.model.rig import PropertySet, RigDefinition, VesselRole
+from rigd.ports.driver import Driver
 from rigd.report.cause_effect import LEGEND, matrix
 from rigd.report.early_sight import early_sight
 from rigd.report.gaps import gaps
+from rigd.runtime.wills import last_resorts, last_wills
 
 
 @dataclass(frozen=True, slots=True)
@@ -41,6 +45,7 @@ class Checked:
     flow_max_mL_min: float
     liquids: tuple[PropertySet, ...] = ()
     calibrations: tuple[Calibrated, ...] = ()
+    wills: tuple[LastWill, ...] = ()
 
     @property
     def fit(self) -> bool:
@@ -60,13 +65,14 @@ class Checked:
             "interlocks": [response_facts(response) for response in self.responses],
             "calibrations": calibration_facts(self.calibrations, datetime.now(UTC)),
             "cause_effect": cause_effect_facts(self.rig),
+            "last_wills": wills_facts(self.wills, last_resorts(self.rig)),
         }
 
 
 def check_files(rig_path: Path, recipe_path: Path | None) -> Checked:
     """Load, make the drivers, plan, compare response times. Raises ``ConfigError`` or ``PluginError``."""
     pair = load_pair(rig_path, recipe_path)
-    _make_drivers(pair.rig)
+    wills = last_wills(pair.rig, _make_drivers(pair.rig), pair.rig.links)
     found = responses(pair.rig, pair.recipe)
     planned = foreseen_plan(compile_program(pair.rig, pair.recipe)) if pair.recipe else None
     severity = Severity.ERROR if pair.recipe else Severity.WARNING
@@ -77,19 +83,23 @@ def check_files(rig_path: Path, recipe_path: Path | None) -> Checked:
     sets, more = _properties(pair.rig, str(rig_path))
     calibrated = in_force(pair.rig, read_records(rig_path))
     more = (*more, *_calibration_problems(pair.rig, calibrated, planned))
-    return Checked(pair.rig, pair.recipe, planned, (*problems, *more), found, flow_mL_min, sets, calibrated)
+    return Checked(
+        pair.rig, pair.recipe, planned, (*problems, *more), found, flow_mL_min, sets, calibrated, tuple(wills)
+    )
 
 
-def _make_drivers(rig: RigDefinition) -> None:
-    """Make and forget each driver; ``ConfigError`` with what is wrong with any of them, each problem once."""
+def _make_drivers(rig: RigDefinition) -> dict[str, Driver]:
+    """Make each driver; ``ConfigError`` with what is wrong with any of them, each problem once."""
+    made: dict[str, Driver] = {}
     problems: dict[Problem, None] = {}
     for device in rig.devices:
         try:
-            driver_family(device.driver).make(device)
+            made[device.id] = driver_family(device.driver).make(device)
         except ConfigError as error:
             problems |= dict.fromkeys(error.problems)
     if problems:
         raise ConfigError(tuple(problems))
+    return made
 
 
 def _calibration_problems(rig: RigDefinition, found: tuple[Calibrated, ...], planned: Plan | None) -> list[Problem]:

@@ -12,6 +12,8 @@ from typing import Any
 
 import serial
 
+TRIES = 3
+"""After so many rounds without every answer, the devices of the last resort are told as well."""
 PAUSE_S = (0.1, 0.2, 0.5, 1.0, 2.0)
 LOG_LINES = 400  # in full; from then on only every hundredth, so that a night of trying fills no disk
 PARITY = {"none": serial.PARITY_NONE, "even": serial.PARITY_EVEN, "odd": serial.PARITY_ODD}
@@ -34,21 +36,25 @@ class Log:
 
 
 def send_wills(wills: list[dict[str, Any]], log: Log, give_up: Callable[[], bool]) -> dict[str, dict[str, Any]]:
-    """Stop every device, in the order of ``wills``, again and again until each has confirmed or ``give_up`` says so."""
-    states: dict[str, dict[str, Any]] = {
-        will["device"]: {"confirmed": False, "attempts": 0, "detail": ""} for will in wills
-    }
+    """Stop every device, in the order of ``wills``, again and again until each has confirmed or ``give_up`` says so.
+
+    Those of the last resort take the drive power away. They are told only when others have not confirmed in ``TRIES``
+    rounds, and are left out of the answer when that was not needed.
+    """
+    states: dict[str, dict[str, Any]] = {}
     ports: dict[str, serial.Serial] = {}
     turn = -1
     while True:
         turn += 1
         for will in wills:
-            state = states[will["device"]]
+            if turn < TRIES and will.get("last_resort"):
+                continue
+            state = states.setdefault(will["device"], {"confirmed": False, "attempts": 0, "detail": ""})
             if not state["confirmed"]:
                 state["attempts"] += 1
                 state["detail"] = _attempt(will, ports)
                 state["confirmed"] = not state["detail"]
-                log.write(f"{will['device']}: {state['detail'] or 'stopped, confirmed'}")
+                log.write(f"{will['device']}: {state['detail'] or _done(will)}")
         if give_up() or all(state["confirmed"] for state in states.values()):
             break
         time.sleep(PAUSE_S[min(turn, len(PAUSE_S) - 1)])
@@ -56,6 +62,10 @@ def send_wills(wills: list[dict[str, Any]], log: Log, give_up: Callable[[], bool
         with contextlib.suppress(OSError):
             port.close()
     return states
+
+
+def _done(will: dict[str, Any]) -> str:
+    return "drive power taken away, confirmed" if will.get("last_resort") else "stopped, confirmed"
 
 
 def _attempt(will: dict[str, Any], ports: dict[str, serial.Serial]) -> str:

@@ -93,6 +93,7 @@ class DeviceSpec:
     numbers and lists about the unit that the driver needs, made by the rig compiler: always ``retries`` (of the link);
     for a pump ``syringes``, ``bore_mm``, ``stroke_mL``; for a valve ``positions`` (names in order) and ``rest``
     (name); for a sensor module ``spans`` (channel -> (low, high)). A driver skips a check whose fact is missing.
+    ``last_resort``: its last will takes the drive power away; sent when others do not confirm that they stopped.
     """
 
     id: str
@@ -105,6 +106,7 @@ class DeviceSpec:
     serial_no: str = ""
     options: Mapping[str, object] = field(default_factory=dict)
     facts: Mapping[str, object] = field(default_factory=dict)
+    last_resort: bool = False
 
 
 @dataclass(frozen=True, slots=True)

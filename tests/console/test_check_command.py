@@ -148,3 +148,71 @@ def test_a_bottle_that_does_not_last_is_said_beside_its_numbers(files, capsys):
     assert call(["check", str(files / RIG), str(files / RECIPE)]) == 1
     rows = [line for line in capsys.readouterr().out.splitlines() if "acid-feed" in line and line.rstrip()[-2:] == "no"]
     assert len(rows) == 1
+
+
+ENABLE_CARD = """
+schema = "rigd-card-1"
+title = "drive enable (invented)"
+family = "sensor"
+{prepare}
+[link]
+protocol = "modbus-tcp"
+
+[registers]
+enable = {{ table = "coil", address = 4 }}
+
+[channels.on]
+read = "enable"
+
+[stop]
+{stop}
+"""
+ENABLE_DEVICE = """
+[[sensors]]
+tag = "ES-1"
+title = "drive enable"
+measures = "state"
+at = "IR"
+labels = ["off", "on"]
+device = "drive-enable"
+channel = "on"
+
+[[links]]
+id = "io"
+port = "socket://127.0.0.1:1"
+
+[[devices]]
+id = "drive-enable"
+driver = "card"
+link = "io"
+last_resort = true
+options = { card = "enable.toml" }
+"""
+
+
+def with_drive_enable(files: Path, stop: str) -> None:
+    """An output that gives power to the pumps, connected by a protocol card: no line of Python."""
+    prepare = '[[prepare]]\nwrite = "enable"\nset = 1\n' if "steps" in stop else ""
+    (files / "rigs" / "enable.toml").write_text(ENABLE_CARD.format(stop=stop, prepare=prepare))
+    rig = files / RIG
+    rig.write_text(rig.read_text() + ENABLE_DEVICE)
+
+
+def test_last_wills_are_shown_pumps_first_and_the_drive_power_last(files, capsys):
+    with_drive_enable(files, 'steps = [{ write = "enable", set = 0 }]\ncheck = [{ read = "enable", equals = 0 }]')
+    _, facts, _ = check(files, capsys)
+    wills = facts["last_wills"]
+    assert [will["device"] for will in wills][:2] == ["pump-a", "pump-b"]
+    assert [will["device"] for will in wills if will["last_resort"]] == ["drive-enable"] == [wills[-1]["device"]]
+    assert bytes.fromhex(wills[-1]["frames"][0]["request"]).endswith(bytes.fromhex("0500040000"))  # write coil 4, off
+    assert all(will["frames"] and will["check"] for will in wills)
+    assert call(["check", str(files / RIG), "--wills"]) == 0
+    said = capsys.readouterr()
+    assert "drive-enable" in said.out + said.err
+    assert "(last resort)" in said.out + said.err
+
+
+def test_a_last_resort_that_takes_nothing_away_is_refused(files, capsys):
+    with_drive_enable(files, 'moves_nothing = "it only measures"')
+    assert call(["check", str(files / RIG)]) == 2
+    assert "its driver knows nothing that takes the power away" in capsys.readouterr().err

@@ -83,6 +83,7 @@ class Peer:
         self._deaf = deaf
         self.stopped_at = 0.0
         self.heard = 0
+        self.lies = False
         self._over = False
         self._thread = threading.Thread(target=self._serve, daemon=True)
         self._thread.start()
@@ -109,6 +110,8 @@ class Peer:
         if line == b"stop":
             self.stopped_at = time.monotonic()
             os.write(self.master, b"ok\n")
+        elif line == b"status?" and self.lies:
+            os.write(self.master, b"delivering\n")
         elif line == b"status?":
             os.write(self.master, b"stopped\n" if self.stopped_at else b"delivering\n")
 
@@ -236,6 +239,44 @@ def test_wills_are_repeated_until_a_deaf_pump_confirms(tmp_path: Path, peer: Pee
     assert report["devices"]["deaf"]["attempts"] > 1
     assert report["devices"]["good"]["attempts"] == 1
     assert deaf.stopped_at > peer.stopped_at > 0
+
+
+def test_drive_power_is_taken_away_only_when_a_pump_does_not_confirm(tmp_path: Path, peer: Peer) -> None:
+    """The pump says "ok" and goes on delivering; the enable output is told after three rounds, not before."""
+    enable, liar = Peer(), Peer()
+    liar.lies = True
+    path = plan(tmp_path, "crash", {"enable": enable.port, "liar": liar.port, "good": peer.port})
+    facts = json.loads(path.read_text())
+    facts["wills"][0]["last_resort"] = True
+    path.write_text(json.dumps(facts))
+    with subprocess.Popen([sys.executable, "-m", "rigd.guard", str(path)], stderr=subprocess.PIPE, text=True) as guard:
+        while not enable.stopped_at:
+            time.sleep(0.02)
+        assert liar.heard >= 6
+        assert peer.stopped_at > 0
+        assert enable.stopped_at - peer.stopped_at < 3.0
+        liar.lies = False  # without power it stands still at last
+        assert guard.stderr is not None
+        said = guard.stderr.read()
+        assert "every device confirmed it" in said
+    for one in (enable, liar):
+        one.close()
+    devices = json.loads((tmp_path / "guard.json").read_text())["devices"]
+    assert (devices["enable"]["confirmed"], devices["liar"]["confirmed"]) == (True, True)
+    assert "enable: drive power taken away, confirmed" in (tmp_path / "guard.log").read_text()
+
+
+def test_drive_power_stays_when_every_pump_confirms(tmp_path: Path, peer: Peer) -> None:
+    enable = Peer()
+    path = plan(tmp_path, "crash", {"good": peer.port, "enable": enable.port})
+    facts = json.loads(path.read_text())
+    facts["wills"][1]["last_resort"] = True
+    path.write_text(json.dumps(facts))
+    done = run_guard(path)
+    enable.close()
+    assert "every device confirmed it" in done.stderr
+    assert enable.heard == 0
+    assert set(json.loads((tmp_path / "guard.json").read_text())["devices"]) == {"good"}
 
 
 def test_a_device_that_never_confirms_is_named_when_a_person_gives_up(tmp_path: Path, peer: Peer) -> None:
