@@ -83,6 +83,14 @@ def _attempt(will: dict[str, Any], ports: dict[str, serial.Serial]) -> str:
 
 
 def _open(will: dict[str, Any]) -> serial.Serial:
+    """Alone on the port if possible; but a program that took its lock meanwhile must not keep a stop from the wire."""
+    try:
+        return _opened(will, exclusive=True)
+    except serial.SerialException:
+        return _opened(will, exclusive=None)
+
+
+def _opened(will: dict[str, Any], exclusive: bool | None) -> serial.Serial:
     return serial.serial_for_url(
         will["port"],
         baudrate=will["baud"],
@@ -91,7 +99,7 @@ def _open(will: dict[str, Any]) -> serial.Serial:
         stopbits=will["stop_bits"],
         timeout=0.02,
         write_timeout=0.5,
-        exclusive=True,
+        exclusive=exclusive,
     )
 
 

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import contextlib
+import fcntl
 import json
 import os
 import pty
@@ -264,6 +265,14 @@ def test_drive_power_is_taken_away_only_when_a_pump_does_not_confirm(tmp_path: P
     devices = json.loads((tmp_path / "guard.json").read_text())["devices"]
     assert (devices["enable"]["confirmed"], devices["liar"]["confirmed"]) == (True, True)
     assert "enable: drive power taken away, confirmed" in (tmp_path / "guard.log").read_text()
+
+
+def test_a_program_that_locked_the_port_does_not_keep_a_stop_from_the_wire(tmp_path: Path, peer: Peer) -> None:
+    with open(peer.port, "rb", buffering=0) as taken:
+        fcntl.flock(taken, fcntl.LOCK_EX | fcntl.LOCK_NB)
+        done = run_guard(plan(tmp_path, "crash", {"pump": peer.port}))
+    assert "every device confirmed it" in done.stderr
+    assert peer.stopped_at > 0
 
 
 def test_drive_power_stays_when_every_pump_confirms(tmp_path: Path, peer: Peer) -> None:
