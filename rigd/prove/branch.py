@@ -16,9 +16,11 @@ from pathlib import Path
 from rigd.adapters.plugins import plant_maker
 from rigd.config import load_pair
 from rigd.logic.program import compile_program
+from rigd.model.events import EventKind
 from rigd.model.orders import Verb
-from rigd.ports.plant import FaultSpec, Plant
-from rigd.prove.judge import Night, night_of
+from rigd.ports.plant import FaultSpec
+from rigd.prove.judge import Night, announced, night_of
+from rigd.prove.witness import Witness
 from rigd.runtime.dry import DryOptions, DryShell, Visit
 from rigd.runtime.spectra import cell_readers
 
@@ -37,7 +39,10 @@ class Moment:
 
 @dataclass(frozen=True, slots=True)
 class Job:
-    """What one worker does: one seed, some faults (onset is filled in), all moments."""
+    """What one worker does: one seed, some faults (onset is filled in), all moments.
+
+    ``usual`` are the alarms of the healthy night, which tell nothing of a fault.
+    """
 
     rig: str
     recipe: str
@@ -45,6 +50,7 @@ class Job:
     faults: tuple[FaultSpec, ...]
     moments: tuple[Moment, ...]
     healthy_ns: int
+    usual: frozenset[str] = frozenset()
 
 
 @dataclass(slots=True)
@@ -64,8 +70,8 @@ def run_job(job: Job) -> list[Night]:
     assert pair.recipe is not None
     program = compile_program(pair.rig, pair.recipe)
     plant = plant_maker().make(pair.rig, job.seed)
-    here = _Branch()
-    visits = tuple(Visit(m.t_ns, _dividing(here, job, m, plant)) for m in job.moments)
+    here, witness = _Branch(), Witness(program, plant)
+    visits = tuple(Visit(m.t_ns, _dividing(here, job, m, witness)) for m in job.moments)
     options = DryOptions(
         limit_ns=job.healthy_ns + SPARE_NS,
         linger_ns=LINGER_NS,
@@ -74,12 +80,12 @@ def run_job(job: Job) -> list[Night]:
         afterwards=(Verb.START,),
     )
     try:
-        result = DryShell(program, plant, cell_readers(pair.rig, pair.recipe)).run(options)
+        result = DryShell(program, plant, cell_readers(pair.rig, pair.recipe), watch=witness.look).run(options)
         if here.fault is None:
             return here.nights
         hazards = next(kind.hazards for kind in plant_maker().fault_kinds() if kind.kind == here.fault.kind)
         at = (here.phase, here.onset_ns, job.seed)
-        _tell(here.pipe, night_of(program, plant, result, here.fault, hazards, at))
+        _tell(here.pipe, night_of(witness, result, here.fault, hazards, at, job.usual))
     except BaseException:
         if here.fault is None:
             raise
@@ -87,13 +93,15 @@ def run_job(job: Job) -> list[Night]:
     os._exit(0)
 
 
-def _dividing(here: _Branch, job: Job, moment: Moment, plant: Plant) -> Callable[[int], None]:
+def _dividing(here: _Branch, job: Job, moment: Moment, witness: Witness) -> Callable[[int], None]:
     def divide(now_ns: int) -> None:
         if here.fault is not None:
             return
         for fault in job.faults:
             if _child(here, fault, moment, now_ns):
-                plant.inject(FaultSpec(fault.kind, fault.target, onset_s=now_ns / 1e9, magnitude=fault.magnitude))
+                witness.begin(now_ns)
+                spec = FaultSpec(fault.kind, fault.target, onset_s=now_ns / 1e9, magnitude=fault.magnitude)
+                witness.plant.inject(spec)
                 return
 
     return divide
@@ -121,18 +129,27 @@ def _tell(pipe: int, answer: object) -> None:
         file.write(pickle.dumps(answer))
 
 
-def healthy_moments(rig: Path, recipe: Path, seed: int) -> tuple[tuple[Moment, ...], int, list[str]]:
-    """A moment well inside each phase of a healthy night, its length [ns], and what tripped in it (nothing should)."""
-    from rigd.app import DrySettings, dry_run
-    from rigd.model.events import EventKind
+@dataclass(frozen=True, slots=True)
+class HealthyNight:
+    """A night without a fault: a moment well inside each phase, its length, trips (there should be none) and alarms."""
 
-    done = dry_run(rig, recipe, DrySettings(seed))
-    starts = [e for e in done.result.events if e.kind is EventKind.PHASE and not e.fields.get("step")]
-    ends = [event.t_ns for event in starts[1:]] + [done.result.end_ns]
+    moments: tuple[Moment, ...]
+    length_ns: int
+    trips: tuple[str, ...]
+    alarms: frozenset[str]
+
+
+def healthy_night(rig: Path, recipe: Path, seed: int) -> HealthyNight:
+    """Rehearse one."""
+    from rigd.app import DrySettings, dry_run
+
+    result = dry_run(rig, recipe, DrySettings(seed)).result
+    starts = [e for e in result.events if e.kind is EventKind.PHASE and not e.fields.get("step")]
+    ends = [event.t_ns for event in starts[1:]] + [result.end_ns]
     moments = [
         Moment(event.subject, event.t_ns + min((end - event.t_ns) // 2, 60_000_000_000))
         for event, end in zip(starts, ends, strict=True)
         if end - event.t_ns > 4_000_000_000
     ]
-    trips = [event.subject for event in done.result.events if event.kind is EventKind.TRIP]
-    return tuple(moments), done.result.end_ns, trips
+    trips = tuple(event.subject for event in result.events if event.kind is EventKind.TRIP)
+    return HealthyNight(tuple(moments), result.end_ns, trips, frozenset(announced(result.events)))

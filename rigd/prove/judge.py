@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterable, Iterator
 from dataclasses import dataclass
 
 from rigd.logic.program import Program
@@ -10,18 +11,26 @@ from rigd.model.protection import Interlock
 from rigd.model.rig import RigDefinition
 from rigd.ports.plant import FaultSpec, Plant
 from rigd.prove.expected import NONE, STRENGTH, Expected, expected
+from rigd.prove.witness import Witness
 from rigd.runtime.dry import DryResult
 
 _OWN_UNIT = ("LINK-", "STALL-", "MISMATCH-", "POWER-", "EMPTY-")
 
 At = tuple[str, int, int]
 """Phase, onset [ns] and seed."""
-HELD, UNSEEN, MISSED = "held", "not seen", "missed"
+HELD, TOLD, UNSEEN, MISSED = "held", "told", "not seen", "missed"
+VERDICTS = (HELD, TOLD, UNSEEN, MISSED)
+"""From good to bad. *Told*: an alarm that a healthy night does not have came, and nothing stopped."""
+_NEWS = frozenset({"new", "again"})
 
 
 @dataclass(frozen=True, slots=True)
 class Night:
-    """One faulted night. ``verdict``: held, not seen, or missed; ``why`` says what was missed ("" when held)."""
+    """One faulted night. ``why`` says what was missed ("" unless missed), ``alarms`` which alarms the fault brought.
+
+    ``severity`` and ``harm`` say what the true plant suffered in a night in which nothing stopped a fault that asks for
+    a stop ("" in all others).
+    """
 
     kind: str
     target: str
@@ -38,6 +47,8 @@ class Night:
     peak_part: str
     alarms: tuple[str, ...]
     add: str = ""
+    severity: str = ""
+    harm: str = ""
 
     @classmethod
     def broken(cls, fault: FaultSpec, phase: str, words: str) -> Night:
@@ -50,9 +61,10 @@ class Night:
 
 
 def night_of(
-    program: Program, plant: Plant, result: DryResult, fault: FaultSpec, hazards: tuple[str, ...], at: At
+    witness: Witness, result: DryResult, fault: FaultSpec, hazards: tuple[str, ...], at: At, usual: frozenset[str]
 ) -> Night:
-    """Judge what a faulted rehearsal came to."""
+    """Judge what a faulted rehearsal came to. ``usual``: the alarms that come without a fault too."""
+    program, plant = witness.program, witness.plant
     phase, onset_ns, seed = at
     after = [event for event in result.events if event.t_ns >= onset_ns]
     trips = [event for event in after if event.kind is EventKind.TRIP]
@@ -68,17 +80,29 @@ def night_of(
         *_still_moving(stop, moving),
         *_restarted(after, trips),
     ]
-    alarms = tuple(dict.fromkeys(e.subject for e in after if e.kind is EventKind.ALARM and e.fields.get("announce")))
+    alarms = _news(after, usual)
     verdict = MISSED if why else HELD
-    if not why and stop == NONE and NONE not in answer.stops and not alarms:
-        verdict = UNSEEN
+    if not why and stop == NONE and NONE not in answer.stops:
+        verdict = TOLD if alarms else UNSEEN
+    severity, harm = witness.findings(part, share) if verdict in (TOLD, UNSEEN) else ("", "")
     return Night(
         kind=fault.kind, target=fault.target, magnitude=fault.magnitude, phase=phase, seed=seed, verdict=verdict,
         why="; ".join(why), stop=stop, first_out=trips[0].subject if trips else "",
         first_s=(trips[0].t_ns - onset_ns) / 1e9 if trips else float("nan"),
         stopped_s=_stop_time(after, onset_ns), peak_share=share, peak_part=part, alarms=alarms,
-        add=answer.add if verdict == UNSEEN else "",
+        add=answer.add if verdict == UNSEEN else "", severity=severity, harm=harm,
     )  # fmt: skip
+
+
+def announced(events: Iterable[Event]) -> Iterator[str]:
+    """The alarms that sounded, in their order."""
+    for event in events:
+        if event.kind is EventKind.ALARM and event.fields.get("announce") in _NEWS:
+            yield event.subject
+
+
+def _news(events: list[Event], usual: frozenset[str]) -> tuple[str, ...]:
+    return tuple(name for name in dict.fromkeys(announced(events)) if name not in usual)
 
 
 def _held(events: list[Event]) -> str:

@@ -12,8 +12,8 @@ from pathlib import Path
 from rigd.adapters.plugins import plant_maker
 from rigd.model.rig import RigDefinition
 from rigd.ports.plant import FaultSpec
-from rigd.prove.branch import Job, Moment, healthy_moments, run_job
-from rigd.prove.judge import HELD, MISSED, UNSEEN, Night
+from rigd.prove.branch import Job, Moment, healthy_night, run_job
+from rigd.prove.judge import VERDICTS, Night
 
 SIZES: dict[str, tuple[float, ...]] = {
     "block": (0.9, 0.99, 1.0), "clog": (0.2, 1.0, 3.0), "collapse": (2.0, 5.0, 20.0), "leak": (0.02, 0.2, 1.0),
@@ -59,28 +59,42 @@ def faults_of(rig: RigDefinition, settings: Settings) -> tuple[FaultSpec, ...]:
         if settings.kinds and kind.kind not in settings.kinds:
             continue
         sizes = tuple(dict.fromkeys(SIZES.get(kind.kind, (1.0,))))
-        for target in tuple(maker.fault_targets(rig, kind.kind))[: settings.targets_each]:
+        for target in spread(tuple(maker.fault_targets(rig, kind.kind)), settings.targets_each):
             found += [
                 FaultSpec(kind.kind, target, magnitude=x) for x in (sizes[-1:] if settings.largest_only else sizes)
             ]
     return tuple(found)
 
 
+def spread(names: tuple[str, ...], count: int) -> tuple[str, ...]:
+    """``count`` of them, evenly over their order: the first lines of a rig are often those without pressure.
+
+    >>> spread(("bottle", "pump line", "trunk", "outlet", "waste"), 1)
+    ('trunk',)
+    """
+    count = min(count, len(names))
+    return tuple(names[(2 * i + 1) * len(names) // (2 * count)] for i in range(count))
+
+
 def jobs_of(
     rig: Path, recipe: Path, faults: Sequence[FaultSpec], settings: Settings
 ) -> tuple[list[Job], Healthy, tuple[Moment, ...]]:
-    """Jobs for the workers, and what the healthy nights that they start from were like."""
+    """Jobs for the workers, and what the healthy nights that they start from were like.
+
+    One job of few faults costs a healthy night of its own, so there are no more jobs than keep the workers busy.
+    """
     workers = settings.workers or os.cpu_count() or 1
     jobs: list[Job] = []
     hours, spurious = 0.0, list[str]()
     moments: tuple[Moment, ...] = ()
     for seed in settings.seeds:
-        moments, healthy_ns, trips = healthy_moments(rig, recipe, seed)
-        hours += healthy_ns / 3.6e12
-        spurious += trips
-        parts = workers * 4
+        night = healthy_night(rig, recipe, seed)
+        moments = night.moments
+        hours += night.length_ns / 3.6e12
+        spurious += night.trips
+        parts = min(workers * 4, max(workers, len(faults) // 4))
         jobs += [
-            Job(str(rig), str(recipe), seed, tuple(faults[i::parts]), moments, healthy_ns)
+            Job(str(rig), str(recipe), seed, tuple(faults[i::parts]), moments, night.length_ns, night.alarms)
             for i in range(parts)
             if faults[i::parts]
         ]
@@ -108,5 +122,5 @@ def bound(failures: int, nights: int) -> float:
 
 
 def counted(nights: Sequence[Night]) -> dict[str, int]:
-    """How many held, were not seen, were missed."""
-    return {verdict: sum(night.verdict == verdict for night in nights) for verdict in (HELD, UNSEEN, MISSED)}
+    """How many of each verdict."""
+    return {verdict: sum(night.verdict == verdict for night in nights) for verdict in VERDICTS}

@@ -7,7 +7,7 @@ import os
 from bench.start_time import CONFIGS, RIG
 
 from rigd.ports.plant import FaultSpec
-from rigd.prove.branch import Job, healthy_moments, run_job
+from rigd.prove.branch import Job, healthy_night, run_job
 
 RECIPE = CONFIGS / "recipes" / "demo-sweep.toml"
 BLOCK = FaultSpec("block", "L-4", magnitude=1.0)
@@ -18,8 +18,8 @@ class ProofSeconds:
     rehearsal that they come from is not in it: it costs the same whatever their number."""
 
     def __init__(self) -> None:
-        moments, self._healthy_ns, _ = healthy_moments(RIG, RECIPE, 1)
-        self._moments = moments[:1]
+        night = healthy_night(RIG, RECIPE, 1)
+        self._moments, self._healthy_ns = night.moments[:1], night.length_ns
 
     def __call__(self, faults: float) -> float:
         """Carry out a job with so many faults of the same kind."""

@@ -9,8 +9,9 @@ import pytest
 from rigd.console.proof_view import told
 from rigd.model.events import Event, EventKind
 from rigd.prove.expected import HAZARDS, STRENGTH, expected
-from rigd.prove.judge import HELD, MISSED, UNSEEN, Night, _restarted, _stop_class
-from rigd.prove.proof import SIZES, Healthy, bound, counted
+from rigd.prove.judge import HELD, MISSED, TOLD, UNSEEN, Night, _news, _restarted, _stop_class
+from rigd.prove.proof import SIZES, Healthy, bound, counted, spread
+from rigd.prove.witness import DANGEROUS, HARMLESS, SPOILS
 from rigd_sim.faults import fault_kinds
 
 
@@ -69,16 +70,49 @@ def test_bound_of_no_miss_in_n(nights: int, limit: float) -> None:
 
 
 def test_what_is_told_names_misses_and_the_worst_of_each_cell() -> None:
+    flow_meter = "a flow meter after the pump"
     nights = [
         night(),
         night(MISSED, why="COL came to 130 % of its rating", seed=2),
-        night(UNSEEN, phase="P2", stop="none", first_s=math.nan, kind="slip", add="a flow meter after the pump"),
+        night(UNSEEN, phase="P2", stop="none", first_s=math.nan, kind="slip", add=flow_meter, severity=HARMLESS),
+        night(UNSEEN, stop="none", kind="slip", add=flow_meter, severity=SPOILS, harm="the flow is 10 % off"),
+        night(TOLD, stop="none", kind="leak", alarms=("OPEN-PT-1",), severity=DANGEROUS, harm="5 mL ran out"),
     ]
     facts = told("rig", "recipe", ["P1", "P2"], nights, Healthy(2.0, ()))
-    assert counted(nights) == {HELD: 1, UNSEEN: 1, MISSED: 1}
+    assert counted(nights) == {HELD: 1, TOLD: 1, UNSEEN: 2, MISSED: 1}
     assert [one["why"] for one in facts["missed"]] == ["COL came to 130 % of its rating"]
-    assert facts["unseen"] == [{"kind": "slip", "target": "L-4", "nights": 1, "add": "a flow meter after the pump"}]
-    block, slip = facts["matrix"]
-    assert [cell["style"] for cell in block["cells"]] == ["missed", ""]
-    assert [cell["text"] for cell in slip["cells"]] == ["", "~"]
-    assert "1 of 3" in facts["words"]
+    (slip,) = facts["unseen"]
+    assert (slip["nights"], slip["severity"], slip["add"]) == (2, SPOILS, flow_meter)
+    assert slip["by_severity"] == {HARMLESS: 1, SPOILS: 1}
+    assert slip["harm"] == "the flow is 10 % off"
+    (leak,) = facts["told"]
+    assert (leak["severity"], leak["alarms"]) == (DANGEROUS, ["OPEN-PT-1"])
+    assert facts["dangerous"] == 1
+    assert "leak" in facts["danger_words"]
+    styles = {row["kind"]: [cell["style"] for cell in row["cells"]] for row in facts["matrix"]}
+    assert styles == {"block": ["missed", ""], "leak": ["told", ""], "slip": ["unseen", "unseen"]}
+    assert "1 of 5" in facts["words"]
+
+
+@pytest.mark.parametrize(
+    ("verdict", "spurious", "held"),
+    [(HELD, (), True), (UNSEEN, (), True), (MISSED, (), False), (HELD, ("BED-HOT",), False)],
+)
+def test_all_held_means_no_miss_and_no_spurious_trip(verdict: str, spurious: tuple[str, ...], held: bool) -> None:
+    one = night(verdict, severity=HARMLESS)
+    assert told("rig", "recipe", ["P1"], [one], Healthy(2.0, spurious))["all_held"] is held
+
+
+def test_an_alarm_tells_of_a_fault_only_if_it_sounds_and_a_healthy_night_has_it_not() -> None:
+    def alarm(name: str, announce: str) -> Event:
+        return Event(EventKind.ALARM, name, 5, "", {"announce": announce})
+
+    events = [alarm("A", "-"), alarm("B", "off"), alarm("C", "new"), alarm("D", "again"), alarm("E", "new")]
+    assert _news(events, frozenset({"E"})) == ("C", "D")
+
+
+def test_parts_to_try_are_spread_over_the_rig() -> None:
+    assert spread(("a", "b", "c", "d", "e"), 1) == ("c",)
+    assert spread(("a", "b", "c", "d"), 2) == ("b", "d")
+    assert spread(("a", "b"), 9) == ("a", "b")
+    assert spread((), 1) == ()

@@ -54,12 +54,13 @@ def prove(
     nights = _carried_out(output, jobs, workers or 0, len(faults) * len(moments) * seeds)
     facts = told(pair.rig.title, pair.recipe.title, [moment.phase for moment in moments], nights, healthy)
     output.document(facts)
-    if facts["missed"] or facts["unseen"]:
+    if facts["missed"] or facts["unseen"] or facts["told"]:
         output.say(table(facts))
     output.say(f"[bold]{facts['words']}[/]")
+    output.say(facts["danger_words"])
     output.say(f"{facts['bound_words']} {facts['healthy_words']}")
     output.say(f"report: {write_proof_page(out, facts)}")
-    return 1 if facts["missed"] or facts["spurious"] else 0
+    return 0 if facts["all_held"] else 1
 
 
 def _known(kinds: tuple[str, ...]) -> None:
