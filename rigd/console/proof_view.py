@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+from collections import Counter
 from collections.abc import Mapping, Sequence
 from dataclasses import asdict
 from typing import TYPE_CHECKING, Any
@@ -40,6 +41,7 @@ def told(rig: str, recipe: str, phases: Sequence[str], nights: Sequence[Night], 
         "bound": bound(len(missed), len(nights)),
         "spurious": list(healthy.spurious),
         "healthy_h": healthy.hours,
+        "healthy_alarms": dict(Counter(healthy.alarms)),
         "phases": list(phases),
         "missed": [asdict(night) for night in missed],
         "told": _unanswered(nights, TOLD),
@@ -72,8 +74,12 @@ def _bound_words(missed: int, total: int) -> str:
 def _healthy_words(healthy: Healthy) -> str:
     if healthy.spurious:
         return f"Without a fault it tripped all the same: {', '.join(healthy.spurious)}."
+    limit = 3 / max(healthy.hours, 1e-9)
+    alarms = ", ".join(f"{name} {count} times" for name, count in Counter(healthy.alarms).items())
     return (
-        f"No trip in {healthy.hours:.1f} h without a fault: at most {3 / max(healthy.hours, 1e-9):.2g} an hour (95 %)."
+        f"No trip in {healthy.hours:.1f} h ({healthy.nights} nights) without a fault: "
+        f"at most {limit:.2g} an hour (95 %). "
+        f"Alarms in them: {alarms or 'none'}."
     )
 
 

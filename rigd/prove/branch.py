@@ -136,7 +136,7 @@ class HealthyNight:
     moments: tuple[Moment, ...]
     length_ns: int
     trips: tuple[str, ...]
-    alarms: frozenset[str]
+    alarms: tuple[str, ...]
 
 
 def healthy_night(rig: Path, recipe: Path, seed: int) -> HealthyNight:
@@ -152,4 +152,6 @@ def healthy_night(rig: Path, recipe: Path, seed: int) -> HealthyNight:
         if end - event.t_ns > 4_000_000_000
     ]
     trips = tuple(event.subject for event in result.events if event.kind is EventKind.TRIP)
-    return HealthyNight(tuple(moments), result.end_ns, trips, frozenset(announced(result.events)))
+    if not trips and result.outcome != "done":
+        trips = (f"not done: {result.text}",)
+    return HealthyNight(tuple(moments), result.end_ns, trips, tuple(announced(result.events)))

@@ -17,15 +17,19 @@ STRENGTH = (NONE, HOLD, QUENCH, CUT)
 
 @dataclass(frozen=True, slots=True)
 class Expected:
-    """``stops`` that answer the fault; ``measures`` by which it is seen; ``add`` what would show it."""
+    """``stops`` that answer the fault; ``measures`` by which it is seen; ``add`` what would show it.
+
+    ``still``: a hold answers it only if no pump delivers in it, as after a leak test that failed.
+    """
 
     stops: frozenset[str]
     measures: frozenset[str]
     add: str
+    still: bool = False
 
 
-def _row(stops: str, measures: str, add: str) -> Expected:
-    return Expected(frozenset(stops.split()), frozenset(measures.split()), add)
+def _row(stops: str, measures: str, add: str, *, still: bool = False) -> Expected:
+    return Expected(frozenset(stops.split()), frozenset(measures.split()), add, still)
 
 
 HAZARDS: dict[str, Expected] = {
@@ -33,8 +37,8 @@ HAZARDS: dict[str, Expected] = {
     "H2": _row("hold cut", "pressure", "a pressure sensor before the block, with a high trip"),
     "H3": _row("hold cut", "pressure", "pressure sensors before and after the bed, voting 1oo2"),
     "H4": _row("none cut", "pressure", "a pressure sensor in every section that valves can shut"),
-    "H5": _row("cut", "pressure volume leak", "a leak tray, or a balance under the flask"),
-    "H6": _row("cut", "pressure leak", "a low trip on pressure while the pumps run, a leak tray"),
+    "H5": _row("hold cut", "pressure volume leak", "a leak tray, or a balance under the flask", still=True),
+    "H6": _row("hold cut", "pressure leak", "a low trip on pressure while the pumps run, a leak tray", still=True),
     "H7": _row("none hold", "pressure fraction", "a bubble sensor at the pump's outlet"),
     "H8": _row("quench cut", "pressure flow state volume", "a flow meter after the pump"),
     "H10": _row("hold quench cut", "pressure flow volume fraction", "a flow meter after the pump, a bubble sensor"),
@@ -75,4 +79,4 @@ def expected(hazards: tuple[str, ...]) -> Expected:
     rows = [HAZARDS[name] for name in hazards if name in HAZARDS] or [UNKNOWN]
     stops = frozenset(stop for row in rows for stop in row.stops)
     measures = frozenset(measure for row in rows for measure in row.measures)
-    return Expected(stops, measures, rows[0].add)
+    return Expected(stops, measures, rows[0].add, any(row.still for row in rows))

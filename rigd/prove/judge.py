@@ -77,7 +77,7 @@ def night_of(
         *_over_rating(part, share),
         *_stop_class(_decided(trips, stop), stop, answer),
         *_first_out(program, trips, fault, answer),
-        *_still_moving(stop, moving),
+        *_still_moving(stop, moving, answer),
         *_restarted(after, trips),
     ]
     alarms = _news(after, usual)
@@ -177,8 +177,9 @@ def _watches(program: Program, interlock: Interlock, fault: FaultSpec, answer: E
     return fault.target in tags or bool({measures.get(tag, "") for tag in tags} & answer.measures)
 
 
-def _still_moving(stop: str, moving: list[str]) -> list[str]:
-    return [f"{', '.join(moving)} still delivers after the {stop}"] if stop == "cut" and moving else []
+def _still_moving(stop: str, moving: list[str], answer: Expected) -> list[str]:
+    rest = stop == "cut" or (stop == "hold" and answer.still)
+    return [f"{', '.join(moving)} still delivers after the {stop}"] if rest and moving else []
 
 
 def _restarted(events: list[Event], trips: list[Event]) -> list[str]:

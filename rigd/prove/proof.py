@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 import os
 from collections.abc import Iterator, Sequence
 from concurrent.futures import ProcessPoolExecutor, as_completed
@@ -10,9 +11,11 @@ from multiprocessing import get_context
 from pathlib import Path
 
 from rigd.adapters.plugins import plant_maker
+from rigd.logic.early.path import trunk_parts
+from rigd.logic.flow_path import flow_path
 from rigd.model.rig import RigDefinition
 from rigd.ports.plant import FaultSpec
-from rigd.prove.branch import Job, Moment, healthy_night, run_job
+from rigd.prove.branch import HealthyNight, Job, Moment, healthy_night, run_job
 from rigd.prove.judge import VERDICTS, Night
 
 SIZES: dict[str, tuple[float, ...]] = {
@@ -34,32 +37,43 @@ SIZES: dict[str, tuple[float, ...]] = {
 
 @dataclass(frozen=True, slots=True)
 class Settings:
-    """``faults``: kinds to try (all when empty); ``largest_only``: one magnitude instead of three."""
+    """``kinds`` to try (all when empty); ``largest_only``: one magnitude instead of three; ``targets_each``: on how
+    many parts (0: no faults at all); ``healthy_hours``: at least so many hours are rehearsed without a fault.
+    """
 
     seeds: tuple[int, ...] = (1,)
     workers: int = 0
     kinds: tuple[str, ...] = ()
     largest_only: bool = False
     targets_each: int = 1
+    healthy_hours: float = 0.0
 
 
 @dataclass(frozen=True, slots=True)
 class Healthy:
-    """The nights without a fault: hours rehearsed, and what tripped all the same."""
+    """The nights without a fault: hours rehearsed, what tripped all the same, and the alarms that sounded."""
 
     hours: float
     spurious: tuple[str, ...]
+    alarms: tuple[str, ...] = ()
+    nights: int = 1
 
 
 def faults_of(rig: RigDefinition, settings: Settings) -> tuple[FaultSpec, ...]:
-    """The faults to inject: each kind on its first ``targets_each`` targets, at its magnitudes."""
-    maker = plant_maker()
+    """The faults to inject: each kind on ``targets_each`` of its targets, at its magnitudes.
+
+    Parts that lie on the common way of the liquid come first: there is pressure and flow.
+    """
+    maker, trunk = plant_maker(), frozenset(trunk_parts(rig, flow_path(rig)))
     found: list[FaultSpec] = []
     for kind in maker.fault_kinds():
         if settings.kinds and kind.kind not in settings.kinds:
             continue
         sizes = tuple(dict.fromkeys(SIZES.get(kind.kind, (1.0,))))
-        for target in spread(tuple(maker.fault_targets(rig, kind.kind)), settings.targets_each):
+        targets = tuple(maker.fault_targets(rig, kind.kind))
+        common = tuple(target for target in targets if target in trunk)
+        enough = len(common) >= settings.targets_each
+        for target in spread(common if enough else targets, settings.targets_each):
             found += [
                 FaultSpec(kind.kind, target, magnitude=x) for x in (sizes[-1:] if settings.largest_only else sizes)
             ]
@@ -67,7 +81,7 @@ def faults_of(rig: RigDefinition, settings: Settings) -> tuple[FaultSpec, ...]:
 
 
 def spread(names: tuple[str, ...], count: int) -> tuple[str, ...]:
-    """``count`` of them, evenly over their order: the first lines of a rig are often those without pressure.
+    """``count`` of them, evenly over their order.
 
     >>> spread(("bottle", "pump line", "trunk", "outlet", "waste"), 1)
     ('trunk',)
@@ -85,20 +99,38 @@ def jobs_of(
     """
     workers = settings.workers or os.cpu_count() or 1
     jobs: list[Job] = []
-    hours, spurious = 0.0, list[str]()
-    moments: tuple[Moment, ...] = ()
+    nights: list[HealthyNight] = []
     for seed in settings.seeds:
         night = healthy_night(rig, recipe, seed)
-        moments = night.moments
-        hours += night.length_ns / 3.6e12
-        spurious += night.trips
+        nights.append(night)
         parts = min(workers * 4, max(workers, len(faults) // 4))
+        usual = frozenset(night.alarms)
         jobs += [
-            Job(str(rig), str(recipe), seed, tuple(faults[i::parts]), moments, night.length_ns, night.alarms)
+            Job(str(rig), str(recipe), seed, tuple(faults[i::parts]), night.moments, night.length_ns, usual)
             for i in range(parts)
             if faults[i::parts]
         ]
-    return jobs, Healthy(hours, tuple(spurious)), moments
+    nights += _more_healthy(rig, recipe, nights, settings, workers)
+    trips = tuple(trip for night in nights for trip in night.trips)
+    alarms = tuple(alarm for night in nights for alarm in night.alarms)
+    return jobs, Healthy(_hours(nights), trips, alarms, len(nights)), nights[len(settings.seeds) - 1].moments
+
+
+def _hours(nights: Sequence[HealthyNight]) -> float:
+    return sum(night.length_ns for night in nights) / 3.6e12
+
+
+def _more_healthy(
+    rig: Path, recipe: Path, nights: Sequence[HealthyNight], settings: Settings, workers: int
+) -> list[HealthyNight]:
+    """As many more healthy nights, of seeds not yet used, as the hours that were asked for need."""
+    missing = settings.healthy_hours - _hours(nights)
+    if missing <= 0.0:
+        return []
+    count = math.ceil(missing * len(nights) / _hours(nights))
+    first = max(settings.seeds) + 1
+    with ProcessPoolExecutor(workers, mp_context=get_context("spawn")) as pool:
+        return list(pool.map(healthy_night, *zip(*((rig, recipe, first + i) for i in range(count)), strict=True)))
 
 
 def nights_of(jobs: Sequence[Job], workers: int = 0) -> Iterator[Night]:

@@ -33,20 +33,21 @@ OFF = {"pressure": 0.3, "temperature": 2.0, "fraction": 0.03}
 
 @dataclass(slots=True)
 class _Streak:
-    """How long something has been off without a break, and the worst in the longest such time."""
+    """By how much something was off at least for ``LASTING_S`` without a break, the worst of all such times."""
 
-    since_ns: int = -1
-    worst: float = 0.0
+    times: list[tuple[int, float]] = field(default_factory=list)
     lasting: float = 0.0
 
     def take(self, off: float | None, now_ns: int) -> None:
+        if off is None or (self.times and off * self.times[-1][1] < 0.0):
+            self.times.clear()
         if off is None:
-            self.since_ns, self.worst = -1, 0.0
             return
-        self.since_ns = now_ns if self.since_ns < 0 else self.since_ns
-        self.worst = max(self.worst, off, key=abs)
-        if now_ns - self.since_ns >= LASTING_S * 1e9:
-            self.lasting = max(self.lasting, self.worst, key=abs)
+        self.times.append((now_ns, off))
+        if now_ns - self.times[0][0] >= LASTING_S * 1e9:
+            least = min((by for _, by in self.times), key=abs)
+            self.lasting = max(self.lasting, least, key=abs)
+            self.times.pop(0)
 
 
 @dataclass(slots=True)

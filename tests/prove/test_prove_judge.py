@@ -9,7 +9,7 @@ import pytest
 from rigd.console.proof_view import told
 from rigd.model.events import Event, EventKind
 from rigd.prove.expected import HAZARDS, STRENGTH, expected
-from rigd.prove.judge import HELD, MISSED, TOLD, UNSEEN, Night, _news, _restarted, _stop_class
+from rigd.prove.judge import HELD, MISSED, TOLD, UNSEEN, Night, _news, _restarted, _still_moving, _stop_class
 from rigd.prove.proof import SIZES, Healthy, bound, counted, spread
 from rigd.prove.witness import DANGEROUS, HARMLESS, SPOILS
 from rigd_sim.faults import fault_kinds
@@ -28,7 +28,7 @@ def night(verdict: str = HELD, phase: str = "P1", kind: str = "block", **more: o
     ("hazards", "decided", "stop", "words"),
     [
         (("H2",), "cut", "cut", ""),
-        (("H6",), "hold", "hold", "less than"),
+        (("H12",), "hold", "hold", "less than"),
         (("H15",), "quench", "quench", ""),
         (("H15",), "quench", "cut", ""),  # a quench that could not be carried out
         (("H15",), "cut", "cut", "more than"),
@@ -41,6 +41,18 @@ def test_class_of_stop(hazards: tuple[str, ...], decided: str, stop: str, words:
     found = _stop_class(decided, stop, expected(hazards))
     assert bool(found) is bool(words)
     assert words in "".join(found)
+
+
+@pytest.mark.parametrize(
+    ("hazard", "stop", "words"),
+    [("H2", "cut", "after the cut"), ("H5", "hold", "after the hold"), ("H2", "hold", ""), ("H15", "quench", "")],
+)
+def test_liquid_that_moves_after_a_stop(hazard: str, stop: str, words: str) -> None:
+    """A hold keeps the flow, as a rule; for a leak it must end it."""
+    found = _still_moving(stop, ["PU-A"], expected((hazard,)))
+    assert bool(found) is bool(words)
+    assert words in "".join(found)
+    assert _still_moving(stop, [], expected((hazard,))) == []
 
 
 def test_a_start_that_is_taken_before_a_reset_is_missed() -> None:

@@ -16,6 +16,7 @@ if TYPE_CHECKING:
     from rigd.prove.judge import Night
 
 COUNT = click.IntRange(min=1)
+HOURS = click.FloatRange(min=0.0, max=1e5)
 PAGE = click.Path(path_type=Path, dir_okay=False)
 
 
@@ -24,7 +25,20 @@ PAGE = click.Path(path_type=Path, dir_okay=False)
 @click.argument("recipe", type=click.Path(path_type=Path))
 @click.option("--seeds", type=COUNT, default=1, show_default=True, help="How many seeds.")
 @click.option("--only", "kinds", multiple=True, metavar="KIND", help="Only this kind of fault; may be repeated.")
-@click.option("--targets", type=COUNT, default=1, show_default=True, help="Targets of each kind.")
+@click.option(
+    "--targets",
+    type=click.IntRange(min=0),
+    default=1,
+    show_default=True,
+    help="Parts that each kind is tried on; 0: no faults.",
+)
+@click.option(
+    "--healthy-hours",
+    type=HOURS,
+    default=0.0,
+    metavar="HOURS",
+    help="Rehearse at least so many hours without a fault, of further seeds; a trip in them counts against the proof.",
+)
 @click.option("--quick", is_flag=True, help="The largest magnitude of each kind only.")
 @click.option("--workers", type=COUNT, default=None, help="Processes; one for each core if not given.")
 @click.option("--out", type=PAGE, default=Path("proof.html"), show_default=True, help="Where the page goes.")
@@ -32,7 +46,7 @@ PAGE = click.Path(path_type=Path, dir_okay=False)
 @click.pass_obj
 def prove(
     output: Output, rig: Path, recipe: Path, seeds: int, kinds: tuple[str, ...], targets: int, quick: bool,
-    workers: int | None, out: Path,
+    healthy_hours: float, workers: int | None, out: Path,
 ) -> int:  # fmt: skip
     """Inject every fault in every phase of RECIPE and show which stop, how fast, how close to a rating.
 
@@ -46,7 +60,7 @@ def prove(
 
     pair = load_pair(rig, recipe)
     assert pair.recipe is not None
-    settings = Settings(tuple(range(1, seeds + 1)), workers or 0, kinds, quick, targets)
+    settings = Settings(tuple(range(1, seeds + 1)), workers or 0, kinds, quick, targets, healthy_hours)
     _known(kinds)
     faults = faults_of(pair.rig, settings)
     jobs, healthy, moments = jobs_of(rig, recipe, faults, settings)
