@@ -61,7 +61,7 @@ HAZARDS: dict[str, Expected] = {
     "H25": _row("none quench cut", "state", "the link's error rate told as an alarm"),
     "H32": _row("cut", "state", "an uninterruptible supply"),
     "H33": _row("cut", "state", "an uninterruptible supply"),
-    "H35": _row("quench cut", "volume level", "a level switch at the rim of the flask"),
+    "H35": _row("quench cut", "volume level leak", "a level switch at the rim of the flask"),
     "H36": _row("hold cut", "pressure", "a limit on the slow rise of the pressure after the bed"),
     "H37": _row("cut", "pressure", "a pressure sensor after the bed"),
     "H38": _row("quench cut", "temperature", "a temperature sensor in the hottest part of the bed"),

@@ -8,7 +8,7 @@ from dataclasses import dataclass
 from rigd.logic.program import Program
 from rigd.model.events import Event, EventKind
 from rigd.model.protection import Interlock
-from rigd.model.rig import RigDefinition
+from rigd.model.rig import RigDefinition, Tag
 from rigd.ports.plant import FaultSpec, Plant
 from rigd.prove.expected import NONE, STRENGTH, Expected, expected
 from rigd.prove.witness import Witness
@@ -172,9 +172,20 @@ def _behind(program: Program, owner: str, fault: FaultSpec) -> bool:
 
 
 def _watches(program: Program, interlock: Interlock, fault: FaultSpec, answer: Expected) -> bool:
-    measures = {tag.id: tag.measures for tag in program.rig.tags}
+    measures = {tag.id: _measure(program.rig, tag) for tag in program.rig.tags}
     tags = {tag for cause in interlock.causes for tag in (cause.tag, getattr(cause, "other", "")) if tag}
     return fault.target in tags or bool({measures.get(tag, "") for tag in tags} & answer.measures)
+
+
+def _measure(rig: RigDefinition, tag: Tag) -> str:
+    """A switch tells of a vessel's level or, anywhere else, of liquid where none should be; a unit tells its state."""
+    if tag.measures != "state" or tag.at in _units(rig):
+        return tag.measures
+    return "level" if tag.at in {vessel.id for vessel in rig.vessels} else "leak"
+
+
+def _units(rig: RigDefinition) -> frozenset[str]:
+    return frozenset(device.unit for device in rig.devices if device.unit)
 
 
 def _still_moving(stop: str, moving: list[str], answer: Expected) -> list[str]:
