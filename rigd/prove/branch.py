@@ -11,6 +11,7 @@ import pickle
 import traceback
 from collections.abc import Callable
 from dataclasses import dataclass, field
+from multiprocessing import parent_process
 from pathlib import Path
 
 from rigd.adapters.plugins import plant_maker
@@ -98,6 +99,7 @@ def _dividing(here: _Branch, job: Job, moment: Moment, witness: Witness) -> Call
         if here.fault is not None:
             return
         for fault in job.faults:
+            _end_if_alone()
             if _child(here, fault, moment, now_ns):
                 witness.begin(now_ns)
                 spec = FaultSpec(fault.kind, fault.target, onset_s=now_ns / 1e9, magnitude=fault.magnitude)
@@ -105,6 +107,13 @@ def _dividing(here: _Branch, job: Job, moment: Moment, witness: Witness) -> Call
                 return
 
     return divide
+
+
+def _end_if_alone() -> None:
+    """A worker whose proof was killed has nobody to tell: it ends, and does not keep the machine busy."""
+    parent = parent_process()
+    if parent is not None and not parent.is_alive():
+        os._exit(1)
 
 
 def _child(here: _Branch, fault: FaultSpec, moment: Moment, now_ns: int) -> bool:
