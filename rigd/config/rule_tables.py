@@ -11,7 +11,8 @@ from rigd.model.devices import LinkSpec
 from rigd.model.protection import Armed, OnBad
 from rigd.model.rig import AlertChannel, MqttSpec
 
-DIMENSION_OF = {name: name for name in ("pressure", "temperature", "flow", "volume", "mass")} | {"state": ""}
+_QUANTITIES = ("pressure", "temperature", "flow", "volume", "mass", "fraction")
+DIMENSION_OF = {name: name for name in _QUANTITIES} | {"state": ""}
 """What a sensor may measure, and the dimension of its value ("" = a state with labels)."""
 
 COMPARISONS = ("above", "below", "equals", "differs_from", "disagrees_with", "rate_above", "mismatch_by", "quality")
@@ -51,7 +52,7 @@ class SensorTable(Table):
 
     tag: Id
     title: Text
-    measures: Literal["pressure", "temperature", "flow", "volume", "mass", "state"]
+    measures: Literal["pressure", "temperature", "flow", "volume", "mass", "fraction", "state"]
     at: EndOrPart
     span: tuple[Written, Written] | None = None
     labels: tuple[Text, ...] = ()

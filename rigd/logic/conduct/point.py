@@ -23,6 +23,7 @@ from rigd.logic.estimators import turnovers
 from rigd.logic.settling import Settler, is_steady, settle_step
 from rigd.model.events import Event
 from rigd.model.recipe import Point
+from rigd.model.rig import TagKind
 
 _FLOW_OFF = 0.02
 _WARM_S_MAX = 3600.0
@@ -45,7 +46,7 @@ def step(scene: Scene, memory: Memory) -> Move[Memory]:
 def result(scene: Scene, memory: Memory, point: Point, status: str) -> PointResult:
     """What is known of the point now."""
     signal = scene.layout.recipe.settle.signal
-    measured = scene.spec.reagent and signal.endswith(".conversion")  # of solvent alone there is nothing to convert
+    measured = scene.spec.reagent and _is_conversion(scene, signal)  # of solvent alone there is nothing to convert
     end_ns = memory.end_ns or (scene.now_ns if memory.collect_ns else 0)
     taken_mL = sum(scene.since_mL(memory.at_collect).values()) if memory.collect_ns and not memory.end_ns else 0.0
     return PointResult(
@@ -63,6 +64,13 @@ def result(scene: Scene, memory: Memory, point: Point, status: str) -> PointResu
         collect_end_ns=end_ns,
         status=status,
     )
+
+
+def _is_conversion(scene: Scene, signal: str) -> bool:
+    """True for the conversion of a cell's spectra, and for an analyser that measures a fraction by itself."""
+    tag = scene.layout.program.tags.get(signal)
+    own = tag is not None and tag.kind is TagKind.MEASURED and tag.measures == "fraction"
+    return own or signal.endswith(".conversion")
 
 
 def broken_off(scene: Scene, memory: Memory) -> tuple[PointResult | None, tuple[Event, ...]]:

@@ -39,6 +39,8 @@ def _truth(plant: RigPlant, tag: Tag) -> Truth:
         return _temperature(plant, tag.at)
     if tag.measures == "flow":
         return _flow(plant, tag.at)
+    if tag.measures == "fraction":
+        return _conversion(plant, tag.at)
     return _level(plant, tag)
 
 
@@ -68,6 +70,22 @@ def _flow(plant: RigPlant, at: str) -> Truth:
         node = layout.point(at)
         edge = next(e for e, ends in enumerate(layout.edges) if ends.b == node and ends.kind == "line")
     return lambda: float(plant.flows.flow[edge]) / ML_MIN_M3_S
+
+
+def _conversion(plant: RigPlant, at: str) -> Truth:
+    """Share of the reactant that has become product where an analyser sits: product / (product + reactant)."""
+    species, chemistry = plant.contents.species, plant.rig.chemistry
+    if chemistry.reactant not in species or chemistry.product not in species:
+        return lambda: 0.0
+    node = plant.layout.point(at)
+    left, made = species.index(chemistry.reactant), species.index(chemistry.product)
+
+    def share() -> float:
+        row = plant.contents.node_c[node]
+        total = row[left] + row[made]
+        return float(row[made] / total) if total > 1e-6 else 0.0
+
+    return share
 
 
 def _level(plant: RigPlant, tag: Tag) -> Truth:
