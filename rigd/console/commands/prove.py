@@ -91,7 +91,7 @@ def _carried_out(output: Output, jobs: Sequence[Job], workers: int, total: int) 
     from rigd.prove.proof import nights_of
 
     if not output.errors.is_terminal:
-        return list(nights_of(jobs, workers))
+        return _told_as_they_come(output, jobs, workers)
     from rich.progress import BarColumn, MofNCompleteColumn, Progress, TextColumn, TimeRemainingColumn
 
     columns = (TextColumn("nights"), BarColumn(), MofNCompleteColumn(), TextColumn("left"), TimeRemainingColumn())
@@ -101,4 +101,20 @@ def _carried_out(output: Output, jobs: Sequence[Job], workers: int, total: int) 
         for night in nights_of(jobs, workers):
             found.append(night)
             bar.advance(task)
+    return found
+
+
+def _told_as_they_come(output: Output, jobs: Sequence[Job], workers: int) -> list[Night]:
+    """For a log file: each missed night at once, for a proof can take an hour."""
+    from rich.markup import escape
+
+    from rigd.prove.judge import MISSED
+    from rigd.prove.proof import nights_of
+
+    found: list[Night] = []
+    for night in nights_of(jobs, workers):
+        found.append(night)
+        if night.verdict == MISSED:
+            where = f"{night.kind} {night.magnitude:g} on {night.target} in {night.phase}"
+            output.say(f"missed after {len(found)} nights: {where}: {escape(night.why)}")
     return found
