@@ -7,7 +7,7 @@ from dataclasses import dataclass
 
 from rigd.logic.program import Program
 from rigd.model.events import Event, EventKind
-from rigd.model.protection import Interlock
+from rigd.model.protection import ConditionKind, Interlock
 from rigd.model.rig import RigDefinition, Tag
 from rigd.ports.plant import FaultSpec, Plant
 from rigd.prove.expected import NONE, STRENGTH, Expected, expected
@@ -75,7 +75,7 @@ def night_of(
     moving = _moving(program.rig, plant)
     why = [
         *_over_rating(part, share),
-        *_stop_class(_decided(trips, stop), stop, answer),
+        *_stop_class(_decided(trips, stop), stop, answer, asked=_passed(program, plant, trips)),
         *_first_out(program, trips, fault, answer),
         *_still_moving(stop, moving, answer),
         *_restarted(after, trips),
@@ -138,12 +138,31 @@ def _decided(trips: list[Event], stop: str) -> str:
     return str(trips[0].fields.get("stop", stop)) if trips else stop
 
 
-def _stop_class(decided: str, stop: str, answer: Expected) -> list[str]:
+def _passed(program: Program, plant: Plant, trips: list[Event]) -> bool:
+    """Did the true pressure pass the limit of the first-out? Then its stop is what the limit asks for.
+
+    A bubble that enters a shut path, or a bed that warms in one, asks for little by itself and raises the pressure.
+    """
+    lock = next((one for one in program.rig.interlocks if trips and one.id == trips[0].subject), None)
+    if lock is None:
+        return False
+    places = {tag.id: tag.at for tag in program.rig.tags if tag.measures == "pressure"}
+    truth = plant.truth()
+    return any(
+        cause.kind is ConditionKind.HIGH
+        and cause.tag in places
+        and truth.get(f"peak-pressure:{places[cause.tag]}", 0.0) >= cause.limit
+        for cause in lock.causes
+    )
+
+
+def _stop_class(decided: str, stop: str, answer: Expected, *, asked: bool = False) -> list[str]:
+    """``asked``: the true plant passed the limit of the first-out, so that its stop is no over-reaction."""
     if stop == NONE:
         return []
     wanted = sorted(answer.stops, key=STRENGTH.index)
     words = " or ".join(wanted)
-    if STRENGTH.index(decided) > STRENGTH.index(wanted[-1]):
+    if STRENGTH.index(decided) > STRENGTH.index(wanted[-1]) and not asked:
         return [f"{decided} is more than the fault asks for ({words})"]
     if STRENGTH.index(stop) < STRENGTH.index(wanted[0]):
         return [f"{stop} is less than the fault asks for ({words})"]

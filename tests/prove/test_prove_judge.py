@@ -43,6 +43,13 @@ def test_class_of_stop(hazards: tuple[str, ...], decided: str, stop: str, words:
     assert words in "".join(found)
 
 
+def test_a_stop_that_the_true_pressure_asked_for_is_no_over_reaction() -> None:
+    """Found by a bubble in the shut path of the leak test (seed 1): the true pressure passed the limit."""
+    assert _stop_class("cut", "cut", expected(("H7",)), asked=True) == []
+    assert _stop_class("cut", "cut", expected(("H7",)), asked=False) != []
+    assert _stop_class("hold", "hold", expected(("H12",)), asked=True) != []
+
+
 @pytest.mark.parametrize(
     ("hazard", "stop", "words"),
     [("H2", "cut", "after the cut"), ("H5", "hold", "after the hold"), ("H2", "hold", ""), ("H15", "quench", "")],
