@@ -77,7 +77,7 @@ def _healthy_words(healthy: Healthy) -> str:
     limit = 3 / max(healthy.hours, 1e-9)
     alarms = ", ".join(f"{name} {count} times" for name, count in Counter(healthy.alarms).items())
     return (
-        f"No trip in {healthy.hours:.1f} h ({healthy.nights} nights) without a fault: "
+        f"No trip in {healthy.hours:.1f} h ({healthy.nights} rehearsed) without a fault: "
         f"at most {limit:.2g} an hour (95 %). "
         f"Alarms in them: {alarms or 'none'}."
     )
@@ -126,7 +126,7 @@ def _cell(night: Night | None) -> dict[str, str]:
         return {"style": "", "text": ""}
     text = "~" if night.stop == "none" else night.stop
     if not math.isnan(night.first_s):
-        text += f" {night.first_s:.3g}"
+        text += f" {night.first_s:.0f}" if night.first_s >= 100.0 else f" {night.first_s:.3g}"
     return {"style": STYLES[night.verdict], "text": text}
 
 

@@ -11,7 +11,7 @@ from rigd.config import load_pair
 from rigd.logic.program import compile_program
 from rigd.ports.plant import FaultSpec
 from rigd.prove.branch import Job, Moment, run_job
-from rigd.prove.judge import HELD, UNSEEN, Night
+from rigd.prove.judge import HELD, TOLD, UNSEEN, Night
 from rigd.prove.witness import DANGEROUS, HARMLESS, Witness
 from rigd.runtime.dry import DryShell
 from rigd.runtime.spectra import cell_readers
@@ -48,6 +48,27 @@ basis = "common practice, no source"
 id = "PRESSURE-RISING"
 """
 """A leak tray as a person writes it into a rig file, before the first alarm of the example."""
+LOST = """
+[[interlocks]]
+id = "PRESSURE-LOST"
+title = "No pressure behind the bed while the run goes on"
+trip_when = [{ tag = "PT-2", below = "1 bar" }]
+vote = "1oo1"
+on_bad = "trip"
+delay = "20 s"
+stop = "cut"
+armed = "running"
+consequence = "liquid on the bench"
+response = "Find the open fitting."
+basis = "example: half of what the regulator keeps"
+
+[[alarms]]
+id = "PRESSURE-RISING"
+"""
+"""A low trip on pressure, the other thing that the proof says to add."""
+LEAK = FaultSpec("leak", "L-2", magnitude=0.05)
+BURST = FaultSpec("burst", "COL", magnitude=3.0)
+LAST_POINT = Moment("point-P06", 2_100_000_000_000)
 
 
 def test_a_healthy_night_shows_nothing() -> None:
@@ -62,21 +83,25 @@ def test_a_healthy_night_shows_nothing() -> None:
     assert witness.findings("", 0.0) == (HARMLESS, "")
 
 
-def leak_in_the_last_point(rig: Path) -> Night:
-    moment = Moment("point-P06", 2_100_000_000_000)
-    job = Job(str(rig), str(RECIPE), 1, (FaultSpec("leak", "L-2", magnitude=0.05),), (moment,), 2_700_000_000_000)
-    (night,) = run_job(job)
+def night_with(rig: Path, fault: FaultSpec) -> Night:
+    (night,) = run_job(Job(str(rig), str(RECIPE), 1, (fault,), (LAST_POINT,), 2_700_000_000_000))
     return night
 
 
-def test_a_small_leak_is_dangerous_and_a_leak_tray_stops_it(tmp_path: Path) -> None:
-    """What the proof says to add does help: 5 minutes of a leak without pressure change, and none with a tray."""
-    bare = leak_in_the_last_point(RIG)
-    assert (bare.verdict, bare.severity) == (UNSEEN, DANGEROUS)
+@pytest.mark.parametrize(
+    ("fault", "verdict", "add", "first_out"),
+    [(LEAK, UNSEEN, TRAY, "TRAY-WET"), (BURST, TOLD, LOST, "PRESSURE-LOST")],
+    ids=["leak", "burst"],
+)
+def test_a_fault_that_nothing_stops_is_dangerous_and_what_to_add_stops_it(
+    tmp_path: Path, fault: FaultSpec, verdict: str, add: str, first_out: str
+) -> None:
+    """A small leak moves no pressure; after a burst an alarm comes and the pumps go on."""
+    bare = night_with(RIG, fault)
+    assert (bare.verdict, bare.severity) == (verdict, DANGEROUS)
     assert "ran out onto the bench" in bare.harm
-    assert "leak tray" in bare.add
     text = RIG.read_text(encoding="utf-8").replace("../chemistry/", f"{CONFIGS}/chemistry/")
-    with_tray = tmp_path / "rig.toml"
-    with_tray.write_text(text.replace('[[alarms]]\nid = "PRESSURE-RISING"\n', TRAY), encoding="utf-8")
-    seen = leak_in_the_last_point(with_tray)
-    assert (seen.verdict, seen.stop, seen.first_out) == (HELD, "cut", "TRAY-WET"), seen
+    better = tmp_path / "rig.toml"
+    better.write_text(text.replace('[[alarms]]\nid = "PRESSURE-RISING"\n', add), encoding="utf-8")
+    seen = night_with(better, fault)
+    assert (seen.verdict, seen.stop, seen.first_out) == (HELD, "cut", first_out), seen
