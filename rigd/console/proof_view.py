@@ -67,6 +67,8 @@ def _danger_words(nights: Sequence[Night]) -> str:
 
 
 def _bound_words(missed: int, total: int) -> str:
+    if not total:
+        return "No night with a fault was rehearsed."
     limit = bound(missed, total)
     return f"{missed} missed of {total}: at most {100 * limit:.2g} % of such nights are missed (95 %; simulator only)."
 
